@@ -74,7 +74,7 @@ class Crossovers:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Margins:
-    """Distances to instability of a stable loop."""
+    """Distances to instability of a stable loop, with the crossovers that they were read from."""
 
     gain_margin: Quantity
     gain_reduction_margin: Quantity
@@ -84,6 +84,9 @@ class Margins:
     max_sensitivity_rad_s: Quantity
     max_complementary_sensitivity: Quantity
     disk_margin: Quantity
+    gain_crossovers: tuple[GainCrossover, ...] = ()
+    phase_crossovers: tuple[PhaseCrossover, ...] = ()
+    truncated: bool = False
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
