@@ -50,7 +50,9 @@ class IntegralTime:
 
     def __post_init__(self) -> None:
         if self.unit in ("seconds", "minutes") and self.value == 0:
-            raise FieldError(("value",), "an integral time is greater than 0; null says that there is no integral action")
+            raise FieldError(
+                ("value",), "an integral time is greater than 0; null says that there is no integral action"
+            )
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -63,7 +65,9 @@ class IntegralGain:
 
     def __post_init__(self) -> None:
         if self.unit in ("seconds", "minutes") and self.value == 0:
-            raise FieldError(("value",), "an integral time is greater than 0; null says that there is no integral action")
+            raise FieldError(
+                ("value",), "an integral time is greater than 0; null says that there is no integral action"
+            )
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -188,7 +192,9 @@ class ParallelController(_Surroundings):
     setpoint_weight: SetpointWeight | Unknown = field(default_factory=SetpointWeight)
 
     def __post_init__(self) -> None:
-        present = [term for term in (self.proportional, self.integral, self.derivative) if term and term.value > 0]
+        present = [
+            term for term in (self.proportional, self.integral, self.derivative) if term and term.value > 0
+        ]
         if not present:
             raise FieldError((), "a controller has at least one term other than 0")
         _check_filter_has_derivative(self.derivative, self.derivative_filter)
@@ -196,9 +202,13 @@ class ParallelController(_Surroundings):
         for name, term in (("integral", self.integral), ("derivative", self.derivative)):
             if term and term.unit in ("gain_per_scan", "gain_scans") and not isinstance(self.scan, Scan):
                 raise FieldError((name, "unit"), "a gain for each scan needs the scan interval")
-        by_ratio = isinstance(self.derivative_filter, DerivativeFilter) and self.derivative_filter.unit == "ratio"
+        by_ratio = (
+            isinstance(self.derivative_filter, DerivativeFilter) and self.derivative_filter.unit == "ratio"
+        )
         if by_ratio and (self.proportional is None or self.proportional.value == 0):
-            raise FieldError(("derivative_filter", "unit"), "a ratio to Td = Kd/Kp needs a proportional gain above 0")
+            raise FieldError(
+                ("derivative_filter", "unit"), "a ratio to Td = Kd/Kp needs a proportional gain above 0"
+            )
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -249,7 +259,13 @@ def _check_filter_has_derivative(derivative: object, derivative_filter: object) 
 
 
 def _check_trapezoidal(scan: object, derivative: object, derivative_filter: object) -> None:
-    if isinstance(scan, Scan) and scan.method == "trapezoidal" and derivative is not None and derivative_filter is None:
+    if (
+        isinstance(scan, Scan)
+        and scan.method == "trapezoidal"
+        and derivative is not None
+        and derivative_filter is None
+    ):
         raise FieldError(
-            ("scan", "method"), "the trapezoidal method needs a derivative filter (without one it has a pole at z = -1)"
+            ("scan", "method"),
+            "the trapezoidal method needs a derivative filter (without one it has a pole at z = -1)",
         )

@@ -82,7 +82,9 @@ class SecondOrder(_Surroundings):
         by_frequency = self.natural_frequency_rad_s is not None and self.damping_ratio is not None
         partly = self.natural_frequency_rad_s is not None or self.damping_ratio is not None
         if by_times and partly:
-            raise FieldError(("time_constants_s",), "give the time constants, or frequency and damping, not both")
+            raise FieldError(
+                ("time_constants_s",), "give the time constants, or frequency and damping, not both"
+            )
         if not by_times and not by_frequency:
             raise FieldError((), "give time_constants_s, or natural_frequency_rad_s with damping_ratio")
         for index, time_constant_s in enumerate(self.time_constants_s or ()):
@@ -171,7 +173,13 @@ class FrequencyResponse(_Surroundings):
 
 
 PlantModel = (
-    FirstOrder | SecondOrder | Integrating | TransferFunction | ZerosPolesGain | StateSpace | FrequencyResponse
+    FirstOrder
+    | SecondOrder
+    | Integrating
+    | TransferFunction
+    | ZerosPolesGain
+    | StateSpace
+    | FrequencyResponse
 )
 
 

@@ -1,0 +1,251 @@
+"""The open loop: controller and plant made one, factored, in a natural unit of time.
+
+L(s) = direction·C(s)·F(s)·P(s)·e^(−sθ), F the measurement filter. Everything inside `analysis` works in the
+loop's own unit of time, 1/`unit_rad_s`; whoever hands a result out multiplies it back. No factor is multiplied out.
+A zero and a pole of the loop that are one number are kept apart as hidden roots: they are roots of the closed
+loop wherever they lie, whatever L(jω) looks like.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+from functools import cached_property
+
+import numpy as np
+import numpy.typing as npt
+
+from service.analysis.controller import Controller
+from service.analysis.errors import FieldError
+from service.analysis.plant import PlantModel, Ranges
+from service.analysis.rational import Rational, rational
+from service.analysis.terms import ControllerTerms, ParallelTerms, controller_terms
+
+Reals = npt.NDArray[np.float64]
+Complexes = npt.NDArray[np.complex128]
+
+EPSILON = float(np.finfo(np.float64).eps)
+
+CANCELLED = 8 * EPSILON
+"""A zero and a pole nearer to each other than this, relatively, are one number in float64."""
+
+
+@dataclass(frozen=True, eq=False)
+class OpenLoop:
+    """L(s) = sign·e^log_gain·∏(s−z)/∏(s−p)·e^(−s·dead_time), without the hidden factors.
+
+    `zeros` and `poles`: complex, shapes (nz,) and (np,), closed under conjugation.
+    """
+
+    zeros: Complexes
+    poles: Complexes
+    log_gain: float
+    sign: float
+    dead_time: float
+
+    @cached_property
+    def excess(self) -> int:
+        """Poles minus zeros."""
+        return len(self.poles) - len(self.zeros)
+
+    @cached_property
+    def high_frequency_magnitude(self) -> float:
+        """abs L(∞) of the rational part; inf where it grows."""
+        if self.excess > 0 or self.sign == 0:
+            return 0.0
+        return math.exp(min(self.log_gain, 700.0)) if self.excess == 0 else math.inf
+
+    @cached_property
+    def order_at_origin(self) -> int:
+        """Poles minus zeros at s = 0; negative where zeros prevail."""
+        return int(np.count_nonzero(self.poles == 0)) - int(np.count_nonzero(self.zeros == 0))
+
+    @cached_property
+    def origin_coefficient(self) -> float:
+        """c in L(s) → c·s^(−order_at_origin) as s → 0."""
+        zeros, poles = self.zeros[self.zeros != 0], self.poles[self.poles != 0]
+        log = self.log_gain + float(np.log(np.abs(zeros)).sum() - np.log(np.abs(poles)).sum())
+        # a factor (0 − r) is negative for a real r right of the axis; conjugate pairs are positive on either side
+        negative = _negative_real_factors(zeros) + _negative_real_factors(poles)
+        return self.sign * (-1.0 if negative % 2 else 1.0) * math.exp(min(log, 700.0))
+
+    def shifted(self, by: float) -> OpenLoop:
+        """The loop as a function of s − `by`: its axis is the line Re s = `by` of this loop."""
+        return replace(
+            self, zeros=self.zeros - by, poles=self.poles - by, log_gain=self.log_gain - by * self.dead_time
+        )
+
+    def with_gain_factor(self, factor: float) -> OpenLoop:
+        """The loop with its gain multiplied by `factor` (any sign)."""
+        return replace(
+            self, log_gain=self.log_gain + math.log(abs(factor)), sign=self.sign * math.copysign(1, factor)
+        )
+
+    def log_derivative(self, s: Complexes) -> Complexes:
+        """d ln L/ds at `s`, shape of `s`."""
+        return reciprocal_sum(s, self.zeros) - reciprocal_sum(s, self.poles) - self.dead_time
+
+    def at(self, s: Complexes) -> Complexes:
+        """L(s), shape of `s`; huge values overflow to inf."""
+        with np.errstate(all="ignore"):
+            logs = np.log(s[..., None] - self.zeros).sum(-1) - np.log(s[..., None] - self.poles).sum(-1)
+            value: Complexes = self.sign * np.exp(self.log_gain + logs - s * self.dead_time)
+        return value
+
+
+@dataclass(frozen=True, eq=False)
+class ClosedLoopParts:
+    """What responses and routes need beside L, in the loop's own unit of time.
+
+    `plant` and `setpoint`/`feedback` terms are separate; `hidden_roots` complex, shape (nh,).
+    """
+
+    unit_rad_s: float
+    loop: OpenLoop
+    hidden_roots: Complexes
+    plant: Rational
+    dead_time: float
+    direction: float
+    controller: ControllerTerms
+    feedback: ParallelTerms
+    setpoint: ParallelTerms
+    measurement_filter: float
+    dead_time_reduced_by_s: float
+    dead_time_negative_by_s: float
+
+    @property
+    def dead_time_s(self) -> float:
+        """Dead time as analysed, in seconds."""
+        return self.dead_time / self.unit_rad_s
+
+
+def form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges | None) -> ClosedLoopParts:
+    """Bring a plant and a controller together.
+
+    Raises FieldError (path from the request's top) where engineering units have no ranges, where dividing out
+    the identification filter leaves an improper plant, and where magnitudes leave float64.
+    """
+    try:
+        return _form_loop(plant_model, controller, ranges)
+    except (OverflowError, ZeroDivisionError) as error:
+        raise FieldError((), "the loop's numbers are too large or too small to be computed with") from error
+
+
+def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges | None) -> ClosedLoopParts:
+    plant = _in_percent(plant_model, ranges)
+    dead_time_s, reduced_s, negative_s = _dead_time(plant_model)
+    terms = controller_terms(controller)
+    basis = _controller_basis(controller, ranges)
+    filter_s = 0.0 if controller.measurement_filter_s == "unknown" else controller.measurement_filter_s
+    filter_poles = (complex(-1.0 / filter_s),) if filter_s > 0 else ()
+    zeros = np.array(terms.zeros_rad_s + plant.zeros_rad_s, dtype=complex)
+    poles = np.array(terms.poles_rad_s + filter_poles + plant.poles_rad_s, dtype=complex)
+    unit = _natural_unit(zeros, poles, dead_time_s)
+    direction = 1.0 if controller.action == "reverse" else -1.0
+    factors = (direction, basis, terms.gain, plant.gain, 1.0 / filter_s if filter_s > 0 else 1.0)
+    log_gain, sign = _log_of_product(factors)
+    log_gain += (len(zeros) - len(poles)) * math.log(unit)
+    if not math.isfinite(log_gain) and sign != 0:
+        raise OverflowError
+    free_zeros, free_poles, hidden = _without_hidden(zeros / unit, poles / unit)
+    loop = OpenLoop(free_zeros, free_poles, log_gain if sign else -math.inf, sign, dead_time_s * unit)
+    return ClosedLoopParts(
+        unit_rad_s=unit,
+        loop=loop,
+        hidden_roots=hidden,
+        plant=_scaled_rational(plant, unit),
+        dead_time=dead_time_s * unit,
+        direction=direction,
+        controller=terms,
+        feedback=_scaled_terms(terms.feedback, basis, unit),
+        setpoint=_scaled_terms(terms.setpoint, basis, unit),
+        measurement_filter=filter_s * unit,
+        dead_time_reduced_by_s=reduced_s,
+        dead_time_negative_by_s=negative_s,
+    )
+
+
+def reciprocal_sum(s: Complexes, roots: Complexes) -> Complexes:
+    """Σ 1/(s − root), shape of `s`."""
+    with np.errstate(all="ignore"):
+        total: Complexes = (1.0 / (s[..., None] - roots)).sum(-1)
+    return total
+
+
+def _negative_real_factors(roots: Complexes) -> int:
+    return int(np.count_nonzero((roots.imag == 0) & (roots.real > 0)))
+
+
+def _in_percent(plant_model: PlantModel, ranges: Ranges | None) -> Rational:
+    try:
+        plant = rational(plant_model)
+    except FieldError as error:
+        raise FieldError(("plant_model", *error.path), error.detail) from error
+    if plant_model.identified_through_filter_s > 0:
+        zero = complex(-1.0 / plant_model.identified_through_filter_s)
+        plant = Rational((*plant.zeros_rad_s, zero), plant.poles_rad_s, plant.gain / -zero.real)
+        if len(plant.zeros_rad_s) > len(plant.poles_rad_s):
+            raise FieldError(
+                ("plant_model", "identified_through_filter_s"),
+                "a plant found through a filter has more poles than zeros; divided out, none would be left over",
+            )
+    if plant_model.gain_basis == "percent_of_range":
+        return plant
+    if ranges is None:
+        raise FieldError(("plant_model", "gain_basis"), "engineering units need the loop's ranges")
+    return Rational(plant.zeros_rad_s, plant.poles_rad_s, plant.gain * ranges.output.span / ranges.pv.span)
+
+
+def _controller_basis(controller: Controller, ranges: Ranges | None) -> float:
+    if controller.gain_basis == "percent_of_range":
+        return 1.0
+    if ranges is None:
+        raise FieldError(("controller", "gain_basis"), "engineering units need the loop's ranges")
+    return ranges.pv.span / ranges.output.span
+
+
+def _dead_time(plant_model: PlantModel) -> tuple[float, float, float]:
+    """Dead time as analysed, how much was taken off for the scan of the identification, how much could not be."""
+    half_s = 0.5 * plant_model.identified_at_scan_s
+    reduced_s = min(half_s, plant_model.dead_time_s)
+    return plant_model.dead_time_s - reduced_s, reduced_s, half_s - reduced_s
+
+
+def _natural_unit(zeros: Complexes, poles: Complexes, dead_time_s: float) -> float:
+    """A frequency in rad/s about which the loop's dynamics lie: the geometric mean of what it is made of."""
+    magnitudes = np.abs(np.concatenate([zeros, poles]))
+    logs = [math.log(magnitude) for magnitude in magnitudes if magnitude > 0]
+    if dead_time_s > 0:
+        logs.append(-math.log(dead_time_s))
+    return math.exp(math.fsum(logs) / len(logs)) if logs else 1.0
+
+
+def _log_of_product(factors: tuple[float, ...]) -> tuple[float, float]:
+    if any(factor == 0 for factor in factors):
+        return 0.0, 0.0
+    sign = math.prod(math.copysign(1.0, factor) for factor in factors)
+    return math.fsum(math.log(abs(factor)) for factor in factors), sign
+
+
+def _without_hidden(zeros: Complexes, poles: Complexes) -> tuple[Complexes, Complexes, Complexes]:
+    free_zeros, free_poles, hidden = [], list(poles), []
+    for zero in zeros:
+        distances = [abs(zero - pole) - CANCELLED * abs(zero) for pole in free_poles]
+        nearest = int(np.argmin(distances)) if distances else -1
+        if distances and distances[nearest] <= 0:
+            hidden.append(free_poles.pop(nearest))
+        else:
+            free_zeros.append(zero)
+    return np.array(free_zeros, complex), np.array(free_poles, complex), np.array(hidden, complex)
+
+
+def _scaled_rational(plant: Rational, unit: float) -> Rational:
+    zeros = tuple(zero / unit for zero in plant.zeros_rad_s)
+    poles = tuple(pole / unit for pole in plant.poles_rad_s)
+    return Rational(zeros, poles, plant.gain * unit ** (len(zeros) - len(poles)))
+
+
+def _scaled_terms(terms: ParallelTerms, basis: float, unit: float) -> ParallelTerms:
+    return ParallelTerms(
+        terms.kp * basis, terms.ki_per_s * basis / unit, terms.kd_s * basis * unit, terms.tf_s * unit
+    )

@@ -1,0 +1,154 @@
+"""Route A: unstable roots of the closed loop counted by the argument principle on the axis (Nyquist).
+
+The closed loop's characteristic function is D(s) + N(s)·e^(−sθ) = D(s)·(1 + L(s)). Its argument along the axis is
+known without sampling: where abs L < 1 it is arg D + Arg(1 + L), where abs L > 1 it is arg N − ωθ + Arg(1 + 1/L),
+both principal values being less than a quarter turn off. So it changes form at the gain crossovers alone, and a
+complete list of those gives the exact count. Poles on the axis lie where abs L > 1 and need no indentation: their
+factors stand in the other form.
+
+Source: the argument principle as used by Nyquist (Bell System Technical Journal 11, 1932) and, for quasi-polynomials,
+by Mikhailov; see Stépán, Retarded Dynamical Systems (1989), section 2. From memory.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+
+from service.analysis.frequency import AxisResponse, log_factors, log_response
+from service.analysis.loop import EPSILON, OpenLoop, Reals
+
+ROUNDING_FACTOR = 64.0
+"""How many times the rounding of one term the distance to -1 must exceed to be told from 0."""
+
+
+@dataclass(frozen=True, slots=True)
+class Count:
+    """Roots right of the axis; None with the reason where float64 cannot tell."""
+
+    roots: int | None
+    infinitely_many: bool = False
+    reason: str | None = None
+
+
+def count_right_of_axis(axis: AxisResponse) -> Count:
+    """Roots of 1 + L right of the axis, hidden ones not included."""
+    loop = axis.loop
+    if loop.sign == 0:
+        return _count_poles(loop)
+    neutral = _neutral(loop)
+    if neutral is not None:
+        return neutral
+    if _touches_at_the_ends(loop):
+        return Count(None, reason="a root lies on the axis within the precision of the numbers")
+    crossovers = axis.gain_crossovers
+    logs = log_response(loop, crossovers)
+    distance = np.abs(1 + np.exp(1j * logs.imag))
+    if np.any(distance < rounding(loop, crossovers)):
+        return Count(None, reason="a root lies on the axis within the precision of the numbers")
+    degree = max(len(loop.poles), len(loop.zeros)) if loop.dead_time == 0 else len(loop.poles)
+    turned = _argument_change(axis, crossovers)
+    roots = 0.5 * degree - turned / math.pi
+    if abs(roots - round(roots)) > 1e-4 or round(roots) < 0:
+        return Count(None, reason="the encirclements do not add up to a whole number")
+    return Count(round(roots))
+
+
+def rounding(loop: OpenLoop, omega: Reals) -> Reals:
+    """How far rounding may move L(jω) relative to itself, shape of `omega`."""
+    terms = 4.0 + len(loop.zeros) + len(loop.poles) + abs(loop.log_gain) + omega * loop.dead_time
+    return np.asarray(ROUNDING_FACTOR * EPSILON * terms)
+
+
+def _count_poles(loop: OpenLoop) -> Count:
+    on_axis = np.abs(loop.poles.real) <= ROUNDING_FACTOR * EPSILON * np.abs(loop.poles)
+    if on_axis.any():
+        return Count(None, reason="the loop is open and has a root on the axis")
+    return Count(int(np.count_nonzero(loop.poles.real > 0)))
+
+
+def _neutral(loop: OpenLoop) -> Count | None:
+    """The answer where the loop does not roll off and has dead time and that alone decides."""
+    if loop.dead_time == 0 or loop.excess > 0:
+        return None
+    magnitude = loop.high_frequency_magnitude
+    if abs(magnitude - 1.0) <= ROUNDING_FACTOR * EPSILON * (4 + abs(loop.log_gain)):
+        return Count(None, reason="the loop gain at high frequency is 1 within the precision of the numbers")
+    if magnitude > 1.0:
+        return Count(None, infinitely_many=True)
+    return None
+
+
+def _touches_at_the_ends(loop: OpenLoop) -> bool:
+    tolerance = ROUNDING_FACTOR * EPSILON * (4 + len(loop.poles) + abs(loop.log_gain))
+    if loop.order_at_origin == 0 and abs(1 + loop.origin_coefficient) < tolerance:
+        return True
+    return loop.order_at_origin < 0 and bool(np.any(loop.poles == 0))
+
+
+def _argument_change(axis: AxisResponse, crossovers: Reals) -> float:
+    """Change of the characteristic function's argument from ω = 0 to ∞."""
+    loop = axis.loop
+    # one frequency inside each stretch between crossovers tells whether abs L is above 1 there
+    edges = np.concatenate([[0.0], crossovers, [np.inf]])
+    above = _above_one(axis, edges)
+    form = _forms(loop, crossovers)
+    start, end = _forms_at_origin(loop), _forms_at_infinity(loop)
+    total = 0.0
+    for index, is_above in enumerate(above):
+        which = 1 if is_above else 0
+        right = end[which] if index == len(crossovers) else form[which][index]
+        left = start[which] if index == 0 else form[which][index - 1]
+        total += right - left
+    return total
+
+
+def _above_one(axis: AxisResponse, edges: Reals) -> list[bool]:
+    magnitude = axis.log_response.real
+    inside = np.searchsorted(edges, axis.omega)
+    result = []
+    for index in range(1, len(edges)):
+        samples = magnitude[inside == index]
+        if samples.size:
+            result.append(bool(samples[np.argmax(np.abs(samples))] > 0))
+        else:
+            middle = np.array([0.5 * (edges[index - 1] + edges[index])])
+            result.append(bool(log_response(axis.loop, middle).real[0] > 0))
+    return result
+
+
+def _forms(loop: OpenLoop, omega: Reals) -> tuple[Reals, Reals]:
+    """The argument in the form for abs L < 1 and in the form for abs L > 1, at crossovers, where both hold."""
+    denominator = log_factors(omega, loop.poles).imag
+    response = log_response(loop, omega).imag
+    half = 0.5 * _wrapped(response)
+    # at a crossover Arg(1 + L) is half the principal phase, and Arg(1 + 1/L) its negative
+    return denominator + half, denominator + response - half
+
+
+def _forms_at_origin(loop: OpenLoop) -> tuple[float, float]:
+    denominator = _argument_at_origin(loop.poles)
+    response = _argument_at_origin(loop.zeros) - denominator + (math.pi if loop.sign < 0 else 0.0)
+    return denominator, denominator + response
+
+
+def _forms_at_infinity(loop: OpenLoop) -> tuple[float, float]:
+    denominator, numerator = len(loop.poles) * math.pi / 2, len(loop.zeros) * math.pi / 2
+    # the principal values vanish at both ends: L is real there, or 0, or without bound
+    return denominator, numerator + (math.pi if loop.sign < 0 else 0.0)
+
+
+def _argument_at_origin(roots: np.ndarray) -> float:  # type: ignore[type-arg]
+    """Argument of ∏(jω − r) as ω falls to 0, in the convention of `log_factors`."""
+    real = roots[roots.imag == 0].real
+    right_pairs = np.count_nonzero((roots.imag > 0) & (roots.real > 0))
+    argument = math.pi * np.count_nonzero(real > 0) + 0.5 * math.pi * np.count_nonzero(real == 0)
+    # conjugate factors cancel, but for the whole turn that the convention gives a pair right of the axis
+    return float(argument + 2 * math.pi * right_pairs)
+
+
+def _wrapped(angle: Reals) -> Reals:
+    """The angle in (−π, π]."""
+    return np.asarray(-((math.pi - angle) % (2 * math.pi)) + math.pi)
