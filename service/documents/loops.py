@@ -1,0 +1,55 @@
+"""The requests by which a loop and its models are made known."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from service.analysis.errors import FieldError
+from service.analysis.plant import Range
+from service.documents.discriminated import PlantModelField
+from service.documents.texts import Line, Prose, Tag
+from service.judgement.criteria import Criteria
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class LoopReference:
+    """A loop by its site and tag."""
+
+    site: Tag
+    tag: Tag
+
+    def names(self, site: str, tag: str) -> bool:
+        """Say whether these are the same site and tag; case makes no difference."""
+        return (self.site.casefold(), self.tag.casefold()) == (site.casefold(), tag.casefold())
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class LoopRegistration:
+    """A loop as it is registered; a later one for the same loop is a new revision."""
+
+    site: Tag
+    tag: Tag
+    description: Line
+    area: Line
+    pv: Range
+    output: Range
+    service_class: Line | None = None
+    safety_related: bool = False
+    criteria: Criteria | None = None
+    """None: the service's own floors hold."""
+    inner_loop: LoopReference | None = None
+    """The secondary loop of a cascade whose set point this loop's output is."""
+    fail_position: Line | None = None
+
+    def __post_init__(self) -> None:
+        if self.inner_loop and self.inner_loop.names(self.site, self.tag):
+            raise FieldError(("inner_loop",), "a loop is not its own inner loop")
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class ModelVersion:
+    """A plant model for one operating point, and what it rests on."""
+
+    plant_model: PlantModelField
+    operating_point: Line
+    evidence: Prose
