@@ -1,4 +1,4 @@
-"""The invented plant as data: who works there, which loops it has, which gains they had, what was changed when."""
+"""The invented plant as data: who works there, its loops and gains, and what was changed when."""
 
 from __future__ import annotations
 
