@@ -8,6 +8,8 @@ from datetime import datetime, timedelta
 from importlib.resources import files
 from typing import Any
 
+from service.records.roles import Role
+
 Body = dict[str, Any]
 """A JSON object as it goes over HTTP: the interface reads it strictly, so nothing is checked here."""
 
@@ -20,7 +22,7 @@ class Person:
 
     name: str
     full_name: str
-    roles: tuple[str, ...]
+    roles: tuple[Role, ...]
     areas: tuple[str, ...]
     password: str
     about: str
