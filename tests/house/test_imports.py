@@ -180,7 +180,7 @@ def test_nothing_but_settings_reads_the_environment() -> None:
 @pytest.mark.parametrize("file", sorted(SERVICE.rglob("__init__.py")), ids=lambda file: file.parent.name)
 def test_a_package_states_its_law_and_holds_little_else(file: Path) -> None:
     tree = ast.parse(file.read_text("utf-8"))
-    law = ast.get_docstring(tree) or ""
+    law = " ".join((ast.get_docstring(tree) or "").split())
     if file.parent != SERVICE:
         assert [part for part in ("Lives here", "May import", "Must never know") if part not in law] == []
     assert len(tree.body) <= 6
