@@ -1,0 +1,149 @@
+"""What is signed: the content of a submission, whole and by value, from which its digest is made.
+
+Stored as canonical bytes and read back as these dataclasses. A field that is added later has a default, so
+that earlier content still reads.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal
+
+from service.documents.decisions import Deviation
+from service.documents.discriminated import ControllerField
+from service.documents.installations import InstallationRequest
+from service.documents.loops import LoopRegistration, ModelVersion
+from service.documents.recomputations import RecomputationAnswer
+from service.documents.submissions import Tool
+from service.documents.texts import Moment
+from service.judgement.claims import Claims
+from service.judgement.criteria import Criteria, CriterionFinding
+from service.records.lifecycle import Kind
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Person:
+    """A person as named at the time; a later change of name does not reach what is kept."""
+
+    name: str
+    full_name: str
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SignedGains:
+    """One set of gains as entered. `condition` None and no operating points: the only set, good at each."""
+
+    condition: str | None
+    operating_points: tuple[str, ...]
+    controller: ControllerField
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SignedModel:
+    """A model version that was in force."""
+
+    id: str
+    version: int
+    model: ModelVersion
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SignedRecomputation:
+    """One set of gains recomputed with one model: results and the limits held against them, by value."""
+
+    model_id: str
+    operating_point: str
+    gain_set: int
+    """Index into the submission's gain sets."""
+    criteria: Criteria
+    answer: RecomputationAnswer
+    """Without curves, which are kept beside it."""
+    curves_digest: str | None
+    hard_floors: tuple[CriterionFinding, ...]
+    """The limits that no deviation makes good."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class WorstCriterion:
+    """One limit over all operating points: what came of it at the worst one."""
+
+    finding: CriterionFinding
+    operating_point: str
+    gain_set: int
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SignedGainsInForce:
+    """The gains that ran in the controller, as far as is recorded, when these were submitted."""
+
+    submission_id: str
+    content_digest: str
+    gain_sets: tuple[SignedGains, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SignedContent:
+    """Everything that a signature on a submission covers."""
+
+    submission_id: str
+    loop_id: str
+    loop_revision: int
+    loop: LoopRegistration
+    kind: Kind
+    reason: str
+    safety_effect: str
+    gain_sets: tuple[SignedGains, ...]
+    submitted_by: Person
+    submitted_at: Moment
+    prepared_by: tuple[Person, ...]
+    tool: Tool | None
+    claims: Claims | None
+    temporary_until: Moment | None
+    install_by: Moment | None
+    models: tuple[SignedModel, ...]
+    criteria_source: Literal["loop", "service_floors"]
+    criteria: tuple[WorstCriterion, ...]
+    recomputations: tuple[SignedRecomputation, ...]
+    gains_in_force: SignedGainsInForce | None
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class DecisionContent:
+    """A signature: who, what it means, when, on which content, with which reason and deviations."""
+
+    decision_id: str
+    submission_id: str
+    decision: Literal["approve", "reject", "withdraw", "revoke"]
+    meaning: str
+    reason: str
+    deviation: tuple[Deviation, ...]
+    content_digest: str
+    signed_by: Person
+    signed_at: Moment
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Difference:
+    """A setting in which two controllers differ. Values are None where one of them has no such term."""
+
+    setting: str
+    unit: str
+    approved: float | str | None
+    found: float | str | None
+    hinders: bool
+    """True: the gains are other gains. False: a recorded setting differs, which is only said."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class InstallationContent:
+    """Gains typed into a controller, as found and as left, with what differs from those approved."""
+
+    installation_id: str
+    submission_id: str
+    gain_set: int
+    """Index of the approved set that as left was compared with."""
+    recorded_by: Person
+    recorded_at: Moment
+    installation: InstallationRequest
+    as_approved: bool
+    differences: tuple[Difference, ...]

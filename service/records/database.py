@@ -1,0 +1,115 @@
+"""The store: one engine that writes, one that only reads, and the one transaction round each request."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from datetime import UTC, datetime
+
+from argon2 import PasswordHasher
+from sqlalchemy import Connection, Engine, create_engine, event, make_url
+from sqlalchemy.engine.interfaces import DBAPIConnection
+from sqlalchemy.orm import Session, sessionmaker
+
+from service.records import history, passwords
+from service.records.errors import StoreNotUsable
+
+Clock = Callable[[], datetime]
+
+SQLITE_BUSY_TIMEOUT_MS = 30_000
+
+
+def system_clock() -> datetime:
+    """Return the time now, in UTC."""
+    return datetime.now(UTC)
+
+
+class Database:
+    """An open store. `writing()` and `reading()` are its only two ways in.
+
+    Writers take turns: SQLite by BEGIN IMMEDIATE, PostgreSQL by a lock on the head of the history. Whatever a
+    writer has checked therefore still holds when it commits.
+    """
+
+    def __init__(self, url: str, clock: Clock, password_hasher: PasswordHasher) -> None:
+        self.clock = clock
+        self._writer = _engine(url, begin="BEGIN IMMEDIATE", read_only=False)
+        self._reader = _engine(url, begin="BEGIN", read_only=True)
+        info = {"password_hasher": password_hasher}
+        self._write = sessionmaker(self._writer, autoflush=False, expire_on_commit=False, info=info)
+        self._read = sessionmaker(self._reader, autoflush=False, expire_on_commit=False, info=info)
+
+    @classmethod
+    def open(
+        cls, url: str, *, clock: Clock = system_clock, password_hasher: PasswordHasher | None = None
+    ) -> Database:
+        """Open a store that `migrating.migrate` has made.
+
+        Another clock than the system's is for demonstrations: raises StoreNotUsable where the first entry of
+        the store's history does not say that it is one. `password_hasher` defaults to RFC 9106's parameters.
+        """
+        database = cls(url, clock, password_hasher or passwords.default_hasher())
+        if clock is not system_clock:
+            with database.reading() as session:
+                if not history.is_demonstration(session):
+                    raise StoreNotUsable("only the store of a demonstration runs on another clock")
+        return database
+
+    def now(self) -> datetime:
+        """Return the time by the store's clock, in UTC."""
+        return self.clock()
+
+    @contextmanager
+    def writing(self) -> Iterator[Session]:
+        """One transaction that may write: committed at the end, rolled back on any exception."""
+        with self._write.begin() as session:
+            history.take_turn(session)
+            yield session
+
+    @contextmanager
+    def reading(self) -> Iterator[Session]:
+        """One transaction that sees one state of the store and cannot write."""
+        with self._read() as session:
+            yield session
+
+    def close(self) -> None:
+        """Close every connection."""
+        self._writer.dispose()
+        self._reader.dispose()
+
+
+def _engine(url: str, *, begin: str, read_only: bool) -> Engine:
+    if make_url(url).get_backend_name() != "sqlite":
+        if read_only:
+            options = {"isolation_level": "REPEATABLE READ", "postgresql_readonly": True}
+            return create_engine(url, execution_options=options)
+        # the lock on the head is what keeps the order; a snapshot taken before it would fork the chain
+        return create_engine(url, isolation_level="READ COMMITTED")
+    engine = create_engine(url, connect_args={"isolation_level": None})
+
+    @event.listens_for(engine, "connect")
+    def _set_pragmas(connection: DBAPIConnection, _record: object) -> None:
+        prepare_sqlite(connection, read_only=read_only)
+
+    @event.listens_for(engine, "begin")
+    def _begin(connection: Connection) -> None:
+        connection.exec_driver_sql(begin)
+
+    return engine
+
+
+def prepare_sqlite(connection: DBAPIConnection, *, read_only: bool) -> None:
+    """Set what SQLite forgets with every connection."""
+    pragmas = (
+        "journal_mode=WAL",
+        "synchronous=FULL",
+        "foreign_keys=ON",
+        # without it INSERT OR REPLACE deletes rows past the triggers
+        "recursive_triggers=ON",
+        f"busy_timeout={SQLITE_BUSY_TIMEOUT_MS}",
+        f"query_only={'ON' if read_only else 'OFF'}",
+    )
+    cursor = connection.cursor()
+    for pragma in pragmas:
+        cursor.execute(f"PRAGMA {pragma}")
+    cursor.close()

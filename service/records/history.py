@@ -1,0 +1,147 @@
+"""The history: one log of entries without gaps, each tied to the one before and to the rows it vouches for.
+
+An entry's exact bytes are its canonical JSON (RFC 8785), kept as they were hashed. They hold the digest of
+the entry before, so that the entries form a chain; their digest is the leaf hash of RFC 9162, section 2.1.1,
+so that the same digests are the leaves of a Merkle tree. They also hold every column of every row that was
+inserted with the entry (bytes columns by their SHA-256), so that a changed, removed or added row is found.
+"""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Iterable
+from dataclasses import dataclass
+from datetime import UTC, datetime
+
+from sqlalchemy import inspect, select
+from sqlalchemy.orm import Session
+
+from service.documents.canonical import canonical_bytes
+from service.documents.strict_json import Plain
+from service.documents.writing import plain
+from service.records import merkle
+from service.records.roles import CONSOLE, Actor
+from service.records.tables.columns import Base
+from service.records.tables.history import HistoryEvent, HistoryHead
+from service.records.views import EntryReference, HeadView
+
+BEFORE_THE_FIRST = "0" * 64
+"""What the first entry has in place of an earlier entry's digest."""
+
+STORE_MADE = "store_made"
+"""The kind of the first entry of every history."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class About:
+    """The loop that an entry is about."""
+
+    loop_id: str
+    site: str
+    tag: str
+    area: str
+
+
+def take_turn(session: Session) -> None:
+    """Wait until no other writer is at work. SQLite waits at BEGIN IMMEDIATE and ignores FOR UPDATE."""
+    session.execute(select(HistoryHead.size).with_for_update())
+
+
+def append(
+    session: Session,
+    *,
+    kind: str,
+    actor: Actor,
+    content: Plain,
+    now: datetime,
+    about: About | None = None,
+    rows: Iterable[Base] = (),
+) -> EntryReference:
+    """Insert `rows` and the one entry that vouches for them, and move the head. Flushes.
+
+    `content` says what happened, in words and numbers that are made to be read. `rows` are kept rows, in the
+    order in which they are inserted.
+    """
+    head = session.execute(select(HistoryHead).with_for_update()).scalar_one()
+    number = head.size + 1
+    rows = tuple(rows)
+    for row in rows:
+        row.event_number = number  # type: ignore[attr-defined]  # every kept table has it
+    entry = {
+        "number": number,
+        "time": plain(now),
+        "kind": kind,
+        "actor": actor.name,
+        "loop_id": about.loop_id if about else None,
+        "site": about.site if about else None,
+        "tag": about.tag if about else None,
+        "area": about.area if about else None,
+        "content": content,
+        "rows": _rows_by_table(rows),
+        "previous": head.digest,
+    }
+    canonical = canonical_bytes(entry)
+    leaf = merkle.leaf_hash(canonical)
+    session.add(
+        HistoryEvent(
+            number=number,
+            time=now,
+            kind=kind,
+            actor=actor.name,
+            loop_id=entry["loop_id"],
+            site=entry["site"],
+            tag=entry["tag"],
+            area=entry["area"],
+            canonical=canonical,
+            previous=head.digest,
+            digest=leaf.hex(),
+        )
+    )
+    head.right_edge = merkle.with_leaf(head.right_edge, head.size, leaf)
+    head.size, head.digest, head.time = number, leaf.hex(), now
+    session.flush()
+    for row in rows:
+        session.add(row)
+        session.flush()
+    return EntryReference(number=number, digest=leaf.hex(), time=now)
+
+
+def begin(session: Session, *, demonstration: bool, now: datetime) -> None:
+    """Write the first entry of an empty history; nothing where there is one."""
+    if head(session).size == 0:
+        append(session, kind=STORE_MADE, actor=CONSOLE, content={"demonstration": demonstration}, now=now)
+
+
+def is_demonstration(session: Session) -> bool:
+    """Say whether the first entry of the history says that the store is a demonstration's."""
+    first = session.get(HistoryEvent, 1)
+    return first is not None and first.kind == STORE_MADE and b'"demonstration":true' in first.canonical
+
+
+def head(session: Session) -> HeadView:
+    """Return where the history stands."""
+    row = session.execute(select(HistoryHead)).scalar_one()
+    return HeadView(size=row.size, digest=row.digest, root=merkle.root(row.right_edge).hex(), time=row.time)
+
+
+def _rows_by_table(rows: tuple[Base, ...]) -> dict[str, Plain]:
+    by_table: dict[str, list[Plain]] = {}
+    for row in rows:
+        by_table.setdefault(row.__tablename__, []).append(_columns(row))
+    return dict(by_table)
+
+
+def _columns(row: Base) -> dict[str, Plain]:
+    """Every column but the entry's own number; bytes by their SHA-256, times as RFC 3339 in UTC."""
+    names = [column.key for column in inspect(type(row)).columns if column.key != "event_number"]
+    return {name: _value(getattr(row, name)) for name in names}
+
+
+def _value(value: object) -> Plain:
+    if isinstance(value, bytes):
+        return hashlib.sha256(value).hexdigest()
+    if isinstance(value, datetime):
+        return plain(value.astimezone(UTC))
+    if value is None or isinstance(value, (str, bool, int)):
+        return value
+    raise TypeError(f"a {type(value).__name__} has no place in a kept column")

@@ -1,0 +1,247 @@
+"""What the records show: frozen dataclasses for API, pages and sheets. Nothing here can be changed."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from datetime import datetime
+from typing import Generic, Literal, TypeVar
+
+from service.analysis.results import Curves, Verdict
+from service.documents.loops import LoopRegistration, ModelVersion
+from service.documents.strict_json import Plain
+from service.records.content import (
+    DecisionContent,
+    InstallationContent,
+    Person,
+    SignedContent,
+    SignedGains,
+)
+from service.records.lifecycle import Action, Kind, State
+from service.records.roles import Role
+
+Item = TypeVar("Item")
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Page(Generic[Item]):
+    """Part of a list; `after` is where the next part begins, None at the end."""
+
+    items: tuple[Item, ...]
+    after: str | None
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class AccountView:
+    """An account, without anything secret."""
+
+    id: str
+    name: str
+    full_name: str
+    roles: tuple[Role, ...]
+    areas: tuple[str, ...]
+    created_at: datetime
+    closed_at: datetime | None
+    last_used_at: datetime | None
+    signing_suspended: bool
+    """The password was reset by one administrator and not yet confirmed by another."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class TokenView:
+    """A token's entry; the token itself is shown once, when it is issued."""
+
+    id: str
+    account_name: str
+    note: str
+    issued_at: datetime
+    revoked_at: datetime | None
+    last_used_at: datetime | None
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class EntryReference:
+    """The entry of the history that a record stands in."""
+
+    number: int
+    digest: str
+    time: datetime
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class LoopView:
+    """A loop at one revision."""
+
+    id: str
+    revision: int
+    loop: LoopRegistration
+    digest: str
+    """SHA-256 of this revision's canonical content."""
+    changed_by: str
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class ModelView:
+    """A model version. `in_force`: the latest of its operating point, and that is not retired."""
+
+    id: str
+    loop_id: str
+    version: int
+    """Counted over all operating points of the loop."""
+    operating_point: str
+    model: ModelVersion
+    in_force: bool
+    added_by: str
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class DecisionView:
+    """One signature."""
+
+    decision: DecisionContent
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class InstallationView:
+    """One record of gains typed into the controller."""
+
+    installation: InstallationContent
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class GainsInForce:
+    """The gains that run in the controller as far as is recorded, whatever has become of their approval.
+
+    `state` may be `lapsed`, `revoked` or `rejected`: then they run and should not.
+    """
+
+    submission_id: str
+    content_digest: str
+    kind: Kind
+    state: State
+    since: datetime
+    gain_sets: tuple[SignedGains, ...]
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class CurvesView:
+    """The stored curves of one recomputation, to be drawn as they were signed."""
+
+    model_id: str
+    operating_point: str
+    gain_set: int
+    curves: Curves
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SettingChange:
+    """One setting, before and after. `percent` None where it has no meaning (a text, or nothing before)."""
+
+    setting: str
+    unit: str
+    before: float | str | None
+    after: float | str | None
+    percent: float | None
+    changed: bool
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Comparison:
+    """Two controllers term by term.
+
+    `common_form` None: both are entered in one form and in the same units, and stand as they were entered;
+    else all terms were brought to that form first.
+    """
+
+    common_form: Literal["parallel"] | None
+    same_gains: bool
+    settings: tuple[SettingChange, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SubmissionSummary:
+    """One line of a list of submissions."""
+
+    id: str
+    loop_id: str
+    site: str
+    tag: str
+    area: str
+    description: str
+    kind: Kind
+    state: State
+    reason: str
+    verdict: Verdict | None
+    """The worst over all operating points; None where there is no model."""
+    submitted_by: Person
+    submitted_at: datetime
+    review_due_at: datetime | None
+    overdue: bool
+    content_digest: str
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SubmissionView:
+    """A submission whole: what is signed, its state at the time it was read, decisions and installations."""
+
+    id: str
+    state: State
+    content: SignedContent
+    content_digest: str
+    area: str
+    """The loop's present area."""
+    verdict: Verdict | None
+    """The worst over all operating points; None where there is no model."""
+    approvals_needed: int
+    deviations_needed: tuple[str, ...]
+    """Names of criteria and findings that an approval has to answer."""
+    hindrances: tuple[str, ...]
+    """Sentences: why no deviation makes this approvable; empty where an approval is possible."""
+    changed_basis: tuple[str, ...]
+    """In words, what has changed since the recomputation; while there is anything, nobody can approve."""
+    decisions: tuple[DecisionView, ...]
+    installations: tuple[InstallationView, ...]
+    comparisons: tuple[Comparison, ...]
+    """One a gain set: the gains in force when this was submitted → these. Empty where none were known."""
+    review_due_at: datetime | None
+    overdue: bool
+    """An emergency change whose review is owed past its time, or a temporary one past its own."""
+    open_actions: tuple[Action, ...]
+    """What the actor who read it may do next."""
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class EventView:
+    """One entry of the history."""
+
+    number: int
+    time: datetime
+    kind: str
+    actor: str
+    loop_id: str | None
+    site: str | None
+    tag: str | None
+    area: str | None
+    content: Plain
+    digest: str
+    previous: str
+    canonical: bytes
+    """The exact bytes that `digest` is the RFC 9162 leaf hash of."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class HeadView:
+    """Where the history stands: entries so far, the last one's digest and time, and the Merkle root of them
+    all.
+    """
+
+    size: int
+    digest: str
+    root: str
+    time: datetime | None
