@@ -11,11 +11,8 @@ import control
 import pytest
 
 from service.analysis.controller import (
-    DerivativeTime,
     IdealController,
-    IntegralTime,
     Proportional,
-    SetpointWeight,
     TwoZerosController,
 )
 from service.analysis.loop import ClosedLoopParts, form_loop
