@@ -1,0 +1,160 @@
+"""Findings on whether the loop is stable at all."""
+
+from __future__ import annotations
+
+from service.analysis.results import Analysis, Stability, WorstCase
+from service.judgement.digits import three_digits
+from service.judgement.finding import Case, Finding
+
+_NUMBERS = {1: "one", 2: "two", 3: "three", 4: "four", 5: "five", 6: "six"}
+
+
+def unstable(case: Case) -> Finding | None:
+    """The loop does not come to rest."""
+    found = next((a.stability for a in case.analyses if a.stability.verdict == "unstable"), None)
+    if found is None:
+        return None
+    return Finding(
+        finding="unstable",
+        weight="stop",
+        sentence=f"The loop is unstable: {_unstable_roots(found)}, so that in automatic PV and output swing "
+        "up or run away. Do not enter these gains.",
+    )
+
+
+def _unstable_roots(stability: Stability) -> str:
+    count = stability.unstable_roots
+    if count is None:
+        return "not all of its characteristic roots are damped"
+    if isinstance(count, str):
+        return "infinitely many of its characteristic roots are undamped"
+    number = _NUMBERS.get(count, str(count))
+    return f"{number} of its characteristic roots {'is' if count == 1 else 'are'} undamped"
+
+
+def scan_destabilises(case: Case) -> Finding | None:
+    """Stable in continuous time and not at the scan interval."""
+    recomputation = case.recomputation
+    sampled = recomputation.sampled
+    if sampled is None or (_verdict(recomputation.continuous), _verdict(sampled)) != ("stable", "unstable"):
+        return None
+    return Finding(
+        finding="scan_destabilises",
+        weight="stop",
+        sentence="A controller that acts all the time would be stable with these gains; at this scan "
+        "interval the loop is unstable. The scan is too slow for them.",
+    )
+
+
+def _verdict(analysis: Analysis) -> str:
+    return analysis.stability.verdict
+
+
+def wrong_action(case: Case) -> Finding | None:
+    """Unstable as entered and stable with the other action."""
+    if case.facts.stable_with_other_action is not True:
+        return None
+    return Finding(
+        finding="wrong_action",
+        weight="stop",
+        sentence="As entered the loop is unstable, with the other action it is stable: the action is very "
+        "likely the wrong way round. Check on the controller whether its output falls or rises when PV "
+        "rises, and in the model the sign of the gain.",
+    )
+
+
+def undecided(case: Case) -> Finding | None:
+    """The verdict could not be reached by every route."""
+    found = next((a.stability for a in case.analyses if a.stability.verdict == "undecided"), None)
+    if found is None:
+        return None
+    reasons = [found.reason, *(route.reason for route in found.routes)]
+    reason = next((text for text in reasons if text), "the methods gave no answer")
+    return Finding(
+        finding="undecided",
+        weight="stop",
+        sentence=f"It could not be decided whether the loop is stable: {reason}. Treat it as not stable.",
+    )
+
+
+def sampled_not_computed(case: Case) -> Finding | None:
+    """A scan was given and the sampled loop is missing."""
+    if "sampled" not in case.recomputation.not_computed:
+        return None
+    return Finding(
+        finding="sampled_not_computed",
+        weight="stop",
+        sentence="A scan interval was given, but the loop as it is scanned was not computed. The verdict "
+        "stays undecided; the figures here hold for a controller that acts all the time.",
+    )
+
+
+def worst_case_not_computed(case: Case) -> Finding | None:
+    """Uncertainty was given and the worst case is missing."""
+    if "worst_case" not in case.recomputation.not_computed:
+        return None
+    return Finding(
+        finding="worst_case_not_computed",
+        weight="caution",
+        sentence="How wrong the model may be was given, but the worst case was not computed. The figures "
+        "here hold for the model exactly as entered.",
+    )
+
+
+def unstable_in_the_box(case: Case) -> Finding | None:
+    """A model within the stated uncertainty makes the loop unstable."""
+    worst = case.recomputation.worst_case
+    if worst is None or worst.stable_for_all is not False:
+        return None
+    return Finding(
+        finding="unstable_within_uncertainty",
+        weight="stop",
+        sentence="Within the stated uncertainty of the model the loop can be unstable"
+        f"{_counterexample(worst)}.",
+    )
+
+
+def _counterexample(worst: WorstCase) -> str:
+    member = worst.counterexample
+    if member is None:
+        return ""
+    factors = {
+        "gain": member.gain,
+        "time constants": member.time_constants,
+        "dead time": member.dead_time,
+    }
+    return ": with " + ", ".join(f"{name} × {three_digits(factor)}" for name, factor in factors.items())
+
+
+def box_undecided(case: Case) -> Finding | None:
+    """It is not proven either way that the loop is stable for every model in the box."""
+    worst = case.recomputation.worst_case
+    if worst is None or worst.stable_for_all is not None:
+        return None
+    return Finding(
+        finding="uncertainty_undecided",
+        weight="caution",
+        sentence="It could not be decided whether the loop stays stable over the whole stated uncertainty of "
+        "the model.",
+    )
+
+
+def hidden_roots(case: Case) -> Finding | None:
+    """Factors of the controller that the plant cancels: they do not show in PV and are there all the same."""
+    hidden = case.facts.hidden_roots
+    if not hidden:
+        return None
+    undamped = [root for root in hidden if (root[0] if isinstance(root, tuple) else root) >= 0]
+    if undamped:
+        return Finding(
+            finding="hidden_roots_unstable",
+            weight="stop",
+            sentence="A term of the controller cancels one of the process that does not die out by itself. "
+            "PV does not show it, but inside the loop it grows or stays: it counts as it is.",
+        )
+    return Finding(
+        finding="hidden_roots_stable",
+        weight="note",
+        sentence="A term of the controller cancels one of the process. It dies out by itself, but no "
+        "set-point test shows it; after a load change it does show.",
+    )
