@@ -7,12 +7,15 @@ from contextlib import closing
 from dataclasses import dataclass
 from datetime import datetime, timedelta
 
+from sqlalchemy import inspect
+
 from service.app import create_app
 from service.context import services
 from service.demonstration.plant import Change, Plant, invented_plant
 from service.demonstration.year import Calendar, Year
-from service.records import accounts, history, migrating, tokens
+from service.records import accounts, migrating, tokens
 from service.records.database import Database
+from service.records.errors import StoreNotUsable
 from service.records.roles import CONSOLE
 from service.settings import Settings
 
@@ -44,10 +47,10 @@ def fill(settings: Settings, now: datetime, on_change: Callable[[Change], None])
 
 
 def _people(database_url: str, plant: Plant, now: datetime) -> dict[str, str]:
-    """Mark the store, add its people and return a token for each."""
-    migrating.migrate(database_url)
+    """Make and mark the store, add its people and return a token for each."""
+    _check_empty(database_url)
+    migrating.migrate(database_url, now=now, demonstration=True)
     with closing(Database.open(database_url)) as database, database.writing() as session:
-        history.begin_demonstration(session, now)
         for person in plant.people:
             new = accounts.NewAccount(
                 name=person.name,
@@ -58,6 +61,12 @@ def _people(database_url: str, plant: Plant, now: datetime) -> dict[str, str]:
             )
             accounts.add(session, CONSOLE, new, now)
         note = "Made with the demonstration"
-        return {
-            person.name: tokens.issue(session, CONSOLE, person.name, note, now)[1] for person in plant.people
-        }
+        names = [person.name for person in plant.people]
+        return {name: tokens.issue(session, CONSOLE, name, note, now)[1] for name in names}
+
+
+def _check_empty(database_url: str) -> None:
+    # before migrating: somebody's records must not even be brought to another schema from here
+    with migrating.open_for_migration(database_url) as connection:
+        if inspect(connection).get_table_names():
+            raise StoreNotUsable("the store is not empty")
