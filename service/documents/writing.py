@@ -8,9 +8,20 @@ from __future__ import annotations
 import json
 from dataclasses import fields, is_dataclass
 from datetime import UTC, datetime
-from functools import cache
+from typing import TYPE_CHECKING
 
+from service.analysis.results import EquivalentTerms
+from service.documents.recomputations import RecomputationAnswer
 from service.documents.strict_json import Plain
+
+if TYPE_CHECKING:
+    from _typeshed import DataclassInstance
+
+LEFT_OUT_WHEN_EMPTY: dict[type, frozenset[str]] = {
+    EquivalentTerms: frozenset(field.name for field in fields(EquivalentTerms)),
+    RecomputationAnswer: frozenset(("curves", "second_opinion")),
+}
+"""Fields that are not written where there is nothing in them; every other field always is."""
 
 
 def plain(value: object) -> Plain:
@@ -26,8 +37,14 @@ def plain(value: object) -> Plain:
     if isinstance(value, datetime):
         return value.astimezone(UTC).isoformat().replace("+00:00", "Z")
     if is_dataclass(value) and not isinstance(value, type):
-        return {name: plain(getattr(value, name)) for name in _names(type(value))}
+        return _plain_dataclass(value)
     raise TypeError(f"a {type(value).__name__} has no place in a document")
+
+
+def _plain_dataclass(value: DataclassInstance) -> Plain:
+    sparse = LEFT_OUT_WHEN_EMPTY.get(type(value), frozenset())
+    given = {field.name: getattr(value, field.name) for field in fields(value)}
+    return {name: plain(item) for name, item in given.items() if name not in sparse or item not in (None, ())}
 
 
 def to_bytes(value: object, *, indent: int | None = None) -> bytes:
@@ -35,8 +52,3 @@ def to_bytes(value: object, *, indent: int | None = None) -> bytes:
     separators = (",", ":") if indent is None else None
     text = json.dumps(plain(value), ensure_ascii=False, allow_nan=False, indent=indent, separators=separators)
     return text.encode("utf-8")
-
-
-@cache
-def _names(dataclass_type: type) -> tuple[str, ...]:
-    return tuple(field.name for field in fields(dataclass_type))

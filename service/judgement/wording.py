@@ -9,8 +9,8 @@ from service.judgement.digits import as_entered, beside_limit, three_digits
 from service.judgement.quantities import QUANTITIES
 
 FORMS: dict[str, str] = {
-    "ideal": "ideal (one gain in front of all three terms)",
-    "series": "series (integral and derivative one behind the other)",
+    "ideal": "ideal (non-interacting: one gain in front of all terms)",
+    "series": "series (interacting: derivative and integral one behind the other)",
     "parallel": "parallel (each term with a gain of its own)",
     "two_zeros": "gain with two zeros",
 }
