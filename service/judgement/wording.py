@@ -108,25 +108,26 @@ def quantity_unit(name: str) -> str:
 
 def told(name: str, quantity: Quantity) -> str:
     """A recomputed quantity with three digits and its unit: "44.1°", "12.3 s", "without limit"."""
-    return _with_unit(name, quantity, three_digits(quantity))
+    return with_unit(name, quantity, three_digits(quantity))
 
 
 def criterion_words(criterion: str, limit: float) -> str:
     """A criterion in words: "gain margin at least 2"."""
     name = quantity_name(criterion)
     bound = "at least" if criterion.endswith("_min") else "at most"
-    return f"{quantity_label(name)} {bound} {_with_unit(name, limit, as_entered(limit))}"
+    return f"{quantity_label(name)} {bound} {with_unit(name, limit, as_entered(limit))}"
 
 
 def criterion_sentence(finding: CriterionFinding) -> str:
     """What came of one criterion, in a sentence."""
     name = quantity_name(finding.criterion)
-    value = _with_unit(name, finding.value, beside_limit(finding.value, finding.limit))
+    value = with_unit(name, finding.value, beside_limit(finding.value, finding.limit))
     wanted = criterion_words(finding.criterion, finding.limit)
     return f"{wanted[0].upper()}{wanted[1:]}: {value}, {OUTCOMES[finding.outcome]}."
 
 
-def _with_unit(name: str, quantity: Quantity, number: str) -> str:
+def with_unit(name: str, quantity: Quantity, number: str) -> str:
+    """A quantity as `number` tells it, with its unit behind; none where it is no number."""
     unit = quantity_unit(name)
     if not unit or quantity is None or isinstance(quantity, str):
         return number
