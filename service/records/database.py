@@ -16,7 +16,14 @@ from service.records.errors import StoreNotUsable
 
 Clock = Callable[[], datetime]
 
-SQLITE_BUSY_TIMEOUT_MS = 30_000
+SQLITE_PRAGMAS = (
+    "journal_mode=WAL",
+    "synchronous=FULL",
+    # without it INSERT OR REPLACE deletes rows past the triggers
+    "recursive_triggers=ON",
+    "busy_timeout=30000",
+)
+"""What SQLite forgets with every connection."""
 
 
 def system_clock() -> datetime:
@@ -33,8 +40,8 @@ class Database:
 
     def __init__(self, url: str, clock: Clock, password_hasher: PasswordHasher) -> None:
         self.clock = clock
-        self._writer = _engine(url, begin="BEGIN IMMEDIATE", read_only=False)
-        self._reader = _engine(url, begin="BEGIN", read_only=True)
+        self._writer = _engine(url, begin="BEGIN IMMEDIATE", pragmas=("foreign_keys=ON",))
+        self._reader = _engine(url, begin="BEGIN", pragmas=("query_only=ON",), read_only=True)
         info = {"password_hasher": password_hasher}
         self._write = sessionmaker(self._writer, autoflush=False, expire_on_commit=False, info=info)
         self._read = sessionmaker(self._reader, autoflush=False, expire_on_commit=False, info=info)
@@ -78,38 +85,33 @@ class Database:
         self._reader.dispose()
 
 
-def _engine(url: str, *, begin: str, read_only: bool) -> Engine:
+def migrating_engine(url: str) -> Engine:
+    """Return the engine of migrations.
+
+    A table that is made anew in SQLite must not take its referrers along.
+    """
+    return _engine(url, begin="BEGIN IMMEDIATE", pragmas=("foreign_keys=OFF",))
+
+
+def _engine(url: str, *, begin: str, pragmas: tuple[str, ...], read_only: bool = False) -> Engine:
     if make_url(url).get_backend_name() != "sqlite":
         if read_only:
             options = {"isolation_level": "REPEATABLE READ", "postgresql_readonly": True}
             return create_engine(url, execution_options=options)
         # the lock on the head is what keeps the order; a snapshot taken before it would fork the chain
         return create_engine(url, isolation_level="READ COMMITTED")
+    # the driver's own way of beginning is late: it reads before it locks, and then finds the store busy
     engine = create_engine(url, connect_args={"isolation_level": None})
 
     @event.listens_for(engine, "connect")
     def _set_pragmas(connection: DBAPIConnection, _record: object) -> None:
-        prepare_sqlite(connection, read_only=read_only)
+        cursor = connection.cursor()
+        for pragma in (*SQLITE_PRAGMAS, *pragmas):
+            cursor.execute(f"PRAGMA {pragma}")
+        cursor.close()
 
     @event.listens_for(engine, "begin")
     def _begin(connection: Connection) -> None:
         connection.exec_driver_sql(begin)
 
     return engine
-
-
-def prepare_sqlite(connection: DBAPIConnection, *, read_only: bool) -> None:
-    """Set what SQLite forgets with every connection."""
-    pragmas = (
-        "journal_mode=WAL",
-        "synchronous=FULL",
-        "foreign_keys=ON",
-        # without it INSERT OR REPLACE deletes rows past the triggers
-        "recursive_triggers=ON",
-        f"busy_timeout={SQLITE_BUSY_TIMEOUT_MS}",
-        f"query_only={'ON' if read_only else 'OFF'}",
-    )
-    cursor = connection.cursor()
-    for pragma in pragmas:
-        cursor.execute(f"PRAGMA {pragma}")
-    cursor.close()

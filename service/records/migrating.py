@@ -1,13 +1,33 @@
-"""Bringing a store to the current schema.
+"""Bringing a store to the current schema. Alembic is configured here, in code.
 
-Alembic is configured here, in code; no file of settings is read.
+The scripts lie in `migrations/` beside the package in a source tree, and inside it in an installed one.
 """
 
 from __future__ import annotations
 
+import re
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from datetime import datetime
+from pathlib import Path
+from typing import Any
 
+from alembic import command
+from alembic.config import Config
+from alembic.operations.ops import MigrationScript
+from alembic.runtime.migration import MigrationContext
+from alembic.script import ScriptDirectory
+from sqlalchemy import Connection
 from sqlalchemy.orm import Session
+
+from service.records import history
+from service.records.database import migrating_engine
+
+
+def scripts_folder() -> Path:
+    """Return the folder of the migration scripts, installed or in the source tree."""
+    installed = Path(__file__).with_name("migrations")
+    return installed if installed.is_dir() else Path(__file__).parents[2] / "migrations"
 
 
 def migrate(url: str, *, now: datetime, demonstration: bool = False) -> None:
@@ -15,9 +35,44 @@ def migrate(url: str, *, now: datetime, demonstration: bool = False) -> None:
 
     `demonstration` is said in the first entry of a new store, for good.
     """
-    raise NotImplementedError
+    with open_for_migration(url) as connection:
+        config = _config()
+        config.attributes["connection"] = connection
+        command.upgrade(config, "head")
+        with Session(connection, autoflush=False) as session:
+            history.begin(session, demonstration=demonstration, now=now)
+            session.flush()
 
 
 def is_current(session: Session) -> bool:
     """Say whether the store is at the schema of this version of the service."""
-    raise NotImplementedError
+    present = MigrationContext.configure(session.connection()).get_current_heads()
+    return set(present) == set(ScriptDirectory.from_config(_config()).get_heads())
+
+
+@contextmanager
+def open_for_migration(url: str) -> Iterator[Connection]:
+    """Open a connection whose one transaction holds the whole migration."""
+    engine = migrating_engine(url)
+    try:
+        with engine.begin() as connection:
+            yield connection
+    finally:
+        engine.dispose()
+
+
+def naming_by_date(today: datetime) -> Callable[[Any, Any, list[MigrationScript]], None]:
+    """Name a new migration by its date and subject, in place of a random number."""
+
+    def name(_context: Any, _revision: Any, scripts: list[MigrationScript]) -> None:
+        for script in scripts:
+            subject = re.sub(r"[^a-z0-9]+", "_", (script.message or "").lower()).strip("_")
+            script.rev_id = f"{today:%Y_%m_%d}_{subject}"
+
+    return name
+
+
+def _config() -> Config:
+    config = Config()
+    config.set_main_option("script_location", str(scripts_folder()).replace("%", "%%"))
+    return config
