@@ -2,9 +2,47 @@
 
 from __future__ import annotations
 
-from service.analysis.controller import Controller
+import numpy as np
+
+from service.analysis.controller import Controller, Scan
+from service.analysis.curves import curves
+from service.analysis.equivalents import equivalent_gains
+from service.analysis.errors import FieldError
+from service.analysis.facts import facts
+from service.analysis.frequency import AxisResponse, WorkBoundError
+from service.analysis.loop import EPSILON, ClosedLoopParts, OpenLoop, form_loop
+from service.analysis.margins import crossovers, margins
+from service.analysis.noise import noise
 from service.analysis.plant import PlantModel, Ranges
-from service.analysis.results import Recomputation
+from service.analysis.realisation import StateSpace, realise
+from service.analysis.responses import Responses, respond
+from service.analysis.results import (
+    Analysis,
+    Curves,
+    LoadStep,
+    Margins,
+    Recomputation,
+    SetpointStep,
+    Stability,
+    Verdict,
+)
+from service.analysis.stability import decide
+from service.analysis.step_metrics import load_step, setpoint_step
+
+NOTE_MARGINS_TOO_MUCH_WORK = "margins_too_much_work"
+"""The dead time makes more crossings than the stated bound; margins are not computed."""
+
+NOTE_NOT_REALISABLE = "responses_not_realisable"
+"""An unfiltered derivative acts on a plant that passes a step at once; no response exists."""
+
+NOTE_TOO_SLOW = "responses_too_slow"
+"""The response needs more pieces than the stated bound before it comes to rest."""
+
+NOTE_IMPULSE = "setpoint_impulse"
+"""The unfiltered derivative of a stepped set point is an impulse; the output has no peak and no travel."""
+
+NOTE_NUMBERS = "numbers_out_of_range"
+"""The loop's numbers leave float64 on the way; nothing is computed."""
 
 
 def recompute(
@@ -21,4 +59,91 @@ def recompute(
     Raises FieldError, its path starting with "plant_model", "controller" or "ranges", where the loop cannot be
     formed: ranges missing for engineering units, an ill-posed loop, a plant kind that is not analysed.
     """
-    raise NotImplementedError
+    parts = form_loop(plant_model, controller, ranges)
+    _refuse_ill_posed(parts.loop)
+    space = realise(parts)
+    continuous, drawn = _continuous(parts, space, settling_band_percent, with_curves)
+    scanned = isinstance(controller.scan, Scan)
+    uncertain = plant_model.uncertainty is not None
+    # a part that was asked for and is not computed must never read as stable
+    verdict: Verdict = "undecided" if scanned else continuous.stability.verdict
+    result = Recomputation(
+        verdict=verdict,
+        judged_on="sampled" if scanned else "continuous",
+        continuous=continuous,
+        sampled=None,
+        worst_case=None,
+        loop_type=max(0, parts.loop.order_at_origin),
+        equivalent_gains=equivalent_gains(controller),
+        facts=facts(parts, space, controller, continuous.stability.verdict),
+        not_computed=(*(("sampled",) if scanned else ()), *(("worst_case",) if uncertain else ())),
+        curves=drawn,
+    )
+    return result
+
+
+def _continuous(
+    parts: ClosedLoopParts, space: StateSpace | None, settling_band_percent: float, with_curves: bool
+) -> tuple[Analysis, Curves | None]:
+    unit = parts.unit_rad_s
+    axis = AxisResponse.of(parts.loop)
+    decided = decide(parts, space, axis)
+    listed = crossovers(axis, unit)
+    stability = decided.stability
+    if stability.verdict != "stable":
+        analysis = Analysis(
+            stability=stability,
+            crossovers=listed,
+            margins=None,
+            setpoint_step=None,
+            load_step=None,
+            noise=None,
+        )
+        return analysis, curves(None, axis, unit) if with_curves else None
+    notes: list[str] = []
+    found_margins: Margins | None = None
+    try:
+        found_margins = margins(axis, listed, unit)
+    except WorkBoundError:
+        notes.append(NOTE_MARGINS_TOO_MUCH_WORK)
+    responses = None
+    if space is None:
+        notes.append(NOTE_NOT_REALISABLE)
+    else:
+        responses = respond(parts, space, decided.roots)
+    setpoint, load = _steps(space, responses, settling_band_percent, unit, notes)
+    analysis = Analysis(
+        stability=stability,
+        crossovers=listed,
+        margins=found_margins,
+        setpoint_step=setpoint,
+        load_step=load,
+        noise=noise(axis, parts),
+        notes=tuple(notes),
+    )
+    return analysis, curves(responses, axis, unit) if with_curves else None
+
+
+def _steps(
+    space: StateSpace | None, responses: Responses | None, band_percent: float, unit: float, notes: list[str]
+) -> tuple[SetpointStep | None, LoadStep | None]:
+    if space is None or responses is None:
+        return None, None
+    if not responses.complete:
+        notes.append(NOTE_TOO_SLOW)
+    impulse = space.setpoint_impulse != 0
+    if impulse:
+        notes.append(NOTE_IMPULSE)
+    # an impulse of the output that the plant passes at once leaves PV without a response in time
+    setpoint = (
+        None if impulse and space.d_y != 0 else setpoint_step(responses, band_percent, unit, impulse=impulse)
+    )
+    return setpoint, load_step(responses, unit)
+
+
+def _refuse_ill_posed(loop: OpenLoop) -> None:
+    if loop.dead_time > 0 or loop.excess != 0 or loop.sign == 0:
+        return
+    # without dead time 1 + L(∞) = 0 leaves an equation without a solution at every instant
+    if abs(1.0 + loop.sign * np.exp(loop.log_gain)) <= 64 * EPSILON:
+        raise FieldError((), "the loop is ill-posed: without dead time its gain at infinite frequency is -1")

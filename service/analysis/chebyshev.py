@@ -1,0 +1,117 @@
+"""Polynomials by their values at Chebyshev extreme points of [0, 1]: differentiation, integration, evaluation.
+
+Source: L. N. Trefethen, Spectral Methods in MATLAB (SIAM 2000), chapters 6 and 12; J.-P. Berrut, L. N. Trefethen,
+Barycentric Lagrange interpolation, SIAM Review 46 (2004) 501-517.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from functools import lru_cache
+
+import numpy as np
+
+from service.analysis.loop import Reals
+
+NODES = 16
+"""Nodes of a piece of a response; e^(λt) over a piece with abs λ·length ≤ 6 is met to some 1e-11."""
+
+
+@lru_cache(maxsize=64)
+def points(count: int) -> Reals:
+    """`count` extreme points on [0, 1], increasing."""
+    k = np.arange(count)
+    x = 0.5 - 0.5 * np.sin(0.5 * np.pi * (count - 1 - 2 * k) / (count - 1))
+    return _frozen(x)
+
+
+@lru_cache(maxsize=64)
+def differentiation(count: int) -> Reals:
+    """Matrix from values to the derivative's values on [0, 1], shape (count, count)."""
+    x, weight = points(count), 1.0 / barycentric_weights(count)
+    difference = x[:, None] - x[None, :] + np.eye(count)
+    matrix = np.outer(weight, 1.0 / weight) / difference
+    matrix -= np.diag(matrix.sum(axis=1))
+    return _frozen(matrix)
+
+
+@lru_cache(maxsize=64)
+def barycentric_weights(count: int) -> Reals:
+    """Weights of the barycentric formula, shape (count,)."""
+    k = np.arange(count)
+    return _frozen(np.where((k == 0) | (k == count - 1), 0.5, 1.0) * (-1.0) ** k)
+
+
+@lru_cache(maxsize=64)
+def integration(count: int) -> Reals:
+    """Matrix from values to the values of the integral from 0, shape (count, count)."""
+    matrix = np.zeros((count, count))
+    # on twice the nodes, since the integral's degree is one higher than the nodes carry
+    fine = points(2 * count)
+    inner = np.linalg.solve(differentiation(2 * count)[1:, 1:], evaluation(count, fine)[1:, :])
+    matrix[1:, :] = evaluation(2 * count, points(count))[1:, 1:] @ inner
+    return _frozen(matrix)
+
+
+def evaluation(count: int, at: Reals) -> Reals:
+    """Matrix from values at the nodes to values at `at`, shape (len(at), count)."""
+    difference = at[:, None] - points(count)
+    exact = difference == 0
+    terms = barycentric_weights(count) / np.where(exact, 1.0, difference)
+    matrix = terms / terms.sum(axis=1, keepdims=True)
+    hit = exact.any(axis=1)
+    matrix[hit] = exact[hit]
+    return np.asarray(matrix)
+
+
+def evaluate_rows(rows: Reals, at: Reals) -> Reals:
+    """The polynomial of each row, values shape (m, count), at its own point, shape (m,)."""
+    return np.asarray((evaluation(rows.shape[1], at) * rows).sum(axis=1))
+
+
+def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[np.ndarray, Reals]:  # type: ignore[type-arg]
+    """Every sign change inside the rows, values shape (r, count): which row, and where on [0, 1]; ordered.
+
+    Changes between two values that are both below `noise` (scalar, or shape (r, 1)) are rounding and left out.
+    """
+    before, after = rows[:, :-1], rows[:, 1:]
+    changes = ((before > 0) != (after > 0)) & (np.maximum(np.abs(before), np.abs(after)) > noise)
+    row, node = np.nonzero(changes)
+    if not row.size:
+        return row, np.empty(0)
+    nodes, chosen = points(rows.shape[1]), rows[row]
+    falling = before[row, node] > 0
+    signed = np.where(falling[:, None], chosen, -chosen)
+    at = falling_zero(lambda x: evaluate_rows(signed, x), nodes[node], nodes[node + 1])
+    return row, at
+
+
+def falling_zero(
+    function: Callable[[Reals], Reals], low: Reals, high: Reals, tolerance: float = 1e-14
+) -> Reals:
+    """Where a function of arrays falls through 0 between `low` and `high`, to `tolerance` of the larger end.
+
+    False position with the Illinois rule and a halving every fourth step.
+    """
+    low, high = low.copy(), high.copy()
+    at_low, at_high = function(low), function(high)
+    for count in range(80):
+        with np.errstate(all="ignore"):
+            middle = (low * at_high - high * at_low) / (at_high - at_low)
+        inside = (middle > low) & (middle < high)
+        middle = np.where(inside & (count % 4 != 3), middle, 0.5 * (low + high))
+        value = function(middle)
+        positive = value > 0
+        at_low, at_high = (
+            np.where(positive, value, 0.5 * at_low),
+            np.where(positive, 0.5 * at_high, value),
+        )
+        low, high = np.where(positive, middle, low), np.where(positive, high, middle)
+        if np.all((high - low <= tolerance * np.abs(high)) | (value == 0)):
+            return np.where(value == 0, middle, 0.5 * (low + high))
+    return 0.5 * (low + high)
+
+
+def _frozen(array: Reals) -> Reals:
+    array.flags.writeable = False
+    return array

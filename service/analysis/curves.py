@@ -1,0 +1,93 @@
+"""Curves for pages and sheets, cut so that the transient fills them and every turn shows."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from service.analysis import chebyshev
+from service.analysis.chebyshev import NODES
+from service.analysis.frequency import AxisResponse, log_response
+from service.analysis.loop import Reals
+from service.analysis.responses import LOAD, SETPOINT, Responses
+from service.analysis.results import Curves, FrequencyCurve, ResponseCurve
+
+MAX_POINTS = 600
+SHOWN_BEYOND = 1.3
+"""A curve ends at so many times the time after which it stays within 1 % of its span."""
+
+SHOWN_MAGNITUDES = (1e-2, 1e2)
+FREQUENCY_POINTS = 160
+
+
+def curves(responses: Responses | None, axis: AxisResponse, unit_rad_s: float) -> Curves:
+    """What is drawn of one loop; times in seconds, frequencies in rad/s."""
+    return Curves(
+        setpoint=None if responses is None else _response(responses, SETPOINT, unit_rad_s),
+        load=None if responses is None else _response(responses, LOAD, unit_rad_s),
+        frequency=_frequency(axis, unit_rad_s),
+    )
+
+
+def _response(responses: Responses, which: int, unit_rad_s: float) -> ResponseCurve:
+    shown = _pieces_shown(responses, which)
+    places = _places(shown)
+    at_places = chebyshev.evaluation(NODES, places).T
+    start, length = responses.start[:shown], responses.length[:shown]
+    times = (start[:, None] + length[:, None] * places).ravel()
+    pv, output = ((signal[which, :shown] @ at_places).ravel() for signal in (responses.pv, responses.output))
+    keep = _without_repeats(times, pv, output)
+    return ResponseCurve(
+        time_s=tuple(float(value) for value in times[keep] / unit_rad_s),
+        pv=tuple(float(value) for value in pv[keep]),
+        output=tuple(float(value) for value in output[keep]),
+    )
+
+
+def _pieces_shown(responses: Responses, which: int) -> int:
+    """How many pieces until PV stays near its end, and a little more."""
+    pv = responses.pv[which]
+    deviation = np.abs(pv - responses.final_pv[which]).max(axis=1)
+    moving = np.flatnonzero(deviation > 0.01 * max(float(np.abs(pv).max()), 1e-300))
+    last = int(moving[-1]) if moving.size else 0
+    end = SHOWN_BEYOND * float(responses.start[last] + responses.length[last])
+    return max(1, int(np.count_nonzero(responses.start < end)))
+
+
+def _places(pieces: int) -> Reals:
+    count = min(12, max(4, MAX_POINTS // pieces))
+    return np.linspace(0.0, 1.0, count)
+
+
+def _without_repeats(times: Reals, pv: Reals, output: Reals) -> np.ndarray:  # type: ignore[type-arg]
+    """Which points stay: of two at one time the second goes unless PV or output jump there."""
+    same_time = np.diff(times) <= 1e-12 * times[-1]
+    scale_pv, scale_output = float(np.abs(pv).max()), float(np.abs(output).max())
+    same = (np.abs(np.diff(pv)) <= 1e-9 * scale_pv) & (np.abs(np.diff(output)) <= 1e-9 * scale_output)
+    return np.concatenate([[True], ~(same_time & same)])
+
+
+def _frequency(axis: AxisResponse, unit_rad_s: float) -> FrequencyCurve | None:
+    magnitude = axis.log_response.real
+    low, high = (math.log(bound) for bound in SHOWN_MAGNITUDES)
+    shown = np.flatnonzero((magnitude > low) & (magnitude < high))
+    if not shown.size:
+        return None
+    ends = axis.omega[max(shown[0] - 1, 0)], axis.omega[min(shown[-1] + 1, len(axis.omega) - 1)]
+    even = np.geomspace(ends[0], ends[1], FREQUENCY_POINTS)
+    inside = axis.omega[(axis.omega > ends[0]) & (axis.omega < ends[1])]
+    omega = np.unique(np.concatenate([even, inside, axis.gain_crossovers]))
+    omega = omega[(omega >= ends[0]) & (omega <= ends[1])]
+    logs = log_response(axis.loop, omega)
+    response = np.exp(logs)
+    return FrequencyCurve(
+        rad_s=_floats(omega * unit_rad_s),
+        magnitude=_floats(np.abs(response)),
+        phase_deg=_floats(np.degrees(logs.imag)),
+        sensitivity=_floats(1.0 / np.abs(1.0 + response)),
+    )
+
+
+def _floats(values: Reals) -> tuple[float, ...]:
+    return tuple(float(value) for value in values)

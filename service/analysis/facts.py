@@ -1,0 +1,87 @@
+"""What can be said of a loop without computing its responses: facts on which sentences are built."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+
+from service.analysis.controller import Controller
+from service.analysis.frequency import AxisResponse
+from service.analysis.loop import EPSILON, ClosedLoopParts, Complexes
+from service.analysis.realisation import StateSpace
+from service.analysis.results import LoopFacts, Verdict
+from service.analysis.stability import decide
+
+ON_AXIS = 64 * EPSILON
+"""A pole nearer to the axis than this, relatively, is taken to lie on it."""
+
+
+def facts(
+    parts: ClosedLoopParts, space: StateSpace | None, controller: Controller, verdict: Verdict
+) -> LoopFacts:
+    """The facts of a loop whose verdict is known."""
+    plant_poles = np.array(parts.plant.poles_rad_s, complex) * parts.unit_rad_s
+    plant_zeros = np.array(parts.plant.zeros_rad_s, complex)
+    terms = parts.controller.feedback
+    integrates = bool(np.any(plant_poles == 0))
+    unstable = bool(np.any(_right_of_axis(plant_poles)))
+    times = 1.0 / np.abs(plant_poles[plant_poles != 0])
+    return LoopFacts(
+        plant_holds_in_manual=bool(np.all(plant_poles.real < -ON_AXIS * np.abs(plant_poles))),
+        plant_integrates=integrates,
+        plant_unstable=unstable,
+        integral_action=terms.ki_per_s != 0,
+        derivative_action=terms.kd_s != 0,
+        derivative_filtered=terms.tf_s > 0,
+        realisable=terms.kd_s == 0 or terms.tf_s > 0,
+        plant_zeros_right_of_axis=int(np.count_nonzero(_right_of_axis(plant_zeros))),
+        controller_zeros_right_of_axis=_controller_zeros_right(parts),
+        hidden_roots=tuple(_plain(complex(root) * parts.unit_rad_s) for root in parts.hidden_roots),
+        stable_with_other_action=_stable_with_other_action(parts, space) if verdict == "unstable" else None,
+        fastest_plant_time_s=float(times.min()) if times.size else None,
+        slowest_plant_time_s=float(times.max()) if times.size else None,
+        integral_time_s=terms.kp / terms.ki_per_s if terms.ki_per_s > 0 and terms.kp > 0 else None,
+        derivative_time_s=terms.kd_s / terms.kp if terms.kd_s > 0 and terms.kp > 0 else None,
+        filter_time_s=terms.tf_s if terms.tf_s > 0 else None,
+        dead_time_s=parts.dead_time_s,
+        dead_time_reduced_by_s=parts.dead_time_reduced_by_s,
+        dead_time_negative_by_s=parts.dead_time_negative_by_s,
+        assumed=tuple(_unknown_fields(controller)),
+    )
+
+
+def with_other_action(
+    parts: ClosedLoopParts, space: StateSpace | None
+) -> tuple[ClosedLoopParts, StateSpace | None]:
+    """The same loop with the controller's action turned round."""
+    loop = replace(parts.loop, sign=-parts.loop.sign)
+    turned = replace(parts, loop=loop, direction=-parts.direction)
+    if space is None:
+        return turned, None
+    return turned, replace(
+        space, c_u=-space.c_u, d_u=-space.d_u, d_r=-space.d_r, setpoint_impulse=-space.setpoint_impulse
+    )
+
+
+def _stable_with_other_action(parts: ClosedLoopParts, space: StateSpace | None) -> bool:
+    turned, turned_space = with_other_action(parts, space)
+    return decide(turned, turned_space, AxisResponse.of(turned.loop)).stability.verdict == "stable"
+
+
+def _right_of_axis(roots: Complexes) -> np.ndarray:  # type: ignore[type-arg]
+    return np.asarray(roots.real > ON_AXIS * np.abs(roots))
+
+
+def _controller_zeros_right(parts: ClosedLoopParts) -> int:
+    zeros = np.array(parts.controller.zeros_rad_s, complex)
+    return int(np.count_nonzero(_right_of_axis(zeros)))
+
+
+def _unknown_fields(controller: Controller) -> list[str]:
+    names = ("derivative_filter", "measurement_filter_s", "setpoint_weight", "scan")
+    return [name for name in names if getattr(controller, name) == "unknown"]
+
+
+def _plain(root: complex) -> float | tuple[float, float]:
+    return root.real if root.imag == 0 else (root.real, root.imag)

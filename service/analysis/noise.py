@@ -1,0 +1,119 @@
+"""How measurement noise reaches the controller output, in continuous time."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from service.analysis.frequency import AxisResponse, WorkBoundError, log_factors
+from service.analysis.loop import ClosedLoopParts, Complexes, Reals, reciprocal_sum
+from service.analysis.margins import Sensitivity, peak
+from service.analysis.results import Noise, Quantity
+
+
+class ControlSensitivity(Sensitivity):
+    """C·F/(1+L), from measurement noise to the controller output; F the measurement filter."""
+
+    def __init__(self, parts: ClosedLoopParts) -> None:
+        super().__init__(parts.loop)
+        self._parts = parts
+        self._zeros = np.array(parts.controller.zeros_rad_s, complex) / parts.unit_rad_s
+        filter_poles = (-1.0 / parts.measurement_filter,) if parts.measurement_filter > 0 else ()
+        poles = np.array(parts.controller.poles_rad_s, complex) / parts.unit_rad_s
+        self._poles = np.concatenate([poles, np.array(filter_poles, complex)])
+        self._log_gain = _log_gain(parts, self._zeros, self._poles)
+
+    def numerator(self, omega: Reals, response: Complexes) -> Complexes:
+        """abs C·F; its angle plays no part."""
+        return np.exp(self._log_magnitude(omega)).astype(complex)
+
+    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals:
+        """d ln abs C·F/dω."""
+        s = 1j * omega
+        return np.asarray((1j * (reciprocal_sum(s, self._zeros) - reciprocal_sum(s, self._poles))).real)
+
+    def bound(self, magnitude: Reals) -> Reals:
+        """No bound follows from abs L alone but through the largest abs C·F."""
+        return self._largest_numerator / (1.0 - magnitude)
+
+    def ends(self) -> list[float]:
+        """abs of C·F/(1+L) at ω = 0 and the values it tends to as ω grows; inf where it grows without bound."""
+        return [self._at_origin(), *self._at_infinity()]
+
+    def high_frequency(self) -> float:
+        """lim abs C·F; inf where it grows."""
+        excess = len(self._poles) - len(self._zeros)
+        return 0.0 if excess > 0 else (math.exp(self._log_gain) if excess == 0 else math.inf)
+
+    def _log_magnitude(self, omega: Reals) -> Reals:
+        logs = log_factors(omega, self._zeros) - log_factors(omega, self._poles)
+        return np.asarray(logs.real + self._log_gain)
+
+    @property
+    def _largest_numerator(self) -> float:
+        # only asked where L is small, far up: there abs C·F is near its limit or falls towards it
+        far = np.array([10.0 * max([1.0, *np.abs(self._zeros), *np.abs(self._poles)])])
+        return max(float(np.exp(self._log_magnitude(far))[0]), self.high_frequency())
+
+    def _at_origin(self) -> float:
+        """With integral action 1/abs P(0); without it abs C(0)/abs(1 + L(0))."""
+        order = int(np.count_nonzero(self._poles == 0)) - int(np.count_nonzero(self._zeros == 0))
+        loop = self.loop
+        nonzero = [np.log(np.abs(roots[roots != 0])).sum() for roots in (self._zeros, self._poles)]
+        coefficient = math.exp(self._log_gain + float(nonzero[0]) - float(nonzero[1]))
+        # A ~ a·s^(−order), 1 + L ~ c·s^(−order of L) or 1 + L(0)
+        loop_order = max(loop.order_at_origin, 0)
+        if order > loop_order:
+            return math.inf
+        if order < loop_order:
+            return 0.0
+        return coefficient / abs((1.0 if loop.order_at_origin <= 0 else 0.0) + self._loop_at_origin())
+
+    def _loop_at_origin(self) -> float:
+        return self.loop.origin_coefficient if self.loop.order_at_origin >= 0 else 0.0
+
+    def _at_infinity(self) -> list[float]:
+        high, loop = self.high_frequency(), self.loop
+        if loop.excess > 0 or loop.sign == 0:
+            return [high]
+        if loop.excess < 0:
+            # both grow: C·F/L = 1/P(∞)
+            return [math.exp(self._log_gain - loop.log_gain) if math.isinf(high) else 0.0]
+        last = loop.sign * math.exp(loop.log_gain)
+        turned = [last] if loop.dead_time == 0 else [abs(last), -abs(last)]
+        return [high / abs(1.0 + value) for value in turned]
+
+
+def noise(axis: AxisResponse, parts: ClosedLoopParts) -> Noise:
+    """The figures of noise that need no scan; the loop is stable."""
+    quantity = ControlSensitivity(parts)
+    high = quantity.high_frequency()
+    worst: Quantity
+    if any(math.isinf(value) for value in quantity.ends()):
+        worst = "unbounded"
+    else:
+        try:
+            worst = peak(axis, quantity).value
+        except WorkBoundError:
+            worst = None
+    return Noise(
+        output_gain_high_frequency="unbounded" if math.isinf(high) else high,
+        max_control_sensitivity=worst,
+    )
+
+
+def _log_gain(parts: ClosedLoopParts, zeros: Complexes, poles: Complexes) -> float:
+    """ln of the leading coefficient of C·F in the loop's unit, from the scaled parallel terms."""
+    terms = parts.feedback
+    leading = next(
+        value
+        for value in (
+            terms.kp * terms.tf_s + terms.kd_s,
+            terms.kp + terms.ki_per_s * terms.tf_s,
+            terms.ki_per_s,
+        )
+        if value != 0
+    )
+    filtered = parts.measurement_filter
+    return math.log(abs(leading) / (terms.tf_s or 1.0) / (filtered or 1.0))
