@@ -11,6 +11,8 @@ for _variable in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
 
 import click  # noqa: E402  the variables above come first on purpose
 
+from service.documents.version import SERVICE_VERSION  # noqa: E402  see above
+
 SUBJECTS: dict[str, tuple[str, str]] = {
     "account": ("service.command.account", "Make and change accounts."),
     "demo": ("service.command.demo", "Show the service on an invented plant."),
@@ -46,6 +48,6 @@ class LazyGroup(click.Group):
 
 
 @click.group(cls=LazyGroup, context_settings={"help_option_names": ["-h", "--help"]})
-@click.version_option(package_name="gain-signoff", prog_name="gain-signoff")
+@click.version_option(SERVICE_VERSION, prog_name="gain-signoff")
 def main() -> None:
     """Recompute, sign and keep the changes of a plant's PID gains."""

@@ -5,10 +5,11 @@ from __future__ import annotations
 import platform
 from dataclasses import dataclass
 from functools import cache
-from importlib.metadata import PackageNotFoundError, version
 
-SERVICE_VERSION_FALLBACK = "not installed"
-"""Where the service runs from a source tree that no installer has seen."""
+import numpy
+import scipy
+
+from service.documents.version import SERVICE_VERSION
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -25,15 +26,8 @@ class Engine:
 def engine() -> Engine:
     """The versions in this process."""
     return Engine(
-        service=_service_version(),
-        numpy=version("numpy"),
-        scipy=version("scipy"),
+        service=SERVICE_VERSION,
+        numpy=numpy.__version__,
+        scipy=scipy.__version__,
         python=platform.python_version(),
     )
-
-
-def _service_version() -> str:
-    try:
-        return version("gain-signoff")
-    except PackageNotFoundError:
-        return SERVICE_VERSION_FALLBACK

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from service.analysis.results import LoopFacts, Margins
 from service.judgement.digits import three_digits, time
-from service.judgement.finding import Case, Finding
+from service.judgement.finding import Case, Finding, Weight
 
 OFFSET_MIN = 1e-6
 """Share of a step from which on an offset is told; below it is rounding."""
@@ -20,8 +20,31 @@ _LESS_GAIN = (
     "another valve or sensor span, a fouled sensor, an operating point with less gain, an output at its limit"
 )
 
-_NOTES: dict[str, str] = {}
-"""Codes of `Analysis.notes` → what they say."""
+_NOTES: dict[str, tuple[Weight, str]] = {
+    "margins_too_much_work": (
+        "caution",
+        "The loop gain passes 1 too often for the margins to be computed: the dead time is very long beside "
+        "the other times of the loop. There are no margins.",
+    ),
+    "responses_not_realisable": (
+        "caution",
+        "An unfiltered derivative acts on a process that answers at once: there is no response to show.",
+    ),
+    "responses_too_slow": (
+        "caution",
+        "The loop comes to rest so slowly beside its fastest part that the response was not followed to its "
+        "end. Figures that need the end are left out.",
+    ),
+    "setpoint_impulse": (
+        "note",
+        "The unfiltered derivative sees the set point: at a step of it the output jumps without limit.",
+    ),
+    "numbers_out_of_range": (
+        "stop",
+        "The numbers of this loop are too large or too small to compute with; nothing was. Check the units.",
+    ),
+}
+"""Codes of `Analysis.notes` → weight and sentence."""
 
 
 def setpoint_offset(case: Case) -> Finding | None:
@@ -150,11 +173,7 @@ def settling_time_sensitive(case: Case) -> Finding | None:
 def not_computed_parts(case: Case) -> list[Finding]:
     """What an analysis says it could not compute."""
     codes = dict.fromkeys(code for analysis in case.analyses for code in analysis.notes)
-    return [Finding(finding=code, weight="caution", sentence=_note(code)) for code in codes]
-
-
-def _note(code: str) -> str:
-    return _NOTES.get(code, f"A part of the analysis could not be computed ({code.replace('_', ' ')}).")
+    return [Finding(finding=code, weight=_NOTES[code][0], sentence=_NOTES[code][1]) for code in codes]
 
 
 def _margins(case: Case) -> Margins | None:
