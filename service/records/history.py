@@ -9,7 +9,7 @@ inserted with the entry (bytes columns by their SHA-256), so that a changed, rem
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from datetime import UTC, datetime
 
@@ -52,15 +52,15 @@ def append(
     *,
     kind: str,
     actor: Actor,
-    content: Plain,
+    content: Mapping[str, object],
     now: datetime,
     about: About | None = None,
     rows: Iterable[Base] = (),
 ) -> EntryReference:
     """Insert `rows` and the one entry that vouches for them, and move the head. Flushes.
 
-    `content` says what happened, in words and numbers that are made to be read. `rows` are kept rows, in the
-    order in which they are inserted.
+    `content` says what happened, in words and numbers that are made to be read (whatever
+    `service.documents.writing.plain` takes). `rows` are kept rows, in the order in which they are inserted.
     """
     head = session.execute(select(HistoryHead).with_for_update()).scalar_one()
     number = head.size + 1
@@ -76,7 +76,7 @@ def append(
         "site": about.site if about else None,
         "tag": about.tag if about else None,
         "area": about.area if about else None,
-        "content": content,
+        "content": plain(dict(content)),
         "rows": _rows_by_table(rows),
         "previous": head.digest,
     }
