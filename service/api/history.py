@@ -1,0 +1,61 @@
+"""The history of everything that was done, and the checkpoint by which a copy of it is held to account."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from flask import Blueprint, request
+
+from service.api import answers, history_csv, representations
+from service.api.answers import Answer
+from service.api.operations import Call, reads
+from service.api.queries import Instant, NoQuery, PageQuery, Text
+from service.records import queries
+from service.records.queries import HistoryFilter
+
+blueprint = Blueprint("history", __name__, url_prefix="/v1/history")
+
+JSON_OR_CSV = ("application/json", "text/csv")
+
+
+@dataclass(frozen=True, kw_only=True)
+class HistoryQuery(PageQuery):
+    """Which entries: `since` included, `until` excluded."""
+
+    site: Text | None = None
+    tag: Text | None = None
+    area: Text | None = None
+    since: Instant | None = None
+    until: Instant | None = None
+    actor: Text | None = None
+    kind: Text | None = None
+
+
+@blueprint.get("")
+@reads(HistoryQuery, representations.Event, a_list=True, media_types=JSON_OR_CSV)
+def list_history(call: Call, query: HistoryQuery) -> Answer:
+    """List the entries of the history, earliest first; as CSV where Accept asks for text/csv."""
+    media_type = answers.preferred(request, JSON_OR_CSV)
+    wanted = HistoryFilter(
+        site=query.site,
+        tag=query.tag,
+        area=query.area,
+        since=query.since,
+        until=query.until,
+        actor=query.actor,
+        kind=query.kind,
+    )
+    part = queries.history(call.session, call.actor, wanted, answers.after(query), query.limit)
+    page = answers.page(part, representations.Event.of)
+    return history_csv.as_csv(page, part.items) if media_type == "text/csv" else page
+
+
+@blueprint.get("/<int:number>")
+@reads(NoQuery, representations.WholeEvent)
+def show_entry(call: Call, _query: NoQuery, number: int) -> Answer:
+    """Show one entry with the exact text that its digest is made from."""
+    view = queries.entry(call.session, call.actor, number)
+    whole = representations.WholeEvent(
+        event=representations.Event.of(view), canonical=view.canonical.decode()
+    )
+    return answers.document(whole)

@@ -1,0 +1,192 @@
+"""The API's description of itself (OpenAPI 3.1), made from the operations and what they read and send."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterator
+from dataclasses import dataclass
+from typing import Any
+
+from flask import Blueprint, Flask, Response, current_app
+from werkzeug.routing import Rule
+
+from service.api import answers, openapi_schemas, problems
+from service.api.answers import Answer
+from service.api.openapi_schemas import Schemas
+from service.api.operations import Changing, Computing, Operation, Reading
+from service.api.problems import ProblemType
+from service.documents import writing
+from service.documents.engine import engine
+
+blueprint = Blueprint("openapi", __name__, url_prefix="/v1")
+
+Json = dict[str, Any]
+
+ABOUT = (
+    "A tuning tool registers loops and models and submits gains; the service recomputes them by itself, a "
+    "second person signs, and the sheet goes to the panel. Site procedure, local codes and licensed practice "
+    "govern."
+)
+ALWAYS = (problems.UNAUTHENTICATED, problems.BAD_REQUEST, problems.UNAVAILABLE)
+WITH_BODY = (
+    problems.NOT_JSON,
+    problems.INVALID_FIELDS,
+    problems.TOO_LARGE,
+    problems.UNSUPPORTED_MEDIA_TYPE,
+    problems.IDEMPOTENCY_KEY_REUSED,
+)
+CHANGING = (problems.FORBIDDEN, problems.CONFLICT)
+REPLACING = (problems.PRECONDITION_REQUIRED, problems.PRECONDITION_FAILED)
+SIGNING = (problems.SIGNING_REFUSED, problems.PRECONDITION_FAILED, problems.TOO_MANY_REQUESTS)
+
+PROBLEM_SCHEMA: Json = {
+    "type": "object",
+    "description": "A refusal (RFC 9457). Types are listed at /problems.",
+    "required": ["type", "title", "status", "instance"],
+    "properties": {
+        "type": {"type": "string", "format": "uri-reference"},
+        "title": {"type": "string"},
+        "status": {"type": "integer"},
+        "detail": {"type": "string"},
+        "instance": {"type": "string", "format": "uri"},
+        "errors": {
+            "type": "array",
+            "items": {
+                "type": "object",
+                "required": ["pointer", "detail"],
+                "properties": {"pointer": {"type": "string"}, "detail": {"type": "string"}},
+            },
+        },
+    },
+}
+
+
+@dataclass(frozen=True)
+class Route:
+    """One operation at its address, for one method."""
+
+    path: str
+    method: str
+    tag: str
+    operation: Operation
+
+
+@blueprint.get("/openapi.json")
+def show_description() -> Response:
+    """Give this description. Open to all."""
+    return answers.response(Answer(body=writing.to_bytes(description(current_app))))
+
+
+def description(app: Flask) -> Json:
+    """Return the OpenAPI 3.1 document of an application's operations."""
+    routes = list(routes_of(app))
+    schemas = openapi_schemas.of(tuple(route.operation for route in routes))
+    paths: dict[str, Json] = {}
+    for route in routes:
+        paths.setdefault(route.path, {})[route.method] = _operation(route, schemas)
+    return {
+        "openapi": "3.1.0",
+        "info": {"title": "Gain sign-off service", "version": engine().service, "description": ABOUT},
+        "servers": [{"url": "/"}],
+        "security": [{"token": []}],
+        "paths": paths,
+        "components": {
+            "schemas": schemas.definitions | {"Problem": PROBLEM_SCHEMA},
+            "securitySchemes": {"token": {"type": "http", "scheme": "bearer"}},
+        },
+    }
+
+
+def routes_of(app: Flask) -> Iterator[Route]:
+    """Yield every operation of an application, by path."""
+    for rule in sorted(app.url_map.iter_rules(), key=lambda rule: rule.rule):
+        operation = app.view_functions[rule.endpoint]
+        if isinstance(operation, Operation):
+            yield Route(_path(rule), _method(rule), rule.endpoint.split(".")[0], operation)
+
+
+def _path(rule: Rule) -> str:
+    return re.sub(r"<(?:\w+:)?(\w+)>", r"{\1}", rule.rule)
+
+
+def _method(rule: Rule) -> str:
+    (method,) = (rule.methods or set()) - {"HEAD", "OPTIONS"}
+    return method.lower()
+
+
+def _operation(route: Route, schemas: Schemas) -> Json:
+    operation = route.operation
+    described: Json = {
+        "operationId": operation.__name__,
+        "tags": [route.tag],
+        "summary": operation.summary,
+        "parameters": [*_path_parameters(route), *_query_parameters(operation, schemas), *_headers(route)],
+        "responses": {str(operation.status): _success(operation, schemas)} | _refusals(route),
+    }
+    if isinstance(operation, Changing | Computing):
+        content = {"application/json": {"schema": schemas.body(operation)}}
+        described["requestBody"] = {"required": True, "content": content}
+    return described
+
+
+def _path_parameters(route: Route) -> Iterator[Json]:
+    for name in re.findall(r"{(\w+)}", route.path):
+        kind = "integer" if name == "number" else "string"
+        yield {"name": name, "in": "path", "required": True, "schema": {"type": kind}}
+
+
+def _query_parameters(operation: Operation, schemas: Schemas) -> Iterator[Json]:
+    if isinstance(operation, Reading):
+        for name, schema in schemas.query(operation).items():
+            yield {"name": name, "in": "query", "required": False, "schema": schema}
+
+
+def _headers(route: Route) -> Iterator[Json]:
+    if route.method == "post":
+        text = "The same key and body give the first answer again."
+        schema: Json = {"type": "string", "minLength": 1, "maxLength": 200}
+        yield {"name": "Idempotency-Key", "in": "header", "description": text, "schema": schema}
+    if route.method == "put":
+        text = "The ETag of the last reading."
+        yield {
+            "name": "If-Match",
+            "in": "header",
+            "required": True,
+            "description": text,
+            "schema": {"type": "string"},
+        }
+
+
+def _success(operation: Operation, schemas: Schemas) -> Json:
+    content: Json = {name: {} for name in operation.media_types}
+    if "application/json" in content and operation.answer is not None:
+        content["application/json"] = {"schema": schemas.answer(operation)}
+    return {"description": operation.summary, "content": content}
+
+
+def _refusals(route: Route) -> Json:
+    by_status: dict[str, list[ProblemType]] = {}
+    for problem in _problems(route):
+        by_status.setdefault(str(problem.status), []).append(problem)
+    schema = {"$ref": "#/components/schemas/Problem"}
+    return {
+        status: {
+            "description": "; ".join(f"{problem.name}: {problem.title}" for problem in found),
+            "content": {"application/problem+json": {"schema": schema}},
+        }
+        for status, found in sorted(by_status.items())
+    }
+
+
+def _problems(route: Route) -> Iterator[ProblemType]:
+    yield from ALWAYS
+    yield problems.BAD_QUERY
+    if "{" in route.path:
+        yield problems.NOT_FOUND
+    if isinstance(route.operation, Changing | Computing):
+        yield from WITH_BODY
+    if isinstance(route.operation, Changing):
+        yield from CHANGING
+        yield from SIGNING if route.operation.trace else ()
+    if route.method == "put":
+        yield from REPLACING

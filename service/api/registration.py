@@ -1,0 +1,37 @@
+"""Every blueprint of the API."""
+
+from __future__ import annotations
+
+from flask import Flask
+
+from service.api import (
+    decisions,
+    health,
+    history,
+    installations,
+    loops,
+    openapi,
+    problem_pages,
+    recomputations,
+    sheets,
+    submissions,
+)
+
+BLUEPRINTS = (
+    recomputations.blueprint,
+    loops.blueprint,
+    submissions.blueprint,
+    decisions.blueprint,
+    installations.blueprint,
+    sheets.blueprint,
+    history.blueprint,
+    openapi.blueprint,
+    problem_pages.blueprint,
+    health.blueprint,
+)
+
+
+def register(app: Flask) -> None:
+    """Add the API to an application."""
+    for blueprint in BLUEPRINTS:
+        app.register_blueprint(blueprint)

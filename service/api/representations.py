@@ -1,0 +1,281 @@
+"""How the records look in JSON: what a reader of the API sees, flat where the records keep parts apart.
+
+Each is a frozen dataclass, so that the API description is made from the very shape that is sent.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, fields
+from datetime import datetime
+from typing import Any, Literal
+
+from service.analysis.controller import Controller
+from service.analysis.results import Verdict
+from service.documents.loops import LoopRegistration, ModelVersion
+from service.documents.recomputations import RecomputationAnswer
+from service.documents.submissions import Tool
+from service.judgement.claims import Claims
+from service.judgement.criteria import Criteria, CriterionFinding
+from service.records.content import (
+    DecisionContent,
+    InstallationContent,
+    Person,
+    SignedContent,
+    SignedGains,
+    SignedGainsInForce,
+    SignedRecomputation,
+    WorstCriterion,
+)
+from service.records.lifecycle import Action, Kind, State
+from service.records.views import (
+    Comparison,
+    DecisionView,
+    EntryReference,
+    EventView,
+    InstallationView,
+    LoopView,
+    ModelView,
+    SubmissionView,
+)
+
+
+@dataclass(frozen=True, kw_only=True)
+class LoopIdentity:
+    """Which loop, at which revision."""
+
+    id: str
+    revision: int
+
+
+@dataclass(frozen=True, kw_only=True)
+class Loop(LoopRegistration, LoopIdentity):
+    """A loop at one revision."""
+
+    digest: str
+    """SHA-256 of this revision's canonical content."""
+    changed_by: str
+    entry: EntryReference
+
+    @classmethod
+    def of(cls, view: LoopView) -> Loop:
+        """Represent a loop."""
+        return cls(
+            **_fields_of(view.loop),
+            id=view.id,
+            revision=view.revision,
+            digest=view.digest,
+            changed_by=view.changed_by,
+            entry=view.entry,
+        )
+
+
+@dataclass(frozen=True, kw_only=True)
+class ModelIdentity:
+    """Which model version of which loop."""
+
+    id: str
+    loop_id: str
+    version: int
+    in_force: bool
+    """The latest of its operating point, and that is not retired."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Model(ModelVersion, ModelIdentity):
+    """A model version."""
+
+    added_by: str
+    entry: EntryReference
+
+    @classmethod
+    def of(cls, view: ModelView) -> Model:
+        """Represent a model version."""
+        return cls(
+            **_fields_of(view.model),
+            id=view.id,
+            loop_id=view.loop_id,
+            version=view.version,
+            in_force=view.in_force,
+            added_by=view.added_by,
+            entry=view.entry,
+        )
+
+
+@dataclass(frozen=True, kw_only=True)
+class ModelReference:
+    """The model version that a recomputation was made with."""
+
+    id: str
+    version: int
+    operating_point: str
+
+
+@dataclass(frozen=True, kw_only=True)
+class RecomputationOfSubmission:
+    """What was recomputed with one model, and the limits it was held against."""
+
+    model: ModelReference
+    gain_set: int
+    """Index into the submission's gain sets; 0 where it has one controller."""
+    criteria: Criteria
+    hard_floors: tuple[CriterionFinding, ...]
+    """Limits that no deviation makes good."""
+    result: RecomputationAnswer
+    """As `POST /v1/recomputations` answers, without curves."""
+
+    @classmethod
+    def of(cls, signed: SignedRecomputation, content: SignedContent) -> RecomputationOfSubmission:
+        """Represent one recomputation of what was signed."""
+        version = next(model.version for model in content.models if model.id == signed.model_id)
+        return cls(
+            model=ModelReference(id=signed.model_id, version=version, operating_point=signed.operating_point),
+            gain_set=signed.gain_set,
+            criteria=signed.criteria,
+            hard_floors=signed.hard_floors,
+            result=signed.answer,
+        )
+
+
+@dataclass(frozen=True, kw_only=True)
+class Decision(DecisionContent):
+    """One signature, with the entry of the history that it stands in."""
+
+    entry: EntryReference
+
+    @classmethod
+    def of(cls, view: DecisionView) -> Decision:
+        """Represent a decision."""
+        return cls(**_fields_of(view.decision), entry=view.entry)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Installation(InstallationContent):
+    """Gains typed into the controller, with the entry of the history that says so."""
+
+    entry: EntryReference
+
+    @classmethod
+    def of(cls, view: InstallationView) -> Installation:
+        """Represent an installation."""
+        return cls(**_fields_of(view.installation), entry=view.entry)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Submission:
+    """A submission whole, in its state at the time of reading."""
+
+    id: str
+    state: State
+    content_digest: str
+    verdict: Verdict | None
+    """The worst over all operating points; null where there is no model."""
+    kind: Kind
+    loop_id: str
+    loop_revision: int
+    loop: LoopRegistration
+    reason: str
+    safety_effect: str
+    controller: Controller | None
+    gain_sets: tuple[SignedGains, ...] | None
+    submitted_by: Person
+    submitted_at: datetime
+    prepared_by: tuple[Person, ...]
+    tool: Tool | None
+    claims: Claims | None
+    temporary_until: datetime | None
+    install_by: datetime | None
+    criteria_source: Literal["loop", "service_floors"]
+    criteria: tuple[WorstCriterion, ...]
+    recomputations: tuple[RecomputationOfSubmission, ...]
+    approvals_needed: int
+    deviations_needed: tuple[str, ...]
+    hindrances: tuple[str, ...]
+    changed_basis: tuple[str, ...]
+    decisions: tuple[Decision, ...]
+    installations: tuple[Installation, ...]
+    gains_in_force: SignedGainsInForce | None
+    """Those that ran when this was submitted; part of what is signed."""
+    comparison: tuple[Comparison, ...]
+    """One a gain set: those gains in force → these."""
+    review_due_at: datetime | None
+    overdue: bool
+    open_actions: tuple[Action, ...]
+    """What the account that reads may do next."""
+    entry: EntryReference
+
+    @classmethod
+    def of(cls, view: SubmissionView) -> Submission:
+        """Represent a submission."""
+        return cls(
+            id=view.id,
+            **_of_view(view),
+            **_of_content(view.content),
+            comparison=view.comparisons,
+            decisions=tuple(Decision.of(decision) for decision in view.decisions),
+            installations=tuple(Installation.of(installation) for installation in view.installations),
+        )
+
+
+@dataclass(frozen=True, kw_only=True)
+class Event:
+    """One entry of the history."""
+
+    number: int
+    time: datetime
+    kind: str
+    actor: str
+    loop_id: str | None
+    site: str | None
+    tag: str | None
+    area: str | None
+    content: Any
+    digest: str
+    previous: str
+
+    @classmethod
+    def of(cls, view: EventView) -> Event:
+        """Represent an entry."""
+        return cls(**{name: getattr(view, name) for name in cls.__dataclass_fields__})
+
+
+@dataclass(frozen=True, kw_only=True)
+class WholeEvent:
+    """One entry with the text whose UTF-8 bytes `digest` is the leaf hash of (RFC 9162, section 2.1.1)."""
+
+    event: Event
+    canonical: str
+
+
+def _of_view(view: SubmissionView) -> dict[str, Any]:
+    names = (
+        "state",
+        "content_digest",
+        "verdict",
+        "approvals_needed",
+        "deviations_needed",
+        "hindrances",
+        "changed_basis",
+        "review_due_at",
+        "overdue",
+        "open_actions",
+        "entry",
+    )
+    return {name: getattr(view, name) for name in names}
+
+
+def _of_content(content: SignedContent) -> dict[str, Any]:
+    changed = ("submission_id", "gain_sets", "models", "recomputations")
+    kept = {name: value for name, value in _fields_of(content).items() if name not in changed}
+    # as it was sent: one controller, or sets with their conditions
+    alone = content.gain_sets[0].controller if content.gain_sets[0].condition is None else None
+    return kept | {
+        "controller": alone,
+        "gain_sets": content.gain_sets if alone is None else None,
+        "recomputations": tuple(
+            RecomputationOfSubmission.of(signed, content) for signed in content.recomputations
+        ),
+    }
+
+
+def _fields_of(record: Any) -> dict[str, Any]:
+    return {field.name: getattr(record, field.name) for field in fields(record)}

@@ -1,0 +1,81 @@
+"""A WSGI application on a socket until the process is told to end; what was begun is then finished first."""
+
+from __future__ import annotations
+
+import signal
+import socket
+import threading
+import time
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from types import FrameType
+
+import waitress
+from flask import Flask
+from waitress import wasyncore
+from waitress.server import TcpWSGIServer
+
+from service.command.errors import UserMistake
+
+THREADS = 8
+DRAIN_S_MAX = 30.0
+"""How long requests that were begun may take after the signal; a recomputation has a work bound far below
+it."""
+
+
+def serve_until_told(app: Flask, host: str, port: int, on_ready: Callable[[str], None]) -> None:
+    """Serve `app` until SIGTERM or SIGINT, then finish the requests that were begun and return.
+
+    `on_ready` is called once with the address; port 0 takes a free one. Raises UserMistake where the address
+    cannot be listened at.
+    """
+    listener = _listen(host, port)
+    server = waitress.create_server(app, map={}, sockets=[listener], threads=THREADS, ident=None)
+    with _told_to_end(server) as told:
+        on_ready(_address(listener))
+        _loop(server, until=told.is_set)
+        server.del_channel()
+        listener.close()
+        deadline = time.monotonic() + DRAIN_S_MAX
+        _loop(server, until=lambda: not _busy(server) or time.monotonic() > deadline)
+        server.task_dispatcher.shutdown()
+
+
+def _listen(host: str, port: int) -> socket.socket:
+    family = socket.AF_INET6 if ":" in host else socket.AF_INET
+    try:
+        return socket.create_server((host, port), family=family)
+    except OSError as refused:
+        raise UserMistake(f"cannot listen at {host}:{port}: {refused.strerror or refused}") from None
+
+
+def _address(listener: socket.socket) -> str:
+    host, port = listener.getsockname()[:2]
+    return f"http://[{host}]:{port}" if ":" in host else f"http://{host}:{port}"
+
+
+@contextmanager
+def _told_to_end(server: TcpWSGIServer) -> Iterator[threading.Event]:
+    # waitress alone ends its loop at the signal and leaves answers that a worker has just written unsent
+    told = threading.Event()
+
+    def tell(_signal: int, _frame: FrameType | None) -> None:
+        told.set()
+        server.pull_trigger()
+
+    before = {number: signal.signal(number, tell) for number in (signal.SIGTERM, signal.SIGINT)}
+    try:
+        yield told
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)
+
+
+def _loop(server: TcpWSGIServer, until: Callable[[], bool]) -> None:
+    while not until():
+        wasyncore.loop(timeout=0.5, use_poll=True, map=server._map, count=1)
+
+
+def _busy(server: TcpWSGIServer) -> bool:
+    channels = list(server.active_channels.values())
+    return any(channel.requests or channel.request or channel.total_outbufs_len for channel in channels)

@@ -1,0 +1,68 @@
+"""The store that the settings name, for commands: opened, used in one transaction, closed."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from datetime import datetime
+
+from sqlalchemy.exc import SQLAlchemyError
+from sqlalchemy.orm import Session
+
+from service.command.errors import UserMistake
+from service.documents.errors import FieldProblem
+from service.records.database import Database
+from service.records.errors import FieldErrors, RecordsError
+from service.settings import Settings
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Visit:
+    """A transaction, and the time by the store's clock."""
+
+    session: Session
+    now: datetime
+
+
+@contextmanager
+def mistakes_in_a_sentence() -> Iterator[None]:
+    """Turn what the records refuse, and a store that cannot be reached, into one sentence."""
+    try:
+        yield
+    except FieldErrors as refused:
+        raise UserMistake("; ".join(_sentence(problem) for problem in refused.errors)) from None
+    except RecordsError as refused:
+        raise UserMistake(refused.detail) from None
+    except SQLAlchemyError as failed:
+        # only the driver's own words: the statement and the address of the database stay out
+        reason = getattr(failed, "orig", None) or failed
+        raise UserMistake(f"the database cannot be used: {reason}") from None
+
+
+@contextmanager
+def writing() -> Iterator[Visit]:
+    """One transaction that may write."""
+    with mistakes_in_a_sentence(), _open() as database, database.writing() as session:
+        yield Visit(session=session, now=database.now())
+
+
+@contextmanager
+def reading() -> Iterator[Visit]:
+    """One transaction that cannot write."""
+    with mistakes_in_a_sentence(), _open() as database, database.reading() as session:
+        yield Visit(session=session, now=database.now())
+
+
+@contextmanager
+def _open() -> Iterator[Database]:
+    database = Database.open(Settings.from_environment().database_url)
+    try:
+        yield database
+    finally:
+        database.close()
+
+
+def _sentence(problem: FieldProblem) -> str:
+    name = problem.pointer.strip("/").replace("/", " ")
+    return f"{name}: {problem.detail}" if name else problem.detail

@@ -1,0 +1,43 @@
+"""What a request needs of the running service, set once when the application is assembled.
+
+Lives here: the one object that api and pages share, and the request's identifier. May import: flask, the
+records. Must never know: JSON, HTML, the environment.
+"""
+
+from __future__ import annotations
+
+import uuid
+from dataclasses import dataclass, field
+
+from flask import Flask, current_app, g
+
+from service.records.database import Database
+
+_EXTENSION = "gain-signoff"
+
+
+@dataclass(frozen=True, kw_only=True)
+class Services:
+    """What the running service works with. The time is the database's: `database.now()`."""
+
+    database: Database
+    secret_key: str = field(repr=False)
+
+
+def attach(app: Flask, services: Services) -> None:
+    """Make `services` those of the application's requests."""
+    app.extensions[_EXTENSION] = services
+
+
+def services() -> Services:
+    """Return the services of the application that handles the present request."""
+    attached: Services = current_app.extensions[_EXTENSION]
+    return attached
+
+
+def request_id() -> str:
+    """Return the identifier of the present request: a UUID made here, never taken from a header."""
+    if "request_id" not in g:
+        g.request_id = str(uuid.uuid4())
+    identifier: str = g.request_id
+    return identifier
