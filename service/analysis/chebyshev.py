@@ -6,11 +6,11 @@ Barycentric Lagrange interpolation, SIAM Review 46 (2004) 501-517.
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from functools import lru_cache
 
 import numpy as np
 
+from service.analysis.brackets import newton_zero
 from service.analysis.loop import Reals
 
 NODES = 16
@@ -80,36 +80,13 @@ def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[np.ndarray, Reals]
     if not row.size:
         return row, np.empty(0)
     nodes, chosen = points(rows.shape[1]), rows[row]
-    falling = before[row, node] > 0
-    signed = np.where(falling[:, None], chosen, -chosen)
-    at = falling_zero(lambda x: evaluate_rows(signed, x), nodes[node], nodes[node + 1])
-    return row, at
+    slopes = chosen @ differentiation(rows.shape[1]).T
 
+    def value_and_slope(at: Reals) -> tuple[Reals, Reals]:
+        matrix = evaluation(rows.shape[1], at)
+        return (matrix * chosen).sum(axis=1), (matrix * slopes).sum(axis=1)
 
-def falling_zero(
-    function: Callable[[Reals], Reals], low: Reals, high: Reals, tolerance: float = 1e-14
-) -> Reals:
-    """Where a function of arrays falls through 0 between `low` and `high`, to `tolerance` of the larger end.
-
-    False position with the Illinois rule and a halving every fourth step.
-    """
-    low, high = low.copy(), high.copy()
-    at_low, at_high = function(low), function(high)
-    for count in range(80):
-        with np.errstate(all="ignore"):
-            middle = (low * at_high - high * at_low) / (at_high - at_low)
-        inside = (middle > low) & (middle < high)
-        middle = np.where(inside & (count % 4 != 3), middle, 0.5 * (low + high))
-        value = function(middle)
-        positive = value > 0
-        at_low, at_high = (
-            np.where(positive, value, 0.5 * at_low),
-            np.where(positive, 0.5 * at_high, value),
-        )
-        low, high = np.where(positive, middle, low), np.where(positive, high, middle)
-        if np.all((high - low <= tolerance * np.abs(high)) | (value == 0)):
-            return np.where(value == 0, middle, 0.5 * (low + high))
-    return 0.5 * (low + high)
+    return row, newton_zero(value_and_slope, nodes[node], nodes[node + 1], before[row, node], 1.0)
 
 
 def _frozen(array: Reals) -> Reals:

@@ -8,7 +8,7 @@ import numpy as np
 
 from service.analysis import chebyshev
 from service.analysis.chebyshev import NODES
-from service.analysis.frequency import AxisResponse, log_response
+from service.analysis.frequency import AxisResponse
 from service.analysis.loop import Reals
 from service.analysis.responses import LOAD, SETPOINT, Responses
 from service.analysis.results import Curves, FrequencyCurve, ResponseCurve
@@ -79,7 +79,7 @@ def _frequency(axis: AxisResponse, unit_rad_s: float) -> FrequencyCurve | None:
     inside = axis.omega[(axis.omega > ends[0]) & (axis.omega < ends[1])]
     omega = np.unique(np.concatenate([even, inside, axis.gain_crossovers]))
     omega = omega[(omega >= ends[0]) & (omega <= ends[1])]
-    logs = log_response(axis.loop, omega)
+    logs = axis.loop.log_response(omega)
     response = np.exp(logs)
     return FrequencyCurve(
         rad_s=_floats(omega * unit_rad_s),

@@ -3,7 +3,7 @@
 The magnitude does not depend on dead time and the phase is a sum of arctangents less ωθ, so both are known
 without unwrapping. The grid is fine relative to the distance from jω to the nearest zero or pole; between two of
 its points magnitude and phase turn at most once, and each is split there, so that a crossover is bracketed on a
-monotone piece and the list is complete. Where Newton does not contract, the bracket is halved.
+monotone piece and the list is complete.
 """
 
 from __future__ import annotations
@@ -14,7 +14,9 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
+import numpy.typing as npt
 
+from service.analysis.brackets import newton_zero
 from service.analysis.loop import Complexes, OpenLoop, Reals
 
 FINE_STEP = 0.25
@@ -27,23 +29,16 @@ LISTED_FACTORS = (0.01, 100.0)
 """Gain factors for which phase crossovers are listed."""
 
 MAX_LISTED = 50
-MAX_PHASE_TARGETS = 20_000
-"""Work bound: so many crossings of -180° are looked at; past it margins are not computed."""
 
+HALVINGS_AT_TURNS = 12
+"""A turn is placed to 2^-12 of its grid step: it only splits a bracket."""
 
-class WorkBoundError(Exception):
-    """More work than the stated bound; what was asked for is left undecided."""
-
-
-ValueAndSlope = Callable[[Reals], tuple[Reals, Reals]]
+Indices = npt.NDArray[np.intp]
 
 
 @dataclass(frozen=True, eq=False)
 class AxisResponse:
-    """ln L and its derivative by ω on a grid of ω > 0, shapes (k,), increasing; the phase is continuous.
-
-    `truncated_phase` is True where the work bound cut the list of phase crossovers.
-    """
+    """ln L and its derivative by ω on a grid of ω > 0, shapes (k,), increasing; the phase is continuous."""
 
     loop: OpenLoop
     omega: Reals
@@ -54,118 +49,132 @@ class AxisResponse:
     def of(loop: OpenLoop) -> AxisResponse:
         """Sample the loop on its own grid."""
         omega = frequency_grid(loop)
-        return AxisResponse(loop, omega, log_response(loop, omega), 1j * loop.log_derivative(1j * omega))
+        return AxisResponse(loop, omega, *loop.on_axis(omega))
+
+    @cached_property
+    def _magnitude_turns(self) -> Reals:
+        """Where abs L turns, shape (t,)."""
+        return self._turns(self.log_slope.real, lambda omega: self.loop.on_axis(omega)[1].real)
 
     @cached_property
     def gain_crossovers(self) -> Reals:
         """Every ω > 0 where abs L = 1, increasing, shape (m,)."""
-
-        def magnitude(omega: Reals) -> tuple[Reals, Reals]:
-            return log_response(self.loop, omega).real, -self.loop.log_derivative(1j * omega).imag
-
-        omega, values, _ = self._split_at_turns(self.log_response.real, self.log_slope.real, magnitude)
-        rises = np.flatnonzero((values[:-1] > 0) != (values[1:] > 0))
-        if not rises.size:
+        omega, values = self._with_turns(self._magnitude_turns, self.log_response.real, np.real)
+        crossed = np.flatnonzero((values[:-1] > 0) != (values[1:] > 0))
+        if not crossed.size:
             return np.empty(0)
-        return solve_brackets(magnitude, omega[rises], omega[rises + 1], values[rises])
+
+        def magnitude(at: Reals) -> tuple[Reals, Reals]:
+            logs, slopes = self.loop.on_axis(at)
+            return logs.real, slopes.real
+
+        return newton_zero(magnitude, omega[crossed], omega[crossed + 1], values[crossed])
 
     @cached_property
-    def _phase_pieces(self) -> tuple[Reals, Reals, Reals]:
-        def phase(omega: Reals) -> tuple[Reals, Reals]:
-            return log_response(self.loop, omega).imag, self.loop.log_derivative(1j * omega).real
-
-        omega, values, inserted = self._split_at_turns(self.log_response.imag, self.log_slope.imag, phase)
-        magnitudes = np.empty_like(omega)
-        magnitudes[~inserted] = self.log_response.real
-        if inserted.any():
-            magnitudes[inserted] = log_response(self.loop, omega[inserted]).real
-        return omega, values, magnitudes
-
-    @cached_property
-    def phase_crossovers(self) -> tuple[Reals, Reals]:
-        """Where L is real and negative: ω, increasing, and ln abs L there, shapes (m,).
-
-        Complete for abs L ≥ 0.01, and to lower values until one with abs L < 1 is found or none is left.
-        Raises WorkBoundError where there are too many.
-        """
-        floor = math.log(1.0 / LISTED_FACTORS[1])
-        lowest = float(self.log_response.real.min())
-        while True:
-            omega, logs = self._phase_crossovers_above(floor - 0.1)
-            if np.any(logs < 0) or floor < lowest:
-                return omega, logs
-            floor -= math.log(100.0)
-
-    def _phase_crossovers_above(self, log_floor: float) -> tuple[Reals, Reals]:
-        omega, phase, magnitudes = self._phase_pieces
-        turns = np.floor((phase + math.pi) / (2 * math.pi))
-        relevant = np.maximum(magnitudes[:-1], magnitudes[1:]) >= log_floor - 0.5
+    def phase_crossovers(self) -> PhaseCrossings:
+        """Where L is real and negative: the lowest of them, and those that bound the margins."""
+        turns = self._turns(self.log_slope.imag, lambda omega: self.loop.on_axis(omega)[1].imag)
+        # abs L is monotone between these, so the first and the last crossing between two of them bound the rest
+        marks = np.sort(np.concatenate([self._magnitude_turns, self.gain_crossovers]))
+        inserted = np.sort(np.concatenate([turns, marks]))
+        omega, logs = self._with_turns(inserted, self.log_response, lambda values: values)
+        phase, magnitude = logs.imag, logs.real
+        rounds = np.floor((phase + math.pi) / (2 * math.pi))
+        counts = np.abs(np.diff(rounds))
         # a phase that stands still at -180° is not crossed; only rounding moves it
-        moves = np.abs(np.diff(phase)) > 1e-12
-        pieces = np.flatnonzero((turns[:-1] != turns[1:]) & relevant & moves)
-        counts = np.abs(turns[pieces + 1] - turns[pieces]).astype(int)
-        if counts.sum() > MAX_PHASE_TARGETS:
-            raise WorkBoundError("too many crossings of -180°")
-        piece = np.repeat(pieces, counts)
-        if not piece.size:
-            return np.empty(0), np.empty(0)
-        within = np.arange(len(piece)) - np.repeat(np.cumsum(counts) - counts, counts)
-        falling = turns[piece + 1] < turns[piece]
-        turn = np.where(falling, turns[piece] - within, turns[piece] + 1 + within)
+        counts[np.abs(np.diff(phase)) <= 1e-12] = 0
+        chosen = _chosen_crossings(omega, magnitude, counts, marks)
+        pieces, within = chosen.pieces, chosen.within
+        falling = rounds[pieces + 1] < rounds[pieces]
+        turn = np.where(falling, rounds[pieces] - within, rounds[pieces] + 1 + within)
         target = turn * (2 * math.pi) - math.pi
+        if not pieces.size:
+            return PhaseCrossings(np.empty(0), np.empty(0), chosen.truncated)
 
         def from_target(at: Reals) -> tuple[Reals, Reals]:
-            return log_response(self.loop, at).imag - target, self.loop.log_derivative(1j * at).real
+            values, slopes = self.loop.on_axis(at)
+            return values.imag - target, slopes.imag
 
-        solved = np.sort(solve_brackets(from_target, omega[piece], omega[piece + 1], phase[piece] - target))
-        return solved, log_response(self.loop, solved).real
+        solved = newton_zero(from_target, omega[pieces], omega[pieces + 1], phase[pieces] - target)
+        return PhaseCrossings(solved, self.loop.log_response(solved).real, chosen.truncated)
 
-    def _split_at_turns(
-        self, values: Reals, slopes: Reals, function: ValueAndSlope
-    ) -> tuple[Reals, Reals, np.ndarray]:  # type: ignore[type-arg]
-        """The grid with the turning points of a function put in: ω, values, and which were put in."""
+    def _turns(self, slopes: Reals, slope_at: Callable[[Reals], Reals]) -> Reals:
+        """Where a function of ω with these slopes on the grid turns, shape (t,)."""
         turning = np.flatnonzero((slopes[:-1] > 0) != (slopes[1:] > 0))
         if not turning.size:
-            return self.omega, values, np.zeros(len(values), dtype=bool)
-        low, high = self.omega[turning].copy(), self.omega[turning + 1].copy()
-        rising = slopes[turning] > 0
-        for _ in range(12):
+            return np.empty(0)
+        low, high, rising = self.omega[turning], self.omega[turning + 1], slopes[turning] > 0
+        for _ in range(HALVINGS_AT_TURNS):
             middle = 0.5 * (low + high)
-            same = (function(middle)[1] > 0) == rising
-            low, high = np.where(same, middle, low), np.where(same, high, middle)
-        middle = 0.5 * (low + high)
-        at = turning + 1
-        inserted = np.insert(np.zeros(len(values), dtype=bool), at, True)
-        return np.insert(self.omega, at, middle), np.insert(values, at, function(middle)[0]), inserted
+            before = (slope_at(middle) > 0) == rising
+            low, high = np.where(before, middle, low), np.where(before, high, middle)
+        return 0.5 * (low + high)
+
+    def _with_turns(
+        self, turns: Reals, values: npt.NDArray[np.generic], part: Callable[[Complexes], npt.NDArray[np.generic]]
+    ) -> tuple[Reals, npt.NDArray[np.generic]]:
+        """The grid and the values on it with further frequencies put in."""
+        if not turns.size:
+            return self.omega, values
+        at = np.searchsorted(self.omega, turns)
+        return np.insert(self.omega, at, turns), np.insert(values, at, part(self.loop.log_response(turns)))
 
 
-def log_response(loop: OpenLoop, omega: Reals) -> Complexes:
-    """ln L(jω) with a phase that is continuous in ω > 0 but for poles and zeros on the axis; shape of `omega`."""
-    return (
-        log_factors(omega, loop.zeros)
-        - log_factors(omega, loop.poles)
-        + (loop.log_gain + 1j * (math.pi if loop.sign < 0 else 0.0) - 1j * omega * loop.dead_time)
+@dataclass(frozen=True, eq=False)
+class PhaseCrossings:
+    """ω, increasing, and ln abs L there, shapes (m,); `truncated` where only those that bound the margins are told."""
+
+    omega: Reals
+    log_magnitude: Reals
+    truncated: bool
+
+
+@dataclass(frozen=True, eq=False)
+class _ChosenCrossings:
+    pieces: Indices
+    within: Reals
+    truncated: bool
+
+
+def _chosen_crossings(omega: Reals, magnitude: Reals, counts: Reals, marks: Reals) -> _ChosenCrossings:
+    """Which crossings to solve for, each as its piece of the grid and its number in it.
+
+    The lowest ones that can be listed, and the first and last of each stretch on which abs L is monotone.
+    """
+    crossed = np.flatnonzero(counts)
+    low, high = (math.log(1.0 / factor) for factor in reversed(LISTED_FACTORS))
+    near = (np.maximum(magnitude[crossed], magnitude[crossed + 1]) >= low) & (
+        np.minimum(magnitude[crossed], magnitude[crossed + 1]) <= high
     )
+    pairs: set[tuple[int, float]] = set()
+    listed = 0
+    for piece in crossed[near]:
+        wanted = int(min(counts[piece], MAX_LISTED + 1 - listed))
+        pairs.update((int(piece), float(number)) for number in range(wanted))
+        listed += wanted
+        if listed > MAX_LISTED:
+            break
+    stretch = np.searchsorted(marks, 0.5 * (omega[crossed] + omega[crossed + 1]))
+    first = np.flatnonzero(np.diff(stretch, prepend=-1))
+    last = np.append(first[1:] - 1, len(crossed) - 1) if crossed.size else first
+    pairs.update((int(crossed[index]), 0.0) for index in first)
+    pairs.update((int(crossed[index]), float(counts[crossed[index]] - 1)) for index in last)
+    ordered = sorted(pairs)
+    pieces = np.array([piece for piece, _ in ordered], dtype=np.intp)
+    return _ChosenCrossings(pieces, np.array([number for _, number in ordered]), listed > MAX_LISTED)
 
 
 def log_factors(omega: Reals, roots: Complexes) -> Complexes:
-    """Σ ln(jω − r) with continuous argument, shape of `omega`.
-
-    Left of the axis the principal argument runs from -90° to 90°; right of it the factor is turned about, and
-    runs from 270° to 90°.
-    """
+    """Σ ln(jω − r) with the continuous argument of `OpenLoop.on_axis`, shape of `omega`."""
     right = roots.real > 0
-    turned = np.where(right, -1.0, 1.0)
-    with np.errstate(divide="ignore"):
-        logs: Complexes = np.log((1j * omega[..., None] - roots) * turned).sum(-1)
-    return logs + 1j * math.pi * int(np.count_nonzero(right))
+    logs = np.log((1j * omega[..., None] - roots) * np.where(right, -1.0, 1.0)).sum(-1)
+    return np.asarray(logs + 1j * math.pi * int(np.count_nonzero(right)))
 
 
 def frequency_grid(loop: OpenLoop) -> Reals:
     """Frequencies ω > 0, increasing, so dense that magnitude and phase turn at most once between two of them."""
     roots = np.concatenate([loop.zeros, loop.poles])
-    magnitudes = np.abs(roots)
-    marks = [float(m) for m in magnitudes if m > 0] + _asymptote_marks(loop)
+    marks = [abs(root) for root in roots.tolist() if root != 0] + _asymptote_marks(loop)
     if loop.dead_time > 0:
         marks.append(1.0 / loop.dead_time)
     low, high = (min(marks), max(marks)) if marks else (1.0, 1.0)
@@ -174,17 +183,19 @@ def frequency_grid(loop: OpenLoop) -> Reals:
         _log_spaced(0.1 * low, 10 * high, FINE_STEP),
         _log_spaced(10 * high, 1e4 * high, COARSE_STEP),
     ]
-    parts += [_near_root(root) for root in roots if root.imag > 0 and abs(root.real) < 0.5 * root.imag]
+    parts += [_near_root(root) for root in roots.tolist() if root.imag > 0 and abs(root.real) < 0.5 * root.imag]
     return np.unique(np.concatenate(parts))
 
 
 def _asymptote_marks(loop: OpenLoop) -> list[float]:
     """Frequencies where the low and high asymptote reach 1 and the ends of the listed range."""
+    if loop.sign == 0:
+        return []
     marks = []
     low_order, high_order = loop.order_at_origin, loop.excess
     for level in (0.0, *(math.log(factor) for factor in LISTED_FACTORS)):
         if low_order != 0:
-            marks.append((math.log(abs(loop.origin_coefficient)) - level) / low_order)
+            marks.append((loop.log_origin_coefficient - level) / low_order)
         if high_order != 0:
             marks.append((loop.log_gain - level) / high_order)
     return [math.exp(min(max(mark, -200.0), 200.0)) for mark in marks]
@@ -204,30 +215,3 @@ def _near_root(root: complex) -> Reals:
         offsets = width * np.sinh(np.arange(0.0, math.asinh(0.7 * centre / width) + FINE_STEP, FINE_STEP))
     both: Reals = np.concatenate([centre - offsets, centre + offsets])
     return both[both > 0]
-
-
-def solve_brackets(function: ValueAndSlope, low: Reals, high: Reals, value_low: Reals) -> Reals:
-    """Roots of a function, one in each bracket, to float64; Newton where it contracts, halving where not.
-
-    `function` takes and returns arrays of the brackets' shape; `value_low` is its value at `low`.
-    """
-    low, high = low.copy(), high.copy()
-    above = value_low > 0
-    at = 0.5 * (low + high)
-    previous = high - low
-    for _ in range(200):
-        value, slope = function(at)
-        left = (value > 0) == above
-        low, high = np.where(left, at, low), np.where(left, high, at)
-        with np.errstate(all="ignore"):
-            newton = at - value / slope
-        tolerance = 2e-16 * np.abs(at)
-        contracts = np.abs(newton - at) <= np.maximum(0.5 * previous, 4 * tolerance)
-        # Newton steps to within rounding of the bracket's end are taken as they are
-        inside = (newton >= low) & (newton <= high)
-        step_to = np.where(contracts & inside, newton, 0.5 * (low + high))
-        previous = np.abs(step_to - at)
-        at = step_to
-        if np.all((previous <= tolerance) | (value == 0)):
-            break
-    return at

@@ -61,13 +61,17 @@ class OpenLoop:
         return int(np.count_nonzero(self.poles == 0)) - int(np.count_nonzero(self.zeros == 0))
 
     @cached_property
-    def origin_coefficient(self) -> float:
-        """c in L(s) → c·s^(−order_at_origin) as s → 0."""
+    def log_origin_coefficient(self) -> float:
+        """ln abs c in L(s) → c·s^(−order_at_origin) as s → 0."""
         zeros, poles = self.zeros[self.zeros != 0], self.poles[self.poles != 0]
-        log = self.log_gain + float(np.log(np.abs(zeros)).sum() - np.log(np.abs(poles)).sum())
+        return self.log_gain + float(np.log(np.abs(zeros)).sum() - np.log(np.abs(poles)).sum())
+
+    @cached_property
+    def origin_coefficient(self) -> float:
+        """The real c in L(s) → c·s^(−order_at_origin) as s → 0."""
         # a factor (0 − r) is negative for a real r right of the axis; conjugate pairs are positive on either side
-        negative = _negative_real_factors(zeros) + _negative_real_factors(poles)
-        return self.sign * (-1.0 if negative % 2 else 1.0) * math.exp(min(log, 700.0))
+        negative = _negative_real_factors(self.zeros) + _negative_real_factors(self.poles)
+        return self.sign * (-1.0 if negative % 2 else 1.0) * math.exp(min(self.log_origin_coefficient, 700.0))
 
     def shifted(self, by: float) -> OpenLoop:
         """The loop as a function of s − `by`: its axis is the line Re s = `by` of this loop."""
@@ -81,16 +85,45 @@ class OpenLoop:
             self, log_gain=self.log_gain + math.log(abs(factor)), sign=self.sign * math.copysign(1, factor)
         )
 
+    @cached_property
+    def _factors(self) -> tuple[Complexes, Reals, Reals, complex]:
+        """All zeros and poles, +1 or -1 for each, -1 where its factor is turned about, and what that adds.
+
+        Left of the axis the principal argument of jω − r runs from -90° to 90°; right of it the factor is turned
+        about, so that its argument runs from 270° to 90° without a jump.
+        """
+        roots = np.concatenate([self.zeros, self.poles])
+        weights = np.concatenate([np.ones(len(self.zeros)), -np.ones(len(self.poles))])
+        right = roots.real > 0
+        angle = math.pi * float(weights[right].sum()) + (math.pi if self.sign < 0 else 0.0)
+        return roots, weights, np.where(right, -1.0, 1.0), complex(self.log_gain, angle)
+
+    def on_axis(self, omega: Reals) -> tuple[Complexes, Complexes]:
+        """(ln L(jω), its derivative by ω) at ω > 0, shapes of `omega`.
+
+        The phase is continuous in ω but for poles and zeros on the axis.
+        """
+        roots, weights, turned, constant = self._factors
+        difference = 1j * omega[..., None] - roots
+        logs = np.log(difference * turned) @ weights + (constant - 1j * self.dead_time * omega)
+        return logs, 1j * ((1.0 / difference) @ weights - self.dead_time)
+
+    def log_response(self, omega: Reals) -> Complexes:
+        """ln L(jω) alone."""
+        roots, weights, turned, constant = self._factors
+        logs = np.log((1j * omega[..., None] - roots) * turned) @ weights
+        return np.asarray(logs + (constant - 1j * self.dead_time * omega))
+
     def log_derivative(self, s: Complexes) -> Complexes:
         """d ln L/ds at `s`, shape of `s`."""
-        return reciprocal_sum(s, self.zeros) - reciprocal_sum(s, self.poles) - self.dead_time
+        roots, weights, _, _ = self._factors
+        return np.asarray((1.0 / (s[..., None] - roots)) @ weights - self.dead_time)
 
     def at(self, s: Complexes) -> Complexes:
         """L(s), shape of `s`; huge values overflow to inf."""
-        with np.errstate(all="ignore"):
-            logs = np.log(s[..., None] - self.zeros).sum(-1) - np.log(s[..., None] - self.poles).sum(-1)
-            value: Complexes = self.sign * np.exp(self.log_gain + logs - s * self.dead_time)
-        return value
+        roots, weights, _, _ = self._factors
+        logs = np.log(s[..., None] - roots) @ weights
+        return np.asarray(self.sign * np.exp(self.log_gain + logs - s * self.dead_time))
 
 
 @dataclass(frozen=True, eq=False)
@@ -167,9 +200,7 @@ def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges |
 
 def reciprocal_sum(s: Complexes, roots: Complexes) -> Complexes:
     """Σ 1/(s − root), shape of `s`."""
-    with np.errstate(all="ignore"):
-        total: Complexes = (1.0 / (s[..., None] - roots)).sum(-1)
-    return total
+    return np.asarray((1.0 / (s[..., None] - roots)).sum(-1))
 
 
 def _negative_real_factors(roots: Complexes) -> int:

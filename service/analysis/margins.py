@@ -16,18 +16,12 @@ margin: P. Seiler, A. Packard, P. Gahinet, An Introduction to Disk Margins, IEEE
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 
-from service.analysis.frequency import (
-    LISTED_FACTORS,
-    MAX_LISTED,
-    AxisResponse,
-    WorkBoundError,
-    log_response,
-)
+from service.analysis.brackets import falling_zero
+from service.analysis.frequency import LISTED_FACTORS, MAX_LISTED, AxisResponse
 from service.analysis.loop import Complexes, OpenLoop, Reals
 from service.analysis.results import Crossovers, GainCrossover, Margins, PhaseCrossover, Quantity
 
@@ -37,10 +31,17 @@ ROTATION_STEP_RAD = 0.2
 MAX_PEAK_POINTS = 200_000
 """Work bound: more points than this and a peak is not computed."""
 
+PEAK_PLACE = 1e-9
+"""How well a peak's frequency is met, relatively; its value, being flat there, to the square of this."""
+
+
+class WorkBoundError(Exception):
+    """More work than the stated bound; what was asked for is not computed."""
+
 
 @dataclass(frozen=True, slots=True)
 class Peak:
-    """A supremum over frequency; `rad_s` (in the loop's unit) is None where it is approached, not attained."""
+    """A supremum over frequency; `omega` (in the loop's unit) is None where it is approached, not attained."""
 
     value: float
     omega: float | None
@@ -54,10 +55,7 @@ def crossovers(axis: AxisResponse, unit_rad_s: float) -> Crossovers:
         GainCrossover(rad_s=float(omega) * unit_rad_s, phase_margin_deg=float(margin))
         for omega, margin in zip(at, margin_deg, strict=True)
     )
-    try:
-        phases, more = _phase_crossovers(axis, unit_rad_s)
-    except WorkBoundError:
-        phases, more = (), True
+    phases, more = _phase_crossovers(axis, unit_rad_s)
     return Crossovers(
         gain_crossovers=gains[:MAX_LISTED],
         phase_crossovers=phases[:MAX_LISTED],
@@ -70,9 +68,10 @@ def margins(axis: AxisResponse, listed: Crossovers, unit_rad_s: float) -> Margin
     loop = axis.loop
     upper, lower = _gain_margins(axis)
     phase_deg, delay = _phase_and_delay_margin(axis)
-    sensitivity = peak(axis, Sensitivity(loop))
-    complementary = peak(axis, ComplementarySensitivity(loop))
-    disk = peak(axis, DiskSensitivity(loop))
+    search = PeakSearch(axis)
+    sensitivity = search.peak(Sensitivity(loop))
+    complementary = search.peak(ComplementarySensitivity(loop))
+    disk = search.peak(DiskSensitivity(loop))
     return Margins(
         gain_margin=upper,
         gain_reduction_margin=lower,
@@ -90,16 +89,16 @@ def margins(axis: AxisResponse, listed: Crossovers, unit_rad_s: float) -> Margin
 
 def _signed_phase_margin(loop: OpenLoop, omega: Reals) -> Reals:
     """180° + arg L at gain crossovers in (−π, π], shape of `omega`."""
-    beyond = log_response(loop, omega).imag + math.pi
+    beyond = loop.log_response(omega).imag + math.pi
     return np.asarray(-((math.pi - beyond) % (2 * math.pi)) + math.pi)
 
 
 def _phase_crossovers(axis: AxisResponse, unit_rad_s: float) -> tuple[tuple[PhaseCrossover, ...], bool]:
-    omega, logs = axis.phase_crossovers
+    crossings = axis.phase_crossovers
     low, high = LISTED_FACTORS
     found = [
-        PhaseCrossover(rad_s=float(at) * unit_rad_s, gain_factor=math.exp(-log))
-        for at, log in zip(omega, logs, strict=True)
+        PhaseCrossover(rad_s=omega * unit_rad_s, gain_factor=math.exp(-log))
+        for omega, log in zip(crossings.omega.tolist(), crossings.log_magnitude.tolist(), strict=True)
         if math.log(low) <= -log <= math.log(high)
     ]
     at_origin, at_infinity = _factors_at_the_ends(axis.loop)
@@ -107,7 +106,7 @@ def _phase_crossovers(axis: AxisResponse, unit_rad_s: float) -> tuple[tuple[Phas
         found.insert(0, PhaseCrossover(rad_s=0.0, gain_factor=at_origin))
     if at_infinity is not None and axis.loop.dead_time == 0 and low <= at_infinity <= high:
         found.append(PhaseCrossover(rad_s="unbounded", gain_factor=at_infinity))
-    return tuple(found), len(found) > MAX_LISTED
+    return tuple(found), crossings.truncated
 
 
 def _factors_at_the_ends(loop: OpenLoop) -> tuple[float | None, float | None]:
@@ -121,7 +120,7 @@ def _factors_at_the_ends(loop: OpenLoop) -> tuple[float | None, float | None]:
 
 
 def _gain_margins(axis: AxisResponse) -> tuple[Quantity, Quantity]:
-    _, logs = axis.phase_crossovers
+    logs = axis.phase_crossovers.log_magnitude.tolist()
     factors = [math.exp(-log) for log in logs] + [f for f in _factors_at_the_ends(axis.loop) if f is not None]
     above = [factor for factor in factors if factor > 1]
     below = [factor for factor in factors if factor < 1]
@@ -144,20 +143,20 @@ class Sensitivity:
     def __init__(self, loop: OpenLoop) -> None:
         self.loop = loop
 
-    def numerator(self, omega: Reals, response: Complexes) -> Complexes:
-        """A in A/(1+L), shape of `omega`."""
-        return np.ones_like(response)
+    def numerator(self, omega: Reals, response: Complexes) -> Complexes | float:
+        """A in A/(1+L), shape of `omega` or one for all."""
+        return 1.0
 
-    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals:
-        """Re d ln A/dω, shape of `omega`; `slope` is d ln L/dω."""
-        return np.zeros_like(omega)
+    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals | float:
+        """Re d ln A/dω, shape of `omega` or one for all; `slope` is d ln L/dω."""
+        return 0.0
 
-    def bound(self, magnitude: Reals) -> Reals:
-        """An upper bound of abs A/(1+L) from abs L alone, where abs L < 1; shape of `magnitude`."""
-        return 1.0 / (1.0 - magnitude)
+    def bound(self, magnitude: Reals, omega: Reals) -> Reals:
+        """An upper bound of abs A/(1+L) where abs L has this value, not 1; shape of `magnitude`."""
+        return 1.0 / np.abs(1.0 - magnitude)
 
     def ends(self) -> list[float]:
-        """Values at ω = 0 and ω → ∞ where they are finite; the largest that is approached along the axis."""
+        """Values at ω = 0 and, behind it, those approached as ω grows."""
         return [abs(self.of_real(value)) for value in end_values(self.loop)]
 
     def of_real(self, response: float) -> float:
@@ -168,17 +167,17 @@ class Sensitivity:
 class ComplementarySensitivity(Sensitivity):
     """T = L/(1+L)."""
 
-    def numerator(self, omega: Reals, response: Complexes) -> Complexes:
+    def numerator(self, omega: Reals, response: Complexes) -> Complexes | float:
         """L itself."""
         return response
 
-    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals:
+    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals | float:
         """Re d ln L/dω."""
         return slope.real
 
-    def bound(self, magnitude: Reals) -> Reals:
-        """abs L/(1 − abs L)."""
-        return magnitude / (1.0 - magnitude)
+    def bound(self, magnitude: Reals, omega: Reals) -> Reals:
+        """abs L/abs(1 − abs L)."""
+        return magnitude / np.abs(1.0 - magnitude)
 
     def of_real(self, response: float) -> float:
         """L/(1+L)."""
@@ -188,18 +187,17 @@ class ComplementarySensitivity(Sensitivity):
 class DiskSensitivity(Sensitivity):
     """(S − T)/2 = (1−L)/(2(1+L)), whose peak is the inverse of the disk margin."""
 
-    def numerator(self, omega: Reals, response: Complexes) -> Complexes:
+    def numerator(self, omega: Reals, response: Complexes) -> Complexes | float:
         """(1 − L)/2."""
         return 0.5 * (1.0 - response)
 
-    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals:
+    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals | float:
         """Re d ln(1 − L)/dω."""
-        with np.errstate(all="ignore"):
-            return np.nan_to_num((-slope * response / (1.0 - response)).real)
+        return (-slope * response / (1.0 - response)).real
 
-    def bound(self, magnitude: Reals) -> Reals:
-        """(1 + abs L)/(2(1 − abs L))."""
-        return 0.5 * (1.0 + magnitude) / (1.0 - magnitude)
+    def bound(self, magnitude: Reals, omega: Reals) -> Reals:
+        """(1 + abs L)/(2·abs(1 − abs L))."""
+        return 0.5 * (1.0 + magnitude) / np.abs(1.0 - magnitude)
 
     def of_real(self, response: float) -> float:
         """(1−L)/(2(1+L))."""
@@ -221,25 +219,75 @@ def end_values(loop: OpenLoop) -> list[float]:
     return values
 
 
-def peak(axis: AxisResponse, quantity: Sensitivity) -> Peak:
-    """The supremum of abs A/(1+L) over the axis.
+class PeakSearch:
+    """Suprema of abs A/(1+L) over one axis, for several A.
 
-    Stationary points are bracketed by the sign of d abs(A/(1+L))²/dω, which is smooth wherever L is, however
-    sharp the peak, and solved by halving and secant. With dead time the points follow its rotation as far down
-    as abs L could still make a larger value than the largest found. Raises WorkBoundError past the bound.
+    abs A/(1+L) cannot exceed a bound that follows from abs L alone, so it is looked for only where that bound is
+    above the largest value met so far; there the points follow the rotation of dead time. Stationary points are
+    bracketed by the sign of d abs(A/(1+L))²/dω, which is smooth wherever L is, however sharp the peak.
     """
-    best = _ends_first(quantity)
-    floor = 0.5
-    done_above = math.inf
-    while True:
-        omega = _points(axis, floor, done_above)
-        best = _largest(best, _stationary_peaks(axis.loop, quantity, omega))
-        if axis.loop.dead_time == 0 or float(quantity.bound(np.array(floor))) <= best.value * (1 + 1e-9):
-            return best
-        if floor < 1e-4:
-            # what is left differs from its end value by less than its bound says, and that is the end's
-            return best
-        done_above, floor = floor, max(0.3 * floor, 5e-5)
+
+    def __init__(self, axis: AxisResponse) -> None:
+        self._axis = axis
+        self._response = np.exp(axis.log_response)
+        magnitude = np.abs(self._response)
+        self._low = np.minimum(magnitude[:-1], magnitude[1:])
+        self._high = np.maximum(magnitude[:-1], magnitude[1:])
+        step = np.diff(axis.omega)
+        self._parts = np.maximum(np.ceil(step * axis.loop.dead_time / ROTATION_STEP_RAD), 1.0)
+
+    def peak(self, quantity: Sensitivity) -> Peak:
+        """The supremum. Raises WorkBoundError past the bound on points."""
+        best = _ends_first(quantity)
+        _, values = _growth(quantity, self._axis.omega, self._response, self._axis.log_slope)
+        met = max(best.value, float(values[np.isfinite(values)].max(initial=0.0)))
+        for candidate in self._stationary(quantity, self._bounds(quantity) > met):
+            # an end that only ties is a supremum that is approached; a peak must stand above it
+            if candidate.value > best.value * (1 + 1e-14):
+                best = candidate
+        return best
+
+    def _bounds(self, quantity: Sensitivity) -> Reals:
+        """What each step of the grid cannot exceed, inf where abs L passes 1 in it."""
+        left, right = self._axis.omega[:-1], self._axis.omega[1:]
+        nearest = np.where(self._high < 1.0, self._high, self._low)
+        bound = np.maximum(quantity.bound(nearest, left), quantity.bound(nearest, right))
+        return np.where((self._low < 1.0) == (self._high < 1.0), bound, np.inf)
+
+    def _stationary(self, quantity: Sensitivity, wanted: np.ndarray) -> list[Peak]:  # type: ignore[type-arg]
+        omega, joined = self._points(wanted)
+        loop = self._axis.loop
+        logs, slope = loop.on_axis(omega)
+        growth, _ = _growth(quantity, omega, np.exp(logs), slope)
+        brackets = np.flatnonzero((growth[:-1] > 0) & (growth[1:] <= 0) & joined)
+        if not brackets.size:
+            return []
+
+        def growth_at(at: Reals) -> Reals:
+            logs, slope = loop.on_axis(at)
+            return _growth(quantity, at, np.exp(logs), slope)[0]
+
+        at = falling_zero(growth_at, omega[brackets], omega[brackets + 1], PEAK_PLACE)
+        logs, slope = loop.on_axis(at)
+        _, values = _growth(quantity, at, np.exp(logs), slope)
+        return [Peak(value, where) for value, where in zip(values.tolist(), at.tolist(), strict=True)]
+
+    def _points(self, wanted: np.ndarray) -> tuple[Reals, np.ndarray]:  # type: ignore[type-arg]
+        """Points that divide the wanted steps, (k,), and whether a point is joined to the next, (k − 1,)."""
+        omega = self._axis.omega
+        index = np.flatnonzero(wanted)
+        parts = self._parts[index]
+        if parts.sum() > MAX_PEAK_POINTS:
+            raise WorkBoundError("too many points to look for a peak")
+        parts = parts.astype(int)
+        count = parts + 1
+        within = np.arange(count.sum()) - np.repeat(np.cumsum(count) - count, count)
+        share = within / np.repeat(parts, count)
+        low, high = np.repeat(omega[index], count), np.repeat(omega[index + 1], count)
+        points = low + (high - low) * share
+        # the last point of a step is the first of the next: not a step of its own
+        joined = within[1:] > 0
+        return points, joined
 
 
 def _ends_first(quantity: Sensitivity) -> Peak:
@@ -248,88 +296,15 @@ def _ends_first(quantity: Sensitivity) -> Peak:
     return Peak(largest, 0.0 if values[0] == largest else None)
 
 
-def _largest(best: Peak, found: list[Peak]) -> Peak:
-    # an end that only ties is the supremum that is approached; a peak must stand above it
-    for candidate in found:
-        if candidate.value > best.value * (1 + 1e-14):
-            best = candidate
-    return best
-
-
-def _points(axis: AxisResponse, floor: float, done_above: float) -> Reals:
-    """Grid points, with points between them that follow the rotation where floor ≤ abs L ≤ done_above."""
-    omega, magnitude = axis.omega, axis.log_response.real
-    rotation = np.diff(omega) * axis.loop.dead_time
-    high = np.maximum(magnitude[:-1], magnitude[1:])
-    low = np.minimum(magnitude[:-1], magnitude[1:])
-    wanted = (high >= math.log(floor) - 0.1) & (low <= math.log(done_above) + 0.1)
-    pieces = np.where(wanted, np.ceil(rotation / ROTATION_STEP_RAD), 1).astype(int)
-    pieces = np.maximum(pieces, 1)
-    if pieces.sum() > MAX_PEAK_POINTS:
-        raise WorkBoundError("too many points to look for a peak")
-    if done_above < math.inf:
-        # what lies above was searched before
-        pieces = np.where(wanted, pieces, 0)
-    if not pieces.sum():
-        return omega[:0]
-    start = np.repeat(omega[:-1], pieces)
-    step = np.repeat(np.diff(omega) / np.maximum(pieces, 1), pieces)
-    within = np.arange(len(start)) - np.repeat(np.cumsum(pieces) - pieces, pieces)
-    last = np.flatnonzero(pieces)[-1]
-    return np.append(start + within * step, omega[last + 1])
-
-
-def _stationary_peaks(loop: OpenLoop, quantity: Sensitivity, omega: Reals) -> list[Peak]:
-    if omega.size < 2:
-        return []
-
-    def growth(at: Reals) -> Reals:
-        return _growth(loop, quantity, at)[0]
-
-    sign = growth(omega)
-    brackets = np.flatnonzero((sign[:-1] > 0) & (sign[1:] <= 0))
-    if not brackets.size:
-        return []
-    # only the highest few can hold the supremum: compare by the larger end value, kept with a wide allowance
-    values = _growth(loop, quantity, omega)[1]
-    ends = np.maximum(values[brackets], values[brackets + 1])
-    brackets = brackets[ends >= 0.5 * ends.max()]
-    at = _zero_between(growth, omega[brackets], omega[brackets + 1])
-    solved = _growth(loop, quantity, at)[1]
-    return [Peak(float(value), float(where)) for value, where in zip(solved, at, strict=True)]
-
-
-def _growth(loop: OpenLoop, quantity: Sensitivity, omega: Reals) -> tuple[Reals, Reals]:
+def _growth(
+    quantity: Sensitivity, omega: Reals, response: Complexes, slope: Complexes
+) -> tuple[Reals, Reals]:
     """(A number with the sign of the slope of abs A/(1+L), and the value itself), shapes of `omega`."""
-    with np.errstate(all="ignore"):
-        response = np.exp(log_response(loop, omega))
-        slope = 1j * loop.log_derivative(1j * omega)
-        distance = 1.0 + response
-        # divided by abs L² where L is large, so that nothing overflows
-        scale = 1.0 / np.maximum(1.0, np.abs(response)) ** 2
-        along = (np.conj(distance) * response * slope).real * scale
-        rate = quantity.numerator_slope(omega, response, slope) * np.abs(distance) ** 2 * scale - along
-        value = np.abs(quantity.numerator(omega, response)) / np.abs(distance)
-    return np.nan_to_num(rate), np.nan_to_num(value)
-
-
-def _zero_between(function: Callable[[Reals], Reals], low: Reals, high: Reals) -> Reals:
-    """Where a function falls through 0 between `low` and `high`: false position (Illinois) with halving; arrays."""
-    low, high = low.copy(), high.copy()
-    at_low, at_high = function(low), function(high)
-    for count in range(60):
-        with np.errstate(all="ignore"):
-            middle = (low * at_high - high * at_low) / (at_high - at_low)
-        inside = (middle > low) & (middle < high)
-        middle = np.where(inside & (count % 4 != 3), middle, 0.5 * (low + high))
-        value = function(middle)
-        positive = value > 0
-        at_low, at_high = (
-            np.where(positive, value, np.where(value < 0, 0.5 * at_low, at_low)),
-            np.where(positive, 0.5 * at_high, value),
-        )
-        low, high = np.where(positive, middle, low), np.where(positive, high, middle)
-        # a peak is flat: its value is right to the square of this
-        if np.all(high - low <= 1e-9 * high):
-            break
-    return 0.5 * (low + high)
+    distance = 1.0 + response
+    # d ln abs(1+L)/dω without dividing by 1 + L; scaled so that nothing overflows where L is large
+    magnitude = np.abs(response)
+    scale = 1.0 / np.maximum(1.0, magnitude * magnitude)
+    along = (np.conj(distance) * response * slope).real
+    near = distance.real**2 + distance.imag**2
+    rate = (quantity.numerator_slope(omega, response, slope) * near - along) * scale
+    return np.nan_to_num(rate), np.abs(quantity.numerator(omega, response)) / np.sqrt(near)

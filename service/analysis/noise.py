@@ -6,10 +6,13 @@ import math
 
 import numpy as np
 
-from service.analysis.frequency import AxisResponse, WorkBoundError, log_factors
+from service.analysis.frequency import AxisResponse, log_factors
 from service.analysis.loop import ClosedLoopParts, Complexes, Reals, reciprocal_sum
-from service.analysis.margins import Sensitivity, peak
+from service.analysis.margins import PeakSearch, Sensitivity, WorkBoundError
 from service.analysis.results import Noise, Quantity
+
+NUMERATOR_ALLOWANCE = 1.2
+"""abs C·F has no sharper features than a quarter of its distance to the nearest zero or pole."""
 
 
 class ControlSensitivity(Sensitivity):
@@ -24,18 +27,18 @@ class ControlSensitivity(Sensitivity):
         self._poles = np.concatenate([poles, np.array(filter_poles, complex)])
         self._log_gain = _log_gain(parts, self._zeros, self._poles)
 
-    def numerator(self, omega: Reals, response: Complexes) -> Complexes:
+    def numerator(self, omega: Reals, response: Complexes) -> Complexes | float:
         """abs C·F; its angle plays no part."""
         return np.exp(self._log_magnitude(omega)).astype(complex)
 
-    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals:
+    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals | float:
         """d ln abs C·F/dω."""
         s = 1j * omega
         return np.asarray((1j * (reciprocal_sum(s, self._zeros) - reciprocal_sum(s, self._poles))).real)
 
-    def bound(self, magnitude: Reals) -> Reals:
-        """No bound follows from abs L alone but through the largest abs C·F."""
-        return self._largest_numerator / (1.0 - magnitude)
+    def bound(self, magnitude: Reals, omega: Reals) -> Reals:
+        """abs C·F/abs(1 − abs L), with an allowance for what abs C·F does inside a step of the grid."""
+        return NUMERATOR_ALLOWANCE * np.exp(self._log_magnitude(omega)) / np.abs(1.0 - magnitude)
 
     def ends(self) -> list[float]:
         """abs of C·F/(1+L) at ω = 0 and the values it tends to as ω grows; inf where it grows without bound."""
@@ -49,12 +52,6 @@ class ControlSensitivity(Sensitivity):
     def _log_magnitude(self, omega: Reals) -> Reals:
         logs = log_factors(omega, self._zeros) - log_factors(omega, self._poles)
         return np.asarray(logs.real + self._log_gain)
-
-    @property
-    def _largest_numerator(self) -> float:
-        # only asked where L is small, far up: there abs C·F is near its limit or falls towards it
-        far = np.array([10.0 * max([1.0, *np.abs(self._zeros), *np.abs(self._poles)])])
-        return max(float(np.exp(self._log_magnitude(far))[0]), self.high_frequency())
 
     def _at_origin(self) -> float:
         """With integral action 1/abs P(0); without it abs C(0)/abs(1 + L(0))."""
@@ -94,7 +91,7 @@ def noise(axis: AxisResponse, parts: ClosedLoopParts) -> Noise:
         worst = "unbounded"
     else:
         try:
-            worst = peak(axis, quantity).value
+            worst = PeakSearch(axis).peak(quantity).value
         except WorkBoundError:
             worst = None
     return Noise(

@@ -17,7 +17,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from service.analysis.frequency import AxisResponse, log_factors, log_response
+from service.analysis.frequency import AxisResponse, log_factors
 from service.analysis.loop import EPSILON, OpenLoop, Reals
 
 ROUNDING_FACTOR = 64.0
@@ -44,7 +44,7 @@ def count_right_of_axis(axis: AxisResponse) -> Count:
     if _touches_at_the_ends(loop):
         return Count(None, reason="a root lies on the axis within the precision of the numbers")
     crossovers = axis.gain_crossovers
-    logs = log_response(loop, crossovers)
+    logs = loop.log_response(crossovers)
     distance = np.abs(1 + np.exp(1j * logs.imag))
     if np.any(distance < rounding(loop, crossovers)):
         return Count(None, reason="a root lies on the axis within the precision of the numbers")
@@ -115,14 +115,14 @@ def _above_one(axis: AxisResponse, edges: Reals) -> list[bool]:
             result.append(bool(samples[np.argmax(np.abs(samples))] > 0))
         else:
             middle = np.array([0.5 * (edges[index - 1] + edges[index])])
-            result.append(bool(log_response(axis.loop, middle).real[0] > 0))
+            result.append(bool(axis.loop.log_response(middle).real[0] > 0))
     return result
 
 
 def _forms(loop: OpenLoop, omega: Reals) -> tuple[Reals, Reals]:
     """The argument in the form for abs L < 1 and in the form for abs L > 1, at crossovers, where both hold."""
     denominator = log_factors(omega, loop.poles).imag
-    response = log_response(loop, omega).imag
+    response = loop.log_response(omega).imag
     half = 0.5 * _wrapped(response)
     # at a crossover Arg(1 + L) is half the principal phase, and Arg(1 + 1/L) its negative
     return denominator + half, denominator + response - half

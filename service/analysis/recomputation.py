@@ -9,9 +9,9 @@ from service.analysis.curves import curves
 from service.analysis.equivalents import equivalent_gains
 from service.analysis.errors import FieldError
 from service.analysis.facts import facts
-from service.analysis.frequency import AxisResponse, WorkBoundError
+from service.analysis.frequency import AxisResponse
 from service.analysis.loop import EPSILON, ClosedLoopParts, OpenLoop, form_loop
-from service.analysis.margins import crossovers, margins
+from service.analysis.margins import WorkBoundError, crossovers, margins
 from service.analysis.noise import noise
 from service.analysis.plant import PlantModel, Ranges
 from service.analysis.realisation import StateSpace, realise
@@ -27,7 +27,7 @@ from service.analysis.results import (
     Verdict,
 )
 from service.analysis.stability import decide
-from service.analysis.step_metrics import load_step, setpoint_step
+from service.analysis.step_metrics import step_metrics
 
 NOTE_MARGINS_TOO_MUCH_WORK = "margins_too_much_work"
 """The dead time makes more crossings than the stated bound; margins are not computed."""
@@ -59,6 +59,18 @@ def recompute(
     Raises FieldError, its path starting with "plant_model", "controller" or "ranges", where the loop cannot be
     formed: ranges missing for engineering units, an ill-posed loop, a plant kind that is not analysed.
     """
+    # zeros and poles on the axis, and what lies beyond float64, show as inf and nan on the way and are met there
+    with np.errstate(all="ignore"):
+        return _recompute(plant_model, controller, ranges, settling_band_percent, with_curves)
+
+
+def _recompute(
+    plant_model: PlantModel,
+    controller: Controller,
+    ranges: Ranges | None,
+    settling_band_percent: float,
+    with_curves: bool,
+) -> Recomputation:
     parts = form_loop(plant_model, controller, ranges)
     _refuse_ill_posed(parts.loop)
     space = realise(parts)
@@ -67,7 +79,7 @@ def recompute(
     uncertain = plant_model.uncertainty is not None
     # a part that was asked for and is not computed must never read as stable
     verdict: Verdict = "undecided" if scanned else continuous.stability.verdict
-    result = Recomputation(
+    return Recomputation(
         verdict=verdict,
         judged_on="sampled" if scanned else "continuous",
         continuous=continuous,
@@ -79,7 +91,6 @@ def recompute(
         not_computed=(*(("sampled",) if scanned else ()), *(("worst_case",) if uncertain else ())),
         curves=drawn,
     )
-    return result
 
 
 def _continuous(
@@ -134,11 +145,9 @@ def _steps(
     impulse = space.setpoint_impulse != 0
     if impulse:
         notes.append(NOTE_IMPULSE)
+    setpoint, load = step_metrics(responses, band_percent, unit, impulse=impulse)
     # an impulse of the output that the plant passes at once leaves PV without a response in time
-    setpoint = (
-        None if impulse and space.d_y != 0 else setpoint_step(responses, band_percent, unit, impulse=impulse)
-    )
-    return setpoint, load_step(responses, unit)
+    return (None if impulse and space.d_y != 0 else setpoint), load
 
 
 def _refuse_ill_posed(loop: OpenLoop) -> None:

@@ -1,280 +1,126 @@
-"""Metrics of step responses, each at a root or turning point of the response itself.
+"""Metrics of both step responses, each at a root or turning point of the response itself.
 
 Definitions are the interface's: rise time from the first passage of 10 % to that of 90 % of the final value;
 settling time the last time outside the band about the final value; overshoot and undershoot from the supremum and
-infimum; integrals of SP − PV. An integral of abs x is the total variation of the integral of x, so that both come
-from the turning points of one function.
+infimum; integrals of SP − PV; the output's travel with its jump at t = 0.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from service.analysis.responses import LOAD, SETPOINT, Responses
+from service.analysis.results import LoadStep, Quantity, SetpointStep
+from service.analysis.signals import ROUNDING, Integrals, Signal, integrals, signals, solved
+from service.analysis.tails import Tail
 
 import numpy as np
 
-from service.analysis import chebyshev
-from service.analysis.chebyshev import NODES
-from service.analysis.loop import Reals
-from service.analysis.responses import LOAD, SETPOINT, Responses
-from service.analysis.results import LoadStep, Quantity, SetpointStep
-from service.analysis.tails import Tail
-
-ROUNDING = 1e-11
-"""Relative to the largest value, what is rounding in a response."""
-
-SENSITIVE_SHARE = 0.01
 RECOVERY_BAND = 0.05
+"""Share of the peak deviation within which a load response counts as recovered."""
+
+NO_OVERSHOOT = 10 * ROUNDING
+"""Relative to the final value, an overshoot that cannot be told from none."""
 
 
-@dataclass(frozen=True, eq=False)
-class Signal:
-    """One signal in pieces: `values` (p, NODES) less `about`, and its turning points in order of time.
-
-    `turning_times`, `turning_values`: (m,), the ends of every piece among them.
-    """
-
-    start: Reals
-    length: Reals
-    values: Reals
-    scale: float
-    turning_pieces: np.ndarray  # type: ignore[type-arg]
-    turning_places: Reals
-    turning_values: Reals
-    tail: Tail | None = None
-
-    @staticmethod
-    def of(start: Reals, length: Reals, values: Reals, tail: Tail | None = None) -> Signal:
-        """Find the turning points of a signal given by its values at the nodes of each piece.
-
-        `tail`: the oscillation about the signal's end that follows the last piece.
-        """
-        scale = float(np.abs(values).max())
-        slopes = values @ chebyshev.differentiation(NODES).T
-        row, place = chebyshev.zeros_of_rows(slopes, ROUNDING * scale * NODES)
-        inner = chebyshev.evaluate_rows(values[row], place)
-        count = len(values)
-        rows = np.concatenate([np.arange(count), row, np.arange(count)])
-        places = np.concatenate([np.zeros(count), place, np.ones(count)])
-        found = np.concatenate([values[:, 0], inner, values[:, -1]])
-        order = np.lexsort((places, rows))
-        return Signal(start, length, values, scale, rows[order], places[order], found[order], tail)
-
-    @property
-    def turning_times(self) -> Reals:
-        """When it turns, (m,)."""
-        return self.start[self.turning_pieces] + self.length[self.turning_pieces] * self.turning_places
-
-    @property
-    def total_variation(self) -> float:
-        """Σ abs of every rise and fall, jumps between pieces included."""
-        pieces = float(np.abs(np.diff(self.turning_values)).sum())
-        return pieces + (self.tail.total_variation() if self.tail else 0.0)
-
-    def first_passage(self, level: float) -> float | None:
-        """The first time at or above `level`; None where it never gets there."""
-        reached = np.flatnonzero(self.turning_values >= level)
-        if not reached.size:
-            return None
-        index = int(reached[0])
-        piece, place = int(self.turning_pieces[index]), float(self.turning_places[index])
-        if place == 0.0:
-            return float(self.start[piece])
-        # it rises all the way from the turning point before
-        low = np.array([float(self.turning_places[index - 1])])
-        row = level - self.values[piece : piece + 1]
-        crossing = chebyshev.falling_zero(lambda at: chebyshev.evaluate_rows(row, at), low, np.array([place]))
-        return float(self.start[piece] + self.length[piece] * crossing[0])
-
-    def last_exit(self, band: float) -> float:
-        """The last time at which abs of the signal is above `band`; 0 where it never is."""
-        if self.tail and (late := self.tail.last_exit(band)) is not None:
-            return late
-        outside = np.flatnonzero(np.abs(self.turning_values) > band)
-        if not outside.size:
-            return 0.0
-        index = int(outside[-1])
-        piece, place = int(self.turning_pieces[index]), float(self.turning_places[index])
-        if place == 1.0 or index + 1 >= len(self.turning_values):
-            return float(self.start[piece] + self.length[piece])
-        high = np.array([float(self.turning_places[index + 1])])
-        side = np.sign(self.turning_values[index])
-        row = side * self.values[piece : piece + 1] - band
-        crossing = chebyshev.falling_zero(
-            lambda at: chebyshev.evaluate_rows(row, at), np.array([place]), high
-        )
-        return float(self.start[piece] + self.length[piece] * crossing[0])
-
-    def turns_near_edge(self, band: float) -> bool:
-        """Whether an extremum that could move the last exit lies within 1 % of the band's edge."""
-        if self.tail and self.tail.turns_near(band, SENSITIVE_SHARE):
-            return True
-        outside = np.flatnonzero(np.abs(self.turning_values) > band * (1 + SENSITIVE_SHARE))
-        # the ends of pieces are no extrema, but the signal passes there only if it is crossing
-        late = slice(int(outside[-1]) + 1 if outside.size else 0, None)
-        inner = (self.turning_places[late] > 0) & (self.turning_places[late] < 1)
-        near = np.abs(np.abs(self.turning_values[late]) - band) <= SENSITIVE_SHARE * band
-        return bool(np.any(inner & near))
-
-    def absolute_integrals(self) -> tuple[float, float, float, float]:
-        """(∫ abs x dt, ∫ x² dt, ∫ t·abs x dt, ∫ x dt) over all pieces."""
-        row, place = chebyshev.zeros_of_rows(self.values, ROUNDING * self.scale)
-        times = self.start[:, None] + self.length[:, None] * chebyshev.points(NODES)
-        summed = self._integrals(self.values)
-        weighted = self._integrals(self.values * times)
-        fine = self.values @ _twice_as_fine().T
-        square = ((fine * fine) @ _fine_weights()) * self.length
-        of_tail = self.tail.absolute_integrals() if self.tail else (0.0, 0.0, 0.0, 0.0)
-        return (
-            _variation_between(summed, row, place) + of_tail[0],
-            float(square.sum()) + of_tail[1],
-            _variation_between(weighted, row, place) + of_tail[2],
-            float(summed[:, -1].sum()) + of_tail[3],
-        )
-
-    def _integrals(self, values: Reals) -> Reals:
-        return np.asarray((values @ chebyshev.integration(NODES).T) * self.length[:, None])
-
-
-def setpoint_step(
+def step_metrics(
     responses: Responses, band_percent: float, unit_rad_s: float, *, impulse: bool
-) -> SetpointStep:
-    """Metrics of the set-point response; times in seconds. `impulse`: the output holds an impulse at t = 0."""
-    final = float(responses.final_pv[SETPOINT])
-    pv = Signal.of(responses.start, responses.length, responses.pv[SETPOINT])
-    output = Signal.of(
-        responses.start,
-        responses.length,
-        responses.output[SETPOINT],
-        _scaled(responses.output_tails, SETPOINT, 1.0),
-    )
+) -> tuple[SetpointStep, LoadStep]:
+    """Metrics of both responses, times in seconds.
+
+    `impulse`: the output holds an impulse at t = 0, so it has no peak and no travel.
+    """
+    pv, output, load_pv = _signals(responses)
+    final, load_final = float(responses.final_pv[SETPOINT]), float(responses.final_pv[LOAD])
+    ended = responses.complete
     meaningful = abs(final) > ROUNDING * max(pv.scale, 1.0)
-    offset = abs(1.0 - final) > ROUNDING
-    rise = settling = peak_time = over = under = None
-    sensitive = False
-    if meaningful:
-        # divided by the final value the response ends at 1, whatever its sign
-        scaled = Signal(
-            pv.start,
-            pv.length,
-            pv.values / final,
-            pv.scale / abs(final),
-            pv.turning_pieces,
-            pv.turning_places,
-            pv.turning_values / final,
-        )
-        tail = _scaled(responses.pv_tails, SETPOINT, 1.0 / final)
-        rise = _rise_time(scaled)
-        over, peak_time = _overshoot(scaled)
-        under = max(0.0, -float(scaled.turning_values.min()))
-        under = under if under > ROUNDING * scaled.scale else 0.0
-        error = Signal.of(responses.start, responses.length, scaled.values - 1.0, tail)
-        if responses.complete:
-            settling = error.last_exit(band_percent / 100.0)
-            sensitive = error.turns_near_edge(band_percent / 100.0)
-    if offset:
-        iae: Quantity = "unbounded"
-        ise: Quantity = "unbounded"
-        itae: Quantity = "unbounded"
-    elif responses.complete:
-        deviation = Signal.of(
-            responses.start,
-            responses.length,
-            1.0 - responses.pv[SETPOINT],
-            _scaled(responses.pv_tails, SETPOINT, -1.0),
-        )
-        a, b, c, _ = deviation.absolute_integrals()
-        iae, ise, itae = a / unit_rad_s, b / unit_rad_s, c / unit_rad_s**2
-    else:
-        iae = ise = itae = None
-    variation: Quantity = None
-    if impulse:
-        variation = "unbounded"
-    elif responses.complete:
-        variation = output.total_variation + abs(float(output.values[0, 0]))
-    return SetpointStep(
+    # divided by the final value the response ends at 1, whatever its sign
+    scaled = pv.times(1.0 / final) if meaningful else None
+    band, peak = band_percent / 100.0, load_pv.turning_values[_largest(load_pv)]
+    passages = [
+        scaled.first_passage(0.1) if scaled else None,
+        scaled.first_passage(0.9) if scaled else None,
+        scaled.less(1.0).last_exit(band) if scaled and ended else None,
+        load_pv.less(load_final).last_exit(RECOVERY_BAND * max(abs(peak), abs(load_final))) if ended else None,
+    ]
+    tenth, nine_tenths, settled, recovered = (_seconds(time, unit_rad_s) for time in solved(passages))
+    error = pv.less(1.0).times(-1.0)
+    of_error, of_load = integrals([error, load_pv]) if ended else (None, None)
+    setpoint = SetpointStep(
         final_value=final,
-        rise_time_s=_seconds(rise, unit_rad_s),
-        settling_time_s=_seconds(settling, unit_rad_s),
-        settling_time_sensitive=sensitive,
-        overshoot_percent=None if over is None else 100.0 * over,
-        undershoot_percent=None if under is None else 100.0 * under,
-        peak_time_s=_seconds(peak_time, unit_rad_s),
-        iae=iae,
-        ise=ise,
-        itae=itae,
-        output_peak="unbounded" if impulse else float(np.abs(output.turning_values).max()),
-        output_total_variation=variation,
+        rise_time_s=None if tenth is None or nine_tenths is None else nine_tenths - tenth,
+        settling_time_s=settled,
+        settling_time_sensitive=bool(scaled and ended and scaled.less(1.0).turns_near_edge(band)),
+        **_overshoot(scaled, unit_rad_s),
+        **_error_integrals(of_error, abs(1.0 - final) > ROUNDING, unit_rad_s),
+        output_peak="unbounded" if impulse else output.scale,
+        output_total_variation=_travel(output, ended=ended, impulse=impulse),
     )
+    return setpoint, _load_step(load_pv, load_final, recovered, of_load, unit_rad_s)
 
 
-def load_step(responses: Responses, unit_rad_s: float) -> LoadStep:
-    """Metrics of the load response; times in seconds."""
-    final = float(responses.final_pv[LOAD])
-    tail = _scaled(responses.pv_tails, LOAD, 1.0)
-    pv = Signal.of(responses.start, responses.length, responses.pv[LOAD], tail)
-    index = int(np.argmax(np.abs(pv.turning_values)))
-    peak, peak_time = float(pv.turning_values[index]), float(pv.turning_times[index])
-    offset = abs(final) > ROUNDING * max(pv.scale, 1e-300)
-    attained: Quantity = peak_time / unit_rad_s
-    if offset and abs(peak) <= abs(final) * (1 + ROUNDING):
-        # the deviation only grows towards its final value
-        peak, attained = final, "unbounded"
-    recovery = iae = integrated = None
-    if responses.complete:
-        about = Signal.of(responses.start, responses.length, responses.pv[LOAD] - final, tail)
-        recovery = about.last_exit(RECOVERY_BAND * abs(peak))
-        if not offset:
-            absolute, _, _, signed = pv.absolute_integrals()
-            iae, integrated = absolute / unit_rad_s, -signed / unit_rad_s
-    return LoadStep(
-        peak_deviation=peak,
-        peak_time_s=attained if peak != 0 else None,
-        recovery_time_s=_seconds(recovery, unit_rad_s),
-        final_value=final if offset else 0.0,
-        iae="unbounded" if offset else iae,
-        integrated_error="unbounded" if offset else integrated,
-    )
+def _signals(responses: Responses) -> list[Signal]:
+    """PV and output of the set-point response and PV of the load response."""
+    pv_tails: tuple[Tail | None, ...] = responses.pv_tails or (None, None)
+    output_tails: tuple[Tail | None, ...] = responses.output_tails or (None, None)
+    values = np.array([responses.pv[SETPOINT], responses.output[SETPOINT], responses.pv[LOAD]])
+    tails = [pv_tails[SETPOINT], output_tails[SETPOINT], pv_tails[LOAD]]
+    return signals(responses.start, responses.length, values, tails)
 
 
-def _rise_time(scaled: Signal) -> float | None:
-    low, high = scaled.first_passage(0.1), scaled.first_passage(0.9)
-    return None if low is None or high is None else high - low
+def _largest(signal: Signal) -> int:
+    return int(np.argmax(np.abs(signal.turning_values)))
 
 
-def _overshoot(scaled: Signal) -> tuple[float, float | None]:
+def _overshoot(scaled: Signal | None, unit_rad_s: float) -> dict[str, float | None]:
+    if scaled is None:
+        return {"overshoot_percent": None, "undershoot_percent": None, "peak_time_s": None}
     index = int(np.argmax(scaled.turning_values))
     over = float(scaled.turning_values[index]) - 1.0
-    if over <= ROUNDING * 10 * scaled.scale:
-        return 0.0, None
-    return over, float(scaled.turning_times[index])
+    under = -float(scaled.turning_values.min())
+    overshoots = over > NO_OVERSHOOT * scaled.scale
+    return {
+        "overshoot_percent": 100.0 * over if overshoots else 0.0,
+        "undershoot_percent": 100.0 * under if under > NO_OVERSHOOT * scaled.scale else 0.0,
+        "peak_time_s": float(scaled.turning_times[index]) / unit_rad_s if overshoots else None,
+    }
 
 
-def _scaled(tails: tuple[Tail, Tail] | None, which: int, factor: float) -> Tail | None:
-    if tails is None:
-        return None
-    return replace(tails[which], amplitude=tails[which].amplitude * factor)
+def _error_integrals(found: Integrals | None, offset: bool, unit_rad_s: float) -> dict[str, Quantity]:
+    if offset:
+        return {"iae": "unbounded", "ise": "unbounded", "itae": "unbounded"}
+    if found is None:
+        return {"iae": None, "ise": None, "itae": None}
+    return {
+        "iae": found.absolute / unit_rad_s,
+        "ise": found.square / unit_rad_s,
+        "itae": found.time_weighted / unit_rad_s**2,
+    }
+
+
+def _travel(output: Signal, *, ended: bool, impulse: bool) -> Quantity:
+    if impulse:
+        return "unbounded"
+    return output.total_variation + abs(float(output.values[0, 0])) if ended else None
+
+
+def _load_step(
+    pv: Signal, final: float, recovered: float | None, found: Integrals | None, unit_rad_s: float
+) -> LoadStep:
+    index = _largest(pv)
+    peak = float(pv.turning_values[index])
+    offset = abs(final) > ROUNDING * max(pv.scale, 1e-300)
+    peak_time: Quantity = float(pv.turning_times[index]) / unit_rad_s
+    if offset and abs(peak) <= abs(final) * (1 + ROUNDING):
+        # the deviation only grows towards its final value
+        peak, peak_time = final, "unbounded"
+    return LoadStep(
+        peak_deviation=peak,
+        peak_time_s=peak_time if peak != 0 else None,
+        recovery_time_s=recovered,
+        final_value=final if offset else 0.0,
+        iae="unbounded" if offset else (found.absolute / unit_rad_s if found else None),
+        integrated_error="unbounded" if offset else (-found.signed / unit_rad_s if found else None),
+    )
 
 
 def _seconds(time: float | None, unit_rad_s: float) -> float | None:
     return None if time is None else time / unit_rad_s
-
-
-def _variation_between(integrals: Reals, row: np.ndarray, place: Reals) -> float:  # type: ignore[type-arg]
-    """Σ abs of the integral's changes between the given places, piece by piece."""
-    at = chebyshev.evaluate_rows(integrals[row], place)
-    count = len(integrals)
-    rows = np.concatenate([np.arange(count), row, np.arange(count)])
-    places = np.concatenate([np.zeros(count), place, np.ones(count)])
-    values = np.concatenate([integrals[:, 0], at, integrals[:, -1]])
-    order = np.lexsort((places, rows))
-    changes = np.abs(np.diff(values[order]))
-    return float(changes[rows[order][1:] == rows[order][:-1]].sum())
-
-
-def _twice_as_fine() -> Reals:
-    return chebyshev.evaluation(NODES, chebyshev.points(2 * NODES))
-
-
-def _fine_weights() -> Reals:
-    """Weights of the integral over [0, 1] on twice the nodes, (2·NODES,)."""
-    return chebyshev.integration(2 * NODES)[-1]

@@ -1,0 +1,234 @@
+"""A response's signals in pieces: where they turn, where they pass a level, and what they add up to.
+
+All turning points of several signals are found in one go, and so are all passages.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from functools import lru_cache
+
+import numpy as np
+import numpy.typing as npt
+
+from service.analysis import chebyshev
+from service.analysis.brackets import newton_zero
+from service.analysis.chebyshev import NODES
+from service.analysis.loop import Reals
+from service.analysis.tails import Tail
+
+ROUNDING = 1e-11
+"""Relative to the largest value, what is rounding in a response."""
+
+SENSITIVE_SHARE = 0.01
+"""An extremum this near to a band's edge, relatively, makes the last exit sensitive."""
+
+Indices = npt.NDArray[np.intp]
+
+
+@dataclass(frozen=True, eq=False)
+class Passage:
+    """A time at which a signal passes a level: known, or to be solved for in one piece between `low` and `high`.
+
+    `row`: (NODES,), the signal less the level; it changes sign once between the two places.
+    """
+
+    start: float
+    length: float
+    row: Reals | None
+    low: float
+    high: float
+
+
+@dataclass(frozen=True, eq=False)
+class Signal:
+    """One signal: `values` (p, NODES), its turning points in order of time, and the oscillation that follows.
+
+    `turning_pieces`, `turning_places` (0 to 1), `turning_values`: (m,); both ends of every piece are among them.
+    `tail` is about the value at which the signal ends, which `values` must have at its end as 0 where it is used.
+    """
+
+    start: Reals
+    length: Reals
+    values: Reals
+    turning_pieces: Indices
+    turning_places: Reals
+    turning_values: Reals
+    tail: Tail | None
+
+    @property
+    def scale(self) -> float:
+        """The largest magnitude."""
+        return float(np.abs(self.turning_values).max())
+
+    @property
+    def turning_times(self) -> Reals:
+        """When it turns, (m,)."""
+        return self.start[self.turning_pieces] + self.length[self.turning_pieces] * self.turning_places
+
+    @property
+    def total_variation(self) -> float:
+        """Σ abs of every rise and fall, jumps between pieces included."""
+        pieces = float(np.abs(np.diff(self.turning_values)).sum())
+        return pieces + (self.tail.total_variation() if self.tail else 0.0)
+
+    def less(self, level: float) -> Signal:
+        """The signal minus a constant."""
+        return replace(self, values=self.values - level, turning_values=self.turning_values - level)
+
+    def times(self, factor: float) -> Signal:
+        """The signal multiplied."""
+        tail = None if self.tail is None else replace(self.tail, amplitude=self.tail.amplitude * factor)
+        return replace(
+            self, values=self.values * factor, turning_values=self.turning_values * factor, tail=tail
+        )
+
+    def first_passage(self, level: float) -> Passage | None:
+        """The first time at or above `level`; None where it never gets there."""
+        reached = self.turning_values >= level
+        index = int(np.argmax(reached))
+        if not reached[index]:
+            return None
+        piece, place = int(self.turning_pieces[index]), float(self.turning_places[index])
+        if place == 0.0:
+            return Passage(float(self.start[piece]), 0.0, None, 0.0, 0.0)
+        # it rises all the way from the turning point before
+        return self._passage(piece, self.values[piece] - level, float(self.turning_places[index - 1]), place)
+
+    def last_exit(self, band: float) -> Passage:
+        """The last time at which abs of the signal is above `band`; 0 where it never is."""
+        if self.tail and (late := self.tail.last_exit(band)) is not None:
+            return Passage(late, 0.0, None, 0.0, 0.0)
+        outside = np.flatnonzero(np.abs(self.turning_values) > band)
+        if not outside.size:
+            return Passage(0.0, 0.0, None, 0.0, 0.0)
+        index = int(outside[-1])
+        piece, place = int(self.turning_pieces[index]), float(self.turning_places[index])
+        if place == 1.0:
+            return Passage(float(self.start[piece] + self.length[piece]), 0.0, None, 0.0, 0.0)
+        side = float(np.sign(self.turning_values[index]))
+        row = side * self.values[piece] - band
+        return self._passage(piece, row, place, float(self.turning_places[index + 1]))
+
+    def turns_near_edge(self, band: float) -> bool:
+        """Whether an extremum that could move the last exit lies within 1 % of the band's edge."""
+        if self.tail and self.tail.turns_near(band, SENSITIVE_SHARE):
+            return True
+        size = np.abs(self.turning_values)
+        clearly_outside = np.flatnonzero(size > band * (1 + SENSITIVE_SHARE))
+        late = slice(int(clearly_outside[-1]) + 1 if clearly_outside.size else 0, None)
+        # the ends of pieces are no extrema; where the signal passes the edge there it is merely crossing
+        inner = (self.turning_places[late] > 0) & (self.turning_places[late] < 1)
+        return bool(np.any(inner & (np.abs(size[late] - band) <= SENSITIVE_SHARE * band)))
+
+    def _passage(self, piece: int, row: Reals, low: float, high: float) -> Passage:
+        return Passage(float(self.start[piece]), float(self.length[piece]), row, low, high)
+
+
+@dataclass(frozen=True, slots=True)
+class Integrals:
+    """∫ abs x dt, ∫ x² dt, ∫ t·abs x dt and ∫ x dt from the step on."""
+
+    absolute: float
+    square: float
+    time_weighted: float
+    signed: float
+
+
+def signals(start: Reals, length: Reals, values: Reals, tails: list[Tail | None]) -> list[Signal]:
+    """Signals with their turning points; `values` (s, p, NODES)."""
+    count, pieces, _ = values.shape
+    rows = values.reshape(count * pieces, NODES)
+    scale = np.repeat(np.abs(values).max(axis=(1, 2)), pieces)[:, None]
+    row, place = chebyshev.zeros_of_rows(rows @ chebyshev.differentiation(NODES).T, ROUNDING * NODES * scale)
+    rows_in_order, places, found = _with_ends(rows, row, place)
+    result = []
+    for index, tail in enumerate(tails):
+        mine = slice(*np.searchsorted(rows_in_order, [index * pieces, (index + 1) * pieces]))
+        own = rows_in_order[mine] - index * pieces
+        result.append(Signal(start, length, values[index], own, places[mine], found[mine], tail))
+    return result
+
+
+def solved(passages: list[Passage | None]) -> list[float | None]:
+    """The times of passages, in the loop's own unit."""
+    open_ones = [passage for passage in passages if passage is not None and passage.row is not None]
+    places = iter(_places(open_ones))
+    return [
+        None
+        if passage is None
+        else passage.start + (passage.length * next(places) if passage.row is not None else 0.0)
+        for passage in passages
+    ]
+
+
+def integrals(of: list[Signal]) -> list[Integrals]:
+    """The integrals of signals that end at 0 and share their pieces.
+
+    An integral of abs x is the total variation of the integral of x, whose turning points are the zeros of x.
+    """
+    start, length = of[0].start, of[0].length
+    values = np.array([signal.values for signal in of])
+    count, pieces, _ = values.shape
+    rows = values.reshape(count * pieces, NODES)
+    scale = np.repeat([signal.scale for signal in of], pieces)[:, None]
+    row, place = chebyshev.zeros_of_rows(rows, ROUNDING * scale)
+    times = np.tile(start[:, None] + length[:, None] * chebyshev.points(NODES), (count, 1))
+    lengths = np.tile(length, count)[:, None]
+    summed = rows @ chebyshev.integration(NODES).T * lengths
+    weighted = (rows * times) @ chebyshev.integration(NODES).T * lengths
+    fine = rows @ _to_twice_as_fine().T
+    columns = (
+        _variation(summed, row, place).reshape(count, pieces).sum(axis=1),
+        ((fine * fine) @ chebyshev.integration(2 * NODES)[-1] * lengths[:, 0]).reshape(count, pieces).sum(axis=1),
+        _variation(weighted, row, place).reshape(count, pieces).sum(axis=1),
+        summed[:, -1].reshape(count, pieces).sum(axis=1),
+    )
+    return [
+        Integrals(*(float(total) + more for total, more in zip(in_pieces, _of_tail(signal), strict=True)))
+        for signal, in_pieces in zip(of, zip(*columns, strict=True), strict=True)
+    ]
+
+
+def _of_tail(signal: Signal) -> tuple[float, float, float, float]:
+    return signal.tail.absolute_integrals() if signal.tail else (0.0, 0.0, 0.0, 0.0)
+
+
+def _places(passages: list[Passage]) -> list[float]:
+    if not passages:
+        return []
+    rows = np.array([passage.row for passage in passages])
+    low, high = (np.array([getattr(passage, end) for passage in passages]) for end in ("low", "high"))
+    slopes = rows @ chebyshev.differentiation(NODES).T
+
+    def value_and_slope(at: Reals) -> tuple[Reals, Reals]:
+        matrix = chebyshev.evaluation(NODES, at)
+        return (matrix * rows).sum(axis=1), (matrix * slopes).sum(axis=1)
+
+    places: list[float] = newton_zero(
+        value_and_slope, low, high, value_and_slope(low)[0], 1.0
+    ).tolist()
+    return places
+
+
+def _with_ends(rows: Reals, row: Indices, place: Reals) -> tuple[Indices, Reals, Reals]:
+    """Places inside rows and both ends of every row, in order: row, place, value."""
+    inner = chebyshev.evaluate_rows(rows[row], place)
+    every = np.arange(len(rows))
+    rows_of = np.concatenate([every, row, every])
+    places = np.concatenate([np.zeros(len(rows)), place, np.ones(len(rows))])
+    values = np.concatenate([rows[:, 0], inner, rows[:, -1]])
+    order = np.lexsort((places, rows_of))
+    return rows_of[order], places[order], values[order]
+
+
+def _variation(integrals_in_rows: Reals, row: Indices, place: Reals) -> Reals:
+    """Σ abs of the changes between the given places, row by row, shape (rows,)."""
+    rows_of, _, values = _with_ends(integrals_in_rows, row, place)
+    changes = np.where(rows_of[1:] == rows_of[:-1], np.abs(np.diff(values)), 0.0)
+    return np.bincount(rows_of[1:], weights=changes, minlength=len(integrals_in_rows))
+
+
+@lru_cache(maxsize=1)
+def _to_twice_as_fine() -> Reals:
+    return chebyshev.evaluation(NODES, chebyshev.points(2 * NODES))
