@@ -24,6 +24,9 @@ CHUNK_LINES = 25
 Line = tuple[bytes, bool]
 """The answer to one line, and whether the request was accepted."""
 
+INTERRUPTED = 130
+"""Exit status after Ctrl-C, as shells have it: 128 and the signal's number."""
+
 CHUNKS_AHEAD = 4
 """Chunks for each process that are read ahead, so that an endless input is never held whole."""
 
@@ -37,8 +40,8 @@ CHUNKS_AHEAD = 4
 def recompute(file: BinaryIO | None, lines: BinaryIO | None, jobs: int) -> None:
     """Recompute a loop: read one request from FILE, print one answer.
 
-    A request that is refused gives a problem object, and exit status 1. With --lines each line is a request
-    of its own, and a refused one does not stop the run.
+    A request that is refused gives a problem object, and exit status 1. With --lines every line, blank or not,
+    gets its answer in its place, and a refused one does not stop the run.
     """
     if (file is None) == (lines is None):
         raise click.UsageError("Give either FILE or --lines FILE.")
@@ -49,6 +52,8 @@ def recompute(file: BinaryIO | None, lines: BinaryIO | None, jobs: int) -> None:
         # the reader has seen enough; what Python flushes at exit must not complain a second time
         sys.stdout = None
         sys.exit(1)
+    except KeyboardInterrupt:
+        sys.exit(INTERRUPTED)
     sys.exit(0 if all_well else 1)
 
 
@@ -61,7 +66,9 @@ def _one(file: BinaryIO) -> bool:
 def _many(file: BinaryIO, jobs: int) -> bool:
     """Answer every line in its order; say whether none was refused."""
     all_well = True
-    for answers in _answered_chunks(_chunks(_lines(file)), jobs):
+    # one process answers each line before it reads the next: whoever writes may wait for the answer
+    chunks = _chunks(_lines(file), CHUNK_LINES if jobs > 1 else 1)
+    for answers in _answered_chunks(chunks, jobs):
         for text, well in answers:
             sys.stdout.buffer.write(text + b"\n")
             all_well = all_well and well
@@ -70,17 +77,18 @@ def _many(file: BinaryIO, jobs: int) -> bool:
 
 
 def _lines(file: BinaryIO) -> Iterator[bytes]:
-    """Lines that are not blank; of one that is too long only as much as shows it."""
+    """Every line, blank ones too, so that answers stand where their requests do; of one that is too long only
+    as much as shows it.
+    """
     while line := file.readline(limits.BODY_BYTES_MAX + 2):
         too_long = not line.endswith(b"\n") and len(line) > limits.BODY_BYTES_MAX
         while too_long and (rest := file.readline(limits.BODY_BYTES_MAX)) and not rest.endswith(b"\n"):
             pass
-        if line.strip():
-            yield line
+        yield line.rstrip(b"\r\n")
 
 
-def _chunks(lines: Iterator[bytes]) -> Iterator[list[bytes]]:
-    while chunk := list(islice(lines, CHUNK_LINES)):
+def _chunks(lines: Iterator[bytes], size: int) -> Iterator[list[bytes]]:
+    while chunk := list(islice(lines, size)):
         yield chunk
 
 
