@@ -5,12 +5,12 @@ from __future__ import annotations
 from argon2 import PasswordHasher
 from flask import Flask, Response, request
 
-import service.api.registration
-import service.pages
 from service.api import errors as api_errors
+from service.api.registration import register as register_api
 from service.context import Services, attach, request_id
 from service.documents.limits import BODY_BYTES_MAX
 from service.pages import errors as pages_errors
+from service.pages import register as register_pages
 from service.records.database import Clock, Database, system_clock
 from service.settings import Settings
 
@@ -44,8 +44,8 @@ def create_app(
     app = Flask(__name__, static_folder=None)
     app.config.update(SECRET_KEY=secret_key, MAX_CONTENT_LENGTH=BODY_BYTES_MAX)
     attach(app, Services(database=database, secret_key=secret_key))
-    service.api.registration.register(app)
-    service.pages.register(app)
+    register_api(app)
+    register_pages(app)
     app.register_error_handler(Exception, _answer_failure)
     app.after_request(_add_headers)
     return app
