@@ -9,6 +9,7 @@ from service.api import errors as api_errors
 from service.api.registration import register as register_api
 from service.context import Services, attach, request_id
 from service.documents.limits import BODY_BYTES_MAX
+from service.issuing.checkpoints import read_key
 from service.pages import errors as pages_errors
 from service.pages import register as register_pages
 from service.records.database import Clock, Database, system_clock
@@ -36,14 +37,15 @@ def create_app(
 ) -> Flask:
     """Return the WSGI application of the store that the settings name.
 
-    Another clock than the system's runs in a demonstration's store only. Raises SettingsError or
-    StoreNotUsable.
+    Another clock than the system's runs in a demonstration's store only. Raises SettingsError, UnusableKey
+    or StoreNotUsable.
     """
     secret_key = settings.required_secret_key()
+    signing_key = read_key(settings.signing_key_file) if settings.signing_key_file else None
     database = Database.open(settings.database_url, clock=clock, password_hasher=password_hasher)
     app = Flask(__name__, static_folder=None)
     app.config.update(SECRET_KEY=secret_key, MAX_CONTENT_LENGTH=BODY_BYTES_MAX)
-    attach(app, Services(database=database, secret_key=secret_key))
+    attach(app, Services(database=database, secret_key=secret_key, signing_key=signing_key))
     register_api(app)
     register_pages(app)
     app.register_error_handler(Exception, _answer_failure)

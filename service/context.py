@@ -1,7 +1,7 @@
 """What a request needs of the running service, set once when the application is assembled.
 
 Lives here: the one object that api and pages share, and the request's identifier. May import: flask, the
-records. Must never know: JSON, HTML, the environment.
+records, cryptography for the type of a key. Must never know: JSON, HTML, the environment.
 """
 
 from __future__ import annotations
@@ -9,6 +9,7 @@ from __future__ import annotations
 import uuid
 from dataclasses import dataclass, field
 
+from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
 from flask import Flask, current_app, g
 
 from service.records.database import Database
@@ -22,6 +23,8 @@ class Services:
 
     database: Database
     secret_key: str = field(repr=False)
+    signing_key: Ed25519PrivateKey | None = field(default=None, repr=False)
+    """Signs checkpoints of the history; None: they are unsigned and say so."""
 
 
 def attach(app: Flask, services: Services) -> None:

@@ -10,6 +10,9 @@ from service.api import answers, history_csv, representations
 from service.api.answers import Answer
 from service.api.operations import Call, reads
 from service.api.queries import Instant, NoQuery, PageQuery, Text
+from service.context import services
+from service.issuing import checkpoints
+from service.issuing.checkpoints import Checkpoint
 from service.records import queries
 from service.records.queries import HistoryFilter
 
@@ -59,3 +62,10 @@ def show_entry(call: Call, _query: NoQuery, number: int) -> Answer:
         event=representations.Event.of(view), canonical=view.canonical.decode()
     )
     return answers.document(whole)
+
+
+@blueprint.get("/checkpoint")
+@reads(NoQuery, Checkpoint)
+def show_checkpoint(call: Call, _query: NoQuery) -> Answer:
+    """Give the state of the whole history in a few lines; keep a copy outside the database."""
+    return answers.document(checkpoints.checkpoint(call.session, services().signing_key))

@@ -10,6 +10,7 @@ from service.app import create_app
 from service.command.errors import UserMistake
 from service.command.serving import serve_until_told
 from service.command.store import mistakes_in_a_sentence, reading
+from service.issuing.checkpoints import UnusableKey
 from service.records import migrating
 from service.settings import Settings, SettingsError
 
@@ -24,8 +25,8 @@ def serve(host: str, port: int) -> None:
     try:
         with mistakes_in_a_sentence():
             app = create_app(settings)
-    except SettingsError as missing:
-        raise UserMistake(str(missing)) from None
+    except (SettingsError, UnusableKey) as refused:
+        raise UserMistake(str(refused)) from None
     _check_schema()
     serve_until_told(app, host, port, lambda address: click.echo(f"Serving at {address}"))
 

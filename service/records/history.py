@@ -118,6 +118,12 @@ def is_demonstration(session: Session) -> bool:
     return first is not None and first.kind == STORE_MADE and b'"demonstration":true' in first.canonical
 
 
+def origin(session: Session) -> str:
+    """Return the digest of the first entry, which names the store; empty before there is one."""
+    first = session.get(HistoryEvent, 1)
+    return first.digest if first is not None else ""
+
+
 def head(session: Session) -> HeadView:
     """Return where the history stands."""
     row = session.execute(select(HistoryHead)).scalar_one()

@@ -1,0 +1,84 @@
+"""The state of the whole history in a few lines, signed with a key that is kept outside the database.
+
+Whoever holds a checkpoint detects any later change to what it covers: the root of the Merkle tree (RFC 9162,
+section 2.1) over the first `size` entries is then another one. The signature (Ed25519, RFC 8032) says that
+this service made it; it covers the canonical JSON (RFC 8785) of the other fields.
+"""
+
+from __future__ import annotations
+
+import base64
+from dataclasses import dataclass
+from datetime import datetime
+from pathlib import Path
+
+from cryptography.exceptions import UnsupportedAlgorithm
+from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
+from cryptography.hazmat.primitives.serialization import Encoding, PublicFormat, load_pem_private_key
+from sqlalchemy.orm import Session
+
+from service.documents import writing
+from service.documents.canonical import canonical_bytes
+from service.records import history
+
+SigningKey = Ed25519PrivateKey
+
+
+class UnusableKey(ValueError):
+    """A signing key file that cannot be read as one, said in a sentence."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Unsigned:
+    """What a checkpoint says."""
+
+    origin: str
+    """Digest of the first entry: it names the store, and no two stores share it."""
+    size: int
+    """Entries that are covered."""
+    digest: str
+    """Root of the Merkle tree over them."""
+    head: str
+    """Digest of the last of them."""
+    time: datetime | None
+    """Time of the last of them."""
+    public_key: str | None
+    """Raw Ed25519 key in base64, to be compared with one that is held elsewhere; null where none is set."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Checkpoint(Unsigned):
+    """A checkpoint as it is given out."""
+
+    signature: str | None
+    """Ed25519 in base64; null where no signing key is set."""
+
+
+def checkpoint(session: Session, key: SigningKey | None) -> Checkpoint:
+    """Return the checkpoint of the history as it stands."""
+    head = history.head(session)
+    unsigned = Unsigned(
+        origin=history.origin(session),
+        size=head.size,
+        digest=head.root,
+        head=head.digest,
+        time=head.time,
+        public_key=_text(key.public_key().public_bytes(Encoding.Raw, PublicFormat.Raw)) if key else None,
+    )
+    signature = _text(key.sign(canonical_bytes(writing.plain(unsigned)))) if key else None
+    return Checkpoint(**{name: getattr(unsigned, name) for name in Unsigned.__slots__}, signature=signature)
+
+
+def read_key(file: Path) -> SigningKey:
+    """Read an Ed25519 private key from an unencrypted PEM file. Raises UnusableKey."""
+    try:
+        key = load_pem_private_key(file.read_bytes(), password=None)
+    except (OSError, ValueError, TypeError, UnsupportedAlgorithm) as failed:
+        raise UnusableKey(f"the signing key file {file} cannot be read: {failed}") from None
+    if not isinstance(key, Ed25519PrivateKey):
+        raise UnusableKey(f"the signing key file {file} holds a key of another kind than Ed25519")
+    return key
+
+
+def _text(raw: bytes) -> str:
+    return base64.b64encode(raw).decode()

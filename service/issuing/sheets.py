@@ -1,0 +1,30 @@
+"""The sheet of a submission, made from the records."""
+
+from __future__ import annotations
+
+from datetime import datetime
+
+from sqlalchemy.orm import Session
+
+from service.records import history, queries
+from service.records.roles import Actor
+from service.records.views import SubmissionView
+from service.sheets.content import SheetContent, content_of
+from service.sheets.layout import sheet_pdf
+
+
+def content(session: Session, actor: Actor, view: SubmissionView) -> SheetContent:
+    """Return what stands on the sheet of a submission in the state that `view` shows."""
+    before = view.content.gains_in_force
+    return content_of(
+        view,
+        queries.curves(session, actor, view.id),
+        curves_in_force=queries.curves(session, actor, before.submission_id) if before else (),
+        demonstration=history.is_demonstration(session),
+    )
+
+
+def sheet(session: Session, actor: Actor, submission_id: str, now: datetime) -> bytes:
+    """Return the sheet in its present state as PDF. Raises NotFound."""
+    view = queries.submission(session, actor, submission_id, now)
+    return sheet_pdf(content(session, actor, view))
