@@ -9,10 +9,11 @@ from typing import Literal
 from reportlab.graphics.shapes import Drawing
 from reportlab.lib.colors import HexColor
 
-from service.analysis.results import LoadStep, Quantity, Recomputation, ResponseCurve, SetpointStep
+from service.analysis.results import Curves, LoadStep, Quantity, Recomputation, ResponseCurve, SetpointStep
 from service.figures import fonts, ticks, window
 from service.figures.panel import QUIET, Panel, Scale, Stroke, drawn, legend, text
 from service.figures.polyline import Point
+from service.judgement.quantities import judged
 
 THESE = Stroke(HexColor(0x0B2E6F), 1.5)
 EARLIER = Stroke(HexColor(0xB04A00), 1.2, (5, 3))
@@ -79,18 +80,17 @@ def number(quantity: Quantity) -> float | None:
 
 def stored_responses(
     recomputation: Recomputation,
+    curves: Curves,
     *,
-    in_force: Recomputation | None = None,
+    earlier: Curves | None = None,
     settling_band_percent: float = 2.0,
     name: str = "proposed gains",
     earlier_name: str = "gains in force",
 ) -> tuple[Response, ...]:
     """Those of the two step responses that were computed and stored, each with that of the gains in force."""
-    curves = recomputation.curves
-    analysis = recomputation.sampled if recomputation.judged_on == "sampled" else recomputation.continuous
-    if curves is None or analysis is None:
+    analysis = judged(recomputation)
+    if analysis is None:
         return ()
-    earlier = in_force.curves if in_force else None
     found = (
         ("setpoint", curves.setpoint, analysis.setpoint_step, earlier.setpoint if earlier else None),
         ("load", curves.load, analysis.load_step, earlier.load if earlier else None),

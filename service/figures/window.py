@@ -22,16 +22,15 @@ _SPIKE_SHARE_OF_TIME = 0.02
 
 
 def horizon_s(curve: ResponseCurve, earlier: ResponseCurve | None) -> float:
-    """The end of the time axis in seconds: a round number in the unit of the axis, but never past the curves.
+    """The end of the time axis in seconds: a round number in the unit of the axis, never past the curve.
 
     It depends on two crossings of the response only, and is rounded up, so that almost equal gains are drawn
     over the same time.
     """
     own = _span_s(curve)
     wanted = own if earlier is None else max(own, min(_span_s(earlier), LONGEST_EARLIER * own))
-    end = max(each.time_s[-1] for each in (curve, earlier) if each)
     unit = ticks.time_unit(wanted)
-    return min(ticks.round_up(wanted / unit.seconds) * unit.seconds, end)
+    return min(ticks.round_up(wanted / unit.seconds) * unit.seconds, curve.time_s[-1])
 
 
 def limits(values: Sequence[float], *, room: float = 0.06) -> tuple[float, float]:

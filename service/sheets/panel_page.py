@@ -1,0 +1,191 @@
+"""The first page: what the technician at the panel needs, and room to write down what was done."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from reportlab.lib.colors import HexColor, black
+from reportlab.platypus import Flowable, KeepTogether, Spacer, Table
+
+from service.sheets import styles
+from service.sheets.cautions import Cautions
+from service.sheets.content import NOT_ANALYSED, GainLine, GainTable, SheetContent
+from service.sheets.controllers import Told
+from service.sheets.qr import code_drawing
+from service.sheets.styles import WIDTH_PT, fitting, named, said, table
+
+PALE = HexColor(0xECECEC)
+EMPHASISED = ("Form", "Action")
+_NAME_PT, _VALUE_PT, _BEFORE_PT = 0.26 * WIDTH_PT, 0.42 * WIDTH_PT, 0.32 * WIDTH_PT
+_CODE_PT = 66.0
+_CELL = [
+    ("VALIGN", (0, 0), (-1, -1), "MIDDLE"),
+    ("LEFTPADDING", (0, 0), (-1, -1), 5),
+    ("RIGHTPADDING", (0, 0), (-1, -1), 5),
+]
+
+
+def panel_page(content: SheetContent) -> list[Flowable]:
+    """Tag, state, gains, what must agree with them, the box to fill in, cautions."""
+    flowables = [_title(content), _banner(content), *_conditions(content)]
+    for gain_set in content.tables:
+        flowables += _gains(content, gain_set)
+    flowables += [
+        Spacer(0, 3),
+        _cautions(content.cautions),
+        Spacer(0, 3),
+        *(_by_hand(gain_set) for gain_set in content.tables),
+    ]
+    return flowables
+
+
+def _title(content: SheetContent) -> Flowable:
+    """Whose gains these are; at the right the code by which a telephone reads the digests."""
+    width = WIDTH_PT - _CODE_PT - 10
+    words = [
+        said(f"Controller gains · {content.site} · record {content.record}", styles.SETTING),
+        said(content.tag, fitting(content.tag, width, 25, 13, bold=True)),
+        Spacer(0, 3),
+        said(content.description, fitting(content.description, width, 11, 8.5, bold=False)),
+    ]
+    code = code_drawing(content.code, _CODE_PT)
+    look = [*styles.BARE, ("BOTTOMPADDING", (0, 0), (-1, -1), 3)]
+    return table([[words, code]], [WIDTH_PT - _CODE_PT, _CODE_PT], look)
+
+
+def _banner(content: SheetContent) -> Flowable:
+    """Black where the gains may not be typed in, framed where they may."""
+    entry = content.state.entry
+    heading, sentence = (
+        (styles.BANNER, styles.BANNER_SENTENCE) if entry else (styles.INVERSE_BANNER, styles.INVERSE_SENTENCE)
+    )
+    words = [said(content.state.heading, heading), said(content.state.sentence, sentence)]
+    look = [("BOX", (0, 0), (-1, -1), 2.5, black), ("BOTTOMPADDING", (0, 0), (-1, -1), 6)]
+    if not entry:
+        look.append(("BACKGROUND", (0, 0), (-1, -1), black))
+    return table([[words]], [WIDTH_PT], look)
+
+
+def _conditions(content: SheetContent) -> Iterator[Flowable]:
+    yield Spacer(0, 4)
+    for sentence in content.conditions:
+        yield said(sentence, styles.LOUD)
+    yield said(content.summary, styles.SETTING if content.summary_good else styles.LOUD)
+    yield Spacer(0, 5)
+
+
+def _gains(content: SheetContent, gain_set: GainTable) -> Iterator[Flowable]:
+    if gain_set.condition:
+        yield Spacer(0, 4)
+        yield said(gain_set.condition, styles.LOUD)
+        yield Spacer(0, 2)
+    yield _gains_table(content, gain_set.gains)
+    yield Spacer(0, 4)
+    yield _settings_table(gain_set.settings)
+    if gain_set.recorded:
+        yield Spacer(0, 2)
+        yield named(
+            f"Other settings ({NOT_ANALYSED})",
+            "; ".join(_setting(told) for told in gain_set.recorded),
+            styles.LABEL,
+        )
+
+
+def _gains_table(content: SheetContent, gains: tuple[GainLine, ...]) -> Table:
+    """Large where they may be typed in; smaller where not, so that nobody types them from across the room."""
+    largest = 24 if content.state.entry else 15
+    head = ["Setting", content.state.column, content.before_heading]
+    rows = [[said(words, styles.COLUMN) for words in head]]
+    rows += [
+        [
+            said(line.name, fitting(line.name, _NAME_PT - 10, 11, 8, bold=True)),
+            _number(line.value, line.unit, _VALUE_PT, largest, bold=True),
+            [*_number(line.before, line.before_unit, _BEFORE_PT, 13, bold=False), *_change(line)],
+        ]
+        for line in gains
+    ]
+    look = [
+        *_CELL,
+        ("GRID", (0, 0), (-1, -1), 0.7, black),
+        ("BOX", (1, 0), (1, -1), 2.2, black),
+        ("BACKGROUND", (0, 0), (-1, 0), PALE),
+        ("BOTTOMPADDING", (0, 1), (-1, -1), 5),
+    ]
+    return table(rows, [_NAME_PT, _VALUE_PT, _BEFORE_PT], look, repeatRows=1)
+
+
+def _number(value: str, unit: str, width: float, largest: float, *, bold: bool) -> list[Flowable]:
+    """The number as it was entered on a line of its own, its unit in words below."""
+    # spaces that the controller shows between digits do not collapse
+    kept = value.replace(" ", "\N{NO-BREAK SPACE}")
+    style = fitting(kept, width - 10, largest, 8, bold=bold)
+    return [said(kept, style), *([said(unit, styles.UNIT if bold else styles.LABEL)] if unit else [])]
+
+
+def _change(line: GainLine) -> list[Flowable]:
+    return [said(line.change, styles.LABEL_STRONG)] if line.change else []
+
+
+def _settings_table(settings: tuple[GainLine, ...]) -> Table:
+    rows = []
+    for line in settings:
+        strong = line.name in EMPHASISED
+        value = [said(line.value, styles.SETTING_STRONG if strong else styles.SETTING)]
+        if line.before:
+            value.append(named("BEFORE IT WAS", line.before, styles.SETTING))
+        rows.append([said(line.name, styles.SETTING), value])
+    look = [
+        *_CELL,
+        ("LINEBELOW", (0, 0), (-1, -1), 0.3, black),
+        ("TOPPADDING", (0, 0), (-1, -1), 1.5),
+        ("BOTTOMPADDING", (0, 0), (-1, -1), 2),
+    ]
+    return table(rows, [_NAME_PT, WIDTH_PT - _NAME_PT], look)
+
+
+def _setting(told: Told) -> str:
+    return f"{told.name} = {told.value} {told.unit}".strip()
+
+
+def _by_hand(gain_set: GainTable) -> Flowable:
+    """Room for a pen: as found and as left for each gain, and who did it."""
+    names = [line.name.split(" (")[0] for line in gain_set.gains]
+    head = [said(words, styles.LABEL_STRONG) for words in ("Fill in by hand", *names, "Mode, output")]
+    rows = [
+        head,
+        *([said(words, styles.LABEL_STRONG)] + [""] * (len(head) - 1) for words in ("As found", "As left")),
+    ]
+    first = 0.15 * WIDTH_PT
+    gains = table(
+        rows,
+        [first, *[(WIDTH_PT - first) / (len(head) - 1)] * (len(head) - 1)],
+        [*_CELL, ("GRID", (0, 0), (-1, -1), 0.7, black)],
+        rowHeights=[None, 22, 22],
+    )
+    people = ("Typed by", "Read back by", "Operator agreed", "Date, time", "Saved to engineering database")
+    signed = table(
+        [[said(words, styles.LABEL) for words in people]],
+        [WIDTH_PT / len(people)] * len(people),
+        [*_CELL, ("VALIGN", (0, 0), (-1, -1), "TOP"), ("GRID", (0, 0), (-1, -1), 0.7, black)],
+        rowHeights=[32],
+    )
+    title = [said(gain_set.condition, styles.STRONG)] if gain_set.condition else []
+    return KeepTogether([*title, gains, signed])
+
+
+def _cautions(cautions: tuple[Cautions, ...]) -> Flowable:
+    """Steps to tick off in two columns, the second one ending with what the sheet is not."""
+    before, while_typing, after, limits = cautions
+    left = [*_steps(before, "□"), *_steps(after, "□")]
+    right = [*_steps(while_typing, "□"), *_steps(limits, "–")]
+    look = [
+        ("VALIGN", (0, 0), (-1, -1), "TOP"),
+        ("TOPPADDING", (0, 0), (-1, -1), 0),
+        ("LEFTPADDING", (0, 0), (0, 0), 0),
+    ]
+    return table([[left, right]], [WIDTH_PT / 2, WIDTH_PT / 2], look)
+
+
+def _steps(group: Cautions, mark: str) -> list[Flowable]:
+    sentences = [said(f"{mark} {sentence}", styles.STEP) for sentence in group.sentences]
+    return [said(group.heading, styles.STEPS), *sentences]

@@ -1,0 +1,64 @@
+"""Texts that people typed, made fit for paper: nothing acts as markup, nothing vanishes.
+
+reportlab's paragraphs read markup; a character without a glyph prints as nothing one could name; letters of
+scripts that run from right to left would stand in the wrong order. Such characters are told by their code
+points, in place.
+"""
+
+from __future__ import annotations
+
+import re
+import unicodedata
+from itertools import groupby
+from xml.sax.saxutils import escape
+
+from service.figures import fonts
+
+NOTE = (
+    "[U+…] stands for a character that this typeface does not hold, "
+    "or would print in the wrong order; it is told by its Unicode code point."
+)
+_EMPTY_LINES = re.compile(r"\n{3,}")
+_TOLD = re.compile(r"\[U\+[0-9A-F]{4,6}[ \]]")
+_LEFT_TO_RIGHT_ONLY = {"R", "AL", "AN", "RLE", "RLO", "RLI", "LRE", "LRO", "LRI", "FSI", "PDF", "PDI"}
+_NEVER_SEEN = {"Cc", "Cf", "Cn", "Co", "Cs", "Zl", "Zp"}
+_SPACES = {"\n", "\t", " "}
+
+
+def visible(text: str) -> str:
+    """The text with each character that cannot be printed rightly told by its code point: `[U+6D41]`."""
+    parts = []
+    for printable, characters in groupby(text, _is_printable):
+        if printable:
+            parts.append("".join(characters))
+        else:
+            parts.append("[" + " ".join(f"U+{ord(character):04X}" for character in characters) + "]")
+    return "".join(parts)
+
+
+def has_code_points(text: str) -> bool:
+    """Say whether some character of a visible text is told by its code point."""
+    return _TOLD.search(text) is not None
+
+
+def marked_up(text: str) -> str:
+    """The text for a reportlab paragraph, in which it means itself and nothing else."""
+    spaced = _EMPTY_LINES.sub("\n\n", text.replace("\r\n", "\n"))
+    return escape(visible(spaced)).replace("\t", " ").replace("\n", "<br/>")
+
+
+def cut(text: str, most: int) -> str:
+    """The text, or its beginning with the number of characters that are left out."""
+    if len(text) <= most:
+        return text
+    return f"{text[:most]} … ({len(text) - most} more characters stand in the record)"
+
+
+def _is_printable(character: str) -> bool:
+    if character in _SPACES:
+        return True
+    return (
+        ord(character) in fonts.code_points()
+        and unicodedata.category(character) not in _NEVER_SEEN
+        and unicodedata.bidirectional(character) not in _LEFT_TO_RIGHT_ONLY
+    )
