@@ -49,14 +49,14 @@ def same_gains(one: Controller, other: Controller, ranges: Ranges) -> bool:
     return not any(_differ(setting) for setting in _in_common(one, other, ranges) if setting.gains)
 
 
-def differences(approved: Controller, found: Controller, ranges: Ranges) -> tuple[Difference, ...]:
+def differences(recorded: Controller, found: Controller, ranges: Ranges) -> tuple[Difference, ...]:
     """List what differs, in the parallel form; `hinders` where the gains are other gains."""
-    settings = (*_in_common(approved, found, ranges), *_recorded(approved, found))
+    settings = (*_in_common(recorded, found, ranges), *_recorded(recorded, found))
     return tuple(
         Difference(
             setting=setting.name,
             unit=setting.unit,
-            approved=setting.before,
+            recorded=setting.before,
             found=setting.after,
             hinders=setting.gains,
         )

@@ -6,6 +6,7 @@ that earlier content still reads.
 
 from __future__ import annotations
 
+import json
 from dataclasses import dataclass
 from typing import Literal
 
@@ -13,6 +14,7 @@ from service.documents.decisions import Deviation
 from service.documents.discriminated import ControllerField
 from service.documents.installations import InstallationRequest
 from service.documents.loops import LoopRegistration, ModelVersion
+from service.documents.reading import read
 from service.documents.recomputations import RecomputationAnswer
 from service.documents.submissions import Tool
 from service.documents.texts import Moment
@@ -128,7 +130,7 @@ class Difference:
 
     setting: str
     unit: str
-    approved: float | str | None
+    recorded: float | str | None
     found: float | str | None
     hinders: bool
     """True: the gains are other gains. False: a recorded setting differs, which is only said."""
@@ -146,4 +148,25 @@ class InstallationContent:
     recorded_at: Moment
     installation: InstallationRequest
     as_approved: bool
+    """As left are the approved gains."""
+    before_approval: bool
+    """Installed before it was approved. An emergency change is, and says so by its kind."""
     differences: tuple[Difference, ...]
+    """The approved gains → as left."""
+    as_found_differences: tuple[Difference, ...] | None
+    """The gains that were in force as far as was recorded → as found; None where none were."""
+
+
+def read_content(kept: bytes) -> SignedContent:
+    """Read the kept content of a submission."""
+    return read(SignedContent, json.loads(kept))
+
+
+def read_decision(kept: bytes) -> DecisionContent:
+    """Read the kept content of a decision."""
+    return read(DecisionContent, json.loads(kept))
+
+
+def read_installation(kept: bytes) -> InstallationContent:
+    """Read the kept content of an installation."""
+    return read(InstallationContent, json.loads(kept))

@@ -3,18 +3,65 @@
 from __future__ import annotations
 
 from datetime import datetime
+from hashlib import sha256
+from uuid import uuid4
 
+from sqlalchemy import select
 from sqlalchemy.orm import Session
 
+from service.documents.canonical import canonical_bytes
 from service.documents.decisions import DecisionRequest
-from service.records.errors import NotIndependent, SigningRefused
-from service.records.roles import Actor
+from service.documents.errors import FieldProblem
+from service.documents.writing import plain
+from service.records import (
+    accounts,
+    approvability,
+    basis,
+    history,
+    lifecycle,
+    loops,
+    states,
+    throttles,
+    visibility,
+)
+from service.records.content import DecisionContent, Person, SignedContent, read_content
+from service.records.errors import (
+    BasisChanged,
+    FieldErrors,
+    MissingDeviation,
+    NotApprovable,
+    NotIndependent,
+    SigningRefused,
+    StaleContent,
+    WrongPassword,
+)
+from service.records.lifecycle import Action
+from service.records.roles import Actor, require_role
+from service.records.tables.submissions import Decision, Submission, SubmissionState
 from service.records.views import DecisionView
+
+MEANINGS = {
+    "approve": "I have reviewed these gains and what was recomputed, and I approve them for this loop.",
+    "reject": "I have reviewed these gains and reject them.",
+    "withdraw": "I take back these gains, which I submitted or prepared.",
+    "revoke": "I revoke the approval of these gains.",
+}
+"""What a signature means (21 CFR 11.50), by decision."""
+
+KINDS = {
+    "approve": "gains_approved",
+    "reject": "gains_rejected",
+    "withdraw": "gains_withdrawn",
+    "revoke": "approval_revoked",
+}
+"""The kind of entry in the history, by decision."""
 
 
 def check_may_decide(session: Session, actor: Actor, submission_id: str) -> None:
     """Raise NotFound or NotAllowed before the document is read: no such submission, no role that decides."""
-    raise NotImplementedError
+    visibility.submission(session, actor, submission_id)
+    if actor.account_id not in visibility.authors(session, submission_id):
+        require_role(actor, approvability.APPROVER)
 
 
 def decide(
@@ -26,7 +73,20 @@ def decide(
     trace: the caller rolls back and calls `record_refused_signing` in a transaction of its own); FieldErrors
     (MissingDeviation); StaleContent (another digest); Conflict (WrongStep, BasisChanged, NotApprovable).
     """
-    raise NotImplementedError
+    submission = visibility.submission(session, actor, submission_id)
+    earlier = _decisions(session, submission_id)
+    lifecycle.check_who(request.decision, actor, visibility.authors(session, submission_id))
+    _check_signs_once(actor, request, earlier)
+    accounts.check_password(session, actor, request.password, now)
+    content = read_content(submission.content)
+    _check_deviations(request, content)
+    if request.content_digest != submission.content_digest:
+        raise StaleContent("the content is not the one that was reviewed; read it again")
+    state = states.next_row(session, submission, _action(request, content, earlier), now)
+    if request.decision == "approve":
+        _check_approvable(session, content)
+    throttles.forget(session, throttles.of_account(actor.name))
+    return _sign(session, actor, submission, request, state, len(earlier), now)
 
 
 def record_refused_signing(
@@ -38,6 +98,108 @@ def record_refused_signing(
 ) -> None:
     """Leave the trace of a signing that was refused, and count a wrong password.
 
-    In a transaction of its own.
+    In a transaction of its own, after what was begun has been rolled back.
     """
-    raise NotImplementedError
+    submission = visibility.submission(session, actor, submission_id)
+    if isinstance(refusal, WrongPassword):
+        throttles.count(session, throttles.of_account(actor.name), now)
+    history.append(
+        session,
+        kind="signing_refused",
+        actor=actor,
+        about=loops.about(*loops.present(session, submission.loop_id)),
+        content={"submission_id": submission_id, "reason": refusal.detail},
+        now=now,
+    )
+
+
+def _decisions(session: Session, submission_id: str) -> tuple[Decision, ...]:
+    query = select(Decision).where(Decision.submission_id == submission_id).order_by(Decision.ordinal)
+    return tuple(session.execute(query).scalars())
+
+
+def _check_signs_once(actor: Actor, request: DecisionRequest, earlier: tuple[Decision, ...]) -> None:
+    signed = {row.decided_by for row in earlier if row.decision == "approve"}
+    if request.decision == "approve" and actor.account_id in signed:
+        raise NotIndependent("you have approved this; the second approval is another person's")
+
+
+def _check_deviations(request: DecisionRequest, content: SignedContent) -> None:
+    needed = approvability.deviations_needed(content) if request.decision == "approve" else ()
+    given = [deviation.criterion for deviation in request.deviation]
+    missing = tuple(
+        FieldProblem(
+            "/deviation", f"{name} is not met or not assessed: an approval states why it is accepted"
+        )
+        for name in needed
+        if name not in given
+    )
+    idle = tuple(
+        FieldProblem(f"/deviation/{index}/criterion", "there is nothing to deviate from here")
+        for index, name in enumerate(given)
+        if name not in needed
+    )
+    if missing:
+        raise MissingDeviation((*missing, *idle))
+    if idle:
+        raise FieldErrors(idle)
+
+
+def _action(request: DecisionRequest, content: SignedContent, earlier: tuple[Decision, ...]) -> Action:
+    if request.decision != "approve":
+        return request.decision
+    approvals = sum(row.decision == "approve" for row in earlier) + 1
+    return "approve" if approvals >= approvability.approvals_needed(content) else "approve_first"
+
+
+def _check_approvable(session: Session, content: SignedContent) -> None:
+    changed = basis.changed_since(session, content)
+    if changed:
+        raise BasisChanged(changed)
+    hindrances = approvability.hindrances(content)
+    if hindrances:
+        raise NotApprovable(f"this cannot be approved: {'; '.join(hindrances)}")
+
+
+def _sign(
+    session: Session,
+    actor: Actor,
+    submission: Submission,
+    request: DecisionRequest,
+    state: SubmissionState,
+    ordinal: int,
+    now: datetime,
+) -> DecisionView:
+    content = DecisionContent(
+        decision_id=uuid4().hex,
+        submission_id=submission.id,
+        decision=request.decision,
+        meaning=MEANINGS[request.decision],
+        reason=request.reason,
+        deviation=request.deviation,
+        content_digest=submission.content_digest,
+        signed_by=Person(name=actor.name, full_name=actor.full_name),
+        signed_at=now,
+    )
+    kept = canonical_bytes(plain(content))
+    row = Decision(
+        id=content.decision_id,
+        submission_id=submission.id,
+        ordinal=ordinal,
+        decision=request.decision,
+        decided_by=actor.account_id,
+        decided_at=now,
+        submission_digest=submission.content_digest,
+        content=kept,
+        content_digest=sha256(kept).hexdigest(),
+    )
+    entry = history.append(
+        session,
+        kind=KINDS[request.decision],
+        actor=actor,
+        about=loops.about(*loops.present(session, submission.loop_id)),
+        content={"decision": content, "state": state.state},
+        now=now,
+        rows=(row, state),
+    )
+    return DecisionView(decision=content, entry=entry)

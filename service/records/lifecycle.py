@@ -113,12 +113,14 @@ class ClockRule:
     stored: State
     limit: Literal["install_by", "temporary_until"]
     reads: State
+    overdue: bool
+    """True where the gains still run past the time they are good for."""
 
 
 CLOCK: tuple[ClockRule, ...] = (
-    ClockRule("approved", "install_by", "expired"),
-    ClockRule("approved", "temporary_until", "lapsed"),
-    ClockRule("in_force", "temporary_until", "lapsed"),
+    ClockRule("approved", "install_by", "expired", overdue=False),
+    ClockRule("approved", "temporary_until", "lapsed", overdue=False),
+    ClockRule("in_force", "temporary_until", "lapsed", overdue=True),
 )
 """The first rule that applies holds."""
 
@@ -136,13 +138,19 @@ class Limits:
     temporary_until: datetime | None
 
 
-def as_read(stored: State, limits: Limits, now: datetime) -> State:
-    """The state as it reads at `now`: a limit is past when `now` is later than it."""
+def clock_rule(stored: State, limits: Limits, now: datetime) -> ClockRule | None:
+    """Return the rule by which the clock changes how a stored state reads at `now`: later than the limit."""
     for rule in CLOCK:
         limit: datetime | None = getattr(limits, rule.limit)
         if rule.stored == stored and limit is not None and now > limit:
-            return rule.reads
-    return stored
+            return rule
+    return None
+
+
+def as_read(stored: State, limits: Limits, now: datetime) -> State:
+    """Return the state as it reads at `now`."""
+    rule = clock_rule(stored, limits, now)
+    return stored if rule is None else rule.reads
 
 
 def step(state: State, action: Action) -> Step:
@@ -190,6 +198,19 @@ def actions_open_to(state: State, actor: Actor, authors: frozenset[str]) -> tupl
             yield row.action
 
     return tuple(open_steps())
+
+
+def review_due_at(state: State, kind: Kind, submitted_at: datetime) -> datetime | None:
+    """The time until which a change that runs already has to be reviewed; None where no review presses."""
+    if state in REVIEW_OWED and kind in IN_FORCE_FROM_THE_START:
+        return submitted_at + EMERGENCY_REVIEW_WITHIN
+    return None
+
+
+def is_overdue(stored: State, limits: Limits, due_at: datetime | None, now: datetime) -> bool:
+    """Say whether a review is owed past its time, or gains run past the time they are good for."""
+    rule = clock_rule(stored, limits, now)
+    return (rule is not None and rule.overdue) or (due_at is not None and now > due_at)
 
 
 def in_words(state: State) -> str:

@@ -14,6 +14,7 @@ from uuid import uuid4
 from sqlalchemy import Select, select
 from sqlalchemy.orm import Session, aliased
 
+from service.analysis.plant import Ranges
 from service.documents.canonical import canonical_bytes
 from service.documents.errors import FieldProblem
 from service.documents.loops import LoopReference, LoopRegistration, ModelVersion
@@ -189,6 +190,16 @@ def read_model(row: LoopModel) -> ModelVersion:
     return read(ModelVersion, json.loads(row.content))
 
 
+def read_loop(row: LoopRevision) -> LoopRegistration:
+    """Read a kept revision of a loop."""
+    return read(LoopRegistration, json.loads(row.content))
+
+
+def ranges(loop: LoopRegistration) -> Ranges:
+    """Return a loop's ranges."""
+    return Ranges(pv=loop.pv, output=loop.output)
+
+
 def about(loop: Loop, revision: LoopRevision) -> About:
     """Say which loop an entry of the history is about."""
     return About(loop_id=loop.id, site=loop.site, tag=loop.tag, area=revision.area)
@@ -275,7 +286,7 @@ def _view(loop: Loop, revision: LoopRevision, changed_by: str, entry: EntryRefer
     return LoopView(
         id=loop.id,
         revision=revision.revision,
-        loop=read(LoopRegistration, json.loads(revision.content)),
+        loop=read_loop(revision),
         digest=revision.content_digest,
         changed_by=changed_by,
         entry=entry,

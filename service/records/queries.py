@@ -2,23 +2,39 @@
 
 from __future__ import annotations
 
+import json
 from dataclasses import dataclass
 from datetime import datetime
 
-from sqlalchemy.orm import Session
+from sqlalchemy import ColumnElement, Select, and_, case, func, or_, select, tuple_
+from sqlalchemy.orm import Session, aliased
 
+from service.analysis.results import Curves
+from service.documents.reading import read
+from service.records import lifecycle, states, submission_views, visibility
+from service.records import loops as loop_records
+from service.records.content import read_content
+from service.records.errors import Conflict
+from service.records.history_queries import HistoryFilter as HistoryFilter
+from service.records.history_queries import entry as entry
+from service.records.history_queries import history as history
 from service.records.lifecycle import State
 from service.records.roles import Actor
+from service.records.tables.history import HistoryEvent
+from service.records.tables.loops import Loop, LoopRevision
+from service.records.tables.submissions import Submission, SubmissionRecomputation, SubmissionState
 from service.records.views import (
     Comparison,
     CurvesView,
-    EventView,
     GainsInForce,
     LoopView,
     Page,
     SubmissionSummary,
     SubmissionView,
 )
+
+SEPARATOR = "\n"
+"""Between the parts of a list's key; stands in no site or tag."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -41,29 +57,32 @@ class SubmissionFilter:
     loop_id: str | None = None
 
 
-@dataclass(frozen=True, kw_only=True, slots=True)
-class HistoryFilter:
-    """Which entries: `since` included, `until` excluded."""
-
-    site: str | None = None
-    tag: str | None = None
-    area: str | None = None
-    since: datetime | None = None
-    until: datetime | None = None
-    actor: str | None = None
-    kind: str | None = None
-
-
 def loops(
     session: Session, actor: Actor, wanted: LoopFilter, after: str | None = None, limit: int = 50
 ) -> Page[LoopView]:
     """Loops by site and tag."""
-    raise NotImplementedError
+    query = (
+        loop_records.present_revisions()
+        .add_columns(LoopRevision)
+        .where(visibility.in_sight(actor), *_loop_conditions(wanted))
+        .order_by(Loop.site_key, Loop.tag_key)
+        .limit(limit + 1)
+    )
+    if after is not None:
+        site_key, _, tag_key = after.partition(SEPARATOR)
+        query = query.where(tuple_(Loop.site_key, Loop.tag_key) > tuple_(site_key, tag_key))
+    rows = session.execute(query).all()
+    last = rows[limit - 1][0] if len(rows) > limit else None
+    return Page(
+        items=tuple(loop_records.view(session, loop, revision) for loop, revision in rows[:limit]),
+        after=None if last is None else f"{last.site_key}{SEPARATOR}{last.tag_key}",
+    )
 
 
 def submission(session: Session, actor: Actor, submission_id: str, now: datetime) -> SubmissionView:
     """One submission whole. Raises NotFound."""
-    raise NotImplementedError
+    row = visibility.submission(session, actor, submission_id)
+    return submission_views.whole(session, actor, row, now)
 
 
 def submissions(
@@ -75,45 +94,144 @@ def submissions(
     limit: int = 50,
 ) -> Page[SubmissionSummary]:
     """Submissions, latest first."""
-    raise NotImplementedError
+    query = _lines(actor).where(*_submission_conditions(wanted, now))
+    query = query.order_by(Submission.event_number.desc()).limit(limit + 1)
+    if after is not None:
+        query = query.where(Submission.event_number < int(after))
+    rows = session.execute(query).all()
+    items = tuple(submission_views.line(now, *row) for row in rows[:limit])
+    return Page(items=items, after=str(items[-1].entry.number) if len(rows) > limit else None)
 
 
 def awaiting_review(
     session: Session, actor: Actor, now: datetime, after: str | None = None, limit: int = 50
 ) -> Page[SubmissionSummary]:
-    """Submissions whose review is owed, emergencies first, then the oldest first."""
-    raise NotImplementedError
+    """Submissions whose review is owed: those that run already first, then the oldest first."""
+    wanted = SubmissionFilter(states=lifecycle.REVIEW_OWED)
+    rank = case((Submission.kind.in_(sorted(lifecycle.IN_FORCE_FROM_THE_START)), 0), else_=1)
+    query = _lines(actor).where(*_submission_conditions(wanted, now))
+    query = query.order_by(rank, Submission.event_number).limit(limit + 1)
+    if after is not None:
+        first, _, number = after.partition(SEPARATOR)
+        query = query.where(tuple_(rank, Submission.event_number) > tuple_(int(first), int(number)))
+    rows = session.execute(query).all()
+    items = tuple(submission_views.line(now, *row) for row in rows[:limit])
+    more = len(rows) > limit
+    return Page(items=items, after=_review_key(items[-1]) if more else None)
 
 
 def content_bytes(session: Session, actor: Actor, submission_id: str) -> bytes:
     """The exact canonical bytes that `content_digest` is the SHA-256 of. Raises NotFound."""
-    raise NotImplementedError
+    return visibility.submission(session, actor, submission_id).content
 
 
 def curves(session: Session, actor: Actor, submission_id: str) -> tuple[CurvesView, ...]:
     """The stored curves of a submission, in the order of its recomputations. Raises NotFound."""
-    raise NotImplementedError
+    visibility.submission(session, actor, submission_id)
+    query = (
+        select(SubmissionRecomputation)
+        .where(SubmissionRecomputation.submission_id == submission_id)
+        .order_by(SubmissionRecomputation.ordinal)
+    )
+    return tuple(
+        CurvesView(
+            model_id=row.model_id,
+            operating_point=row.operating_point,
+            gain_set=row.gain_set,
+            curves=read(Curves, json.loads(row.curves)),
+        )
+        for row in session.execute(query).scalars()
+        if row.curves is not None
+    )
 
 
 def gains_in_force(session: Session, actor: Actor, loop_id: str, now: datetime) -> GainsInForce | None:
     """The gains that run in a loop's controller as far as is recorded. Raises NotFound."""
-    raise NotImplementedError
+    loop_records.find(session, actor, loop_id)
+    running = states.running(session, loop_id)
+    if running is None:
+        return None
+    row = session.get_one(Submission, running.submission_id)
+    content = read_content(row.content)
+    return GainsInForce(
+        submission_id=row.id,
+        content_digest=row.content_digest,
+        kind=content.kind,
+        state=states.as_read(session, row, now),
+        since=running.since,
+        gain_sets=content.gain_sets,
+        entry=loop_records.written_by(session, running.event_number)[1],
+    )
 
 
 def compare(session: Session, actor: Actor, submission_id: str, other_id: str) -> tuple[Comparison, ...]:
     """Two submissions of one loop, set by set (the other → this). Raises NotFound, Conflict."""
-    raise NotImplementedError
+    this = visibility.submission(session, actor, submission_id)
+    other = visibility.submission(session, actor, other_id)
+    if this.loop_id != other.loop_id:
+        raise Conflict("these are gains of two loops")
+    before = read_content(other.content).gain_sets
+    return submission_views.comparisons(read_content(this.content), before)
 
 
-def history(
-    session: Session, actor: Actor, wanted: HistoryFilter, after: str | None = None, limit: int = 100
-) -> Page[EventView]:
-    """Entries of the history, earliest first. Those of no loop (accounts, the store) are for auditors and
-    administrators without areas.
-    """
-    raise NotImplementedError
+def _loop_conditions(wanted: LoopFilter) -> list[ColumnElement[bool]]:
+    conditions: list[ColumnElement[bool]] = []
+    if wanted.site is not None:
+        conditions.append(Loop.site_key == loop_records.matching_key(wanted.site))
+    if wanted.tag is not None:
+        conditions.append(Loop.tag_key == loop_records.matching_key(wanted.tag))
+    if wanted.area is not None:
+        conditions.append(LoopRevision.area == wanted.area)
+    if wanted.q is not None:
+        in_tag = Loop.tag_key.contains(loop_records.matching_key(wanted.q), autoescape=True)
+        in_description = func.lower(LoopRevision.description).contains(wanted.q.lower(), autoescape=True)
+        conditions.append(or_(in_tag, in_description))
+    return conditions
 
 
-def entry(session: Session, actor: Actor, number: int) -> EventView:
-    """One entry. Raises NotFound."""
-    raise NotImplementedError
+def _lines(actor: Actor) -> Select[Submission, SubmissionState, Loop, LoopRevision, HistoryEvent]:
+    """Select submissions in sight, each with its last stored state, loop, present revision and entry."""
+    later = aliased(SubmissionState)
+    not_last = select(later.submission_id).where(
+        later.submission_id == SubmissionState.submission_id, later.ordinal > SubmissionState.ordinal
+    )
+    loop = loop_records.present_revisions().with_only_columns(Loop.id, LoopRevision.revision).subquery()
+    return (
+        select(Submission, SubmissionState, Loop, LoopRevision, HistoryEvent)
+        .join(SubmissionState, SubmissionState.submission_id == Submission.id)
+        .join(Loop, Loop.id == Submission.loop_id)
+        .join(loop, loop.c.id == Submission.loop_id)
+        .join(
+            LoopRevision,
+            and_(LoopRevision.loop_id == Loop.id, LoopRevision.revision == loop.c.revision),
+        )
+        .join(HistoryEvent, HistoryEvent.number == Submission.event_number)
+        .where(~not_last.exists(), visibility.in_sight(actor))
+    )
+
+
+def _submission_conditions(wanted: SubmissionFilter, now: datetime) -> list[ColumnElement[bool]]:
+    conditions: list[ColumnElement[bool]] = []
+    if wanted.states:
+        conditions.append(_reads_as(now).in_(sorted(wanted.states)))
+    if wanted.site is not None:
+        conditions.append(Loop.site_key == loop_records.matching_key(wanted.site))
+    if wanted.tag is not None:
+        conditions.append(Loop.tag_key == loop_records.matching_key(wanted.tag))
+    if wanted.loop_id is not None:
+        conditions.append(Loop.id == wanted.loop_id)
+    return conditions
+
+
+def _reads_as(now: datetime) -> ColumnElement[str]:
+    """The state as it reads at `now`, by the clock rules of the life cycle."""
+    rules = [
+        (and_(SubmissionState.state == rule.stored, getattr(Submission, rule.limit) < now), rule.reads)
+        for rule in lifecycle.CLOCK
+    ]
+    return case(*rules, else_=SubmissionState.state)
+
+
+def _review_key(item: SubmissionSummary) -> str:
+    rank = 0 if item.kind in lifecycle.IN_FORCE_FROM_THE_START else 1
+    return f"{rank}{SEPARATOR}{item.entry.number}"

@@ -4,12 +4,42 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from datetime import datetime
+from hashlib import sha256
+from typing import Literal
+from uuid import uuid4
 
+from sqlalchemy import select
 from sqlalchemy.orm import Session
 
+from service.analysis.errors import FieldError
+from service.documents.canonical import canonical_bytes
+from service.documents.errors import FieldProblem, pointer
+from service.documents.loops import LoopRegistration
 from service.documents.submissions import SubmissionRequest
-from service.records.roles import Actor
-from service.records.views import SubmissionView
+from service.documents.writing import plain
+from service.records import approvability, gain_sets, history, lifecycle, loops, queries, recomputing, states
+from service.records.basis import Basis, present_basis
+from service.records.content import (
+    Person,
+    SignedContent,
+    SignedGains,
+    SignedGainsInForce,
+    SignedModel,
+    SignedRecomputation,
+    read_content,
+)
+from service.records.errors import BasisChanged, Conflict, FieldErrors
+from service.records.recomputing import Recomputed
+from service.records.roles import Actor, require_role
+from service.records.tables.accounts import Account
+from service.records.tables.columns import Base
+from service.records.tables.submissions import (
+    Decision,
+    Submission,
+    SubmissionAuthor,
+    SubmissionRecomputation,
+)
+from service.records.views import LoopView, SubmissionView
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -17,20 +47,56 @@ class PreparedSubmission:
     """A submission with everything recomputed, ready to be kept. Its inside is the records' own."""
 
     request: SubmissionRequest
+    loop: LoopView
+    gain_sets: tuple[SignedGains, ...]
+    authors: tuple[Account, ...]
+    """Whoever prepared it."""
+    models: tuple[SignedModel, ...]
+    recomputations: tuple[SignedRecomputation, ...]
+    curves: tuple[bytes | None, ...]
+    """Canonical bytes, one a recomputation."""
+    gains_in_force: SignedGainsInForce | None
+    basis: Basis
 
 
 def check_may_submit(actor: Actor) -> None:
     """Raise NotAllowed unless the actor may submit gains."""
-    raise NotImplementedError
+    require_role(actor, "submitter")
 
 
 def prepare(session: Session, actor: Actor, request: SubmissionRequest, now: datetime) -> PreparedSubmission:
     """Recompute what is submitted, at every operating point in force. Reads only.
 
     It is apart from `submit` so that a recomputation of seconds holds up no other writer. Raises NotFound (no
-    such loop), NotAllowed, FieldErrors.
+    such loop), NotAllowed, FieldErrors, Conflict (a baseline of gains that are in force).
     """
-    raise NotImplementedError
+    loop = loops.find_by_tag(session, actor, request.loop.site, request.loop.tag)
+    check_may_submit(actor)
+    sets = gain_sets.of_request(request)
+    models = tuple(
+        SignedModel(id=row.id, version=row.version, model=loops.read_model(row))
+        for row in loops.models_in_force(session, loop.id)
+    )
+    authors = _authors(session, actor, request)
+    _check_fields(session, request, loop, sets, models, now)
+    in_force = _gains_in_force(session, loop.id)
+    _check_baseline(request, loop.loop, sets, in_force)
+    recomputed = tuple(
+        _recompute(loop.loop, model, index, sets[index], request)
+        for index in range(len(sets))
+        for model in gain_sets.models_for(sets[index], models)
+    )
+    return PreparedSubmission(
+        request=request,
+        loop=loop,
+        gain_sets=sets,
+        authors=authors,
+        models=models,
+        recomputations=tuple(entry.signed for entry in recomputed),
+        curves=tuple(entry.curves for entry in recomputed),
+        gains_in_force=in_force,
+        basis=present_basis(session, loop.id),
+    )
 
 
 def submit(session: Session, actor: Actor, prepared: PreparedSubmission, now: datetime) -> SubmissionView:
@@ -38,4 +104,229 @@ def submit(session: Session, actor: Actor, prepared: PreparedSubmission, now: da
 
     Raises Conflict where the loop, its models or the gains in force changed meanwhile: prepare again.
     """
-    raise NotImplementedError
+    check_may_submit(actor)
+    changed = prepared.basis.changed(present_basis(session, prepared.loop.id))
+    if changed:
+        raise BasisChanged(changed)
+    content = _content(actor, prepared, now)
+    kept = canonical_bytes(plain(content))
+    submission = _submission(actor, prepared, content, kept)
+    state = lifecycle.START[content.kind]
+    outcome = states.Outcome((), None)
+    if content.kind in lifecycle.IN_FORCE_FROM_THE_START:
+        outcome = states.coming_into_force(session, content.loop_id, content.submission_id, now, now)
+    loop, revision = loops.present(session, content.loop_id)
+    history.append(
+        session,
+        kind="gains_submitted",
+        actor=actor,
+        about=loops.about(loop, revision),
+        content=_told(content, submission, state, outcome.superseded),
+        now=now,
+        rows=(
+            submission,
+            *_author_rows(actor, prepared, submission.id),
+            *_recomputation_rows(prepared, submission.id),
+            states.first(submission.id, state),
+            *outcome.rows,
+        ),
+    )
+    return queries.submission(session, actor, submission.id, now)
+
+
+def _authors(session: Session, actor: Actor, request: SubmissionRequest) -> tuple[Account, ...]:
+    names = tuple(dict.fromkeys(request.prepared_by or (actor.name,)))
+    rows = {
+        row.name: row for row in session.execute(select(Account).where(Account.name.in_(names))).scalars()
+    }
+    problems = tuple(
+        FieldProblem(f"/prepared_by/{index}", "there is no such account")
+        for index, name in enumerate(request.prepared_by or ())
+        if name not in rows
+    )
+    if problems:
+        raise FieldErrors(problems)
+    return tuple(rows[name] for name in names)
+
+
+def _check_fields(
+    session: Session,
+    request: SubmissionRequest,
+    loop: LoopView,
+    sets: tuple[SignedGains, ...],
+    models: tuple[SignedModel, ...],
+    now: datetime,
+) -> None:
+    problems = [*_time_problems(request, now), *gain_sets.problems(request, models)]
+    if request.kind == "return" and not _was_approved(session, loop, sets):
+        place = "/controller" if request.controller is not None else "/gain_sets"
+        problems.append(
+            FieldProblem(place, "a return goes back to gains that were approved for this loop before")
+        )
+    if problems:
+        raise FieldErrors(tuple(problems))
+
+
+def _time_problems(request: SubmissionRequest, now: datetime) -> list[FieldProblem]:
+    problems = []
+    for name in ("temporary_until", "install_by"):
+        moment: datetime | None = getattr(request, name)
+        if moment is not None and moment <= now:
+            problems.append(FieldProblem(f"/{name}", "this time is past"))
+    runs_already = request.kind in lifecycle.IN_FORCE_FROM_THE_START
+    if runs_already and request.install_by is not None:
+        problems.append(FieldProblem("/install_by", "these gains are in the controller already"))
+    if request.kind == "baseline" and request.temporary_until is not None:
+        problems.append(FieldProblem("/temporary_until", "gains that were found are not temporary"))
+    return problems
+
+
+def _was_approved(session: Session, loop: LoopView, sets: tuple[SignedGains, ...]) -> bool:
+    query = (
+        select(Submission)
+        .join(Decision, Decision.submission_id == Submission.id)
+        .where(Submission.loop_id == loop.id, Decision.decision == "approve")
+        .order_by(Submission.event_number.desc())
+    )
+    contents = (read_content(row.content) for row in session.execute(query).scalars().unique())
+    return any(gain_sets.same(content.gain_sets, sets, loops.ranges(loop.loop)) for content in contents)
+
+
+def _gains_in_force(session: Session, loop_id: str) -> SignedGainsInForce | None:
+    row = states.running(session, loop_id)
+    if row is None:
+        return None
+    submission = session.get_one(Submission, row.submission_id)
+    return SignedGainsInForce(
+        submission_id=submission.id,
+        content_digest=submission.content_digest,
+        gain_sets=read_content(submission.content).gain_sets,
+    )
+
+
+def _check_baseline(
+    request: SubmissionRequest,
+    loop: LoopRegistration,
+    sets: tuple[SignedGains, ...],
+    in_force: SignedGainsInForce | None,
+) -> None:
+    # recorded as found, they would take the place of the same gains with their approval
+    found = in_force.gain_sets if request.kind == "baseline" and in_force is not None else ()
+    if found and gain_sets.same(found, sets, loops.ranges(loop)):
+        raise Conflict("these are the gains in force already")
+
+
+def _recompute(
+    loop: LoopRegistration,
+    model: SignedModel,
+    index: int,
+    gain_set: SignedGains,
+    request: SubmissionRequest,
+) -> Recomputed:
+    try:
+        return recomputing.recomputed(loop, model, index, gain_set, request.claims)
+    except FieldError as error:
+        raise FieldErrors((_problem_of_recomputation(error, model, index, request),)) from None
+
+
+def _problem_of_recomputation(
+    error: FieldError, model: SignedModel, index: int, request: SubmissionRequest
+) -> FieldProblem:
+    if error.path[:1] == ("controller",):
+        place = ("controller",) if request.controller is not None else ("gain_sets", index, "controller")
+        return FieldProblem(pointer((*place, *error.path[1:])), error.detail)
+    at = f"with the model at operating point {model.model.operating_point}"
+    return FieldProblem("/loop", f"{at} the loop cannot be recomputed: {error.detail}")
+
+
+def _content(actor: Actor, prepared: PreparedSubmission, now: datetime) -> SignedContent:
+    request, loop = prepared.request, prepared.loop
+    source: Literal["loop", "service_floors"] = (
+        "loop" if recomputing.own_criteria(loop.loop) else "service_floors"
+    )
+    return SignedContent(
+        submission_id=uuid4().hex,
+        loop_id=loop.id,
+        loop_revision=loop.revision,
+        loop=loop.loop,
+        kind=request.kind,
+        reason=request.reason,
+        safety_effect=request.safety_effect,
+        gain_sets=prepared.gain_sets,
+        submitted_by=Person(name=actor.name, full_name=actor.full_name),
+        submitted_at=now,
+        prepared_by=tuple(Person(name=row.name, full_name=row.full_name) for row in prepared.authors),
+        tool=request.tool,
+        claims=request.claims,
+        temporary_until=request.temporary_until,
+        install_by=request.install_by,
+        models=prepared.models,
+        criteria_source=source,
+        criteria=approvability.worst_criteria(prepared.recomputations),
+        recomputations=prepared.recomputations,
+        gains_in_force=prepared.gains_in_force,
+    )
+
+
+def _submission(
+    actor: Actor, prepared: PreparedSubmission, content: SignedContent, kept: bytes
+) -> Submission:
+    return Submission(
+        id=content.submission_id,
+        loop_id=content.loop_id,
+        loop_revision=content.loop_revision,
+        kind=content.kind,
+        reason=content.reason,
+        submitted_by=actor.account_id,
+        submitted_by_name=actor.name,
+        submitted_by_full_name=actor.full_name,
+        submitted_at=content.submitted_at,
+        install_by=content.install_by,
+        temporary_until=content.temporary_until,
+        verdict=approvability.worst_verdict(prepared.recomputations),
+        content=kept,
+        content_digest=sha256(kept).hexdigest(),
+    )
+
+
+def _author_rows(actor: Actor, prepared: PreparedSubmission, submission_id: str) -> tuple[Base, ...]:
+    ids = dict.fromkeys((actor.account_id, *(row.id for row in prepared.authors)))
+    return tuple(SubmissionAuthor(submission_id=submission_id, account_id=account_id) for account_id in ids)
+
+
+def _recomputation_rows(prepared: PreparedSubmission, submission_id: str) -> tuple[Base, ...]:
+    return tuple(
+        SubmissionRecomputation(
+            submission_id=submission_id,
+            ordinal=ordinal,
+            model_id=recomputation.model_id,
+            gain_set=recomputation.gain_set,
+            operating_point=recomputation.operating_point,
+            verdict=recomputation.answer.verdict,
+            curves=curves,
+            curves_digest=recomputation.curves_digest,
+        )
+        for ordinal, (recomputation, curves) in enumerate(
+            zip(prepared.recomputations, prepared.curves, strict=True)
+        )
+    )
+
+
+def _told(
+    content: SignedContent, submission: Submission, state: str, superseded: str | None
+) -> dict[str, object]:
+    return {
+        "submission_id": content.submission_id,
+        "content_digest": submission.content_digest,
+        "kind": content.kind,
+        "reason": content.reason,
+        "safety_effect": content.safety_effect,
+        "gain_sets": content.gain_sets,
+        "submitted_by": content.submitted_by,
+        "prepared_by": content.prepared_by,
+        "temporary_until": content.temporary_until,
+        "install_by": content.install_by,
+        "verdict": submission.verdict,
+        "state": state,
+        "supersedes": superseded,
+    }

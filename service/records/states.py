@@ -1,0 +1,112 @@
+"""The states that submissions came into, and which gains run in a loop's controller, as the kept rows say."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from datetime import datetime
+from typing import cast
+
+from sqlalchemy import select
+from sqlalchemy.orm import Session
+
+from service.records import lifecycle
+from service.records.lifecycle import Action, Limits, State
+from service.records.tables.columns import Base
+from service.records.tables.submissions import GainsComingIntoForce, Submission, SubmissionState
+
+SUBMITTED = "submit"
+"""The action by which a submission came into its first state."""
+
+
+@dataclass(frozen=True, slots=True)
+class Outcome:
+    """The rows that a change of gains in force makes, and whose gains they take the place of."""
+
+    rows: tuple[Base, ...]
+    superseded: str | None
+
+
+def stored(session: Session, submission_id: str) -> SubmissionState:
+    """Return the last state that a submission came into."""
+    query = (
+        select(SubmissionState)
+        .where(SubmissionState.submission_id == submission_id)
+        .order_by(SubmissionState.ordinal.desc())
+        .limit(1)
+    )
+    return session.execute(query).scalar_one()
+
+
+def as_read(session: Session, submission: Submission, now: datetime) -> State:
+    """Return the state of a submission as it reads at `now`."""
+    return read_state(stored(session, submission.id), submission, now)
+
+
+def read_state(row: SubmissionState, submission: Submission, now: datetime) -> State:
+    """Return what a stored state reads as at `now`."""
+    return lifecycle.as_read(cast(State, row.state), limits_of(submission), now)
+
+
+def is_overdue(row: SubmissionState, submission: Submission, due_at: datetime | None, now: datetime) -> bool:
+    """Say whether a submission in this stored state is overdue at `now`."""
+    return lifecycle.is_overdue(cast(State, row.state), limits_of(submission), due_at, now)
+
+
+def limits_of(submission: Submission) -> Limits:
+    """Return the times by which the clock changes how a submission reads."""
+    return Limits(install_by=submission.install_by, temporary_until=submission.temporary_until)
+
+
+def first(submission_id: str, state: State) -> SubmissionState:
+    """Make the row of a submission's first state."""
+    return SubmissionState(submission_id=submission_id, ordinal=1, action=SUBMITTED, state=state)
+
+
+def next_row(session: Session, submission: Submission, action: Action, now: datetime) -> SubmissionState:
+    """Make the row of the state that `action` leads to. Raises WrongStep where it leads nowhere."""
+    last = stored(session, submission.id)
+    step = lifecycle.step(read_state(last, submission, now), action)
+    return SubmissionState(
+        submission_id=submission.id, ordinal=last.ordinal + 1, action=action, state=step.target
+    )
+
+
+def running(session: Session, loop_id: str) -> GainsComingIntoForce | None:
+    """Return what last came into force in a loop's controller."""
+    query = (
+        select(GainsComingIntoForce)
+        .where(GainsComingIntoForce.loop_id == loop_id)
+        .order_by(GainsComingIntoForce.ordinal.desc())
+        .limit(1)
+    )
+    return session.execute(query).scalar_one_or_none()
+
+
+def coming_into_force(
+    session: Session, loop_id: str, submission_id: str, since: datetime, now: datetime
+) -> Outcome:
+    """Make the rows by which a submission's gains come into force and those before it are superseded."""
+    before = running(session, loop_id)
+    if before is not None and before.submission_id == submission_id:
+        return Outcome((), None)
+    row = GainsComingIntoForce(
+        loop_id=loop_id,
+        ordinal=before.ordinal + 1 if before else 1,
+        submission_id=submission_id,
+        since=since,
+    )
+    if before is None:
+        return Outcome((row,), None)
+    earlier = session.get_one(Submission, before.submission_id)
+    # what was rejected or revoked while it ran stays that
+    if not lifecycle.allows(as_read(session, earlier, now), "supersede"):
+        return Outcome((row,), earlier.id)
+    return Outcome((row, next_row(session, earlier, "supersede", now)), earlier.id)
+
+
+def has_run(session: Session, loop_id: str, submission_id: str) -> bool:
+    """Say whether a submission's gains ever came into force in its loop's controller."""
+    query = select(GainsComingIntoForce.ordinal).where(
+        GainsComingIntoForce.loop_id == loop_id, GainsComingIntoForce.submission_id == submission_id
+    )
+    return session.execute(query.limit(1)).first() is not None

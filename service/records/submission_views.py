@@ -1,0 +1,138 @@
+"""A submission as it is shown: whole, or as one line of a list."""
+
+from __future__ import annotations
+
+from datetime import datetime
+from typing import cast
+
+from sqlalchemy import select
+from sqlalchemy.orm import Session
+
+from service.analysis.results import Verdict
+from service.records import (
+    approvability,
+    basis,
+    comparison,
+    lifecycle,
+    loops,
+    states,
+    visibility,
+)
+from service.records.content import (
+    Person,
+    SignedContent,
+    SignedGains,
+    read_content,
+    read_decision,
+    read_installation,
+)
+from service.records.lifecycle import Kind
+from service.records.roles import Actor
+from service.records.tables.history import HistoryEvent
+from service.records.tables.loops import Loop, LoopRevision
+from service.records.tables.submissions import Decision, Installation, Submission, SubmissionState
+from service.records.views import (
+    Comparison,
+    DecisionView,
+    EntryReference,
+    InstallationView,
+    SubmissionSummary,
+    SubmissionView,
+)
+
+
+def whole(session: Session, actor: Actor, row: Submission, now: datetime) -> SubmissionView:
+    """Return a submission with everything that belongs to it, as `actor` sees it at `now`."""
+    content = read_content(row.content)
+    stored = states.stored(session, row.id)
+    state = states.read_state(stored, row, now)
+    due_at = lifecycle.review_due_at(state, content.kind, row.submitted_at)
+    owed = state in lifecycle.REVIEW_OWED
+    return SubmissionView(
+        id=row.id,
+        state=state,
+        content=content,
+        content_digest=row.content_digest,
+        area=loops.present(session, row.loop_id)[1].area,
+        verdict=cast(Verdict | None, row.verdict),
+        approvals_needed=approvability.approvals_needed(content),
+        deviations_needed=approvability.deviations_needed(content),
+        hindrances=approvability.hindrances(content),
+        changed_basis=basis.changed_since(session, content) if owed else (),
+        decisions=_decisions(session, row.id),
+        installations=_installations(session, row.id),
+        comparisons=comparisons(content, content.gains_in_force.gain_sets if content.gains_in_force else ()),
+        review_due_at=due_at,
+        overdue=states.is_overdue(stored, row, due_at, now),
+        open_actions=lifecycle.actions_open_to(state, actor, visibility.authors(session, row.id)),
+        entry=_entry(session, row.event_number),
+    )
+
+
+def line(
+    now: datetime,
+    submission: Submission,
+    stored: SubmissionState,
+    loop: Loop,
+    revision: LoopRevision,
+    event: HistoryEvent,
+) -> SubmissionSummary:
+    """Return one line of a list, from columns alone."""
+    state = states.read_state(stored, submission, now)
+    due_at = lifecycle.review_due_at(state, cast(Kind, submission.kind), submission.submitted_at)
+    return SubmissionSummary(
+        id=submission.id,
+        loop_id=loop.id,
+        site=loop.site,
+        tag=loop.tag,
+        area=revision.area,
+        description=revision.description,
+        kind=cast(Kind, submission.kind),
+        state=state,
+        reason=submission.reason,
+        verdict=cast(Verdict | None, submission.verdict),
+        submitted_by=Person(name=submission.submitted_by_name, full_name=submission.submitted_by_full_name),
+        submitted_at=submission.submitted_at,
+        review_due_at=due_at,
+        overdue=states.is_overdue(stored, submission, due_at, now),
+        content_digest=submission.content_digest,
+        entry=EntryReference(number=event.number, digest=event.digest, time=event.time),
+    )
+
+
+def comparisons(content: SignedContent, before: tuple[SignedGains, ...]) -> tuple[Comparison, ...]:
+    """Compare each gain set with the one before it: by its condition, or by its place where none is named."""
+    if not before:
+        return ()
+    by_condition = {gain_set.condition: gain_set for gain_set in before}
+    ranges = loops.ranges(content.loop)
+    return tuple(
+        comparison.compare(
+            by_condition.get(gain_set.condition, before[min(index, len(before) - 1)]).controller,
+            gain_set.controller,
+            ranges,
+        )
+        for index, gain_set in enumerate(content.gain_sets)
+    )
+
+
+def _decisions(session: Session, submission_id: str) -> tuple[DecisionView, ...]:
+    query = select(Decision).where(Decision.submission_id == submission_id).order_by(Decision.ordinal)
+    return tuple(
+        DecisionView(decision=read_decision(row.content), entry=_entry(session, row.event_number))
+        for row in session.execute(query).scalars()
+    )
+
+
+def _installations(session: Session, submission_id: str) -> tuple[InstallationView, ...]:
+    query = (
+        select(Installation).where(Installation.submission_id == submission_id).order_by(Installation.ordinal)
+    )
+    return tuple(
+        InstallationView(installation=read_installation(row.content), entry=_entry(session, row.event_number))
+        for row in session.execute(query).scalars()
+    )
+
+
+def _entry(session: Session, event_number: int) -> EntryReference:
+    return loops.written_by(session, event_number)[1]

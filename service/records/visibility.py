@@ -1,0 +1,31 @@
+"""Submissions and entries of the history as far as the areas of whoever asks reach."""
+
+from __future__ import annotations
+
+from sqlalchemy import ColumnElement, select, true
+from sqlalchemy.orm import Session
+
+from service.records import loops
+from service.records.errors import NotFound
+from service.records.roles import Actor
+from service.records.tables.loops import LoopRevision
+from service.records.tables.submissions import Submission, SubmissionAuthor
+
+
+def submission(session: Session, actor: Actor, submission_id: str) -> Submission:
+    """Return a submission whose loop lies in the actor's areas now. Raises NotFound."""
+    row = session.get(Submission, submission_id)
+    if row is None or not actor.sees(loops.present(session, row.loop_id)[1].area):
+        raise NotFound("there is no such submission")
+    return row
+
+
+def authors(session: Session, submission_id: str) -> frozenset[str]:
+    """Return the accounts of whoever submitted or prepared a submission."""
+    query = select(SubmissionAuthor.account_id).where(SubmissionAuthor.submission_id == submission_id)
+    return frozenset(session.execute(query).scalars())
+
+
+def in_sight(actor: Actor) -> ColumnElement[bool]:
+    """Return the condition on a loop's present revision that keeps to the actor's areas."""
+    return true() if actor.sees_every_area else LoopRevision.area.in_(sorted(actor.areas))
