@@ -13,7 +13,8 @@ DIGITS = 3
 WITHOUT_LIMIT = "without limit"
 NOT_DEFINED = "not defined"
 
-_PLAIN_FROM, _PLAIN_BELOW = 1e-4, 1e6
+_PLAIN_FROM, _PLAIN_BELOW = Decimal("1e-4"), Decimal("1e6")
+_PLAIN_ENTERED_BELOW = Decimal("1e16")
 _RAISED = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
 
@@ -41,7 +42,8 @@ def as_entered(value: float, displayed: str | None = None) -> str:
     if displayed is not None:
         return displayed
     shortest = repr(value).removesuffix(".0")
-    return format(Decimal(shortest), "f") if _PLAIN_FROM <= abs(value) < 1e16 else shortest
+    decimal = Decimal(shortest)
+    return format(decimal, "f") if _PLAIN_FROM <= abs(decimal) < _PLAIN_ENTERED_BELOW else shortest
 
 
 def time(seconds: Quantity) -> str:

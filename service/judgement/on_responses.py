@@ -52,19 +52,20 @@ def setpoint_offset(case: Case) -> Finding | None:
     step = case.judged.setpoint_step if case.judged else None
     if step is None or not isinstance(step.final_value, float) or abs(step.final_value - 1) < OFFSET_MIN:
         return None
-    short = (1 - step.final_value) * 100
+    rest = 0.0 if abs(step.final_value) < OFFSET_MIN else step.final_value
+    short = (1 - rest) * 100
     side = f"{three_digits(short)} % short of it" if short > 0 else f"{three_digits(-short)} % beyond it"
     return Finding(
         finding="lasting_offset_setpoint",
         weight="caution",
         sentence=f"After a step of the set point PV comes to rest {side} (at "
-        f"{three_digits(step.final_value)} of the step), because {_offset_reason(case.facts)}.",
+        f"{three_digits(rest)} of the step), because {_offset_reason(case.facts, rest)}.",
     )
 
 
-def _offset_reason(facts: LoopFacts) -> str:
-    if facts.integral_action:
-        return "the process passes no lasting signal on, so that integral action does not help"
+def _offset_reason(facts: LoopFacts, rest: float) -> str:
+    if rest == 0:
+        return "nothing lasting passes the loop"
     if facts.plant_integrates:
         return "the set-point weight is not 1 and the controller has no integral action"
     return "the controller has no integral action"
