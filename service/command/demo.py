@@ -17,9 +17,9 @@ from sqlalchemy import make_url
 from service.app import create_app
 from service.command.errors import UserMistake
 from service.command.serving import serve_until_told
-from service.context import system_clock
 from service.demonstration.plant import Change, Person, invented_plant
 from service.demonstration.store import Demonstration, fill
+from service.records.database import system_clock
 from service.records.errors import StoreNotUsable
 from service.settings import DEFAULT_DATABASE_URL, Settings
 
