@@ -29,6 +29,7 @@ KEPT: dict[str, tuple[guards.Key, ...]] = {
     "gains_in_force": (("loop_id", "ordinal"),),
     "decisions": (("id",), ("submission_id", "decided_by", "decision"), ("submission_id", "ordinal")),
     "installations": (("id",), ("submission_id", "ordinal")),
+    "sheets": (("decision_id",),),
 }
 """Kept tables with all their unique keys."""
 
@@ -412,3 +413,20 @@ def _make_outcomes() -> None:
         sa.UniqueConstraint("submission_id", "ordinal", name=op.f("uq_installations_submission_id_ordinal")),
     )
     op.create_index(op.f("ix_installations_event_number"), "installations", ["event_number"])
+    op.create_table(
+        "sheets",
+        sa.Column("decision_id", IDENTIFIER, nullable=False),
+        sa.Column("submission_id", IDENTIFIER, nullable=False),
+        sa.Column("renderer", sa.String(length=80), nullable=False),
+        sa.Column("content", sa.LargeBinary(), nullable=False),
+        sa.Column("content_digest", DIGEST, nullable=False),
+        sa.Column("event_number", NUMBER, nullable=False),
+        sa.ForeignKeyConstraint(["decision_id"], ["decisions.id"], name=op.f("fk_sheets_decision_id")),
+        sa.ForeignKeyConstraint(
+            ["event_number"], ["history_events.number"], name=op.f("fk_sheets_event_number")
+        ),
+        sa.ForeignKeyConstraint(["submission_id"], ["submissions.id"], name=op.f("fk_sheets_submission_id")),
+        sa.PrimaryKeyConstraint("decision_id", name=op.f("pk_sheets")),
+    )
+    op.create_index(op.f("ix_sheets_event_number"), "sheets", ["event_number"])
+    op.create_index(op.f("ix_sheets_submission_id"), "sheets", ["submission_id"])

@@ -32,7 +32,7 @@ from service.records.tables.submissions import Decision, Installation, Submissio
 from service.records.views import InstallationView
 
 CLOCKS_APART = timedelta(minutes=5)
-"""How far the clock of whoever reports may be ahead of ours. Common practice."""
+"""How far the clock of whoever reports may be from ours. Common practice."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,7 +84,7 @@ def _check_time(request: InstallationRequest, content: SignedContent, now: datet
     if request.installed_at > now + CLOCKS_APART:
         raise FieldErrors((FieldProblem("/installed_at", "this time is yet to come"),))
     runs_already = content.kind in lifecycle.IN_FORCE_FROM_THE_START
-    if request.installed_at < content.submitted_at and not runs_already:
+    if request.installed_at < content.submitted_at - CLOCKS_APART and not runs_already:
         raise FieldErrors((FieldProblem("/installed_at", "these gains were not yet submitted then"),))
 
 
@@ -139,7 +139,7 @@ def _before_approval(session: Session, submission: Submission, request: Installa
         .order_by(Decision.ordinal.desc())
     )
     approved_at = session.execute(query.limit(1)).scalar_one_or_none()
-    return approved_at is None or request.installed_at < approved_at
+    return approved_at is None or request.installed_at < approved_at - CLOCKS_APART
 
 
 def _as_found(

@@ -64,7 +64,7 @@ def whole(session: Session, actor: Actor, row: Submission, now: datetime) -> Sub
         comparisons=comparisons(content, content.gains_in_force.gain_sets if content.gains_in_force else ()),
         review_due_at=due_at,
         overdue=states.is_overdue(stored, row, due_at, now),
-        open_actions=lifecycle.actions_open_to(state, actor, visibility.authors(session, row.id)),
+        open_actions=_open_actions(session, actor, row, state),
         entry=_entry(session, row.event_number),
     )
 
@@ -114,6 +114,19 @@ def comparisons(content: SignedContent, before: tuple[SignedGains, ...]) -> tupl
         )
         for index, gain_set in enumerate(content.gain_sets)
     )
+
+
+def _open_actions(session: Session, actor: Actor, row: Submission, state: State) -> tuple[Action, ...]:
+    """What may be done next; a first approval of two is an approval to whoever gives it."""
+    found = lifecycle.actions_open_to(state, actor, visibility.authors(session, row.id))
+    query = select(Decision.id).where(
+        Decision.submission_id == row.id,
+        Decision.decision == "approve",
+        Decision.decided_by == actor.account_id,
+    )
+    signed: frozenset[Action] = frozenset({"approve"}) if session.execute(query).first() else frozenset()
+    hidden = signed | {"approve_first", "install_otherwise"}
+    return tuple(action for action in found if action not in hidden)
 
 
 def _decisions(session: Session, submission_id: str) -> tuple[DecisionView, ...]:

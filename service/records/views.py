@@ -212,7 +212,7 @@ class SubmissionView:
     overdue: bool
     """An emergency change whose review is owed past its time, or a temporary one past its own."""
     open_actions: tuple[Action, ...]
-    """What the actor who read it may do next."""
+    """What the actor who read it may do next: `approve`, `reject`, `withdraw`, `revoke`, `install`."""
     entry: EntryReference
 
 

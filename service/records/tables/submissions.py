@@ -123,3 +123,15 @@ class Installation(Kept, Base):
     as_approved: Mapped[bool]
     content: Mapped[bytes]
     content_digest: Mapped[str] = mapped_column(DigestText)
+
+
+class Sheet(Kept, Base):
+    """The sheet of a submission as it was made at a decision."""
+
+    __tablename__ = "sheets"
+
+    decision_id: Mapped[str] = mapped_column(Identifier, ForeignKey("decisions.id"), primary_key=True)
+    submission_id: Mapped[str] = mapped_column(Identifier, ForeignKey("submissions.id"), index=True)
+    renderer: Mapped[str] = mapped_column(String(80))
+    content: Mapped[bytes]
+    content_digest: Mapped[str] = mapped_column(DigestText)
