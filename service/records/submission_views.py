@@ -26,7 +26,7 @@ from service.records.content import (
     read_decision,
     read_installation,
 )
-from service.records.lifecycle import Kind
+from service.records.lifecycle import Action, Kind, State
 from service.records.roles import Actor
 from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopRevision
