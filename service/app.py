@@ -11,7 +11,7 @@ from service.context import Services, attach, request_id
 from service.documents.limits import BODY_BYTES_MAX
 from service.issuing.checkpoints import read_key
 from service.pages import errors as pages_errors
-from service.pages import register as register_pages
+from service.pages.registration import register as register_pages
 from service.records.database import Clock, Database, system_clock
 from service.settings import Settings
 

@@ -1,0 +1,120 @@
+"""What changes: each setting before and after, in words and as entered, with the change in per cent."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+
+from service.judgement.wording import UNITS
+from service.pages import words
+from service.records.views import Comparison, SettingChange
+from service.sheets.content import GainLine, GainTable
+
+_RECORDED = "recorded_settings."
+
+
+@dataclass(frozen=True, slots=True)
+class ChangeLine:
+    """One setting. `before` empty where no earlier gains are on record."""
+
+    name: str
+    before: str
+    before_unit: str
+    after: str
+    after_unit: str
+    percent: float | None
+    changed: bool
+
+    @property
+    def same_unit(self) -> bool:
+        """True where one unit serves both values."""
+        return self.before_unit in ("", self.after_unit)
+
+
+@dataclass(frozen=True, slots=True)
+class ChangeTable:
+    """One set of gains beside the one before it."""
+
+    condition: str
+    lines: tuple[ChangeLine, ...]
+    in_common_form: tuple[ChangeLine, ...]
+    """Where form or units changed: the same comparison with both brought to the parallel form; else empty."""
+    recorded: tuple[ChangeLine, ...]
+    """Settings that no analysis has looked at."""
+    earlier_known: bool
+    nothing_changes: bool
+
+
+def change_table(table: GainTable, comparison: Comparison | None) -> ChangeTable:
+    """Put the sheet's table of gains and the records' comparison of them side by side."""
+    percents = {}
+    if comparison and comparison.common_form is None:
+        percents = {change.setting: change.percent for change in comparison.settings}
+    return ChangeTable(
+        condition=table.condition,
+        lines=tuple(_lines(table, percents)),
+        in_common_form=_in_common_form(comparison),
+        recorded=tuple(_recorded(table, comparison)),
+        earlier_known=comparison is not None,
+        nothing_changes=comparison is not None and comparison.same_gains,
+    )
+
+
+def _lines(table: GainTable, percents: dict[str, float | None]) -> Iterator[ChangeLine]:
+    for line in table.gains:
+        changed = bool(line.before) and (line.before, line.before_unit) != (line.value, line.unit)
+        yield _line(line, line.before, percents.get(_setting(line)), changed)
+    for line in table.settings:
+        # the sheet leaves out what did not change
+        yield _line(line, line.before, percents.get(_setting(line)), bool(line.before))
+
+
+def _line(line: GainLine, before: str, percent: float | None, changed: bool) -> ChangeLine:
+    return ChangeLine(
+        name=line.name,
+        before=before,
+        before_unit=line.before_unit,
+        after=line.value,
+        after_unit=line.unit,
+        percent=percent if changed else None,
+        changed=changed,
+    )
+
+
+def _setting(line: GainLine) -> str:
+    """The interface's name of a setting: "Derivative filter (Tf)" is `derivative_filter`."""
+    return line.name.split(" (")[0].lower().replace(" ", "_")
+
+
+def _in_common_form(comparison: Comparison | None) -> tuple[ChangeLine, ...]:
+    if comparison is None or comparison.common_form is None:
+        return ()
+    return tuple(
+        _compared(change, words.computed_value)
+        for change in comparison.settings
+        if not change.setting.startswith((_RECORDED, "algorithm"))
+    )
+
+
+def _recorded(table: GainTable, comparison: Comparison | None) -> Iterator[ChangeLine]:
+    if comparison is None:
+        for told in table.recorded:
+            yield ChangeLine(told.name, "", "", told.value, told.unit, None, changed=False)
+        return
+    for change in comparison.settings:
+        if change.setting.startswith(_RECORDED):
+            yield _compared(change, words.told_value)
+
+
+def _compared(change: SettingChange, told: Callable[[float | str | None], str]) -> ChangeLine:
+    unit = UNITS.get(change.unit, change.unit)
+    before, after = told(change.before), told(change.after)
+    return ChangeLine(
+        name=words.setting(change.setting),
+        before=before,
+        before_unit=unit if before[:1].isdigit() else "",
+        after=after,
+        after_unit=unit if after[:1].isdigit() else "",
+        percent=change.percent,
+        changed=change.changed,
+    )

@@ -1,0 +1,29 @@
+"""The first page: what awaits review, what is past its time, what is approved and not yet installed."""
+
+from __future__ import annotations
+
+from flask import Blueprint, Response
+
+from service.pages import visits
+from service.pages.frame import page
+from service.records import queries
+from service.records.queries import SubmissionFilter
+
+SHOWN = 50
+TO_INSTALL = SubmissionFilter(states=frozenset({"approved"}))
+PAST_THEIR_TIME = SubmissionFilter(states=frozenset({"lapsed", "expired"}))
+
+
+def add_to(pages: Blueprint) -> None:
+    """Add this page."""
+    pages.add_url_rule("/", "home", home)
+
+
+def home() -> Response:
+    """What this person's areas wait for."""
+    with visits.reading() as visit:
+        session, actor, now = visit.session, visit.actor, visit.now
+        waiting = queries.awaiting_review(session, actor, now, limit=SHOWN)
+        to_install = queries.submissions(session, actor, TO_INSTALL, now, limit=SHOWN)
+        past = queries.submissions(session, actor, PAST_THEIR_TIME, now, limit=SHOWN)
+    return page("home.html", actor=actor, waiting=waiting, to_install=to_install, past=past)
