@@ -46,7 +46,8 @@ def _listen(host: str, port: int) -> socket.socket:
     try:
         return socket.create_server((host, port), family=family)
     except OSError as refused:
-        raise UserMistake(f"cannot listen at {host}:{port}: {refused.strerror or refused}") from None
+        reason = (refused.strerror or str(refused)).partition(" (")[0]
+        raise UserMistake(f"cannot listen at {host}:{port}: {reason}") from None
 
 
 def _address(listener: socket.socket) -> str:

@@ -12,6 +12,7 @@ from sqlalchemy.orm import Session
 
 from service.command.errors import UserMistake
 from service.documents.errors import FieldProblem
+from service.records import migrating
 from service.records.database import Database
 from service.records.errors import FieldErrors, RecordsError
 from service.settings import Settings
@@ -54,13 +55,26 @@ def reading() -> Iterator[Visit]:
         yield Visit(session=session, now=database.now())
 
 
+def check() -> None:
+    """Say whether the store is there and at the current schema, by raising UserMistake where it is not."""
+    with mistakes_in_a_sentence(), _open():
+        pass
+
+
 @contextmanager
 def _open() -> Iterator[Database]:
     database = Database.open(Settings.from_environment().database_url)
     try:
+        _check_schema(database)
         yield database
     finally:
         database.close()
+
+
+def _check_schema(database: Database) -> None:
+    with database.reading() as session:
+        if not migrating.is_current(session):
+            raise UserMistake("the database is not at the current schema; run gain-signoff migrate first")
 
 
 def _sentence(problem: FieldProblem) -> str:

@@ -73,8 +73,10 @@ def read_key(file: Path) -> SigningKey:
     """Read an Ed25519 private key from an unencrypted PEM file. Raises UnusableKey."""
     try:
         key = load_pem_private_key(file.read_bytes(), password=None)
-    except (OSError, ValueError, TypeError, UnsupportedAlgorithm) as failed:
-        raise UnusableKey(f"the signing key file {file} cannot be read: {failed}") from None
+    except OSError as failed:
+        raise UnusableKey(f"the signing key file {file} cannot be read: {failed.strerror}") from None
+    except (ValueError, TypeError, UnsupportedAlgorithm):
+        raise UnusableKey(f"the signing key file {file} is no unencrypted private key in PEM") from None
     if not isinstance(key, Ed25519PrivateKey):
         raise UnusableKey(f"the signing key file {file} holds a key of another kind than Ed25519")
     return key

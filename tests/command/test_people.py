@@ -1,0 +1,118 @@
+"""A store made, people added and tokens issued from the command line, with mistakes told in one sentence."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+
+import pytest
+from click.testing import CliRunner, Result
+
+from service.command.main import main
+from service.records import tokens
+from service.records.database import Database
+
+Run = Callable[..., Result]
+PASSWORD = "seven wet bicycles\n"
+REVIEWER = ("account", "add", "ines", "--full-name", "Ines Okafor", "--role", "reviewer")
+
+
+@pytest.fixture
+def url(tmp_path: Path) -> str:
+    return f"sqlite:///{tmp_path / 'store.db'}"
+
+
+@pytest.fixture
+def run(url: str, monkeypatch: pytest.MonkeyPatch) -> Run:
+    monkeypatch.setenv("GAIN_SIGNOFF_DATABASE_URL", url)
+
+    def command(*arguments: str, standard_input: str = "") -> Result:
+        return CliRunner().invoke(main, arguments, input=standard_input)
+
+    return command
+
+
+@pytest.fixture
+def store(run: Run) -> Run:
+    assert run("migrate").exit_code == 0
+    return run
+
+
+def refused_in_one_sentence(result: Result) -> str:
+    """Return the sentence on standard error of a command that did nothing."""
+    assert result.exit_code == 2
+    assert result.stdout == ""
+    assert isinstance(result.exception, SystemExit)
+    assert result.stderr.count("\n") == 1
+    return result.stderr.strip()
+
+
+def test_migrating_twice_is_once(run: Run) -> None:
+    assert run("migrate").stdout == run("migrate").stdout == "The database is at the current schema.\n"
+
+
+def test_an_account_can_use_the_token_that_was_issued_for_it(store: Run, url: str) -> None:
+    added = store(*REVIEWER, "--role", "submitter", "--area", "Washing", standard_input=PASSWORD)
+    assert added.exit_code == 0, added.stderr
+    issued = store("token", "issue", "ines", "--note", "bench")
+    assert issued.stdout.count("\n") == 1
+    database = Database.open(url)
+    with database.reading() as session:
+        actor = tokens.authenticate(session, issued.stdout.strip(), database.now()).actor
+    database.close()
+    assert (actor.name, actor.full_name) == ("ines", "Ines Okafor")
+    assert (actor.roles, actor.areas) == ({"reviewer", "submitter"}, {"Washing"})
+
+
+def test_the_password_is_never_shown(store: Run) -> None:
+    added = store(*REVIEWER, standard_input=PASSWORD)
+    assert PASSWORD.strip() not in added.output
+
+
+def test_a_listed_token_can_be_revoked_by_its_identifier(store: Run) -> None:
+    store(*REVIEWER, standard_input=PASSWORD)
+    text = store("token", "issue", "ines", "--note", "bench").stdout.strip()
+    listed = store("token", "list", "ines").stdout
+    identifier, name, state, *_, note = listed.strip().split("\t")
+    assert (name, state, note) == ("ines", "valid", "bench")
+    assert text not in listed
+    assert store("token", "revoke", identifier, "--reason", "lost").exit_code == 0
+    assert "revoked" in store("token", "list").stdout
+
+
+@pytest.mark.parametrize(
+    ("arguments", "standard_input", "words"),
+    [
+        (REVIEWER, "", "password"),
+        (REVIEWER, "short\n", "15"),
+        (("account", "add", "console", *REVIEWER[3:]), PASSWORD, "taken"),
+        (("token", "issue", "nobody", "--note", "bench"), "", "no such account"),
+        (("token", "revoke", "unknown", "--reason", "lost"), "", "no such"),
+    ],
+)
+def test_a_mistake_is_one_sentence_on_standard_error(
+    store: Run, arguments: tuple[str, ...], standard_input: str, words: str
+) -> None:
+    assert words in refused_in_one_sentence(store(*arguments, standard_input=standard_input))
+
+
+def test_a_name_is_never_used_twice(store: Run) -> None:
+    store(*REVIEWER, standard_input=PASSWORD)
+    assert "taken" in refused_in_one_sentence(store(*REVIEWER, standard_input=PASSWORD))
+
+
+def test_a_store_that_was_never_made_is_said(run: Run) -> None:
+    assert "gain-signoff migrate" in refused_in_one_sentence(run("token", "list"))
+
+
+def test_a_store_that_cannot_be_reached_is_said_without_its_password(
+    run: Run, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setenv("GAIN_SIGNOFF_DATABASE_URL", "sqlite:////nowhere/at/all.db")
+    assert "unable to open database file" in refused_in_one_sentence(run("migrate"))
+
+
+def test_a_role_that_does_not_exist_is_refused(store: Run) -> None:
+    result = store("account", "add", "ines", "--full-name", "Ines Okafor", "--role", "king")
+    assert result.exit_code == 2
+    assert "submitter" in result.stderr

@@ -1,0 +1,148 @@
+"""The service as a process of its own on loopback: it answers, drains, and says why it does not start."""
+
+from __future__ import annotations
+
+import http.client
+import os
+import signal
+import socket
+import subprocess
+import sys
+import threading
+import time
+from collections.abc import Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from urllib.parse import urlsplit
+
+import pytest
+
+from service.records import migrating
+from service.records.database import system_clock
+
+SECRET_KEY = "a secret of the tests, of 32 bytes or more"
+COMMAND = (sys.executable, "-m", "service.command", "serve", "--port", "0")
+
+
+@pytest.fixture
+def environment(tmp_path: Path) -> dict[str, str]:
+    url = f"sqlite:///{tmp_path / 'store.db'}"
+    migrating.migrate(url, now=system_clock())
+    settings = {"GAIN_SIGNOFF_DATABASE_URL": url, "GAIN_SIGNOFF_SECRET_KEY": SECRET_KEY}
+    return os.environ | settings | {"PYTHONUNBUFFERED": "1", "PYTHONDONTWRITEBYTECODE": "1"}
+
+
+@contextmanager
+def serving(environment: dict[str, str]) -> Iterator[tuple[subprocess.Popen[str], str, int]]:
+    """Start the service; give its process, host and port; end it if the test has not."""
+    process = subprocess.Popen(
+        COMMAND, env=environment, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
+    )
+    try:
+        assert process.stdout is not None
+        said = process.stdout.readline()
+        address = urlsplit(said.removeprefix("Serving at ").strip())
+        assert address.hostname, process.stderr and process.stderr.read()
+        yield process, address.hostname, address.port or 0
+    finally:
+        process.kill()
+        process.communicate()
+
+
+def answer(host: str, port: int, path: str) -> tuple[int, http.client.HTTPMessage]:
+    connection = http.client.HTTPConnection(host, port, timeout=20)
+    connection.request("GET", path)
+    response = connection.getresponse()
+    response.read()
+    connection.close()
+    return response.status, response.headers
+
+
+def test_the_service_answers_and_says_nothing_of_what_it_is_made_of(environment: dict[str, str]) -> None:
+    with serving(environment) as (_, host, port):
+        assert host == "127.0.0.1"
+        assert answer(host, port, "/livez")[0] == 200
+        assert answer(host, port, "/readyz")[0] == 200
+        status, headers = answer(host, port, "/v1/loops")
+        assert status == 401
+        assert "Server" not in headers or "waitress" not in headers["Server"].lower()
+
+
+def test_at_sigterm_a_request_that_was_begun_is_finished_and_no_other_is_taken(
+    environment: dict[str, str],
+) -> None:
+    with serving(environment) as (process, host, port):
+        begun = socket.create_connection((host, port), timeout=20)
+        begun.sendall(b"POST /v1/recomputations HTTP/1.1\r\nHost: x\r\nContent-Length: 4\r\n\r\nab")
+        time.sleep(0.3)
+        process.send_signal(signal.SIGTERM)
+        time.sleep(0.7)
+        with pytest.raises(ConnectionRefusedError):
+            socket.create_connection((host, port), timeout=5)
+        begun.sendall(b"cd")
+        assert begun.recv(100).startswith(b"HTTP/1.1 401 ")
+        begun.close()
+        assert process.wait(timeout=20) == 0
+
+
+def test_at_sigterm_an_idle_connection_holds_nothing_up(environment: dict[str, str]) -> None:
+    with serving(environment) as (process, host, port):
+        idle = http.client.HTTPConnection(host, port, timeout=20)
+        idle.request("GET", "/livez")
+        idle.getresponse().read()
+        process.send_signal(signal.SIGTERM)
+        assert process.wait(timeout=10) == 0
+        idle.close()
+
+
+def test_many_at_once_are_answered(environment: dict[str, str]) -> None:
+    with serving(environment) as (_, host, port):
+        statuses: list[int] = []
+        threads = [
+            threading.Thread(target=lambda: statuses.append(answer(host, port, "/readyz")[0]))
+            for _ in range(20)
+        ]
+        for thread in threads:
+            thread.start()
+        for thread in threads:
+            thread.join()
+        assert statuses == [200] * 20
+
+
+def refusal(environment: dict[str, str], *arguments: str) -> str:
+    """Return the one sentence with which the service refuses to start."""
+    process = subprocess.run(
+        (*COMMAND, *arguments), env=environment, capture_output=True, text=True, timeout=60, check=False
+    )
+    assert process.returncode == 2
+    assert process.stdout == ""
+    assert process.stderr.count("\n") == 1, process.stderr
+    return process.stderr
+
+
+@pytest.mark.parametrize("key", ["", "too short"])
+def test_it_does_not_start_without_a_secret_key(environment: dict[str, str], key: str) -> None:
+    said = refusal(environment | {"GAIN_SIGNOFF_SECRET_KEY": key})
+    assert "GAIN_SIGNOFF_SECRET_KEY" in said
+    assert "32 bytes" in said
+
+
+def test_it_does_not_start_on_a_store_that_was_never_made(
+    environment: dict[str, str], tmp_path: Path
+) -> None:
+    said = refusal(environment | {"GAIN_SIGNOFF_DATABASE_URL": f"sqlite:///{tmp_path / 'other.db'}"})
+    assert "gain-signoff migrate" in said
+
+
+def test_it_does_not_start_with_a_signing_key_that_is_none(
+    environment: dict[str, str], tmp_path: Path
+) -> None:
+    (tmp_path / "key.pem").write_text("no key")
+    said = refusal(environment | {"GAIN_SIGNOFF_SIGNING_KEY_FILE": str(tmp_path / "key.pem")})
+    assert "signing key file" in said
+
+
+def test_it_says_when_its_port_is_taken(environment: dict[str, str]) -> None:
+    with socket.create_server(("127.0.0.1", 0)) as taken:
+        port = taken.getsockname()[1]
+        assert f"127.0.0.1:{port}" in refusal(environment, "--port", str(port))
