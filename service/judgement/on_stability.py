@@ -17,19 +17,19 @@ def unstable(case: Case) -> Finding | None:
     return Finding(
         finding="unstable",
         weight="stop",
-        sentence=f"The loop is unstable: {_unstable_roots(found)}, so that in automatic PV and output swing "
-        "up or run away. Do not enter these gains.",
+        sentence=f"The loop is unstable: {_unstable_roots(found)}. In automatic PV and output swing up or run "
+        "away. Do not enter these gains.",
     )
 
 
 def _unstable_roots(stability: Stability) -> str:
     count = stability.unstable_roots
     if count is None:
-        return "not all of its characteristic roots are damped"
+        return "not all of its characteristic roots die out"
     if isinstance(count, str):
-        return "infinitely many of its characteristic roots are undamped"
+        return "infinitely many of its characteristic roots grow in place of dying out"
     number = _NUMBERS.get(count, str(count))
-    return f"{number} of its characteristic roots {'is' if count == 1 else 'are'} undamped"
+    return f"{number} of its characteristic roots {'grows' if count == 1 else 'grow'} in place of dying out"
 
 
 def scan_destabilises(case: Case) -> Finding | None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+from enum import Enum
 from typing import Any
 
 import pytest
@@ -26,8 +27,14 @@ REQUEST: dict[str, Any] = {
     },
 }
 
-ABSENT = object()
-"""Stands for taking a field away."""
+
+class Absent(Enum):
+    """Stands for taking a field away."""
+
+    ABSENT = "absent"
+
+
+ABSENT = Absent.ABSENT
 
 
 def changed(pointer: str, value: object, request: dict[str, Any] | None = None) -> dict[str, Any]:

@@ -55,13 +55,13 @@ def test_a_sound_loop_has_its_type_to_tell_and_nothing_else() -> None:
     assert codes(loop()) == ["loop_type"]
 
 
-def test_an_unstable_loop_is_told_with_its_undamped_roots() -> None:
+def test_an_unstable_loop_is_told_with_the_roots_that_grow() -> None:
     found = one(loop(controller=ideal(gain=12.0)), "unstable")
     assert found.weight == "stop"
-    assert "two of its characteristic roots are undamped" in found.sentence
+    assert "two of its characteristic roots grow" in found.sentence
 
 
-def test_infinitely_many_undamped_roots_are_told() -> None:
+def test_infinitely_many_roots_that_grow_are_told() -> None:
     found = one(loop(replace(LAG, dead_time_s=1.0), ideal(derivative_s=40.0)), "unstable")
     assert "infinitely many" in found.sentence
 
