@@ -1,0 +1,51 @@
+"""What a verification found."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Fault:
+    """The first place that does not hold: an entry of the history, or a row of a table."""
+
+    entry: int | None
+    """Number of the entry, or of the one that vouches for the row; None where neither can be said."""
+    table: str | None
+    row: str | None
+    what: str
+    """A sentence."""
+
+    def sentence(self) -> str:
+        """The place and what is wrong there, in one line."""
+        place = [f"entry {self.entry}"] if self.entry is not None else []
+        if self.table is not None:
+            place.append(f"table {self.table}" + (f", row {self.row}" if self.row is not None else ""))
+        return f"{'; '.join(place) or 'the store'}: {self.what}"
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Report:
+    """What was verified and what was found. `fault` None: everything that is covered holds."""
+
+    fault: Fault | None
+    entries: int
+    """Entries that were verified before the end, or before the fault."""
+    rows: int
+    """Rows of other tables held against the entries that vouch for them."""
+    head: str | None
+    """Digest of the last entry that was verified."""
+    root: str
+    """Merkle root (RFC 9162) over the entries that were verified."""
+    checkpoint_size: int | None
+    """How many entries the checkpoint covers that this was held against; None: none was given."""
+    covered: tuple[str, ...]
+    not_covered: tuple[str, ...]
+    """Tables whose content nothing vouches for."""
+    notes: tuple[str, ...]
+    """What is no fault and worth knowing."""
+
+    @property
+    def holds(self) -> bool:
+        """True where no fault was found."""
+        return self.fault is None
