@@ -1,4 +1,4 @@
-"""The sheet of a submission, made from the records."""
+"""The sheet of a submission, made from the records, and the decision with which one is kept."""
 
 from __future__ import annotations
 
@@ -6,10 +6,11 @@ from datetime import datetime
 
 from sqlalchemy.orm import Session
 
-from service.records import history, queries
+from service.documents.decisions import DecisionRequest
+from service.records import decisions, history, kept_sheets, queries
 from service.records.roles import Actor
-from service.records.views import SubmissionView
-from service.sheets.content import SheetContent, content_of
+from service.records.views import DecisionView, SubmissionView
+from service.sheets.content import RENDERER_VERSION, SheetContent, content_of
 from service.sheets.layout import sheet_pdf
 
 
@@ -22,6 +23,19 @@ def content(session: Session, actor: Actor, view: SubmissionView) -> SheetConten
         curves_in_force=queries.curves(session, actor, before.submission_id) if before else (),
         demonstration=history.is_demonstration(session),
     )
+
+
+def sign(
+    session: Session, actor: Actor, submission_id: str, request: DecisionRequest, now: datetime
+) -> DecisionView:
+    """Sign a decision, and keep the sheet as it was made at it, in the same transaction.
+
+    Raises what `service.records.decisions.decide` raises.
+    """
+    made = decisions.decide(session, actor, submission_id, request, now)
+    pdf = sheet(session, actor, submission_id, now)
+    kept_sheets.keep(session, actor, made.decision.decision_id, pdf, RENDERER_VERSION, now)
+    return made
 
 
 def sheet(session: Session, actor: Actor, submission_id: str, now: datetime) -> bytes:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import copy
+from datetime import UTC, datetime
 from typing import Any
 
 Body = dict[str, Any]
@@ -42,12 +43,17 @@ SUBMISSION: Body = {
     "claims": {"gain_margin": 3.5},
 }
 INSTALLATION: Body = {
+    # installed_at comes from `installed_now`: it lies after the submission
     "as_found": CONTROLLER | {"proportional": {"value": 1.0, "unit": "gain"}},
     "as_left": CONTROLLER,
-    "installed_at": "2026-03-03T09:30:00Z",
     "typed_by": "N. Abara",
     "saved_to_engineering_database": True,
 }
+
+
+def installed_now() -> Body:
+    """Return an installation that has just been done."""
+    return INSTALLATION | {"installed_at": datetime.now(UTC).isoformat()}
 
 
 def changed(body: Body, pointer: str, value: object) -> Body:

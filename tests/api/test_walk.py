@@ -51,7 +51,7 @@ def test_registered_gains_go_from_the_tool_to_the_panel(
     path = f"/v1/submissions/{submission['id']}"
     assert service.get(path).json["state"] == "approved"
 
-    installed = service.post(f"{path}/installations", plant.INSTALLATION)
+    installed = service.post(f"{path}/installations", plant.installed_now())
     assert installed.status_code == 201, installed.text
     whole = service.get(path).json
     assert whole["state"] == "in_force"
@@ -73,19 +73,29 @@ def test_the_sheet_comes_out_as_a_pdf_with_the_gains_as_they_were_typed(
     assert "2.00" in text
 
 
+def test_the_bytes_made_at_a_decision_stay_whatever_comes_after(
+    service: Service, submission: Body, decide: Decide
+) -> None:
+    path = f"/v1/submissions/{submission['id']}"
+    assert service.get(f"{path}/sheet.pdf?as_signed=true").status_code == 404
+    decide()
+    signed = service.get(f"{path}/sheet.pdf?as_signed=true").data
+    assert signed == service.get(f"{path}/sheet.pdf").data
+    service.post(f"{path}/installations", plant.installed_now())
+    assert service.get(f"{path}/sheet.pdf?as_signed=true").data == signed
+    assert service.get(f"{path}/sheet.pdf").data != signed
+    assert service.get(f"{path}/sheet.pdf?as_signed=perhaps").status_code == 400
+
+
 def test_each_step_stands_in_the_history_and_the_entries_are_chained(
     service: Service, submission: Body, decide: Decide
 ) -> None:
     decide()
-    service.post(f"/v1/submissions/{submission['id']}/installations", plant.INSTALLATION)
+    service.post(f"/v1/submissions/{submission['id']}/installations", plant.installed_now())
     events = service.get("/v1/history?tag=tic-204&limit=200", person="auditor").json["items"]
-    assert [event["actor"] for event in events] == [
-        "submitter",
-        "submitter",
-        "submitter",
-        "reviewer",
-        "submitter",
-    ]
+    by = [event["actor"] for event in events]
+    assert by == ["submitter", "submitter", "submitter", "reviewer", "reviewer", "submitter"]
+    assert len({event["kind"] for event in events}) == len(events)
     everything = service.get("/v1/history?limit=200", person="auditor").json["items"]
     for before, after in pairwise(everything):
         assert after["previous"] == before["digest"]
