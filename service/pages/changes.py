@@ -25,11 +25,6 @@ class ChangeLine:
     percent: float | None
     changed: bool
 
-    @property
-    def same_unit(self) -> bool:
-        """True where one unit serves both values."""
-        return self.before_unit in ("", self.after_unit)
-
 
 @dataclass(frozen=True, slots=True)
 class ChangeTable:
@@ -37,8 +32,11 @@ class ChangeTable:
 
     condition: str
     lines: tuple[ChangeLine, ...]
+    """The gains, and whatever else changes."""
+    unchanged: tuple[ChangeLine, ...]
+    """What has to stand on the display beside the gains and stays as it was, or was never recorded before."""
     in_common_form: tuple[ChangeLine, ...]
-    """Where form or units changed: the same comparison with both brought to the parallel form; else empty."""
+    """Where form or units changed: what changes when both are brought to the parallel form; else empty."""
     recorded: tuple[ChangeLine, ...]
     """Settings that no analysis has looked at."""
     earlier_known: bool
@@ -50,9 +48,13 @@ def change_table(table: GainTable, comparison: Comparison | None) -> ChangeTable
     percents = {}
     if comparison and comparison.common_form is None:
         percents = {change.setting: change.percent for change in comparison.settings}
+    gains = tuple(_line(line, percents.get(_setting(line)), line.before) for line in table.gains)
+    # of the settings the sheet leaves out what was before where it did not change
+    settings = tuple(_line(line, None, line.before or line.value) for line in table.settings)
     return ChangeTable(
         condition=table.condition,
-        lines=tuple(_lines(table, percents)),
+        lines=gains + tuple(line for line in settings if line.changed),
+        unchanged=tuple(line for line in settings if not line.changed),
         in_common_form=_in_common_form(comparison),
         recorded=tuple(_recorded(table, comparison)),
         earlier_known=comparison is not None,
@@ -60,16 +62,8 @@ def change_table(table: GainTable, comparison: Comparison | None) -> ChangeTable
     )
 
 
-def _lines(table: GainTable, percents: dict[str, float | None]) -> Iterator[ChangeLine]:
-    for line in table.gains:
-        changed = bool(line.before) and (line.before, line.before_unit) != (line.value, line.unit)
-        yield _line(line, line.before, percents.get(_setting(line)), changed)
-    for line in table.settings:
-        # the sheet leaves out what did not change
-        yield _line(line, line.before, percents.get(_setting(line)), bool(line.before))
-
-
-def _line(line: GainLine, before: str, percent: float | None, changed: bool) -> ChangeLine:
+def _line(line: GainLine, percent: float | None, before: str) -> ChangeLine:
+    changed = bool(before) and (before, line.before_unit) != (line.value, line.unit)
     return ChangeLine(
         name=line.name,
         before=before,
@@ -92,7 +86,7 @@ def _in_common_form(comparison: Comparison | None) -> tuple[ChangeLine, ...]:
     return tuple(
         _compared(change, words.computed_value)
         for change in comparison.settings
-        if not change.setting.startswith((_RECORDED, "algorithm"))
+        if change.changed and not change.setting.startswith((_RECORDED, "algorithm"))
     )
 
 

@@ -16,6 +16,7 @@ from service.documents.decisions import DecisionRequest, Deviation, Digest
 from service.documents.errors import FieldProblem, InvalidDocument
 from service.documents.strict_json import Plain
 from service.documents.texts import Prose
+from service.issuing import sheets
 from service.pages import forms, visits
 from service.pages.dossier import dossier
 from service.pages.forms import Form, Problem
@@ -117,7 +118,7 @@ def _sign(submission_id: str, request_: DecisionRequest) -> str:
     """Sign, and return the decision's identifier; a refused signature leaves its trace after the rollback."""
     try:
         with visits.writing() as visit:
-            made = records.decide(visit.session, visit.actor, submission_id, request_, visit.now)
+            made = sheets.sign(visit.session, visit.actor, submission_id, request_, visit.now)
             return made.decision.decision_id
     except (SigningRefused, NotIndependent) as refusal:
         with visits.writing() as visit:

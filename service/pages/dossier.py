@@ -7,12 +7,13 @@ from dataclasses import dataclass
 from datetime import datetime
 
 from markupsafe import Markup
+from reportlab.graphics.shapes import Drawing
 
-from service.figures import descriptions
+from service.figures import descriptions, frequency
 from service.figures.frequency import frequency_drawing
 from service.figures.responses import Response, response_drawing
 from service.figures.svg import to_svg
-from service.pages import visits
+from service.issuing import sheets
 from service.pages.changes import ChangeTable, change_table
 from service.pages.standing import Standing, standing
 from service.pages.visits import Visit
@@ -21,7 +22,10 @@ from service.records import queries
 from service.records.content import Difference
 from service.records.views import Comparison, CurvesView, SubmissionView
 from service.sheets.assessments import Assessment
-from service.sheets.content import SheetContent, content_of
+from service.sheets.content import SheetContent
+
+NARROW = {"width_pt": 300, "height_pt": 420, "text_pt": 12}
+"""A drawing for a screen of 320 px, in points."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,6 +34,8 @@ class Figure:
 
     title: str
     svg: Markup
+    narrow_svg: Markup
+    """The same for a narrow screen, where the other one's letters would be too small."""
     description: str
     rows: tuple[tuple[str, ...], ...]
 
@@ -70,7 +76,7 @@ def dossier(visit: Visit, submission_id: str) -> Dossier:
     """Read a submission and tell it. Raises NotFound."""
     view = queries.submission(visit.session, visit.actor, submission_id, visit.now)
     curves = queries.curves(visit.session, visit.actor, submission_id)
-    sheet = _sheet(visit, view, curves)
+    sheet = sheets.content(visit.session, visit.actor, view)
     return Dossier(
         view=view,
         sheet=sheet,
@@ -79,17 +85,6 @@ def dossier(visit: Visit, submission_id: str) -> Dossier:
         history=tuple(sorted(_happenings(view), key=lambda happening: happening.entry)),
         standing=standing(view, visit.actor),
     )
-
-
-def sheet_of(visit: Visit, view: SubmissionView) -> SheetContent:
-    """What stands on the sheet of a submission in its present state."""
-    return _sheet(visit, view, queries.curves(visit.session, visit.actor, view.id))
-
-
-def _sheet(visit: Visit, view: SubmissionView, curves: Sequence[CurvesView]) -> SheetContent:
-    before = view.content.gains_in_force
-    earlier = queries.curves(visit.session, visit.actor, before.submission_id) if before else ()
-    return content_of(view, curves, curves_in_force=earlier, demonstration=visits.is_demonstration())
 
 
 def _changes(view: SubmissionView, sheet: SheetContent) -> Iterator[ChangeTable]:
@@ -108,16 +103,30 @@ def _told(sheet: SheetContent, curves: Sequence[CurvesView]) -> Iterator[Told]:
 
 def _response(response: Response) -> Figure:
     words = descriptions.describe(response)
-    svg = to_svg(response_drawing(response), title=response.title, description=words)
-    return Figure(response.title, Markup(svg), words, descriptions.table(response))  # noqa: S704  drawn by us
+    return Figure(
+        title=response.title,
+        svg=_svg(response_drawing(response), response.title, words),
+        narrow_svg=_svg(response_drawing(response, **NARROW), response.title, words),
+        description=words,
+        rows=descriptions.table(response),
+    )
 
 
 def _frequency(view: CurvesView) -> Iterator[Figure]:
     curve = view.curves.frequency
     if curve is not None:
-        words, title = descriptions.describe(curve), "Loop gain and sensitivity over frequency"
-        svg = to_svg(frequency_drawing(curve), title=title, description=words)
-        yield Figure(title, Markup(svg), words, ())  # noqa: S704  drawn by us, texts escaped by the writer
+        words, title = descriptions.describe(curve), frequency.TITLE
+        yield Figure(
+            title=title,
+            svg=_svg(frequency_drawing(curve), title, words),
+            narrow_svg=_svg(frequency_drawing(curve, **NARROW), title, words),
+            description=words,
+            rows=(),
+        )
+
+
+def _svg(drawing: Drawing, title: str, words: str) -> Markup:
+    return Markup(to_svg(drawing, title=title, description=words))  # noqa: S704  drawn by us, texts escaped
 
 
 def _happenings(view: SubmissionView) -> Iterator[Happening]:

@@ -2,12 +2,11 @@
 
 from __future__ import annotations
 
-from flask import Blueprint, Response
+from flask import Blueprint, Response, request
 
+from service.issuing import sheets
 from service.pages import visits
-from service.pages.dossier import sheet_of
-from service.records import queries
-from service.sheets.layout import sheet_pdf
+from service.records import kept_sheets
 
 
 def add_to(pages: Blueprint) -> None:
@@ -16,11 +15,15 @@ def add_to(pages: Blueprint) -> None:
 
 
 def sheet(submission_id: str) -> Response:
-    """The sheet in its present state."""
+    """The sheet in its present state, or as it was made at the latest decision."""
+    as_signed = request.args.get("as_signed") == "true"
     with visits.reading() as visit:
-        view = queries.submission(visit.session, visit.actor, submission_id, visit.now)
-        content = sheet_of(visit, view)
-    response = Response(sheet_pdf(content), mimetype="application/pdf")
-    response.headers["Content-Disposition"] = f'inline; filename="gains-{view.id}.pdf"'
+        if as_signed:
+            pdf = kept_sheets.latest(visit.session, visit.actor, submission_id)
+        else:
+            pdf = sheets.sheet(visit.session, visit.actor, submission_id, visit.now)
+    name = f"gains-{submission_id}{'-as-signed' if as_signed else ''}.pdf"
+    response = Response(pdf, mimetype="application/pdf")
+    response.headers["Content-Disposition"] = f'inline; filename="{name}"'
     response.headers["Cache-Control"] = "no-store"
     return response

@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from service.judgement.wording import criterion_sentence
-from service.pages.forms import Form, Problem
+from service.pages.forms import Form, Problem, sentence
 from service.pages.options import Option
 from service.records import lifecycle
 from service.records.errors import NotAllowed
@@ -65,7 +65,8 @@ def authors(view: SubmissionView) -> frozenset[str]:
 
 
 def _choices(view: SubmissionView) -> tuple[Option, ...]:
-    hindrances = " ".join((*view.hindrances, *(_changed(view.changed_basis) if view.changed_basis else ())))
+    reasons = (*map(sentence, view.hindrances), *_changed(view.changed_basis))
+    hindrances = " ".join(reasons)
     return (
         Option("approve", "Approve these gains", hindrances, closed=bool(hindrances)),
         Option("reject", "Reject these gains"),
@@ -73,6 +74,8 @@ def _choices(view: SubmissionView) -> tuple[Option, ...]:
 
 
 def _changed(changed: tuple[str, ...]) -> tuple[str, ...]:
+    if not changed:
+        return ()
     named = ", ".join(changed)
     return (f"Since the recomputation this has changed: {named}. The gains have to be submitted again.",)
 

@@ -10,6 +10,7 @@ from markupsafe import Markup
 
 from service.judgement import wording
 from service.judgement.digits import as_entered, three_digits
+from service.pages import forms
 from service.records import lifecycle
 from service.sheets import controllers
 
@@ -153,6 +154,7 @@ FILTERS: dict[str, Callable[..., Any]] = {
     "as_entered": as_entered,
     "told_value": told_value,
     "setting": setting,
+    "sentence": forms.sentence,
     "state": lifecycle.in_words,
     "kind": KINDS.__getitem__,
     "decided": DECIDED.__getitem__,
