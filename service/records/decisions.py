@@ -76,7 +76,8 @@ def decide(
     submission = visibility.submission(session, actor, submission_id)
     earlier = _decisions(session, submission_id)
     lifecycle.check_who(request.decision, actor, visibility.authors(session, submission_id))
-    _check_signs_once(actor, request, earlier)
+    if lifecycle.allows(states.as_read(session, submission, now), request.decision):
+        _check_signs_once(actor, request, earlier)
     accounts.check_password(session, actor, request.password, now)
     content = read_content(submission.content)
     _check_deviations(request, content)
