@@ -20,7 +20,7 @@ FOR_MACHINES = ("/v1/", "/livez", "/readyz")
 
 SECURITY_HEADERS = {
     "Content-Security-Policy": (
-        "default-src 'none'; style-src 'self'; font-src 'self'; "
+        "default-src 'none'; style-src 'self'; font-src 'self'; img-src 'self'; "
         "frame-ancestors 'none'; base-uri 'none'; form-action 'none'"
     ),
     "Cross-Origin-Opener-Policy": "same-origin",

@@ -3,20 +3,22 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 from typing import Any
 
 from flask import Blueprint, Flask, Response, current_app
 from werkzeug.routing import Rule
 
-from service.api import answers, openapi_schemas, problems
+from service.api import answers, problems, queries
 from service.api.answers import Answer
-from service.api.openapi_schemas import Schemas
 from service.api.operations import Changing, Computing, Operation, Reading
 from service.api.problems import ProblemType
+from service.api.queries import PageQuery
+from service.api.representations import Loop
 from service.documents import writing
 from service.documents.engine import engine
+from service.documents.schemas import Schemas, json_schemas
 
 blueprint = Blueprint("openapi", __name__, url_prefix="/v1")
 
@@ -38,6 +40,13 @@ WITH_BODY = (
 CHANGING = (problems.FORBIDDEN, problems.CONFLICT)
 REPLACING = (problems.PRECONDITION_REQUIRED, problems.PRECONDITION_FAILED)
 SIGNING = (problems.SIGNING_REFUSED, problems.PRECONDITION_FAILED, problems.TOO_MANY_REQUESTS)
+
+SENT: Json = {
+    "ETag": {"description": "Names this revision in If-Match.", "schema": {"type": "string"}},
+    "Link": {"description": "The first and the next page (RFC 8288).", "schema": {"type": "string"}},
+    "Location": {"description": "Where it stands.", "schema": {"type": "string"}},
+}
+"""Headers of answers that a program needs."""
 
 PROBLEM_SCHEMA: Json = {
     "type": "object",
@@ -80,7 +89,7 @@ def show_description() -> Response:
 def description(app: Flask) -> Json:
     """Return the OpenAPI 3.1 document of an application's operations."""
     routes = list(routes_of(app))
-    schemas = openapi_schemas.of(tuple(route.operation for route in routes))
+    schemas = _schemas(tuple(route.operation for route in routes))
     paths: dict[str, Json] = {}
     for route in routes:
         paths.setdefault(route.path, {})[route.method] = _operation(route, schemas)
@@ -105,6 +114,17 @@ def routes_of(app: Flask) -> Iterator[Route]:
             yield Route(_path(rule), _method(rule), rule.endpoint.split(".")[0], operation)
 
 
+def _schemas(operations: Iterable[Operation]) -> Schemas:
+    operations = tuple(operations)
+    bodies = {operation.body for operation in operations if isinstance(operation, Changing | Computing)}
+    answered = {operation.answer for operation in operations if operation.answer is not None}
+    return json_schemas(tuple(sorted(bodies, key=_name)), tuple(sorted(answered, key=_name)))
+
+
+def _name(described: type) -> str:
+    return described.__qualname__
+
+
 def _path(rule: Rule) -> str:
     return re.sub(r"<(?:\w+:)?(\w+)>", r"{\1}", rule.rule)
 
@@ -120,11 +140,11 @@ def _operation(route: Route, schemas: Schemas) -> Json:
         "operationId": operation.__name__,
         "tags": [route.tag],
         "summary": operation.summary,
-        "parameters": [*_path_parameters(route), *_query_parameters(operation, schemas), *_headers(route)],
+        "parameters": [*_path_parameters(route), *_query_parameters(operation), *_headers(route)],
         "responses": {str(operation.status): _success(operation, schemas)} | _refusals(route),
     }
     if isinstance(operation, Changing | Computing):
-        content = {"application/json": {"schema": schemas.body(operation)}}
+        content = {"application/json": {"schema": schemas.of_read[operation.body]}}
         described["requestBody"] = {"required": True, "content": content}
     return described
 
@@ -135,9 +155,9 @@ def _path_parameters(route: Route) -> Iterator[Json]:
         yield {"name": name, "in": "path", "required": True, "schema": {"type": kind}}
 
 
-def _query_parameters(operation: Operation, schemas: Schemas) -> Iterator[Json]:
+def _query_parameters(operation: Operation) -> Iterator[Json]:
     if isinstance(operation, Reading):
-        for name, schema in schemas.query(operation).items():
+        for name, schema in queries.schemas(operation.query).items():
             yield {"name": name, "in": "query", "required": False, "schema": schema}
 
 
@@ -160,8 +180,26 @@ def _headers(route: Route) -> Iterator[Json]:
 def _success(operation: Operation, schemas: Schemas) -> Json:
     content: Json = {name: {} for name in operation.media_types}
     if "application/json" in content and operation.answer is not None:
-        content["application/json"] = {"schema": schemas.answer(operation)}
-    return {"description": operation.summary, "content": content}
+        content["application/json"] = {"schema": _answer_schema(operation, schemas.of_written)}
+    headers = {name: SENT[name] for name in _headers_sent(operation)}
+    return {"description": operation.summary, "headers": headers, "content": content}
+
+
+def _answer_schema(operation: Operation, of_written: dict[type, Json]) -> Json:
+    schema = of_written[operation.answer] if operation.answer else {}
+    if not operation.a_list:
+        return schema
+    items = {"type": "array", "items": schema}
+    return {"type": "object", "required": ["items"], "properties": {"items": items}}
+
+
+def _headers_sent(operation: Operation) -> Iterator[str]:
+    if operation.status == 201:
+        yield "Location"
+    if operation.answer is Loop and not operation.a_list:
+        yield "ETag"
+    if isinstance(operation, Reading) and issubclass(operation.query, PageQuery):
+        yield "Link"
 
 
 def _refusals(route: Route) -> Json:

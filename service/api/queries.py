@@ -68,6 +68,12 @@ def read(query_type: type[QueryT], parameters: MultiDict[str, str]) -> QueryT:
         raise BadQuery(tuple(_field_problems(invalid))) from None
 
 
+def schemas(query_type: Any) -> dict[str, Any]:
+    """Return the JSON schema of each parameter."""
+    properties: dict[str, Any] = _adapter(query_type).json_schema().get("properties", {})
+    return properties
+
+
 def _misnamed(query_type: Any, parameters: MultiDict[str, str]) -> Iterator[FieldProblem]:
     known = {field.name for field in dataclasses.fields(query_type)}
     for name, values in parameters.lists():

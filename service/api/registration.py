@@ -13,6 +13,7 @@ from service.api import (
     openapi,
     problem_pages,
     recomputations,
+    reference,
     sheets,
     submissions,
 )
@@ -26,6 +27,7 @@ BLUEPRINTS = (
     sheets.blueprint,
     history.blueprint,
     openapi.blueprint,
+    reference.blueprint,
     problem_pages.blueprint,
     health.blueprint,
 )

@@ -9,7 +9,7 @@ from service.app import create_app
 from service.settings import Settings
 from tests.api.conftest import SECRET_KEY, Kept, Service
 
-OPEN = {"/v1/openapi.json", "/livez", "/readyz", "/problems", "/problems/<name>"}
+OPEN = {"/v1/openapi.json", "/reference", "/livez", "/readyz", "/problems", "/problems/<name>"}
 """What interface.md names as open to all: API description, liveness, problem pages."""
 
 
@@ -38,9 +38,11 @@ def test_every_route_of_the_api_but_the_open_ones_asks_for_a_credential(service:
     assert {answer.json["type"] for answer in answers.values()} == {"/problems/unauthenticated"}
 
 
-@pytest.mark.parametrize("path", ["/v1/openapi.json", "/livez", "/readyz", "/problems", "/problems/conflict"])
+@pytest.mark.parametrize(
+    "path", ["/v1/openapi.json", "/reference", "/livez", "/readyz", "/problems", "/problems/conflict"]
+)
 def test_the_open_routes_ask_for_none(service: Service, path: str) -> None:
-    assert service.get(path, person=None).status_code == 200
+    assert service.get(path.replace("<name>", "conflict"), person=None).status_code == 200
 
 
 @pytest.mark.parametrize(

@@ -1,0 +1,132 @@
+"""The description that the service gives of itself says what it does: checked on the walk's own bodies."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import jsonschema_rs
+import pytest
+
+from service.api.openapi import routes_of
+from tests.api import plant
+from tests.api.conftest import Decide, Service
+from tests.api.plant import Body, changed, without
+from tests.api.test_credentials import api_rules
+
+REQUESTS: dict[str, Body] = {
+    "LoopRegistration": plant.LOOP,
+    "ModelVersion": plant.MODEL,
+    "RecomputationRequest": plant.RECOMPUTATION,
+    "SubmissionRequest": plant.SUBMISSION,
+    "InstallationRequest": plant.installed_now(),
+}
+
+
+@pytest.fixture
+def description(service: Service) -> Body:
+    body: Body = service.get("/v1/openapi.json", person=None).json
+    return body
+
+
+def problems(description: Body, schema: Body, value: object) -> list[str]:
+    """Return what is wrong with a value by a schema (2020-12) of the description."""
+    validator = jsonschema_rs.Draft202012Validator(schema | {"components": description["components"]})
+    return [str(error) for error in validator.iter_errors(value)]
+
+
+def answer_schema(description: Body, path: str, method: str = "get", status: str = "200") -> Body:
+    content = description["paths"][path][method]["responses"][status]["content"]
+    schema: Body = content["application/json"]["schema"]
+    return schema
+
+
+def test_every_route_that_needs_a_credential_is_described(service: Service, description: Body) -> None:
+    described = {(path, method) for path, methods in description["paths"].items() for method in methods}
+    routes = {(route.path, route.method) for route in routes_of(service.app)}
+    assert described == routes
+    assert len(routes) == len(api_rules(service))
+
+
+def test_no_reference_leads_nowhere(description: Body) -> None:
+    def references(part: Any) -> set[str]:
+        if isinstance(part, dict):
+            own = {part["$ref"]} if isinstance(part.get("$ref"), str) else set()
+            return own.union(*(references(value) for value in part.values()))
+        return set().union(*(references(value) for value in part)) if isinstance(part, list) else set()
+
+    named = {reference.removeprefix("#/components/schemas/") for reference in references(description)}
+    assert len(named) > 40
+    assert named <= set(description["components"]["schemas"])
+
+
+@pytest.mark.parametrize("name", REQUESTS)
+def test_the_schemas_let_through_what_the_service_takes_and_no_unknown_field(
+    description: Body, name: str
+) -> None:
+    schema = description["components"]["schemas"][name]
+    assert problems(description, schema, REQUESTS[name]) == []
+    assert problems(description, schema, REQUESTS[name] | {"colour": "red"}) != []
+    first = next(iter(REQUESTS[name]))
+    assert problems(description, schema, without(REQUESTS[name], first)) != []
+
+
+def test_a_wrong_value_deep_inside_is_wrong_by_the_schema_too(description: Body) -> None:
+    schema = description["components"]["schemas"]["SubmissionRequest"]
+    for pointer, value in (
+        ("/controller/proportional/value", -1.0),
+        ("/controller/integral/unit", "hours"),
+        ("/controller/form", "best"),
+    ):
+        assert problems(description, schema, changed(plant.SUBMISSION, pointer, value)) != []
+
+
+def test_what_is_answered_on_the_walk_is_what_is_described(
+    service: Service, description: Body, loop_id: str, submission: Body, decide: Decide
+) -> None:
+    own = f"/v1/submissions/{submission['id']}"
+    one = "/v1/submissions/{submission_id}"
+    signed = decide()
+    installed = service.post(f"{own}/installations", plant.installed_now())
+    computed = service.post("/v1/recomputations", plant.RECOMPUTATION | {"include": ["curves"]})
+    made = [
+        (submission, answer_schema(description, "/v1/submissions", "post", "201")),
+        (signed.json, answer_schema(description, f"{one}/decisions", "post", "201")),
+        (installed.json, answer_schema(description, f"{one}/installations", "post", "201")),
+        (computed.json, answer_schema(description, "/v1/recomputations", "post")),
+    ]
+    read = {
+        "/v1/loops": "/v1/loops",
+        f"/v1/loops/{loop_id}": "/v1/loops/{loop_id}",
+        f"/v1/loops/{loop_id}/revisions": "/v1/loops/{loop_id}/revisions",
+        f"/v1/loops/{loop_id}/models": "/v1/loops/{loop_id}/models",
+        f"/v1/loops/{loop_id}/gains-in-force": "/v1/loops/{loop_id}/gains-in-force",
+        "/v1/submissions": "/v1/submissions",
+        own: one,
+        f"{own}/curves": f"{one}/curves",
+        "/v1/history": "/v1/history",
+        "/v1/history/1": "/v1/history/{number}",
+        "/v1/history/checkpoint": "/v1/history/checkpoint",
+    }
+    made += [
+        (service.get(path, person="auditor").json, answer_schema(description, template))
+        for path, template in read.items()
+    ]
+    for value, schema in made:
+        assert problems(description, schema, value) == []
+
+
+def test_a_problem_is_as_described(service: Service, description: Body) -> None:
+    schema = description["components"]["schemas"]["Problem"]
+    assert problems(description, schema, service.post("/v1/loops", {}).json) == []
+
+
+def test_the_page_of_the_api_shows_every_call_and_asks_nothing_off_the_machine(
+    service: Service, description: Body
+) -> None:
+    page = service.get("/reference", person=None)
+    assert page.status_code == 200
+    for path in description["paths"]:
+        assert path in page.text
+    assert "<script" not in page.text
+    assert "http://" not in page.text
+    assert "https://" not in page.text
