@@ -139,7 +139,7 @@ def test_the_margins_of_the_exact_dead_time_loops_are_right_to_seven_digits(name
 
 
 ISE_OFF_IN_FILE = {"c011": 1.2e-4, "c025": 1.1e-4}
-"""The file's ISE of these two is off by slightly more than its stated 1e-4: a march of the loop in small steps
+"""The file's ISE of these two is off by slightly more than its stated 1e-4: a march in small steps
 agrees with the service to 1e-7, see the test below."""
 
 WITH_STEP = [name for name, loop in EXACT_DEAD_TIME.items() if "step" in loop.expected]

@@ -57,13 +57,13 @@ class ExactLoop:
 
     def at(self, s: Any) -> Any:
         """L(s) at fifty digits."""
-        rational = mp.polyval(self.numerator, s) / mp.polyval(self.denominator, s)
+        rational = value_at(self.numerator, s) / value_at(self.denominator, s)
         return rational * mp.exp(-s * self.dead_time)
 
     def characteristic(self, s: Any) -> Any:
         """denominator + numerator·e^(−s·dead_time): entire, its zeros are the closed loop's roots."""
-        delayed = mp.polyval(self.numerator, s) * mp.exp(-s * self.dead_time)
-        return mp.polyval(self.denominator, s) + delayed
+        delayed = value_at(self.numerator, s) * mp.exp(-s * self.dead_time)
+        return value_at(self.denominator, s) + delayed
 
 
 def exact_loop(plant: Any, controller: Any) -> ExactLoop:
@@ -243,6 +243,14 @@ def from_roots(roots: Any) -> Polynomial:
     return [c.real for c in product]
 
 
+def value_at(polynomial: Polynomial, s: Any) -> Any:
+    """The polynomial's value at `s`."""
+    total = mpf(0)
+    for coefficient in polynomial:
+        total = total * s + coefficient
+    return total
+
+
 def multiply(*polynomials: Polynomial) -> Polynomial:
     """The product of polynomials."""
     total: Polynomial = [mpf(1)]
@@ -274,7 +282,7 @@ def _roots(polynomial: tuple[Any, ...]) -> list[Any]:
     roots = [mpc(0)] * at_origin
     if len(polynomial) > 1:
         with mp.workdps(4 * DIGITS):
-            found = mp.polyroots(polynomial, maxsteps=500, extraprec=400)
+            found = mp.polyroots(polynomial[::-1], maxsteps=500, extraprec=400, asc=True)
         roots += [mpc(root) for root in found]
     return roots
 
