@@ -3,8 +3,8 @@
 The plant's input w(t) = u(t − θ) + load(t − θ) of one dead time is known from the one before, so that within
 it the loop is ẋ = A·x + B·w + E·SP with a known w. The linear part is stepped by the matrix exponential,
 exactly, and w between nodes is the cubic through four of them: no step is too long for a stiff filter, and
-the error is of the fourth order in the step. Nodes are aligned with the dead time: no kink lies between two of
-them. States are those of a cascade of complex first-order sections, hidden ones included.
+the error is of the fourth order in the step. Nodes are aligned with the dead time: no kink lies between two
+of them. States are those of a cascade of complex first-order sections, hidden ones included.
 """
 
 from __future__ import annotations
