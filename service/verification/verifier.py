@@ -127,7 +127,9 @@ def _check_entry(event: Mapping[str, Any], state: _State) -> dict[str, Any]:
     number = state.entries + 1
     if event["number"] != number:
         raise _Broken(f"entry {number} is missing; the next one is {event['number']}", number)
-    raw = bytes(event["canonical"])
+    raw = _bytes(event["canonical"])
+    if raw is None:
+        raise _Broken("column canonical does not hold bytes", number)
     leaf = leaf_hash(raw)
     if leaf.hex() != event["digest"]:
         raise _Broken("the bytes do not have the digest that stands beside them", number)
@@ -142,6 +144,11 @@ def _check_entry(event: Mapping[str, Any], state: _State) -> dict[str, Any]:
     state.tree.add(leaf)
     state.entries, state.head, state.time = number, leaf.hex(), str(entry["time"])
     return entry
+
+
+def _bytes(value: object) -> bytes | None:
+    """Return a column's bytes; None for another kind of value, which SQLite takes in any column."""
+    return bytes(value) if isinstance(value, (bytes, memoryview)) else None
 
 
 def _parsed(raw: bytes, number: int) -> dict[str, Any]:
@@ -190,7 +197,7 @@ def _check_head(connection: Connection, state: _State) -> None:
         "size": head["size"],
         "digest": head["digest"],
         "time": store.as_time(head["time"]),
-        "right_edge": bytes(head["right_edge"]),
+        "right_edge": _bytes(head["right_edge"]),
     }
     for name, value in expected.items():
         if found[name] != value:
@@ -229,8 +236,12 @@ class _Rows:
             yield self._next
             self._next = next(self._rows, None)
         # in order, so that what is still below was passed: it is tied to no entry
-        if self._next is not None and (self._next[store.TIE] is None or self._next[store.TIE] < number):
+        if self._next is not None and not self._comes_after(self._next[store.TIE], number):
             self._orphan(self._next)
+
+    @staticmethod
+    def _comes_after(tie: object, number: int) -> bool:
+        return isinstance(tie, int) and tie > number
 
     def _orphan(self, row: Mapping[str, Any]) -> None:
         name = self._table.row_name(row)
