@@ -1,0 +1,136 @@
+"""`history verify` on a store that the service made: it holds, and once touched the place is named."""
+
+from __future__ import annotations
+
+import json
+import sqlite3
+from collections.abc import Callable
+from pathlib import Path
+
+import pytest
+from click.testing import CliRunner, Result
+
+from service.command.main import main
+from service.documents import reading
+from service.documents.loops import LoopRegistration
+from service.issuing import checkpoints
+from service.records import loops, migrating
+from service.records.database import Database, system_clock
+from service.records.roles import CONSOLE
+from tests.api.plant import LOOP
+
+Verify = Callable[..., Result]
+
+
+TOUCHED: dict[str, tuple[str, str]] = {
+    "a column that people read": ("UPDATE history_events SET actor = 'somebody' WHERE number = 2", "entry 2"),
+    "the bytes": (
+        "UPDATE history_events SET canonical ="
+        " CAST(replace(CAST(canonical AS TEXT), 'TIC-301', 'TIC-309') AS BLOB) WHERE number = 3",
+        "entry 3",
+    ),
+    "a text in the bytes' place": (
+        "UPDATE history_events SET canonical = replace(canonical, 'TIC-301', 'TIC-309') WHERE number = 3",
+        "entry 3",
+    ),
+    "an entry taken out": ("DELETE FROM history_events WHERE number = 3", "entry 3"),
+    "a row": (
+        "UPDATE loop_revisions SET content ="
+        " CAST(replace(CAST(content AS TEXT), '150', '250') AS BLOB) WHERE event_number = 2",
+        "loop_revisions",
+    ),
+    "a row taken out": ("DELETE FROM loop_revisions WHERE event_number = 4", "loop_revisions"),
+    "a row cut loose": (
+        "UPDATE loop_revisions SET event_number = 'none' WHERE event_number = 4",
+        "loop_revisions",
+    ),
+    "the head": ("UPDATE history_head SET right_edge = 'none'", "history_head"),
+}
+"""What is touched → the statement, and the place that is named."""
+
+
+@pytest.fixture
+def file(tmp_path: Path) -> Path:
+    """A store with three registered loops."""
+    file = tmp_path / "store.db"
+    migrating.migrate(f"sqlite:///{file}", now=system_clock())
+    database = Database.open(f"sqlite:///{file}")
+    with database.writing() as session:
+        for number in range(3):
+            document = reading.read(LoopRegistration, LOOP | {"tag": f"TIC-30{number}"})
+            loops.register(session, CONSOLE, document, database.now())
+    database.close()
+    return file
+
+
+@pytest.fixture
+def verify(file: Path, monkeypatch: pytest.MonkeyPatch) -> Verify:
+    monkeypatch.setenv("GAIN_SIGNOFF_DATABASE_URL", f"sqlite:///{file}")
+    return lambda *arguments: CliRunner().invoke(main, ["history", "verify", *arguments])
+
+
+def behind_the_services_back(file: Path, statement: str) -> None:
+    """Change the file as somebody with the database's own tools does: without the triggers."""
+    connection = sqlite3.connect(file)
+    triggers = connection.execute("SELECT name FROM sqlite_master WHERE type = 'trigger'").fetchall()
+    for (name,) in triggers:
+        connection.execute(f"DROP TRIGGER {name}")
+    connection.execute(statement)
+    connection.commit()
+    connection.close()
+
+
+def checkpoint_of(file: Path, place: Path) -> Path:
+    database = Database.open(f"sqlite:///{file}")
+    with database.reading() as session:
+        made = checkpoints.checkpoint(session, None)
+    database.close()
+    place.write_text(json.dumps({"size": made.size, "digest": made.digest}))
+    return place
+
+
+def test_a_store_that_nobody_touched_holds_and_says_what_is_not_covered(verify: Verify) -> None:
+    result = verify()
+    assert (result.exit_code, result.stderr) == (0, "")
+    assert "The history holds: 4 entries" in result.stdout
+    for table in ("accounts", "sessions", "idempotency_keys"):
+        assert table in result.stdout.split("Not covered:")[1]
+
+
+@pytest.mark.parametrize("what", TOUCHED)
+def test_a_store_that_was_touched_does_not_hold_and_the_place_is_named(
+    file: Path, verify: Verify, what: str
+) -> None:
+    statement, place = TOUCHED[what]
+    behind_the_services_back(file, statement)
+    result = verify()
+    assert result.exit_code == 1
+    assert "does not hold" in result.stderr
+    assert place in result.stderr
+
+
+def test_an_end_that_was_cut_off_is_seen_with_a_checkpoint_held_outside(
+    file: Path, verify: Verify, tmp_path: Path
+) -> None:
+    held = checkpoint_of(file, tmp_path / "checkpoint.json")
+    assert verify("--checkpoint", str(held)).exit_code == 0
+    longer = tmp_path / "longer.json"
+    longer.write_text(json.dumps(json.loads(held.read_text()) | {"size": 9}))
+    result = verify("--checkpoint", str(longer))
+    assert (result.exit_code, "9 entries" in result.stderr) == (1, True)
+
+
+def test_another_history_than_the_checkpoints_does_not_hold(
+    file: Path, verify: Verify, tmp_path: Path
+) -> None:
+    held = checkpoint_of(file, tmp_path / "checkpoint.json")
+    other = json.loads(held.read_text()) | {"digest": "0" * 64}
+    held.write_text(json.dumps(other))
+    assert verify("--checkpoint", str(held)).exit_code == 1
+
+
+def test_a_file_that_is_no_checkpoint_is_said_in_one_sentence(verify: Verify, tmp_path: Path) -> None:
+    (tmp_path / "other.json").write_text("[]")
+    result = verify("--checkpoint", str(tmp_path / "other.json"))
+    assert result.exit_code == 2
+    assert result.stderr.count("\n") == 1
