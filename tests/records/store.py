@@ -51,7 +51,8 @@ GAINS: dict[str, Any] = {
 
 def gains(proportional: float = 1.5, **changes: object) -> dict[str, Any]:
     """A complete controller; the plant below is stable with a gain below some 8."""
-    return GAINS | {"proportional": {"value": proportional, "unit": "gain"}} | changes
+    term = GAINS["proportional"] | {"value": proportional, "displayed": f"{proportional:.2f}"}
+    return GAINS | {"proportional": term} | changes
 
 
 def registration(**changes: object) -> LoopRegistration:
