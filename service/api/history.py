@@ -13,8 +13,8 @@ from service.api.queries import Instant, NoQuery, PageQuery, Text
 from service.context import services
 from service.issuing import checkpoints
 from service.issuing.checkpoints import Checkpoint
-from service.records import queries
-from service.records.queries import HistoryFilter
+from service.records import history_queries as queries
+from service.records.history_queries import HistoryFilter
 
 blueprint = Blueprint("history", __name__, url_prefix="/v1/history")
 

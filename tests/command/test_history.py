@@ -134,3 +134,43 @@ def test_a_file_that_is_no_checkpoint_is_said_in_one_sentence(verify: Verify, tm
     result = verify("--checkpoint", str(tmp_path / "other.json"))
     assert result.exit_code == 2
     assert result.stderr.count("\n") == 1
+
+
+@pytest.fixture
+def exported(verify: Verify, tmp_path: Path) -> Path:
+    place = tmp_path / "export.jsonl"
+    assert CliRunner().invoke(main, ["history", "export", str(place)]).exit_code == 0
+    return place
+
+
+def test_an_export_is_verified_without_the_store(
+    file: Path, verify: Verify, exported: Path, tmp_path: Path
+) -> None:
+    held = checkpoint_of(file, tmp_path / "checkpoint.json")
+    whole = verify()
+    file.unlink()
+    result = verify("--export", str(exported), "--checkpoint", str(held))
+    assert result.exit_code == 0, result.stderr
+    for line in ("Last digest", "Merkle root"):
+        assert [text for text in result.stdout.splitlines() if line in text] == [
+            text for text in whole.stdout.splitlines() if line in text
+        ]
+
+
+@pytest.mark.parametrize("what", ["changed", "taken out", "swapped", "cut off", "no entry"])
+def test_an_export_that_was_touched_does_not_hold(
+    file: Path, verify: Verify, exported: Path, tmp_path: Path, what: str
+) -> None:
+    held = checkpoint_of(file, tmp_path / "checkpoint.json")
+    one, two, three, four = exported.read_text("utf-8").splitlines()
+    lines, place = {
+        "changed": ([one, two, three.replace("TIC-301", "TIC-309"), four], "entry 3"),
+        "taken out": ([one, two, four], "entry 3"),
+        "swapped": ([one, three, two, four], "entry 2"),
+        "cut off": ([one, two, three], "covers 4 entries"),
+        "no entry": ([one, "[]", three, four], "entry 2"),
+    }[what]
+    exported.write_text("\n".join(lines) + "\n", "utf-8")
+    result = verify("--export", str(exported), "--checkpoint", str(held))
+    assert result.exit_code == 1
+    assert place in result.stderr
