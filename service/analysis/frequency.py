@@ -111,7 +111,10 @@ class AxisResponse:
         return 0.5 * (low + high)
 
     def _with_turns(
-        self, turns: Reals, values: npt.NDArray[np.generic], part: Callable[[Complexes], npt.NDArray[np.generic]]
+        self,
+        turns: Reals,
+        values: npt.NDArray[np.generic],
+        part: Callable[[Complexes], npt.NDArray[np.generic]],
     ) -> tuple[Reals, npt.NDArray[np.generic]]:
         """The grid and the values on it with further frequencies put in."""
         if not turns.size:
@@ -183,7 +186,9 @@ def frequency_grid(loop: OpenLoop) -> Reals:
         _log_spaced(0.1 * low, 10 * high, FINE_STEP),
         _log_spaced(10 * high, 1e4 * high, COARSE_STEP),
     ]
-    parts += [_near_root(root) for root in roots.tolist() if root.imag > 0 and abs(root.real) < 0.5 * root.imag]
+    parts += [
+        _near_root(root) for root in roots.tolist() if root.imag > 0 and abs(root.real) < 0.5 * root.imag
+    ]
     return np.unique(np.concatenate(parts))
 
 

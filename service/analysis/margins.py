@@ -19,9 +19,10 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 
 from service.analysis.brackets import falling_zero
-from service.analysis.frequency import LISTED_FACTORS, MAX_LISTED, AxisResponse
+from service.analysis.frequency import LISTED_FACTORS, MAX_LISTED, AxisResponse, Indices
 from service.analysis.loop import Complexes, OpenLoop, Reals
 from service.analysis.results import Crossovers, GainCrossover, Margins, PhaseCrossover, Quantity
 
@@ -30,6 +31,11 @@ ROTATION_STEP_RAD = 0.2
 
 MAX_PEAK_POINTS = 200_000
 """Work bound: more points than this and a peak is not computed."""
+
+POINTS_AT_ONCE = 1000
+
+PEAK_TIE = 1e-10
+"""A step whose bound exceeds the largest value met by no more than this, relatively, is not searched."""
 
 PEAK_PLACE = 1e-9
 """How well a peak's frequency is met, relatively; its value, being flat there, to the square of this."""
@@ -152,7 +158,8 @@ class Sensitivity:
         return 0.0
 
     def bound(self, magnitude: Reals, omega: Reals) -> Reals:
-        """An upper bound of abs A/(1+L) where abs L has this value, not 1; shape of `magnitude`."""
+        """An upper bound of abs A/(1+L) on each step of a grid `omega`, shape (k,), from the abs L in it that is
+        nearest to 1 without reaching it; shape (k − 1,)."""
         return 1.0 / np.abs(1.0 - magnitude)
 
     def ends(self) -> list[float]:
@@ -241,21 +248,27 @@ class PeakSearch:
         best = _ends_first(quantity)
         _, values = _growth(quantity, self._axis.omega, self._response, self._axis.log_slope)
         met = max(best.value, float(values[np.isfinite(values)].max(initial=0.0)))
-        for candidate in self._stationary(quantity, self._bounds(quantity) > met):
-            # an end that only ties is a supremum that is approached; a peak must stand above it
-            if candidate.value > best.value * (1 + 1e-14):
-                best = candidate
+        bounds = self._bounds(quantity)
+        # the steps with the highest bounds first: what is met there mostly spares the rest
+        waiting = np.argsort(-bounds)
+        while (waiting := waiting[bounds[waiting] > met * (1 + PEAK_TIE)]).size:
+            share = max(1, int(np.searchsorted(np.cumsum(self._parts[waiting]), POINTS_AT_ONCE)))
+            for candidate in self._stationary(quantity, np.sort(waiting[:share])):
+                met = max(met, candidate.value)
+                # an end that only ties is a supremum that is approached; a peak must stand above it
+                if candidate.value > best.value * (1 + 1e-14):
+                    best = candidate
+            waiting = waiting[share:]
         return best
 
     def _bounds(self, quantity: Sensitivity) -> Reals:
         """What each step of the grid cannot exceed, inf where abs L passes 1 in it."""
-        left, right = self._axis.omega[:-1], self._axis.omega[1:]
         nearest = np.where(self._high < 1.0, self._high, self._low)
-        bound = np.maximum(quantity.bound(nearest, left), quantity.bound(nearest, right))
+        bound = quantity.bound(nearest, self._axis.omega)
         return np.where((self._low < 1.0) == (self._high < 1.0), bound, np.inf)
 
-    def _stationary(self, quantity: Sensitivity, wanted: np.ndarray) -> list[Peak]:  # type: ignore[type-arg]
-        omega, joined = self._points(wanted)
+    def _stationary(self, quantity: Sensitivity, steps: Indices) -> list[Peak]:
+        omega, joined = self._points(steps)
         loop = self._axis.loop
         logs, slope = loop.on_axis(omega)
         growth, _ = _growth(quantity, omega, np.exp(logs), slope)
@@ -272,10 +285,9 @@ class PeakSearch:
         _, values = _growth(quantity, at, np.exp(logs), slope)
         return [Peak(value, where) for value, where in zip(values.tolist(), at.tolist(), strict=True)]
 
-    def _points(self, wanted: np.ndarray) -> tuple[Reals, np.ndarray]:  # type: ignore[type-arg]
-        """Points that divide the wanted steps, (k,), and whether a point is joined to the next, (k − 1,)."""
+    def _points(self, index: Indices) -> tuple[Reals, npt.NDArray[np.bool_]]:
+        """Points that divide these steps of the grid, (k,), and whether a point is joined to the next, (k − 1,)."""
         omega = self._axis.omega
-        index = np.flatnonzero(wanted)
         parts = self._parts[index]
         if parts.sum() > MAX_PEAK_POINTS:
             raise WorkBoundError("too many points to look for a peak")

@@ -33,12 +33,15 @@ class ControlSensitivity(Sensitivity):
 
     def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals | float:
         """d ln abs C·F/dω."""
-        s = 1j * omega
-        return np.asarray((1j * (reciprocal_sum(s, self._zeros) - reciprocal_sum(s, self._poles))).real)
+        return self._log_slope(omega)
 
     def bound(self, magnitude: Reals, omega: Reals) -> Reals:
-        """abs C·F/abs(1 − abs L), with an allowance for what abs C·F does inside a step of the grid."""
-        return NUMERATOR_ALLOWANCE * np.exp(self._log_magnitude(omega)) / np.abs(1.0 - magnitude)
+        """Largest abs C·F of the step/abs(1 − abs L), with an allowance where abs C·F has a maximum inside."""
+        numerator = np.exp(self._log_magnitude(omega))
+        largest = np.maximum(numerator[:-1], numerator[1:])
+        slope = np.asarray(self._log_slope(omega))
+        turns = (slope[:-1] > 0) & (slope[1:] < 0)
+        return np.where(turns, NUMERATOR_ALLOWANCE, 1.0) * largest / np.abs(1.0 - magnitude)
 
     def ends(self) -> list[float]:
         """abs of C·F/(1+L) at ω = 0 and the values it tends to as ω grows; inf where it grows without bound."""
@@ -48,6 +51,10 @@ class ControlSensitivity(Sensitivity):
         """lim abs C·F; inf where it grows."""
         excess = len(self._poles) - len(self._zeros)
         return 0.0 if excess > 0 else (math.exp(self._log_gain) if excess == 0 else math.inf)
+
+    def _log_slope(self, omega: Reals) -> Reals:
+        s = 1j * omega
+        return np.asarray((1j * (reciprocal_sum(s, self._zeros) - reciprocal_sum(s, self._poles))).real)
 
     def _log_magnitude(self, omega: Reals) -> Reals:
         logs = log_factors(omega, self._zeros) - log_factors(omega, self._poles)

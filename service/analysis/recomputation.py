@@ -18,15 +18,17 @@ from service.analysis.realisation import StateSpace, realise
 from service.analysis.responses import Responses, respond
 from service.analysis.results import (
     Analysis,
+    Crossovers,
     Curves,
     LoadStep,
     Margins,
     Recomputation,
+    Route,
     SetpointStep,
     Stability,
     Verdict,
 )
-from service.analysis.stability import decide
+from service.analysis.stability import NYQUIST, ROOTS, decide
 from service.analysis.step_metrics import step_metrics
 
 NOTE_MARGINS_TOO_MUCH_WORK = "margins_too_much_work"
@@ -73,8 +75,11 @@ def _recompute(
 ) -> Recomputation:
     parts = form_loop(plant_model, controller, ranges)
     _refuse_ill_posed(parts.loop)
-    space = realise(parts)
-    continuous, drawn = _continuous(parts, space, settling_band_percent, with_curves)
+    try:
+        space = realise(parts)
+        continuous, drawn = _continuous(parts, space, settling_band_percent, with_curves)
+    except (OverflowError, ZeroDivisionError, np.linalg.LinAlgError):
+        space, continuous, drawn = None, _beyond_float64(), None
     scanned = isinstance(controller.scan, Scan)
     uncertain = plant_model.uncertainty is not None
     # a part that was asked for and is not computed must never read as stable
@@ -148,6 +153,23 @@ def _steps(
     setpoint, load = step_metrics(responses, band_percent, unit, impulse=impulse)
     # an impulse of the output that the plant passes at once leaves PV without a response in time
     return (None if impulse and space.d_y != 0 else setpoint), load
+
+
+def _beyond_float64() -> Analysis:
+    reason = "the loop's numbers leave the range of float64"
+    routes = tuple(
+        Route(method=method, verdict="undecided", unstable_roots=None, reason=reason)
+        for method in (NYQUIST, ROOTS)
+    )
+    return Analysis(
+        stability=Stability(verdict="undecided", unstable_roots=None, routes=routes, reason=reason),
+        crossovers=Crossovers(gain_crossovers=(), phase_crossovers=()),
+        margins=None,
+        setpoint_step=None,
+        load_step=None,
+        noise=None,
+        notes=(NOTE_NUMBERS,),
+    )
 
 
 def _refuse_ill_posed(loop: OpenLoop) -> None:

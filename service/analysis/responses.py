@@ -47,6 +47,9 @@ ALONE = 30.0
 WORTHWHILE_PIECES = 10
 """A closed form behind the pieces is worth its while when it saves more pieces than this."""
 
+LEFT_OUT_DIED_AWAY = 32.0
+"""Roots left of the line are left out of the residue series after so many of its time constants."""
+
 HAND_OVER = 1e-9
 """How well the residue series must meet the march, relative to the largest value, to take over."""
 
@@ -73,86 +76,107 @@ class Responses:
 
 def respond(parts: ClosedLoopParts, space: StateSpace, roots: CharacteristicRoots) -> Responses:
     """Both step responses of a stable loop."""
-    final = _final_values(space)
-    modes = np.concatenate([roots.roots, parts.hidden_roots])
-    series = _ResidueSeries.of(parts, roots)
-    plan = _plan(modes)
-    if parts.dead_time == 0:
-        pieces = _without_dead_time(space, modes, plan)
-    else:
-        pieces = _with_dead_time(_March(parts, space), series, roots, modes, plan, final)
-    start, length, pv, output, complete = pieces
-    responses = Responses(start, length, pv, output, *final, complete)
-    if plan.oscillation is None or not complete:
-        return responses
-    if series is not None and (ended := _with_tails(responses, series, plan.oscillation)) is not None:
-        return ended
-    return _without_tail(parts, space, roots, modes, series, final)
+    known = _Known(
+        parts=parts,
+        space=space,
+        modes=np.concatenate([roots.roots, parts.hidden_roots]),
+        line=roots.complete_right_of,
+        series=_ResidueSeries.of(parts, roots),
+        final=_final_values(space),
+    )
+    plan = _plan(known)
+    responses = _in_pieces(known, plan)
+    if plan.oscillation is not None and responses.complete:
+        ended = _with_tails(responses, known, plan.oscillation)
+        if ended is not None:
+            return ended
+        responses = _in_pieces(known, _Plan(plan.until_rest, None, plan.until_rest))
+    return replace(responses, complete=responses.complete and _at_rest(responses))
 
 
-Pieces = tuple[Reals, Reals, Reals, Reals, bool]
+@dataclass(frozen=True, eq=False)
+class _Known:
+    """What responses are computed from: `modes`, all roots right of `line`, and the residues at them."""
+
+    parts: ClosedLoopParts
+    space: StateSpace
+    modes: Complexes
+    line: float
+    series: _ResidueSeries | None
+    final: tuple[Reals, Reals]
 
 
 @dataclass(frozen=True, slots=True)
 class _Plan:
-    """How long pieces are needed: until all has died away, or until `oscillation` (a root) alone is left."""
+    """How long pieces are needed: until `end`, where all has died away or `oscillation` (a root) alone is left."""
 
     end: float
     oscillation: complex | None
+    until_rest: float
 
 
-def _plan(modes: Complexes) -> _Plan:
-    upper = modes[modes.imag >= 0]
+def _plan(known: _Known) -> _Plan:
+    upper = known.modes[known.modes.imag >= 0]
     upper = upper[np.argsort(-upper.real)]
+    if known.line >= 0 or (not upper.size and known.parts.dead_time > 0):
+        # the roots are not known: only the march itself can show when all has come to rest
+        return _Plan(math.inf, None, math.inf)
     if not upper.size:
-        return _Plan(0.0, None)
+        return _Plan(0.0, None, 0.0)
     slowest = complex(upper[0])
     end = DIED_AWAY / -slowest.real
-    if slowest.imag <= 0 or (len(upper) > 1 and upper[1].real >= slowest.real):
-        return _Plan(end, None)
-    alone = ALONE / (slowest.real - float(upper[1].real)) if len(upper) > 1 else 0.0
+    next_real = max(known.line, float(upper[1].real) if len(upper) > 1 else -math.inf)
+    if slowest.imag <= 0 or next_real >= slowest.real:
+        return _Plan(end, None, end)
     # a period more, so that the largest turns lie in the pieces
-    alone += 2.0 * math.pi / slowest.imag
+    alone = ALONE / (slowest.real - next_real) + 2.0 * math.pi / slowest.imag
     worthwhile = (end - alone) * abs(slowest) / TURN > WORTHWHILE_PIECES
-    return _Plan(alone, slowest) if worthwhile else _Plan(end, None)
+    return _Plan(alone, slowest, end) if worthwhile else _Plan(end, None, end)
 
 
-def _with_tails(responses: Responses, series: _ResidueSeries, root: complex) -> Responses | None:
+def _in_pieces(known: _Known, plan: _Plan) -> Responses:
+    start, length, pv, output, complete = (
+        _without_dead_time(known, plan) if known.parts.dead_time == 0 else _with_dead_time(known, plan)
+    )
+    return Responses(start, length, pv, output, *known.final, complete)
+
+
+def _at_rest(responses: Responses) -> bool:
+    """Whether the last value is the final one: the pieces' own word that they are complete."""
+    for values, final in (
+        (responses.pv, responses.final_pv),
+        (responses.output, responses.final_output),
+    ):
+        scale = np.maximum(np.abs(values).max(axis=(1, 2)), np.abs(final))
+        if np.any(np.abs(values[:, -1, -1] - final) > HAND_OVER * scale):
+            return False
+    return True
+
+
+def _with_tails(responses: Responses, known: _Known, root: complex) -> Responses | None:
     """The responses with the oscillation behind their pieces; None where it does not meet the last one."""
+    series = known.series
+    if series is None:
+        return None
     begin = float(responses.start[-1] + responses.length[-1])
     index = int(np.argmin(np.abs(series.roots - root)))
     turned = cmath.exp(root * begin)
-    pv = tuple(Tail(begin, root, complex(series.pv[which, index]) * turned) for which in (SETPOINT, LOAD))
-    output = tuple(
-        Tail(begin, root, complex(series.output[which, index]) * turned) for which in (SETPOINT, LOAD)
-    )
-    for tails, values, final in (
-        (pv, responses.pv, responses.final_pv),
-        (output, responses.output, responses.final_output),
+    tails = []
+    for amplitudes, values, final in (
+        (series.pv, responses.pv, responses.final_pv),
+        (series.output, responses.output, responses.final_output),
     ):
         for which in (SETPOINT, LOAD):
-            gap = abs(float(values[which, -1, -1] - final[which]) - tails[which].value(0.0))
+            tail = Tail(begin, root, complex(amplitudes[which, index]) * turned)
+            gap = abs(float(values[which, -1, -1] - final[which]) - tail.value(0.0))
             scale = float(np.abs(values[which]).max())
-            if gap > HAND_OVER * tails[which].envelope + 1e-12 * scale:
+            if gap > HAND_OVER * tail.envelope + 1e-12 * scale:
                 return None
-    return replace(responses, pv_tails=(pv[0], pv[1]), output_tails=(output[0], output[1]))
+            tails.append(tail)
+    return replace(responses, pv_tails=(tails[0], tails[1]), output_tails=(tails[2], tails[3]))
 
 
-def _without_tail(
-    parts: ClosedLoopParts,
-    space: StateSpace,
-    roots: CharacteristicRoots,
-    modes: Complexes,
-    series: _ResidueSeries | None,
-    final: tuple[Reals, Reals],
-) -> Responses:
-    plan = _Plan(DIED_AWAY / _slowest_decay(modes), None)
-    if parts.dead_time == 0:
-        pieces = _without_dead_time(space, modes, plan)
-    else:
-        pieces = _with_dead_time(_March(parts, space), series, roots, modes, plan, final)
-    start, length, pv, output, complete = pieces
-    return Responses(start, length, pv, output, *final, complete)
+Pieces = tuple[Reals, Reals, Reals, Reals, bool]
 
 
 def _final_values(space: StateSpace) -> tuple[Reals, Reals]:
@@ -165,7 +189,8 @@ def _final_values(space: StateSpace) -> tuple[Reals, Reals]:
     return space.c_y @ states + space.d_y * w, u
 
 
-def _without_dead_time(space: StateSpace, modes: Complexes, plan: _Plan) -> Pieces:
+def _without_dead_time(known: _Known, plan: _Plan) -> Pieces:
+    space, modes = known.space, known.modes
     n = space.order
     matrix, rows = _augmented(space)
     ladder = _Doubling(matrix, rows, TURN / _fastest(modes, 0.0))
@@ -242,25 +267,18 @@ def _exponential_at_nodes(matrix: Reals, length: float) -> Reals:
     return result
 
 
-def _with_dead_time(
-    march: _March,
-    series: _ResidueSeries | None,
-    roots: CharacteristicRoots,
-    modes: Complexes,
-    plan: _Plan,
-    final: tuple[Reals, Reals],
-) -> Pieces:
-    line, dead_time = -roots.complete_right_of, march.dead_time
+def _with_dead_time(known: _Known, plan: _Plan) -> Pieces:
+    march, dead_time = _March(known.parts, known.space), known.parts.dead_time
     end = max(plan.end, 2 * dead_time)
-    wanted = 32.0 / (line * dead_time) if 0 < line < math.inf else math.inf
+    wanted = LEFT_OUT_DIED_AWAY / (-known.line * dead_time) if -math.inf < known.line < 0 else math.inf
     most = max(12, MAX_PIECES // march.pieces_each)
     march.run(math.ceil(min(max(wanted, 12.0), most, max(end / dead_time, 2.0))))
-    met = series is not None and 0 < line < math.inf and march.time < end and march.meets(series, *final)
+    met = math.isfinite(wanted) and march.time < end and march.meets(known)
     while not met and march.time < end and march.piece_count < MAX_PIECES:
         march.run(16)
-    if not met or series is None or march.time >= end:
+    if not met or march.time >= end:
         return march.pieces(march.time >= end)
-    return _continued(march, series, modes, end, *final)
+    return _continued(march, known, end)
 
 
 class _March:
@@ -314,17 +332,17 @@ class _March:
         self._outputs += outputs
         self.intervals += 1
 
-    def meets(self, series: _ResidueSeries, final_pv: Reals, final_output: Reals) -> bool:
-        """Whether the series gives the last interval marched."""
+    def meets(self, known: _Known) -> bool:
+        """Whether the residue series gives the last interval marched."""
+        if known.series is None:
+            return False
         begin = self.time - self.dead_time
         starts = begin + np.concatenate([[0.0], np.cumsum(self._lengths)[:-1]])
-        pv, output = series.values(starts, np.array(self._lengths), final_pv, final_output)
-        count = self.pieces_each
-        marched_pv, marched_output = _stacked(self._pvs[-count:]), _stacked(self._outputs[-count:])
-        every_pv, every_output = _stacked(self._pvs), _stacked(self._outputs)
-        for mine, theirs, whole in ((marched_pv, pv, every_pv), (marched_output, output, every_output)):
-            scale = np.abs(whole).max(axis=(1, 2))
-            if np.any(np.abs(mine - theirs).max(axis=(1, 2)) > HAND_OVER * scale):
+        continued = known.series.values(starts, np.array(self._lengths), known.final)
+        for own, theirs, final in zip((self._pvs, self._outputs), continued, known.final, strict=True):
+            scale = np.maximum(np.abs(_stacked(own)).max(axis=(1, 2)), np.abs(final))
+            gap = np.abs(_stacked(own[-self.pieces_each :]) - theirs).max(axis=(1, 2))
+            if np.any(gap > HAND_OVER * scale):
                 return False
         return True
 
@@ -368,10 +386,6 @@ def _fastest(modes: Complexes, time: float) -> float:
     """The largest magnitude among the modes that have not died away at `time`."""
     alive = modes[-modes.real * time < DIED_AWAY]
     return max(float(np.abs(alive).max()) if alive.size else 0.0, 1e-12)
-
-
-def _slowest_decay(modes: Complexes) -> float:
-    return float((-modes.real).min())
 
 
 def _collocation_map(space: StateSpace, length: float) -> Reals:
@@ -431,15 +445,13 @@ class _ResidueSeries:
             np.concatenate([output, hidden_output], axis=1),
         )
 
-    def values(
-        self, start: Reals, length: Reals, final_pv: Reals, final_output: Reals
-    ) -> tuple[Reals, Reals]:
+    def values(self, start: Reals, length: Reals, final: tuple[Reals, Reals]) -> tuple[Reals, Reals]:
         """PV and output at the nodes of pieces, (2, p, NODES) each."""
         times = start[:, None] + length[:, None] * chebyshev.points(NODES)
         with np.errstate(under="ignore"):
             modes = np.exp(times[..., None] * self.roots)
-        pv = np.moveaxis((modes @ self.pv.T).real, 2, 0) + final_pv[:, None, None]
-        output = np.moveaxis((modes @ self.output.T).real, 2, 0) + final_output[:, None, None]
+        pv = np.moveaxis((modes @ self.pv.T).real, 2, 0) + final[0][:, None, None]
+        output = np.moveaxis((modes @ self.output.T).real, 2, 0) + final[1][:, None, None]
         return np.ascontiguousarray(pv), np.ascontiguousarray(output)
 
 
@@ -471,22 +483,17 @@ def _cancelled_modes(parts: ClosedLoopParts) -> tuple[Complexes, Complexes, Comp
     return hidden, pv, output
 
 
-def _continued(
-    march: _March,
-    series: _ResidueSeries,
-    modes: Complexes,
-    end: float,
-    final_pv: Reals,
-    final_output: Reals,
-) -> Pieces:
+def _continued(march: _March, known: _Known, end: float) -> Pieces:
     """The march and behind it the series, in pieces that lengthen as the faster modes die."""
     start, length, pv, output, _ = march.pieces(False)
     time, starts, lengths = march.time, [], []
     while time < end and len(starts) + len(start) < MAX_PIECES:
         starts.append(time)
-        lengths.append(min(TURN / _fastest(modes, time), end - time + 1e-300))
+        lengths.append(TURN / _fastest(known.modes, time))
         time += lengths[-1]
-    more_pv, more_output = series.values(np.array(starts), np.array(lengths), final_pv, final_output)
+    if known.series is None:
+        raise AssertionError("the series has met the march")
+    more_pv, more_output = known.series.values(np.array(starts), np.array(lengths), known.final)
     return (
         np.concatenate([start, starts]),
         np.concatenate([length, lengths]),

@@ -26,9 +26,19 @@ from service.analysis.realisation import StateSpace
 MAX_NODES = 320
 """Work bound: more nodes than this and the roots are not computed."""
 
+FEWEST_NODES = 14
+
 FEW_NODES = 40
+"""So many nodes cost no more than the rest of a recomputation."""
+
 LEVELS = (3.0, 1.5, 0.7, 0.2, 0.02)
-"""How far below 1, in nepers, abs L is still resolved; the first that needs few nodes is taken."""
+"""How far below 1, in nepers, abs L is still resolved."""
+
+CLUSTER = 1e-4
+"""Roots nearer to each other than this, relatively, are taken for one multiple root where errors are told."""
+
+FAR_ENOUGH = -0.3
+"""Where every root right of this line, in units of 1/θ, is known, responses can be continued by residues."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -49,16 +59,24 @@ def characteristic_roots(space: StateSpace | None, axis: AxisResponse) -> Charac
     loop = axis.loop
     if loop.dead_time > 0 and loop.high_frequency_magnitude >= 1.0:
         return _infinite_chain(loop)
-    nodes = _node_count(axis)
-    if nodes > MAX_NODES:
+    best: CharacteristicRoots | None = None
+    for nodes in _node_counts(axis):
+        found = _with_nodes(space, loop, nodes)
+        if best is None or found.complete_right_of < best.complete_right_of:
+            best = found
+        if loop.dead_time == 0 or best.complete_right_of * loop.dead_time <= FAR_ENOUGH:
+            break
+    if best is None:
         reason = (
             "the dead time is too long against the loop's fastest gain crossover for the roots to be computed"
         )
         return CharacteristicRoots(np.empty(0, complex), math.inf, Count(None, reason=reason))
+    return best
+
+
+def _with_nodes(space: StateSpace | None, loop: OpenLoop, nodes: int) -> CharacteristicRoots:
     starts = _starts(space, loop, nodes)
-    upper = starts[starts.imag >= 0]
-    roots, moved = _polish(loop, upper)
-    roots = _distinct(upper, roots, moved)
+    roots = _polished(loop, starts[starts.imag >= 0])
     roots = roots[np.lexsort((np.abs(roots.imag), -roots.real))]
     if loop.dead_time == 0:
         return CharacteristicRoots(roots, -math.inf, _count(loop, roots))
@@ -71,12 +89,19 @@ def characteristic_roots(space: StateSpace | None, axis: AxisResponse) -> Charac
 
 
 def root_error(loop: OpenLoop, roots: Complexes) -> Reals:
-    """How far rounding may move each root, shape of `roots`."""
+    """How far rounding may move each root, shape of `roots`.
+
+    A root of multiplicity m moves by the m-th root of what a simple one moves by, relatively.
+    """
     value = loop.at(roots)
     derivative = (1 + value) * reciprocal_sum(roots, loop.poles) + value * loop.log_derivative(roots)
-    with np.errstate(all="ignore"):
-        error = rounding(loop, np.abs(roots)) * (1 + np.abs(value)) / np.abs(derivative)
-    return np.where(np.isfinite(error), error, 1e-13 * np.abs(roots))
+    relative = rounding(loop, np.abs(roots))
+    error = relative * (1 + np.abs(value)) / np.abs(derivative)
+    every = np.concatenate([roots, np.conj(roots[roots.imag > 0])])
+    near = np.abs(every[None, :] - roots[:, None]) <= CLUSTER * np.abs(roots[:, None])
+    multiplicity = near.sum(axis=1)
+    of_cluster = 4.0 * relative ** (1.0 / multiplicity) * np.abs(roots)
+    return np.where((multiplicity > 1) | ~np.isfinite(error), of_cluster, error)
 
 
 def _infinite_chain(loop: OpenLoop) -> CharacteristicRoots:
@@ -93,19 +118,24 @@ def _infinite_chain(loop: OpenLoop) -> CharacteristicRoots:
     return CharacteristicRoots(np.empty(0, complex), math.inf, count)
 
 
-def _node_count(axis: AxisResponse) -> int:
+def _node_counts(axis: AxisResponse) -> list[int]:
+    """Numbers of nodes to try, few first; each resolves all roots for which abs L is above some level.
+
+    Empty where even the roots right of the axis would need more nodes than the bound allows.
+    """
     if axis.loop.dead_time == 0 or axis.loop.sign == 0:
-        return 16
-    nodes = 0
+        return [FEWEST_NODES]
+    counts = []
     for level in LEVELS:
         above = axis.omega[axis.log_response.real >= -level]
-        highest = float(above.max()) if above.size else 0.0
-        if axis.loop.high_frequency_magnitude > 0 and axis.log_response.real[-1] >= -level:
-            continue
-        nodes = 14 + math.ceil(0.9 * highest * axis.loop.dead_time)
-        if nodes <= FEW_NODES:
-            break
-    return nodes or MAX_NODES
+        highest = float(above[-1]) if above.size else 0.0
+        count = FEWEST_NODES + math.ceil(0.9 * highest * axis.loop.dead_time)
+        # a loop that does not roll off is above a low level for ever
+        if not (above.size and above[-1] == axis.omega[-1]) and count <= MAX_NODES:
+            counts.append(count)
+    needed = [count for count in sorted(set(counts)) if count > FEW_NODES]
+    cheap = [count for count in counts if count <= FEW_NODES]
+    return ([max(cheap)] if cheap else []) + needed
 
 
 def _starts(space: StateSpace | None, loop: OpenLoop, nodes: int) -> Complexes:
@@ -149,20 +179,30 @@ def _characteristic_polynomial(loop: OpenLoop) -> Reals:
     return np.polyadd(np.atleast_1d(np.poly(loop.poles)).real, numerator)
 
 
-def _polish(loop: OpenLoop, starts: Complexes) -> tuple[Complexes, Reals]:
+def _polished(loop: OpenLoop, starts: Complexes) -> Complexes:
     """Newton on ln(−L) = 0, which is nearly linear along the chain of roots that dead time makes.
 
-    The roots, nan where Newton did not settle, and how far each moved from its start.
+    `starts` on and above the real axis; a start off the axis stands for a pair. Without dead time every start is a
+    root, so one that Newton does not settle is kept as it is: at a multiple root it is right to half the digits.
     """
-    at = starts.copy()
-    step = np.zeros_like(at)
+    at, step = starts.copy(), np.zeros_like(starts)
+    real = starts.imag == 0
     for _ in range(12):
         step = _newton_step(loop, at)
-        at = at + step
+        at = at + np.where(real, step.real, step)
         if np.all(np.abs(step) <= 1e-15 * np.abs(at)):
             break
-    settled = np.abs(step) <= 1e-7 * np.abs(at)
-    return np.where(settled, at, np.nan), np.abs(at - starts)
+    settled = np.isfinite(at) & (np.abs(step) <= 1e-7 * np.abs(at))
+    if loop.dead_time == 0:
+        settled &= np.abs(at - starts) <= 1e-3 * np.abs(starts)
+        at, settled = np.where(settled, at, starts), np.ones_like(settled)
+    at = np.where(at.imag < 0, np.conj(at), at)
+    kept = _first_found(loop, starts, at, settled)
+    found, pair = at[kept], ~real[kept]
+    # a pair that has come to lie on the real axis is two real roots
+    on_axis = np.abs(found.imag) <= 1e-12 * np.abs(found)
+    found = np.where(on_axis, found.real, found)
+    return np.concatenate([found, found[on_axis & pair]])
 
 
 def _newton_step(loop: OpenLoop, at: Complexes) -> Complexes:
@@ -178,19 +218,21 @@ def _newton_step(loop: OpenLoop, at: Complexes) -> Complexes:
         return np.where(size > largest, step * (largest / np.where(size > 0, size, 1.0)), step)
 
 
-def _distinct(starts: Complexes, roots: Complexes, moved: Reals) -> Complexes:
-    """The roots without those that a second start found again; true double roots have starts that lie together."""
+def _first_found(loop: OpenLoop, starts: Complexes, roots: Complexes, settled: Reals) -> list[int]:
+    """Which roots stay when one that a second start found again is left out.
+
+    True multiple roots have starts that lie together.
+    """
     kept: list[int] = []
+    moved = np.abs(roots - starts)
     for index in np.argsort(moved, kind="stable"):
         root = roots[index]
-        if not np.isfinite(root) or root.imag < -1e-9 * abs(root):
+        if not settled[index]:
             continue
-        again = [k for k in kept if abs(roots[k] - root) <= 1e-7 * (abs(root) + 1e-300)]
-        if all(abs(starts[k] - starts[index]) <= 1e-3 * abs(root) for k in again):
+        again = [k for k in kept if abs(roots[k] - root) <= 1e-7 * abs(root)]
+        if loop.dead_time == 0 or all(abs(starts[k] - starts[index]) <= 1e-3 * abs(root) for k in again):
             kept.append(int(index))
-    found = roots[kept]
-    on_real_axis = np.abs(found.imag) <= 1e-12 * np.abs(found)
-    return np.where(on_real_axis, found.real, found)
+    return kept
 
 
 def _count(loop: OpenLoop, roots: Complexes) -> Count:

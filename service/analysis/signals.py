@@ -180,7 +180,9 @@ def integrals(of: list[Signal]) -> list[Integrals]:
     fine = rows @ _to_twice_as_fine().T
     columns = (
         _variation(summed, row, place).reshape(count, pieces).sum(axis=1),
-        ((fine * fine) @ chebyshev.integration(2 * NODES)[-1] * lengths[:, 0]).reshape(count, pieces).sum(axis=1),
+        ((fine * fine) @ chebyshev.integration(2 * NODES)[-1] * lengths[:, 0])
+        .reshape(count, pieces)
+        .sum(axis=1),
         _variation(weighted, row, place).reshape(count, pieces).sum(axis=1),
         summed[:, -1].reshape(count, pieces).sum(axis=1),
     )
@@ -205,9 +207,7 @@ def _places(passages: list[Passage]) -> list[float]:
         matrix = chebyshev.evaluation(NODES, at)
         return (matrix * rows).sum(axis=1), (matrix * slopes).sum(axis=1)
 
-    places: list[float] = newton_zero(
-        value_and_slope, low, high, value_and_slope(low)[0], 1.0
-    ).tolist()
+    places: list[float] = newton_zero(value_and_slope, low, high, value_and_slope(low)[0], 1.0).tolist()
     return places
 
 

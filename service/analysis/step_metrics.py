@@ -7,12 +7,12 @@ infimum; integrals of SP − PV; the output's travel with its jump at t = 0.
 
 from __future__ import annotations
 
+import numpy as np
+
 from service.analysis.responses import LOAD, SETPOINT, Responses
 from service.analysis.results import LoadStep, Quantity, SetpointStep
 from service.analysis.signals import ROUNDING, Integrals, Signal, integrals, signals, solved
 from service.analysis.tails import Tail
-
-import numpy as np
 
 RECOVERY_BAND = 0.05
 """Share of the peak deviation within which a load response counts as recovered."""
@@ -39,7 +39,9 @@ def step_metrics(
         scaled.first_passage(0.1) if scaled else None,
         scaled.first_passage(0.9) if scaled else None,
         scaled.less(1.0).last_exit(band) if scaled and ended else None,
-        load_pv.less(load_final).last_exit(RECOVERY_BAND * max(abs(peak), abs(load_final))) if ended else None,
+        load_pv.less(load_final).last_exit(RECOVERY_BAND * max(abs(peak), abs(load_final)))
+        if ended
+        else None,
     ]
     tenth, nine_tenths, settled, recovered = (_seconds(time, unit_rad_s) for time in solved(passages))
     error = pv.less(1.0).times(-1.0)
@@ -118,7 +120,7 @@ def _load_step(
         recovery_time_s=recovered,
         final_value=final if offset else 0.0,
         iae="unbounded" if offset else (found.absolute / unit_rad_s if found else None),
-        integrated_error="unbounded" if offset else (-found.signed / unit_rad_s if found else None),
+        integrated_error="unbounded" if offset else ((0.0 - found.signed) / unit_rad_s if found else None),
     )
 
 
