@@ -15,7 +15,7 @@ from service.records.roles import CONSOLE, ROLES, Role
 
 @click.group()
 def account() -> None:
-    """Make and show accounts."""
+    """Make accounts."""
 
 
 @account.command()

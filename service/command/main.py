@@ -14,14 +14,13 @@ import click  # noqa: E402  the variables above come first on purpose
 from service.documents.version import SERVICE_VERSION  # noqa: E402  see above
 
 SUBJECTS: dict[str, tuple[str, str]] = {
-    "account": ("service.command.account", "Make and change accounts."),
+    "account": ("service.command.account", "Make accounts."),
     "demo": ("service.command.demo", "Show the service on an invented plant."),
-    "history": ("service.command.history", "Verify the history of the records."),
+    "history": ("service.command.history", "Verify and export the history of the records."),
     "migrate": ("service.command.migrate", "Bring the database to the current schema."),
-    "recheck": ("service.command.recheck", "Recompute every loop's gains in force."),
     "recompute": ("service.command.recompute", "Recompute stability and margins of loops from files."),
     "serve": ("service.command.serve", "Run the service."),
-    "token": ("service.command.token", "Issue a token for the API."),
+    "token": ("service.command.token", "Issue, list and revoke tokens for the API."),
 }
 """Command → (module, its line in the help). In the module, a click command has the same name."""
 

@@ -6,7 +6,9 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import datetime
+from pathlib import Path
 
+from sqlalchemy import make_url
 from sqlalchemy.exc import SQLAlchemyError
 from sqlalchemy.orm import Session
 
@@ -35,6 +37,9 @@ def mistakes_in_a_sentence() -> Iterator[None]:
         raise UserMistake("; ".join(_sentence(problem) for problem in refused.errors)) from None
     except RecordsError as refused:
         raise UserMistake(refused.detail) from None
+    except ModuleNotFoundError as missing:
+        # a driver is an extra of its own and imported only when a database of its kind is named
+        raise UserMistake(f"the database needs the package {missing.name}, which is not installed") from None
     except SQLAlchemyError as failed:
         # only the driver's own words: the statement and the address of the database stay out
         reason = getattr(failed, "orig", None) or failed
@@ -63,12 +68,21 @@ def check() -> None:
 
 @contextmanager
 def _open() -> Iterator[Database]:
-    database = Database.open(Settings.from_environment().database_url)
+    url = Settings.from_environment().database_url
+    _check_exists(url)
+    database = Database.open(url)
     try:
         _check_schema(database)
         yield database
     finally:
         database.close()
+
+
+def _check_exists(url: str) -> None:
+    # SQLite would make an empty file, and the person would look for their records in it
+    parts = make_url(url)
+    if parts.get_backend_name() == "sqlite" and parts.database and not Path(parts.database).exists():
+        raise UserMistake(f"there is no database {parts.database}; gain-signoff migrate makes it")
 
 
 def _check_schema(database: Database) -> None:

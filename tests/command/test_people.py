@@ -8,7 +8,7 @@ from pathlib import Path
 import pytest
 from click.testing import CliRunner, Result
 
-from service.command.main import main
+from service.command.main import SUBJECTS, main
 from service.records import tokens
 from service.records.database import Database
 
@@ -101,8 +101,21 @@ def test_a_name_is_never_used_twice(store: Run) -> None:
     assert "taken" in refused_in_one_sentence(store(*REVIEWER, standard_input=PASSWORD))
 
 
-def test_a_store_that_was_never_made_is_said(run: Run) -> None:
+def test_a_store_that_was_never_made_is_said_and_none_is_made(run: Run, tmp_path: Path) -> None:
     assert "gain-signoff migrate" in refused_in_one_sentence(run("token", "list"))
+    assert list(tmp_path.iterdir()) == []
+
+
+def test_a_store_of_another_schema_is_said(run: Run, tmp_path: Path) -> None:
+    (tmp_path / "store.db").touch()
+    assert "gain-signoff migrate" in refused_in_one_sentence(run("token", "list"))
+
+
+@pytest.mark.parametrize("subject", SUBJECTS)
+def test_every_command_in_the_list_is_there(run: Run, subject: str) -> None:
+    shown = run(subject, "--help")
+    assert shown.exit_code == 0
+    assert shown.stdout.startswith("Usage: ")
 
 
 def test_a_store_that_cannot_be_reached_is_said_without_its_password(
