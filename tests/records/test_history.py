@@ -1,0 +1,236 @@
+"""The history: one entry a change, exact bytes, no gaps, no fork, and triggers that refuse."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import sqlite3
+import threading
+from collections.abc import Callable
+from typing import Any
+
+import pytest
+import rfc8785
+from sqlalchemy import text
+from sqlalchemy.exc import IntegrityError
+
+from service.records import accounts, history, loops, merkle, queries
+from service.records.roles import CONSOLE
+from service.records.tables.columns import Base, Kept
+from service.records.tables.history import HistoryEvent
+from service.records.views import LoopView
+from tests.records.store import Store, gains, registration
+
+
+def _a_year(store: Store, loop: LoopView) -> None:
+    """Something in every kept table."""
+    first = store.submit()
+    store.approve(first)
+    store.install(first)
+    second = store.submit(controller=gains(1.2))
+    store.decide(second, "reject")
+    store.submit(kind="emergency", controller=gains(1.1))
+
+
+def _canonical(store: Store) -> list[bytes]:
+    with store.database.reading() as session:
+        found = queries.history(session, store.actor("auditor"), queries.HistoryFilter(), limit=1000)
+    return [event.canonical for event in found.items]
+
+
+def test_entries_are_numbered_without_gaps_and_each_holds_the_digest_of_the_one_before(
+    store: Store, loop: LoopView
+) -> None:
+    _a_year(store, loop)
+    previous = "0" * 64
+    for number, raw in enumerate(_canonical(store), start=1):
+        entry = json.loads(raw)
+        assert (entry["number"], entry["previous"]) == (number, previous)
+        previous = hashlib.sha256(b"\0" + raw).hexdigest()
+    with store.database.reading() as session:
+        assert history.head(session).digest == previous
+
+
+def test_the_bytes_of_an_entry_are_canonical(store: Store, loop: LoopView) -> None:
+    _a_year(store, loop)
+    assert all(rfc8785.dumps(json.loads(raw)) == raw for raw in _canonical(store))
+
+
+def test_the_root_of_the_head_is_that_of_the_tree_over_all_entries(store: Store, loop: LoopView) -> None:
+    def root(leaves: list[bytes]) -> bytes:
+        """RFC 9162, section 2.1.1, as it is written: split at the largest power of two below n."""
+        if len(leaves) == 1:
+            return hashlib.sha256(b"\0" + leaves[0]).digest()
+        split = 1 << ((len(leaves) - 1).bit_length() - 1)
+        return hashlib.sha256(b"\1" + root(leaves[:split]) + root(leaves[split:])).digest()
+
+    _a_year(store, loop)
+    with store.database.reading() as session:
+        assert history.head(session).root == root(_canonical(store)).hex()
+
+
+def test_the_root_of_no_entries_is_the_digest_of_nothing() -> None:
+    assert merkle.root(b"") == hashlib.sha256(b"").digest()
+
+
+def test_each_change_has_exactly_one_entry(store: Store, loop: LoopView) -> None:
+    _a_year(store, loop)
+    assert store.events() == [
+        "store_made",
+        *["account_added"] * 7,
+        "loop_registered",
+        "model_added",
+        "gains_submitted",
+        "gains_approved",
+        "gains_installed",
+        "gains_submitted",
+        "gains_rejected",
+        "gains_submitted",
+    ]
+
+
+def test_an_entry_tells_every_row_that_was_inserted_with_it(store: Store, loop: LoopView) -> None:
+    _a_year(store, loop)
+    told: dict[str, int] = {}
+    for raw in _canonical(store):
+        for table, rows in json.loads(raw)["rows"].items():
+            told[table] = told.get(table, 0) + len(rows)
+    kept = {mapper.class_.__tablename__ for mapper in Base.registry.mappers if _is_kept(mapper)}
+    counts = store.counts()
+    assert told == {table: counts[table] for table in kept if counts[table]}
+    assert set(told) == kept - {"sheets"}
+
+
+def _is_kept(mapper: Any) -> bool:
+    return issubclass(mapper.class_, Kept)
+
+
+def test_what_is_rolled_back_leaves_no_gap(store: Store, loop: LoopView) -> None:
+    with store.database.writing() as session:
+        loops.register(session, store.actor("submitter"), registration(tag="X-1"), store.clock())
+        session.rollback()
+    store.register(tag="X-2")
+    numbers = [json.loads(raw)["number"] for raw in _canonical(store)]
+    assert numbers == list(range(1, len(numbers) + 1))
+
+
+def test_reading_writes_nothing(store: Store) -> None:
+    with store.database.reading() as session, pytest.raises(Exception, match="readonly"):
+        session.execute(text("UPDATE history_head SET size = size + 1"))
+
+
+KEPT = sorted(
+    {mapper.class_.__tablename__ for mapper in Base.registry.mappers if _is_kept(mapper)}
+    | {HistoryEvent.__tablename__}
+)
+
+
+def _unguarded(store: Store) -> Callable[[str], None]:
+    """A connection as any other program opens it: no pragma of ours."""
+    connection = sqlite3.connect(store.url.removeprefix("sqlite:///"), isolation_level=None)
+    return lambda statement: connection.execute(statement).close()
+
+
+@pytest.mark.parametrize("table", [name for name in KEPT if name != "sheets"])
+def test_the_database_refuses_to_change_delete_or_replace_what_is_kept(
+    store: Store, loop: LoopView, table: str
+) -> None:
+    _a_year(store, loop)
+    execute = _unguarded(store)
+    column = "canonical" if table == "history_events" else "event_number"
+    for statement in (
+        f"UPDATE {table} SET {column} = {column}",  # noqa: S608  names of our own tables
+        f"DELETE FROM {table}",  # noqa: S608
+        f"INSERT OR REPLACE INTO {table} SELECT * FROM {table}",  # noqa: S608
+    ):
+        with pytest.raises(Exception, match="append-only"):
+            execute(statement)
+
+
+@pytest.mark.parametrize(
+    "statement",
+    [
+        "UPDATE history_head SET size = size - 1",
+        "UPDATE history_head SET digest = '0'",
+        "DELETE FROM history_head",
+        "INSERT OR REPLACE INTO history_head SELECT * FROM history_head",
+    ],
+)
+def test_the_head_only_moves_by_one(store: Store, statement: str) -> None:
+    execute = _unguarded(store)
+    with pytest.raises(Exception, match="the head"):
+        execute(statement)
+
+
+def test_every_kept_table_has_its_guards(store: Store) -> None:
+    with store.database.reading() as session:
+        names = set(session.execute(text("SELECT name FROM sqlite_master WHERE type = 'trigger'")).scalars())
+    wanted = {f"{table}_refuses_{what}" for table in KEPT for what in ("update", "delete", "replace")}
+    assert wanted <= names
+
+
+def test_two_writers_at_once_make_no_fork_and_no_gap(store: Store) -> None:
+    changes, writers = 25, 4
+    failures: list[BaseException] = []
+
+    def write(writer: int) -> None:
+        try:
+            for index in range(changes):
+                with store.database.writing() as session:
+                    accounts.rename(
+                        session, CONSOLE, "reviewer", f"Name {writer} {index}", "race", store.clock()
+                    )
+        except BaseException as failure:
+            failures.append(failure)
+
+    before = len(_canonical(store))
+    threads = [threading.Thread(target=write, args=(writer,)) for writer in range(writers)]
+    for thread in threads:
+        thread.start()
+    for thread in threads:
+        thread.join()
+    assert failures == []
+    entries = [json.loads(raw) for raw in _canonical(store)]
+    assert len(entries) == before + changes * writers
+    assert [entry["number"] for entry in entries] == list(range(1, len(entries) + 1))
+    assert len({entry["previous"] for entry in entries}) == len(entries)
+
+
+def test_two_decisions_at_once_and_one_wins(store: Store, loop: LoopView) -> None:
+    submission = store.submit()
+    outcomes: list[str] = []
+    barrier = threading.Barrier(2)
+
+    def decide(person: str) -> None:
+        barrier.wait()
+        try:
+            store.decide(submission, "reject", person)
+            outcomes.append("signed")
+        except Exception as refusal:
+            outcomes.append(type(refusal).__name__)
+
+    threads = [threading.Thread(target=decide, args=(person,)) for person in ("reviewer", "second")]
+    for thread in threads:
+        thread.start()
+    for thread in threads:
+        thread.join()
+    assert sorted(outcomes) == ["WrongStep", "signed"]
+    assert len(store.read(submission).decisions) == 1
+
+
+def test_the_same_entry_cannot_follow_twice(store: Store) -> None:
+    with store.database.writing() as session:
+        last = session.get_one(HistoryEvent, history.head(session).size)
+        twin = HistoryEvent(
+            number=last.number + 1,
+            time=last.time,
+            kind=last.kind,
+            actor=last.actor,
+            canonical=last.canonical,
+            previous=last.previous,
+            digest="0" * 64,
+        )
+        session.add(twin)
+        with pytest.raises(IntegrityError):
+            session.flush()
+        session.rollback()
