@@ -101,9 +101,6 @@ def _verify(
     connection: Connection, state: _State, checkpoint: Checkpoint | None, progress: Progress | None
 ) -> None:
     state.covered, state.not_covered = store.tables(connection)
-    damage = store.damage(connection)
-    if damage is not None:
-        raise _Broken(f"the database's own check of its file says: {damage}")
     total = store.count(connection, store.EVENTS)
     kept = {table.name: _Rows(connection, table) for table in state.covered}
     for event in store.rows(connection, store.EVENTS, "number"):
@@ -120,6 +117,10 @@ def _verify(
     if checkpoint is not None and checkpoint.size > state.entries:
         raise _Broken(f"the checkpoint covers {checkpoint.size} entries, and there are only {state.entries}")
     _check_head(connection, state)
+    # last, since it names no row: an index that hides one, a row that breaks a constraint
+    damage = store.damage(connection)
+    if damage is not None:
+        raise _Broken(f"the database's own check of its file says: {damage}")
 
 
 def _check_entry(event: Mapping[str, Any], state: _State) -> dict[str, Any]:

@@ -1,0 +1,447 @@
+"""What somebody who owns the database may do to it, and that the verification names the place."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import shutil
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from service.verification.report import Report
+from tests.verification.conftest import Owned
+
+
+def _named(report: Report) -> tuple[int | None, str | None]:
+    assert report.fault is not None
+    return report.fault.entry, report.fault.table
+
+
+def _flipped(raw: bytes, bit: int = 12) -> bytes:
+    return raw[: bit // 8] + bytes([raw[bit // 8] ^ (1 << bit % 8)]) + raw[bit // 8 + 1 :]
+
+
+def _entry(owned: Owned, kind: str) -> int:
+    number: int = owned.value("SELECT min(number) FROM history_events WHERE kind = ?", kind)
+    return number
+
+
+# --- the history
+
+
+@pytest.mark.parametrize("number", [1, 9, 18])
+def test_one_bit_of_the_bytes(owned: Owned, number: int) -> None:
+    raw = owned.value("SELECT canonical FROM history_events WHERE number = ?", number)
+    owned.execute(("UPDATE history_events SET canonical = ? WHERE number = ?", (_flipped(raw), number)))
+    assert _named(owned.verify()) == (number, None)
+
+
+@pytest.mark.parametrize(
+    ("column", "value"),
+    [
+        ("time", "2025-01-01 00:00:00.000000"),
+        ("kind", "gains_rejected"),
+        ("actor", "somebody"),
+        ("loop_id", None),
+        ("site", "South"),
+        ("tag", "FIC-102"),
+        ("area", "Tank farm"),
+        ("previous", "0" * 63 + "1"),
+    ],
+)
+def test_a_searchable_column_only(owned: Owned, column: str, value: object) -> None:
+    number = _entry(owned, "gains_approved")
+    change = f"UPDATE history_events SET {column} = ? WHERE number = ?"  # noqa: S608  our own columns
+    owned.execute((change, (value, number)))
+    report = owned.verify()
+    assert _named(report) == (number, None)
+    assert column in report.fault.what  # type: ignore[union-attr]
+
+
+def test_a_digest_only(owned: Owned) -> None:
+    owned.execute(("UPDATE history_events SET digest = ? WHERE number = 9", ("f" * 64,)))
+    assert _named(owned.verify()) == (9, None)
+
+
+def test_an_entry_in_the_middle_deleted(owned: Owned) -> None:
+    owned.execute("DELETE FROM history_events WHERE number = 12")
+    report = owned.verify()
+    assert _named(report) == (12, None)
+    assert "missing" in report.fault.what  # type: ignore[union-attr]
+
+
+def test_an_entry_in_the_middle_deleted_and_the_later_ones_renumbered(owned: Owned) -> None:
+    owned.execute(
+        "DELETE FROM history_events WHERE number = 12",
+        "UPDATE history_events SET number = number - 1 WHERE number > 12",
+    )
+    assert _named(owned.verify()) == (12, None)
+
+
+def test_every_entry_of_one_loop_deleted(owned: Owned) -> None:
+    first = owned.value("SELECT min(number) FROM history_events WHERE tag = 'LIC-7'")
+    owned.execute("DELETE FROM history_events WHERE tag = 'LIC-7'")
+    assert _named(owned.verify()) == (first, None)
+
+
+def test_two_entries_swapped(owned: Owned) -> None:
+    swap = "UPDATE history_events SET number = ? WHERE number = ?"
+    owned.execute((swap, (-1, 9)), (swap, (9, 10)), (swap, (10, -1)))
+    assert _named(owned.verify()) == (9, None)
+
+
+def test_an_entry_duplicated_at_the_end(owned: Owned) -> None:
+    last = owned.value("SELECT size FROM history_head")
+    _append_copy_of(owned, 9, last + 1)
+    assert _named(owned.verify()) == (last + 1, None)
+
+
+def test_an_entry_inserted_in_the_middle(owned: Owned) -> None:
+    owned.execute("UPDATE history_events SET number = -number - 1 WHERE number >= 9")
+    owned.execute("UPDATE history_events SET number = -number WHERE number < 0")
+    _append_copy_of(owned, 8, 9)
+    assert _named(owned.verify()) == (9, None)
+
+
+def _append_copy_of(owned: Owned, number: int, as_number: int) -> None:
+    (row,) = owned.rows("SELECT * FROM history_events WHERE number = ?", number)
+    names = [column[1] for column in owned.rows("PRAGMA table_info(history_events)")]
+    changed = dict(zip(names, row, strict=True))
+    changed |= {"number": as_number, "digest": "e" * 64, "previous": "d" * 64}
+    marks = ", ".join("?" for _ in names)
+    insert = f"INSERT INTO history_events ({', '.join(names)}) VALUES ({marks})"  # noqa: S608
+    owned.execute((insert, tuple(changed.values())))
+
+
+@pytest.mark.parametrize(
+    ("column", "value"),
+    [("size", 3), ("digest", "0" * 64), ("right_edge", b""), ("time", "2025-01-01 00:00:00.000000")],
+)
+def test_the_head_only(owned: Owned, column: str, value: object) -> None:
+    owned.execute((f"UPDATE history_head SET {column} = ?", (value,)))  # noqa: S608
+    report = owned.verify()
+    assert _named(report) == (None, "history_head")
+    assert column in report.fault.what  # type: ignore[union-attr]
+
+
+def test_the_head_removed(owned: Owned) -> None:
+    owned.execute("DELETE FROM history_head")
+    assert _named(owned.verify()) == (None, "history_head")
+
+
+def test_the_first_of_two_places_is_named(owned: Owned) -> None:
+    owned.execute(
+        ("UPDATE history_events SET actor = 'x' WHERE number = 15", ()),
+        ("UPDATE history_events SET actor = 'x' WHERE number = 11", ()),
+    )
+    assert _named(owned.verify()) == (11, None)
+
+
+# --- what only a checkpoint kept outside finds
+
+
+def test_the_last_entries_cut_off_with_everything_that_belongs_to_them(owned: Owned) -> None:
+    checkpoint = owned.checkpoint()
+    _cut(owned, checkpoint.size - 2)
+    assert owned.verify().holds, "without a checkpoint a clean cut cannot be seen, and that is said plainly"
+    report = owned.verify(checkpoint)
+    assert report.fault is not None
+    assert f"covers {checkpoint.size} entries" in report.fault.what
+
+
+def test_an_old_copy_of_the_store_put_back(owned: Owned, tmp_path: Path) -> None:
+    copy = Owned(tmp_path / "old.db")
+    shutil.copy(owned.file, copy.file)
+    _cut(copy, 10)
+    newer = owned.checkpoint()
+    assert copy.verify().holds
+    assert not copy.verify(newer).holds
+
+
+def test_everything_rewritten_from_an_entry_on(owned: Owned) -> None:
+    checkpoint = owned.checkpoint()
+    _rewrite_from(owned, 2)
+    assert owned.verify().holds
+    report = owned.verify(checkpoint)
+    assert report.fault is not None
+    assert "rewritten" in report.fault.what
+
+
+def test_a_checkpoint_of_an_earlier_time_still_holds(owned: Owned, tmp_path: Path) -> None:
+    earlier = Owned(tmp_path / "earlier.db")
+    shutil.copy(owned.file, earlier.file)
+    _cut(earlier, 10)
+    assert owned.verify(earlier.checkpoint()).holds
+
+
+def _leaf(raw: bytes) -> bytes:
+    return hashlib.sha256(b"\0" + raw).digest()
+
+
+def _edge(leaves: list[bytes]) -> bytes:
+    """The roots of the perfect subtrees, by the set bits of their number."""
+
+    def root(part: list[bytes]) -> bytes:
+        half = len(part) // 2
+        return (
+            part[0] if half == 0 else hashlib.sha256(b"\1" + root(part[:half]) + root(part[half:])).digest()
+        )
+
+    edge, start = b"", 0
+    for bit in reversed(range(len(leaves).bit_length())):
+        if len(leaves) >> bit & 1:
+            edge += root(leaves[start : start + (1 << bit)])
+            start += 1 << bit
+    return edge
+
+
+def _set_head(owned: Owned) -> None:
+    """Make the head fit the entries, as a forger who knows the design would."""
+    entries = owned.rows("SELECT canonical, digest, time FROM history_events ORDER BY number")
+    edge = _edge([_leaf(raw) for raw, _, _ in entries])
+    _, digest, time = entries[-1]
+    change = "UPDATE history_head SET size = ?, digest = ?, time = ?, right_edge = ?"
+    owned.execute((change, (len(entries), digest, time, edge)))
+
+
+def _cut(owned: Owned, size: int) -> None:
+    tables = [
+        name
+        for (name,) in owned.rows("SELECT name FROM sqlite_master WHERE type = 'table'")
+        if any(column[1] == "event_number" for column in owned.rows(f"PRAGMA table_info({name})"))
+    ]
+    owned.execute(
+        *(f"DELETE FROM {table} WHERE event_number > {size}" for table in tables),  # noqa: S608
+        f"DELETE FROM history_events WHERE number > {size}",  # noqa: S608
+    )
+    _set_head(owned)
+
+
+def _rewrite_from(owned: Owned, first: int) -> None:
+    """Change who acted in one entry and make every later digest fit."""
+    entries = owned.rows("SELECT number, canonical FROM history_events ORDER BY number")
+    previous = owned.value("SELECT previous FROM history_events WHERE number = ?", first)
+    changes: list[tuple[str, tuple[Any, ...]]] = []
+    update = "UPDATE history_events SET canonical = ?, previous = ?, digest = ?, actor = ? WHERE number = ?"
+    for number, raw in entries[first - 1 :]:
+        entry = json.loads(raw)
+        entry["previous"] = previous
+        entry["actor"] = "somebody" if number == first else entry["actor"]
+        forged = json.dumps(entry, sort_keys=True, separators=(",", ":"), ensure_ascii=False).encode()
+        digest = _leaf(forged).hex()
+        changes.append((update, (forged, previous, digest, entry["actor"], number)))
+        previous = digest
+    # each digest has to be free before another entry takes it
+    free = f"UPDATE history_events SET digest = number, previous = -number WHERE number >= {first}"  # noqa: S608
+    owned.execute(free, *changes)
+    _set_head(owned)
+
+
+# --- what the entries vouch for
+
+
+COVERED = {
+    "loops": ["id", "site", "tag", "site_key", "tag_key"],
+    "loop_revisions": [
+        "loop_id",
+        "revision",
+        "area",
+        "description",
+        "safety_related",
+        "content",
+        "content_digest",
+    ],
+    "loop_models": [
+        "id",
+        "loop_id",
+        "version",
+        "operating_point",
+        "operating_point_key",
+        "retired",
+        "content",
+        "content_digest",
+    ],
+    "submissions": [
+        "id",
+        "loop_id",
+        "loop_revision",
+        "kind",
+        "reason",
+        "submitted_by",
+        "submitted_by_name",
+        "submitted_by_full_name",
+        "submitted_at",
+        "install_by",
+        "temporary_until",
+        "verdict",
+        "content",
+        "content_digest",
+    ],
+    "submission_authors": ["submission_id", "account_id"],
+    "submission_recomputations": [
+        "submission_id",
+        "ordinal",
+        "model_id",
+        "gain_set",
+        "operating_point",
+        "verdict",
+        "curves",
+        "curves_digest",
+    ],
+    "submission_states": ["submission_id", "ordinal", "action", "state"],
+    "gains_in_force": ["loop_id", "ordinal", "submission_id", "since"],
+    "decisions": [
+        "id",
+        "submission_id",
+        "ordinal",
+        "decision",
+        "decided_by",
+        "decided_at",
+        "submission_digest",
+        "content",
+        "content_digest",
+    ],
+    "installations": [
+        "id",
+        "submission_id",
+        "ordinal",
+        "recorded_by",
+        "recorded_at",
+        "as_approved",
+        "content",
+        "content_digest",
+    ],
+    "sheets": ["decision_id", "submission_id", "renderer", "content", "content_digest"],
+}
+"""Every column of every kept table but the one that ties a row to its entry."""
+
+EVERY_COLUMN = [(table, column) for table, columns in COVERED.items() for column in columns]
+
+
+def test_the_list_above_is_all_there_is(owned: Owned) -> None:
+    found = {
+        table: [column[1] for column in owned.rows(f"PRAGMA table_info({table})")]
+        for table in owned.verify().covered
+        if not table.startswith("history_")
+    }
+    without_tie = {
+        table: [column for column in columns if column != "event_number"] for table, columns in found.items()
+    }
+    assert without_tie == COVERED
+
+
+@pytest.mark.parametrize(("table", "column"), EVERY_COLUMN)
+def test_any_column_of_any_kept_row_changed(owned: Owned, table: str, column: str) -> None:
+    rowid, number, value = owned.rows(
+        f"SELECT rowid, event_number, {column} FROM {table} WHERE {column} IS NOT NULL LIMIT 1"  # noqa: S608
+    )[0]
+    change = f"UPDATE {table} SET {column} = ? WHERE rowid = ?"  # noqa: S608
+    owned.execute((change, (_other(column, value), rowid)))
+    report = owned.verify()
+    assert _named(report) == (number, table)
+
+
+def _other(column: str, value: Any) -> Any:
+    if isinstance(value, bytes):
+        return _flipped(value)
+    if isinstance(value, int):
+        return 1 - value if column in ("safety_related", "retired", "as_approved") else value + 7
+    if column in ("submitted_at", "install_by", "temporary_until", "since", "decided_at", "recorded_at"):
+        return value.replace("2026", "2025")
+    return value[:-1] + ("x" if value[-1] != "x" else "y")
+
+
+@pytest.mark.parametrize("table", [table for table in COVERED if table not in ("sheets",)])
+def test_any_kept_row_deleted(owned: Owned, table: str) -> None:
+    rowid, number = owned.rows(f"SELECT rowid, event_number FROM {table} LIMIT 1")[0]  # noqa: S608
+    owned.execute((f"DELETE FROM {table} WHERE rowid = ?", (rowid,)))  # noqa: S608
+    report = owned.verify()
+    assert _named(report) == (number, table)
+    assert "missing" in report.fault.what  # type: ignore[union-attr]
+
+
+@pytest.mark.parametrize("tie", [9, 10_000, 0])
+def test_a_row_added_that_no_entry_knows(owned: Owned, tie: int) -> None:
+    insert = "INSERT INTO submission_authors (submission_id, account_id, event_number) VALUES (?, ?, ?)"
+    owned.execute((insert, ("a" * 32, "b" * 32, tie)))
+    report = owned.verify()
+    assert report.fault is not None
+    assert report.fault.table == "submission_authors"
+    assert report.fault.row == f"submission_id {'a' * 32}, account_id {'b' * 32}"
+
+
+def test_a_signature_moved_to_another_submission(owned: Owned) -> None:
+    rejected = owned.value("SELECT submission_id FROM decisions WHERE decision = 'reject'")
+    number = owned.value("SELECT event_number FROM decisions WHERE decision = 'approve'")
+    owned.execute(
+        ("UPDATE decisions SET submission_id = ?, ordinal = 9 WHERE decision = 'approve'", (rejected,))
+    )
+    report = owned.verify()
+    assert _named(report) == (number, "decisions")
+
+
+def test_a_signature_moved_to_another_entry(owned: Owned) -> None:
+    number = owned.value("SELECT event_number FROM decisions WHERE decision = 'approve'")
+    owned.execute("UPDATE decisions SET event_number = event_number + 1 WHERE decision = 'approve'")
+    assert _named(owned.verify()) == (number, "decisions")
+
+
+@pytest.mark.parametrize("with_digest", [False, True])
+@pytest.mark.parametrize("part", ["limit", "result"])
+def test_a_limit_or_a_result_of_a_past_recomputation_changed(
+    owned: Owned, part: str, with_digest: bool
+) -> None:
+    rowid, number, raw = owned.rows("SELECT rowid, event_number, content FROM submissions LIMIT 1")[0]
+    content = json.loads(raw)
+    recomputation = content["recomputations"][0]
+    if part == "limit":
+        recomputation["criteria"]["gain_margin_min"] = 1.0
+    else:
+        recomputation["answer"]["continuous"]["margins"]["gain_margin"] = 9.9
+    forged = json.dumps(content, sort_keys=True, separators=(",", ":"), ensure_ascii=False).encode()
+    assert forged != raw
+    owned.execute(("UPDATE submissions SET content = ? WHERE rowid = ?", (forged, rowid)))
+    if with_digest:
+        digest = hashlib.sha256(forged).hexdigest()
+        owned.execute(("UPDATE submissions SET content_digest = ? WHERE rowid = ?", (digest, rowid)))
+    assert _named(owned.verify()) == (number, "submissions")
+
+
+def test_a_table_removed(owned: Owned) -> None:
+    owned.execute("DROP TABLE decisions")
+    report = owned.verify()
+    assert _named(report) == (_entry(owned, "gains_approved"), "decisions")
+
+
+def test_a_text_in_a_numbers_place(owned: Owned) -> None:
+    number = owned.value("SELECT event_number FROM loop_models LIMIT 1")
+    owned.execute("UPDATE loop_models SET version = CAST(version AS BLOB) WHERE version = 1")
+    assert _named(owned.verify())[0] == number
+
+
+# --- the file
+
+
+def test_a_row_that_breaks_a_constraint_where_no_entry_says_so(owned: Owned) -> None:
+    """The entries know nothing of working tables, but the database's own check looks at every one."""
+    owned.execute("UPDATE account_roles SET role = 'owner' WHERE role = 'auditor'")
+    report = owned.verify()
+    assert report.fault is not None
+    assert "account_roles" in report.fault.what
+
+
+def test_bytes_of_the_file_edited(owned: Owned) -> None:
+    raw = owned.file.read_bytes()
+    place = raw.index(b'"kind":"gains_approved"')
+    owned.file.write_bytes(raw[:place] + b'"kind":"gains_rejected"' + raw[place + 23 :])
+    assert not owned.verify().holds
+
+
+def test_a_file_that_is_no_store(tmp_path: Path) -> None:
+    file = tmp_path / "other.db"
+    file.write_bytes(b"not a database at all" * 100)
+    report = Owned(file).verify()
+    assert report.fault is not None
+    assert "cannot be read" in report.fault.what
