@@ -54,7 +54,10 @@ def _tag(text: str) -> str:
 
 
 def _utc(moment: datetime) -> datetime:
-    return moment.astimezone(UTC)
+    try:
+        return moment.astimezone(UTC)
+    except OverflowError:
+        raise ValueError("this lies before the year 1 or past the year 9999 in UTC") from None
 
 
 Line = Annotated[
