@@ -44,7 +44,11 @@ def create_app(
     signing_key = read_key(settings.signing_key_file) if settings.signing_key_file else None
     database = Database.open(settings.database_url, clock=clock, password_hasher=password_hasher)
     app = Flask(__name__, static_folder=None)
-    app.config.update(SECRET_KEY=secret_key, MAX_CONTENT_LENGTH=BODY_BYTES_MAX)
+    app.config.update(
+        SECRET_KEY=secret_key, MAX_CONTENT_LENGTH=BODY_BYTES_MAX, PROVIDE_AUTOMATIC_OPTIONS=False
+    )
+    # else //path is answered with a redirect to wherever the Host header says
+    app.url_map.merge_slashes = False
     attach(app, Services(database=database, secret_key=secret_key, signing_key=signing_key))
     register_api(app)
     register_pages(app)

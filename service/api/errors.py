@@ -10,7 +10,7 @@ import logging
 from collections.abc import Iterator
 
 from flask import Response
-from sqlalchemy.exc import OperationalError
+from sqlalchemy.exc import InterfaceError, InternalError, OperationalError, TimeoutError
 from werkzeug.exceptions import HTTPException
 
 from service.api import problems, refusals
@@ -41,7 +41,11 @@ TABLE: dict[type[Exception], ProblemType] = {
     records.StaleContent: problems.PRECONDITION_FAILED,
     records.Conflict: problems.CONFLICT,
     records.StoreNotUsable: problems.UNAVAILABLE,
+    # down, locked, full, read-only, no free connection: the drivers say it in these four ways
     OperationalError: problems.UNAVAILABLE,
+    InterfaceError: problems.UNAVAILABLE,
+    InternalError: problems.UNAVAILABLE,
+    TimeoutError: problems.UNAVAILABLE,
 }
 """The nearest class in an exception's own order of classes decides."""
 
@@ -69,7 +73,8 @@ def answer(error: Exception) -> Response:
 def problem_type(error: Exception) -> ProblemType:
     """Return the type of problem that an exception is."""
     if isinstance(error, HTTPException):
-        return OF_HTTP.get(error.code or 500, problems.INTERNAL_ERROR)
+        otherwise = problems.BAD_REQUEST if (error.code or 500) < 500 else problems.INTERNAL_ERROR
+        return OF_HTTP.get(error.code or 500, otherwise)
     found = (TABLE[kind] for kind in type(error).__mro__ if kind in TABLE)
     return next(found, problems.INTERNAL_ERROR)
 

@@ -53,7 +53,7 @@ def list_history(call: Call, query: HistoryQuery) -> Answer:
     return history_csv.as_csv(page, part.items) if media_type == "text/csv" else page
 
 
-@blueprint.get("/<int:number>")
+@blueprint.get(f"/<int(max={2**53}):number>")
 @reads(NoQuery, representations.WholeEvent)
 def show_entry(call: Call, _query: NoQuery, number: int) -> Answer:
     """Show one entry with the exact text that its digest is made from."""

@@ -126,7 +126,7 @@ def _name(described: type) -> str:
 
 
 def _path(rule: Rule) -> str:
-    return re.sub(r"<(?:\w+:)?(\w+)>", r"{\1}", rule.rule)
+    return re.sub(r"<(?:[^<>]+:)?(\w+)>", r"{\1}", rule.rule)
 
 
 def _method(rule: Rule) -> str:

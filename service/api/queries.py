@@ -7,13 +7,15 @@ from __future__ import annotations
 
 import dataclasses
 import re
+import unicodedata
 from collections.abc import Hashable, Iterator
 from dataclasses import dataclass
+from datetime import UTC, datetime
 from functools import cache
 from typing import Annotated, Any, TypeVar, cast
 
 from annotated_types import Ge, Le, Len
-from pydantic import AwareDatetime, BeforeValidator, TypeAdapter, ValidationError
+from pydantic import AfterValidator, AwareDatetime, BeforeValidator, TypeAdapter, ValidationError
 from werkzeug.datastructures import MultiDict
 
 from service.api.refusals import BadQuery
@@ -35,8 +37,21 @@ def _written_as_instant(text: str) -> str:
     return text
 
 
-Text = Annotated[str, Len(1, 200)]
-Instant = Annotated[AwareDatetime, BeforeValidator(_written_as_instant)]
+def _in_utc(moment: datetime) -> datetime:
+    try:
+        return moment.astimezone(UTC)
+    except OverflowError:
+        raise ValueError("this lies before the year 1 or past the year 9999 in UTC") from None
+
+
+def _without_controls(text: str) -> str:
+    if any(unicodedata.category(character) == "Cc" for character in text):
+        raise ValueError("no control characters stand in a text that is searched for")
+    return text
+
+
+Text = Annotated[str, Len(1, 200), AfterValidator(_without_controls)]
+Instant = Annotated[AwareDatetime, BeforeValidator(_written_as_instant), AfterValidator(_in_utc)]
 
 
 @dataclass(frozen=True, kw_only=True)

@@ -285,3 +285,62 @@ def test_what_lies_outside_an_accounts_areas_does_not_exist_for_it(
     assert service.get("/v1/submissions", person="elsewhere").json["items"] == []
     tags = {event["tag"] for event in service.get("/v1/history", person="elsewhere").json["items"]}
     assert plant.LOOP["tag"] not in tags
+
+
+@pytest.mark.parametrize(
+    ("path", "status"),
+    [
+        ("/v1//loops", 404),
+        ("/v1/loops/", 404),
+        ("/v1/loops/%00", 404),
+        ("/v1/loops/%ff", 404),
+        ("/v1/loops/..%2f..", 404),
+        (f"/v1/loops/{'x' * 5000}", 404),
+        (f"/v1/history/{10**30}", 404),
+        ("/v1/history/-1", 404),
+        ("/v1/history/1.0", 404),
+        ("/v1/loops?site=%00", 400),
+        ("/v1/loops?q=%ff", 200),
+        ("/v1/loops?q=%25", 200),
+        ("/v1/history?since=0001-01-01T00:00:00%2B14:00", 400),
+        ("/v1/history?until=9999-12-31T23:59:59-14:00", 400),
+        ("/v1/history?since=2026-13-01T00:00:00Z", 400),
+        (f"/v1/history?limit={'9' * 5000}", 400),
+    ],
+)
+def test_an_address_that_nobody_means_is_refused_calmly(service: Service, path: str, status: int) -> None:
+    answer = service.get(path, person="auditor")
+    assert answer.status_code == status
+    assert "Location" not in answer.headers
+
+
+@pytest.mark.parametrize("method", ["OPTIONS", "TRACE", "PATCH", "DELETE", "BREW"])
+def test_other_methods_are_not_taken(service: Service, method: str) -> None:
+    assert service.call(method, "/v1/loops").status_code == 405
+
+
+def test_a_percent_sign_in_a_search_is_a_percent_sign(service: Service, loop_id: str) -> None:
+    assert service.get("/v1/loops?q=%25").json["items"] == []
+    assert service.get("/v1/loops?q=_").json["items"] == []
+    assert len(service.get("/v1/loops?q=wash").json["items"]) == 1
+
+
+@pytest.mark.parametrize(
+    "time",
+    [
+        "0001-01-01T00:00:00+14:00",
+        "9999-12-31T23:59:59-14:00",
+        "2026-03-01",
+        "2026-03-01T00:00:00",
+        "1772323200",
+        1772323200,
+        "",
+        "9" * 400,
+    ],
+)
+@pytest.mark.parametrize("name", ["temporary_until", "install_by"])
+def test_a_time_in_a_body_is_one_with_its_offset(
+    service: Service, loop_id: str, name: str, time: object
+) -> None:
+    answer = service.post("/v1/submissions", plant.SUBMISSION | {name: time})
+    assert (answer.status_code, pointers(answer)) == (422, [f"/{name}"])
