@@ -21,6 +21,8 @@ RELATIVE_TOLERANCE = 1e-9
 
 Value = float | str | None
 
+_TERMS = ("proportional", "integral", "derivative", "derivative_filter")
+
 
 @dataclass(frozen=True, slots=True)
 class _Setting:
@@ -35,7 +37,7 @@ class _Setting:
 
 def compare(before: Controller | None, after: Controller, ranges: Ranges) -> Comparison:
     """Compare term by term: as entered where form and units agree, else in the parallel form in seconds."""
-    as_entered = before is None or _layout(before) == _layout(after)
+    as_entered = before is None or _laid_out_alike(before, after)
     settings = tuple(_settings(before, after, ranges, as_entered))
     return Comparison(
         common_form=None if as_entered else "parallel",
@@ -77,20 +79,17 @@ def _settings(
     yield from _recorded(before, after)
 
 
-def _layout(controller: Controller) -> tuple[object, ...]:
-    """Return what has to agree for two controllers to be compared as they were entered: form, basis,
-    units.
-    """
-    if isinstance(controller, TwoZerosController):
-        terms: tuple[object, ...] = (controller.derivative_filter,)
-    else:
-        terms = (
-            controller.proportional,
-            controller.integral,
-            controller.derivative,
-            controller.derivative_filter,
-        )
-    return (controller.form, controller.gain_basis, *(getattr(term, "unit", None) for term in terms))
+def _laid_out_alike(before: Controller, after: Controller) -> bool:
+    """Say whether form, gain basis, and the units of the terms that both have are the same."""
+    if (before.form, before.gain_basis) != (after.form, after.gain_basis):
+        return False
+    units = ((_unit(before, name), _unit(after, name)) for name in _TERMS)
+    return all(old == new for old, new in units if old is not None and new is not None)
+
+
+def _unit(controller: Controller, name: str) -> str | None:
+    unit: str | None = getattr(getattr(controller, name, None), "unit", None)
+    return unit
 
 
 def _entered(before: Controller | None, after: Controller) -> Iterator[_Setting]:
@@ -99,13 +98,13 @@ def _entered(before: Controller | None, after: Controller) -> Iterator[_Setting]
         yield _Setting("gain", "gain", earlier.gain if earlier else None, after.gain, True)
         zeros = (_zeros(earlier.zeros_rad_s) if earlier else None, _zeros(after.zeros_rad_s))
         yield _Setting("zeros_rad_s", "rad_s", *zeros, True)
-        names = ["derivative_filter"]
+        names: tuple[str, ...] = ("derivative_filter",)
     else:
-        names = ["proportional", "integral", "derivative", "derivative_filter"]
+        names = _TERMS
     for name in names:
-        old, new = getattr(before, name, None), getattr(after, name)
-        unit = getattr(new, "unit", None) or getattr(old, "unit", None) or ""
-        yield _Setting(name, unit, _entered_value(old), _entered_value(new), True)
+        unit = _unit(after, name) or (_unit(before, name) if before else None) or ""
+        old = _entered_value(getattr(before, name, None))
+        yield _Setting(name, unit, old, _entered_value(getattr(after, name)), True)
 
 
 def _entered_value(term: object) -> Value:
