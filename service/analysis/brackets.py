@@ -49,8 +49,8 @@ def falling_zero(function: Callable[[Reals], Reals], low: Reals, high: Reals, to
     """Where a function falls through 0 between `low` and `high`, to `tolerance` relative to the place.
 
     Chandrupatla's method: inverse quadratic interpolation where its points allow it, else halving.
-    T. R. Chandrupatla, A new hybrid quadratic/bisection algorithm for finding the zero of a nonlinear function
-    without using derivatives, Advances in Engineering Software 28 (1997) 145-149.
+    T. R. Chandrupatla, A new hybrid quadratic/bisection algorithm for finding the zero of a nonlinear
+    function without using derivatives, Advances in Engineering Software 28 (1997) 145-149.
     """
     a, b = high, low
     at_a, at_b = function(a), function(b)

@@ -1,7 +1,8 @@
-"""Polynomials by their values at Chebyshev extreme points of [0, 1]: differentiation, integration, evaluation.
+"""Polynomials by their values at Chebyshev extreme points of [0, 1]: differentiation, integration,
+evaluation.
 
-Source: L. N. Trefethen, Spectral Methods in MATLAB (SIAM 2000), chapters 6 and 12; J.-P. Berrut, L. N. Trefethen,
-Barycentric Lagrange interpolation, SIAM Review 46 (2004) 501-517.
+Source: L. N. Trefethen, Spectral Methods in MATLAB (SIAM 2000), chapters 6 and 12; J.-P. Berrut, L. N.
+Trefethen, Barycentric Lagrange interpolation, SIAM Review 46 (2004) 501-517.
 """
 
 from __future__ import annotations
@@ -72,7 +73,8 @@ def evaluate_rows(rows: Reals, at: Reals) -> Reals:
 def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[np.ndarray, Reals]:  # type: ignore[type-arg]
     """Every sign change inside the rows, values shape (r, count): which row, and where on [0, 1]; ordered.
 
-    Changes between two values that are both below `noise` (scalar, or shape (r, 1)) are rounding and left out.
+    Changes between two values that are both below `noise` (scalar, or shape (r, 1)) are rounding and left
+    out.
     """
     before, after = rows[:, :-1], rows[:, 1:]
     changes = ((before > 0) != (after > 0)) & (np.maximum(np.abs(before), np.abs(after)) > noise)

@@ -8,7 +8,7 @@ import numpy as np
 
 from service.analysis import chebyshev
 from service.analysis.chebyshev import NODES
-from service.analysis.frequency import AxisResponse
+from service.analysis.frequency import AxisResponse, distinct
 from service.analysis.loop import Reals
 from service.analysis.responses import LOAD, SETPOINT, Responses
 from service.analysis.results import Curves, FrequencyCurve, ResponseCurve
@@ -77,7 +77,7 @@ def _frequency(axis: AxisResponse, unit_rad_s: float) -> FrequencyCurve | None:
     ends = axis.omega[max(shown[0] - 1, 0)], axis.omega[min(shown[-1] + 1, len(axis.omega) - 1)]
     even = np.geomspace(ends[0], ends[1], FREQUENCY_POINTS)
     inside = axis.omega[(axis.omega > ends[0]) & (axis.omega < ends[1])]
-    omega = np.unique(np.concatenate([even, inside, axis.gain_crossovers]))
+    omega = distinct(np.concatenate([even, inside, axis.gain_crossovers]))
     omega = omega[(omega >= ends[0]) & (omega <= ends[1])]
     logs = axis.loop.log_response(omega)
     response = np.exp(logs)

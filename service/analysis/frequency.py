@@ -1,9 +1,9 @@
 """L(jω) on the positive axis: its continuous phase, where it turns, and every crossover.
 
 The magnitude does not depend on dead time and the phase is a sum of arctangents less ωθ, so both are known
-without unwrapping. The grid is fine relative to the distance from jω to the nearest zero or pole; between two of
-its points magnitude and phase turn at most once, and each is split there, so that a crossover is bracketed on a
-monotone piece and the list is complete.
+without unwrapping. The grid is fine relative to the distance from jω to the nearest zero or pole; between two
+of its points magnitude and phase turn at most once, and each is split there, so that a crossover is bracketed
+on a monotone piece and the list is complete.
 """
 
 from __future__ import annotations
@@ -74,7 +74,8 @@ class AxisResponse:
     def phase_crossovers(self) -> PhaseCrossings:
         """Where L is real and negative: the lowest of them, and those that bound the margins."""
         turns = self._turns(self.log_slope.imag, lambda omega: self.loop.on_axis(omega)[1].imag)
-        # abs L is monotone between these, so the first and the last crossing between two of them bound the rest
+        # abs L is monotone between these, so the first and the last crossing between two of them bound the
+        # rest
         marks = np.sort(np.concatenate([self._magnitude_turns, self.gain_crossovers]))
         inserted = np.sort(np.concatenate([turns, marks]))
         omega, logs = self._with_turns(inserted, self.log_response, lambda values: values)
@@ -125,7 +126,9 @@ class AxisResponse:
 
 @dataclass(frozen=True, eq=False)
 class PhaseCrossings:
-    """ω, increasing, and ln abs L there, shapes (m,); `truncated` where only those that bound the margins are told."""
+    """ω, increasing, and ln abs L there, shapes (m,); `truncated` where only those that bound the margins are
+    told.
+    """
 
     omega: Reals
     log_magnitude: Reals
@@ -175,7 +178,9 @@ def log_factors(omega: Reals, roots: Complexes) -> Complexes:
 
 
 def frequency_grid(loop: OpenLoop) -> Reals:
-    """Frequencies ω > 0, increasing, so dense that magnitude and phase turn at most once between two of them."""
+    """Frequencies ω > 0, increasing, so dense that magnitude and phase turn at most once between two of
+    them.
+    """
     roots = np.concatenate([loop.zeros, loop.poles])
     marks = [abs(root) for root in roots.tolist() if root != 0] + _asymptote_marks(loop)
     if loop.dead_time > 0:
@@ -189,7 +194,15 @@ def frequency_grid(loop: OpenLoop) -> Reals:
     parts += [
         _near_root(root) for root in roots.tolist() if root.imag > 0 and abs(root.real) < 0.5 * root.imag
     ]
-    return np.unique(np.concatenate(parts))
+    return distinct(np.concatenate(parts))
+
+
+def distinct(values: Reals) -> Reals:
+    """The values increasing, each once. numpy's own `unique` loads masked arrays, which takes longer than the
+    rest.
+    """
+    values = np.sort(values)
+    return values[np.append(True, np.diff(values) > 0)]
 
 
 def _asymptote_marks(loop: OpenLoop) -> list[float]:

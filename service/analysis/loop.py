@@ -1,7 +1,8 @@
 """The open loop: controller and plant made one, factored, in a natural unit of time.
 
 L(s) = direction·C(s)·F(s)·P(s)·e^(−sθ), F the measurement filter. Everything inside `analysis` works in the
-loop's own unit of time, 1/`unit_rad_s`; whoever hands a result out multiplies it back. No factor is multiplied out.
+loop's own unit of time, 1/`unit_rad_s`; whoever hands a result out multiplies it back. No factor is
+multiplied out.
 A zero and a pole of the loop that are one number are kept apart as hidden roots: they are roots of the closed
 loop wherever they lie, whatever L(jω) looks like.
 """
@@ -69,7 +70,8 @@ class OpenLoop:
     @cached_property
     def origin_coefficient(self) -> float:
         """The real c in L(s) → c·s^(−order_at_origin) as s → 0."""
-        # a factor (0 − r) is negative for a real r right of the axis; conjugate pairs are positive on either side
+        # a factor (0 − r) is negative for a real r right of the axis; conjugate pairs are positive on either
+        # side
         negative = _negative_real_factors(self.zeros) + _negative_real_factors(self.poles)
         return self.sign * (-1.0 if negative % 2 else 1.0) * math.exp(min(self.log_origin_coefficient, 700.0))
 
@@ -89,8 +91,8 @@ class OpenLoop:
     def _factors(self) -> tuple[Complexes, Reals, Reals, complex]:
         """All zeros and poles, +1 or -1 for each, -1 where its factor is turned about, and what that adds.
 
-        Left of the axis the principal argument of jω − r runs from -90° to 90°; right of it the factor is turned
-        about, so that its argument runs from 270° to 90° without a jump.
+        Left of the axis the principal argument of jω − r runs from -90° to 90°; right of it the factor is
+        turned about, so that its argument runs from 270° to 90° without a jump.
         """
         roots = np.concatenate([self.zeros, self.poles])
         weights = np.concatenate([np.ones(len(self.zeros)), -np.ones(len(self.poles))])
@@ -236,7 +238,9 @@ def _controller_basis(controller: Controller, ranges: Ranges | None) -> float:
 
 
 def _dead_time(plant_model: PlantModel) -> tuple[float, float, float]:
-    """Dead time as analysed, how much was taken off for the scan of the identification, how much could not be."""
+    """Dead time as analysed, how much was taken off for the scan of the identification, how much could not
+    be.
+    """
     half_s = 0.5 * plant_model.identified_at_scan_s
     reduced_s = min(half_s, plant_model.dead_time_s)
     return plant_model.dead_time_s - reduced_s, reduced_s, half_s - reduced_s

@@ -9,8 +9,9 @@ Definitions. With L the open loop, S = 1/(1+L), T = L/(1+L):
     disk margin              inf 2·abs(1+L)/abs(1−L), symmetric, at most 2
 The ends of the axis count as crossings: ω = 0, and infinity where L does not roll off.
 
-Sources: K. J. Åström, T. Hägglund, Advanced PID Control (ISA 2006), sections 4.6 and 7.2, from memory; the disk
-margin: P. Seiler, A. Packard, P. Gahinet, An Introduction to Disk Margins, IEEE Control Systems Magazine 40 (2020).
+Sources: K. J. Åström, T. Hägglund, Advanced PID Control (ISA 2006), sections 4.6 and 7.2, from memory; the
+disk margin: P. Seiler, A. Packard, P. Gahinet, An Introduction to Disk Margins, IEEE Control Systems Magazine
+40 (2020).
 """
 
 from __future__ import annotations
@@ -32,7 +33,10 @@ ROTATION_STEP_RAD = 0.2
 MAX_PEAK_POINTS = 200_000
 """Work bound: more points than this and a peak is not computed."""
 
-POINTS_AT_ONCE = 1000
+PARTS_AT_MOST = 40
+"""A step that dead time would divide into more parts is first divided by what its bound allows."""
+
+STEPS_AT_ONCE = 24
 
 PEAK_TIE = 1e-10
 """A step whose bound exceeds the largest value met by no more than this, relatively, is not searched."""
@@ -47,7 +51,9 @@ class WorkBoundError(Exception):
 
 @dataclass(frozen=True, slots=True)
 class Peak:
-    """A supremum over frequency; `omega` (in the loop's unit) is None where it is approached, not attained."""
+    """A supremum over frequency; `omega` (in the loop's unit) is None where it is approached, not
+    attained.
+    """
 
     value: float
     omega: float | None
@@ -116,7 +122,9 @@ def _phase_crossovers(axis: AxisResponse, unit_rad_s: float) -> tuple[tuple[Phas
 
 
 def _factors_at_the_ends(loop: OpenLoop) -> tuple[float | None, float | None]:
-    """1/abs L at ω = 0 and ω → ∞ where L is real and negative there (with dead time: any value is reached)."""
+    """1/abs L at ω = 0 and ω → ∞ where L is real and negative there (with dead time: any value is
+    reached).
+    """
     origin = infinity = None
     if loop.order_at_origin == 0 and loop.origin_coefficient < 0:
         origin = 1.0 / -loop.origin_coefficient
@@ -157,9 +165,10 @@ class Sensitivity:
         """Re d ln A/dω, shape of `omega` or one for all; `slope` is d ln L/dω."""
         return 0.0
 
-    def bound(self, magnitude: Reals, omega: Reals) -> Reals:
-        """An upper bound of abs A/(1+L) on each step of a grid `omega`, shape (k,), from the abs L in it that is
-        nearest to 1 without reaching it; shape (k − 1,)."""
+    def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
+        """An upper bound of abs A/(1+L) from `left` to `right`, where `magnitude` is the abs L nearest to 1;
+        (k,).
+        """
         return 1.0 / np.abs(1.0 - magnitude)
 
     def ends(self) -> list[float]:
@@ -182,7 +191,7 @@ class ComplementarySensitivity(Sensitivity):
         """Re d ln L/dω."""
         return slope.real
 
-    def bound(self, magnitude: Reals, omega: Reals) -> Reals:
+    def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
         """abs L/abs(1 − abs L)."""
         return magnitude / np.abs(1.0 - magnitude)
 
@@ -202,7 +211,7 @@ class DiskSensitivity(Sensitivity):
         """Re d ln(1 − L)/dω."""
         return (-slope * response / (1.0 - response)).real
 
-    def bound(self, magnitude: Reals, omega: Reals) -> Reals:
+    def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
         """(1 + abs L)/(2·abs(1 − abs L))."""
         return 0.5 * (1.0 + magnitude) / np.abs(1.0 - magnitude)
 
@@ -226,49 +235,88 @@ def end_values(loop: OpenLoop) -> list[float]:
     return values
 
 
+@dataclass(frozen=True, eq=False)
+class _Steps:
+    """Steps of a grid: ends and abs L at them, shapes (k,)."""
+
+    left: Reals
+    right: Reals
+    magnitude_left: Reals
+    magnitude_right: Reals
+
+    def only(self, chosen: Indices | npt.NDArray[np.bool_]) -> _Steps:
+        """Some of the steps."""
+        return _Steps(
+            self.left[chosen], self.right[chosen], self.magnitude_left[chosen], self.magnitude_right[chosen]
+        )
+
+    def bounds(self, quantity: Sensitivity) -> Reals:
+        """What each step cannot exceed, inf where abs L passes 1 in it; (k,)."""
+        low = np.minimum(self.magnitude_left, self.magnitude_right)
+        high = np.maximum(self.magnitude_left, self.magnitude_right)
+        bound = quantity.bound(np.where(high < 1.0, high, low), self.left, self.right)
+        return np.where((low < 1.0) == (high < 1.0), bound, np.inf)
+
+
 class PeakSearch:
     """Suprema of abs A/(1+L) over one axis, for several A.
 
-    abs A/(1+L) cannot exceed a bound that follows from abs L alone, so it is looked for only where that bound is
-    above the largest value met so far; there the points follow the rotation of dead time. Stationary points are
-    bracketed by the sign of d abs(A/(1+L))²/dω, which is smooth wherever L is, however sharp the peak.
+    abs A/(1+L) cannot exceed a bound that follows from abs L alone, so a step of the grid is searched only
+    where its bound is above the largest value met so far, and one in which dead time turns L many times is
+    divided first. In a step, stationary points are bracketed by the sign of d abs(A/(1+L))²/dω, which is
+    smooth wherever L is, however sharp the peak.
     """
 
     def __init__(self, axis: AxisResponse) -> None:
         self._axis = axis
         self._response = np.exp(axis.log_response)
         magnitude = np.abs(self._response)
-        self._low = np.minimum(magnitude[:-1], magnitude[1:])
-        self._high = np.maximum(magnitude[:-1], magnitude[1:])
-        step = np.diff(axis.omega)
-        self._parts = np.maximum(np.ceil(step * axis.loop.dead_time / ROTATION_STEP_RAD), 1.0)
+        self._steps = _Steps(axis.omega[:-1], axis.omega[1:], magnitude[:-1], magnitude[1:])
 
     def peak(self, quantity: Sensitivity) -> Peak:
         """The supremum. Raises WorkBoundError past the bound on points."""
         best = _ends_first(quantity)
         _, values = _growth(quantity, self._axis.omega, self._response, self._axis.log_slope)
         met = max(best.value, float(values[np.isfinite(values)].max(initial=0.0)))
-        bounds = self._bounds(quantity)
-        # the steps with the highest bounds first: what is met there mostly spares the rest
-        waiting = np.argsort(-bounds)
-        while (waiting := waiting[bounds[waiting] > met * (1 + PEAK_TIE)]).size:
-            share = max(1, int(np.searchsorted(np.cumsum(self._parts[waiting]), POINTS_AT_ONCE)))
-            for candidate in self._stationary(quantity, np.sort(waiting[:share])):
-                met = max(met, candidate.value)
-                # an end that only ties is a supremum that is approached; a peak must stand above it
-                if candidate.value > best.value * (1 + 1e-14):
-                    best = candidate
-            waiting = waiting[share:]
+        steps, bounds, work = self._steps, self._steps.bounds(quantity), 0
+        while (promising := bounds > met * (1 + PEAK_TIE)).any():
+            steps, bounds = steps.only(promising), bounds[promising]
+            parts = self._parts(steps)
+            narrow = np.flatnonzero(parts <= PARTS_AT_MOST)
+            if not narrow.size:
+                steps = self._divided(steps)
+                bounds, work = steps.bounds(quantity), work + len(bounds)
+            else:
+                # the highest bounds first: what is met there mostly spares the rest
+                chosen = narrow[np.argsort(-bounds[narrow])][:STEPS_AT_ONCE]
+                for candidate in self._stationary(quantity, steps.only(chosen), parts[chosen]):
+                    met = max(met, candidate.value)
+                    # an end that only ties is a supremum that is approached; a peak must stand above it
+                    if candidate.value > best.value * (1 + 1e-14):
+                        best = candidate
+                work += int(parts[chosen].sum())
+                rest = np.delete(np.arange(len(parts)), chosen)
+                steps, bounds = steps.only(rest), bounds[rest]
+            if work > MAX_PEAK_POINTS:
+                raise WorkBoundError("too many points to look for a peak")
         return best
 
-    def _bounds(self, quantity: Sensitivity) -> Reals:
-        """What each step of the grid cannot exceed, inf where abs L passes 1 in it."""
-        nearest = np.where(self._high < 1.0, self._high, self._low)
-        bound = quantity.bound(nearest, self._axis.omega)
-        return np.where((self._low < 1.0) == (self._high < 1.0), bound, np.inf)
+    def _parts(self, steps: _Steps) -> Reals:
+        """Into how many parts each step is divided so that L turns little in one."""
+        turned = (steps.right - steps.left) * self._axis.loop.dead_time
+        return np.maximum(np.ceil(turned / ROTATION_STEP_RAD), 1.0)
 
-    def _stationary(self, quantity: Sensitivity, steps: Indices) -> list[Peak]:
-        omega, joined = self._points(steps)
+    def _divided(self, steps: _Steps) -> _Steps:
+        """Each step in eight."""
+        share = np.linspace(0.0, 1.0, 9)
+        omega = steps.left[:, None] + (steps.right - steps.left)[:, None] * share
+        magnitude = np.exp(self._axis.loop.log_response(omega).real)
+        return _Steps(
+            omega[:, :-1].ravel(), omega[:, 1:].ravel(), magnitude[:, :-1].ravel(), magnitude[:, 1:].ravel()
+        )
+
+    def _stationary(self, quantity: Sensitivity, steps: _Steps, parts: Reals) -> list[Peak]:
+        omega, joined = _points(steps, parts.astype(int))
         loop = self._axis.loop
         logs, slope = loop.on_axis(omega)
         growth, _ = _growth(quantity, omega, np.exp(logs), slope)
@@ -285,21 +333,15 @@ class PeakSearch:
         _, values = _growth(quantity, at, np.exp(logs), slope)
         return [Peak(value, where) for value, where in zip(values.tolist(), at.tolist(), strict=True)]
 
-    def _points(self, index: Indices) -> tuple[Reals, npt.NDArray[np.bool_]]:
-        """Points that divide these steps of the grid, (k,), and whether a point is joined to the next, (k − 1,)."""
-        omega = self._axis.omega
-        parts = self._parts[index]
-        if parts.sum() > MAX_PEAK_POINTS:
-            raise WorkBoundError("too many points to look for a peak")
-        parts = parts.astype(int)
-        count = parts + 1
-        within = np.arange(count.sum()) - np.repeat(np.cumsum(count) - count, count)
-        share = within / np.repeat(parts, count)
-        low, high = np.repeat(omega[index], count), np.repeat(omega[index + 1], count)
-        points = low + (high - low) * share
-        # the last point of a step is the first of the next: not a step of its own
-        joined = within[1:] > 0
-        return points, joined
+
+def _points(steps: _Steps, parts: Indices) -> tuple[Reals, npt.NDArray[np.bool_]]:
+    """Points that divide the steps, (k,), and whether a point is joined to the next, (k − 1,)."""
+    count = parts + 1
+    within = np.arange(count.sum()) - np.repeat(np.cumsum(count) - count, count)
+    low, high = np.repeat(steps.left, count), np.repeat(steps.right, count)
+    points = low + (high - low) * (within / np.repeat(parts, count))
+    # the last point of a step is the first of the next: not a step of its own
+    return points, within[1:] > 0
 
 
 def _ends_first(quantity: Sensitivity) -> Peak:

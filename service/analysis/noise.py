@@ -35,16 +35,18 @@ class ControlSensitivity(Sensitivity):
         """d ln abs C·F/dω."""
         return self._log_slope(omega)
 
-    def bound(self, magnitude: Reals, omega: Reals) -> Reals:
-        """Largest abs C·F of the step/abs(1 − abs L), with an allowance where abs C·F has a maximum inside."""
-        numerator = np.exp(self._log_magnitude(omega))
-        largest = np.maximum(numerator[:-1], numerator[1:])
-        slope = np.asarray(self._log_slope(omega))
-        turns = (slope[:-1] > 0) & (slope[1:] < 0)
+    def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
+        """Largest abs C·F of the step/abs(1 − abs L), with an allowance where abs C·F has a maximum
+        inside.
+        """
+        largest = np.exp(np.maximum(self._log_magnitude(left), self._log_magnitude(right)))
+        turns = (self._log_slope(left) > 0) & (self._log_slope(right) < 0)
         return np.where(turns, NUMERATOR_ALLOWANCE, 1.0) * largest / np.abs(1.0 - magnitude)
 
     def ends(self) -> list[float]:
-        """abs of C·F/(1+L) at ω = 0 and the values it tends to as ω grows; inf where it grows without bound."""
+        """abs of C·F/(1+L) at ω = 0 and the values it tends to as ω grows; inf where it grows without
+        bound.
+        """
         return [self._at_origin(), *self._at_infinity()]
 
     def high_frequency(self) -> float:

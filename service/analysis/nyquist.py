@@ -1,13 +1,13 @@
 """Route A: unstable roots of the closed loop counted by the argument principle on the axis (Nyquist).
 
-The closed loop's characteristic function is D(s) + N(s)·e^(−sθ) = D(s)·(1 + L(s)). Its argument along the axis is
-known without sampling: where abs L < 1 it is arg D + Arg(1 + L), where abs L > 1 it is arg N − ωθ + Arg(1 + 1/L),
-both principal values being less than a quarter turn off. So it changes form at the gain crossovers alone, and a
-complete list of those gives the exact count. Poles on the axis lie where abs L > 1 and need no indentation: their
-factors stand in the other form.
+The closed loop's characteristic function is D(s) + N(s)·e^(−sθ) = D(s)·(1 + L(s)). Its argument along the
+axis is known without sampling: where abs L < 1 it is arg D + Arg(1 + L), where abs L > 1 it is arg N − ωθ +
+Arg(1 + 1/L), both principal values being less than a quarter turn off. So it changes form at the gain
+crossovers alone, and a complete list of those gives the exact count. Poles on the axis lie where abs L > 1
+and need no indentation: their factors stand in the other form.
 
-Source: the argument principle as used by Nyquist (Bell System Technical Journal 11, 1932) and, for quasi-polynomials,
-by Mikhailov; see Stépán, Retarded Dynamical Systems (1989), section 2. From memory.
+Source: the argument principle as used by Nyquist (Bell System Technical Journal 11, 1932) and, for
+quasi-polynomials, by Mikhailov; see Stépán, Retarded Dynamical Systems (1989), section 2. From memory.
 """
 
 from __future__ import annotations
@@ -120,7 +120,9 @@ def _above_one(axis: AxisResponse, edges: Reals) -> list[bool]:
 
 
 def _forms(loop: OpenLoop, omega: Reals) -> tuple[Reals, Reals]:
-    """The argument in the form for abs L < 1 and in the form for abs L > 1, at crossovers, where both hold."""
+    """The argument in the form for abs L < 1 and in the form for abs L > 1, at crossovers, where both
+    hold.
+    """
     denominator = log_factors(omega, loop.poles).imag
     response = loop.log_response(omega).imag
     half = 0.5 * _wrapped(response)

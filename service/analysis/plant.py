@@ -68,7 +68,9 @@ class FirstOrder(_Surroundings):
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class SecondOrder(_Surroundings):
-    """K·(1+Tl·s)/((1+T1·s)(1+T2·s)), or natural frequency and damping ratio in place of the time constants."""
+    """K·(1+Tl·s)/((1+T1·s)(1+T2·s)), or natural frequency and damping ratio in place of the time
+    constants.
+    """
 
     kind: Literal["second_order"]
     gain: float

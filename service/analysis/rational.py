@@ -62,7 +62,8 @@ def polynomial_roots(coefficients: tuple[float, ...]) -> tuple[complex, ...]:
     """Roots of a polynomial, highest power first, leading coefficient not 0; roots at the origin exact.
 
     Eigenvalues of the companion matrix after the variable has been scaled so that the first and the last
-    coefficient have one magnitude; otherwise slow units push small coefficients below the rounding of large ones.
+    coefficient have one magnitude; otherwise slow units push small coefficients below the rounding of large
+    ones.
     """
     at_origin = 0
     while coefficients[-1] == 0:

@@ -1,6 +1,7 @@
 """The loop as a state space, every state that it has: plant sections in a row, filter, controller.
 
-    ẋ = A·x + b_w·w + b_r·SP,   u = c_u·x + d_u·w + d_r·SP,   PV = c_y·x + d_y·w,   w(t) = u(t − θ) + load(t − θ)
+    ẋ = A·x + b_w·w + b_r·SP,   u = c_u·x + d_u·w + d_r·SP,   PV = c_y·x + d_y·w,   w(t) = u(t − θ) + load(t −
+    θ)
 
 The plant is a cascade of first and second-order sections with real coefficients, so that no polynomial is
 multiplied out. Hidden factors keep their states.
@@ -46,7 +47,8 @@ class StateSpace:
 
 
 def realise(parts: ClosedLoopParts) -> StateSpace | None:
-    """The state space of a loop in its own unit of time; None where the controller's derivative has no filter and
+    """The state space of a loop in its own unit of time; None where the controller's derivative has no filter
+    and
     the plant passes a step at once, since then no response exists."""
     ap, bp, cp, dp = _cascade(parts.plant)
     terms, setpoint = parts.feedback, parts.setpoint
@@ -151,7 +153,9 @@ def _first_order(pole: float, zero: float | None) -> Section:
 
 
 def _second_order(first: complex, second: complex, numerator: list[float]) -> Section:
-    """(n2·s² + n1·s + n0)/((s − first)(s − second)), states 1/(s − …) and 1/((s − …)(s − …)) or a rotating pair."""
+    """(n2·s² + n1·s + n0)/((s − first)(s − second)), states 1/(s − …) and 1/((s − …)(s − …)) or a rotating
+    pair.
+    """
     n2, n1, n0 = numerator
     if first.imag == 0:
         p, q = first.real, second.real

@@ -58,10 +58,11 @@ def recompute(
 ) -> Recomputation:
     """Recompute stability, margins, step metrics and noise of one loop.
 
-    Raises FieldError, its path starting with "plant_model", "controller" or "ranges", where the loop cannot be
-    formed: ranges missing for engineering units, an ill-posed loop, a plant kind that is not analysed.
+    Raises FieldError, its path starting with "plant_model", "controller" or "ranges", where the loop cannot
+    be formed: ranges missing for engineering units, an ill-posed loop, a plant kind that is not analysed.
     """
-    # zeros and poles on the axis, and what lies beyond float64, show as inf and nan on the way and are met there
+    # zeros and poles on the axis, and what lies beyond float64, show as inf and nan on the way and are met
+    # there
     with np.errstate(all="ignore"):
         return _recompute(plant_model, controller, ranges, settling_band_percent, with_curves)
 

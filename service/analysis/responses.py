@@ -1,17 +1,17 @@
 """Step responses of the closed loop, dead time exact, as polynomial pieces.
 
-With dead time: the method of steps. On each interval of one dead time the delayed input is known from the interval
-before, and the states follow by Chebyshev collocation; the map from one interval to the next is constant. Intervals
-are divided as the open loop's own modes ask, finer after each kink. When the roots left out have died away the
-response goes on as the series of the residues at the rightmost characteristic roots; the series is compared with the
-march on its last interval before it is used.
+With dead time: the method of steps. On each interval of one dead time the delayed input is known from the
+interval before, and the states follow by Chebyshev collocation; the map from one interval to the next is
+constant. Intervals are divided as the open loop's own modes ask, finer after each kink. When the roots left
+out have died away the response goes on as the series of the residues at the rightmost characteristic roots;
+the series is compared with the march on its last interval before it is used.
 
 Without dead time: matrix exponentials at the nodes of a piece, doubled as the faster modes die; that needs no
 eigenvectors, so that multiple roots do no harm.
 
-Sources: A. Bellen, M. Zennaro, Numerical Methods for Delay Differential Equations (Oxford 2003), for the method of
-steps; C. Moler, C. Van Loan, Nineteen dubious ways to compute the exponential of a matrix, SIAM Review 45 (2003), for
-scaling and squaring. From memory.
+Sources: A. Bellen, M. Zennaro, Numerical Methods for Delay Differential Equations (Oxford 2003), for the
+method of steps; C. Moler, C. Van Loan, Nineteen dubious ways to compute the exponential of a matrix, SIAM
+Review 45 (2003), for scaling and squaring. From memory.
 """
 
 from __future__ import annotations
@@ -51,14 +51,21 @@ LEFT_OUT_DIED_AWAY = 32.0
 """Roots left of the line are left out of the residue series after so many of its time constants."""
 
 HAND_OVER = 1e-9
-"""How well the residue series must meet the march, relative to the largest value, to take over."""
+"""How well the residue series must meet the march in PV, relative to the largest value, to take over."""
+
+OUTPUT_HAND_OVER = 1e-6
+"""The same in the output, where a derivative with a short filter multiplies PV's rounding."""
+
+ROUNDING = 1e-14
+"""What float64 leaves of a sum of terms of size 1."""
 
 
 @dataclass(frozen=True, eq=False)
 class Responses:
     """Set-point and load response in pieces, in the loop's own unit of time.
 
-    `start`, `length`: (p,). `pv`, `output`: (2, p, NODES), set point first, at Chebyshev points of each piece.
+    `start`, `length`: (p,). `pv`, `output`: (2, p, NODES), set point first, at Chebyshev points of each
+    piece.
     `final_pv`, `final_output`: (2,). `complete`: the pieces end where nothing moves any more, or where the
     oscillation in `pv_tails` and `output_tails` (about the final values) is all that moves.
     """
@@ -108,7 +115,9 @@ class _Known:
 
 @dataclass(frozen=True, slots=True)
 class _Plan:
-    """How long pieces are needed: until `end`, where all has died away or `oscillation` (a root) alone is left."""
+    """How long pieces are needed: until `end`, where all has died away or `oscillation` (a root) alone is
+    left.
+    """
 
     end: float
     oscillation: complex | None
@@ -143,12 +152,12 @@ def _in_pieces(known: _Known, plan: _Plan) -> Responses:
 
 def _at_rest(responses: Responses) -> bool:
     """Whether the last value is the final one: the pieces' own word that they are complete."""
-    for values, final in (
-        (responses.pv, responses.final_pv),
-        (responses.output, responses.final_output),
+    for values, final, share in (
+        (responses.pv, responses.final_pv, HAND_OVER),
+        (responses.output, responses.final_output, OUTPUT_HAND_OVER),
     ):
         scale = np.maximum(np.abs(values).max(axis=(1, 2)), np.abs(final))
-        if np.any(np.abs(values[:, -1, -1] - final) > HAND_OVER * scale):
+        if np.any(np.abs(values[:, -1, -1] - final) > share * scale):
             return False
     return True
 
@@ -170,7 +179,8 @@ def _with_tails(responses: Responses, known: _Known, root: complex) -> Responses
             tail = Tail(begin, root, complex(amplitudes[which, index]) * turned)
             gap = abs(float(values[which, -1, -1] - final[which]) - tail.value(0.0))
             scale = float(np.abs(values[which]).max())
-            if gap > HAND_OVER * tail.envelope + 1e-12 * scale:
+            share = HAND_OVER if amplitudes is series.pv else OUTPUT_HAND_OVER
+            if gap > share * tail.envelope + 1e-12 * scale:
                 return None
             tails.append(tail)
     return replace(responses, pv_tails=(tails[0], tails[1]), output_tails=(tails[2], tails[3]))
@@ -180,7 +190,9 @@ Pieces = tuple[Reals, Reals, Reals, Reals, bool]
 
 
 def _final_values(space: StateSpace) -> tuple[Reals, Reals]:
-    """Where PV and output come to rest, (2,) each: the closed loop's equilibrium, in which dead time plays no part."""
+    """Where PV and output come to rest, (2,) each: the closed loop's equilibrium, in which dead time plays no
+    part.
+    """
     closed, k = space.closed_without_dead_time()
     forcing = np.column_stack([space.b_r + k * space.d_r * space.b_w, k * space.b_w])
     states = -np.linalg.solve(closed, forcing) if space.order else np.zeros((0, 2))
@@ -213,7 +225,9 @@ def _without_dead_time(known: _Known, plan: _Plan) -> Pieces:
 
 
 def _augmented(space: StateSpace) -> tuple[Reals, Reals]:
-    """The closed loop with its two constant inputs as states, (n+2, n+2), and the rows of PV and output, (2, n+2)."""
+    """The closed loop with its two constant inputs as states, (n+2, n+2), and the rows of PV and output, (2,
+    n+2).
+    """
     closed, k = space.closed_without_dead_time()
     n = space.order
     matrix, rows = np.zeros((n + 2, n + 2)), np.zeros((2, n + 2))
@@ -339,10 +353,15 @@ class _March:
         begin = self.time - self.dead_time
         starts = begin + np.concatenate([[0.0], np.cumsum(self._lengths)[:-1]])
         continued = known.series.values(starts, np.array(self._lengths), known.final)
-        for own, theirs, final in zip((self._pvs, self._outputs), continued, known.final, strict=True):
-            scale = np.maximum(np.abs(_stacked(own)).max(axis=(1, 2)), np.abs(final))
-            gap = np.abs(_stacked(own[-self.pieces_each :]) - theirs).max(axis=(1, 2))
-            if np.any(gap > HAND_OVER * scale):
+        own = (
+            (self._pvs, known.series.pv, HAND_OVER),
+            (self._outputs, known.series.output, OUTPUT_HAND_OVER),
+        )
+        for (marched, amplitudes, share), theirs, final in zip(own, continued, known.final, strict=True):
+            scale = np.maximum(np.abs(_stacked(marched)).max(axis=(1, 2)), np.abs(final))
+            rounding = ROUNDING * np.abs(amplitudes).sum(axis=1)
+            gap = np.abs(_stacked(marched[-self.pieces_each :]) - theirs).max(axis=(1, 2))
+            if np.any(gap > share * scale + rounding):
                 return False
         return True
 
@@ -366,7 +385,9 @@ def _stacked(pieces: list[Reals]) -> Reals:
 
 
 def _divided_dead_time(parts: ClosedLoopParts) -> list[float]:
-    """Lengths that divide one dead time, halves of halves, each short against every mode not yet died away."""
+    """Lengths that divide one dead time, halves of halves, each short against every mode not yet died
+    away.
+    """
     poles = np.array(parts.plant.poles_rad_s + parts.controller.poles_rad_s, dtype=complex)
     poles[len(parts.plant.poles_rad_s) :] /= parts.unit_rad_s
     if parts.measurement_filter > 0:
@@ -389,7 +410,8 @@ def _fastest(modes: Complexes, time: float) -> float:
 
 
 def _collocation_map(space: StateSpace, length: float) -> Reals:
-    """From (states at the start, delayed input at the nodes, set point) to (states at the end, output and PV at the
+    """From (states at the start, delayed input at the nodes, set point) to (states at the end, output and PV
+    at the
     nodes), shape (n + 2·NODES, n + NODES + 1)."""
     n, differentiate = space.order, chebyshev.differentiation(NODES)
     known = n + NODES + 1
@@ -413,7 +435,9 @@ def _collocation_map(space: StateSpace, length: float) -> Reals:
 
 @dataclass(frozen=True, eq=False)
 class _ResidueSeries:
-    """PV and output as Σ Re(amplitude·e^(root·t)) about the final value; amplitudes (2, m), a pair counted once."""
+    """PV and output as Σ Re(amplitude·e^(root·t)) about the final value; amplitudes (2, m), a pair counted
+    once.
+    """
 
     roots: Complexes
     pv: Complexes
@@ -423,8 +447,8 @@ class _ResidueSeries:
     def of(parts: ClosedLoopParts, found: CharacteristicRoots) -> _ResidueSeries | None:
         """The series over all roots right of the line; None where a cancelled pole is multiple.
 
-        At a root of 1 + L the plant with its dead time is −direction/(C·F), and the derivative of L is −Λ with
-        Λ = d ln L/ds; so every residue follows from the controller and Λ alone.
+        At a root of 1 + L the plant with its dead time is −direction/(C·F), and the derivative of L is −Λ
+        with Λ = d ln L/ds; so every residue follows from the controller and Λ alone.
         """
         s = found.roots
         feedback = _controller_at(parts.feedback, s)

@@ -197,7 +197,8 @@ class EquivalentTerms:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class EquivalentGains:
-    """The same feedback path in one form; `controller` is None where that form has none, and `reason` says why.
+    """The same feedback path in one form; `controller` is None where that form has none, and `reason` says
+    why.
 
     Where the feedback path is the same but the set-point path differs, `reason` says so.
     """

@@ -1,9 +1,9 @@
 """Route B: characteristic roots of the closed loop, dead time exact.
 
-The infinitesimal generator of the closed loop as a delay system is discretised by Chebyshev collocation of the
-delayed controller output [1]; its eigenvalues are starting points only, and each is polished by Newton on
-D(s) + N(s)·e^(−sθ) itself. In the right half plane a root needs abs N/D ≥ 1, which bounds its frequency and so the
-number of nodes that resolve all of them.
+The infinitesimal generator of the closed loop as a delay system is discretised by Chebyshev collocation of
+the delayed controller output [1]; its eigenvalues are starting points only, and each is polished by Newton on
+D(s) + N(s)·e^(−sθ) itself. In the right half plane a root needs abs N/D ≥ 1, which bounds its frequency and
+so the number of nodes that resolve all of them.
 
 [1] D. Breda, S. Maset, R. Vermiglio, Pseudospectral differencing methods for characteristic roots of delay
     differential equations, SIAM J. Sci. Comput. 27 (2005) 482-495; Stability of Linear Delay Differential
@@ -45,7 +45,8 @@ FAR_ENOUGH = -0.3
 class CharacteristicRoots:
     """Roots on and above the real axis, rightmost first, complex, shape (m,), in the loop's own unit of time.
 
-    `complete_right_of`: every root right of this line is in the list (counted there by the argument principle).
+    `complete_right_of`: every root right of this line is in the list (counted there by the argument
+    principle).
     Hidden roots are not included. `count` is this route's own count right of the axis.
     """
 
@@ -80,8 +81,8 @@ def _with_nodes(space: StateSpace | None, loop: OpenLoop, nodes: int) -> Charact
     roots = roots[np.lexsort((np.abs(roots.imag), -roots.real))]
     if loop.dead_time == 0:
         return CharacteristicRoots(roots, -math.inf, _count(loop, roots))
-    roots = roots[np.abs(roots.imag) * loop.dead_time <= 0.7 * nodes]
     count = _count(loop, roots)
+    roots = roots[np.abs(roots.imag) * loop.dead_time <= _resolved(nodes)]
     if count.roots is None:
         return CharacteristicRoots(roots, math.inf, count)
     kept, line = _verified(loop, roots)
@@ -129,13 +130,19 @@ def _node_counts(axis: AxisResponse) -> list[int]:
     for level in LEVELS:
         above = axis.omega[axis.log_response.real >= -level]
         highest = float(above[-1]) if above.size else 0.0
-        count = FEWEST_NODES + math.ceil(0.9 * highest * axis.loop.dead_time)
+        angle = highest * axis.loop.dead_time
+        count = FEWEST_NODES + math.ceil(0.5 * angle + 3.0 * angle ** (1 / 3))
         # a loop that does not roll off is above a low level for ever
         if not (above.size and above[-1] == axis.omega[-1]) and count <= MAX_NODES:
             counts.append(count)
     needed = [count for count in sorted(set(counts)) if count > FEW_NODES]
     cheap = [count for count in counts if count <= FEW_NODES]
     return ([max(cheap)] if cheap else []) + needed
+
+
+def _resolved(nodes: int) -> float:
+    """Up to which angle ωθ so many nodes resolve e^(jωt) over one dead time: π nodes a turn, and a fringe."""
+    return 2.0 * (nodes - 3.0 * nodes ** (1 / 3))
 
 
 def _starts(space: StateSpace | None, loop: OpenLoop, nodes: int) -> Complexes:
@@ -182,8 +189,9 @@ def _characteristic_polynomial(loop: OpenLoop) -> Reals:
 def _polished(loop: OpenLoop, starts: Complexes) -> Complexes:
     """Newton on ln(−L) = 0, which is nearly linear along the chain of roots that dead time makes.
 
-    `starts` on and above the real axis; a start off the axis stands for a pair. Without dead time every start is a
-    root, so one that Newton does not settle is kept as it is: at a multiple root it is right to half the digits.
+    `starts` on and above the real axis; a start off the axis stands for a pair. Without dead time every start
+    is a root, so one that Newton does not settle is kept as it is: at a multiple root it is right to half the
+    digits.
     """
     at, step = starts.copy(), np.zeros_like(starts)
     real = starts.imag == 0
@@ -248,7 +256,9 @@ def _with_conjugates(roots: Complexes) -> int:
 
 
 def _verified(loop: OpenLoop, roots: Complexes) -> tuple[Complexes, float]:
-    """As many of the rightmost roots as the argument principle confirms to be all right of a line, and the line."""
+    """As many of the rightmost roots as the argument principle confirms to be all right of a line, and the
+    line.
+    """
     target = -2.6 / loop.dead_time
     keep = int(np.count_nonzero(roots.real > target))
     keep = min(max(keep, min(8, len(roots) - 1)), len(roots) - 1)

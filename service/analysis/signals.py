@@ -28,7 +28,8 @@ Indices = npt.NDArray[np.intp]
 
 @dataclass(frozen=True, eq=False)
 class Passage:
-    """A time at which a signal passes a level: known, or to be solved for in one piece between `low` and `high`.
+    """A time at which a signal passes a level: known, or to be solved for in one piece between `low` and
+    `high`.
 
     `row`: (NODES,), the signal less the level; it changes sign once between the two places.
     """
@@ -44,8 +45,10 @@ class Passage:
 class Signal:
     """One signal: `values` (p, NODES), its turning points in order of time, and the oscillation that follows.
 
-    `turning_pieces`, `turning_places` (0 to 1), `turning_values`: (m,); both ends of every piece are among them.
-    `tail` is about the value at which the signal ends, which `values` must have at its end as 0 where it is used.
+    `turning_pieces`, `turning_places` (0 to 1), `turning_values`: (m,); both ends of every piece are among
+    them.
+    `tail` is about the value at which the signal ends, which `values` must have at its end as 0 where it is
+    used.
     """
 
     start: Reals

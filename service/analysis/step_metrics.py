@@ -1,8 +1,8 @@
 """Metrics of both step responses, each at a root or turning point of the response itself.
 
 Definitions are the interface's: rise time from the first passage of 10 % to that of 90 % of the final value;
-settling time the last time outside the band about the final value; overshoot and undershoot from the supremum and
-infimum; integrals of SP − PV; the output's travel with its jump at t = 0.
+settling time the last time outside the band about the final value; overshoot and undershoot from the supremum
+and infimum; integrals of SP − PV; the output's travel with its jump at t = 0.
 """
 
 from __future__ import annotations

@@ -1,7 +1,7 @@
 """The end of a response, when one decaying oscillation is all that is left of it, in closed form.
 
-x(τ) = Re(A·e^(s·τ)), τ ≥ 0, s = −σ + jω with σ, ω > 0. Its turning points are half a period π/ω apart and shrink by
-q = e^(−σπ/ω), so every sum over them is geometric.
+x(τ) = Re(A·e^(s·τ)), τ ≥ 0, s = −σ + jω with σ, ω > 0. Its turning points are half a period π/ω apart and
+shrink by q = e^(−σπ/ω), so every sum over them is geometric.
 """
 
 from __future__ import annotations
@@ -57,7 +57,9 @@ class Tail:
         return absolute, square, self.begin * absolute + self._first_moment(), -integral.amplitude.real
 
     def last_exit(self, band: float) -> float | None:
-        """The last time (from the step) at which abs x is above `band`; None where it never is from `begin` on."""
+        """The last time (from the step) at which abs x is above `band`; None where it never is from `begin`
+        on.
+        """
         turn_at = self.first_turn()
         turn = abs(self.value(turn_at))
         if turn > band:
@@ -78,7 +80,8 @@ class Tail:
         turn = abs(self.value(self.first_turn()))
         if turn < band * (1 - share):
             return False
-        # turning values fall by q; one lies in the strip exactly if the strip, in logarithms, holds a multiple
+        # turning values fall by q; one lies in the strip exactly if the strip, in logarithms, holds a
+        # multiple
         step = -math.log(self.ratio)
         first = math.ceil(math.log(turn / (band * (1 + share))) / step)
         last = math.floor(math.log(turn / (band * (1 - share))) / step)

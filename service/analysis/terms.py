@@ -1,8 +1,8 @@
 """What the entered gains mean: every form brought to signed parallel terms and to zeros, poles and gain.
 
-C(s) = Kp + Ki/s + Kd·s/(1+Tf·s) holds any of the four forms exactly when the terms may be negative; so does the
-set-point path, with the same Ki and Tf. The zeros are taken from the form as it was entered wherever the form
-shows them, since the way over the parallel terms would lose digits.
+C(s) = Kp + Ki/s + Kd·s/(1+Tf·s) holds any of the four forms exactly when the terms may be negative; so does
+the set-point path, with the same Ki and Tf. The zeros are taken from the form as it was entered wherever the
+form shows them, since the way over the parallel terms would lose digits.
 """
 
 from __future__ import annotations
@@ -127,7 +127,9 @@ def weights(controller: Controller) -> SetpointWeight:
 
 
 def controller_terms(controller: Controller) -> ControllerTerms:
-    """The signed terms, zeros, poles and gain of an entered controller, in the controller's own gain basis."""
+    """The signed terms, zeros, poles and gain of an entered controller, in the controller's own gain
+    basis.
+    """
     match controller:
         case IdealController():
             return _ideal(controller)
