@@ -10,6 +10,7 @@ from service.figures.frequency import TITLE
 from service.figures.responses import Response, number
 from service.judgement.digits import three_digits
 
+TELLING_PEAK = 1000.0
 ROWS = 11
 """Rows of a table: enough to tell how a response runs, few enough to be read aloud."""
 
@@ -85,14 +86,21 @@ def _describe_load(metrics: LoadStep) -> str:
 
 
 def _describe_frequency(curve: FrequencyCurve) -> str:
-    peak = max(curve.sensitivity)
-    at = three_digits(curve.rad_s[curve.sensitivity.index(peak)])
     first, last = three_digits(curve.rad_s[0]), three_digits(curve.rad_s[-1])
     start, end = three_digits(curve.magnitude[0]), three_digits(curve.magnitude[-1])
     return (
-        f"{TITLE}, from {first} to {last} rad/s. The loop gain |L| runs from {start} to {end}. "
-        f"The sensitivity |S| is largest near {at} rad/s: {three_digits(peak)} at the drawn points."
+        f"{TITLE}, from {first} to {last} rad/s. The loop gain |L| runs from {start} to {end}."
+        f"{_sensitivity_peak(curve)}"
     )
+
+
+def _sensitivity_peak(curve: FrequencyCurve) -> str:
+    """Nothing for a loop on the edge of stability: its peak is an accident of the drawn points."""
+    peak = max(curve.sensitivity)
+    if peak > TELLING_PEAK:
+        return ""
+    at = three_digits(curve.rad_s[curve.sensitivity.index(peak)])
+    return f" The sensitivity |S| is largest near {at} rad/s: {three_digits(peak)} at the drawn points."
 
 
 def _rest(final_value: Quantity) -> str:

@@ -305,7 +305,7 @@ def _claim(claim: ClaimFinding) -> ClaimRow:
         name=_capital(wording.quantity_label(claim.name)),
         claimed=_minus(wording.with_unit(claim.name, claimed, told)),
         recomputed=_minus(wording.told(claim.name, claim.recomputed)),
-        outcome=f"{CLAIM_SYMBOLS[claim.outcome]} (within {claim.tolerance})",
+        outcome=f"{CLAIM_SYMBOLS[claim.outcome]} (tolerance {claim.tolerance})",
     )
 
 

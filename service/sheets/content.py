@@ -24,7 +24,14 @@ from service.records.content import (
     SignedModel,
     SignedRecomputation,
 )
-from service.records.views import Comparison, CurvesView, DecisionView, InstallationView, SubmissionView
+from service.records.views import (
+    Comparison,
+    CurvesView,
+    DecisionView,
+    EntryReference,
+    InstallationView,
+    SubmissionView,
+)
 from service.sheets import controllers, plants
 from service.sheets.assessments import Assessment, assessment
 from service.sheets.cautions import Cautions, cautions
@@ -50,16 +57,6 @@ NOT_ANALYSED = "recorded, not analysed"
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
-class Checkpoint:
-    """The state of the whole history that this record lies in; `signature` None where no key is set."""
-
-    origin: str
-    size: int
-    root: str
-    signature: str | None
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
 class GainLine:
     """One line of the gains table: the new value beside the one before, which may not be on record."""
 
@@ -77,6 +74,7 @@ class GainTable:
     """One set of gains as entered, and what has to stand on the display beside it."""
 
     condition: str
+    before_heading: str
     gains: tuple[GainLine, ...]
     settings: tuple[GainLine, ...]
     """`before` only where it differs."""
@@ -118,7 +116,6 @@ class SheetContent:
     summary: str
     """Verdict and limits in one line, for the first page."""
     summary_good: bool
-    before_heading: str
     tables: tuple[GainTable, ...]
     cautions: tuple[Cautions, ...]
     loop: tuple[Told, ...]
@@ -143,7 +140,6 @@ def content_of(
     curves: Sequence[CurvesView] = (),
     *,
     curves_in_force: Sequence[CurvesView] = (),
-    checkpoint: Checkpoint | None = None,
     demonstration: bool = False,
 ) -> SheetContent:
     """Tell a record on paper.
@@ -164,7 +160,6 @@ def content_of(
         conditions=tuple(_conditions(view)),
         summary=summary,
         summary_good=good,
-        before_heading="BEFORE: the way back" if signed.gains_in_force else "BEFORE: not on record",
         tables=tuple(_tables(view)),
         cautions=cautions(
             [each.answer.recomputation.facts for each in signed.recomputations], signed.loop.inner_loop
@@ -186,8 +181,8 @@ def content_of(
         no_signature="" if view.decisions else "Nobody has signed this record.",
         installations=tuple(_installation(each) for each in view.installations),
         version=tuple(_version(view)),
-        digests=tuple(_digests(view, checkpoint)),
-        code=_code(view, checkpoint),
+        digests=tuple(_digests(view)),
+        code=_code(view),
     )
 
 
@@ -234,12 +229,13 @@ def _summary(signed: SignedContent) -> tuple[bool, str]:
         "stable": "The recomputed loop is stable.",
     }[verdict]
     outcomes = [worst.finding.outcome for worst in signed.criteria]
-    not_met, not_assessed = outcomes.count("not_met"), outcomes.count("not_assessed")
-    if not_met or not_assessed:
-        told += f" Of {len(outcomes)} limits, {not_met} are NOT MET and {not_assessed} were not assessed."
+    counts = ((outcomes.count("not_met"), "NOT MET"), (outcomes.count("not_assessed"), "NOT ASSESSED"))
+    failed = [f"{count} {words}" for count, words in counts if count]
+    if failed:
+        told += f" Limits: {' and '.join(failed)}, of {len(outcomes)}."
     else:
-        told += f" All {len(outcomes)} limits are met." if outcomes else " It was held against no limit."
-    return verdict == "stable" and bool(outcomes) and not (not_met or not_assessed), told
+        told += f" Limits: all {len(outcomes)} met." if outcomes else " It was held against NO LIMIT."
+    return verdict == "stable" and bool(outcomes) and not failed, told
 
 
 def _conditions(view: SubmissionView) -> Iterator[str]:
@@ -265,6 +261,7 @@ def _tables(view: SubmissionView) -> Iterator[GainTable]:
         changes = _changes(view.comparisons[index]) if index < len(view.comparisons) else {}
         yield GainTable(
             condition=_condition(gain_set),
+            before_heading="BEFORE: the way back" if before else "BEFORE: not on record",
             gains=tuple(
                 replace(line, change=_change(line, changes))
                 for line in _lines(controllers.gains(new), controllers.gains(old) if old else ())
@@ -308,11 +305,14 @@ _SETTINGS = {
 
 
 def _before(signed: SignedContent, index: int) -> tuple[SignedGains | None, int]:
-    """The set of gains that this one takes the place of, and its index: the one for the same condition."""
+    """The set of gains that this one takes the place of, and its index.
+
+    It is the one for the same condition, or the one that held under every condition.
+    """
     if signed.gains_in_force:
         condition = signed.gain_sets[index].condition
         for place, earlier in enumerate(signed.gains_in_force.gain_sets):
-            if earlier.condition == condition:
+            if earlier.condition in (condition, None):
                 return earlier, place
     return None, -1
 
@@ -330,9 +330,8 @@ def _lines(new: Sequence[Told], old: Sequence[Told]) -> tuple[GainLine, ...]:
     for told in new:
         before = earlier.pop(_key(told), None)
         lines.append(_line(told.name, told, before if before else _absent(old)))
-    lines += [
-        _line(told.name, Told(name=told.name, value=controllers.NONE), told) for told in earlier.values()
-    ]
+    gone = (told for told in earlier.values() if told.value != controllers.NONE)
+    lines += [_line(told.name, Told(name=told.name, value=controllers.NONE), told) for told in gone]
     return tuple(lines)
 
 
@@ -366,7 +365,7 @@ def _loop(loop: LoopRegistration, revision: int) -> Iterator[Told]:
         yield Told(name="Fail position", value=loop.fail_position)
     if loop.inner_loop:
         yield Told(name="Cascade, secondary loop", value=f"{loop.inner_loop.tag} ({loop.inner_loop.site})")
-    yield Told(name="Revision of the loop's entry", value=str(revision))
+    yield Told(name="Loop revision", value=str(revision))
 
 
 def _request(signed: SignedContent) -> Iterator[Told]:
@@ -466,45 +465,32 @@ _SAVED = {
 def _version(view: SubmissionView) -> Iterator[Told]:
     latest = _latest(view)
     yield Told(name="Record", value=view.id)
-    yield Told(name="State as of history entry", value=f"{latest[0]} ({utc(latest[2])})")
+    yield Told(name="State as of history entry", value=f"{latest.number} ({utc(latest.time)})")
     if view.content.gains_in_force:
         yield Told(name="Takes the place of record", value=view.content.gains_in_force.submission_id)
     else:
         yield Told(name="Takes the place of record", value="none: no earlier gains on record")
-    yield Told(name="Layout of the sheet", value=f"version {RENDERER_VERSION}")
+    yield Told(name="Layout", value=RENDERER_VERSION)
 
 
-def _digests(view: SubmissionView, checkpoint: Checkpoint | None) -> Iterator[Told]:
+def _digests(view: SubmissionView) -> Iterator[Told]:
     yield Told(name="Digest of the content", value=view.content_digest)
     yield Told(name=f"Digest of history entry {view.entry.number}", value=view.entry.digest)
     latest = _latest(view)
-    if latest[0] != view.entry.number:
-        yield Told(name=f"Digest of history entry {latest[0]}", value=latest[1])
-    if checkpoint:
-        yield Told(name="Checkpoint of the history", value=_checkpoint(checkpoint))
-        yield Told(
-            name="Signature of the checkpoint", value=checkpoint.signature or "none: no signing key is set"
-        )
+    if latest.number != view.entry.number:
+        yield Told(name=f"Digest of history entry {latest.number}", value=latest.digest)
 
 
-def _code(view: SubmissionView, checkpoint: Checkpoint | None) -> str:
-    number, digest, _ = _latest(view)
-    lines = [f"record {view.id}", f"content {view.content_digest}", f"entry {number} {digest}"]
-    if checkpoint:
-        lines.append(f"checkpoint {_checkpoint(checkpoint)}")
-    return "\n".join(lines)
+def _code(view: SubmissionView) -> str:
+    latest = _latest(view)
+    return f"record {view.id}\ncontent {view.content_digest}\nentry {latest.number} {latest.digest}"
 
 
-def _checkpoint(checkpoint: Checkpoint) -> str:
-    return f"{checkpoint.origin} {checkpoint.size} {checkpoint.root}"
-
-
-def _latest(view: SubmissionView) -> tuple[int, str, datetime]:
-    """Number, digest and time of the last entry of the history that says something of this record."""
+def _latest(view: SubmissionView) -> EntryReference:
+    """The last entry of the history that says something of this record."""
     signed = [decision.entry for decision in view.decisions]
     entries = [view.entry, *signed, *(installation.entry for installation in view.installations)]
-    latest = max(entries, key=lambda entry: entry.number)
-    return latest.number, latest.digest, latest.time
+    return max(entries, key=lambda entry: entry.number)
 
 
 def utc(moment: datetime) -> str:

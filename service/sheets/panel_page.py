@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 
 from reportlab.lib.colors import HexColor, black
 from reportlab.platypus import Flowable, KeepTogether, Spacer, Table
@@ -10,7 +10,6 @@ from reportlab.platypus import Flowable, KeepTogether, Spacer, Table
 from service.sheets import styles
 from service.sheets.cautions import Cautions
 from service.sheets.content import NOT_ANALYSED, GainLine, GainTable, SheetContent
-from service.sheets.controllers import Told
 from service.sheets.qr import code_drawing
 from service.sheets.styles import WIDTH_PT, fitting, named, said, table
 
@@ -18,6 +17,10 @@ PALE = HexColor(0xECECEC)
 EMPHASISED = ("Form", "Action")
 _NAME_PT, _VALUE_PT, _BEFORE_PT = 0.26 * WIDTH_PT, 0.42 * WIDTH_PT, 0.32 * WIDTH_PT
 _CODE_PT = 66.0
+LARGE_LINES = 5
+RECORDED_AT_ONCE = 500
+"""Characters of recorded settings that leave the cautions on the first page."""
+
 _CELL = [
     ("VALIGN", (0, 0), (-1, -1), "MIDDLE"),
     ("LEFTPADDING", (0, 0), (-1, -1), 5),
@@ -26,16 +29,19 @@ _CELL = [
 
 
 def panel_page(content: SheetContent) -> list[Flowable]:
-    """Tag, state, gains, what must agree with them, the box to fill in, cautions."""
+    """Tag, state, gains, what must agree with them, cautions, the box to fill in."""
+    common = len({(each.settings, each.recorded) for each in content.tables}) == 1
     flowables = [_title(content), _banner(content), *_conditions(content)]
     for gain_set in content.tables:
-        flowables += _gains(content, gain_set)
-    flowables += [
-        Spacer(0, 3),
-        _cautions(content.cautions),
-        Spacer(0, 3),
-        *(_by_hand(gain_set) for gain_set in content.tables),
-    ]
+        flowables += _gains(content, gain_set, with_settings=not common)
+    if common:
+        flowables += _settings(content.tables[0])
+    flowables += [Spacer(0, 3), _cautions(content.cautions), Spacer(0, 3)]
+    # a box to fill in would invite whoever holds a sheet that is not for entry
+    if content.state.entry:
+        flowables.append(_by_hand(content.tables))
+    for gain_set in content.tables[: 1 if common else None]:
+        flowables += _recorded_at_length(gain_set)
     return flowables
 
 
@@ -49,7 +55,7 @@ def _title(content: SheetContent) -> Flowable:
         said(content.description, fitting(content.description, width, 11, 8.5, bold=False)),
     ]
     code = code_drawing(content.code, _CODE_PT)
-    look = [*styles.BARE, ("BOTTOMPADDING", (0, 0), (-1, -1), 3)]
+    look = [*styles.BARE, ("VALIGN", (0, 0), (-1, -1), "TOP"), ("BOTTOMPADDING", (0, 0), (-1, -1), 3)]
     return table([[words, code]], [WIDTH_PT - _CODE_PT, _CODE_PT], look)
 
 
@@ -74,27 +80,48 @@ def _conditions(content: SheetContent) -> Iterator[Flowable]:
     yield Spacer(0, 5)
 
 
-def _gains(content: SheetContent, gain_set: GainTable) -> Iterator[Flowable]:
+def _gains(content: SheetContent, gain_set: GainTable, *, with_settings: bool) -> Iterator[Flowable]:
     if gain_set.condition:
         yield Spacer(0, 4)
         yield said(gain_set.condition, styles.LOUD)
         yield Spacer(0, 2)
-    yield _gains_table(content, gain_set.gains)
+    yield _gains_table(content, gain_set)
+    if with_settings:
+        yield from _settings(gain_set)
+
+
+def _settings(gain_set: GainTable) -> Iterator[Flowable]:
     yield Spacer(0, 4)
     yield _settings_table(gain_set.settings)
     if gain_set.recorded:
+        told = _recorded(gain_set)
+        if len(told) > RECORDED_AT_ONCE:
+            told = f"{len(gain_set.recorded)} of them, listed after the cautions"
         yield Spacer(0, 2)
-        yield named(
-            f"Other settings ({NOT_ANALYSED})",
-            "; ".join(_setting(told) for told in gain_set.recorded),
-            styles.LABEL,
-        )
+        yield named(f"Other settings ({NOT_ANALYSED})", told, styles.LABEL)
 
 
-def _gains_table(content: SheetContent, gains: tuple[GainLine, ...]) -> Table:
-    """Large where they may be typed in; smaller where not, so that nobody types them from across the room."""
-    largest = 24 if content.state.entry else 15
-    head = ["Setting", content.state.column, content.before_heading]
+def _recorded_at_length(gain_set: GainTable) -> Iterator[Flowable]:
+    """Recorded settings that would push the cautions off the first page."""
+    told = _recorded(gain_set)
+    if len(told) > RECORDED_AT_ONCE:
+        yield Spacer(0, 4)
+        heading = " ".join(part for part in ("Other settings", gain_set.condition) if part)
+        yield named(f"{heading} ({NOT_ANALYSED})", told, styles.LABEL)
+
+
+def _recorded(gain_set: GainTable) -> str:
+    return "; ".join(f"{told.name} = {told.value} {told.unit}".strip() for told in gain_set.recorded)
+
+
+def _gains_table(content: SheetContent, gain_set: GainTable) -> Table:
+    """Large where they may be typed in; smaller where not, so that nobody types them from across the room.
+
+    Several sets, or one that changes the form and shows both, keep to one page in smaller type too.
+    """
+    roomy = sum(len(each.gains) for each in content.tables) <= LARGE_LINES
+    largest = 24 if content.state.entry and roomy else 15
+    head = ["Setting", content.state.column, gain_set.before_heading]
     rows = [[said(words, styles.COLUMN) for words in head]]
     rows += [
         [
@@ -102,14 +129,15 @@ def _gains_table(content: SheetContent, gains: tuple[GainLine, ...]) -> Table:
             _number(line.value, line.unit, _VALUE_PT, largest, bold=True),
             [*_number(line.before, line.before_unit, _BEFORE_PT, 13, bold=False), *_change(line)],
         ]
-        for line in gains
+        for line in gain_set.gains
     ]
     look = [
         *_CELL,
         ("GRID", (0, 0), (-1, -1), 0.7, black),
         ("BOX", (1, 0), (1, -1), 2.2, black),
         ("BACKGROUND", (0, 0), (-1, 0), PALE),
-        ("BOTTOMPADDING", (0, 1), (-1, -1), 5),
+        ("TOPPADDING", (0, 1), (-1, -1), 3 if roomy else 0.5),
+        ("BOTTOMPADDING", (0, 1), (-1, -1), 5 if roomy else 2.5),
     ]
     return table(rows, [_NAME_PT, _VALUE_PT, _BEFORE_PT], look, repeatRows=1)
 
@@ -143,25 +171,9 @@ def _settings_table(settings: tuple[GainLine, ...]) -> Table:
     return table(rows, [_NAME_PT, WIDTH_PT - _NAME_PT], look)
 
 
-def _setting(told: Told) -> str:
-    return f"{told.name} = {told.value} {told.unit}".strip()
-
-
-def _by_hand(gain_set: GainTable) -> Flowable:
+def _by_hand(gain_sets: Sequence[GainTable]) -> Flowable:
     """Room for a pen: as found and as left for each gain, and who did it."""
-    names = [line.name.split(" (")[0] for line in gain_set.gains]
-    head = [said(words, styles.LABEL_STRONG) for words in ("Fill in by hand", *names, "Mode, output")]
-    rows = [
-        head,
-        *([said(words, styles.LABEL_STRONG)] + [""] * (len(head) - 1) for words in ("As found", "As left")),
-    ]
-    first = 0.15 * WIDTH_PT
-    gains = table(
-        rows,
-        [first, *[(WIDTH_PT - first) / (len(head) - 1)] * (len(head) - 1)],
-        [*_CELL, ("GRID", (0, 0), (-1, -1), 0.7, black)],
-        rowHeights=[None, 22, 22],
-    )
+    boxes = [part for gain_set in gain_sets for part in _found_and_left(gain_set)]
     people = ("Typed by", "Read back by", "Operator agreed", "Date, time", "Saved to engineering database")
     signed = table(
         [[said(words, styles.LABEL) for words in people]],
@@ -169,8 +181,23 @@ def _by_hand(gain_set: GainTable) -> Flowable:
         [*_CELL, ("VALIGN", (0, 0), (-1, -1), "TOP"), ("GRID", (0, 0), (-1, -1), 0.7, black)],
         rowHeights=[32],
     )
-    title = [said(gain_set.condition, styles.STRONG)] if gain_set.condition else []
-    return KeepTogether([*title, gains, signed])
+    return KeepTogether([*boxes, signed])
+
+
+def _found_and_left(gain_set: GainTable) -> list[Flowable]:
+    names = [line.name.split(" (")[0] for line in gain_set.gains]
+    first = 0.15 * WIDTH_PT
+    width = (WIDTH_PT - first) / (len(names) + 1)
+    head = [said(words, fitting(words, width - 10, 8, 5, bold=True)) for words in (*names, "Mode, output")]
+    empty = [""] * len(head)
+    rows = [
+        [said("Fill in by hand", styles.LABEL_STRONG), *head],
+        [said("As found", styles.LABEL_STRONG), *empty],
+        [said("As left", styles.LABEL_STRONG), *empty],
+    ]
+    look = [*_CELL, ("GRID", (0, 0), (-1, -1), 0.7, black)]
+    box = table(rows, [first, *[width] * len(head)], look, rowHeights=[None, 22, 22])
+    return [*([said(gain_set.condition, styles.LABEL_STRONG)] if gain_set.condition else []), box]
 
 
 def _cautions(cautions: tuple[Cautions, ...]) -> Flowable:

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
-from dataclasses import fields
 
 from service.analysis.plant import FrequencyResponse, PlantModel, Uncertainty
 from service.judgement.digits import as_entered
@@ -34,12 +33,11 @@ LABELS = {
     "identified_through_filter_s": ("Found through a filter of", "s"),
     "identified_at_scan_s": ("Found from data at a scan of", "s"),
 }
-"""Every parameter with its unit; a test holds it against the fields of the kinds. Points of a measured
+"""Every parameter with its unit, in the order in which they are told. Points of a measured
 response are told by their number, and `uncertainty` in words of its own."""
 
 _ROOTS = {"zeros_rad_s", "poles_rad_s"}
 _LEFT_OUT_AT_ZERO = {"identified_through_filter_s", "identified_at_scan_s", "lead_time_constant_s", "lag_s"}
-_OWN_WORDS = {"kind", "uncertainty", "frequencies_rad_s", "response"}
 
 
 def told(plant: PlantModel) -> tuple[Told, ...]:
@@ -53,12 +51,11 @@ def told(plant: PlantModel) -> tuple[Told, ...]:
 
 
 def _parameters(plant: PlantModel) -> Iterator[Told]:
-    for field in fields(plant):
-        value = getattr(plant, field.name)
-        if field.name in _OWN_WORDS or value is None or (value == 0 and field.name in _LEFT_OUT_AT_ZERO):
+    for field, (name, unit) in LABELS.items():
+        value = getattr(plant, field, None)
+        if value is None or (value == 0 and field in _LEFT_OUT_AT_ZERO):
             continue
-        name, unit = LABELS[field.name]
-        yield Told(name=name, value=_value(field.name, value), unit=unit)
+        yield Told(name=name, value=_value(field, value), unit=unit)
 
 
 def _value(name: str, value: object) -> str:

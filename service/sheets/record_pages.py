@@ -9,7 +9,7 @@ from reportlab.lib.colors import black
 from reportlab.platypus import Flowable, Spacer
 
 from service.figures.responses import response_drawing
-from service.sheets import styles
+from service.sheets import styles, texts
 from service.sheets.assessments import Assessment, ClaimRow, LimitRow
 from service.sheets.content import Model, SheetContent, Signature
 from service.sheets.controllers import Told
@@ -42,14 +42,13 @@ def record_pages(content: SheetContent) -> list[Flowable]:
 
 
 def _outcome(content: SheetContent) -> Iterator[Flowable]:
-    yield said("What was recomputed", styles.HEADING)
     if not content.summary_good:
         yield said(content.summary, styles.LOUD)
     yield said(content.criteria_source)
     for sentence in content.worst:
         yield said(sentence)
     for sentence in content.hard_limits:
-        yield named("Past a hard limit, no deviation makes it good", sentence, styles.LOUD)
+        yield named("No deviation makes this good", sentence, styles.LOUD)
 
 
 def _assessment(told: Assessment) -> Iterator[Flowable]:
@@ -141,7 +140,7 @@ def _claim(claim: ClaimRow) -> str:
 def _models(models: Sequence[Model]) -> Iterator[Flowable]:
     for model in models:
         yield said(model.title, styles.SUBHEADING)
-        yield said("; ".join(f"{each.name} {each.value} {each.unit}".strip() for each in model.parameters))
+        yield _joined(model.parameters)
         yield named("What it rests on", model.evidence)
 
 
@@ -170,6 +169,8 @@ def _identity(content: SheetContent) -> Iterator[Flowable]:
     for told in content.digests:
         yield named(told.name, told.value, styles.SMALL)
     yield said(_ABOUT_DIGESTS, styles.SMALL)
+    if any(texts.is_told_in_part(text) for text in texts.strings_in(content)):
+        yield said(texts.CODE_POINTS, styles.SMALL)
 
 
 _ABOUT_DIGESTS = (

@@ -9,18 +9,19 @@ from __future__ import annotations
 
 import re
 import unicodedata
+from collections.abc import Iterator
+from dataclasses import fields, is_dataclass
 from itertools import groupby
 from xml.sax.saxutils import escape
 
 from service.figures import fonts
 
-NOTE = (
+CODE_POINTS = (
     "[U+…] stands for a character that this typeface does not hold, "
     "or would print in the wrong order; it is told by its Unicode code point."
 )
 _EMPTY_LINES = re.compile(r"\n{3,}")
-_TOLD = re.compile(r"\[U\+[0-9A-F]{4,6}[ \]]")
-_LEFT_TO_RIGHT_ONLY = {"R", "AL", "AN", "RLE", "RLO", "RLI", "LRE", "LRO", "LRI", "FSI", "PDF", "PDI"}
+_RIGHT_TO_LEFT = {"R", "AL", "AN", "RLE", "RLO", "RLI", "LRE", "LRO", "LRI", "FSI", "PDF", "PDI"}
 _NEVER_SEEN = {"Cc", "Cf", "Cn", "Co", "Cs", "Zl", "Zp"}
 _SPACES = {"\n", "\t", " "}
 
@@ -36,9 +37,21 @@ def visible(text: str) -> str:
     return "".join(parts)
 
 
-def has_code_points(text: str) -> bool:
-    """Say whether some character of a visible text is told by its code point."""
-    return _TOLD.search(text) is not None
+def is_told_in_part(text: str) -> bool:
+    """Say whether some character of a text is told by its code point."""
+    return not all(_is_printable(character) for character in text)
+
+
+def strings_in(told: object) -> Iterator[str]:
+    """Every text in a dataclass and in what it holds."""
+    if isinstance(told, str):
+        yield told
+    elif isinstance(told, tuple):
+        for each in told:
+            yield from strings_in(each)
+    elif is_dataclass(told):
+        for field in fields(told):
+            yield from strings_in(getattr(told, field.name))
 
 
 def marked_up(text: str) -> str:
@@ -47,18 +60,11 @@ def marked_up(text: str) -> str:
     return escape(visible(spaced)).replace("\t", " ").replace("\n", "<br/>")
 
 
-def cut(text: str, most: int) -> str:
-    """The text, or its beginning with the number of characters that are left out."""
-    if len(text) <= most:
-        return text
-    return f"{text[:most]} … ({len(text) - most} more characters stand in the record)"
-
-
 def _is_printable(character: str) -> bool:
     if character in _SPACES:
         return True
     return (
         ord(character) in fonts.code_points()
         and unicodedata.category(character) not in _NEVER_SEEN
-        and unicodedata.bidirectional(character) not in _LEFT_TO_RIGHT_ONLY
+        and unicodedata.bidirectional(character) not in _RIGHT_TO_LEFT
     )
