@@ -5,8 +5,11 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
+from service.analysis.plant import Ranges
 from service.judgement.wording import UNITS
 from service.pages import words
+from service.records.comparison import compare
+from service.records.content import InstallationContent, SignedContent
 from service.records.views import Comparison, SettingChange
 from service.sheets.content import GainLine, GainTable
 
@@ -60,6 +63,15 @@ def change_table(table: GainTable, comparison: Comparison | None) -> ChangeTable
         earlier_known=comparison is not None,
         nothing_changes=comparison is not None and comparison.same_gains,
     )
+
+
+def installed_otherwise(content: SignedContent, done: InstallationContent) -> tuple[ChangeLine, ...]:
+    """Where as left differs from the approved set: `before` is what was approved, `after` what was left."""
+    approved = content.gain_sets[done.gain_set].controller
+    ranges = Ranges(pv=content.loop.pv, output=content.loop.output)
+    compared = compare(approved, done.installation.as_left, ranges)
+    told = words.told_value if compared.common_form is None else words.computed_value
+    return tuple(_compared(change, told) for change in compared.settings if change.changed)
 
 
 def _line(line: GainLine, percent: float | None, before: str) -> ChangeLine:

@@ -215,5 +215,6 @@ def _confirm_page(
         form=replace(form, problems=(problem,) if problem else ()),
         reviewed=reviewed,
         signer=visit.actor,
+        meaning=records.MEANINGS[reviewed.decision],
         word_for_word=word_for_word,
     )

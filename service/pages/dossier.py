@@ -14,15 +14,13 @@ from service.figures.frequency import frequency_drawing
 from service.figures.responses import Response, response_drawing
 from service.figures.svg import to_svg
 from service.issuing import sheets
-from service.pages.changes import ChangeTable, change_table
+from service.pages.changes import ChangeLine, ChangeTable, change_table, installed_otherwise
 from service.pages.standing import Standing, standing
 from service.pages.visits import Visit
-from service.pages.words import setting, told_value
 from service.records import queries
-from service.records.content import Difference
 from service.records.views import Comparison, CurvesView, SubmissionView
 from service.sheets.assessments import Assessment
-from service.sheets.content import SheetContent
+from service.sheets.content import DECISIONS, SheetContent
 
 NARROW = {"width_pt": 300, "height_pt": 420, "text_pt": 12}
 """A drawing for a screen of 320 px, in points."""
@@ -48,16 +46,18 @@ class Told:
     figures: tuple[Figure, ...]
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, kw_only=True, slots=True)
 class Happening:
     """One line of what has happened to a submission so far."""
 
     time: datetime
     what: str
     who: str
-    text: str
-    deviations: tuple[tuple[str, str], ...]
     entry: int
+    meaning: str = ""
+    """What a signature means; empty where nothing was signed."""
+    lines: tuple[str, ...] = ()
+    deviations: tuple[tuple[str, str], ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -131,28 +131,31 @@ def _svg(drawing: Drawing, title: str, words: str) -> Markup:
 
 def _happenings(view: SubmissionView) -> Iterator[Happening]:
     by = view.content.submitted_by
-    yield Happening(view.content.submitted_at, "Submitted", by.full_name, "", (), view.entry.number)
+    yield Happening(
+        time=view.content.submitted_at, what="Submitted", who=by.full_name, entry=view.entry.number
+    )
     for each in view.decisions:
         made = each.decision
         yield Happening(
-            made.signed_at,
-            made.meaning,
-            made.signed_by.full_name,
-            made.reason,
-            tuple((deviation.criterion, deviation.reason) for deviation in made.deviation),
-            each.entry.number,
+            time=made.signed_at,
+            what=DECISIONS[made.decision],
+            who=made.signed_by.full_name,
+            meaning=made.meaning,
+            lines=(made.reason,),
+            deviations=tuple((deviation.criterion, deviation.reason) for deviation in made.deviation),
+            entry=each.entry.number,
         )
     for done in view.installations:
+        made_known = done.installation
         yield Happening(
-            done.installation.installation.installed_at,
-            "Installed as approved" if done.installation.as_approved else "Installed otherwise than approved",
-            done.installation.recorded_by.full_name,
-            "; ".join(_difference(each) for each in done.installation.differences),
-            (),
-            done.entry.number,
+            time=made_known.installation.installed_at,
+            what="Installed as approved" if made_known.as_approved else "Installed otherwise than approved",
+            who=made_known.recorded_by.full_name,
+            lines=tuple(map(_difference, installed_otherwise(view.content, made_known))),
+            entry=done.entry.number,
         )
 
 
-def _difference(difference: Difference) -> str:
-    approved, left = told_value(difference.recorded), told_value(difference.found)
-    return f"{setting(difference.setting)}: approved {approved}, left {left}"
+def _difference(line: ChangeLine) -> str:
+    approved = f"{line.before} {line.before_unit}".strip()
+    return f"{line.name}: approved {approved}, left {f'{line.after} {line.after_unit}'.strip()}"

@@ -15,7 +15,7 @@ from werkzeug.exceptions import HTTPException
 
 from service.context import request_id
 from service.documents.errors import DocumentError
-from service.pages import forgery, forms, sign_in
+from service.pages import forgery, forms, sign_in, visits
 from service.pages.forms import Form
 from service.pages.frame import page
 from service.records import errors as records
@@ -86,6 +86,7 @@ def answer(error: Exception) -> Response:
     """The page that stands for any exception raised while a request was handled."""
     if isinstance(error, records.NotAuthenticated):
         return _ask_to_sign_in()
+    visits.recognise()
     failure = failure_of(error)
     if failure.status >= 500:
         LOG.error("request %s failed", request_id(), exc_info=error)

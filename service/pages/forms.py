@@ -2,13 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 
 from flask import request
-
-from service.documents.errors import FieldProblem
-from service.documents.strict_json import Plain
 
 SECRET = frozenset({"password", "token"})
 """Fields that are never kept and never shown again."""
@@ -56,16 +53,6 @@ def queried() -> Form:
 def secret(name: str) -> str:
     """A secret field of the request, for immediate use."""
     return request.form.get(name, "")
-
-
-def without_empty(texts: Mapping[str, str]) -> dict[str, Plain]:
-    """The fields in which something was typed."""
-    return {name: text for name, text in texts.items() if text.strip()}
-
-
-def problems_of(errors: Iterable[FieldProblem], field_of: Callable[[str], str]) -> tuple[Problem, ...]:
-    """The problems of a document, each at the field that `field_of` its pointer."""
-    return tuple(Problem(sentence(error.detail), field_of(error.pointer)) for error in errors)
 
 
 def _lines(text: str) -> str:

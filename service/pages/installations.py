@@ -15,6 +15,7 @@ from service.documents.errors import FieldProblem, InvalidDocument
 from service.documents.installations import InstallationRequest
 from service.documents.strict_json import Plain
 from service.pages import controller_fields, forms, visits
+from service.pages.changes import installed_otherwise
 from service.pages.controller_fields import ACTION_OPTIONS, FORM_OPTIONS, SCAN_OPTIONS
 from service.pages.forms import Form, Problem
 from service.pages.frame import page
@@ -25,9 +26,10 @@ from service.records.errors import FieldErrors
 from service.records.views import SubmissionView
 
 PREFIXES = {"as_found": "found", "as_left": "left"}
+SIDES = {"found": "As found", "left": "As left"}
 PEOPLE = ("typed_by", "read_back_by", "operator")
-SAVED: dict[str, bool | None] = {"yes": True, "no": False, "": None}
-SAVED_OPTIONS = (Option("yes", "Yes"), Option("no", "No"), Option("", "Not known"))
+SAVED = {"yes": True, "no": False}
+SAVED_OPTIONS = (Option("yes", "Yes"), Option("no", "No"), Option("unknown", "Not known"))
 _TIME = re.compile(r"\d{4}-\d\d-\d\d[T ]\d\d:\d\d(:\d\d)?")
 
 
@@ -67,7 +69,9 @@ def installed(submission_id: str, installation_id: str) -> Response:
     made = [each for each in view.installations if each.installation.installation_id == installation_id]
     if not made:
         raise NoSuchPage
-    return page("installed.html", view=view, made=made[0].installation, entry=made[0].entry)
+    done = made[0].installation
+    differences = installed_otherwise(view.content, done)
+    return page("installed.html", view=view, made=done, differences=differences, entry=made[0].entry)
 
 
 def _form_page(view: SubmissionView, form: Form, status: int = 200) -> Response:
@@ -135,7 +139,20 @@ def _moment(text: str) -> str:
 
 
 def _problems(form: Form, errors: tuple[FieldProblem, ...]) -> tuple[Problem, ...]:
-    return forms.problems_of(errors, lambda pointer: _field(form, pointer))
+    """What is wrong, each with the name of its field: there are two of most of them."""
+    return tuple(
+        Problem(f"{_label(field)}{forms.sentence(error.detail)}", field)
+        for error in errors
+        for field in [_field(form, error.pointer)]
+    )
+
+
+def _label(field: str) -> str:
+    """ "left-derivative_filter-value" is "As left, derivative filter: "."""
+    side, _, name = field.partition("-")
+    if side not in SIDES:
+        return ""
+    return f"{SIDES[side]}, {name.removesuffix('-value').replace('-', ' ').replace('_', ' ')}: "
 
 
 def _field(form: Form, pointer: str) -> str:

@@ -27,7 +27,10 @@ class Deviation:
 
 @dataclass(frozen=True, slots=True)
 class Standing:
-    """The steps that are open to this person. `why_not` empty: they may decide."""
+    """The steps that are open to this person. `why_not` empty: they may decide.
+
+    `deviations` are asked for where an approval is possible at all.
+    """
 
     choices: tuple[Option, ...]
     why_not: str
@@ -39,10 +42,11 @@ class Standing:
 
 def standing(view: SubmissionView, actor: Actor) -> Standing:
     """What `actor` may do with a submission that was read for this same actor."""
+    choices = _choices(view)
     return Standing(
-        choices=_choices(view),
+        choices=choices,
         why_not=_why_not(view, actor),
-        deviations=_deviations(view),
+        deviations=() if choices[0].closed else _deviations(view),
         may_withdraw="withdraw" in view.open_actions,
         may_revoke="revoke" in view.open_actions,
         may_install="install" in view.open_actions,

@@ -11,11 +11,12 @@ import hmac
 import ipaddress
 import secrets
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from dataclasses import dataclass
 from datetime import datetime
 
 from flask import g, request
+from sqlalchemy.exc import SQLAlchemyError
 from sqlalchemy.orm import Session
 from werkzeug.wrappers import Response as AnyResponse
 
@@ -51,6 +52,13 @@ def admit() -> None:
         g.present = _resume()
     if request.method == "POST":
         forgery.check(request, form_secret())
+
+
+def recognise() -> None:
+    """Find out who is signed in where no page was reached; nobody, where that cannot be told."""
+    if present() is None:
+        with suppress(NotAuthenticated, SQLAlchemyError):
+            g.present = _resume()
 
 
 def present() -> PresentSession | None:

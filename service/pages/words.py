@@ -152,8 +152,6 @@ FILTERS: dict[str, Callable[..., Any]] = {
     "capital": capital,
     "event_kind": event_kind,
     "as_entered": as_entered,
-    "told_value": told_value,
-    "setting": setting,
     "sentence": forms.sentence,
     "state": lifecycle.in_words,
     "kind": KINDS.__getitem__,

@@ -1,0 +1,66 @@
+from __future__ import annotations
+
+import logging
+import sqlite3
+from pathlib import Path
+
+import pytest
+
+from tests.pages import invented
+from tests.pages.conftest import Person
+from tests.pages.invented import Kept
+
+
+def test_a_page_that_is_not_there_names_the_request(reviewer: Person) -> None:
+    page = reviewer.open("/nowhere")
+    assert reviewer.status == 404
+    assert page.one("h1").text == "There is no such page"
+    assert reviewer.answer is not None
+    assert reviewer.answer.headers["X-Request-Id"] in page.text
+    assert "Bo Lindgren" in page.one("header").text
+
+
+def test_a_method_that_an_address_does_not_take_is_told_calmly(reviewer: Person) -> None:
+    reviewer.answer = reviewer.client.post("/loops", data={})
+    assert reviewer.status == 405
+    assert "GET" in reviewer.answer.headers["Allow"]
+    assert "This address takes no such request" in reviewer.page.text
+
+
+def test_a_fault_of_ours_shows_the_requests_name_and_nothing_of_the_fault(
+    tmp_path: Path, reviewer: Person, caplog: pytest.LogCaptureFixture
+) -> None:
+    # a real fault: somebody has removed a table behind the service's back
+    with sqlite3.connect(tmp_path / "store.db") as store:
+        store.execute("DROP TABLE loop_revisions")
+    with caplog.at_level(logging.CRITICAL):
+        page = reviewer.open("/loops")
+    assert reviewer.status in (500, 503)
+    assert reviewer.answer is not None
+    assert reviewer.answer.headers["X-Request-Id"] in page.text
+    assert "loop_revisions" not in reviewer.answer.text
+    assert "Traceback" not in reviewer.answer.text
+
+
+def test_more_than_any_form_needs_is_refused(reviewer: Person, kept: Kept) -> None:
+    reviewer.answer = reviewer.client.post(
+        f"/submissions/{kept.submissions['stable']}/confirm", data={"reason": "x" * 1_100_000}
+    )
+    assert reviewer.status == 413
+    assert "This is too long" in reviewer.page.text
+
+
+def test_a_demonstration_says_so_on_every_page(tmp_path: Path) -> None:
+    kept = invented.make_store(tmp_path / "demonstration.db", demonstration=True)
+    app = invented.application(kept.file)
+    person = Person(app.test_client())
+    for address in ("/sign-in", "/nowhere"):
+        assert "everything here is invented" in person.open(address).text
+    person.sign_in("reviewer")
+    for address in ("/", "/loops", "/history", f"/submissions/{kept.submissions['stable']}"):
+        assert "everything here is invented" in person.open(address).text
+    invented.close(app)
+
+
+def test_a_store_in_use_does_not_call_itself_a_demonstration(reviewer: Person) -> None:
+    assert "everything here is invented" not in reviewer.open("/").text

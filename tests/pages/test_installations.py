@@ -1,0 +1,109 @@
+from __future__ import annotations
+
+import pytest
+
+from tests.pages.conftest import Person, SignedIn
+from tests.pages.invented import Kept
+from tests.pages.test_decisions import decide
+
+AS_TYPED = {
+    "found-action": "reverse",
+    "found-proportional-value": "1.60",
+    "found-integral-value": "30",
+    "left-action": "reverse",
+    "left-proportional-value": "2.00",
+    "left-integral-value": "30",
+    "left-recorded-0": "95",
+    "saved_to_engineering_database": "yes",
+}
+
+
+@pytest.fixture
+def approved(kept: Kept, reviewer: Person) -> str:
+    submission = kept.submissions["stable"]
+    decide(reviewer, "reviewer", submission, "approve")
+    return submission
+
+
+def install(person: Person, submission: str, **typed: str) -> None:
+    address = f"/submissions/{submission}/installation"
+    person.open(address)
+    person.send(f"{address}?set=0", **(AS_TYPED | typed))
+
+
+def test_as_left_like_the_approved_gains_puts_them_in_force(approved: str, author: Person) -> None:
+    install(author, approved)
+    assert "✓ As left is as approved." in author.page.text
+    assert "The gains are now in force." in author.page.text
+
+
+def test_the_same_gains_read_in_other_units_are_the_approved_ones(approved: str, author: Person) -> None:
+    other = {"left-proportional-unit": "percent_band", "left-proportional-value": "50"}
+    install(author, approved, **other, **{"left-integral-unit": "minutes", "left-integral-value": "0.5"})
+    assert "✓ As left is as approved." in author.page.text
+
+
+def test_as_left_otherwise_is_recorded_with_the_difference(approved: str, author: Person) -> None:
+    install(author, approved, **{"left-integral-value": "3.0"})
+    assert "✗ As left is not as approved." in author.page.text
+    assert "Integral 30 seconds 3 seconds" in [row.text for row in author.page.all("tr")]
+    assert "approved and not yet installed" in author.page.text
+    told = author.open(f"/submissions/{approved}").one("section", aria_labelledby="so-far").text
+    assert "Installed otherwise than approved" in told
+    assert "Integral: approved 30 seconds, left 3 seconds" in told
+
+
+def test_what_is_no_number_is_named_with_its_field_and_everything_typed_is_kept(
+    approved: str, author: Person
+) -> None:
+    install(author, approved, **{"left-proportional-value": "2,00", "typed_by": "Uma <Reyes>"})
+    assert author.status == 422
+    link = author.page.one(id="problems").one("a")
+    assert link.get("href") == "#left-proportional-value"
+    assert link.text.startswith("As left, proportional: Write a number")
+    assert author.page.one("input", id="left-proportional-value").get("value") == "2,00"
+    assert author.page.one("input", id="typed_by").get("value") == "Uma <Reyes>"
+    assert author.page.one("input", id="found-integral-value").get("value") == "30"
+
+
+def test_an_action_that_nobody_read_is_asked_for(approved: str, author: Person) -> None:
+    address = f"/submissions/{approved}/installation"
+    author.open(address)
+    typed = {name: value for name, value in AS_TYPED.items() if name != "left-action"}
+    author.send(f"{address}?set=0", **typed)
+    assert author.status == 422
+    assert "#left-action" in [link.get("href") for link in author.page.one(id="problems").all("a")]
+
+
+def test_a_time_that_is_yet_to_come_is_refused_at_its_field(approved: str, author: Person) -> None:
+    install(author, approved, installed_at="2199-01-01T08:00")
+    assert author.status == 422
+    assert author.page.one(id="problems").one("a").get("href") == "#installed_at"
+
+
+def test_gains_with_two_zeros_are_typed_as_such(kept: Kept, reviewer: Person, author: Person) -> None:
+    submission = kept.submissions["two_zeros"]
+    decide(reviewer, "reviewer", submission, "approve")
+    address = f"/submissions/{submission}/installation"
+    author.open(address)
+    typed = {
+        f"{side}-{name}": value
+        for side in ("found", "left")
+        for name, value in {
+            "action": "reverse",
+            "gain": "1.5",
+            "zeros_rad_s-0": "-0.05",
+            "zeros_rad_s-1": "-0.2",
+            "derivative_filter-value": "0.5",
+        }.items()
+    }
+    author.send(f"{address}?set=0", **typed)
+    assert "✓ As left is as approved." in author.page.text
+
+
+@pytest.mark.parametrize("person", ["reviewer", "auditor", "administrator"])
+def test_who_does_not_install_is_told_so(kept: Kept, signed_in: SignedIn, person: str) -> None:
+    reader = signed_in(person)
+    reader.open(f"/submissions/{kept.submissions['stable']}/installation")
+    assert reader.status == 403
+    assert "This needs the role submitter." in reader.page.text
