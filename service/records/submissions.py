@@ -34,10 +34,10 @@ from service.records.roles import Actor, require_role
 from service.records.tables.accounts import Account
 from service.records.tables.columns import Base
 from service.records.tables.submissions import (
-    Decision,
     Submission,
     SubmissionAuthor,
     SubmissionRecomputation,
+    SubmissionState,
 )
 from service.records.views import LoopView, SubmissionView
 
@@ -184,8 +184,8 @@ def _time_problems(request: SubmissionRequest, now: datetime) -> list[FieldProbl
 def _was_approved(session: Session, loop: LoopView, sets: tuple[SignedGains, ...]) -> bool:
     query = (
         select(Submission)
-        .join(Decision, Decision.submission_id == Submission.id)
-        .where(Submission.loop_id == loop.id, Decision.decision == "approve")
+        .join(SubmissionState, SubmissionState.submission_id == Submission.id)
+        .where(Submission.loop_id == loop.id, SubmissionState.action == "approve")
         .order_by(Submission.event_number.desc())
     )
     contents = (read_content(row.content) for row in session.execute(query).scalars().unique())

@@ -142,6 +142,13 @@ def test_gains_that_were_only_submitted_are_nothing_to_return_to(store: Store, l
     assert _pointers(refused) == ["/controller"]
 
 
+def test_a_first_approval_of_two_is_none_to_return_to(store: Store) -> None:
+    store.add_model(store.register(safety_related=True))
+    store.approve(store.submit(controller=gains(1.2)))
+    with pytest.raises(FieldErrors):
+        store.submit(kind="return", controller=gains(1.2))
+
+
 def _gain_set(*points: str, gain: float = 1.0) -> dict[str, object]:
     return {"condition": f"at {points[0]}", "operating_points": list(points), "controller": gains(gain)}
 
