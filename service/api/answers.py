@@ -1,7 +1,4 @@
-"""What a handler returns:
-
-bytes with their status and headers, so that an answer can be kept and given again.
-"""
+"""What a handler returns: bytes with status and headers, so that an answer can be kept and given again."""
 
 from __future__ import annotations
 
@@ -43,13 +40,17 @@ def document(
 
 
 def page(part: Page[ItemT], show: Callable[[ItemT], object]) -> Answer:
-    """Answer with one page of a list, and with links to the first and to the next one (RFC 8288)."""
-    links = [_link("first", None)]
-    if part.after is not None:
-        links.append(_link("next", cursors.make(services().secret_key, list_name(), part.after)))
-    return Answer(
-        body=writing.to_bytes({"items": [show(item) for item in part.items]}), link=", ".join(links)
-    )
+    """Answer with one page of a list, and with links to the first and to the next one."""
+    items = [show(item) for item in part.items]
+    return Answer(body=writing.to_bytes({"items": items}), link=links(part))
+
+
+def links(part: Page[ItemT]) -> str:
+    """Return the Link header of a page (RFC 8288)."""
+    first = _link("first", None)
+    if part.after is None:
+        return first
+    return f"{first}, {_link('next', cursors.make(services().secret_key, list_name(), part.after))}"
 
 
 def whole_list(items: Iterable[ItemT], show: Callable[[ItemT], object]) -> Answer:
@@ -104,6 +105,6 @@ def _filters() -> list[tuple[str, str]]:
 
 def _link(relation: str, cursor: str | None) -> str:
     # relative, so that no header of the request decides where the link leads
-    parameters = [*_filters(), *((name, request.args[name]) for name in ("limit",) if request.args.get(name))]
-    query = urlencode([*parameters, *([("cursor", cursor)] if cursor else [])])
+    place = {"limit": request.args.get("limit"), "cursor": cursor}
+    query = urlencode([*_filters(), *((name, value) for name, value in place.items() if value)])
     return f'<{request.path}{"?" + query if query else ""}>; rel="{relation}"'

@@ -6,7 +6,7 @@ from flask import Blueprint
 
 from service.api import answers, representations
 from service.api.answers import Answer
-from service.api.operations import Call, Path, Reader, changes
+from service.api.operations import Call, Reader, Variables, changes
 from service.documents.decisions import DecisionRequest
 from service.issuing import sheets
 from service.records import decisions
@@ -15,7 +15,7 @@ from service.records.errors import NotIndependent, SigningRefused
 blueprint = Blueprint("decisions", __name__, url_prefix="/v1/submissions/<submission_id>/decisions")
 
 
-def _leave_trace(call: Call, refusal: SigningRefused | NotIndependent, path: Path) -> None:
+def _leave_trace(call: Call, refusal: SigningRefused | NotIndependent, path: Variables) -> None:
     decisions.record_refused_signing(call.session, call.actor, path["submission_id"], refusal, call.now)
 
 

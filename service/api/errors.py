@@ -22,6 +22,8 @@ from service.records import errors as records
 
 LOG = logging.getLogger("service.api")
 RETRY_AFTER_S = 5
+PLACES_MAX = 100
+"""Wrong places that one problem names: enough to mend a body, and no more than a body itself would take."""
 
 TABLE: dict[type[Exception], ProblemType] = {
     refusals.BadQuery: problems.BAD_QUERY,
@@ -87,15 +89,16 @@ def _body(problem: ProblemType, error: Exception) -> bytes:
         "instance": f"urn:uuid:{request_id()}",
     }
     if problem.status < 500:
-        members |= {"detail": _detail(problem, error), "errors": getattr(error, "errors", ())}
+        places = getattr(error, "errors", ())
+        members |= {"detail": _detail(problem, error, len(places)), "errors": places[:PLACES_MAX]}
     return writing.to_bytes(members)
 
 
-def _detail(problem: ProblemType, error: Exception) -> str:
+def _detail(problem: ProblemType, error: Exception, places: int) -> str:
     if isinstance(error, HTTPException):
         # the framework's own words are about browsers, but for those that this service gave it
         return error.description or problem.meaning if error.code in (413, 415) else problem.meaning
-    return str(error)
+    return f"{places} places are wrong; errors names them" if places > 1 else str(error)
 
 
 def _headers(problem: ProblemType, error: Exception) -> Iterator[tuple[str, str]]:

@@ -6,10 +6,11 @@ from dataclasses import dataclass
 
 from flask import Blueprint, request
 
-from service.api import answers, history_csv, representations
+from service.api import answers, history_csv
 from service.api.answers import Answer
 from service.api.operations import Call, reads
 from service.api.queries import Instant, NoQuery, PageQuery, Text
+from service.api.representations import Event, WholeEvent
 from service.context import services
 from service.issuing import checkpoints
 from service.issuing.checkpoints import Checkpoint
@@ -33,35 +34,35 @@ class HistoryQuery(PageQuery):
     actor: Text | None = None
     kind: Text | None = None
 
+    @property
+    def wanted(self) -> HistoryFilter:
+        """The same as the records ask for it."""
+        return HistoryFilter(
+            site=self.site,
+            tag=self.tag,
+            area=self.area,
+            since=self.since,
+            until=self.until,
+            actor=self.actor,
+            kind=self.kind,
+        )
+
 
 @blueprint.get("")
-@reads(HistoryQuery, representations.Event, a_list=True, media_types=JSON_OR_CSV)
+@reads(HistoryQuery, Event, a_list=True, media_types=JSON_OR_CSV)
 def list_history(call: Call, query: HistoryQuery) -> Answer:
     """List the entries of the history, earliest first; as CSV where Accept asks for text/csv."""
     media_type = answers.preferred(request, JSON_OR_CSV)
-    wanted = HistoryFilter(
-        site=query.site,
-        tag=query.tag,
-        area=query.area,
-        since=query.since,
-        until=query.until,
-        actor=query.actor,
-        kind=query.kind,
-    )
-    part = queries.history(call.session, call.actor, wanted, answers.after(query), query.limit)
-    page = answers.page(part, representations.Event.of)
-    return history_csv.as_csv(page, part.items) if media_type == "text/csv" else page
+    part = queries.history(call.session, call.actor, query.wanted, answers.after(query), query.limit)
+    return history_csv.table(part) if media_type == "text/csv" else answers.page(part, Event.of)
 
 
 @blueprint.get(f"/<int(max={2**53}):number>")
-@reads(NoQuery, representations.WholeEvent)
+@reads(NoQuery, WholeEvent)
 def show_entry(call: Call, _query: NoQuery, number: int) -> Answer:
     """Show one entry with the exact text that its digest is made from."""
     view = queries.entry(call.session, call.actor, number)
-    whole = representations.WholeEvent(
-        event=representations.Event.of(view), canonical=view.canonical.decode()
-    )
-    return answers.document(whole)
+    return answers.document(WholeEvent(event=Event.of(view), canonical=view.canonical.decode()))
 
 
 @blueprint.get("/checkpoint")

@@ -4,12 +4,10 @@ from __future__ import annotations
 
 import csv
 import io
-from collections.abc import Iterable
-from dataclasses import replace
 
-from service.api.answers import Answer
+from service.api.answers import Answer, links
 from service.documents import writing
-from service.records.views import EventView
+from service.records.views import EventView, Page
 
 COLUMNS = ("number", "time", "kind", "actor", "site", "tag", "area", "content", "digest")
 
@@ -17,13 +15,14 @@ _FORMULA_STARTS = ("=", "+", "-", "@", "\t", "\r")
 """First characters by which spreadsheets take a text for a formula (OWASP, CSV injection)."""
 
 
-def as_csv(page: Answer, entries: Iterable[EventView]) -> Answer:
-    """Return the page with its links, and the entries as rows under a header."""
+def table(part: Page[EventView]) -> Answer:
+    """Answer with the entries of a page as rows under a header, and with its links."""
     text = io.StringIO(newline="")
     rows = csv.writer(text)
     rows.writerow(COLUMNS)
-    rows.writerows([_cell(name, entry) for name in COLUMNS] for entry in entries)
-    return replace(page, body=text.getvalue().encode(), media_type="text/csv; charset=utf-8")
+    rows.writerows([_cell(name, entry) for name in COLUMNS] for entry in part.items)
+    body = text.getvalue().encode()
+    return Answer(body=body, media_type="text/csv; charset=utf-8", link=links(part))
 
 
 def _cell(name: str, entry: EventView) -> str | int:

@@ -219,7 +219,7 @@ def _refusals(route: Route) -> Json:
 def _problems(route: Route) -> Iterator[ProblemType]:
     yield from ALWAYS
     yield problems.BAD_QUERY
-    if "{" in route.path:
+    if "{" in route.path or isinstance(route.operation, Changing):
         yield problems.NOT_FOUND
     if isinstance(route.operation, Changing | Computing):
         yield from WITH_BODY

@@ -37,7 +37,8 @@ Reader = Callable[[], DocumentT]
 """Reads the body as its dataclass when called. A handler calls it after the checks for 404 and 403, since
 what it raises (InvalidDocument, every wrong field) is 422."""
 
-Path = dict[str, Any]
+Variables = dict[str, Any]
+"""The variables of an address, by name."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -49,7 +50,7 @@ class Call:
     now: datetime
 
 
-Trace = Callable[[Call, SigningRefused | NotIndependent, Path], None]
+Trace = Callable[[Call, SigningRefused | NotIndependent, Variables], None]
 """Writes what a refused signing must leave behind."""
 
 
@@ -108,7 +109,7 @@ class Changing(Operation):
             self._leave_trace(refusal, path)
             raise
 
-    def _answer(self, path: Path) -> Answer:
+    def _answer(self, path: Variables) -> Answer:
         database = services().database
         with database.reading() as session:
             who = _authenticate(session)
@@ -124,7 +125,7 @@ class Changing(Operation):
             make = partial(self.handler, call, prepared, **path)
             return idempotency.once(session, call.actor, key, call.now, make)
 
-    def _leave_trace(self, refusal: SigningRefused | NotIndependent, path: Path) -> None:
+    def _leave_trace(self, refusal: SigningRefused | NotIndependent, path: Variables) -> None:
         if self.trace is not None:
             with services().database.writing() as session:
                 self.trace(_call(session, _authenticate(session)), refusal, path)
@@ -132,8 +133,7 @@ class Changing(Operation):
 
 @dataclass(frozen=True, kw_only=True)
 class Computing(Operation):
-    """Computes in no transaction, so that it holds up nobody; writes only where a key came with the
-    request."""
+    """Computes in no transaction, so that it holds up nobody; writes only where a key came along."""
 
     body: type
 
@@ -181,8 +181,7 @@ def changes_prepared(
     answer: type,
     prepare: Callable[[Call, Reader[DocumentT]], PreparedT],
 ) -> Callable[[Callable[Concatenate[Call, PreparedT, ...], Answer]], Changing]:
-    """Make a handler of `call, prepared` one whose long work is done by `prepare`, before anybody is held
-    up."""
+    """Make a handler of `call, prepared` an operation whose long work `prepare` does, holding up nobody."""
     return lambda handler: Changing(handler=handler, body=body, answer=answer, status=201, prepare=prepare)
 
 

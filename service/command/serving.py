@@ -16,8 +16,12 @@ from waitress import wasyncore
 from waitress.server import TcpWSGIServer
 
 from service.command.errors import UserMistake
+from service.documents.limits import BODY_BYTES_MAX
 
 THREADS = 8
+BODY_BYTES_BUFFERED_MAX = 4 * BODY_BYTES_MAX
+"""Past this a body is not even taken in. Between the two limits the application says what is wrong."""
+
 DRAIN_S_MAX = 30.0
 """How long requests that were begun may take after the signal; a recomputation has a work bound far below
 it."""
@@ -30,7 +34,14 @@ def serve_until_told(app: Flask, host: str, port: int, on_ready: Callable[[str],
     cannot be listened at.
     """
     listener = _listen(host, port)
-    server = waitress.create_server(app, map={}, sockets=[listener], threads=THREADS, ident=None)
+    server = waitress.create_server(
+        app,
+        map={},
+        sockets=[listener],
+        threads=THREADS,
+        ident=None,
+        max_request_body_size=BODY_BYTES_BUFFERED_MAX,
+    )
     with _told_to_end(server) as told:
         on_ready(_address(listener))
         _loop(server, until=told.is_set)

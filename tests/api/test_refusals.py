@@ -344,3 +344,12 @@ def test_a_time_in_a_body_is_one_with_its_offset(
 ) -> None:
     answer = service.post("/v1/submissions", plant.SUBMISSION | {name: time})
     assert (answer.status_code, pointers(answer)) == (422, [f"/{name}"])
+
+
+def test_a_body_with_thousands_of_faults_gets_a_short_answer(service: Service) -> None:
+    body = changed(plant.MODEL, "/plant_model", {"kind": "transfer_function", "denominator": [1.0]})
+    body["plant_model"]["numerator"] = ["x"] * 5000
+    answer = service.post("/v1/recomputations", {"plant_model": body["plant_model"], "controller": {}})
+    assert answer.status_code == 422
+    assert len(answer.json["errors"]) == 100
+    assert len(answer.data) < 20_000
