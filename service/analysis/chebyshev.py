@@ -10,6 +10,7 @@ from __future__ import annotations
 from functools import lru_cache
 
 import numpy as np
+import numpy.typing as npt
 
 from service.analysis.brackets import newton_zero
 from service.analysis.loop import Reals
@@ -70,7 +71,7 @@ def evaluate_rows(rows: Reals, at: Reals) -> Reals:
     return np.asarray((evaluation(rows.shape[1], at) * rows).sum(axis=1))
 
 
-def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[np.ndarray, Reals]:  # type: ignore[type-arg]
+def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[npt.NDArray[np.intp], Reals]:
     """Every sign change inside the rows, values shape (r, count): which row, and where on [0, 1]; ordered.
 
     Changes between two values that are both below `noise` (scalar, or shape (r, 1)) are rounding and left

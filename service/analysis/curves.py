@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 
 import numpy as np
+import numpy.typing as npt
 
 from service.analysis import chebyshev
 from service.analysis.chebyshev import NODES
@@ -60,7 +61,7 @@ def _places(pieces: int) -> Reals:
     return np.linspace(0.0, 1.0, count)
 
 
-def _without_repeats(times: Reals, pv: Reals, output: Reals) -> np.ndarray:  # type: ignore[type-arg]
+def _without_repeats(times: Reals, pv: Reals, output: Reals) -> npt.NDArray[np.bool_]:
     """Which points stay: of two at one time the second goes unless PV or output jump there."""
     same_time = np.diff(times) <= 1e-12 * times[-1]
     scale_pv, scale_output = float(np.abs(pv).max()), float(np.abs(output).max())

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 
 import numpy as np
+import numpy.typing as npt
 
 from service.analysis.controller import Controller
 from service.analysis.frequency import AxisResponse
@@ -21,12 +23,13 @@ def facts(
     parts: ClosedLoopParts, space: StateSpace | None, controller: Controller, verdict: Verdict
 ) -> LoopFacts:
     """The facts of a loop whose verdict is known."""
-    plant_poles = np.array(parts.plant.poles_rad_s, complex) * parts.unit_rad_s
+    plant_poles: Complexes = np.array(parts.plant.poles_rad_s, complex) * complex(parts.unit_rad_s)
     plant_zeros = np.array(parts.plant.zeros_rad_s, complex)
     terms = parts.controller.feedback
     integrates = bool(np.any(plant_poles == 0))
     unstable = bool(np.any(_right_of_axis(plant_poles)))
     times = 1.0 / np.abs(plant_poles[plant_poles != 0])
+    times = times[np.isfinite(times)]
     return LoopFacts(
         plant_holds_in_manual=bool(np.all(plant_poles.real < -ON_AXIS * np.abs(plant_poles))),
         plant_integrates=integrates,
@@ -41,8 +44,8 @@ def facts(
         stable_with_other_action=_stable_with_other_action(parts, space) if verdict == "unstable" else None,
         fastest_plant_time_s=float(times.min()) if times.size else None,
         slowest_plant_time_s=float(times.max()) if times.size else None,
-        integral_time_s=terms.kp / terms.ki_per_s if terms.ki_per_s > 0 and terms.kp > 0 else None,
-        derivative_time_s=terms.kd_s / terms.kp if terms.kd_s > 0 and terms.kp > 0 else None,
+        integral_time_s=_ratio(terms.kp, terms.ki_per_s),
+        derivative_time_s=_ratio(terms.kd_s, terms.kp),
         filter_time_s=terms.tf_s if terms.tf_s > 0 else None,
         dead_time_s=parts.dead_time_s,
         dead_time_reduced_by_s=parts.dead_time_reduced_by_s,
@@ -64,12 +67,18 @@ def with_other_action(
     )
 
 
+def _ratio(above: float, below: float) -> float | None:
+    """above/below where both terms are there and the ratio is a float64."""
+    ratio = above / below if above > 0 and below > 0 else 0.0
+    return ratio if 0 < ratio < math.inf else None
+
+
 def _stable_with_other_action(parts: ClosedLoopParts, space: StateSpace | None) -> bool:
     turned, turned_space = with_other_action(parts, space)
     return decide(turned, turned_space, AxisResponse.of(turned.loop)).stability.verdict == "stable"
 
 
-def _right_of_axis(roots: Complexes) -> np.ndarray:  # type: ignore[type-arg]
+def _right_of_axis(roots: Complexes) -> npt.NDArray[np.bool_]:
     return np.asarray(roots.real > ON_AXIS * np.abs(roots))
 
 

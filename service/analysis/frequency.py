@@ -59,7 +59,8 @@ class AxisResponse:
     @cached_property
     def gain_crossovers(self) -> Reals:
         """Every ω > 0 where abs L = 1, increasing, shape (m,)."""
-        omega, values = self._with_turns(self._magnitude_turns, self.log_response.real, np.real)
+        omega, logs = self._with_points(self._magnitude_turns)
+        values = logs.real
         crossed = np.flatnonzero((values[:-1] > 0) != (values[1:] > 0))
         if not crossed.size:
             return np.empty(0)
@@ -74,11 +75,10 @@ class AxisResponse:
     def phase_crossovers(self) -> PhaseCrossings:
         """Where L is real and negative: the lowest of them, and those that bound the margins."""
         turns = self._turns(self.log_slope.imag, lambda omega: self.loop.on_axis(omega)[1].imag)
-        # abs L is monotone between these, so the first and the last crossing between two of them bound the
-        # rest
+        # abs L is monotone between these: the first and last crossing between two of them bound the rest
         marks = np.sort(np.concatenate([self._magnitude_turns, self.gain_crossovers]))
         inserted = np.sort(np.concatenate([turns, marks]))
-        omega, logs = self._with_turns(inserted, self.log_response, lambda values: values)
+        omega, logs = self._with_points(inserted)
         phase, magnitude = logs.imag, logs.real
         rounds = np.floor((phase + math.pi) / (2 * math.pi))
         counts = np.abs(np.diff(rounds))
@@ -111,24 +111,18 @@ class AxisResponse:
             low, high = np.where(before, middle, low), np.where(before, high, middle)
         return 0.5 * (low + high)
 
-    def _with_turns(
-        self,
-        turns: Reals,
-        values: npt.NDArray[np.generic],
-        part: Callable[[Complexes], npt.NDArray[np.generic]],
-    ) -> tuple[Reals, npt.NDArray[np.generic]]:
-        """The grid and the values on it with further frequencies put in."""
-        if not turns.size:
-            return self.omega, values
-        at = np.searchsorted(self.omega, turns)
-        return np.insert(self.omega, at, turns), np.insert(values, at, part(self.loop.log_response(turns)))
+    def _with_points(self, more: Reals) -> tuple[Reals, Complexes]:
+        """The grid and ln L on it with further frequencies put in."""
+        if not more.size:
+            return self.omega, self.log_response
+        at = np.searchsorted(self.omega, more)
+        logs = np.insert(self.log_response, at, self.loop.log_response(more))
+        return np.insert(self.omega, at, more), logs
 
 
 @dataclass(frozen=True, eq=False)
 class PhaseCrossings:
-    """ω, increasing, and ln abs L there, shapes (m,); `truncated` where only those that bound the margins are
-    told.
-    """
+    """ω, increasing, and ln abs L there, shapes (m,); `truncated`: there are more, which bound no margin."""
 
     omega: Reals
     log_magnitude: Reals
@@ -202,7 +196,7 @@ def distinct(values: Reals) -> Reals:
     rest.
     """
     values = np.sort(values)
-    return values[np.append(True, np.diff(values) > 0)]
+    return np.asarray(values[np.append(True, np.diff(values) > 0)])
 
 
 def _asymptote_marks(loop: OpenLoop) -> list[float]:
@@ -220,6 +214,8 @@ def _asymptote_marks(loop: OpenLoop) -> list[float]:
 
 
 def _log_spaced(low: float, high: float, step: float) -> Reals:
+    if not 0 < low <= high < math.inf:
+        raise OverflowError("frequencies leave the range of float64")
     count = max(2, math.ceil(math.log(high / low) / step) + 1)
     return np.exp(np.linspace(math.log(low), math.log(high), count))
 

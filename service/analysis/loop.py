@@ -175,6 +175,8 @@ def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges |
     filter_poles = (complex(-1.0 / filter_s),) if filter_s > 0 else ()
     zeros = np.array(terms.zeros_rad_s + plant.zeros_rad_s, dtype=complex)
     poles = np.array(terms.poles_rad_s + filter_poles + plant.poles_rad_s, dtype=complex)
+    if not (np.isfinite(zeros).all() and np.isfinite(poles).all()):
+        raise OverflowError
     unit = _natural_unit(zeros, poles, dead_time_s)
     direction = 1.0 if controller.action == "reverse" else -1.0
     factors = (direction, basis, terms.gain, plant.gain, 1.0 / filter_s if filter_s > 0 else 1.0)
@@ -182,7 +184,9 @@ def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges |
     log_gain += (len(zeros) - len(poles)) * math.log(unit)
     if not math.isfinite(log_gain) and sign != 0:
         raise OverflowError
-    free_zeros, free_poles, hidden = _without_hidden(zeros / unit, poles / unit)
+    free_zeros, free_poles, hidden = _without_hidden(
+        np.asarray(zeros / unit, complex), np.asarray(poles / unit, complex)
+    )
     loop = OpenLoop(free_zeros, free_poles, log_gain if sign else -math.inf, sign, dead_time_s * unit)
     return ClosedLoopParts(
         unit_rad_s=unit,
@@ -220,7 +224,7 @@ def _in_percent(plant_model: PlantModel, ranges: Ranges | None) -> Rational:
         if len(plant.zeros_rad_s) > len(plant.poles_rad_s):
             raise FieldError(
                 ("plant_model", "identified_through_filter_s"),
-                "a plant found through a filter has more poles than zeros; divided out, none would be left over",
+                "with its filter divided out the plant would have more zeros than poles",
             )
     if plant_model.gain_basis == "percent_of_range":
         return plant

@@ -30,7 +30,7 @@ from service.analysis.results import Crossovers, GainCrossover, Margins, PhaseCr
 ROTATION_STEP_RAD = 0.2
 """How far e^(−jωθ) may turn between two points where peaks are looked for."""
 
-MAX_PEAK_POINTS = 200_000
+MAX_PEAK_POINTS = 40_000
 """Work bound: more points than this and a peak is not computed."""
 
 PARTS_AT_MOST = 40

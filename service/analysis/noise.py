@@ -21,11 +21,11 @@ class ControlSensitivity(Sensitivity):
     def __init__(self, parts: ClosedLoopParts) -> None:
         super().__init__(parts.loop)
         self._parts = parts
-        self._zeros = np.array(parts.controller.zeros_rad_s, complex) / parts.unit_rad_s
+        self._zeros: Complexes = np.array(parts.controller.zeros_rad_s, complex) / complex(parts.unit_rad_s)
         filter_poles = (-1.0 / parts.measurement_filter,) if parts.measurement_filter > 0 else ()
-        poles = np.array(parts.controller.poles_rad_s, complex) / parts.unit_rad_s
-        self._poles = np.concatenate([poles, np.array(filter_poles, complex)])
-        self._log_gain = _log_gain(parts, self._zeros, self._poles)
+        poles = np.array(parts.controller.poles_rad_s, complex) / complex(parts.unit_rad_s)
+        self._poles: Complexes = np.concatenate([poles, np.array(filter_poles, complex)])
+        self._log_gain = _log_gain(parts)
 
     def numerator(self, omega: Reals, response: Complexes) -> Complexes | float:
         """abs C·F; its angle plays no part."""
@@ -36,17 +36,13 @@ class ControlSensitivity(Sensitivity):
         return self._log_slope(omega)
 
     def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
-        """Largest abs C·F of the step/abs(1 − abs L), with an allowance where abs C·F has a maximum
-        inside.
-        """
+        """Largest abs C·F/abs(1 − abs L) of the step; with an allowance where abs C·F has a maximum in it."""
         largest = np.exp(np.maximum(self._log_magnitude(left), self._log_magnitude(right)))
         turns = (self._log_slope(left) > 0) & (self._log_slope(right) < 0)
         return np.where(turns, NUMERATOR_ALLOWANCE, 1.0) * largest / np.abs(1.0 - magnitude)
 
     def ends(self) -> list[float]:
-        """abs of C·F/(1+L) at ω = 0 and the values it tends to as ω grows; inf where it grows without
-        bound.
-        """
+        """abs C·F/(1+L) at ω = 0 and the values it tends to as ω grows; inf where it has no bound."""
         return [self._at_origin(), *self._at_infinity()]
 
     def high_frequency(self) -> float:
@@ -55,7 +51,7 @@ class ControlSensitivity(Sensitivity):
         return 0.0 if excess > 0 else (math.exp(self._log_gain) if excess == 0 else math.inf)
 
     def _log_slope(self, omega: Reals) -> Reals:
-        s = 1j * omega
+        s: Complexes = np.asarray(1j * omega)
         return np.asarray((1j * (reciprocal_sum(s, self._zeros) - reciprocal_sum(s, self._poles))).real)
 
     def _log_magnitude(self, omega: Reals) -> Reals:
@@ -109,7 +105,7 @@ def noise(axis: AxisResponse, parts: ClosedLoopParts) -> Noise:
     )
 
 
-def _log_gain(parts: ClosedLoopParts, zeros: Complexes, poles: Complexes) -> float:
+def _log_gain(parts: ClosedLoopParts) -> float:
     """ln of the leading coefficient of C·F in the loop's unit, from the scaled parallel terms."""
     terms = parts.feedback
     leading = next(

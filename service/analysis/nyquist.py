@@ -18,7 +18,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from service.analysis.frequency import AxisResponse, log_factors
-from service.analysis.loop import EPSILON, OpenLoop, Reals
+from service.analysis.loop import EPSILON, Complexes, OpenLoop, Reals
 
 ROUNDING_FACTOR = 64.0
 """How many times the rounding of one term the distance to -1 must exceed to be told from 0."""
@@ -142,7 +142,7 @@ def _forms_at_infinity(loop: OpenLoop) -> tuple[float, float]:
     return denominator, numerator + (math.pi if loop.sign < 0 else 0.0)
 
 
-def _argument_at_origin(roots: np.ndarray) -> float:  # type: ignore[type-arg]
+def _argument_at_origin(roots: Complexes) -> float:
     """Argument of ∏(jω − r) as ω falls to 0, in the convention of `log_factors`."""
     real = roots[roots.imag == 0].real
     right_pairs = np.count_nonzero((roots.imag > 0) & (roots.real > 0))

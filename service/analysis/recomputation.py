@@ -2,6 +2,10 @@
 
 from __future__ import annotations
 
+from dataclasses import fields, replace
+from math import isfinite
+from typing import TypeVar
+
 import numpy as np
 
 from service.analysis.controller import Controller, Scan
@@ -22,6 +26,7 @@ from service.analysis.results import (
     Curves,
     LoadStep,
     Margins,
+    Noise,
     Recomputation,
     Route,
     SetpointStep,
@@ -44,7 +49,7 @@ NOTE_IMPULSE = "setpoint_impulse"
 """The unfiltered derivative of a stepped set point is an impulse; the output has no peak and no travel."""
 
 NOTE_NUMBERS = "numbers_out_of_range"
-"""The loop's numbers leave float64 on the way; nothing is computed."""
+"""The loop's numbers leave float64 on the way; what they reach is not computed."""
 
 
 def recompute(
@@ -64,22 +69,28 @@ def recompute(
     # zeros and poles on the axis, and what lies beyond float64, show as inf and nan on the way and are met
     # there
     with np.errstate(all="ignore"):
-        return _recompute(plant_model, controller, ranges, settling_band_percent, with_curves)
+        parts = form_loop(plant_model, controller, ranges)
+        _refuse_ill_posed(parts.loop)
+        result = _recompute(parts, plant_model, controller, settling_band_percent, with_curves)
+    if not with_second_opinion:
+        return result
+    # python-control takes longer to import than everything else together, so only who asks for it waits
+    from service.analysis.second_opinion import second_opinion  # noqa: PLC0415
+
+    return replace(result, second_opinion=second_opinion(parts, result.continuous, settling_band_percent))
 
 
 def _recompute(
+    parts: ClosedLoopParts,
     plant_model: PlantModel,
     controller: Controller,
-    ranges: Ranges | None,
     settling_band_percent: float,
     with_curves: bool,
 ) -> Recomputation:
-    parts = form_loop(plant_model, controller, ranges)
-    _refuse_ill_posed(parts.loop)
     try:
         space = realise(parts)
         continuous, drawn = _continuous(parts, space, settling_band_percent, with_curves)
-    except (OverflowError, ZeroDivisionError, np.linalg.LinAlgError):
+    except (ArithmeticError, np.linalg.LinAlgError):
         space, continuous, drawn = None, _beyond_float64(), None
     scanned = isinstance(controller.scan, Scan)
     uncertain = plant_model.uncertainty is not None
@@ -132,10 +143,10 @@ def _continuous(
     analysis = Analysis(
         stability=stability,
         crossovers=listed,
-        margins=found_margins,
-        setpoint_step=setpoint,
-        load_step=load,
-        noise=noise(axis, parts),
+        margins=_finite(found_margins, notes),
+        setpoint_step=_finite(setpoint, notes),
+        load_step=_finite(load, notes),
+        noise=_finite(noise(axis, parts), notes),
         notes=tuple(notes),
     )
     return analysis, curves(responses, axis, unit) if with_curves else None
@@ -154,6 +165,23 @@ def _steps(
     setpoint, load = step_metrics(responses, band_percent, unit, impulse=impulse)
     # an impulse of the output that the plant passes at once leaves PV without a response in time
     return (None if impulse and space.d_y != 0 else setpoint), load
+
+
+Part = TypeVar("Part", Margins, SetpointStep, LoadStep, Noise)
+
+
+def _finite(part: Part | None, notes: list[str]) -> Part | None:
+    """The part with None in place of every number that has left float64, and a note where there was one."""
+    if part is None:
+        return None
+    values = {field.name: getattr(part, field.name) for field in fields(part)}
+    lost = [name for name, value in values.items() if isinstance(value, float) and not isfinite(value)]
+    if not lost:
+        return part
+    if NOTE_NUMBERS not in notes:
+        notes.append(NOTE_NUMBERS)
+    values.update(dict.fromkeys(lost))
+    return type(part)(**values)
 
 
 def _beyond_float64() -> Analysis:

@@ -210,7 +210,10 @@ def _without_dead_time(known: _Known, plan: _Plan) -> Pieces:
     state[n, SETPOINT] = state[n + 1, LOAD] = 1.0
     _, k = space.closed_without_dead_time()
     state[:n, SETPOINT] = space.b_w * k * space.setpoint_impulse
-    time, starts, lengths, values = 0.0, [], [], []
+    time = 0.0
+    starts: list[float] = []
+    lengths: list[float] = []
+    values: list[Reals] = []
     while (time < plan.end or not starts) and len(starts) < MAX_PIECES:
         level = ladder.level(TURN / _fastest(modes, time))
         to_end, to_nodes, length = ladder.step(level)
@@ -510,7 +513,9 @@ def _cancelled_modes(parts: ClosedLoopParts) -> tuple[Complexes, Complexes, Comp
 def _continued(march: _March, known: _Known, end: float) -> Pieces:
     """The march and behind it the series, in pieces that lengthen as the faster modes die."""
     start, length, pv, output, _ = march.pieces(False)
-    time, starts, lengths = march.time, [], []
+    time = march.time
+    starts: list[float] = []
+    lengths: list[float] = []
     while time < end and len(starts) + len(start) < MAX_PIECES:
         starts.append(time)
         lengths.append(TURN / _fastest(known.modes, time))

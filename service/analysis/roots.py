@@ -17,6 +17,7 @@ from dataclasses import dataclass
 from functools import lru_cache
 
 import numpy as np
+import numpy.typing as npt
 
 from service.analysis.frequency import AxisResponse
 from service.analysis.loop import Complexes, OpenLoop, Reals, reciprocal_sum
@@ -33,6 +34,9 @@ FEW_NODES = 40
 
 LEVELS = (3.0, 1.5, 0.7, 0.2, 0.02)
 """How far below 1, in nepers, abs L is still resolved."""
+
+NEPERS_OF_CHAIN = 5.0
+"""Where ln abs L is beyond this, a root can only lie beside a zero or pole of L."""
 
 CLUSTER = 1e-4
 """Roots nearer to each other than this, relatively, are taken for one multiple root where errors are told."""
@@ -102,7 +106,7 @@ def root_error(loop: OpenLoop, roots: Complexes) -> Reals:
     near = np.abs(every[None, :] - roots[:, None]) <= CLUSTER * np.abs(roots[:, None])
     multiplicity = near.sum(axis=1)
     of_cluster = 4.0 * relative ** (1.0 / multiplicity) * np.abs(roots)
-    return np.where((multiplicity > 1) | ~np.isfinite(error), of_cluster, error)
+    return np.asarray(np.where((multiplicity > 1) | ~np.isfinite(error), of_cluster, error))
 
 
 def _infinite_chain(loop: OpenLoop) -> CharacteristicRoots:
@@ -142,7 +146,7 @@ def _node_counts(axis: AxisResponse) -> list[int]:
 
 def _resolved(nodes: int) -> float:
     """Up to which angle ωθ so many nodes resolve e^(jωt) over one dead time: π nodes a turn, and a fringe."""
-    return 2.0 * (nodes - 3.0 * nodes ** (1 / 3))
+    return float(2.0 * (nodes - 3.0 * nodes ** (1 / 3)))
 
 
 def _starts(space: StateSpace | None, loop: OpenLoop, nodes: int) -> Complexes:
@@ -190,8 +194,8 @@ def _polished(loop: OpenLoop, starts: Complexes) -> Complexes:
     """Newton on ln(−L) = 0, which is nearly linear along the chain of roots that dead time makes.
 
     `starts` on and above the real axis; a start off the axis stands for a pair. Without dead time every start
-    is a root, so one that Newton does not settle is kept as it is: at a multiple root it is right to half the
-    digits.
+    is a root, so one from which Newton finds none of its own is kept as it is: at a multiple root it is right
+    to half the digits.
     """
     at, step = starts.copy(), np.zeros_like(starts)
     real = starts.imag == 0
@@ -201,11 +205,12 @@ def _polished(loop: OpenLoop, starts: Complexes) -> Complexes:
         if np.all(np.abs(step) <= 1e-15 * np.abs(at)):
             break
     settled = np.isfinite(at) & (np.abs(step) <= 1e-7 * np.abs(at))
-    if loop.dead_time == 0:
-        settled &= np.abs(at - starts) <= 1e-3 * np.abs(starts)
-        at, settled = np.where(settled, at, starts), np.ones_like(settled)
     at = np.where(at.imag < 0, np.conj(at), at)
-    kept = _first_found(loop, starts, at, settled)
+    kept = _first_found(starts, at, settled)
+    if loop.dead_time == 0:
+        lost = [index for index in range(len(starts)) if index not in kept]
+        at[lost] = starts[lost]
+        kept += lost
     found, pair = at[kept], ~real[kept]
     # a pair that has come to lie on the real axis is two real roots
     on_axis = np.abs(found.imag) <= 1e-12 * np.abs(found)
@@ -214,37 +219,42 @@ def _polished(loop: OpenLoop, starts: Complexes) -> Complexes:
 
 
 def _newton_step(loop: OpenLoop, at: Complexes) -> Complexes:
-    with np.errstate(all="ignore"):
-        value = loop.at(at)
-        # near a root 1 + L keeps the digits that the logarithm of nearly 1 would lose
-        residual = np.where(np.abs(1 + value) < 1e-3, -(1 + value), np.log(-value))
-        step = -residual / loop.log_derivative(at)
-        # a start on a pole of L, or far left where e^(−sθ) overflows, stays where it is
-        step = np.where(np.isfinite(step), step, 0.0)
-        largest = 0.5 * (np.abs(at) + 1.0)
-        size = np.abs(step)
-        return np.where(size > largest, step * (largest / np.where(size > 0, size, 1.0)), step)
+    """On ln(−L) where L is near 1 in magnitude, along the chain; on D·(1 + L) elsewhere, beside a pole of
+    L.
+    """
+    value = loop.at(at)
+    slope = loop.log_derivative(at)
+    # near a root 1 + L keeps the digits that the logarithm of nearly 1 would lose
+    residual = np.where(np.abs(1 + value) < 1e-3, -(1 + value), np.log(-value))
+    on_logarithm = -residual / slope
+    on_product = -(1 + value) / ((1 + value) * reciprocal_sum(at, loop.poles) + value * slope)
+    step = np.where(np.abs(residual) < NEPERS_OF_CHAIN, on_logarithm, on_product)
+    # a start on a pole of L, or far left where e^(−sθ) overflows, stays where it is
+    step = np.where(np.isfinite(step), step, 0.0)
+    size, largest = np.abs(step), 0.5 * (np.abs(at) + 1.0)
+    return np.asarray(np.where(size > largest, step * (largest / np.where(size > 0, size, 1.0)), step))
 
 
-def _first_found(loop: OpenLoop, starts: Complexes, roots: Complexes, settled: Reals) -> list[int]:
+def _first_found(starts: Complexes, roots: Complexes, settled: npt.NDArray[np.bool_]) -> list[int]:
     """Which roots stay when one that a second start found again is left out.
 
     True multiple roots have starts that lie together.
     """
     kept: list[int] = []
     moved = np.abs(roots - starts)
-    for index in np.argsort(moved, kind="stable"):
+    for index in np.argsort(moved, kind="stable").tolist():
         root = roots[index]
         if not settled[index]:
             continue
         again = [k for k in kept if abs(roots[k] - root) <= 1e-7 * abs(root)]
-        if loop.dead_time == 0 or all(abs(starts[k] - starts[index]) <= 1e-3 * abs(root) for k in again):
-            kept.append(int(index))
+        if all(abs(starts[k] - starts[index]) <= 1e-3 * abs(root) for k in again):
+            kept.append(index)
     return kept
 
 
 def _count(loop: OpenLoop, roots: Complexes) -> Count:
-    error = root_error(loop, roots)
+    # where Newton has not settled its next step tells how far off the root may be
+    error = np.maximum(root_error(loop, roots), 2.0 * np.abs(_newton_step(loop, roots)))
     if np.any(np.abs(roots.real) <= error):
         return Count(None, reason="a root lies on the axis within the precision of the numbers")
     right = roots[roots.real > 0]

@@ -229,7 +229,7 @@ def _variation(integrals_in_rows: Reals, row: Indices, place: Reals) -> Reals:
     """Σ abs of the changes between the given places, row by row, shape (rows,)."""
     rows_of, _, values = _with_ends(integrals_in_rows, row, place)
     changes = np.where(rows_of[1:] == rows_of[:-1], np.abs(np.diff(values)), 0.0)
-    return np.bincount(rows_of[1:], weights=changes, minlength=len(integrals_in_rows))
+    return np.asarray(np.bincount(rows_of[1:], changes, len(integrals_in_rows)), float)
 
 
 @lru_cache(maxsize=1)

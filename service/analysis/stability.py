@@ -11,7 +11,7 @@ from service.analysis.frequency import AxisResponse
 from service.analysis.loop import EPSILON, ClosedLoopParts, Complexes
 from service.analysis.nyquist import ROUNDING_FACTOR, Count, count_right_of_axis
 from service.analysis.realisation import StateSpace
-from service.analysis.results import DominantRoot, Quantity, Route, Stability, Verdict
+from service.analysis.results import DominantRoot, Quantity, Route, Stability, Unbounded, Verdict
 from service.analysis.roots import CharacteristicRoots, characteristic_roots
 
 MAX_DOMINANT_ROOTS = 6
@@ -46,7 +46,7 @@ def decide(parts: ClosedLoopParts, space: StateSpace | None, axis: AxisResponse)
     return DecidedStability(stability, roots)
 
 
-def agree(routes: list[Route]) -> tuple[Verdict, int | str | None, str | None]:  # type: ignore[return]
+def agree(routes: list[Route]) -> tuple[Verdict, int | Unbounded | None, str | None]:
     """One verdict from several routes: theirs where all say the same, else `undecided` with the reason."""
     undecided = [route for route in routes if route.verdict == "undecided"]
     if undecided:
