@@ -38,14 +38,19 @@ def round_up(value: float) -> float:
 
 
 def linear(low: float, high: float, at_most: int) -> tuple[float, ...]:
-    """Multiples of 1, 2 or 5 times a power of ten within [low, high], `at_most` of them."""
+    """Multiples of 1, 2 or 5 times a power of ten within [low, high]: `at_most` of them, two at the least."""
     rough = (high - low) / max(at_most - 1, 1)
     decade = 10.0 ** math.floor(math.log10(rough))
-    for step in (factor * decade for factor in (*STEPS, 20.0, 50.0)):
-        first, last = math.ceil(low / step - 1e-9), math.floor(high / step + 1e-9)
-        if last - first + 1 <= at_most:
-            return tuple(index * step for index in range(first, last + 1))
-    return ()
+    multiples: list[range] = []
+    steps = [factor * decade for factor in (*STEPS, 20.0, 50.0)]
+    for step in steps:
+        multiples.append(range(math.ceil(low / step - 1e-9), math.floor(high / step + 1e-9) + 1))
+        if len(multiples[-1]) <= at_most:
+            break
+    if len(multiples[-1]) < 2:
+        multiples.pop()
+    step = steps[len(multiples) - 1]
+    return tuple(index * step for index in multiples[-1])
 
 
 def decades(low: float, high: float, at_most: int) -> tuple[float, ...]:

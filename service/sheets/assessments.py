@@ -350,8 +350,8 @@ def _minus(number: str) -> str:
 def _engine(answer: RecomputationAnswer) -> str:
     engine = answer.engine
     return (
-        f"Recomputed by this service, version {engine.service}, "
-        f"with Python {engine.python}, NumPy {engine.numpy} and SciPy {engine.scipy}."
+        f"Recomputed by this service, version {engine.service} "
+        f"(Python {engine.python}, NumPy {engine.numpy}, SciPy {engine.scipy})."
     )
 
 

@@ -24,6 +24,7 @@ from service.records.content import (
     SignedModel,
     SignedRecomputation,
 )
+from service.records.lifecycle import REVIEW_OWED
 from service.records.views import (
     Comparison,
     CurvesView,
@@ -240,11 +241,11 @@ def _summary(signed: SignedContent) -> tuple[bool, str]:
 
 def _conditions(view: SubmissionView) -> Iterator[str]:
     signed = view.content
-    if signed.install_by:
+    if signed.install_by and not view.installations:
         yield f"To be installed by {utc(signed.install_by)}."
     if signed.temporary_until:
         yield f"TEMPORARY: valid until {utc(signed.temporary_until)}."
-    if view.approvals_needed > 1:
+    if view.approvals_needed > 1 and view.state in REVIEW_OWED:
         given = sum(decision.decision.decision == "approve" for decision in view.decisions)
         yield f"{view.approvals_needed} approvals by different people are needed, {given} given."
     if view.review_due_at:
@@ -476,9 +477,6 @@ def _version(view: SubmissionView) -> Iterator[Told]:
 def _digests(view: SubmissionView) -> Iterator[Told]:
     yield Told(name="Digest of the content", value=view.content_digest)
     yield Told(name=f"Digest of history entry {view.entry.number}", value=view.entry.digest)
-    latest = _latest(view)
-    if latest.number != view.entry.number:
-        yield Told(name=f"Digest of history entry {latest.number}", value=latest.digest)
 
 
 def _code(view: SubmissionView) -> str:

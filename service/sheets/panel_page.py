@@ -74,8 +74,8 @@ def _banner(content: SheetContent) -> Flowable:
 
 def _conditions(content: SheetContent) -> Iterator[Flowable]:
     yield Spacer(0, 4)
-    for sentence in content.conditions:
-        yield said(sentence, styles.LOUD)
+    if content.conditions:
+        yield said(" ".join(content.conditions), styles.LOUD)
     yield said(content.summary, styles.SETTING if content.summary_good else styles.LOUD)
     yield Spacer(0, 5)
 
@@ -120,7 +120,7 @@ def _gains_table(content: SheetContent, gain_set: GainTable) -> Table:
     Several sets, or one that changes the form and shows both, keep to one page in smaller type too.
     """
     roomy = sum(len(each.gains) for each in content.tables) <= LARGE_LINES
-    largest = 24 if content.state.entry and roomy else 15
+    largest = 23 if content.state.entry and roomy else 15
     head = ["Setting", content.state.column, gain_set.before_heading]
     rows = [[said(words, styles.COLUMN) for words in head]]
     rows += [
@@ -136,8 +136,8 @@ def _gains_table(content: SheetContent, gain_set: GainTable) -> Table:
         ("GRID", (0, 0), (-1, -1), 0.7, black),
         ("BOX", (1, 0), (1, -1), 2.2, black),
         ("BACKGROUND", (0, 0), (-1, 0), PALE),
-        ("TOPPADDING", (0, 1), (-1, -1), 3 if roomy else 0.5),
-        ("BOTTOMPADDING", (0, 1), (-1, -1), 5 if roomy else 2.5),
+        ("TOPPADDING", (0, 1), (-1, -1), 2 if roomy else 0.5),
+        ("BOTTOMPADDING", (0, 1), (-1, -1), 4 if roomy else 2.5),
     ]
     return table(rows, [_NAME_PT, _VALUE_PT, _BEFORE_PT], look, repeatRows=1)
 

@@ -120,7 +120,7 @@ def _responses(told: Assessment) -> Iterator[Flowable]:
     yield Spacer(0, 5)
     width = int(WIDTH_PT / 2) - 6
     drawings = [
-        response_drawing(response, width_pt=width, height_pt=148, text_pt=6.5) for response in told.responses
+        response_drawing(response, width_pt=width, height_pt=144, text_pt=6.5) for response in told.responses
     ]
     yield table([drawings], [WIDTH_PT / 2] * len(drawings), styles.BARE, hAlign="LEFT")
 

@@ -23,6 +23,9 @@ CODE_POINTS = (
 _EMPTY_LINES = re.compile(r"\n{3,}")
 _RIGHT_TO_LEFT = {"R", "AL", "AN", "RLE", "RLO", "RLI", "LRE", "LRO", "LRI", "FSI", "PDF", "PDI"}
 _NEVER_SEEN = {"Cc", "Cf", "Cn", "Co", "Cs", "Zl", "Zp"}
+_LAST_SEARCHABLE = 0xFFFF
+"""reportlab writes a wrong text layer for characters beyond; they could be seen and not be found."""
+
 _SPACES = {"\n", "\t", " "}
 
 
@@ -63,6 +66,8 @@ def marked_up(text: str) -> str:
 def _is_printable(character: str) -> bool:
     if character in _SPACES:
         return True
+    if ord(character) > _LAST_SEARCHABLE:
+        return False
     return (
         ord(character) in fonts.code_points()
         and unicodedata.category(character) not in _NEVER_SEEN
