@@ -7,6 +7,7 @@ from dataclasses import replace
 import pytest
 
 from service.figures.descriptions import ROWS, describe, table
+from service.judgement.digits import three_digits
 from tests.figures.responses_to_draw import frequency, load, setpoint
 
 
@@ -35,7 +36,8 @@ def test_a_load_step_is_told_by_its_peak() -> None:
 def test_the_peak_of_the_sensitivity_is_told_where_it_says_something() -> None:
     curve = frequency()
     at = max(range(len(curve.rad_s)), key=lambda index: curve.sensitivity[index])
-    assert f"largest near {curve.rad_s[at]:.3g} rad/s: {curve.sensitivity[at]:.3g}" in describe(curve)
+    peak = f"near {three_digits(curve.rad_s[at])} rad/s: {three_digits(curve.sensitivity[at])} at the drawn points"
+    assert peak in describe(curve)
     on_the_edge = replace(curve, sensitivity=(1e15, *curve.sensitivity[1:]))
     assert "largest" not in describe(on_the_edge)
 
