@@ -6,10 +6,10 @@ import re
 import unicodedata
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from datetime import datetime
+from datetime import datetime, timedelta
 from uuid import uuid4
 
-from sqlalchemy import select, update
+from sqlalchemy import func, select, update
 from sqlalchemy.orm import Session
 
 from service.documents.errors import FieldProblem
@@ -34,6 +34,7 @@ NAME_PATTERN = re.compile(r"[a-z0-9](?:[a-z0-9._-]{0,38}[a-z0-9])?")
 
 FULL_NAME_CHARACTERS_MAX = 100
 REASON_CHARACTERS_MAX = 1000
+UNUSED_AFTER = timedelta(days=90)
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -94,6 +95,19 @@ def accounts(session: Session, actor: Actor, after: str | None = None, limit: in
     rows = session.execute(query).scalars().all()
     more = len(rows) > limit
     return Page(items=tuple(map(_view, rows[:limit])), after=rows[limit - 1].name if more else None)
+
+
+def unused(session: Session, actor: Actor, now: datetime) -> tuple[AccountView, ...]:
+    """Open accounts that nobody has used for 90 days, by name: whoever left should not keep a way in.
+
+    Raises NotAllowed.
+    """
+    require_role(actor, "administrator", "auditor")
+    query = select(Account).where(
+        Account.closed_at.is_(None),
+        func.coalesce(Account.last_used_at, Account.created_at) < now - UNUSED_AFTER,
+    )
+    return tuple(map(_view, session.execute(query.order_by(Account.name)).scalars()))
 
 
 def change_access(

@@ -71,7 +71,9 @@ def install(
     held = _nearest(content, request.as_left)
     earlier = _installations(session, submission_id)
     whole = held.as_approved and _all_sets_left(content, earlier, held.gain_set)
-    state = states.next_row(session, submission, "install" if whole else "install_otherwise", now)
+    # by the clock at the controller: what was installed in time is often recorded on the next working day
+    at = min(request.installed_at, now)
+    state = states.next_row(session, submission, "install" if whole else "install_otherwise", at)
     outcome = Outcome((), None)
     if whole:
         since = request.installed_at

@@ -31,7 +31,7 @@ class Table:
 
     def row_name(self, row: Mapping[str, Any]) -> str:
         """Name a row by its key."""
-        return ", ".join(f"{column} {row[column]}" for column in self.key)
+        return ", ".join([f"{column} {row[column]}" for column in self.key])
 
     def values(self, row: Mapping[str, Any]) -> dict[str, object]:
         """Return what an entry records of a row: bytes by their SHA-256, times in RFC 3339."""

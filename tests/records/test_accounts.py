@@ -186,6 +186,25 @@ def test_accounts_are_listed_a_page_at_a_time(store: Store) -> None:
     assert len(seen) == len(set(seen)) == 7
 
 
+def test_accounts_unused_for_90_days_are_listed(store: Store) -> None:
+    store.clock.forward(days=60)
+    _sign_in(store, "reviewer")
+    _add(store)
+    store.clock.forward(days=31)
+    with store.database.reading() as session:
+        found = accounts.unused(session, store.actor("auditor"), store.clock())
+        with pytest.raises(NotAllowed):
+            accounts.unused(session, store.actor("submitter"), store.clock())
+    assert [account.name for account in found] == [
+        "administrator",
+        "auditor",
+        "colleague",
+        "outsider",
+        "second",
+        "submitter",
+    ]
+
+
 def test_ones_own_password_is_changed_with_the_old_one_and_all_sessions_end(store: Store) -> None:
     started, new = _sign_in(store), "another fifteen letters"
     with store.database.writing() as session:

@@ -8,7 +8,7 @@ from typing import Any
 import pytest
 
 from service.records import queries
-from service.records.errors import FieldErrors, NotFound
+from service.records.errors import FieldErrors, NotFound, WrongStep
 from service.records.views import LoopView, SubmissionView
 from tests.records.store import Store, gains
 
@@ -172,6 +172,17 @@ def test_an_installation_before_its_approval_is_recorded_and_says_so(store: Stor
     store.clock.forward(hours=2)
     store.approve(submission)
     assert store.install(submission, installed_at=typed_at).installation.before_approval
+
+
+def test_what_was_installed_in_time_is_recorded_afterwards(store: Store, loop: LoopView) -> None:
+    friday = store.clock() + timedelta(days=4)
+    submission = store.submit(install_by=friday.isoformat())
+    store.approve(submission)
+    store.clock.forward(days=7)
+    with pytest.raises(WrongStep, match="expired"):
+        store.install(submission)
+    store.install(submission, installed_at=(friday - timedelta(hours=1)).isoformat())
+    assert store.read(submission).state == "in_force"
 
 
 @pytest.mark.parametrize("by", [timedelta(hours=1), -timedelta(hours=1)])
