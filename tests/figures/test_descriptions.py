@@ -36,8 +36,8 @@ def test_a_load_step_is_told_by_its_peak() -> None:
 def test_the_peak_of_the_sensitivity_is_told_where_it_says_something() -> None:
     curve = frequency()
     at = max(range(len(curve.rad_s)), key=lambda index: curve.sensitivity[index])
-    peak = f"near {three_digits(curve.rad_s[at])} rad/s: {three_digits(curve.sensitivity[at])} at the drawn points"
-    assert peak in describe(curve)
+    rad_s, peak = three_digits(curve.rad_s[at]), three_digits(curve.sensitivity[at])
+    assert f"near {rad_s} rad/s: {peak} at the drawn points" in describe(curve)
     on_the_edge = replace(curve, sensitivity=(1e15, *curve.sensitivity[1:]))
     assert "largest" not in describe(on_the_edge)
 
