@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from typing import Any
 
 from flask import Blueprint, current_app, render_template
@@ -17,7 +18,13 @@ Json = dict[str, Any]
 @blueprint.get("/reference")
 def show_reference() -> str:
     """Show every call, with what it takes and gives. Open to all, as the description itself is."""
-    return render_template("api_reference.html", description=openapi.description(current_app), shape=shape)
+    described = openapi.description(current_app)
+    return render_template("api_reference.html", description=described, shape=shape, pretty=pretty)
+
+
+def pretty(example: object) -> str:
+    """Return an example as JSON that is laid out to be read."""
+    return json.dumps(example, indent=2, ensure_ascii=False)
 
 
 def shape(schema: Json) -> Markup:

@@ -9,7 +9,7 @@ import pytest
 
 from service.api.openapi import routes_of
 from tests.api import plant
-from tests.api.conftest import Decide, Service
+from tests.api.conftest import Decide, Service, password_of
 from tests.api.plant import Body, changed, without
 from tests.api.test_credentials import api_rules
 
@@ -113,6 +113,34 @@ def test_what_is_answered_on_the_walk_is_what_is_described(
     ]
     for value, schema in made:
         assert problems(description, schema, value) == []
+
+
+def test_the_examples_of_the_description_run_from_registration_to_installation(
+    service: Service, description: Body
+) -> None:
+    def example(name: str) -> Body:
+        schema = description["components"]["schemas"][name]
+        shown: Body = schema["examples"][0]
+        return shown
+
+    assert service.post("/v1/recomputations", example("RecomputationRequest")).status_code == 200
+    loop = service.post("/v1/loops", example("LoopRegistration"))
+    assert service.post(f"{loop.headers['Location']}/models", example("ModelVersion")).status_code == 201
+    # a date in an example is past some day
+    made = service.post("/v1/submissions", without(example("SubmissionRequest"), "install_by"))
+    assert made.status_code == 201, made.text
+    # what the example cannot know: this submission's digest, this password, and that all limits are met
+    own = {
+        "content_digest": made.json["content_digest"],
+        "password": password_of("reviewer"),
+        "deviation": [],
+    }
+    decision = example("DecisionRequest") | own
+    signed = service.post(f"{made.headers['Location']}/decisions", decision, person="reviewer")
+    assert signed.status_code == 201, signed.text
+    installation = example("InstallationRequest") | {"installed_at": plant.installed_now()["installed_at"]}
+    installed = service.post(f"{made.headers['Location']}/installations", installation)
+    assert installed.status_code == 201, installed.text
 
 
 def test_a_problem_is_as_described(service: Service, description: Body) -> None:
