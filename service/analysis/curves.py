@@ -15,6 +15,9 @@ from service.analysis.responses import LOAD, SETPOINT, Responses
 from service.analysis.results import Curves, FrequencyCurve, ResponseCurve
 
 MAX_POINTS = 600
+MAX_POINTS_A_PIECE = 120
+"""A loop without dead time may settle within two pieces: with a dozen points its curve would show corners."""
+
 SHOWN_BEYOND = 1.3
 """A curve ends at so many times the time after which it stays within 1 % of its span."""
 
@@ -57,7 +60,7 @@ def _pieces_shown(responses: Responses, which: int) -> int:
 
 
 def _places(pieces: int) -> Reals:
-    count = min(12, max(4, MAX_POINTS // pieces))
+    count = min(MAX_POINTS_A_PIECE, max(4, MAX_POINTS // pieces))
     return np.linspace(0.0, 1.0, count)
 
 
