@@ -18,6 +18,7 @@ class Cautions:
 
 
 BEFORE = (
+    "Paper grows old: check in the service that the state of this record is still the one printed here.",
     "Check tag, form, units and action on the controller's own display against this sheet. "
     "If one differs, do not type: ask.",
     "Have the operator's agreement. Note output, mode and set point.",

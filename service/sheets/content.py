@@ -466,7 +466,7 @@ _SAVED = {
 def _version(view: SubmissionView) -> Iterator[Told]:
     latest = _latest(view)
     yield Told(name="Record", value=view.id)
-    yield Told(name="State as of history entry", value=f"{latest.number} ({utc(latest.time)})")
+    yield Told(name="Last history entry of this record", value=f"{latest.number} ({utc(latest.time)})")
     if view.content.gains_in_force:
         yield Told(name="Takes the place of record", value=view.content.gains_in_force.submission_id)
     else:

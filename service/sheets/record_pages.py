@@ -175,7 +175,7 @@ def _identity(content: SheetContent) -> Iterator[Flowable]:
 
 _ABOUT_DIGESTS = (
     "The code on the first page holds the digests as text. "
-    "A sheet shows the state at its history entry, and none that came later."
+    "The sheet shows the state in which the record was read; what happened later is in the history only."
 )
 
 

@@ -62,6 +62,7 @@ def test_a_known_cascade_is_named() -> None:
 def test_every_usual_caution_is_there() -> None:
     said = " ".join(sentence for group in cautions.cautions([], None) for sentence in group.sentences)
     for words in (
+        "state of this record is still the one printed",
         "tag, form, units and action on the controller's own display",
         "operator's agreement",
         "Note output, mode and set point",

@@ -184,7 +184,7 @@ def test_a_record_without_a_signature_says_so(print_case: PrintCase) -> None:
 
 def test_the_sheet_says_its_version_and_what_it_replaces(ordinary: SheetContent) -> None:
     told = {each.name: each.value for each in ordinary.version}
-    assert told["State as of history entry"] == "421 (2031-03-14 13:00:00 UTC)"
+    assert told["Last history entry of this record"] == "421 (2031-03-14 13:00:00 UTC)"
     assert told["Takes the place of record"] == "01JK2"
 
 
