@@ -33,9 +33,11 @@ CANCELLED = 8 * EPSILON
 
 @dataclass(frozen=True, eq=False)
 class OpenLoop:
-    """L(s) = sign·e^log_gain·∏(s−z)/∏(s−p)·e^(−s·dead_time), without the hidden factors.
+    """L(s) = sign·e^log_gain·∏(s−z)/∏(s−p)·((1−s)/(1+s))^all_pass·e^(−s·dead_time), without the hidden
+    factors.
 
-    `zeros` and `poles`: complex, shapes (nz,) and (np,), closed under conjugation.
+    `zeros` and `poles`: complex, shapes (nz,) and (np,), closed under conjugation. The all-pass is what whole
+    scans of dead time are to a sampled loop, told in w = (z−1)/(z+1); a continuous loop has none.
     """
 
     zeros: Complexes
@@ -43,6 +45,7 @@ class OpenLoop:
     log_gain: float
     sign: float
     dead_time: float
+    all_pass: int = 0
 
     @cached_property
     def excess(self) -> int:
@@ -55,6 +58,14 @@ class OpenLoop:
         if self.excess > 0 or self.sign == 0:
             return 0.0
         return math.exp(min(self.log_gain, 700.0)) if self.excess == 0 else math.inf
+
+    @cached_property
+    def value_at_infinity(self) -> float:
+        """The real L(∞) of a loop without dead time; inf where it grows."""
+        if self.excess > 0 or self.sign == 0:
+            return 0.0
+        turned = -self.sign if self.all_pass % 2 else self.sign
+        return turned * self.high_frequency_magnitude
 
     @cached_property
     def order_at_origin(self) -> int:
@@ -108,24 +119,37 @@ class OpenLoop:
         roots, weights, turned, constant = self._factors
         difference = 1j * omega[..., None] - roots
         logs = np.log(difference * turned) @ weights + (constant - 1j * self.dead_time * omega)
-        return logs, 1j * ((1.0 / difference) @ weights - self.dead_time)
+        slopes = 1j * ((1.0 / difference) @ weights - self.dead_time)
+        if self.all_pass:
+            logs = logs - 2j * self.all_pass * np.arctan(omega)
+            slopes = slopes - 2j * self.all_pass / (1.0 + omega * omega)
+        return logs, slopes
 
     def log_response(self, omega: Reals) -> Complexes:
         """ln L(jω) alone."""
         roots, weights, turned, constant = self._factors
         logs = np.log((1j * omega[..., None] - roots) * turned) @ weights
-        return np.asarray(logs + (constant - 1j * self.dead_time * omega))
+        logs = logs + (constant - 1j * self.dead_time * omega)
+        return np.asarray(logs - 2j * self.all_pass * np.arctan(omega) if self.all_pass else logs)
 
     def log_derivative(self, s: Complexes) -> Complexes:
         """d ln L/ds at `s`, shape of `s`."""
         roots, weights, _, _ = self._factors
-        return np.asarray((1.0 / (s[..., None] - roots)) @ weights - self.dead_time)
+        slope = (1.0 / (s[..., None] - roots)) @ weights - self.dead_time
+        return np.asarray(slope - 2.0 * self.all_pass / (1.0 - s * s) if self.all_pass else slope)
 
     def at(self, s: Complexes) -> Complexes:
         """L(s), shape of `s`; huge values overflow to inf."""
         roots, weights, _, _ = self._factors
-        logs = np.log(s[..., None] - roots) @ weights
-        return np.asarray(self.sign * np.exp(self.log_gain + logs - s * self.dead_time))
+        logs = np.log(s[..., None] - roots) @ weights + (self.log_gain - s * self.dead_time)
+        if self.all_pass:
+            logs = logs + self.all_pass * (np.log(1.0 - s) - np.log(1.0 + s))
+        return np.asarray(self.sign * np.exp(logs))
+
+    def log_derivative_of_denominator(self, s: Complexes) -> Complexes:
+        """d ln D/ds at `s`, D the product of all poles' factors; shape of `s`."""
+        slope = reciprocal_sum(s, self.poles)
+        return np.asarray(slope + self.all_pass / (1.0 + s) if self.all_pass else slope)
 
 
 @dataclass(frozen=True, eq=False)

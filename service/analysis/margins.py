@@ -17,6 +17,7 @@ disk margin: P. Seiler, A. Packard, P. Gahinet, An Introduction to Disk Margins,
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -25,7 +26,14 @@ import numpy.typing as npt
 from service.analysis.brackets import falling_zero
 from service.analysis.frequency import LISTED_FACTORS, MAX_LISTED, AxisResponse, Indices
 from service.analysis.loop import Complexes, OpenLoop, Reals
-from service.analysis.results import Crossovers, GainCrossover, Margins, PhaseCrossover, Quantity
+from service.analysis.results import (
+    Crossovers,
+    GainCrossover,
+    Margins,
+    PhaseCrossover,
+    Quantity,
+    Unbounded,
+)
 
 ROTATION_STEP_RAD = 0.2
 """How far e^(−jωθ) may turn between two points where peaks are looked for."""
@@ -45,6 +53,10 @@ PEAK_PLACE = 1e-9
 """How well a peak's frequency is met, relatively; its value, being flat there, to the square of this."""
 
 
+InRadS = Callable[[float], float]
+"""From a frequency on the axis, inf included, to rad/s: a continuous loop's unit, or a sampled loop's scale."""
+
+
 class WorkBoundError(Exception):
     """More work than the stated bound; what was asked for is not computed."""
 
@@ -59,15 +71,15 @@ class Peak:
     omega: float | None
 
 
-def crossovers(axis: AxisResponse, unit_rad_s: float) -> Crossovers:
+def crossovers(axis: AxisResponse, in_rad_s: InRadS) -> Crossovers:
     """Both lists of crossovers, frequencies in rad/s."""
     at = axis.gain_crossovers
     margin_deg = np.degrees(_signed_phase_margin(axis.loop, at))
     gains = tuple(
-        GainCrossover(rad_s=float(omega) * unit_rad_s, phase_margin_deg=float(margin))
-        for omega, margin in zip(at, margin_deg, strict=True)
+        GainCrossover(rad_s=in_rad_s(omega), phase_margin_deg=margin)
+        for omega, margin in zip(at.tolist(), margin_deg.tolist(), strict=True)
     )
-    phases, more = _phase_crossovers(axis, unit_rad_s)
+    phases, more = _phase_crossovers(axis, in_rad_s)
     return Crossovers(
         gain_crossovers=gains[:MAX_LISTED],
         phase_crossovers=phases[:MAX_LISTED],
@@ -75,11 +87,10 @@ def crossovers(axis: AxisResponse, unit_rad_s: float) -> Crossovers:
     )
 
 
-def margins(axis: AxisResponse, listed: Crossovers, unit_rad_s: float) -> Margins:
-    """Every margin of a loop that is stable. Raises WorkBoundError where the bound on the work is passed."""
+def margins(axis: AxisResponse, listed: Crossovers, in_rad_s: InRadS, delay_margin_s: Quantity) -> Margins:
+    """Every margin of a stable loop. Raises WorkBoundError where the bound on the work is passed."""
     loop = axis.loop
     upper, lower = _gain_margins(axis)
-    phase_deg, delay = _phase_and_delay_margin(axis)
     search = PeakSearch(axis)
     sensitivity = search.peak(Sensitivity(loop))
     complementary = search.peak(ComplementarySensitivity(loop))
@@ -87,10 +98,10 @@ def margins(axis: AxisResponse, listed: Crossovers, unit_rad_s: float) -> Margin
     return Margins(
         gain_margin=upper,
         gain_reduction_margin=lower,
-        phase_margin_deg=phase_deg,
-        delay_margin_s="unbounded" if delay is None else delay / unit_rad_s,
+        phase_margin_deg=_phase_margin_deg(axis),
+        delay_margin_s=delay_margin_s,
         max_sensitivity=sensitivity.value,
-        max_sensitivity_rad_s="unbounded" if sensitivity.omega is None else sensitivity.omega * unit_rad_s,
+        max_sensitivity_rad_s=told(in_rad_s, math.inf if sensitivity.omega is None else sensitivity.omega),
         max_complementary_sensitivity=complementary.value,
         disk_margin=min(2.0, 1.0 / disk.value),
         gain_crossovers=listed.gain_crossovers,
@@ -105,11 +116,11 @@ def _signed_phase_margin(loop: OpenLoop, omega: Reals) -> Reals:
     return np.asarray(-((math.pi - beyond) % (2 * math.pi)) + math.pi)
 
 
-def _phase_crossovers(axis: AxisResponse, unit_rad_s: float) -> tuple[tuple[PhaseCrossover, ...], bool]:
+def _phase_crossovers(axis: AxisResponse, in_rad_s: InRadS) -> tuple[tuple[PhaseCrossover, ...], bool]:
     crossings = axis.phase_crossovers
     low, high = LISTED_FACTORS
     found = [
-        PhaseCrossover(rad_s=omega * unit_rad_s, gain_factor=math.exp(-log))
+        PhaseCrossover(rad_s=in_rad_s(omega), gain_factor=math.exp(-log))
         for omega, log in zip(crossings.omega.tolist(), crossings.log_magnitude.tolist(), strict=True)
         if math.log(low) <= -log <= math.log(high)
     ]
@@ -117,7 +128,7 @@ def _phase_crossovers(axis: AxisResponse, unit_rad_s: float) -> tuple[tuple[Phas
     if at_origin is not None and low <= at_origin <= high:
         found.insert(0, PhaseCrossover(rad_s=0.0, gain_factor=at_origin))
     if at_infinity is not None and axis.loop.dead_time == 0 and low <= at_infinity <= high:
-        found.append(PhaseCrossover(rad_s="unbounded", gain_factor=at_infinity))
+        found.append(PhaseCrossover(rad_s=told(in_rad_s, math.inf), gain_factor=at_infinity))
     return tuple(found), crossings.truncated
 
 
@@ -128,7 +139,7 @@ def _factors_at_the_ends(loop: OpenLoop) -> tuple[float | None, float | None]:
     origin = infinity = None
     if loop.order_at_origin == 0 and loop.origin_coefficient < 0:
         origin = 1.0 / -loop.origin_coefficient
-    if loop.excess == 0 and loop.sign != 0 and (loop.sign < 0 or loop.dead_time > 0):
+    if loop.excess == 0 and loop.sign != 0 and (loop.value_at_infinity < 0 or loop.dead_time > 0):
         infinity = math.exp(-loop.log_gain)
     return origin, infinity
 
@@ -141,14 +152,28 @@ def _gain_margins(axis: AxisResponse) -> tuple[Quantity, Quantity]:
     return (min(above) if above else "unbounded"), (max(below) if below else "unbounded")
 
 
-def _phase_and_delay_margin(axis: AxisResponse) -> tuple[Quantity, float | None]:
+def _phase_margin_deg(axis: AxisResponse) -> Quantity:
     omega = axis.gain_crossovers
-    instant = axis.loop.dead_time == 0 and axis.loop.high_frequency_magnitude >= 1
     if not omega.size:
-        return "unbounded", 0.0 if instant else None
+        return "unbounded"
+    return math.degrees(float(np.abs(_signed_phase_margin(axis.loop, omega)).min()))
+
+
+def delay_margin(axis: AxisResponse) -> float:
+    """The delay margin of a continuous loop in its own unit of time; inf where there is none."""
+    omega = axis.gain_crossovers
+    if axis.loop.dead_time == 0 and axis.loop.high_frequency_magnitude >= 1:
+        return 0.0
+    if not omega.size:
+        return math.inf
     margin = _signed_phase_margin(axis.loop, omega)
-    delays = np.where(margin > 0, margin, margin + 2 * math.pi) / omega
-    return math.degrees(float(np.abs(margin).min())), 0.0 if instant else float(delays.min())
+    return float((np.where(margin > 0, margin, margin + 2 * math.pi) / omega).min())
+
+
+def told(scale: Callable[[float], float], value: float) -> float | Unbounded:
+    """A scaled value, or "unbounded" where it has no limit."""
+    scaled = scale(value)
+    return scaled if math.isfinite(scaled) else "unbounded"
 
 
 class Sensitivity:
@@ -229,7 +254,7 @@ def end_values(loop: OpenLoop) -> list[float]:
     elif loop.excess < 0:
         values.append(math.inf)
     else:
-        last = loop.sign * math.exp(loop.log_gain)
+        last = loop.value_at_infinity
         # with dead time L goes on turning: every angle is approached, the worst is real and negative
         values += [last] if loop.dead_time == 0 else [abs(last), -abs(last)]
     return values
@@ -303,7 +328,10 @@ class PeakSearch:
 
     def _parts(self, steps: _Steps) -> Reals:
         """Into how many parts each step is divided so that L turns little in one."""
-        turned = (steps.right - steps.left) * self._axis.loop.dead_time
+        loop = self._axis.loop
+        turned = (steps.right - steps.left) * loop.dead_time
+        if loop.all_pass:
+            turned = turned + 2.0 * loop.all_pass * (np.arctan(steps.right) - np.arctan(steps.left))
         return np.maximum(np.ceil(turned / ROTATION_STEP_RAD), 1.0)
 
     def _divided(self, steps: _Steps) -> _Steps:

@@ -82,7 +82,7 @@ class ControlSensitivity(Sensitivity):
         if loop.excess < 0:
             # both grow: C·F/L = 1/P(∞)
             return [math.exp(self._log_gain - loop.log_gain) if math.isinf(high) else 0.0]
-        last = loop.sign * math.exp(loop.log_gain)
+        last = loop.value_at_infinity
         turned = [last] if loop.dead_time == 0 else [abs(last), -abs(last)]
         return [high / abs(1.0 + value) for value in turned]
 

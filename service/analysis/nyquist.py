@@ -48,7 +48,8 @@ def count_right_of_axis(axis: AxisResponse) -> Count:
     distance = np.abs(1 + np.exp(1j * logs.imag))
     if np.any(distance < rounding(loop, crossovers)):
         return Count(None, reason="a root lies on the axis within the precision of the numbers")
-    degree = max(len(loop.poles), len(loop.zeros)) if loop.dead_time == 0 else len(loop.poles)
+    degree = len(loop.poles) if loop.dead_time > 0 else max(len(loop.poles), len(loop.zeros))
+    degree += loop.all_pass
     turned = _argument_change(axis, crossovers)
     roots = 0.5 * degree - turned / math.pi
     if abs(roots - round(roots)) > 1e-4 or round(roots) < 0:
@@ -58,7 +59,9 @@ def count_right_of_axis(axis: AxisResponse) -> Count:
 
 def rounding(loop: OpenLoop, omega: Reals) -> Reals:
     """How far rounding may move L(jω) relative to itself, shape of `omega`."""
-    terms = 4.0 + len(loop.zeros) + len(loop.poles) + abs(loop.log_gain) + omega * loop.dead_time
+    terms = (
+        4.0 + len(loop.zeros) + len(loop.poles) + loop.all_pass + abs(loop.log_gain) + omega * loop.dead_time
+    )
     return np.asarray(ROUNDING_FACTOR * EPSILON * terms)
 
 
@@ -84,6 +87,8 @@ def _neutral(loop: OpenLoop) -> Count | None:
 def _touches_at_the_ends(loop: OpenLoop) -> bool:
     tolerance = ROUNDING_FACTOR * EPSILON * (4 + len(loop.poles) + abs(loop.log_gain))
     if loop.order_at_origin == 0 and abs(1 + loop.origin_coefficient) < tolerance:
+        return True
+    if loop.dead_time == 0 and abs(1 + loop.value_at_infinity) < tolerance:
         return True
     return loop.order_at_origin < 0 and bool(np.any(loop.poles == 0))
 
@@ -123,7 +128,7 @@ def _forms(loop: OpenLoop, omega: Reals) -> tuple[Reals, Reals]:
     """The argument in the form for abs L < 1 and in the form for abs L > 1, at crossovers, where both
     hold.
     """
-    denominator = log_factors(omega, loop.poles).imag
+    denominator = log_factors(omega, loop.poles).imag + loop.all_pass * np.arctan(omega)
     response = loop.log_response(omega).imag
     half = 0.5 * _wrapped(response)
     # at a crossover Arg(1 + L) is half the principal phase, and Arg(1 + 1/L) its negative
@@ -137,7 +142,8 @@ def _forms_at_origin(loop: OpenLoop) -> tuple[float, float]:
 
 
 def _forms_at_infinity(loop: OpenLoop) -> tuple[float, float]:
-    denominator, numerator = len(loop.poles) * math.pi / 2, len(loop.zeros) * math.pi / 2
+    denominator = (len(loop.poles) + loop.all_pass) * math.pi / 2
+    numerator = (len(loop.zeros) - loop.all_pass) * math.pi / 2
     # the principal values vanish at both ends: L is real there, or 0, or without bound
     return denominator, numerator + (math.pi if loop.sign < 0 else 0.0)
 

@@ -15,7 +15,7 @@ from service.analysis.errors import FieldError
 from service.analysis.facts import facts
 from service.analysis.frequency import AxisResponse
 from service.analysis.loop import EPSILON, ClosedLoopParts, OpenLoop, form_loop
-from service.analysis.margins import WorkBoundError, crossovers, margins
+from service.analysis.margins import WorkBoundError, crossovers, delay_margin, margins, told
 from service.analysis.noise import noise
 from service.analysis.plant import PlantModel, Ranges
 from service.analysis.realisation import StateSpace, realise
@@ -116,7 +116,7 @@ def _continuous(
     unit = parts.unit_rad_s
     axis = AxisResponse.of(parts.loop)
     decided = decide(parts, space, axis)
-    listed = crossovers(axis, unit)
+    listed = crossovers(axis, lambda omega: omega * unit)
     stability = decided.stability
     if stability.verdict != "stable":
         analysis = Analysis(
@@ -131,7 +131,8 @@ def _continuous(
     notes: list[str] = []
     found_margins: Margins | None = None
     try:
-        found_margins = margins(axis, listed, unit)
+        delay_margin_s = told(lambda delay: delay / unit, delay_margin(axis))
+        found_margins = margins(axis, listed, lambda omega: omega * unit, delay_margin_s)
     except WorkBoundError:
         notes.append(NOTE_MARGINS_TOO_MUCH_WORK)
     responses = None

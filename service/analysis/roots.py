@@ -20,7 +20,7 @@ import numpy as np
 import numpy.typing as npt
 
 from service.analysis.frequency import AxisResponse
-from service.analysis.loop import Complexes, OpenLoop, Reals, reciprocal_sum
+from service.analysis.loop import Complexes, OpenLoop, Reals
 from service.analysis.nyquist import Count, count_right_of_axis, rounding
 from service.analysis.realisation import StateSpace
 
@@ -99,7 +99,7 @@ def root_error(loop: OpenLoop, roots: Complexes) -> Reals:
     A root of multiplicity m moves by the m-th root of what a simple one moves by, relatively.
     """
     value = loop.at(roots)
-    derivative = (1 + value) * reciprocal_sum(roots, loop.poles) + value * loop.log_derivative(roots)
+    derivative = (1 + value) * loop.log_derivative_of_denominator(roots) + value * loop.log_derivative(roots)
     relative = rounding(loop, np.abs(roots))
     error = relative * (1 + np.abs(value)) / np.abs(derivative)
     every = np.concatenate([roots, np.conj(roots[roots.imag > 0])])
@@ -227,7 +227,7 @@ def _newton_step(loop: OpenLoop, at: Complexes) -> Complexes:
     # near a root 1 + L keeps the digits that the logarithm of nearly 1 would lose
     residual = np.where(np.abs(1 + value) < 1e-3, -(1 + value), np.log(-value))
     on_logarithm = -residual / slope
-    on_product = -(1 + value) / ((1 + value) * reciprocal_sum(at, loop.poles) + value * slope)
+    on_product = -(1 + value) / ((1 + value) * loop.log_derivative_of_denominator(at) + value * slope)
     step = np.where(np.abs(residual) < NEPERS_OF_CHAIN, on_logarithm, on_product)
     # a start on a pole of L, or far left where e^(−sθ) overflows, stays where it is
     step = np.where(np.isfinite(step), step, 0.0)
