@@ -21,7 +21,7 @@ from service.pages import forms, visits
 from service.pages.dossier import dossier
 from service.pages.forms import Form, Problem
 from service.pages.frame import page
-from service.pages.standing import DEVIATION, missing_deviations
+from service.pages.standing import DEVIATION, check_open, missing_deviations
 from service.pages.submissions import submission_page
 from service.records import decisions as records
 from service.records import queries
@@ -188,9 +188,10 @@ def _decision_page(submission_id: str, form: Form, status: int = 200) -> Respons
 
 
 def _take_back_page(submission_id: str, form: Form, status: int = 200) -> Response:
+    step = form.typed("decision")
     with visits.reading() as visit:
         view = queries.submission(visit.session, visit.actor, submission_id, visit.now)
-    step = form.typed("decision")
+        check_open(view, visit.actor, "revoke" if step == "revoke" else "withdraw")
     return page("take_back.html", status, view=view, form=form, step=step, heading=TAKING_BACK[step])
 
 
@@ -199,6 +200,7 @@ def _confirm_page(
 ) -> Response:
     with visits.reading() as visit:
         shown = dossier(visit, submission_id)
+        check_open(shown.view, visit.actor, reviewed.decision)
         content = queries.content_bytes(visit.session, visit.actor, submission_id)
     if reviewed.content_digest != shown.view.content_digest:
         return _decision_page(submission_id, form.with_problems([HAS_CHANGED]), 412)

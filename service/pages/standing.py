@@ -9,6 +9,7 @@ from service.pages.forms import Form, Problem, sentence
 from service.pages.options import Option
 from service.records import lifecycle
 from service.records.errors import NotAllowed
+from service.records.lifecycle import Action
 from service.records.roles import Actor
 from service.records.views import SubmissionView
 
@@ -62,10 +63,17 @@ def missing_deviations(open_points: tuple[Deviation, ...], form: Form) -> tuple[
     )
 
 
-def authors(view: SubmissionView) -> frozenset[str]:
-    """Account names of whoever submitted or prepared the gains."""
+def check_open(view: SubmissionView, actor: Actor, action: Action) -> None:
+    """Raise NotAllowed or WrongStep where `actor` cannot take this step, before anything is typed for it."""
+    lifecycle.check_who(action, actor, _mine(view, actor))
+    lifecycle.step(view.state, action)
+
+
+def _mine(view: SubmissionView, actor: Actor) -> frozenset[str]:
+    """The actor's own account where they submitted or prepared the gains; names are never used twice."""
     content = view.content
-    return frozenset(person.name for person in (content.submitted_by, *content.prepared_by))
+    authors = {person.name for person in (content.submitted_by, *content.prepared_by)}
+    return frozenset({actor.account_id} if actor.account_id and actor.name in authors else ())
 
 
 def _choices(view: SubmissionView) -> tuple[Option, ...]:
@@ -87,9 +95,8 @@ def _changed(changed: tuple[str, ...]) -> tuple[str, ...]:
 def _why_not(view: SubmissionView, actor: Actor) -> str:
     if not lifecycle.allows(view.state, "reject"):
         return f"Nothing is left to decide: these gains are {lifecycle.in_words(view.state)}."
-    mine = frozenset({actor.account_id or ""}) if actor.name in authors(view) else frozenset[str]()
     try:
-        lifecycle.check_who("reject", actor, mine)
+        lifecycle.check_who("reject", actor, _mine(view, actor))
     except NotAllowed as refusal:
         return f"You cannot decide about these gains: {refusal}."
     if any(decision.decision.signed_by.name == actor.name for decision in view.decisions):

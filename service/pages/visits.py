@@ -14,6 +14,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager, suppress
 from dataclasses import dataclass
 from datetime import datetime
+from urllib.parse import urlsplit
 
 from flask import g, request
 from sqlalchemy.exc import SQLAlchemyError
@@ -158,7 +159,7 @@ def _drop_cookie(response: AnyResponse, name: str) -> None:
 
 def _on_loopback() -> bool:
     """True where the browser runs on the machine itself and no one can listen, as in the demonstration."""
-    host = request.host.rsplit(":", 1)[0].strip("[]")
+    host = urlsplit(f"//{request.host}").hostname or ""
     try:
         return ipaddress.ip_address(host).is_loopback
     except ValueError:

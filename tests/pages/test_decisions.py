@@ -252,3 +252,21 @@ def test_a_decision_is_made_once(kept: Kept, signed_in: SignedIn) -> None:
 def test_the_address_of_a_step_leads_back_to_the_submission(kept: Kept, reviewer: Person, step: str) -> None:
     page = reviewer.open(f"/submissions/{kept.submissions['stable']}/{step}")
     assert page.one("h1").text == "Planned change for TIC-204"
+
+
+@pytest.mark.parametrize(
+    ("person", "step", "status"),
+    [
+        ("auditor", "withdraw", 403),
+        ("reviewer", "withdraw", 403),
+        ("author", "revoke", 403),
+        ("second", "revoke", 409),
+    ],
+)
+def test_a_step_that_is_not_open_is_not_asked_for(
+    kept: Kept, signed_in: SignedIn, person: str, step: str, status: int
+) -> None:
+    reader = signed_in(person)
+    reader.open(f"/submissions/{kept.submissions['stable']}/{step}")
+    assert reader.status == status
+    assert reader.page.all("textarea") == []
