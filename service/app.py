@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from argon2 import PasswordHasher
 from flask import Flask, Response, request
+from werkzeug.routing import BaseConverter
 
 from service.api import errors as api_errors
 from service.api.registration import register as register_api
@@ -32,6 +33,12 @@ SECURITY_HEADERS = {
 """Sent with every response that does not set its own."""
 
 
+class _Readable(BaseConverter):
+    """A variable part of an address, without control characters: PostgreSQL fails on one of them."""
+
+    regex = r"[^/\x00-\x1f\x7f]+"
+
+
 def create_app(
     settings: Settings, *, clock: Clock = system_clock, password_hasher: PasswordHasher | None = None
 ) -> Flask:
@@ -47,6 +54,7 @@ def create_app(
     app.config.update(
         SECRET_KEY=secret_key, MAX_CONTENT_LENGTH=BODY_BYTES_MAX, PROVIDE_AUTOMATIC_OPTIONS=False
     )
+    app.url_map.converters["default"] = _Readable
     # else //path is answered with a redirect to wherever the Host header says
     app.url_map.merge_slashes = False
     attach(app, Services(database=database, secret_key=secret_key, signing_key=signing_key))
