@@ -11,7 +11,7 @@ from service.pages import words
 from service.records.comparison import compare
 from service.records.content import InstallationContent, SignedContent
 from service.records.views import Comparison, SettingChange
-from service.sheets.content import GainLine, GainTable
+from service.sheets.gain_tables import GainLine, GainTable
 
 _RECORDED = "recorded_settings."
 

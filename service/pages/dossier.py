@@ -20,7 +20,8 @@ from service.pages.visits import Visit
 from service.records import queries
 from service.records.views import Comparison, CurvesView, SubmissionView
 from service.sheets.assessments import Assessment
-from service.sheets.content import DECISIONS, SheetContent
+from service.sheets.content import SheetContent
+from service.sheets.signatures import DECISIONS
 
 NARROW = {"width_pt": 300, "height_pt": 420, "text_pt": 12}
 """A drawing for a screen of 320 px, in points."""
@@ -72,8 +73,8 @@ class Dossier:
     standing: Standing
 
 
-def dossier(visit: Visit, submission_id: str) -> Dossier:
-    """Read a submission and tell it. Raises NotFound."""
+def dossier(visit: Visit, submission_id: str, *, with_figures: bool) -> Dossier:
+    """Read a submission and tell it. Raises NotFound. Drawing the figures takes longer than all the rest."""
     view = queries.submission(visit.session, visit.actor, submission_id, visit.now)
     curves = queries.curves(visit.session, visit.actor, submission_id)
     sheet = sheets.content(visit.session, visit.actor, view)
@@ -81,7 +82,7 @@ def dossier(visit: Visit, submission_id: str) -> Dossier:
         view=view,
         sheet=sheet,
         changes=tuple(_changes(view, sheet)),
-        told=tuple(_told(sheet, curves)),
+        told=tuple(_told(sheet, curves if with_figures else None)),
         history=tuple(sorted(_happenings(view), key=lambda happening: happening.entry)),
         standing=standing(view, visit.actor),
     )
@@ -93,12 +94,19 @@ def _changes(view: SubmissionView, sheet: SheetContent) -> Iterator[ChangeTable]
         yield change_table(table, comparison)
 
 
-def _told(sheet: SheetContent, curves: Sequence[CurvesView]) -> Iterator[Told]:
+def _told(sheet: SheetContent, curves: Sequence[CurvesView] | None) -> Iterator[Told]:
+    """Each recomputation; `curves` stand in the same order, None: nothing is drawn."""
     for index, assessment in enumerate(sheet.assessments):
-        figures = [_response(response) for response in assessment.responses]
-        if index < len(curves):
-            figures += _frequency(curves[index])
-        yield Told(assessment, tuple(figures))
+        yield Told(
+            assessment, () if curves is None else tuple(_figures(assessment, curves[index : index + 1]))
+        )
+
+
+def _figures(assessment: Assessment, curves: Sequence[CurvesView]) -> Iterator[Figure]:
+    for response in assessment.responses:
+        yield _response(response)
+    for view in curves:
+        yield from _frequency(view)
 
 
 def _response(response: Response) -> Figure:

@@ -6,37 +6,23 @@ Everything that a signature covers and that fits on paper is here in words; the 
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass, replace
-from datetime import datetime
+from dataclasses import dataclass
 
 from service.analysis.plant import Range
+from service.analysis.results import Curves
 from service.documents.loops import LoopRegistration
 from service.figures.responses import Response, stored_responses
-from service.judgement.criteria import quantity_name
-from service.judgement.digits import as_entered, three_digits
-from service.judgement.quantities import QUANTITIES
-from service.judgement.wording import WORST_CASE_LABELS, criterion_sentence, quantity_label
-from service.records.content import (
-    Difference,
-    Person,
-    SignedContent,
-    SignedGains,
-    SignedModel,
-    SignedRecomputation,
-)
+from service.judgement.digits import as_entered
+from service.judgement.wording import criterion_sentence
+from service.records.content import SignedContent, SignedModel, SignedRecomputation
 from service.records.lifecycle import REVIEW_OWED
-from service.records.views import (
-    Comparison,
-    CurvesView,
-    DecisionView,
-    EntryReference,
-    InstallationView,
-    SubmissionView,
-)
-from service.sheets import controllers, plants
+from service.records.views import CurvesView, EntryReference, SubmissionView
+from service.sheets import plants
 from service.sheets.assessments import Assessment, assessment
 from service.sheets.cautions import Cautions, cautions
 from service.sheets.controllers import Told
+from service.sheets.gain_tables import GainTable, gain_tables, set_before
+from service.sheets.signatures import Signature, installation, named, signature, utc
 from service.sheets.states import STATES, StateWords
 
 RENDERER_VERSION = "1"
@@ -48,49 +34,6 @@ KINDS = {
     "baseline": "baseline: gains found running, recorded without approval",
     "return": "return to gains approved earlier",
 }
-DECISIONS = {
-    "approve": "Approved",
-    "reject": "Rejected",
-    "withdraw": "Withdrawn",
-    "revoke": "Approval revoked",
-}
-NOT_ANALYSED = "recorded, not analysed"
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class GainLine:
-    """One line of the gains table: the new value beside the one before, which may not be on record."""
-
-    name: str
-    value: str
-    unit: str
-    before: str
-    before_unit: str
-    change: str = ""
-    """In per cent, where both stand in the same unit; else that they do not."""
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class GainTable:
-    """One set of gains as entered, and what has to stand on the display beside it."""
-
-    condition: str
-    before_heading: str
-    gains: tuple[GainLine, ...]
-    settings: tuple[GainLine, ...]
-    """`before` only where it differs."""
-    recorded: tuple[Told, ...]
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Signature:
-    """One signature as it was given, its reason and deviations, and its own entry of the history."""
-
-    heading: str
-    meaning: str
-    reason: str
-    deviations: tuple[Told, ...]
-    entry: str
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -150,7 +93,8 @@ def content_of(
     """
     signed = view.content
     good, summary = _summary(signed)
-    drawn = _Drawn(curves, curves_in_force, signed)
+    drawn = {(each.model_id, each.gain_set): each.curves for each in curves}
+    beside = {(each.model_id, each.gain_set): each.curves for each in curves_in_force}
     return SheetContent(
         demonstration=demonstration,
         record=view.id,
@@ -161,7 +105,7 @@ def content_of(
         conditions=tuple(_conditions(view)),
         summary=summary,
         summary_good=good,
-        tables=tuple(_tables(view)),
+        tables=tuple(gain_tables(view)),
         cautions=cautions(
             [each.answer.recomputation.facts for each in signed.recomputations], signed.loop.inner_loop
         ),
@@ -171,21 +115,24 @@ def content_of(
         criteria_source=_CRITERIA_SOURCES[signed.criteria_source],
         worst=tuple(_worst(signed)),
         assessments=tuple(
-            assessment(_title(signed, each), each.answer, drawn.responses(each))
+            assessment(_title(signed, each), each.answer, _responses(signed, each, drawn, beside))
             for each in signed.recomputations
         ),
         hard_limits=tuple(
             criterion_sentence(finding) for each in signed.recomputations for finding in each.hard_floors
         ),
         models=tuple(_model(model) for model in signed.models),
-        signatures=tuple(_signature(decision) for decision in view.decisions),
+        signatures=tuple(signature(decision) for decision in view.decisions),
         no_signature="" if view.decisions else "Nobody has signed this record.",
-        installations=tuple(_installation(each) for each in view.installations),
+        installations=tuple(installation(each) for each in view.installations),
         version=tuple(_version(view)),
         digests=tuple(_digests(view)),
         code=_code(view),
     )
 
+
+_CurvesOf = Mapping[tuple[str, int], Curves]
+"""Stored curves by the model and the index of the set of gains."""
 
 _CRITERIA_SOURCES = {
     "loop": "Limits: those of the loop, as they were when this was submitted.",
@@ -193,29 +140,21 @@ _CRITERIA_SOURCES = {
 }
 
 
-class _Drawn:
-    """The stored curves by model and set of gains."""
-
-    def __init__(
-        self, curves: Sequence[CurvesView], in_force: Sequence[CurvesView], signed: SignedContent
-    ) -> None:
-        self._own = {(each.model_id, each.gain_set): each.curves for each in curves}
-        self._earlier = {(each.model_id, each.gain_set): each.curves for each in in_force}
-        self._signed = signed
-
-    def responses(self, recomputed: SignedRecomputation) -> tuple[Response, ...]:
-        curves = self._own.get((recomputed.model_id, recomputed.gain_set))
-        if curves is None:
-            return ()
-        _, set_before = _before(self._signed, recomputed.gain_set)
-        earlier = self._earlier.get((recomputed.model_id, set_before))
-        return stored_responses(
-            recomputed.answer.recomputation,
-            curves,
-            earlier=earlier,
-            name="these gains",
-            earlier_name="gains before",
-        )
+def _responses(
+    signed: SignedContent, recomputed: SignedRecomputation, drawn: _CurvesOf, beside: _CurvesOf
+) -> tuple[Response, ...]:
+    """The stored responses of one recomputation, those of the gains before it beside them."""
+    curves = drawn.get((recomputed.model_id, recomputed.gain_set))
+    if curves is None:
+        return ()
+    _, index_before = set_before(signed, recomputed.gain_set)
+    return stored_responses(
+        recomputed.answer.recomputation,
+        curves,
+        earlier=beside.get((recomputed.model_id, index_before)),
+        name="these gains",
+        earlier_name="gains before",
+    )
 
 
 def _summary(signed: SignedContent) -> tuple[bool, str]:
@@ -252,105 +191,8 @@ def _conditions(view: SubmissionView) -> Iterator[str]:
         yield f"The review is due at {utc(view.review_due_at)}."
     if view.overdue:
         yield "OVERDUE."
-
-
-def _tables(view: SubmissionView) -> Iterator[GainTable]:
-    signed = view.content
-    for index, gain_set in enumerate(signed.gain_sets):
-        before, _ = _before(signed, index)
-        new, old = gain_set.controller, before.controller if before else None
-        changes = _changes(view.comparisons[index]) if index < len(view.comparisons) else {}
-        yield GainTable(
-            condition=_condition(gain_set),
-            before_heading="BEFORE: the way back" if before else "BEFORE: not on record",
-            gains=tuple(
-                replace(line, change=_change(line, changes))
-                for line in _lines(controllers.gains(new), controllers.gains(old) if old else ())
-            ),
-            settings=tuple(
-                _only_if_changed(line)
-                for line in _lines(
-                    controllers.surroundings(new), controllers.surroundings(old) if old else ()
-                )
-            ),
-            recorded=controllers.recorded(new),
-        )
-
-
-def _changes(comparison: Comparison) -> dict[str, float]:
-    """Changes in per cent of the terms as they were entered, by the name of the term."""
-    if comparison.common_form is not None:
-        return {}
-    return {each.setting: each.percent for each in comparison.settings if each.percent is not None}
-
-
-def _change(line: GainLine, changes: Mapping[str, float]) -> str:
-    if controllers.NONE in (line.value, line.before) or not line.before:
-        return ""
-    if line.unit != line.before_unit:
-        return "NOT IN THE SAME UNIT"
-    percent = changes.get(_SETTINGS.get(_key(line), ""))
-    if percent is None:
-        return ""
-    return f"change {'+' if percent > 0 else ''}{three_digits(percent)} %".replace("-", "−")
-
-
-_SETTINGS = {
-    "Proportional": "proportional",
-    "Integral": "integral",
-    "Derivative": "derivative",
-    "Derivative filter": "derivative_filter",
-    "Gain k": "gain",
-}
-"""The names by which a comparison speaks of the lines of the table."""
-
-
-def _before(signed: SignedContent, index: int) -> tuple[SignedGains | None, int]:
-    """The set of gains that this one takes the place of, and its index.
-
-    It is the one for the same condition, or the one that held under every condition.
-    """
-    if signed.gains_in_force:
-        condition = signed.gain_sets[index].condition
-        for place, earlier in enumerate(signed.gains_in_force.gain_sets):
-            if earlier.condition in (condition, None):
-                return earlier, place
-    return None, -1
-
-
-def _condition(gain_set: SignedGains) -> str:
-    if gain_set.condition is None:
-        return ""
-    return f"When: {gain_set.condition}. Judged at: {', '.join(gain_set.operating_points)}."
-
-
-def _lines(new: Sequence[Told], old: Sequence[Told]) -> tuple[GainLine, ...]:
-    """New and old side by side, matched by name; an old line that has no new one comes last."""
-    earlier = {_key(told): told for told in old}
-    lines = []
-    for told in new:
-        before = earlier.pop(_key(told), None)
-        lines.append(_line(told.name, told, before if before else _absent(old)))
-    gone = (told for told in earlier.values() if told.value != controllers.NONE)
-    lines += [_line(told.name, Told(name=told.name, value=controllers.NONE), told) for told in gone]
-    return tuple(lines)
-
-
-def _line(name: str, told: Told, before: Told) -> GainLine:
-    return GainLine(name=name, value=told.value, unit=told.unit, before=before.value, before_unit=before.unit)
-
-
-def _absent(old: Sequence[Told]) -> Told:
-    return Told(name="", value=controllers.NONE if old else "")
-
-
-def _key(told: Told | GainLine) -> str:
-    return told.name.split(" (")[0]
-
-
-def _only_if_changed(line: GainLine) -> GainLine:
-    before = line.before if line.before != line.value else ""
-    return GainLine(name=line.name, value=line.value, unit=line.unit, before=before, before_unit="")
+    if view.changed_basis and view.state in REVIEW_OWED:
+        yield f"Changed since this was recomputed: {'; '.join(view.changed_basis)}."
 
 
 def _loop(loop: LoopRegistration, revision: int) -> Iterator[Told]:
@@ -373,9 +215,9 @@ def _request(signed: SignedContent) -> Iterator[Told]:
     yield Told(name="Kind", value=KINDS[signed.kind])
     alone = signed.prepared_by == (signed.submitted_by,)
     role = "Prepared and submitted by" if alone else "Submitted by"
-    yield Told(name=role, value=f"{_person(signed.submitted_by)}, {utc(signed.submitted_at)}")
+    yield Told(name=role, value=f"{named(signed.submitted_by)}, {utc(signed.submitted_at)}")
     if signed.prepared_by and not alone:
-        yield Told(name="Prepared by", value=", ".join(_person(person) for person in signed.prepared_by))
+        yield Told(name="Prepared by", value=", ".join(named(person) for person in signed.prepared_by))
     if signed.tool:
         yield Told(name="Tool", value=f"{signed.tool.name}, version {signed.tool.version}")
 
@@ -406,63 +248,6 @@ def _model(signed: SignedModel) -> Model:
     )
 
 
-def _signature(view: DecisionView) -> Signature:
-    decision = view.decision
-    return Signature(
-        heading=f"{DECISIONS[decision.decision]} by {_person(decision.signed_by)}, {utc(decision.signed_at)}",
-        meaning=decision.meaning,
-        reason=decision.reason,
-        deviations=tuple(
-            Told(name=_criterion(each.criterion), value=each.reason) for each in decision.deviation
-        ),
-        entry=f"History entry {view.entry.number}, digest {view.entry.digest}",
-    )
-
-
-def _criterion(name: str) -> str:
-    """The limit, or the finding, that a deviation answers, in words and by its name."""
-    quantity = quantity_name(name)
-    if quantity in QUANTITIES or quantity in WORST_CASE_LABELS:
-        return f"{quantity_label(quantity)} ({name})"
-    return f"finding ({name})"
-
-
-def _installation(view: InstallationView) -> Told:
-    done = view.installation
-    request = done.installation
-    people = (
-        ("typed by", request.typed_by),
-        ("read back by", request.read_back_by),
-        ("operator", request.operator),
-    )
-    told = [f"recorded by {_person(done.recorded_by)}", *(f"{role} {name}" for role, name in people if name)]
-    told.append("as left is as approved" if done.as_approved else "AS LEFT IS NOT AS APPROVED")
-    told += [f"left: {_difference(each)}" for each in done.differences]
-    told += [f"found: {_difference(each)}" for each in done.as_found_differences or ()]
-    told.append(_SAVED[request.saved_to_engineering_database])
-    told.append(f"history entry {view.entry.number}, digest {view.entry.digest}")
-    return Told(name=f"Installed {utc(request.installed_at)}", value="; ".join(told))
-
-
-def _difference(difference: Difference) -> str:
-    recorded, found = (_entered(value) for value in (difference.recorded, difference.found))
-    setting = difference.setting.replace("_", " ")
-    return f"{setting} {found} {difference.unit}, on record {recorded}"
-
-
-def _entered(value: float | str | None) -> str:
-    if value is None:
-        return controllers.NONE
-    return value if isinstance(value, str) else as_entered(value)
-
-
-_SAVED = {
-    True: "saved to the engineering database",
-    False: "NOT saved to the engineering database",
-    None: "whether it was saved to the engineering database is not recorded",
-}
-
-
 def _version(view: SubmissionView) -> Iterator[Told]:
     latest = _latest(view)
     yield Told(name="Record", value=view.id)
@@ -489,15 +274,6 @@ def _latest(view: SubmissionView) -> EntryReference:
     signed = [decision.entry for decision in view.decisions]
     entries = [view.entry, *signed, *(installation.entry for installation in view.installations)]
     return max(entries, key=lambda entry: entry.number)
-
-
-def utc(moment: datetime) -> str:
-    """A time on paper, to the second; the records' times are in UTC."""
-    return moment.strftime("%Y-%m-%d %H:%M:%S UTC")
-
-
-def _person(person: Person) -> str:
-    return f"{person.full_name} ({person.name})"
 
 
 def _range(span: Range) -> str:

@@ -9,7 +9,8 @@ from reportlab.platypus import Flowable, KeepTogether, Spacer, Table
 
 from service.sheets import styles
 from service.sheets.cautions import Cautions
-from service.sheets.content import NOT_ANALYSED, GainLine, GainTable, SheetContent
+from service.sheets.content import SheetContent
+from service.sheets.gain_tables import GainLine, GainTable
 from service.sheets.qr import code_drawing
 from service.sheets.styles import WIDTH_PT, fitting, named, said, table
 
@@ -18,6 +19,7 @@ EMPHASISED = ("Form", "Action")
 _NAME_PT, _VALUE_PT, _BEFORE_PT = 0.26 * WIDTH_PT, 0.42 * WIDTH_PT, 0.32 * WIDTH_PT
 _CODE_PT = 66.0
 LARGE_LINES = 5
+NOT_ANALYSED = "recorded, not analysed"
 RECORDED_AT_ONCE = 500
 """Characters of recorded settings that leave the cautions on the first page."""
 

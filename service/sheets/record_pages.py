@@ -11,9 +11,10 @@ from reportlab.platypus import Flowable, Spacer
 from service.figures.responses import response_drawing
 from service.sheets import styles, texts
 from service.sheets.assessments import Assessment, ClaimRow, LimitRow
-from service.sheets.content import Model, SheetContent, Signature
+from service.sheets.content import Model, SheetContent
 from service.sheets.controllers import Told
 from service.sheets.panel_page import PALE
+from service.sheets.signatures import Signature
 from service.sheets.styles import WIDTH_PT, joined, named, said, table
 
 _ROWS = [

@@ -202,6 +202,14 @@ def test_times_and_approvals_that_limit_the_state_are_said(print_case: PrintCase
     )
 
 
+def test_a_basis_that_changed_is_said_while_the_review_is_owed() -> None:
+    view, *_ = submission()
+    changed = replace(view, changed_basis=("the loop has a new revision", "a model was added"))
+    said = "Changed since this was recomputed: the loop has a new revision; a model was added."
+    assert content_of(changed).conditions == (said,)
+    assert content_of(replace(changed, state="in_force")).conditions == ()
+
+
 def test_an_installation_names_what_was_left_otherwise(print_case: PrintCase) -> None:
     told = print_case("in_force").content.installations[0].value
     assert "AS LEFT IS NOT AS APPROVED; left: integral 95 s, on record 90" in told

@@ -1,0 +1,102 @@
+"""Who did what to a record, when, and what it meant: signatures and installations."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from datetime import datetime
+
+from service.judgement.criteria import quantity_name
+from service.judgement.digits import as_entered
+from service.judgement.quantities import QUANTITIES
+from service.judgement.wording import WORST_CASE_LABELS, quantity_label
+from service.records.content import Difference, Person
+from service.records.views import DecisionView, InstallationView
+from service.sheets import controllers
+from service.sheets.controllers import Told
+
+DECISIONS = {
+    "approve": "Approved",
+    "reject": "Rejected",
+    "withdraw": "Withdrawn",
+    "revoke": "Approval revoked",
+}
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Signature:
+    """One signature as it was given, its reason and deviations, and its own entry of the history."""
+
+    heading: str
+    meaning: str
+    reason: str
+    deviations: tuple[Told, ...]
+    entry: str
+
+
+def signature(view: DecisionView) -> Signature:
+    """Tell a signature."""
+    decision = view.decision
+    return Signature(
+        heading=f"{DECISIONS[decision.decision]} by {named(decision.signed_by)}, {utc(decision.signed_at)}",
+        meaning=decision.meaning,
+        reason=decision.reason,
+        deviations=tuple(
+            Told(name=_criterion(each.criterion), value=each.reason) for each in decision.deviation
+        ),
+        entry=f"History entry {view.entry.number}, digest {view.entry.digest}",
+    )
+
+
+def _criterion(name: str) -> str:
+    """The limit, or the finding, that a deviation answers, in words and by its name."""
+    quantity = quantity_name(name)
+    if quantity in QUANTITIES or quantity in WORST_CASE_LABELS:
+        return f"{quantity_label(quantity)} ({name})"
+    return f"finding ({name})"
+
+
+def installation(view: InstallationView) -> Told:
+    """Tell an installation: who typed and read back, and what was found and left otherwise than on record."""
+    done = view.installation
+    request = done.installation
+    people = (
+        ("typed by", request.typed_by),
+        ("read back by", request.read_back_by),
+        ("operator", request.operator),
+    )
+    told = [f"recorded by {named(done.recorded_by)}", *(f"{role} {name}" for role, name in people if name)]
+    told.append("as left is as approved" if done.as_approved else "AS LEFT IS NOT AS APPROVED")
+    told += [f"left: {_difference(each)}" for each in done.differences]
+    told += [f"found: {_difference(each)}" for each in done.as_found_differences or ()]
+    told.append(_SAVED[request.saved_to_engineering_database])
+    told.append(f"history entry {view.entry.number}, digest {view.entry.digest}")
+    return Told(name=f"Installed {utc(request.installed_at)}", value="; ".join(told))
+
+
+def _difference(difference: Difference) -> str:
+    recorded, found = (_entered(value) for value in (difference.recorded, difference.found))
+    setting = difference.setting.replace("_", " ")
+    return f"{setting} {found} {difference.unit}, on record {recorded}"
+
+
+def _entered(value: float | str | None) -> str:
+    if value is None:
+        return controllers.NONE
+    return value if isinstance(value, str) else as_entered(value)
+
+
+_SAVED = {
+    True: "saved to the engineering database",
+    False: "NOT saved to the engineering database",
+    None: "whether it was saved to the engineering database is not recorded",
+}
+
+
+def utc(moment: datetime) -> str:
+    """A time on paper, to the second; the records' times are in UTC."""
+    return moment.strftime("%Y-%m-%d %H:%M:%S UTC")
+
+
+def named(person: Person) -> str:
+    """A person by the full name and the name of the account, as they were at the time."""
+    return f"{person.full_name} ({person.name})"
