@@ -5,6 +5,7 @@ from __future__ import annotations
 import itertools
 import math
 import timeit
+from dataclasses import replace
 from typing import Any
 
 import pytest
@@ -14,11 +15,8 @@ from hypothesis import strategies as st
 from service.analysis.controller import (
     Controller,
     DerivativeFilter,
-    DerivativeGain,
     DerivativeTime,
-    FilterTime,
     IdealController,
-    IntegralGain,
     IntegralTime,
     ParallelController,
     Proportional,
@@ -29,6 +27,8 @@ from service.analysis.controller import (
 )
 from service.analysis.equivalents import FILTER_UNKNOWN, SETPOINT_DIFFERS, equivalent_gains
 from service.analysis.results import EquivalentGains, EquivalentTerms
+from tests.analysis import entered
+from tests.analysis.entered import parallel, series, two_zeros
 
 FORMS = ("ideal", "series", "parallel", "two_zeros")
 FREQUENCIES_RAD_S = (1e-3, 0.02, 0.3, 1.0, 7.0, 90.0, 1e4)
@@ -41,51 +41,10 @@ def ideal(
     ratio: float | None = 10.0,
     **more: Any,
 ) -> IdealController:
-    return IdealController(
-        form="ideal",
-        action="reverse",
-        proportional=Proportional(value=kc, unit="gain"),
-        integral=ti and IntegralTime(value=ti, unit="seconds"),
-        derivative=td and DerivativeTime(value=td, unit="seconds"),
-        derivative_filter=td and ratio and DerivativeFilter(value=ratio, unit="ratio"),
-        **more,
-    )
-
-
-def series(
-    kc: float, ti: float | None, td: float | None, tf: float | None = None, **more: Any
-) -> SeriesController:
-    return SeriesController(
-        form="series",
-        action="reverse",
-        proportional=Proportional(value=kc, unit="gain"),
-        integral=ti and IntegralTime(value=ti, unit="seconds"),
-        derivative=td and DerivativeTime(value=td, unit="seconds"),
-        derivative_filter=tf and DerivativeFilter(value=tf, unit="seconds"),
-        **more,
-    )
-
-
-def parallel(kp: float, ki: float, kd: float, tf: float | None = None, **more: Any) -> ParallelController:
-    return ParallelController(
-        form="parallel",
-        action="reverse",
-        proportional=Proportional(value=kp, unit="gain"),
-        integral=IntegralGain(value=ki, unit="gain_per_second"),
-        derivative=DerivativeGain(value=kd, unit="gain_seconds"),
-        derivative_filter=tf and DerivativeFilter(value=tf, unit="seconds"),
-        **more,
-    )
-
-
-def two_zeros(k: float, zeros: tuple[Any, ...], tf: float | None = None, **more: Any) -> TwoZerosController:
-    return TwoZerosController(
-        form="two_zeros",
-        action="reverse",
-        gain=k,
-        zeros_rad_s=zeros,
-        derivative_filter=tf and FilterTime(value=tf, unit="seconds"),
-        **more,
+    """The ideal form with its filter told as a ratio."""
+    told = entered.ideal(kc, ti, td, **more)
+    return (
+        replace(told, derivative_filter=DerivativeFilter(value=ratio, unit="ratio")) if td and ratio else told
     )
 
 
