@@ -65,6 +65,17 @@ def test_a_digest_only(owned: Owned) -> None:
     assert _named(owned.verify()) == (9, None)
 
 
+def test_an_entry_rewritten_with_its_own_digest_and_not_the_later_ones(owned: Owned) -> None:
+    raw = owned.value("SELECT canonical FROM history_events WHERE number = 3")
+    forged = raw.replace(b"Colleague", b"Accomplice")
+    assert forged != raw
+    change = "UPDATE history_events SET canonical = ?, digest = ? WHERE number = 3"
+    owned.execute((change, (forged, _leaf(forged).hex())))
+    report = owned.verify()
+    assert _named(report) == (4, None)
+    assert "chain is broken" in report.fault.what  # type: ignore[union-attr]
+
+
 def test_an_entry_in_the_middle_deleted(owned: Owned) -> None:
     owned.execute("DELETE FROM history_events WHERE number = 12")
     report = owned.verify()
