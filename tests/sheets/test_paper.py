@@ -8,6 +8,7 @@ import re
 import subprocess
 import sys
 from collections.abc import Callable, Iterator
+from concurrent.futures import ThreadPoolExecutor
 from io import BytesIO
 from pathlib import Path
 
@@ -204,3 +205,10 @@ def dark_modules(pdf: bytes) -> list[list[int]]:
     size = len(code_matrix("record 01JQ7Z4M8W\ncontent " + "3f" * 32 + "\nentry 421 " + "b7" * 32))
     at = [int((index + 0.5) * code.width / size) for index in range(size)]
     return [[int(code.getpixel((x, y)) < 128) for x in at] for y in at]
+
+
+def test_sheets_printed_at_once_by_several_threads_are_the_same(print_case: PrintCase) -> None:
+    printed = print_case("ordinary")
+    with ThreadPoolExecutor(4) as threads:
+        made = list(threads.map(sheet_pdf, [printed.content] * 8))
+    assert set(made) == {printed.pdf}
