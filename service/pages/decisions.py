@@ -86,7 +86,7 @@ def sign(submission_id: str) -> AnyResponse:
     password = forms.secret("password")
     try:
         reviewed = _reviewed(form)
-        if not password:
+        if not 0 < len(password) <= limits.PASSWORD_CHARACTERS_MAX:
             return _confirm_page(
                 submission_id, form, reviewed, 422, Problem("Type your password to sign.", "password")
             )
@@ -199,7 +199,7 @@ def _confirm_page(
     submission_id: str, form: Form, reviewed: Reviewed, status: int = 200, problem: Problem | None = None
 ) -> Response:
     with visits.reading() as visit:
-        shown = dossier(visit, submission_id)
+        shown = dossier(visit, submission_id, with_figures=False)
         check_open(shown.view, visit.actor, reviewed.decision)
         content = queries.content_bytes(visit.session, visit.actor, submission_id)
     if reviewed.content_digest != shown.view.content_digest:

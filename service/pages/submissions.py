@@ -23,5 +23,5 @@ def submission(submission_id: str) -> Response:
 def submission_page(submission_id: str, form: Form, status: int = 200) -> Response:
     """The submission with what was typed and what is wrong with it."""
     with visits.reading() as visit:
-        shown = dossier(visit, submission_id)
+        shown = dossier(visit, submission_id, with_figures=True)
     return page("submission.html", status, dossier=shown, view=shown.view, form=form)
