@@ -75,9 +75,8 @@ def _describe_reading(made: Schemas) -> None:
 def _demand_complete_controllers(parts: Iterable[Json]) -> None:
     for part in parts:
         for name in _CONTROLLER_FIELDS & part["properties"].keys():
-            part["properties"][name] = {
-                "allOf": [part["properties"][name], _unless_null(part["properties"][name])]
-            }
+            controller = part["properties"][name]
+            part["properties"][name] = {"allOf": [controller, _unless_null(controller)]}
 
 
 def _unless_null(schema: Json) -> Json:
