@@ -10,8 +10,8 @@ from datetime import UTC, datetime
 from alembic import context
 from sqlalchemy import Connection
 
-from service.records import tables
 from service.records.migrating import naming_by_date, open_for_migration
+from service.records.tables import collection
 from service.settings import Settings
 
 
@@ -19,7 +19,7 @@ def run(connection: Connection) -> None:
     """Run the migrations that were asked for, all in one transaction."""
     context.configure(
         connection=connection,
-        target_metadata=tables.metadata(),
+        target_metadata=collection.metadata(),
         render_as_batch=connection.dialect.name == "sqlite",
         compare_type=True,
         process_revision_directives=naming_by_date(datetime.now(UTC)),

@@ -14,10 +14,11 @@ from service.documents.installations import InstallationRequest
 from service.documents.loops import LoopRegistration, ModelVersion
 from service.documents.reading import read
 from service.documents.submissions import SubmissionRequest
-from service.records import accounts, decisions, installations, loops, queries, submissions, tables
+from service.records import accounts, decisions, installations, loops, queries, submissions
 from service.records.accounts import NewAccount
 from service.records.database import Database
 from service.records.roles import CONSOLE, Actor, Role
+from service.records.tables import collection
 from service.records.views import DecisionView, InstallationView, LoopView, ModelView, SubmissionView
 
 CHEAP = PasswordHasher(time_cost=1, memory_cost=8, parallelism=1)
@@ -185,7 +186,7 @@ class Store:
     def counts(self) -> dict[str, int]:
         """How many rows each table has."""
         with self.database.reading() as session:
-            return {table.name: _count(session, table) for table in tables.metadata().sorted_tables}
+            return {table.name: _count(session, table) for table in collection.metadata().sorted_tables}
 
 
 def _count(session: Any, table: Table) -> int:

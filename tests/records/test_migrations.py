@@ -10,16 +10,17 @@ import pytest
 from alembic.autogenerate import compare_metadata
 from alembic.runtime.migration import MigrationContext
 
-from service.records import history, migrating, tables
+from service.records import history, migrating
 from service.records.database import Database, system_clock
 from service.records.errors import StoreNotUsable
+from service.records.tables import collection
 from tests.records.store import CHEAP, START, Clock, Store
 
 
 def test_models_and_migrations_do_not_differ(store: Store) -> None:
     with migrating.open_for_migration(store.url) as connection:
         context = MigrationContext.configure(connection, opts={"compare_type": True})
-        assert compare_metadata(context, tables.metadata()) == []
+        assert compare_metadata(context, collection.metadata()) == []
 
 
 def test_migration_files_are_named_by_date() -> None:
