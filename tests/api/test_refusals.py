@@ -201,11 +201,20 @@ def test_an_unknown_address_and_an_unknown_method_are_problems_too(service: Serv
     assert {"GET", "POST"} <= set(method.headers["Allow"].split(", "))
 
 
-def test_404_comes_before_403_and_403_before_422(service: Service, loop_id: str) -> None:
-    nonsense = {"colour": "red"}
-    assert service.post("/v1/loops/unknown/models", nonsense, person="auditor").status_code == 404
-    assert service.post(f"/v1/loops/{loop_id}/models", nonsense, person="auditor").status_code == 403
-    assert service.post(f"/v1/loops/{loop_id}/models", nonsense).status_code == 422
+def test_404_comes_before_403_and_403_before_422(service: Service, loop_id: str, submission: Body) -> None:
+    nonsense, loop, own = {"colour": "red"}, f"/v1/loops/{loop_id}", f"/v1/submissions/{submission['id']}"
+    for method, path, unknown in (
+        ("POST", "/v1/loops", None),
+        ("PUT", loop, "/v1/loops/unknown"),
+        ("POST", f"{loop}/models", "/v1/loops/unknown/models"),
+        ("POST", "/v1/submissions", None),
+        ("POST", f"{own}/decisions", "/v1/submissions/unknown/decisions"),
+        ("POST", f"{own}/installations", "/v1/submissions/unknown/installations"),
+    ):
+        if unknown:
+            assert service.call(method, unknown, "auditor", nonsense).status_code == 404
+        assert service.call(method, path, "auditor", nonsense).status_code == 403
+        assert service.call(method, path, "both", nonsense).status_code == 422
 
 
 def test_400_comes_before_404(service: Service) -> None:

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import pytest
 
 from service.context import services
-from service.records import accounts, tokens
+from service.records import accounts, submissions, tokens
 from service.records.roles import CONSOLE
 from tests.api import plant
 from tests.api.conftest import Service, password_of
@@ -99,6 +101,24 @@ def test_a_role_that_is_taken_away_is_gone_at_the_next_request(service: Service,
             now = database.now()
             accounts.change_access(session, CONSOLE, "submitter", ("auditor",), (), "moved", now)
     assert service.post("/v1/submissions", plant.SUBMISSION).status_code == 403
+
+
+def test_a_role_that_is_taken_away_while_the_gains_are_recomputed_is_gone_too(
+    service: Service, loop_id: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    prepare = submissions.prepare
+
+    def prepare_while_another_takes_the_role_away(*arguments: Any) -> Any:
+        prepared = prepare(*arguments)
+        database = services().database
+        with database.writing() as session:
+            now = database.now()
+            accounts.change_access(session, CONSOLE, "submitter", ("auditor",), (), "moved", now)
+        return prepared
+
+    monkeypatch.setattr(submissions, "prepare", prepare_while_another_takes_the_role_away)
+    assert service.post("/v1/submissions", plant.SUBMISSION).status_code == 403
+    assert service.get("/v1/submissions").json["items"] == []
 
 
 def test_a_token_that_is_revoked_is_unknown_at_the_next_request(service: Service) -> None:
