@@ -69,11 +69,6 @@ def moment(time: datetime) -> Markup:
     return Markup('<time datetime="{}">{}</time>').format(time.isoformat(timespec="seconds"), shown)
 
 
-def day(time: datetime) -> Markup:
-    """A day in UTC."""
-    return Markup('<time datetime="{}">{}</time>').format(f"{time:%Y-%m-%d}", f"{time.day} {time:%b %Y}")
-
-
 def mark(words: str) -> Markup:
     """An outcome that begins with its symbol, set apart by what it means: ✓ quiet, ✗ reversed, ? dashed."""
     if not words:
@@ -143,7 +138,6 @@ def event_kind(kind: str) -> str:
 
 FILTERS: dict[str, Callable[..., Any]] = {
     "moment": moment,
-    "day": day,
     "mark": mark,
     "verdict_mark": verdict_mark,
     "verdict_sentence": verdict_sentence,
@@ -157,5 +151,4 @@ FILTERS: dict[str, Callable[..., Any]] = {
     "kind": KINDS.__getitem__,
     "decided": DECIDED.__getitem__,
     "deciding": DECISIONS.__getitem__,
-    "criterion": wording.criterion_words,
 }

@@ -16,7 +16,7 @@ from playwright.sync_api import Browser, BrowserContext, Page, Request, Route, s
 from tests.pages import invented
 from tests.pages.invented import Kept, password_of
 
-CHROMIUM = "/usr/bin/chromium"
+CHROMIUM = shutil.which("chromium") or "/usr/bin/chromium"
 ARGUMENTS = [
     "--no-sandbox",
     "--disable-gpu",
