@@ -17,6 +17,9 @@ TIME = sa.DateTime(timezone=True)
 IDENTIFIER = sa.String(length=32)
 DIGEST = sa.String(length=64)
 
+BEFORE_THE_FIRST = "0" * 64
+"""What the first entry of a history has in place of an earlier entry's digest."""
+
 KEPT: dict[str, tuple[guards.Key, ...]] = {
     "history_events": (("number",), ("digest",), ("previous",)),
     "loops": (("id",), ("site_key", "tag_key")),
@@ -95,7 +98,9 @@ def _make_history() -> None:
         "history_head", sa.column("id"), sa.column("size"), sa.column("digest"), sa.column("right_edge")
     )
     op.execute(
-        head.insert().values(id=1, size=0, digest="0" * 64, right_edge=sa.literal(b"", sa.LargeBinary()))
+        head.insert().values(
+            id=1, size=0, digest=BEFORE_THE_FIRST, right_edge=sa.literal(b"", sa.LargeBinary())
+        )
     )
 
 

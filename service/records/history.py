@@ -25,9 +25,6 @@ from service.records.tables.columns import Base
 from service.records.tables.history import HistoryEvent, HistoryHead
 from service.records.views import EntryReference, HeadView
 
-BEFORE_THE_FIRST = "0" * 64
-"""What the first entry has in place of an earlier entry's digest."""
-
 STORE_MADE = "store_made"
 """The kind of the first entry of every history."""
 
@@ -40,6 +37,17 @@ class About:
     site: str
     tag: str
     area: str
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class _Told:
+    """What an entry tells, the rows aside."""
+
+    kind: str
+    actor: str
+    content: Mapping[str, object]
+    time: datetime
+    about: About | None
 
 
 def take_turn(session: Session) -> None:
@@ -63,47 +71,19 @@ def append(
     `service.documents.writing.plain` takes). `rows` are kept rows, in the order in which they are inserted.
     """
     head = session.execute(select(HistoryHead).with_for_update()).scalar_one()
-    number = head.size + 1
     rows = tuple(rows)
     for row in rows:
-        row.event_number = number  # type: ignore[attr-defined]  # every kept table has it
-    entry = {
-        "number": number,
-        "time": plain(now),
-        "kind": kind,
-        "actor": actor.name,
-        "loop_id": about.loop_id if about else None,
-        "site": about.site if about else None,
-        "tag": about.tag if about else None,
-        "area": about.area if about else None,
-        "content": plain(dict(content)),
-        "rows": _rows_by_table(rows),
-        "previous": head.digest,
-    }
-    canonical = canonical_bytes(entry)
-    leaf = merkle.leaf_hash(canonical)
-    session.add(
-        HistoryEvent(
-            number=number,
-            time=now,
-            kind=kind,
-            actor=actor.name,
-            loop_id=entry["loop_id"],
-            site=entry["site"],
-            tag=entry["tag"],
-            area=entry["area"],
-            canonical=canonical,
-            previous=head.digest,
-            digest=leaf.hex(),
-        )
-    )
-    head.right_edge = merkle.with_leaf(head.right_edge, head.size, leaf)
-    head.size, head.digest, head.time = number, leaf.hex(), now
+        row.event_number = head.size + 1  # type: ignore[attr-defined]  # every kept table has it
+    told = _Told(kind=kind, actor=actor.name, content=content, time=now, about=about)
+    event = _event(told, rows, head)
+    session.add(event)
+    head.right_edge = merkle.with_leaf(head.right_edge, head.size, bytes.fromhex(event.digest))
+    head.size, head.digest, head.time = event.number, event.digest, now
     session.flush()
     for row in rows:
         session.add(row)
         session.flush()
-    return EntryReference(number=number, digest=leaf.hex(), time=now)
+    return EntryReference(number=event.number, digest=event.digest, time=now)
 
 
 def begin(session: Session, *, demonstration: bool, now: datetime) -> None:
@@ -128,6 +108,29 @@ def head(session: Session) -> HeadView:
     """Return where the history stands."""
     row = session.execute(select(HistoryHead)).scalar_one()
     return HeadView(size=row.size, digest=row.digest, root=merkle.root(row.right_edge).hex(), time=row.time)
+
+
+def _event(told: _Told, rows: tuple[Base, ...], head: HistoryHead) -> HistoryEvent:
+    """Make the entry that follows on the head: its canonical bytes, their digest, the searchable columns."""
+    about = told.about
+    projected: dict[str, Plain] = {
+        "number": head.size + 1,
+        "kind": told.kind,
+        "actor": told.actor,
+        "loop_id": about.loop_id if about else None,
+        "site": about.site if about else None,
+        "tag": about.tag if about else None,
+        "area": about.area if about else None,
+        "previous": head.digest,
+    }
+    more: dict[str, Plain] = {
+        "time": plain(told.time),
+        "content": plain(dict(told.content)),
+        "rows": _rows_by_table(rows),
+    }
+    canonical = canonical_bytes(projected | more)
+    digest = merkle.leaf_hash(canonical).hex()
+    return HistoryEvent(**projected, time=told.time, canonical=canonical, digest=digest)
 
 
 def _rows_by_table(rows: tuple[Base, ...]) -> dict[str, Plain]:
