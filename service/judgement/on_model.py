@@ -22,11 +22,16 @@ def not_realisable(case: Case) -> Finding | None:
     """A derivative without any filter."""
     if case.facts.realisable:
         return None
+    as_told = (
+        "as written no controller can do it, and noise would reach the output without limit. The real "
+        "controller has a filter or a scan; find out which and enter it"
+    )
+    as_scanned = "at each scan the whole jump of the noise reaches the output"
+    what = as_scanned if case.recomputation.judged_on == "sampled" else as_told
     return Finding(
         finding="derivative_without_filter",
         weight="caution",
-        sentence="The derivative has no filter: as written no controller can do it, and noise would reach "
-        "the output without limit. The real controller has a filter or a scan; find out which and enter it.",
+        sentence=f"The derivative has no filter: {what}.",
     )
 
 

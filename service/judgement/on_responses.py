@@ -40,8 +40,9 @@ _NOTES: dict[str, tuple[Weight, str]] = {
         "The unfiltered derivative sees the set point: at a step of it the output jumps without limit.",
     ),
     "numbers_out_of_range": (
-        "stop",
-        "The numbers of this loop are too large or too small to compute with; nothing was. Check the units.",
+        "caution",
+        "Numbers of this loop are too large or too small to compute with; what needs them is left out. Check "
+        "the units.",
     ),
 }
 """Codes of `Analysis.notes` → weight and sentence."""

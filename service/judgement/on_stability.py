@@ -17,8 +17,8 @@ def unstable(case: Case) -> Finding | None:
     return Finding(
         finding="unstable",
         weight="stop",
-        sentence=f"The loop is unstable: {_unstable_roots(found)}. In automatic PV and output swing up or run "
-        "away. Do not enter these gains.",
+        sentence=f"The loop is unstable: {_unstable_roots(found)}. In automatic PV and output swing up or "
+        "run away. Do not enter these gains.",
     )
 
 

@@ -12,6 +12,7 @@ from typing import Any
 
 import pytest
 
+from service.analysis import recomputation
 from service.analysis.controller import Controller, SetpointWeight
 from service.analysis.plant import PlantModel, SecondOrder, TransferFunction, Uncertainty
 from service.analysis.results import BoxMember, Recomputation, Route, SecondOpinion, WorstCase
@@ -156,6 +157,11 @@ def test_a_cancelled_root_that_grows_is_told_and_stops() -> None:
 def test_a_derivative_without_filter_is_told() -> None:
     found = one(loop(controller=ideal(derivative_s=2.0)), "derivative_without_filter")
     assert found.weight == "caution"
+
+
+def test_a_derivative_without_filter_that_is_scanned_is_told_for_what_it_does_there() -> None:
+    scanned = replace(loop(controller=ideal(derivative_s=2.0)), judged_on="sampled")
+    assert "at each scan" in one(scanned, "derivative_without_filter").sentence
 
 
 def test_a_filtered_derivative_is_not_told() -> None:
@@ -387,6 +393,18 @@ def test_every_finding_is_a_sentence_in_plain_words(plant: PlantModel, controlle
     for finding in find(loop(plant, controller)):
         assert re.fullmatch(r"[A-Z].*\.", finding.sentence), finding
         assert not re.search(r"None|nan|inf\b|_|\{|\}|  |\.\.", finding.sentence), finding
+
+
+def test_every_note_of_the_recomputation_has_its_sentence() -> None:
+    notes = tuple(value for name, value in vars(recomputation).items() if name.startswith("NOTE_"))
+    noted = replace(loop(), continuous=replace(loop().continuous, notes=notes))
+    assert len(notes) >= 5
+    assert set(notes) <= set(codes(noted))
+
+
+def test_a_response_that_does_not_exist_is_told() -> None:
+    controller = ideal(gain=0.1, derivative_s=1.0)
+    assert "responses_not_realisable" in codes(loop(replace(LEAD, dead_time_s=0.0), controller))
 
 
 def test_every_finder_is_named_once() -> None:
