@@ -98,7 +98,7 @@ def test_the_installed_command_lists_what_it_can_do(installed: Installed) -> Non
     answer = installed.run("--help")
     assert answer.returncode == 0, answer.stderr
     assert re.findall(r"^  (\w+)  ", answer.stdout, re.MULTILINE) == (
-        ["account", "demo", "history", "migrate", "recheck", "recompute", "serve", "token"]
+        ["account", "demo", "history", "migrate", "recompute", "serve", "token"]
     )
 
 
