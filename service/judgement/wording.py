@@ -79,11 +79,6 @@ VERDICTS: dict[Verdict, str] = {
     "undecided": "Undecided: it could not be shown that the loop is stable. It counts as not shown stable.",
 }
 OUTCOMES: dict[Outcome, str] = {"met": "met", "not_met": "not met", "not_assessed": "not assessed"}
-CLAIM_OUTCOMES: dict[str, str] = {
-    "agrees": "agrees",
-    "differs": "differs",
-    "not_comparable": "cannot be compared",
-}
 WEIGHTS: dict[str, str] = {"stop": "stop", "caution": "caution", "note": "note"}
 WORST_CASE_LABELS: dict[str, str] = {
     "worst_case_gain_margin": "gain margin of the worst model in the box",
