@@ -54,7 +54,7 @@ PEAK_PLACE = 1e-9
 
 
 InRadS = Callable[[float], float]
-"""From a frequency on the axis, inf included, to rad/s: a continuous loop's unit, or a sampled loop's scale."""
+"""From a frequency on the axis, inf included, to rad/s: by a loop's unit or a sampled loop's scale."""
 
 
 class WorkBoundError(Exception):
