@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 from mpmath import mp, mpc, mpf
 
-from tests.references.told import ExactLoop, polynomial_roots
+from tests.references.told import ExactLoop, derivative, polynomial_roots, value_at
 from tests.references.winding import roots_right_of
 
 STEPS = 40
@@ -27,11 +27,11 @@ def roots_near_axis(loop: ExactLoop, depth: float = 4.0, size: int = 50) -> list
     numerator, denominator = (_in_pace(side, pace) for side in (loop.numerator, loop.denominator))
     theta = float(loop.dead_time) * pace
     top = _top(loop, pace)
-    real = np.linspace(-depth, max(depth, 1.0), size)
+    real = np.concatenate([np.linspace(-depth, max(depth, 1.0), size), -np.geomspace(1e-5, depth, size)])
     imag = np.unique(
         np.concatenate([np.linspace(0.0, top, 4 * size), np.geomspace(1e-5, top, 2 * size), [0.0]])
     )
-    at = (real[:, None] + 1j * imag[None, :]).ravel()
+    at = np.concatenate([(real[:, None] + 1j * imag[None, :]).ravel(), _beside_open_loop(loop, pace)])
     with np.errstate(all="ignore"):
         for _ in range(STEPS):
             step = _newton(at, numerator, denominator, theta)
@@ -79,6 +79,14 @@ def _top(loop: ExactLoop, pace: float) -> float:
     return min(3.0 * max(fastest, delayed, 1.0), 1e4)
 
 
+def _beside_open_loop(loop: ExactLoop, pace: float) -> Any:
+    """Starts beside every open-loop pole and zero: what is light there is light in the closed loop."""
+    roots = polynomial_roots(loop.denominator) + polynomial_roots(loop.numerator)
+    centres = np.array([complex(root) / pace for root in roots])
+    offsets = np.array([0.0, 0.01, -0.01, 0.1j, -0.1j, -0.05 + 0.05j])
+    return (centres[:, None] + np.maximum(np.abs(centres), 1e-3)[:, None] * offsets[None, :]).ravel()
+
+
 def _newton(s: Any, numerator: Any, denominator: Any, theta: float) -> Any:
     n, d = np.polyval(numerator, s), np.polyval(denominator, s)
     dn, dd = np.polyval(np.polyder(numerator), s), np.polyval(np.polyder(denominator), s)
@@ -105,12 +113,29 @@ def _distinct(roots: Any) -> list[complex]:
 def _polished(loop: ExactLoop, starts: list[Any]) -> list[Any]:
     roots: list[Any] = []
     for start in starts:
-        try:
-            root = mpc(mp.findroot(loop.characteristic, start, solver="muller" if start.imag else "secant"))
-        except (ValueError, ZeroDivisionError):
+        root = _newton_exact(loop, start)
+        if root is None:
             continue
-        if abs(root.imag) < mpf("1e-30") * (abs(root) + mpf("1e-30")):
-            root = mpc(root.real, 0)
-        if root.imag >= 0 and all(abs(root - other) > mpf("1e-12") * abs(other) for other in roots):
+        # a real root comes back with what is left of its imaginary part, a conjugate with the other sign
+        root = mpc(root.real, 0 if abs(root.imag) < mpf("1e-20") * abs(root) else abs(root.imag))
+        if all(abs(root - other) > mpf("1e-12") * abs(other) for other in roots):
             roots.append(root)
     return sorted(roots, key=lambda root: -root.real)
+
+
+def _newton_exact(loop: ExactLoop, root: Any) -> Any:
+    """Newton on the characteristic function at fifty digits; None where it does not settle."""
+    numerator, denominator = loop.numerator, loop.denominator
+    for _ in range(60):
+        delay = mp.exp(-root * loop.dead_time)
+        n, d = value_at(numerator, root), value_at(denominator, root)
+        dn, dd = value_at(derivative(numerator), root), value_at(derivative(denominator), root)
+        slope = dd + (dn - loop.dead_time * n) * delay
+        if slope == 0:
+            return None
+        step = (d + n * delay) / slope
+        root = root - step
+        if abs(step) < mpf("1e-42") * abs(root):
+            return root
+    # a double root settles to half of the digits only
+    return root if abs(step) < mpf("1e-15") * abs(root) else None

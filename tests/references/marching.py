@@ -202,7 +202,14 @@ def _one_dead_time(x: Any, w: Any, phi: Any, weights: list[Any], gamma: Any) -> 
 
 
 def _slope(values: Any, step: float) -> Any:
-    return np.gradient(values, step, edge_order=2)
+    """The slope by differences through five nodes, one-sided at the ends: the fourth order in the step."""
+    slope = np.empty_like(values)
+    slope[2:-2] = values[:-4] - 8 * values[1:-3] + 8 * values[3:-1] - values[4:]
+    for end, sign in ((values, 1), (values[::-1], -1)):
+        at = slope[::sign]
+        at[0] = sign * (-25 * end[0] + 48 * end[1] - 36 * end[2] + 16 * end[3] - 3 * end[4])
+        at[1] = sign * (-3 * end[0] - 10 * end[1] + 18 * end[2] - 6 * end[3] + end[4])
+    return slope / (12 * step)
 
 
 def _marched(step: float, pieces: list[Any]) -> Marched:

@@ -15,13 +15,13 @@ from mpmath import mp, mpc, mpf
 from tests.references.told import ExactLoop, polynomial_roots
 
 POINTS_A_DECADE = 3000
-POINTS_A_DEAD_TIME_TURN = 400
-LOWEST_MAGNITUDE = 0.005
+POINTS_A_DEAD_TIME_TURN = 60
+LOWEST_MAGNITUDE = 0.02
 
 
 @dataclass(frozen=True)
 class ReferenceMargins:
-    """Frequencies in rad/s; `gain_factors` are those of the phase crossovers."""
+    """Frequencies in rad/s. Of the phase crossovers only those with abs L nearest to 1 on either side."""
 
     gain_crossovers: list[Any]
     phase_margins_deg: list[Any]
@@ -42,9 +42,8 @@ def reference_margins(loop: ExactLoop) -> ReferenceMargins:
     response = float_response(loop, omega)
     gain_at = _bisected(lambda w: mp.log(abs(_at(loop, w))), omega, np.log(np.abs(response)))
     phases = [_phase_margin_deg(_at(loop, w)) for w in gain_at]
-    phase_at = [
-        w for w in _bisected(lambda w: _at(loop, w).imag, omega, response.imag) if _at(loop, w).real < 0
-    ]
+    nearest = _nearest_to_one(response)
+    phase_at = _bisected(lambda w: _at(loop, w).imag, omega, response.imag, nearest)
     factors = [1 / abs(_at(loop, w)) for w in phase_at]
     high = _high_frequency_magnitude(loop)
     ends = [1 / high] if high > 0 and (loop.dead_time > 0 or _high_frequency_sign(loop) < 0) else []
@@ -118,21 +117,38 @@ def _at(loop: ExactLoop, omega: Any) -> Any:
 
 
 def _until(loop: ExactLoop, omega: float, factor: float, reached: Callable[[Any], bool]) -> float:
-    """Walk from `omega` by `factor` until the magnitude is where it is looked for, two steps at least."""
+    """Walk from `omega` by `factor` until the magnitude is where it is looked for, or changes no more."""
+    before = abs(_at(loop, mpf(omega)))
     for step in range(14):
-        if step >= 2 and reached(abs(_at(loop, mpf(omega)))):
-            break
         omega *= factor
+        now = abs(_at(loop, mpf(omega)))
+        if step >= 1 and (reached(now) or abs(now - before) < mpf("1e-3") * now):
+            break
+        before = now
     return omega
 
 
-def _bisected(function: Callable[[Any], Any], omega: Any, values: Any) -> list[Any]:
+def _nearest_to_one(response: Any) -> Any:
+    """Where L crosses the negative real axis: the five crossings nearest to abs L = 1 on either side."""
+    changes = np.flatnonzero(np.sign(response.imag[:-1]) != np.sign(response.imag[1:]))
+    changes = changes[response.real[changes] < 0]
+    logs = np.log(np.abs(response[changes]))
+    order = changes[np.argsort(np.abs(logs))]
+    inside, outside = order[np.abs(response[order]) < 1], order[np.abs(response[order]) >= 1]
+    return np.sort(np.concatenate([inside[:5], outside[:5]]))
+
+
+def _bisected(
+    function: Callable[[Any], Any], omega: Any, values: Any, changes: Any | None = None
+) -> list[Any]:
     found = []
-    for index in np.flatnonzero(np.sign(values[:-1]) != np.sign(values[1:])):
+    if changes is None:
+        changes = np.flatnonzero(np.sign(values[:-1]) != np.sign(values[1:]))
+    for index in changes:
         low, high = mpf(float(omega[index])), mpf(float(omega[index + 1]))
         if mp.sign(function(low)) == mp.sign(function(high)):
             continue
-        found.append(mp.findroot(function, (low, high), solver="anderson", tol=mpf("1e-70")))
+        found.append(mp.findroot(function, (low, high), solver="anderson", verify=False))
     return found
 
 

@@ -251,6 +251,12 @@ def value_at(polynomial: Polynomial, s: Any) -> Any:
     return total
 
 
+def derivative(polynomial: Polynomial) -> Polynomial:
+    """The derivative of a polynomial."""
+    degree = len(polynomial) - 1
+    return [c * (degree - index) for index, c in enumerate(polynomial[:-1])] or [mpf(0)]
+
+
 def multiply(*polynomials: Polynomial) -> Polynomial:
     """The product of polynomials."""
     total: Polynomial = [mpf(1)]
@@ -281,10 +287,25 @@ def _roots(polynomial: tuple[Any, ...]) -> list[Any]:
         polynomial, at_origin = polynomial[:-1], at_origin + 1
     roots = [mpc(0)] * at_origin
     if len(polynomial) > 1:
-        with mp.workdps(4 * DIGITS):
-            found = mp.polyroots(polynomial[::-1], maxsteps=500, extraprec=400, asc=True)
-        roots += [mpc(root) for root in found]
+        roots += _roots_off_origin(list(polynomial))
     return roots
+
+
+def _roots_off_origin(polynomial: Polynomial) -> list[Any]:
+    try:
+        with mp.workdps(4 * DIGITS):
+            found = mp.polyroots(polynomial[::-1], maxsteps=50, extraprec=400, asc=True)
+    except mp.NoConvergence:
+        # equal roots: eigenvalues of the companion matrix keep a share of the digits, one in the multiplicity
+        with mp.workdps(8 * DIGITS):
+            order = len(polynomial) - 1
+            companion = mp.matrix(order, order)
+            for column in range(order):
+                companion[0, column] = -polynomial[column + 1] / polynomial[0]
+            for row in range(1, order):
+                companion[row, row - 1] = mpf(1)
+            found = mp.eig(companion, left=False, right=False)
+    return [mpc(root) for root in found]
 
 
 def _complex(root: Any) -> Any:

@@ -60,21 +60,24 @@ def _rest_of_denominator(loop: ExactLoop, line: Any, top: Any) -> Any:
 
 
 def _highest_frequency(loop: ExactLoop, line: Any) -> Any:
-    """A frequency above every root and beyond which abs L stays below 1."""
-    top = mpf(1)
-    for root in polynomial_roots(loop.denominator) + polynomial_roots(loop.numerator):
-        top = max(top, 4 * abs(root))
-    if loop.dead_time > 0:
-        top = max(top, 4 / loop.dead_time)
-    for _ in range(400):
-        if abs(loop.at(mpc(line, top))) < mpf("0.3"):
-            return top
-        top *= 2
-        if abs(loop.at(mpc(line, top))) > 0.999 * abs(loop.at(mpc(line, top / 2))):
+    """A frequency above every light resonance, beyond which abs L stays below 1 on the line."""
+    roots = [
+        root for root in polynomial_roots(loop.denominator) + polynomial_roots(loop.numerator) if root != 0
+    ]
+    paces = [abs(root) for root in roots] + ([1 / loop.dead_time] if loop.dead_time > 0 else [mpf(1)])
+    light = [2 * abs(root) for root in roots if abs(root.real - line) < abs(root.imag)]
+    end = 4 * max(paces)
+    while abs(loop.at(mpc(line, end))) >= mpf("0.3"):
+        end *= 2
+        if abs(loop.at(mpc(line, end))) > 0.999 * abs(loop.at(mpc(line, end / 2))):
             break
-    if abs(loop.at(mpc(line, top))) < mpf("0.999999"):
-        return top
-    raise ValueError("abs L does not fall below 1 on the line")
+    if abs(loop.at(mpc(line, end))) > mpf("0.999999"):
+        raise ValueError("abs L does not fall below 1 on the line")
+    allowed = max(mpf("0.3"), (1 + abs(loop.at(mpc(line, end)))) / 2)
+    walked = [mpf(float(omega)) for omega in np.geomspace(float(min(paces)) / 10, float(end), 600)]
+    above = [index for index, omega in enumerate(walked) if abs(loop.at(mpc(line, omega))) >= allowed]
+    top = walked[min(above[-1] + 10, 599)] if above else walked[0]
+    return max([top, *light])
 
 
 def _grid(loop: ExactLoop, top: Any) -> list[Any]:
