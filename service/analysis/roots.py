@@ -131,7 +131,7 @@ def _node_counts(axis: AxisResponse) -> list[int]:
     if axis.loop.dead_time == 0 or axis.loop.sign == 0:
         return [FEWEST_NODES]
     counts = []
-    for level in LEVELS:
+    for level in (*LEVELS, *_level_of_neutral(axis.loop)):
         above = axis.omega[axis.log_response.real >= -level]
         highest = float(above[-1]) if above.size else 0.0
         angle = highest * axis.loop.dead_time
@@ -142,6 +142,12 @@ def _node_counts(axis: AxisResponse) -> list[int]:
     needed = [count for count in sorted(set(counts)) if count > FEW_NODES]
     cheap = [count for count in counts if count <= FEW_NODES]
     return ([max(cheap)] if cheap else []) + needed
+
+
+def _level_of_neutral(loop: OpenLoop) -> list[float]:
+    """Between 1 and abs L(∞), however near the two are: from some frequency on abs L stays below it."""
+    magnitude = loop.high_frequency_magnitude
+    return [-0.5 * math.log(magnitude)] if 0.0 < magnitude < 1.0 else []
 
 
 def _resolved(nodes: int) -> float:
