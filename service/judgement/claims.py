@@ -65,7 +65,7 @@ class ClaimFinding:
     recomputed: Quantity
     outcome: Literal["agrees", "differs", "not_comparable"]
     tolerance: str
-    """In words: "2 percent" or "1 degree"."""
+    """In words: "2 per cent" or "1 degree"."""
 
 
 def compare(recomputation: Recomputation, claims: Claims) -> tuple[ClaimFinding, ...]:
@@ -84,7 +84,7 @@ def _compare_one(analysis: Analysis | None, name: str, claimed: float | Unbounde
         claimed=claimed,
         recomputed=recomputed,
         outcome=_outcome(claimed, recomputed, in_degrees, _is_sensitive(analysis, name)),
-        tolerance="1 degree" if in_degrees else "2 percent",
+        tolerance="1 degree" if in_degrees else "2 per cent",
     )
 
 

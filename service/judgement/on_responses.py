@@ -85,8 +85,10 @@ def load_offset(case: Case) -> Finding | None:
     )
 
 
-def loop_type(case: Case) -> Finding:
-    """The loop's type in words."""
+def loop_type(case: Case) -> Finding | None:
+    """The loop's type in words, which hold for a loop that comes to rest."""
+    if case.recomputation.verdict != "stable":
+        return None
     number = case.recomputation.loop_type
     words = _LOOP_TYPES.get(number, _LOOP_TYPE_TWO_OR_MORE)
     return Finding(finding="loop_type", weight="note", sentence=f"Loop of type {number}: {words}.")

@@ -64,6 +64,12 @@ GAIN_BASES: dict[str, str] = {
     "percent_of_range": "per cent of output over per cent of range",
     "engineering_units": "output units over PV units",
 }
+"""What a controller's gain is counted in."""
+PLANT_GAIN_BASES: dict[str, str] = {
+    "percent_of_range": "per cent of range over per cent of output",
+    "engineering_units": "PV units over output units",
+}
+"""What a plant's gain is counted in: the other way round."""
 SCAN_METHODS: dict[str, str] = {
     "backward_difference": "backward difference",
     "trapezoidal": "trapezoidal",
@@ -76,7 +82,7 @@ ALGORITHMS: dict[str, str] = {
 VERDICTS: dict[Verdict, str] = {
     "stable": "Stable: after a disturbance the loop comes to rest.",
     "unstable": "Unstable: the loop does not come to rest, it swings up or runs away.",
-    "undecided": "Undecided: it could not be shown that the loop is stable. It counts as not shown stable.",
+    "undecided": "Undecided: it could not be shown that the loop is stable. Treat it as not stable.",
 }
 OUTCOMES: dict[Outcome, str] = {"met": "met", "not_met": "not met", "not_assessed": "not assessed"}
 WEIGHTS: dict[str, str] = {"stop": "stop", "caution": "caution", "note": "note"}

@@ -6,7 +6,7 @@ from collections.abc import Iterator, Sequence
 
 from service.analysis.plant import FrequencyResponse, PlantModel, Uncertainty
 from service.judgement.digits import as_entered
-from service.judgement.wording import GAIN_BASES, PLANT_KINDS
+from service.judgement.wording import PLANT_GAIN_BASES, PLANT_KINDS
 from service.sheets.controllers import Told, root_as_entered
 
 LABELS = {
@@ -60,7 +60,7 @@ def _parameters(plant: PlantModel) -> Iterator[Told]:
 
 def _value(name: str, value: object) -> str:
     if name == "gain_basis":
-        return GAIN_BASES[str(value)]
+        return PLANT_GAIN_BASES[str(value)]
     if name in _ROOTS and isinstance(value, tuple):
         return ", ".join(root_as_entered(root) for root in value) or "none"
     return _numbers(value)

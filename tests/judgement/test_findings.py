@@ -269,6 +269,10 @@ def test_the_type_of_the_loop_is_told(plant: PlantModel, controller: Controller,
     assert one(loop(plant, controller), "loop_type").sentence.startswith(f"Loop of type {number}: ")
 
 
+def test_of_a_loop_that_does_not_come_to_rest_no_rest_is_told() -> None:
+    assert "loop_type" not in codes(loop(UNSTABLE_LAG, ideal(action="direct")))
+
+
 def test_a_loop_that_less_gain_destabilises_is_told() -> None:
     found = loop(UNSTABLE_LAG, ideal(gain=1.6, integral_s=None))
     assert one(found, "gain_reduction_governs").weight == "caution"
@@ -362,7 +366,7 @@ def test_another_librarys_opinion_is_told_where_it_does_not_agree(outcome: Any, 
 
 
 def test_the_heaviest_findings_come_first() -> None:
-    found = find(loop(UNSTABLE_LAG, ideal(action="direct", derivative_s=2.0)))
+    found = find(loop(INVERSE, ideal(action="direct", derivative_s=2.0)))
     weights = [finding.weight for finding in found]
     assert weights == sorted(weights, key=["stop", "caution", "note"].index)
     assert set(weights) == {"stop", "caution", "note"}

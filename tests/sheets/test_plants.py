@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import fields
+from dataclasses import fields, replace
 from typing import get_args
 
 from service.analysis.plant import (
@@ -32,6 +32,13 @@ def test_numbers_stand_as_they_were_entered() -> None:
     told = values(plant)
     assert told["Denominator, highest power first"] == "120, 0.1, 1"
     assert told["Dead time"] == "0"
+
+
+def test_a_plant_s_gain_is_counted_the_other_way_round_than_a_controller_s() -> None:
+    plant = TransferFunction(kind="transfer_function", numerator=(1.25,), denominator=(120.0, 1.0))
+    assert values(plant)["Gain is told as"] == "per cent of range over per cent of output"
+    in_units = replace(plant, gain_basis="engineering_units")
+    assert values(in_units)["Gain is told as"] == "PV units over output units"
 
 
 def test_a_gain_of_zero_is_not_left_out() -> None:
