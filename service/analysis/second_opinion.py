@@ -28,6 +28,16 @@ ABSOLUTE_TOLERANCES = {"phase_margin_deg": 1.0, "overshoot_percent": 1.0}
 """The library agrees within 2 %, or within 1° or 1 point: the measure that claims are held to."""
 
 LIBRARY = "python-control"
+_WORDS = {
+    "verdict": "verdict",
+    "unstable_roots": "the number of unstable roots",
+    "gain_margin": "gain margin",
+    "gain_reduction_margin": "gain reduction margin",
+    "phase_margin_deg": "phase margin",
+    "max_sensitivity": "maximum sensitivity",
+    "overshoot_percent": "overshoot",
+    "settling_time_s": "settling time",
+}
 
 Outcome = Literal["agrees", "differs", "not_available"]
 Values = dict[str, float | str | None]
@@ -65,7 +75,7 @@ def second_opinion(
     differing = _differing(values, recomputed)
     if not differing:
         return _opinion(approximation, values, "agrees", "within 2 %, 1 degree and 1 point of overshoot")
-    return _opinion(approximation, values, "differs", _reason(differing, approximation))
+    return _opinion(approximation, values, "differs", _reason(differing, approximation, recomputed))
 
 
 def _opinion(approximation: str | None, values: Values, outcome: Outcome, note: str) -> SecondOpinion:
@@ -189,8 +199,10 @@ def _differ(name: str, theirs: float | str | None, ours: Quantity | str) -> bool
     return abs(theirs - ours) > allowed
 
 
-def _reason(differing: list[str], approximation: str | None) -> str:
+def _reason(differing: list[str], approximation: str | None, recomputed: Analysis) -> str:
     causes = []
+    if recomputed.stability.verdict == "undecided":
+        causes.append("here the verdict is undecided, which the library does not know")
     if approximation is not None:
         causes.append("the library approximates the dead time, here it is exact")
     if {"overshoot_percent", "settling_time_s"} & set(differing):
@@ -198,5 +210,5 @@ def _reason(differing: list[str], approximation: str | None) -> str:
     if "max_sensitivity" in differing:
         causes.append("the library looks for a peak within the frequency axis, here its ends count")
     if not causes:
-        causes.append("both are without approximation: have the loop looked at before signing")
-    return f"differs in {', '.join(differing)}: {'; '.join(causes)}"
+        causes.append("neither approximates, so have the loop looked at before signing")
+    return f"differs in {' and '.join(_WORDS[name] for name in differing)} ({'; '.join(causes)})"

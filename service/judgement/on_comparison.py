@@ -35,6 +35,6 @@ def second_opinion(case: Case) -> Finding | None:
     return Finding(
         finding="second_opinion_differs",
         weight="caution",
-        sentence=f"{opinion.library} finds otherwise on the same loop: {opinion.note}. That is for the "
-        "reviewer to weigh, and no verdict.",
+        sentence=f"{opinion.library}, asked about the same loop, {opinion.note}. That is for the reviewer to "
+        "weigh, and no verdict.",
     )
