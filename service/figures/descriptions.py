@@ -6,25 +6,26 @@ from bisect import bisect_left
 
 from service.analysis.results import FrequencyCurve, LoadStep, Quantity, ResponseCurve, SetpointStep
 from service.figures import ticks, window
-from service.figures.frequency import TITLE
+from service.figures.frequency import title
 from service.figures.responses import Response, number
 from service.judgement.digits import three_digits
 
 TELLING_PEAK = 1000.0
+_NO_SENSITIVITY = (
+    " The sensitivity |S| is not drawn: it measures a stable loop only, and this one is not shown to be."
+)
 ROWS = 11
 """Rows of a table: enough to tell how a response runs, few enough to be read aloud."""
 
 
-def describe(drawn: Response | FrequencyCurve) -> str:
+def describe(drawn: Response) -> str:
     """The chart in sentences. Every number in them stands in the stored results."""
-    if isinstance(drawn, FrequencyCurve):
-        return _describe_frequency(drawn)
     metrics = drawn.metrics
     if isinstance(metrics, SetpointStep):
         about_pv = _describe_setpoint(drawn, metrics)
     else:
         about_pv = _describe_load(metrics)
-    low, high = (three_digits(end(drawn.curve.output)) for end in (min, max))
+    low, high = (_told(end(drawn.curve.output)) for end in (min, max))
     output = f"The controller output moves between {low} and {high} % of its range."
     beside = f" Drawn beside it, dashed: the {drawn.earlier_name}." if drawn.earlier else ""
     return f"{drawn.title}, {drawn.name}. {about_pv} {output}{beside}"
@@ -46,7 +47,7 @@ def _row(response: Response, time_s: float, unit: ticks.TimeUnit) -> tuple[str, 
     values = [time_s / unit.seconds, _at(curve, curve.pv, time_s), _at(curve, curve.output, time_s)]
     if earlier:
         values.append(_at(earlier, earlier.pv, time_s))
-    return tuple("" if value is None else three_digits(value) for value in values)
+    return tuple("" if value is None else _told(value) for value in values)
 
 
 def _at(curve: ResponseCurve, values: tuple[float, ...], time_s: float) -> float | None:
@@ -77,7 +78,7 @@ def _describe_setpoint(response: Response, metrics: SetpointStep) -> str:
 def _describe_load(metrics: LoadStep) -> str:
     sentences = []
     if number(metrics.peak_deviation) is not None and number(metrics.peak_time_s) is not None:
-        peak, after = three_digits(metrics.peak_deviation), three_digits(metrics.peak_time_s)
+        peak, after = _told(metrics.peak_deviation), three_digits(metrics.peak_time_s)
         sentences.append(f"PV is driven off by {peak} % of range after {after} s.")
     if number(metrics.recovery_time_s) is not None:
         sentences.append(f"It has recovered after {three_digits(metrics.recovery_time_s)} s.")
@@ -85,17 +86,18 @@ def _describe_load(metrics: LoadStep) -> str:
     return " ".join(sentences)
 
 
-def _describe_frequency(curve: FrequencyCurve) -> str:
+def describe_frequency(curve: FrequencyCurve, *, stable: bool) -> str:
+    """The chart over frequency in sentences; its sensitivity means something for a stable loop only."""
     first, last = three_digits(curve.rad_s[0]), three_digits(curve.rad_s[-1])
     start, end = three_digits(curve.magnitude[0]), three_digits(curve.magnitude[-1])
     return (
-        f"{TITLE}, from {first} to {last} rad/s. The loop gain |L| runs from {start} to {end}."
-        f"{_sensitivity_peak(curve)}"
+        f"{title(stable=stable)}, from {first} to {last} rad/s. The loop gain |L| runs from {start} to {end}."
+        f"{_sensitivity_peak(curve) if stable else _NO_SENSITIVITY}"
     )
 
 
 def _sensitivity_peak(curve: FrequencyCurve) -> str:
-    """Nothing for a loop on the edge of stability: its peak is an accident of the drawn points."""
+    """Nothing for a loop so near the edge that its peak is an accident of the drawn points."""
     peak = max(curve.sensitivity)
     if peak > TELLING_PEAK:
         return ""
@@ -106,4 +108,8 @@ def _sensitivity_peak(curve: FrequencyCurve) -> str:
 def _rest(final_value: Quantity) -> str:
     if number(final_value) is None:
         return "PV comes to no rest that can be stated."
-    return f"PV comes to rest at {three_digits(final_value)} % of range."
+    return f"PV comes to rest at {_told(final_value)} % of range."
+
+
+def _told(value: Quantity) -> str:
+    return three_digits(value).replace("-", "−")  # a true minus sign, as on the axes

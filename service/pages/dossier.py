@@ -106,7 +106,7 @@ def _figures(assessment: Assessment, curves: Sequence[CurvesView]) -> Iterator[F
     for response in assessment.responses:
         yield _response(response)
     for view in curves:
-        yield from _frequency(view)
+        yield from _frequency(view, stable=assessment.stable)
 
 
 def _response(response: Response) -> Figure:
@@ -120,14 +120,15 @@ def _response(response: Response) -> Figure:
     )
 
 
-def _frequency(view: CurvesView) -> Iterator[Figure]:
+def _frequency(view: CurvesView, *, stable: bool) -> Iterator[Figure]:
     curve = view.curves.frequency
     if curve is not None:
-        words, title = descriptions.describe(curve), frequency.TITLE
+        words = descriptions.describe_frequency(curve, stable=stable)
+        title = frequency.title(stable=stable)
         yield Figure(
             title=title,
-            svg=_svg(frequency_drawing(curve), title, words),
-            narrow_svg=_svg(frequency_drawing(curve, **NARROW), title, words),
+            svg=_svg(frequency_drawing(curve, stable=stable), title, words),
+            narrow_svg=_svg(frequency_drawing(curve, stable=stable, **NARROW), title, words),
             description=words,
             rows=(),
         )

@@ -6,7 +6,7 @@ from dataclasses import replace
 
 import pytest
 
-from service.figures.descriptions import ROWS, describe, table
+from service.figures.descriptions import ROWS, describe, describe_frequency, table
 from service.judgement.digits import three_digits
 from tests.figures.responses_to_draw import frequency, load, setpoint
 
@@ -37,9 +37,16 @@ def test_the_peak_of_the_sensitivity_is_told_where_it_says_something() -> None:
     curve = frequency()
     at = max(range(len(curve.rad_s)), key=lambda index: curve.sensitivity[index])
     rad_s, peak = three_digits(curve.rad_s[at]), three_digits(curve.sensitivity[at])
-    assert f"near {rad_s} rad/s: {peak} at the drawn points" in describe(curve)
+    assert f"near {rad_s} rad/s: {peak} at the drawn points" in describe_frequency(curve, stable=True)
     on_the_edge = replace(curve, sensitivity=(1e15, *curve.sensitivity[1:]))
-    assert "largest" not in describe(on_the_edge)
+    assert "largest" not in describe_frequency(on_the_edge, stable=True)
+
+
+def test_of_a_loop_that_is_not_shown_stable_no_sensitivity_is_told() -> None:
+    words = describe_frequency(frequency(), stable=False)
+    assert words.startswith("Loop gain over frequency, from")
+    assert "The sensitivity |S| is not drawn" in words
+    assert "largest" not in words
 
 
 def test_the_table_reads_the_drawn_curve_at_even_times() -> None:

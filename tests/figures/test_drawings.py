@@ -8,7 +8,7 @@ import pytest
 from reportlab.graphics.shapes import Drawing, Group, PolyLine, String
 
 from service.figures import fonts
-from service.figures.frequency import frequency_drawing
+from service.figures.frequency import SENSITIVITY, frequency_drawing
 from service.figures.responses import EARLIER, THESE, Response, response_drawing
 from tests.figures.responses_to_draw import creeping, frequency, load, setpoint, setpoint_metrics
 
@@ -26,6 +26,14 @@ def test_axes_say_what_they_are_and_in_which_unit() -> None:
     said = words(response_drawing(setpoint()))
     assert {"PV, % of range", "Controller output, % of its range", "Time after the step, s"} <= said
     assert {"Magnitude, no unit", "Frequency, rad/s"} <= words(frequency_drawing(frequency()))
+
+
+def test_a_sensitivity_is_drawn_for_a_stable_loop_only() -> None:
+    assert "sensitivity |S|" in words(frequency_drawing(frequency()))
+    not_stable = frequency_drawing(frequency(), stable=False)
+    assert "Loop gain over frequency" in words(not_stable)
+    assert "sensitivity |S|" not in words(not_stable)
+    assert not [line for line in shapes(not_stable, PolyLine) if line.strokeColor == SENSITIVITY.colour]
 
 
 def test_the_gains_in_force_are_drawn_dashed_beside_the_proposed_ones() -> None:
