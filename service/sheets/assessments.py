@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 from service.analysis.results import (
     Analysis,
+    DominantRoot,
     EquivalentTerms,
     Margins,
     Recomputation,
@@ -81,6 +82,8 @@ SYMBOLS = {"met": "✓ met", "not_met": "✗ NOT MET", "not_assessed": "? not as
 CLAIM_SYMBOLS = {"agrees": "= agrees", "differs": "≠ DIFFERS", "not_comparable": "? cannot be compared"}
 CROSSOVERS_MAX = 4
 """The sheet lists so many of each; the record has them all."""
+ON_THE_AXIS = 1e-12
+"""A damping ratio below this is what float64 leaves of 0."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -240,12 +243,17 @@ def _stability(analysis: Analysis) -> Iterator[Told]:
     for name in ("decay_rate_per_s", "spectral_radius"):
         if QUANTITIES[name].of(analysis) is not None:
             yield _told(analysis, name)
-    roots = [
-        f"{_root(dominant.root)} rad/s (damping {digits.three_digits(dominant.damping_ratio)})"
-        for dominant in analysis.stability.dominant_roots
-    ]
+    roots = [dominant_root(each) for each in analysis.stability.dominant_roots]
     if roots:
         yield Told(name="Dominant roots", value="; ".join(roots))
+
+
+def dominant_root(dominant: DominantRoot) -> str:
+    """A root with its damping; what float64 leaves of a real part of 0 is told as 0."""
+    root, damping = dominant.root, dominant.damping_ratio
+    if isinstance(root, tuple) and abs(damping) < ON_THE_AXIS:
+        root, damping = (0.0, root[1]), 0.0
+    return f"{_root(root)} rad/s (damping {_minus(digits.three_digits(damping))})"
 
 
 def _crossovers(margins: Margins) -> Iterator[Told]:
@@ -289,9 +297,10 @@ def _worst_case(worst: WorstCase) -> Iterator[Told]:
 
 
 def _second_opinion(opinion: SecondOpinion) -> Told:
-    outcome = opinion.outcome.replace("_", " ")
-    parts = (f"{opinion.library} {opinion.version}: {outcome}", opinion.approximation, opinion.note)
-    return Told(name="Second opinion, never a verdict", value=". ".join(part for part in parts if part))
+    approximation = f" ({opinion.approximation})" if opinion.approximation else ""
+    outcome = {"agrees": "agrees ", "differs": "", "not_available": "has none: "}[opinion.outcome]
+    told = f"{opinion.library} {opinion.version}{approximation} {outcome}{opinion.note}"
+    return Told(name="Second opinion, never a verdict", value=told)
 
 
 def _sentences(findings: tuple[Finding, ...]) -> tuple[Sentence, ...]:

@@ -118,9 +118,7 @@ def content_of(
             assessment(_title(signed, each), each.answer, _responses(signed, each, drawn, beside))
             for each in signed.recomputations
         ),
-        hard_limits=tuple(
-            criterion_sentence(finding) for each in signed.recomputations for finding in each.hard_floors
-        ),
+        hard_limits=tuple(_hard_limits(signed.recomputations)),
         models=tuple(_model(model) for model in signed.models),
         signatures=tuple(signature(decision) for decision in view.decisions),
         no_signature="" if view.decisions else "Nobody has signed this record.",
@@ -129,6 +127,13 @@ def content_of(
         digests=tuple(_digests(view)),
         code=_code(view),
     )
+
+
+def _hard_limits(recomputations: Sequence[SignedRecomputation]) -> Iterator[str]:
+    """What is below the hard floors; a loop that is not stable has no margins, and its verdict says it."""
+    for each in recomputations:
+        if each.answer.recomputation.verdict == "stable":
+            yield from (criterion_sentence(finding) for finding in each.hard_floors)
 
 
 _CurvesOf = Mapping[tuple[str, int], Curves]

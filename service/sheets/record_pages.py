@@ -17,7 +17,9 @@ from service.sheets.panel_page import PALE
 from service.sheets.signatures import Signature
 from service.sheets.styles import WIDTH_PT, joined, named, said, table
 
-_ROWS = [
+_LOOK = [
+    ("BACKGROUND", (0, 0), (-1, 0), PALE),
+    ("SPAN", (0, 0), (2, 0)),
     ("VALIGN", (0, 0), (-1, -1), "TOP"),
     ("LINEBELOW", (0, 0), (-1, -1), 0.3, black),
     ("LEFTPADDING", (0, 0), (-1, -1), 3),
@@ -25,6 +27,10 @@ _ROWS = [
     ("TOPPADDING", (0, 0), (-1, -1), 1),
     ("BOTTOMPADDING", (0, 0), (-1, -1), 1.5),
 ]
+_SHARES = (0.19, 0.115, 0.16, 0.13, 0.08, 0.225, 0.1)
+"""Widths of the columns of the results: a margin, its value and its limit; then twice a name and a value."""
+_SHARES_ALONE = (0.25, 0.15, 0.25)
+"""The same where there are limits only, because the loop was not shown to be stable."""
 
 
 def record_pages(content: SheetContent) -> list[Flowable]:
@@ -75,20 +81,22 @@ def _assessment(told: Assessment) -> Iterator[Flowable]:
 def _results(told: Assessment) -> Iterator[Flowable]:
     """Margins with their limits, the set-point step, the load step and noise: three columns side by side."""
     limits = _limits(told.limits)
-    setpoint = _quantities("After a set-point step", told.setpoint)
-    others = [*_quantities("After a load step", told.load), *_quantities("Measurement noise", told.noise)]
+    setpoint = _quantities("Set-point step of 1 %", told.setpoint)
+    others = [*_quantities("Load step of 1 %", told.load), *_quantities("Measurement noise", told.noise)]
     length = max(len(limits), len(setpoint), len(others))
     if not length:
+        return
+    if not setpoint and not others:
+        yield table(limits, [share * WIDTH_PT for share in _SHARES_ALONE], _LOOK, hAlign="LEFT")
         return
     columns = [
         column + [[""] * width] * (length - len(column))
         for column, width in ((limits, 3), (setpoint, 2), (others, 2))
     ]
     rows = [[cell for part in parts for cell in part] for parts in zip(*columns, strict=True)]
-    widths = [share * WIDTH_PT for share in (0.19, 0.115, 0.16, 0.13, 0.08, 0.225, 0.1)]
     parted = [("LINEBEFORE", (column, 0), (column, -1), 0.7, black) for column in (3, 5)]
-    heads = [("SPAN", (first, 0), (last, 0)) for first, last in ((0, 2), (3, 4), (5, 6))]
-    yield table(rows, widths, [*_ROWS, *parted, *heads, ("BACKGROUND", (0, 0), (-1, 0), PALE)])
+    heads = [("SPAN", (first, 0), (last, 0)) for first, last in ((3, 4), (5, 6))]
+    yield table(rows, [share * WIDTH_PT for share in _SHARES], [*_LOOK, *parted, *heads])
 
 
 def _limits(rows: Sequence[LimitRow]) -> list[list[Any]]:
@@ -121,7 +129,7 @@ def _responses(told: Assessment) -> Iterator[Flowable]:
     yield Spacer(0, 5)
     width = int(WIDTH_PT / 2) - 6
     drawings = [
-        response_drawing(response, width_pt=width, height_pt=144, text_pt=6.5) for response in told.responses
+        response_drawing(response, width_pt=width, height_pt=124, text_pt=6.5) for response in told.responses
     ]
     yield table([drawings], [WIDTH_PT / 2] * len(drawings), styles.BARE, hAlign="LEFT")
 

@@ -5,11 +5,14 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import UTC, datetime
+from io import BytesIO
 from pathlib import Path
 from typing import Any
 
 import pytest
 from flask import Flask
+from pypdf import PdfReader
+from werkzeug.test import TestResponse
 
 from service.app import create_app
 from service.context import services
@@ -29,11 +32,14 @@ class Shown:
     app: Flask
     demonstration: Demonstration
 
-    def get(self, path: str) -> Any:
+    def read(self, path: str) -> TestResponse:
         bearer = {"Authorization": f"Bearer {self.demonstration.tokens['odette.fairweather']}"}
         answer = self.app.test_client().get(path, headers=bearer)
         assert answer.status_code == 200, answer.get_data(as_text=True)
-        return answer.get_json()
+        return answer
+
+    def get(self, path: str) -> Any:
+        return self.read(path).get_json()
 
     def submissions(self, query: str = "") -> list[dict[str, Any]]:
         items: list[dict[str, Any]] = self.get(f"/v1/submissions?limit=100{query}")["items"]
@@ -96,6 +102,13 @@ def test_the_safety_related_loop_was_approved_by_two(shown: Shown) -> None:
     assert len(signers) == 2
     authors = [reactor["submitted_by"], *reactor["prepared_by"]]
     assert signers.isdisjoint(author["name"] for author in authors)
+
+
+def test_the_longest_ordinary_sheet_has_two_pages(shown: Shown) -> None:
+    """A loop that needs two approvals, with claims, a read-back and gains before."""
+    (reactor,) = shown.submissions("&state=in_force&tag=TIC-6120")
+    pdf = shown.read(f"/v1/submissions/{reactor['id']}/sheet.pdf").get_data()
+    assert len(PdfReader(BytesIO(pdf)).pages) == 2
 
 
 def test_the_first_event_says_that_it_is_a_demonstration(shown: Shown) -> None:

@@ -27,6 +27,7 @@ from tests.sheets.records_to_print import (
     LAG,
     LEVEL,
     LOOP,
+    NEAR_THE_LIMIT,
     NOON,
     REVIEWER,
     RUNAWAY,
@@ -68,6 +69,12 @@ def in_force() -> SheetContent:
 
 def unstable() -> SheetContent:
     view, curves, before = submission(controller=RUNS_AWAY)
+    return content_of(view, curves, curves_in_force=before)
+
+
+def below_the_hard_floor() -> SheetContent:
+    """Stable, and so near the limit that nobody can approve it."""
+    view, curves, before = submission(controller=NEAR_THE_LIMIT)
     return content_of(view, curves, curves_in_force=before)
 
 
@@ -248,6 +255,7 @@ CASES: dict[str, Callable[[], SheetContent]] = {
         ordinary,
         in_force,
         unstable,
+        below_the_hard_floor,
         undecided,
         two_zeros,
         gain_sets,

@@ -88,6 +88,7 @@ EARLIER = IdealController(
     integral=IntegralTime(value=0.5, unit="repeats_per_minute"),
 )
 RUNS_AWAY = replace(TUNED, proportional=Proportional(value=14.0, unit="gain"))
+NEAR_THE_LIMIT = replace(TUNED, proportional=Proportional(value=5.0, unit="gain"))
 
 
 def gains(controller: Controller, condition: str | None = None, *points: str) -> SignedGains:

@@ -10,8 +10,10 @@ import pytest
 
 from service.analysis.controller import IntegralTime, Proportional
 from service.analysis.plant import Range, Ranges
+from service.analysis.results import DominantRoot
 from service.records import comparison
 from service.records.lifecycle import START, State
+from service.sheets import assessments
 from service.sheets.content import KINDS, SheetContent, content_of
 from service.sheets.states import STATES
 from tests.sheets.conftest import Printed
@@ -144,7 +146,23 @@ def test_no_margin_stands_where_the_loop_was_not_shown_stable(print_case: PrintC
     unstable = print_case("unstable").content
     assert {row.outcome for row in unstable.assessments[0].limits} == {"? not assessed"}
     assert unstable.assessments[0].responses == ()
-    assert len(unstable.hard_limits) == 2
+
+
+def test_what_no_deviation_makes_good_is_told_of_a_stable_loop_only(print_case: PrintCase) -> None:
+    assert [print_case(name).content.hard_limits for name in ("ordinary", "unstable", "undecided")] == 3 * [
+        ()
+    ]
+    gain_margin, sensitivity = print_case("below_the_hard_floor").content.hard_limits
+    assert gain_margin.startswith("Gain margin at least 1.3: 1.")
+    assert sensitivity.startswith("Maximum sensitivity at most 4: ")
+    assert all(sentence.endswith(", not met.") for sentence in (gain_margin, sensitivity))
+
+
+def test_of_a_root_on_the_axis_no_rounding_is_told() -> None:
+    root = DominantRoot(root=(-2.2e-19, 0.00365), damping_ratio=6.1e-17)
+    assert assessments.dominant_root(root) == "0 + 0.00365j rad/s (damping 0)"
+    growing = DominantRoot(root=(0.00159, 0.0106), damping_ratio=-0.148)
+    assert assessments.dominant_root(growing) == "0.00159 + 0.0106j rad/s (damping −0.148)"
 
 
 def test_margins_carry_limit_outcome_and_three_digits(ordinary: SheetContent) -> None:
@@ -158,7 +176,7 @@ def test_margins_carry_limit_outcome_and_three_digits(ordinary: SheetContent) ->
 
 def test_claims_stand_beside_what_was_recomputed(ordinary: SheetContent) -> None:
     outcomes = {row.name: row.outcome for row in ordinary.assessments[0].claims}
-    assert outcomes["Gain margin"] == "= agrees (tolerance 2 percent)"
+    assert outcomes["Gain margin"] == "= agrees (tolerance 2 per cent)"
     assert outcomes["Phase margin"] == "≠ DIFFERS (tolerance 1 degree)"
 
 
