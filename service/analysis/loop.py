@@ -153,10 +153,21 @@ class OpenLoop:
 
 
 @dataclass(frozen=True, eq=False)
+class Factors:
+    """sign·e^log_gain·∏(s−z)/∏(s−p); zeros and poles complex, (nz,) and (np,)."""
+
+    zeros: Complexes
+    poles: Complexes
+    log_gain: float
+    sign: float = 1.0
+
+
+@dataclass(frozen=True, eq=False)
 class ClosedLoopParts:
     """What responses and routes need beside L, in the loop's own unit of time.
 
     `plant` and `setpoint`/`feedback` terms are separate; `hidden_roots` complex, shape (nh,).
+    `filtered_controller`: controller and measurement filter, direction not in it.
     """
 
     unit_rad_s: float
@@ -166,6 +177,7 @@ class ClosedLoopParts:
     dead_time: float
     direction: float
     controller: ControllerTerms
+    filtered_controller: Factors
     feedback: ParallelTerms
     setpoint: ParallelTerms
     measurement_filter: float
@@ -196,19 +208,21 @@ def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges |
     terms = controller_terms(controller)
     basis = _controller_basis(controller, ranges)
     filter_s = 0.0 if controller.measurement_filter_s == "unknown" else controller.measurement_filter_s
-    filter_poles = (complex(-1.0 / filter_s),) if filter_s > 0 else ()
+    controller_poles = terms.poles_rad_s + ((complex(-1.0 / filter_s),) if filter_s > 0 else ())
     zeros = np.array(terms.zeros_rad_s + plant.zeros_rad_s, dtype=complex)
-    poles = np.array(terms.poles_rad_s + filter_poles + plant.poles_rad_s, dtype=complex)
+    poles = np.array(controller_poles + plant.poles_rad_s, dtype=complex)
     if not (np.isfinite(zeros).all() and np.isfinite(poles).all()):
         raise OverflowError
     unit = _natural_unit(zeros, poles, dead_time_s)
     direction = 1.0 if controller.action == "reverse" else -1.0
-    factors = (direction, basis, terms.gain, plant.gain, 1.0 / filter_s if filter_s > 0 else 1.0)
-    log_gain, sign = _log_of_product(factors)
+    of_controller = (basis, terms.gain, 1.0 / filter_s if filter_s > 0 else 1.0)
+    controller_log_gain = math.fsum(math.log(factor) for factor in of_controller)
+    controller_log_gain += (len(terms.zeros_rad_s) - len(controller_poles)) * math.log(unit)
+    log_gain, sign = _log_of_product((direction, *of_controller, plant.gain))
     log_gain += (len(zeros) - len(poles)) * math.log(unit)
     if not math.isfinite(log_gain) and sign != 0:
         raise OverflowError
-    free_zeros, free_poles, hidden = _without_hidden(
+    free_zeros, free_poles, hidden = without_hidden(
         np.asarray(zeros / unit, complex), np.asarray(poles / unit, complex)
     )
     loop = OpenLoop(free_zeros, free_poles, log_gain if sign else -math.inf, sign, dead_time_s * unit)
@@ -220,6 +234,11 @@ def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges |
         dead_time=dead_time_s * unit,
         direction=direction,
         controller=terms,
+        filtered_controller=Factors(
+            np.array(terms.zeros_rad_s, complex) / complex(unit),
+            np.array(controller_poles, complex) / complex(unit),
+            controller_log_gain,
+        ),
         feedback=_scaled_terms(terms.feedback, basis, unit),
         setpoint=_scaled_terms(terms.setpoint, basis, unit),
         measurement_filter=filter_s * unit,
@@ -290,7 +309,8 @@ def _log_of_product(factors: tuple[float, ...]) -> tuple[float, float]:
     return math.fsum(math.log(abs(factor)) for factor in factors), sign
 
 
-def _without_hidden(zeros: Complexes, poles: Complexes) -> tuple[Complexes, Complexes, Complexes]:
+def without_hidden(zeros: Complexes, poles: Complexes) -> tuple[Complexes, Complexes, Complexes]:
+    """(zeros, poles, hidden): a zero and a pole that are one number stand in the last alone."""
     free_zeros, free_poles, hidden = [], list(poles), []
     for zero in zeros:
         distances = [abs(zero - pole) - CANCELLED * abs(zero) for pole in free_poles]

@@ -7,7 +7,7 @@ import math
 import numpy as np
 
 from service.analysis.frequency import AxisResponse, log_factors
-from service.analysis.loop import ClosedLoopParts, Complexes, Reals, reciprocal_sum
+from service.analysis.loop import Complexes, Factors, OpenLoop, Reals, reciprocal_sum
 from service.analysis.margins import PeakSearch, Sensitivity, WorkBoundError
 from service.analysis.results import Noise, Quantity
 
@@ -18,14 +18,9 @@ NUMERATOR_ALLOWANCE = 1.2
 class ControlSensitivity(Sensitivity):
     """C·F/(1+L), from measurement noise to the controller output; F the measurement filter."""
 
-    def __init__(self, parts: ClosedLoopParts) -> None:
-        super().__init__(parts.loop)
-        self._parts = parts
-        self._zeros: Complexes = np.array(parts.controller.zeros_rad_s, complex) / complex(parts.unit_rad_s)
-        filter_poles = (-1.0 / parts.measurement_filter,) if parts.measurement_filter > 0 else ()
-        poles = np.array(parts.controller.poles_rad_s, complex) / complex(parts.unit_rad_s)
-        self._poles: Complexes = np.concatenate([poles, np.array(filter_poles, complex)])
-        self._log_gain = _log_gain(parts)
+    def __init__(self, loop: OpenLoop, controller: Factors) -> None:
+        super().__init__(loop)
+        self._zeros, self._poles, self._log_gain = controller.zeros, controller.poles, controller.log_gain
 
     def numerator(self, omega: Reals, response: Complexes) -> Complexes | float:
         """abs C·F; its angle plays no part."""
@@ -87,9 +82,11 @@ class ControlSensitivity(Sensitivity):
         return [high / abs(1.0 + value) for value in turned]
 
 
-def noise(axis: AxisResponse, parts: ClosedLoopParts) -> Noise:
-    """The figures of noise that need no scan; the loop is stable."""
-    quantity = ControlSensitivity(parts)
+def noise(axis: AxisResponse, controller: Factors) -> Noise:
+    """The figures of noise that follow from the axis alone; the loop is stable. `controller`: with its
+    filter.
+    """
+    quantity = ControlSensitivity(axis.loop, controller)
     high = quantity.high_frequency()
     worst: Quantity
     if any(math.isinf(value) for value in quantity.ends()):
@@ -103,19 +100,3 @@ def noise(axis: AxisResponse, parts: ClosedLoopParts) -> Noise:
         output_gain_high_frequency="unbounded" if math.isinf(high) else high,
         max_control_sensitivity=worst,
     )
-
-
-def _log_gain(parts: ClosedLoopParts) -> float:
-    """ln of the leading coefficient of C·F in the loop's unit, from the scaled parallel terms."""
-    terms = parts.feedback
-    leading = next(
-        value
-        for value in (
-            terms.kp * terms.tf_s + terms.kd_s,
-            terms.kp + terms.ki_per_s * terms.tf_s,
-            terms.ki_per_s,
-        )
-        if value != 0
-    )
-    filtered = parts.measurement_filter
-    return math.log(abs(leading) / (terms.tf_s or 1.0) / (filtered or 1.0))

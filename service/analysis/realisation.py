@@ -50,7 +50,7 @@ def realise(parts: ClosedLoopParts) -> StateSpace | None:
     """The state space of a loop in its own unit of time; None where the controller's derivative has no filter
     and
     the plant passes a step at once, since then no response exists."""
-    ap, bp, cp, dp = _cascade(parts.plant)
+    ap, bp, cp, dp = plant_state_space(parts.plant)
     terms, setpoint = parts.feedback, parts.setpoint
     unfiltered = terms.tf_s == 0 and terms.kd_s != 0
     if unfiltered and dp != 0 and parts.measurement_filter == 0:
@@ -95,7 +95,7 @@ def realise(parts: ClosedLoopParts) -> StateSpace | None:
     return StateSpace(a, b_w, b_r, sign * c_u, sign * d_u, sign * d_r, c_y, dp, impulse)
 
 
-def _cascade(plant: Rational) -> tuple[Reals, Reals, Reals, float]:
+def plant_state_space(plant: Rational) -> tuple[Reals, Reals, Reals, float]:
     """Real sections in a row: (A, b, c, d)."""
     a, b, c, d = np.zeros((0, 0)), np.zeros(0), np.zeros(0), 1.0
     for section_a, section_b, section_c, section_d in _sections(plant):

@@ -147,7 +147,7 @@ def _continuous(
         margins=_finite(found_margins, notes),
         setpoint_step=_finite(setpoint, notes),
         load_step=_finite(load, notes),
-        noise=_finite(noise(axis, parts), notes),
+        noise=_finite(noise(axis, parts.filtered_controller), notes),
         notes=tuple(notes),
     )
     return analysis, curves(responses, axis, unit) if with_curves else None

@@ -59,14 +59,16 @@ class CharacteristicRoots:
     count: Count
 
 
-def characteristic_roots(space: StateSpace | None, axis: AxisResponse) -> CharacteristicRoots:
-    """Polished roots of 1 + L from the state space of the closed loop."""
+def characteristic_roots(
+    space: StateSpace | None, axis: AxisResponse, hidden_roots: Complexes
+) -> CharacteristicRoots:
+    """Polished roots of 1 + L from the state space of the closed loop, which holds the hidden ones too."""
     loop = axis.loop
     if loop.dead_time > 0 and loop.high_frequency_magnitude >= 1.0:
         return _infinite_chain(loop)
     best: CharacteristicRoots | None = None
     for nodes in _node_counts(axis):
-        found = _with_nodes(space, loop, nodes)
+        found = _with_nodes(space, loop, hidden_roots, nodes)
         if best is None or found.complete_right_of < best.complete_right_of:
             best = found
         if loop.dead_time == 0 or best.complete_right_of * loop.dead_time <= FAR_ENOUGH:
@@ -79,18 +81,29 @@ def characteristic_roots(space: StateSpace | None, axis: AxisResponse) -> Charac
     return best
 
 
-def _with_nodes(space: StateSpace | None, loop: OpenLoop, nodes: int) -> CharacteristicRoots:
+def _with_nodes(
+    space: StateSpace | None, loop: OpenLoop, hidden_roots: Complexes, nodes: int
+) -> CharacteristicRoots:
     starts = _starts(space, loop, nodes)
-    roots = _polished(loop, starts[starts.imag >= 0])
+    if space is not None:
+        starts = without_nearest(starts, hidden_roots)
+    roots = polished_roots(loop, starts[starts.imag >= 0])
     roots = roots[np.lexsort((np.abs(roots.imag), -roots.real))]
     if loop.dead_time == 0:
-        return CharacteristicRoots(roots, -math.inf, _count(loop, roots))
-    count = _count(loop, roots)
+        return CharacteristicRoots(roots, -math.inf, root_count(loop, roots))
+    count = root_count(loop, roots)
     roots = roots[np.abs(roots.imag) * loop.dead_time <= _resolved(nodes)]
     if count.roots is None:
         return CharacteristicRoots(roots, math.inf, count)
     kept, line = _verified(loop, roots)
     return CharacteristicRoots(kept, line, count)
+
+
+def without_nearest(starts: Complexes, hidden_roots: Complexes) -> Complexes:
+    """The starts less, for each hidden root, the one that lies nearest to it: no root of 1 + L is there."""
+    for root in hidden_roots:
+        starts = np.delete(starts, int(np.argmin(np.abs(starts - root))))
+    return starts
 
 
 def root_error(loop: OpenLoop, roots: Complexes) -> Reals:
@@ -196,7 +209,7 @@ def _characteristic_polynomial(loop: OpenLoop) -> Reals:
     return np.polyadd(np.atleast_1d(np.poly(loop.poles)).real, numerator)
 
 
-def _polished(loop: OpenLoop, starts: Complexes) -> Complexes:
+def polished_roots(loop: OpenLoop, starts: Complexes) -> Complexes:
     """Newton on ln(−L) = 0, which is nearly linear along the chain of roots that dead time makes.
 
     `starts` on and above the real axis; a start off the axis stands for a pair. Without dead time every start
@@ -258,7 +271,8 @@ def _first_found(starts: Complexes, roots: Complexes, settled: npt.NDArray[np.bo
     return kept
 
 
-def _count(loop: OpenLoop, roots: Complexes) -> Count:
+def root_count(loop: OpenLoop, roots: Complexes) -> Count:
+    """How many roots lie right of the axis, conjugates included; `roots` on and above the real axis."""
     # where Newton has not settled its next step tells how far off the root may be
     error = np.maximum(root_error(loop, roots), 2.0 * np.abs(_newton_step(loop, roots)))
     if np.any(np.abs(roots.real) <= error):

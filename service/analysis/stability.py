@@ -32,7 +32,7 @@ def decide(parts: ClosedLoopParts, space: StateSpace | None, axis: AxisResponse)
     """Reach the verdict of the continuous loop by both routes."""
     hidden = _count_hidden(parts.hidden_roots)
     routes = [_route(NYQUIST, count_right_of_axis(axis), hidden)]
-    roots = characteristic_roots(space, axis)
+    roots = characteristic_roots(space, axis, parts.hidden_roots)
     routes.append(_route(ROOTS, roots.count, hidden))
     verdict, unstable_roots, reason = agree(routes)
     stability = Stability(
