@@ -3,7 +3,10 @@
 from __future__ import annotations
 
 import os
+from collections.abc import Iterator
 from pathlib import Path
+
+import pytest
 
 # before numpy is imported by any test: two workers on two cores, one thread each
 for _variable in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
@@ -15,6 +18,25 @@ os.environ.setdefault(
 
 from hypothesis import settings  # noqa: E402  the variables above come first on purpose
 
+from tests.clusters import Cluster  # noqa: E402
+from tests.databases import Databases, PostgresqlDatabases, SqliteFiles  # noqa: E402
+
 # no deadline for one example: the machine is shared, and a slow one is not a wrong one
 settings.register_profile("house", deadline=None, print_blob=True)
 settings.load_profile("house")
+
+
+@pytest.fixture(scope="session")
+def cluster() -> Iterator[Cluster]:
+    """A PostgreSQL server of this worker's own, started when a test first asks for it."""
+    cluster = Cluster()
+    yield cluster
+    cluster.remove()
+
+
+@pytest.fixture(scope="session", params=["sqlite", "postgresql"])
+def databases(request: pytest.FixtureRequest, tmp_path_factory: pytest.TempPathFactory) -> Databases:
+    """Where stores are made: every test that touches records runs on both kinds of database."""
+    if request.param == "postgresql":
+        return PostgresqlDatabases(request.getfixturevalue("cluster"))
+    return SqliteFiles(tmp_path_factory.mktemp("databases"))

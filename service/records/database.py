@@ -56,11 +56,18 @@ class Database:
         the store's history does not say that it is one. `password_hasher` defaults to RFC 9106's parameters.
         """
         database = cls(url, clock, password_hasher or passwords.default_hasher())
-        if clock is not system_clock:
-            with database.reading() as session:
+        try:
+            database._check_clock()
+        except BaseException:
+            database.close()
+            raise
+        return database
+
+    def _check_clock(self) -> None:
+        if self.clock is not system_clock:
+            with self.reading() as session:
                 if not history.is_demonstration(session):
                     raise StoreNotUsable("only the store of a demonstration runs on another clock")
-        return database
 
     def now(self) -> datetime:
         """Return the time by the store's clock, in UTC."""

@@ -2,37 +2,35 @@
 
 from __future__ import annotations
 
-import shutil
 from collections.abc import Iterator
-from pathlib import Path
 
 import pytest
 
 from service.records import migrating
 from service.records.views import LoopView
+from tests.databases import Databases
 from tests.records.store import START, Store
 
 
 @pytest.fixture(scope="session")
-def made(tmp_path_factory: pytest.TempPathFactory) -> Path:
+def made(databases: Databases) -> str:
     """A store of a demonstration, so that it takes a clock that the tests move, with people and nothing
     else.
     """
-    file = tmp_path_factory.mktemp("records") / "made.db"
-    migrating.migrate(f"sqlite:///{file}", now=START, demonstration=True)
-    store = Store(f"sqlite:///{file}")
+    url = databases.new()
+    migrating.migrate(url, now=START, demonstration=True)
+    store = Store(url)
     store.add_people()
     store.database.close()
-    return file
+    return url
 
 
 @pytest.fixture
-def store(made: Path, tmp_path: Path) -> Iterator[Store]:
-    copy = tmp_path / "store.db"
-    shutil.copy(made, copy)
-    store = Store(f"sqlite:///{copy}")
+def store(made: str, databases: Databases) -> Iterator[Store]:
+    store = Store(databases.copy_of(made))
     yield store
     store.database.close()
+    databases.drop(store.url)
 
 
 @pytest.fixture

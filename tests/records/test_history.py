@@ -4,21 +4,21 @@ from __future__ import annotations
 
 import hashlib
 import json
-import sqlite3
 import threading
-from collections.abc import Callable
 from typing import Any
 
 import pytest
 import rfc8785
 from sqlalchemy import text
-from sqlalchemy.exc import IntegrityError
+from sqlalchemy.exc import DBAPIError, IntegrityError
 
 from service.records import accounts, history, loops, merkle, queries
 from service.records.roles import CONSOLE
+from service.records.tables import collection
 from service.records.tables.columns import Base, Kept
 from service.records.tables.history import HistoryEvent
 from service.records.views import LoopView
+from tests.databases import is_sqlite, opened, run
 from tests.records.store import Store, gains, registration
 
 
@@ -115,7 +115,7 @@ def test_what_is_rolled_back_leaves_no_gap(store: Store, loop: LoopView) -> None
 
 
 def test_reading_writes_nothing(store: Store) -> None:
-    with store.database.reading() as session, pytest.raises(Exception, match="readonly"):
+    with store.database.reading() as session, pytest.raises(DBAPIError, match=r"read-?only"):
         session.execute(text("UPDATE history_head SET size = size + 1"))
 
 
@@ -125,10 +125,16 @@ KEPT = sorted(
 )
 
 
-def _unguarded(store: Store) -> Callable[[str], None]:
-    """A connection as any other program opens it: no pragma of ours."""
-    connection = sqlite3.connect(store.url.removeprefix("sqlite:///"), isolation_level=None)
-    return lambda statement: connection.execute(statement).close()
+def _replacing(store: Store, table: str) -> str:
+    """The statement by which this kind of database puts a row in another's place."""
+    if is_sqlite(store.url):
+        return f"INSERT OR REPLACE INTO {table} SELECT * FROM {table}"  # noqa: S608  names of our own tables
+    key = collection.metadata().tables[table].primary_key
+    name = next(iter(key.columns)).name
+    return (
+        f"INSERT INTO {table} SELECT * FROM {table}"  # noqa: S608
+        f" ON CONFLICT ON CONSTRAINT {key.name} DO UPDATE SET {name} = excluded.{name}"
+    )
 
 
 @pytest.mark.parametrize("table", [name for name in KEPT if name != "sheets"])
@@ -136,15 +142,18 @@ def test_the_database_refuses_to_change_delete_or_replace_what_is_kept(
     store: Store, loop: LoopView, table: str
 ) -> None:
     _a_year(store, loop)
-    execute = _unguarded(store)
     column = "canonical" if table == "history_events" else "event_number"
-    for statement in (
-        f"UPDATE {table} SET {column} = {column}",  # noqa: S608  names of our own tables
+    statements = [
+        f"UPDATE {table} SET {column} = {column}",  # noqa: S608
         f"DELETE FROM {table}",  # noqa: S608
-        f"INSERT OR REPLACE INTO {table} SELECT * FROM {table}",  # noqa: S608
-    ):
-        with pytest.raises(Exception, match="append-only"):
-            execute(statement)
+        _replacing(store, table),
+    ]
+    if not is_sqlite(store.url):
+        statements.append(f"TRUNCATE {table} CASCADE")
+        statements.append(f"SET session_replication_role = replica; DELETE FROM {table}")  # noqa: S608
+    for statement in statements:
+        with opened(store.url) as connection, pytest.raises(DBAPIError, match="append-only"):
+            run(connection, statement)
 
 
 @pytest.mark.parametrize(
@@ -153,20 +162,31 @@ def test_the_database_refuses_to_change_delete_or_replace_what_is_kept(
         "UPDATE history_head SET size = size - 1",
         "UPDATE history_head SET digest = '0'",
         "DELETE FROM history_head",
-        "INSERT OR REPLACE INTO history_head SELECT * FROM history_head",
     ],
 )
 def test_the_head_only_moves_by_one(store: Store, statement: str) -> None:
-    execute = _unguarded(store)
-    with pytest.raises(Exception, match="the head"):
-        execute(statement)
+    with opened(store.url) as connection, pytest.raises(DBAPIError, match=r"the head|append-only"):
+        run(connection, statement)
+
+
+def test_the_head_is_not_replaced(store: Store) -> None:
+    statement = _replacing(store, "history_head")
+    with opened(store.url) as connection, pytest.raises(DBAPIError, match="the head"):
+        run(connection, statement)
 
 
 def test_every_kept_table_has_its_guards(store: Store) -> None:
-    with store.database.reading() as session:
-        names = set(session.execute(text("SELECT name FROM sqlite_master WHERE type = 'trigger'")).scalars())
-    wanted = {f"{table}_refuses_{what}" for table in KEPT for what in ("update", "delete", "replace")}
-    assert wanted <= names
+    with opened(store.url) as connection:
+        if is_sqlite(store.url):
+            found, what = run(connection, SQLITE_TRIGGERS), ("update", "delete", "replace")
+        else:
+            found, what = run(connection, POSTGRESQL_TRIGGERS), ("change", "truncate")
+    assert {f"{table}_refuses_{name}" for table in KEPT for name in what} <= {name for (name,) in found}
+
+
+SQLITE_TRIGGERS = "SELECT name FROM sqlite_master WHERE type = 'trigger'"
+POSTGRESQL_TRIGGERS = "SELECT tgname FROM pg_trigger WHERE tgenabled = 'A'"
+"""Those that a session in the replica role does not skip."""
 
 
 def test_two_writers_at_once_make_no_fork_and_no_gap(store: Store) -> None:

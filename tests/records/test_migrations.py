@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from collections.abc import Iterator
 from datetime import timedelta
 from pathlib import Path
 
@@ -14,6 +15,7 @@ from service.records import history, migrating
 from service.records.database import Database, system_clock
 from service.records.errors import StoreNotUsable
 from service.records.tables import collection
+from tests.databases import Databases
 from tests.records.store import CHEAP, START, Clock, Store
 
 
@@ -35,8 +37,15 @@ def test_migrating_again_changes_nothing(store: Store) -> None:
     assert store.events() == before
 
 
-def test_a_store_without_its_tables_is_not_current(tmp_path: Path) -> None:
-    database = Database(f"sqlite:///{tmp_path / 'empty.db'}", system_clock, CHEAP)
+@pytest.fixture
+def empty(databases: Databases) -> Iterator[str]:
+    url = databases.new()
+    yield url
+    databases.drop(url)
+
+
+def test_a_store_without_its_tables_is_not_current(empty: str) -> None:
+    database = Database(empty, system_clock, CHEAP)
     with database.reading() as session:
         assert not migrating.is_current(session)
     database.close()
@@ -47,23 +56,21 @@ def test_a_migrated_store_is_current(store: Store) -> None:
         assert migrating.is_current(session)
 
 
-def test_the_first_entry_says_whether_the_store_is_a_demonstrations(tmp_path: Path) -> None:
-    for demonstration in (True, False):
-        url = f"sqlite:///{tmp_path / f'{demonstration}.db'}"
-        migrating.migrate(url, now=START, demonstration=demonstration)
-        # what is said once stays said
-        migrating.migrate(url, now=START, demonstration=not demonstration)
-        database = Database.open(url)
-        with database.reading() as session:
-            assert history.is_demonstration(session) is demonstration
-        database.close()
+@pytest.mark.parametrize("demonstration", [True, False])
+def test_the_first_entry_says_whether_the_store_is_a_demonstrations(empty: str, demonstration: bool) -> None:
+    migrating.migrate(empty, now=START, demonstration=demonstration)
+    # what is said once stays said
+    migrating.migrate(empty, now=START, demonstration=not demonstration)
+    database = Database.open(empty)
+    with database.reading() as session:
+        assert history.is_demonstration(session) is demonstration
+    database.close()
 
 
-def test_only_a_demonstrations_store_takes_another_clock(tmp_path: Path) -> None:
-    url = f"sqlite:///{tmp_path / 'real.db'}"
-    migrating.migrate(url, now=START)
+def test_only_a_demonstrations_store_takes_another_clock(empty: str) -> None:
+    migrating.migrate(empty, now=START)
     with pytest.raises(StoreNotUsable):
-        Database.open(url, clock=Clock())
+        Database.open(empty, clock=Clock())
 
 
 def test_scripts_are_found_inside_an_installed_package(

@@ -5,12 +5,9 @@ The model knows what the rules ask for in words of its own; it does not read the
 
 from __future__ import annotations
 
-import shutil
-import tempfile
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from datetime import datetime, timedelta
-from pathlib import Path
 
 import pytest
 from hypothesis import settings
@@ -22,6 +19,7 @@ from service.records.errors import RecordsError
 from service.records.roles import CONSOLE
 from service.records.views import LoopView, SubmissionView
 from service.verification.verifier import verify
+from tests.databases import Databases
 from tests.records.store import Store, gains, registration
 
 PEOPLE = ("submitter", "colleague", "reviewer", "second", "auditor", "outsider")
@@ -52,20 +50,18 @@ class Known:
 class Walks(RuleBasedStateMachine):
     """One loop, several people, any order."""
 
-    made: Path
+    made: str
+    databases: Databases
 
     def __init__(self) -> None:
         super().__init__()
-        self.folder = tempfile.TemporaryDirectory()
         self.known: list[Known] = []
         self.running: Known | None = None
         self.revision = self.model = 1
 
     @initialize(safety_related=st.booleans())
     def begin(self, safety_related: bool) -> None:
-        copy = Path(self.folder.name) / "walk.db"
-        shutil.copy(self.made, copy)
-        self.store = Store(f"sqlite:///{copy}")
+        self.store = Store(self.databases.copy_of(self.made))
         self.loop: LoopView = self.store.register(safety_related=safety_related)
         self.store.add_model(self.loop)
         self.approvals_needed = 2 if safety_related else 1
@@ -76,7 +72,7 @@ class Walks(RuleBasedStateMachine):
             report = verify(self.store.url)
             assert report.holds, report.fault
             self.store.database.close()
-        self.folder.cleanup()
+            self.databases.drop(self.store.url)
 
     def _try(self, allowed: bool, step: Callable[[], object]) -> bool:
         """Take a step; it is done exactly where the model allows it, and makes exactly one entry."""
@@ -234,6 +230,6 @@ class Walks(RuleBasedStateMachine):
 
 
 @pytest.mark.xdist_group("walks")
-def test_no_walk_reaches_an_approval_without_what_the_rules_ask(made: Path) -> None:
-    Walks.made = made
+def test_no_walk_reaches_an_approval_without_what_the_rules_ask(made: str, databases: Databases) -> None:
+    Walks.made, Walks.databases = made, databases
     run_state_machine_as_test(Walks, settings=settings(max_examples=20, stateful_step_count=25))

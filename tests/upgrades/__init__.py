@@ -1,0 +1,1 @@
+"""Stores written by each earlier migration, and bringing them up."""

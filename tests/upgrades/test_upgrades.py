@@ -1,0 +1,75 @@
+"""What a plant has kept for years is brought up by a new version, and still verifies."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import pytest
+from alembic.script import ScriptDirectory
+
+from service.records import migrating
+from service.verification.verifier import Checkpoint, verify
+from tests.databases import Databases, opened, run
+from tests.records.store import START, Store, gains
+from tests.upgrades import keeping
+
+REVISIONS = [script.revision for script in ScriptDirectory.from_config(migrating._config()).walk_revisions()]
+
+
+@pytest.fixture(params=REVISIONS)
+def kept(request: pytest.FixtureRequest, databases: Databases) -> Iterator[str]:
+    url = databases.new()
+    keeping.put_back(request.param, url)
+    yield url
+    databases.drop(url)
+
+
+def _first_entry(url: str) -> bytes:
+    with opened(url) as connection:
+        ((canonical,),) = run(connection, "SELECT canonical FROM history_events WHERE number = 1")
+    return bytes(canonical)
+
+
+@pytest.mark.parametrize("revision", REVISIONS)
+def test_there_is_a_store_of_every_revision(revision: str) -> None:
+    assert keeping.file_of(revision).exists(), "python -m tests.upgrades.keeping writes it"
+
+
+def test_a_store_of_an_earlier_revision_is_brought_up_and_still_verifies(kept: str) -> None:
+    before = verify(kept)
+    assert before.holds, before.fault
+    assert before.rows > 20
+    migrating.migrate(kept, now=START)
+    after = verify(kept, checkpoint=Checkpoint(size=before.entries, root=before.root))
+    assert after.holds, after.fault
+    assert (after.entries, after.root) == (before.entries, before.root)
+
+
+def test_a_store_that_was_brought_up_is_as_one_that_was_made_new(kept: str, databases: Databases) -> None:
+    migrating.migrate(kept, now=START)
+    new = databases.new()
+    migrating.migrate(new, now=START)
+    assert _guards(kept) == _guards(new)
+    databases.drop(new)
+
+
+def _guards(url: str) -> list[tuple[str, ...]]:
+    """Every trigger with what it does."""
+    with opened(url) as connection:
+        if connection.dialect.name == "sqlite":
+            query = "SELECT name, sql FROM sqlite_master WHERE type = 'trigger'"
+        else:
+            query = "SELECT tgname, pg_get_triggerdef(oid), tgenabled FROM pg_trigger WHERE NOT tgisinternal"
+        return sorted(tuple(map(str, row)) for row in run(connection, query))
+
+
+def test_work_goes_on_in_a_store_that_was_brought_up(kept: str) -> None:
+    migrating.migrate(kept, now=START)
+    store = Store(kept)
+    store.clock.forward(days=2)
+    try:
+        store.register(tag="PIC-9")
+        store.submit(controller=gains(1.3))
+    finally:
+        store.database.close()
+    assert verify(kept).holds
