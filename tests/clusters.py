@@ -146,7 +146,7 @@ class Cluster:
 
     def drop(self, name: str) -> None:
         """Delete a database, whoever is connected to it."""
-        self.administer(sql.SQL("DROP DATABASE {} WITH (FORCE)").format(sql.Identifier(name)))
+        self.administer(sql.SQL("DROP DATABASE IF EXISTS {} WITH (FORCE)").format(sql.Identifier(name)))
 
     def administer(self, statement: sql.Composable) -> None:
         """Run one statement as the superuser, outside every transaction."""

@@ -2,16 +2,14 @@
 
 from __future__ import annotations
 
-import shutil
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
 import pytest
 from argon2 import PasswordHasher
 from flask import Flask
-from sqlalchemy import text
+from sqlalchemy import inspect, text
 from werkzeug.test import TestResponse
 
 from service.app import create_app
@@ -23,6 +21,7 @@ from service.records.roles import CONSOLE, Role
 from service.settings import Settings
 from tests.api import plant
 from tests.api.plant import Body
+from tests.databases import Databases
 
 SECRET_KEY = "a secret of the tests, of 32 bytes or more"
 CHEAP = PasswordHasher(time_cost=1, memory_cost=8, parallelism=1)
@@ -46,9 +45,9 @@ def password_of(person: str) -> str:
 
 @dataclass(frozen=True)
 class Kept:
-    """A store's file with the tokens of its accounts."""
+    """A store with the tokens of its accounts."""
 
-    file: Path
+    url: str
     tokens: dict[str, str]
 
 
@@ -57,6 +56,7 @@ class Service:
     """The application with a caller for each account."""
 
     app: Flask
+    url: str
     tokens: dict[str, str]
 
     def call(
@@ -79,24 +79,22 @@ class Service:
     def rows(self) -> dict[str, int]:
         """Return how many rows each table has, but for those that note use and throttle."""
         with self.app.app_context(), services().database.reading() as session:
-            names = session.execute(text("SELECT name FROM sqlite_master WHERE type = 'table'")).scalars()
             return {
                 name: session.execute(text(f'SELECT count(*) FROM "{name}"')).scalar_one()  # noqa: S608
-                for name in names.all()
+                for name in inspect(session.connection()).get_table_names()
             }
 
 
 @pytest.fixture(scope="session")
-def kept(tmp_path_factory: pytest.TempPathFactory) -> Kept:
-    """Make the store once; each test works on a copy of the file."""
-    file = tmp_path_factory.mktemp("store") / "kept.db"
-    url = f"sqlite:///{file}"
+def kept(databases: Databases) -> Kept:
+    """Make the store once; each test works on a copy."""
+    url = databases.new()
     migrating.migrate(url, now=system_clock())
     database = Database.open(url, password_hasher=CHEAP)
     with database.writing() as session:
         issued = {person: _account(session, database, person) for person in PEOPLE}
     database.close()
-    return Kept(file, issued)
+    return Kept(url, issued)
 
 
 def _account(session: Any, database: Database, person: str) -> str:
@@ -109,14 +107,13 @@ def _account(session: Any, database: Database, person: str) -> str:
 
 
 @pytest.fixture
-def service(kept: Kept, tmp_path: Path) -> Iterator[Service]:
-    copy = tmp_path / "store.db"
-    shutil.copy(kept.file, copy)
-    settings = Settings(database_url=f"sqlite:///{copy}", secret_key=SECRET_KEY)
-    app = create_app(settings, password_hasher=CHEAP)
-    yield Service(app, kept.tokens)
+def service(kept: Kept, databases: Databases) -> Iterator[Service]:
+    url = databases.copy_of(kept.url)
+    app = create_app(Settings(database_url=url, secret_key=SECRET_KEY), password_hasher=CHEAP)
+    yield Service(app, url, kept.tokens)
     with app.app_context():
         services().database.close()
+    databases.drop(url)
 
 
 @pytest.fixture

@@ -78,6 +78,6 @@ def test_the_credential_is_asked_for_before_the_body_is_read(service: Service) -
 
 def test_no_application_is_made_without_a_secret_key_of_32_bytes(kept: Kept) -> None:
     with pytest.raises(ValueError, match="GAIN_SIGNOFF_SECRET_KEY"):
-        create_app(Settings(database_url=f"sqlite:///{kept.file}"))
+        create_app(Settings(database_url=kept.url))
     with pytest.raises(ValueError, match="32 bytes"):
-        create_app(Settings(database_url=f"sqlite:///{kept.file}", secret_key=SECRET_KEY[:31]))
+        create_app(Settings(database_url=kept.url, secret_key=SECRET_KEY[:31]))

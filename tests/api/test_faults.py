@@ -2,17 +2,15 @@
 
 from __future__ import annotations
 
-import sqlite3
-from contextlib import closing
-from pathlib import Path
-
 import pytest
 from sqlalchemy import event
+from sqlalchemy.exc import OperationalError
 
 from service.context import services
 from service.records import loops
 from tests.api import plant
 from tests.api.conftest import Decide, Service
+from tests.databases import Databases, is_sqlite, without_guards
 
 
 def test_after_too_many_wrong_passwords_the_right_one_waits_too(decide: Decide) -> None:
@@ -24,19 +22,20 @@ def test_after_too_many_wrong_passwords_the_right_one_waits_too(decide: Decide) 
     assert decide().status_code == 429
 
 
-def test_a_store_that_is_gone_is_503_with_an_identifier_alone(service: Service, tmp_path: Path) -> None:
-    with closing(sqlite3.connect(tmp_path / "store.db")) as connection:
-        connection.execute("DROP TABLE tokens")
+def test_a_store_that_is_gone_is_503_with_an_identifier_alone(service: Service, databases: Databases) -> None:
+    if is_sqlite(service.url):
+        # a deleted file would still be there for whoever has it open
+        without_guards(service.url, "DROP TABLE tokens")
+    else:
+        databases.drop(service.url)
     answer = service.get("/v1/loops")
     assert (answer.status_code, answer.json["type"]) == (503, "/problems/unavailable")
     assert set(answer.json) == {"type", "title", "status", "instance"}
     assert int(answer.headers["Retry-After"]) > 0
 
 
-def test_readiness_sees_a_store_that_is_not_current(service: Service, tmp_path: Path) -> None:
-    with closing(sqlite3.connect(tmp_path / "store.db")) as connection:
-        connection.execute("DELETE FROM alembic_version")
-        connection.commit()
+def test_readiness_sees_a_store_that_is_not_current(service: Service) -> None:
+    without_guards(service.url, "DELETE FROM alembic_version")
     assert service.get("/readyz", person=None).status_code == 503
     assert service.get("/livez", person=None).status_code == 200
 
@@ -72,11 +71,11 @@ def test_whichever_statement_of_a_submission_fails_all_or_nothing_is_kept(
         nonlocal seen
         seen = 0
 
-        def count(*_arguments: object) -> None:
+        def count(_connection: object, _cursor: object, statement: str, *_: object) -> None:
             nonlocal seen
             seen += 1
             if seen == number:
-                raise sqlite3.OperationalError("disk I/O error")
+                raise OperationalError(statement, None, Exception("disk I/O error"))
 
         event.listen(engine, "before_cursor_execute", count)
         try:

@@ -13,6 +13,7 @@ import pytest
 import waitress
 from playwright.sync_api import Browser, BrowserContext, Page, Request, Route, sync_playwright
 
+from tests.databases import SqliteFiles, file_of
 from tests.pages import invented
 from tests.pages.invented import Kept, password_of
 
@@ -42,14 +43,15 @@ class Site:
 
 @pytest.fixture(scope="session")
 def made(tmp_path_factory: pytest.TempPathFactory) -> Kept:
-    return invented.make_store(tmp_path_factory.mktemp("browser") / "kept.db")
+    return invented.make_store(SqliteFiles(tmp_path_factory.mktemp("browser")).new())
 
 
 @pytest.fixture
 def site(made: Kept, tmp_path: Path) -> Iterator[Site]:
+    # what a browser shows does not depend on the kind of database; tests/pages runs on both
     copy = tmp_path / "store.db"
-    shutil.copy(made.file, copy)
-    app = invented.application(copy)
+    shutil.copy(file_of(made.url), copy)
+    app = invented.application(f"sqlite:///{copy}")
     server = waitress.create_server(app, host="127.0.0.1", port=0, threads=4)
     thread = threading.Thread(target=server.run, daemon=True)
     thread.start()

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from pathlib import Path
 
 import pytest
@@ -11,6 +11,7 @@ from click.testing import CliRunner, Result
 from service.command.main import SUBJECTS, main
 from service.records import tokens
 from service.records.database import Database
+from tests.databases import Databases, file_of, is_sqlite
 
 Run = Callable[..., Result]
 PASSWORD = "seven wet bicycles\n"
@@ -18,8 +19,10 @@ REVIEWER = ("account", "add", "ines", "--full-name", "Ines Okafor", "--role", "r
 
 
 @pytest.fixture
-def url(tmp_path: Path) -> str:
-    return f"sqlite:///{tmp_path / 'store.db'}"
+def url(databases: Databases) -> Iterator[str]:
+    url = databases.new()
+    yield url
+    databases.drop(url)
 
 
 @pytest.fixture
@@ -101,13 +104,17 @@ def test_a_name_is_never_used_twice(store: Run) -> None:
     assert "taken" in refused_in_one_sentence(store(*REVIEWER, standard_input=PASSWORD))
 
 
-def test_a_store_that_was_never_made_is_said_and_none_is_made(run: Run, tmp_path: Path) -> None:
+def test_a_store_that_was_never_made_is_said_and_none_is_made(
+    run: Run, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setenv("GAIN_SIGNOFF_DATABASE_URL", f"sqlite:///{tmp_path / 'store.db'}")
     assert "gain-signoff migrate" in refused_in_one_sentence(run("token", "list"))
     assert list(tmp_path.iterdir()) == []
 
 
-def test_a_store_of_another_schema_is_said(run: Run, tmp_path: Path) -> None:
-    (tmp_path / "store.db").touch()
+def test_a_store_of_another_schema_is_said(run: Run, url: str) -> None:
+    if is_sqlite(url):
+        file_of(url).touch()
     assert "gain-signoff migrate" in refused_in_one_sentence(run("token", "list"))
 
 

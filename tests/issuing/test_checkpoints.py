@@ -22,11 +22,12 @@ from service.records.database import Database, system_clock
 from service.records.history_queries import HistoryFilter
 from service.records.roles import CONSOLE
 from tests.api.plant import LOOP
+from tests.databases import Databases
 
 
 @pytest.fixture
-def database(tmp_path: Path) -> Iterator[Database]:
-    url = f"sqlite:///{tmp_path / 'store.db'}"
+def database(databases: Databases) -> Iterator[Database]:
+    url = databases.new()
     migrating.migrate(url, now=system_clock())
     database = Database.open(url)
     with database.writing() as session:
@@ -35,6 +36,7 @@ def database(tmp_path: Path) -> Iterator[Database]:
             loops.register(session, CONSOLE, document, database.now())
     yield database
     database.close()
+    databases.drop(url)
 
 
 def made(database: Database, key: Ed25519PrivateKey | None) -> Checkpoint:

@@ -2,16 +2,15 @@
 
 from __future__ import annotations
 
-import shutil
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
-from pathlib import Path
 
 import pytest
 from flask import Flask
 from flask.testing import FlaskClient
 from werkzeug.test import TestResponse
 
+from tests.databases import Databases
 from tests.pages import invented, markup
 from tests.pages.invented import Kept, password_of
 from tests.pages.markup import Element
@@ -68,16 +67,21 @@ class Person:
 
 
 @pytest.fixture(scope="session")
-def kept(tmp_path_factory: pytest.TempPathFactory) -> Kept:
-    """Make the store once; each test works on a copy of the file."""
-    return invented.make_store(tmp_path_factory.mktemp("pages") / "kept.db")
+def kept(databases: Databases) -> Kept:
+    """Make the store once; each test works on a copy."""
+    return invented.make_store(databases.new())
 
 
 @pytest.fixture
-def app(kept: Kept, tmp_path: Path) -> Iterator[Flask]:
-    copy = tmp_path / "store.db"
-    shutil.copy(kept.file, copy)
-    app = invented.application(copy)
+def url(kept: Kept, databases: Databases) -> Iterator[str]:
+    url = databases.copy_of(kept.url)
+    yield url
+    databases.drop(url)
+
+
+@pytest.fixture
+def app(url: str) -> Iterator[Flask]:
+    app = invented.application(url)
     yield app
     invented.close(app)
 

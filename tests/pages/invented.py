@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import copy
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
 from argon2 import PasswordHasher
@@ -112,9 +111,9 @@ CASES = {
 
 @dataclass(frozen=True)
 class Kept:
-    """A store's file, and the identifiers of what was put into it."""
+    """A store, and the identifiers of what was put into it."""
 
-    file: Path
+    url: str
     loops: dict[str, str]
     submissions: dict[str, str]
 
@@ -123,8 +122,8 @@ def password_of(person: str) -> str:
     return f"correct battery of {person}"
 
 
-def application(file: Path) -> Flask:
-    settings = Settings(database_url=f"sqlite:///{file}", secret_key=SECRET_KEY)
+def application(url: str) -> Flask:
+    settings = Settings(database_url=url, secret_key=SECRET_KEY)
     return create_app(settings, password_hasher=CHEAP)
 
 
@@ -133,19 +132,18 @@ def close(app: Flask) -> None:
         services().database.close()
 
 
-def make_store(file: Path, *, demonstration: bool = False) -> Kept:
+def make_store(url: str, *, demonstration: bool = False) -> Kept:
     """Make the store by the migrations and fill it through the interface, as a tool would."""
-    url = f"sqlite:///{file}"
     migrating.migrate(url, now=system_clock(), demonstration=demonstration)
     database = Database.open(url, password_hasher=CHEAP)
     with database.writing() as session:
         issued = {person: _account(session, database, person) for person in PEOPLE}
     database.close()
-    app = application(file)
+    app = application(url)
     made = {name: _fill(app, case, issued, name) for name, case in CASES.items()}
     close(app)
     loops = {name: loop for name, (loop, _) in made.items()}
-    return Kept(file, loops, {name: submission for name, (_, submission) in made.items()})
+    return Kept(url, loops, {name: submission for name, (_, submission) in made.items()})
 
 
 def _account(session: Any, database: Database, person: str) -> str:

@@ -1,11 +1,10 @@
 from __future__ import annotations
 
 import logging
-import sqlite3
-from pathlib import Path
 
 import pytest
 
+from tests.databases import Databases, without_guards
 from tests.pages import invented
 from tests.pages.conftest import Person
 from tests.pages.invented import Kept
@@ -28,11 +27,10 @@ def test_a_method_that_an_address_does_not_take_is_told_calmly(reviewer: Person)
 
 
 def test_a_fault_of_ours_shows_the_requests_name_and_nothing_of_the_fault(
-    tmp_path: Path, reviewer: Person, caplog: pytest.LogCaptureFixture
+    url: str, reviewer: Person, caplog: pytest.LogCaptureFixture
 ) -> None:
     # a real fault: somebody has removed a table behind the service's back
-    with sqlite3.connect(tmp_path / "store.db") as store:
-        store.execute("DROP TABLE loop_revisions")
+    without_guards(url, "DROP TABLE loop_revisions")
     with caplog.at_level(logging.CRITICAL):
         page = reviewer.open("/loops")
     assert reviewer.status in (500, 503)
@@ -50,9 +48,9 @@ def test_more_than_any_form_needs_is_refused(reviewer: Person, kept: Kept) -> No
     assert "This is too long" in reviewer.page.text
 
 
-def test_a_demonstration_says_so_on_every_page(tmp_path: Path) -> None:
-    kept = invented.make_store(tmp_path / "demonstration.db", demonstration=True)
-    app = invented.application(kept.file)
+def test_a_demonstration_says_so_on_every_page(databases: Databases) -> None:
+    kept = invented.make_store(databases.new(), demonstration=True)
+    app = invented.application(kept.url)
     person = Person(app.test_client())
     for address in ("/sign-in", "/nowhere"):
         assert "everything here is invented" in person.open(address).text
@@ -60,6 +58,7 @@ def test_a_demonstration_says_so_on_every_page(tmp_path: Path) -> None:
     for address in ("/", "/loops", "/history", f"/submissions/{kept.submissions['stable']}"):
         assert "everything here is invented" in person.open(address).text
     invented.close(app)
+    databases.drop(kept.url)
 
 
 def test_a_store_in_use_does_not_call_itself_a_demonstration(reviewer: Person) -> None:

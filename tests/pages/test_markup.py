@@ -10,6 +10,7 @@ import pytest
 from flask.testing import FlaskClient
 from werkzeug.datastructures import Headers
 
+from tests.databases import Databases
 from tests.pages import invented
 from tests.pages.conftest import Person, SignedIn
 from tests.pages.invented import CASES, LOUD, Kept
@@ -46,11 +47,13 @@ def addresses(kept: Kept) -> list[str]:
 
 
 @pytest.fixture(scope="module")
-def pages(kept: Kept) -> Iterator[list[Read]]:
-    app = invented.application(kept.file)
+def pages(kept: Kept, databases: Databases) -> Iterator[list[Read]]:
+    url = databases.copy_of(kept.url)
+    app = invented.application(url)
     read = [each for who in ("reviewer", "author") for each in _read_as(who, app.test_client(), kept)]
     yield read
     invented.close(app)
+    databases.drop(url)
 
 
 def _read_as(who: str, client: FlaskClient, kept: Kept) -> Iterator[Read]:
