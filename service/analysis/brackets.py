@@ -37,8 +37,10 @@ def newton_zero(
         size = np.abs(step)
         taken = (size <= 0.5 * previous) & (newton >= low) & (newton <= high)
         about = np.maximum(np.abs(at), resolution)
-        settled = (size <= NEWTON_DONE * about) | (high - low <= 4e-16 * about)
-        at = np.where(taken, newton, np.where(settled, at, 0.5 * (low + high)))
+        arrived = size <= NEWTON_DONE * about
+        settled = arrived | (high - low <= 4e-16 * about)
+        stay = np.where(arrived, np.clip(newton, low, high), at)
+        at = np.where(taken, newton, np.where(settled, stay, 0.5 * (low + high)))
         if settled.all():
             break
         previous = np.where(taken, size, 0.5 * (high - low))

@@ -83,7 +83,7 @@ class AxisResponse:
         rounds = np.floor((phase + math.pi) / (2 * math.pi))
         counts = np.abs(np.diff(rounds))
         # a phase that stands still at -180° is not crossed; only rounding moves it
-        counts[np.abs(np.diff(phase)) <= 1e-12] = 0
+        counts[(np.abs(np.diff(phase)) <= 1e-12) & (np.diff(omega) > 1e-9 * omega[:-1])] = 0
         chosen = _chosen_crossings(omega, magnitude, counts, marks)
         pieces, within = chosen.pieces, chosen.within
         falling = rounds[pieces + 1] < rounds[pieces]
@@ -96,7 +96,9 @@ class AxisResponse:
             values, slopes = self.loop.on_axis(at)
             return values.imag - target, slopes.imag
 
-        solved = newton_zero(from_target, omega[pieces], omega[pieces + 1], phase[pieces] - target)
+        # by the rounds, not by the phase at the low end: that is 0 where the crossing lies on it
+        at_low = np.where(falling, 1.0, -1.0)
+        solved = newton_zero(from_target, omega[pieces], omega[pieces + 1], at_low)
         return PhaseCrossings(solved, self.loop.log_response(solved).real, chosen.truncated)
 
     def _turns(self, slopes: Reals, slope_at: Callable[[Reals], Reals]) -> Reals:
