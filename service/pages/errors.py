@@ -47,7 +47,7 @@ NOT_THERE = Failure(
 FORGED = Failure(
     403,
     "This form was not accepted",
-    "It did not come from a page that you were shown since you signed in. Nothing was recorded. "
+    "It did not come from a page that this service showed you. Nothing was recorded. "
     "Open the page again and send it from there.",
 )
 UNAVAILABLE = Failure(
