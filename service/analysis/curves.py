@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 
 import numpy as np
 import numpy.typing as npt
 
 from service.analysis import chebyshev
-from service.analysis.chebyshev import NODES
 from service.analysis.frequency import AxisResponse, distinct
 from service.analysis.loop import Reals
 from service.analysis.responses import LOAD, SETPOINT, Responses
@@ -25,19 +25,21 @@ SHOWN_MAGNITUDES = (1e-2, 1e2)
 FREQUENCY_POINTS = 160
 
 
-def curves(responses: Responses | None, axis: AxisResponse, unit_rad_s: float) -> Curves:
-    """What is drawn of one loop; times in seconds, frequencies in rad/s."""
+def curves(
+    responses: Responses | None, axis: AxisResponse, in_rad_s: Callable[[Reals], Reals], unit_rad_s: float
+) -> Curves:
+    """What is drawn of one loop; times in seconds, frequencies in rad/s. `in_rad_s`: as of the axis."""
     return Curves(
         setpoint=None if responses is None else _response(responses, SETPOINT, unit_rad_s),
         load=None if responses is None else _response(responses, LOAD, unit_rad_s),
-        frequency=_frequency(axis, unit_rad_s),
+        frequency=_frequency(axis, in_rad_s),
     )
 
 
 def _response(responses: Responses, which: int, unit_rad_s: float) -> ResponseCurve:
     shown = _pieces_shown(responses, which)
     places = _places(shown)
-    at_places = chebyshev.evaluation(NODES, places).T
+    at_places = chebyshev.evaluation(responses.pv.shape[2], places).T
     start, length = responses.start[:shown], responses.length[:shown]
     times = (start[:, None] + length[:, None] * places).ravel()
     pv, output = ((signal[which, :shown] @ at_places).ravel() for signal in (responses.pv, responses.output))
@@ -72,7 +74,7 @@ def _without_repeats(times: Reals, pv: Reals, output: Reals) -> npt.NDArray[np.b
     return np.concatenate([[True], ~(same_time & same)])
 
 
-def _frequency(axis: AxisResponse, unit_rad_s: float) -> FrequencyCurve | None:
+def _frequency(axis: AxisResponse, in_rad_s: Callable[[Reals], Reals]) -> FrequencyCurve | None:
     magnitude = axis.log_response.real
     low, high = (math.log(bound) for bound in SHOWN_MAGNITUDES)
     shown = np.flatnonzero((magnitude > low) & (magnitude < high))
@@ -86,7 +88,7 @@ def _frequency(axis: AxisResponse, unit_rad_s: float) -> FrequencyCurve | None:
     logs = axis.loop.log_response(omega)
     response = np.exp(logs)
     return FrequencyCurve(
-        rad_s=_floats(omega * unit_rad_s),
+        rad_s=_floats(in_rad_s(omega)),
         magnitude=_floats(np.abs(response)),
         phase_deg=_floats(np.degrees(logs.imag)),
         sensitivity=_floats(1.0 / np.abs(1.0 + response)),

@@ -180,6 +180,7 @@ class ClosedLoopParts:
     filtered_controller: Factors
     feedback: ParallelTerms
     setpoint: ParallelTerms
+    without_derivative: ParallelTerms
     measurement_filter: float
     dead_time_reduced_by_s: float
     dead_time_negative_by_s: float
@@ -188,6 +189,10 @@ class ClosedLoopParts:
     def dead_time_s(self) -> float:
         """Dead time as analysed, in seconds."""
         return self.dead_time / self.unit_rad_s
+
+    def in_rad_s(self, omega: Reals) -> Reals:
+        """Frequencies of the loop's own unit in rad/s, shape of `omega`."""
+        return np.asarray(omega * self.unit_rad_s)
 
 
 def form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges | None) -> ClosedLoopParts:
@@ -241,6 +246,7 @@ def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges |
         ),
         feedback=_scaled_terms(terms.feedback, basis, unit),
         setpoint=_scaled_terms(terms.setpoint, basis, unit),
+        without_derivative=_scaled_terms(terms.without_derivative, basis, unit),
         measurement_filter=filter_s * unit,
         dead_time_reduced_by_s=reduced_s,
         dead_time_negative_by_s=negative_s,

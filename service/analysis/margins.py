@@ -53,7 +53,7 @@ PEAK_PLACE = 1e-9
 """How well a peak's frequency is met, relatively; its value, being flat there, to the square of this."""
 
 
-InRadS = Callable[[float], float]
+InRadS = Callable[[Reals], Reals]
 """From a frequency on the axis, inf included, to rad/s: by a loop's unit or a sampled loop's scale."""
 
 
@@ -76,8 +76,8 @@ def crossovers(axis: AxisResponse, in_rad_s: InRadS) -> Crossovers:
     at = axis.gain_crossovers
     margin_deg = np.degrees(_signed_phase_margin(axis.loop, at))
     gains = tuple(
-        GainCrossover(rad_s=in_rad_s(omega), phase_margin_deg=margin)
-        for omega, margin in zip(at.tolist(), margin_deg.tolist(), strict=True)
+        GainCrossover(rad_s=rad_s, phase_margin_deg=margin)
+        for rad_s, margin in zip(in_rad_s(at).tolist(), margin_deg.tolist(), strict=True)
     )
     phases, more = _phase_crossovers(axis, in_rad_s)
     return Crossovers(
@@ -101,7 +101,9 @@ def margins(axis: AxisResponse, listed: Crossovers, in_rad_s: InRadS, delay_marg
         phase_margin_deg=_phase_margin_deg(axis),
         delay_margin_s=delay_margin_s,
         max_sensitivity=sensitivity.value,
-        max_sensitivity_rad_s=told(in_rad_s, math.inf if sensitivity.omega is None else sensitivity.omega),
+        max_sensitivity_rad_s=_told_rad_s(
+            in_rad_s, math.inf if sensitivity.omega is None else sensitivity.omega
+        ),
         max_complementary_sensitivity=complementary.value,
         disk_margin=min(2.0, 1.0 / disk.value),
         gain_crossovers=listed.gain_crossovers,
@@ -120,15 +122,17 @@ def _phase_crossovers(axis: AxisResponse, in_rad_s: InRadS) -> tuple[tuple[Phase
     crossings = axis.phase_crossovers
     low, high = LISTED_FACTORS
     found = [
-        PhaseCrossover(rad_s=in_rad_s(omega), gain_factor=math.exp(-log))
-        for omega, log in zip(crossings.omega.tolist(), crossings.log_magnitude.tolist(), strict=True)
+        PhaseCrossover(rad_s=rad_s, gain_factor=math.exp(-log))
+        for rad_s, log in zip(
+            in_rad_s(crossings.omega).tolist(), crossings.log_magnitude.tolist(), strict=True
+        )
         if math.log(low) <= -log <= math.log(high)
     ]
     at_origin, at_infinity = _factors_at_the_ends(axis.loop)
     if at_origin is not None and low <= at_origin <= high:
         found.insert(0, PhaseCrossover(rad_s=0.0, gain_factor=at_origin))
     if at_infinity is not None and axis.loop.dead_time == 0 and low <= at_infinity <= high:
-        found.append(PhaseCrossover(rad_s=told(in_rad_s, math.inf), gain_factor=at_infinity))
+        found.append(PhaseCrossover(rad_s=_told_rad_s(in_rad_s, math.inf), gain_factor=at_infinity))
     return tuple(found), crossings.truncated
 
 
@@ -168,6 +172,10 @@ def delay_margin(axis: AxisResponse) -> float:
         return math.inf
     margin = _signed_phase_margin(axis.loop, omega)
     return float((np.where(margin > 0, margin, margin + 2 * math.pi) / omega).min())
+
+
+def _told_rad_s(in_rad_s: InRadS, omega: float) -> float | Unbounded:
+    return told(lambda value: float(in_rad_s(np.array(value))), omega)
 
 
 def told(scale: Callable[[float], float], value: float) -> float | Unbounded:

@@ -33,6 +33,8 @@ from service.analysis.results import (
     Stability,
     Verdict,
 )
+from service.analysis.sampled import NYQUIST_AT_SCANS, ROOTS_AT_SCANS, analyse_at_scans
+from service.analysis.sampled_loop import NotFactoredError
 from service.analysis.stability import NYQUIST, ROOTS, decide
 from service.analysis.step_metrics import step_metrics
 
@@ -50,6 +52,9 @@ NOTE_IMPULSE = "setpoint_impulse"
 
 NOTE_NUMBERS = "numbers_out_of_range"
 """The loop's numbers leave float64 on the way; what they reach is not computed."""
+
+
+BEYOND_FLOAT64 = "the loop's numbers leave the range of float64"
 
 
 def recompute(
@@ -91,23 +96,51 @@ def _recompute(
         space = realise(parts)
         continuous, drawn = _continuous(parts, space, settling_band_percent, with_curves)
     except (ArithmeticError, np.linalg.LinAlgError):
-        space, continuous, drawn = None, _beyond_float64(), None
-    scanned = isinstance(controller.scan, Scan)
+        space, continuous, drawn = None, _undecided((NYQUIST, ROOTS), BEYOND_FLOAT64), None
+    sampled = None
+    if isinstance(controller.scan, Scan):
+        sampled, drawn = _sampled(parts, controller.scan, settling_band_percent, with_curves)
     uncertain = plant_model.uncertainty is not None
-    # a part that was asked for and is not computed must never read as stable
-    verdict: Verdict = "undecided" if scanned else continuous.stability.verdict
     return Recomputation(
-        verdict=verdict,
-        judged_on="sampled" if scanned else "continuous",
+        verdict=_of_all(continuous, sampled),
+        judged_on="sampled" if sampled else "continuous",
         continuous=continuous,
-        sampled=None,
+        sampled=sampled,
         worst_case=None,
         loop_type=max(0, parts.loop.order_at_origin),
         equivalent_gains=equivalent_gains(controller),
         facts=facts(parts, space, controller, continuous.stability.verdict),
-        not_computed=(*(("sampled",) if scanned else ()), *(("worst_case",) if uncertain else ())),
+        not_computed=("worst_case",) if uncertain else (),
         curves=drawn,
     )
+
+
+def _of_all(continuous: Analysis, sampled: Analysis | None) -> Verdict:
+    """Stable only where every analysis is; unstable where one is."""
+    verdicts = {analysis.stability.verdict for analysis in (continuous, sampled) if analysis is not None}
+    if "unstable" in verdicts:
+        return "unstable"
+    return "undecided" if "undecided" in verdicts else "stable"
+
+
+def _sampled(
+    parts: ClosedLoopParts, scan: Scan, settling_band_percent: float, with_curves: bool
+) -> tuple[Analysis, Curves | None]:
+    try:
+        analysis, drawn = analyse_at_scans(parts, scan, settling_band_percent, with_curves)
+    except NotFactoredError as error:
+        return _undecided((NYQUIST_AT_SCANS, ROOTS_AT_SCANS), str(error)), None
+    except (ArithmeticError, np.linalg.LinAlgError):
+        return _undecided((NYQUIST_AT_SCANS, ROOTS_AT_SCANS), BEYOND_FLOAT64), None
+    notes = list(analysis.notes)
+    finite = replace(
+        analysis,
+        margins=_finite(analysis.margins, notes),
+        setpoint_step=_finite(analysis.setpoint_step, notes),
+        load_step=_finite(analysis.load_step, notes),
+        noise=_finite(analysis.noise, notes),
+    )
+    return replace(finite, notes=tuple(notes)), drawn
 
 
 def _continuous(
@@ -116,7 +149,7 @@ def _continuous(
     unit = parts.unit_rad_s
     axis = AxisResponse.of(parts.loop)
     decided = decide(parts, space, axis)
-    listed = crossovers(axis, lambda omega: omega * unit)
+    listed = crossovers(axis, parts.in_rad_s)
     stability = decided.stability
     if stability.verdict != "stable":
         analysis = Analysis(
@@ -127,12 +160,12 @@ def _continuous(
             load_step=None,
             noise=None,
         )
-        return analysis, curves(None, axis, unit) if with_curves else None
+        return analysis, curves(None, axis, parts.in_rad_s, unit) if with_curves else None
     notes: list[str] = []
     found_margins: Margins | None = None
     try:
         delay_margin_s = told(lambda delay: delay / unit, delay_margin(axis))
-        found_margins = margins(axis, listed, lambda omega: omega * unit, delay_margin_s)
+        found_margins = margins(axis, listed, parts.in_rad_s, delay_margin_s)
     except WorkBoundError:
         notes.append(NOTE_MARGINS_TOO_MUCH_WORK)
     responses = None
@@ -150,7 +183,7 @@ def _continuous(
         noise=_finite(noise(axis, parts.filtered_controller), notes),
         notes=tuple(notes),
     )
-    return analysis, curves(responses, axis, unit) if with_curves else None
+    return analysis, curves(responses, axis, parts.in_rad_s, unit) if with_curves else None
 
 
 def _steps(
@@ -185,11 +218,9 @@ def _finite(part: Part | None, notes: list[str]) -> Part | None:
     return type(part)(**values)
 
 
-def _beyond_float64() -> Analysis:
-    reason = "the loop's numbers leave the range of float64"
+def _undecided(methods: tuple[str, str], reason: str) -> Analysis:
     routes = tuple(
-        Route(method=method, verdict="undecided", unstable_roots=None, reason=reason)
-        for method in (NYQUIST, ROOTS)
+        Route(method=method, verdict="undecided", unstable_roots=None, reason=reason) for method in methods
     )
     return Analysis(
         stability=Stability(verdict="undecided", unstable_roots=None, routes=routes, reason=reason),

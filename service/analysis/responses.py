@@ -64,7 +64,7 @@ ROUNDING = 1e-14
 class Responses:
     """Set-point and load response in pieces, in the loop's own unit of time.
 
-    `start`, `length`: (p,). `pv`, `output`: (2, p, NODES), set point first, at Chebyshev points of each
+    `start`, `length`: (p,). `pv`, `output`: (2, p, nodes), set point first, at Chebyshev points of each
     piece.
     `final_pv`, `final_output`: (2,). `complete`: the pieces end where nothing moves any more, or where the
     oscillation in `pv_tails` and `output_tails` (about the final values) is all that moves.
@@ -89,7 +89,7 @@ def respond(parts: ClosedLoopParts, space: StateSpace, roots: CharacteristicRoot
         modes=np.concatenate([roots.roots, parts.hidden_roots]),
         line=roots.complete_right_of,
         series=_ResidueSeries.of(parts, roots),
-        final=_final_values(space),
+        final=final_values(space),
     )
     plan = _plan(known)
     responses = _in_pieces(known, plan)
@@ -189,7 +189,7 @@ def _with_tails(responses: Responses, known: _Known, root: complex) -> Responses
 Pieces = tuple[Reals, Reals, Reals, Reals, bool]
 
 
-def _final_values(space: StateSpace) -> tuple[Reals, Reals]:
+def final_values(space: StateSpace) -> tuple[Reals, Reals]:
     """Where PV and output come to rest, (2,) each: the closed loop's equilibrium, in which dead time plays no
     part.
     """
@@ -388,20 +388,20 @@ def _stacked(pieces: list[Reals]) -> Reals:
 
 
 def _divided_dead_time(parts: ClosedLoopParts) -> list[float]:
-    """Lengths that divide one dead time, halves of halves, each short against every mode not yet died
-    away.
-    """
-    poles = np.array(parts.plant.poles_rad_s + parts.controller.poles_rad_s, dtype=complex)
-    poles[len(parts.plant.poles_rad_s) :] /= parts.unit_rad_s
-    if parts.measurement_filter > 0:
-        poles = np.append(poles, -1.0 / parts.measurement_filter)
+    """Lengths that divide one dead time as the open loop's modes ask."""
+    plant_poles = np.array(parts.plant.poles_rad_s, complex)
+    return divided(parts.dead_time, np.concatenate([plant_poles, parts.filtered_controller.poles]))
+
+
+def divided(length: float, modes: Complexes) -> list[float]:
+    """Lengths that divide `length`, halves of halves, each short against every mode not yet died away."""
     position, lengths = 0.0, []
     while position < 1.0 - 1e-12:
-        longest = TURN / _fastest(poles, position * parts.dead_time) / parts.dead_time
+        longest = TURN / _fastest(modes, position * length) / length
         part = 1.0
         while part > longest or (position / part) % 1.0 != 0.0:
             part *= 0.5
-        lengths.append(part * parts.dead_time)
+        lengths.append(part * length)
         position += part
     return lengths
 

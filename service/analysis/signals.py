@@ -13,7 +13,6 @@ import numpy.typing as npt
 
 from service.analysis import chebyshev
 from service.analysis.brackets import newton_zero
-from service.analysis.chebyshev import NODES
 from service.analysis.loop import Reals
 from service.analysis.tails import Tail
 
@@ -31,7 +30,7 @@ class Passage:
     """A time at which a signal passes a level: known, or to be solved for in one piece between `low` and
     `high`.
 
-    `row`: (NODES,), the signal less the level; it changes sign once between the two places.
+    `row`: (nodes,), the signal less the level; it changes sign once between the two places.
     """
 
     start: float
@@ -43,7 +42,7 @@ class Passage:
 
 @dataclass(frozen=True, eq=False)
 class Signal:
-    """One signal: `values` (p, NODES), its turning points in order of time, and the oscillation that follows.
+    """One signal: `values` (p, nodes), its turning points in order of time, and the oscillation that follows.
 
     `turning_pieces`, `turning_places` (0 to 1), `turning_values`: (m,); both ends of every piece are among
     them.
@@ -139,11 +138,11 @@ class Integrals:
 
 
 def signals(start: Reals, length: Reals, values: Reals, tails: list[Tail | None]) -> list[Signal]:
-    """Signals with their turning points; `values` (s, p, NODES)."""
-    count, pieces, _ = values.shape
-    rows = values.reshape(count * pieces, NODES)
+    """Signals with their turning points; `values` (s, p, nodes)."""
+    count, pieces, nodes = values.shape
+    rows = values.reshape(count * pieces, nodes)
     scale = np.repeat(np.abs(values).max(axis=(1, 2)), pieces)[:, None]
-    row, place = chebyshev.zeros_of_rows(rows @ chebyshev.differentiation(NODES).T, ROUNDING * NODES * scale)
+    row, place = chebyshev.zeros_of_rows(rows @ chebyshev.differentiation(nodes).T, ROUNDING * nodes * scale)
     rows_in_order, places, found = _with_ends(rows, row, place)
     result = []
     for index, tail in enumerate(tails):
@@ -172,18 +171,18 @@ def integrals(of: list[Signal]) -> list[Integrals]:
     """
     start, length = of[0].start, of[0].length
     values = np.array([signal.values for signal in of])
-    count, pieces, _ = values.shape
-    rows = values.reshape(count * pieces, NODES)
+    count, pieces, nodes = values.shape
+    rows = values.reshape(count * pieces, nodes)
     scale = np.repeat([signal.scale for signal in of], pieces)[:, None]
     row, place = chebyshev.zeros_of_rows(rows, ROUNDING * scale)
-    times = np.tile(start[:, None] + length[:, None] * chebyshev.points(NODES), (count, 1))
+    times = np.tile(start[:, None] + length[:, None] * chebyshev.points(nodes), (count, 1))
     lengths = np.tile(length, count)[:, None]
-    summed = rows @ chebyshev.integration(NODES).T * lengths
-    weighted = (rows * times) @ chebyshev.integration(NODES).T * lengths
-    fine = rows @ _to_twice_as_fine().T
+    summed = rows @ chebyshev.integration(nodes).T * lengths
+    weighted = (rows * times) @ chebyshev.integration(nodes).T * lengths
+    fine = rows @ _to_twice_as_fine(nodes).T
     columns = (
         _variation(summed, row, place).reshape(count, pieces).sum(axis=1),
-        ((fine * fine) @ chebyshev.integration(2 * NODES)[-1] * lengths[:, 0])
+        ((fine * fine) @ chebyshev.integration(2 * nodes)[-1] * lengths[:, 0])
         .reshape(count, pieces)
         .sum(axis=1),
         _variation(weighted, row, place).reshape(count, pieces).sum(axis=1),
@@ -204,10 +203,11 @@ def _places(passages: list[Passage]) -> list[float]:
         return []
     rows = np.array([passage.row for passage in passages])
     low, high = (np.array([getattr(passage, end) for passage in passages]) for end in ("low", "high"))
-    slopes = rows @ chebyshev.differentiation(NODES).T
+    nodes = rows.shape[1]
+    slopes = rows @ chebyshev.differentiation(nodes).T
 
     def value_and_slope(at: Reals) -> tuple[Reals, Reals]:
-        matrix = chebyshev.evaluation(NODES, at)
+        matrix = chebyshev.evaluation(nodes, at)
         return (matrix * rows).sum(axis=1), (matrix * slopes).sum(axis=1)
 
     places: list[float] = newton_zero(value_and_slope, low, high, value_and_slope(low)[0], 1.0).tolist()
@@ -232,6 +232,6 @@ def _variation(integrals_in_rows: Reals, row: Indices, place: Reals) -> Reals:
     return np.asarray(np.bincount(rows_of[1:], changes, len(integrals_in_rows)), float)
 
 
-@lru_cache(maxsize=1)
-def _to_twice_as_fine() -> Reals:
-    return chebyshev.evaluation(NODES, chebyshev.points(2 * NODES))
+@lru_cache(maxsize=16)
+def _to_twice_as_fine(nodes: int) -> Reals:
+    return chebyshev.evaluation(nodes, chebyshev.points(2 * nodes))

@@ -30,10 +30,10 @@ class DecidedStability:
 
 def decide(parts: ClosedLoopParts, space: StateSpace | None, axis: AxisResponse) -> DecidedStability:
     """Reach the verdict of the continuous loop by both routes."""
-    hidden = _count_hidden(parts.hidden_roots)
-    routes = [_route(NYQUIST, count_right_of_axis(axis), hidden)]
+    hidden = count_hidden(parts.hidden_roots)
+    routes = [route(NYQUIST, count_right_of_axis(axis), hidden)]
     roots = characteristic_roots(space, axis, parts.hidden_roots)
-    routes.append(_route(ROOTS, roots.count, hidden))
+    routes.append(route(ROOTS, roots.count, hidden))
     verdict, unstable_roots, reason = agree(routes)
     stability = Stability(
         verdict=verdict,
@@ -57,7 +57,8 @@ def agree(routes: list[Route]) -> tuple[Verdict, int | Unbounded | None, str | N
     return routes[0].verdict, routes[0].unstable_roots, None
 
 
-def _route(method: str, count: Count, hidden: Count) -> Route:
+def route(method: str, count: Count, hidden: Count) -> Route:
+    """One method's answer, the hidden roots added to its count."""
     if count.infinitely_many:
         return Route(method=method, verdict="unstable", unstable_roots="unbounded")
     if count.roots is None or hidden.roots is None:
@@ -68,7 +69,7 @@ def _route(method: str, count: Count, hidden: Count) -> Route:
     return Route(method=method, verdict="unstable" if total else "stable", unstable_roots=total)
 
 
-def _count_hidden(hidden: Complexes) -> Count:
+def count_hidden(hidden: Complexes) -> Count:
     """Cancelled factors count where they lie; one exactly on the axis never comes to rest."""
     on_axis = np.abs(hidden.real) <= ROUNDING_FACTOR * EPSILON * np.abs(hidden)
     if np.any(on_axis):
@@ -96,10 +97,11 @@ def _dominant_roots(parts: ClosedLoopParts, roots: CharacteristicRoots) -> tuple
     hidden = parts.hidden_roots[parts.hidden_roots.imag >= 0]
     every = np.concatenate([roots.roots, hidden]) * parts.unit_rad_s
     every = every[np.lexsort((np.abs(every.imag), -every.real))]
-    return tuple(_dominant_root(complex(root)) for root in every[:MAX_DOMINANT_ROOTS])
+    return tuple(dominant_root(complex(root)) for root in every[:MAX_DOMINANT_ROOTS])
 
 
-def _dominant_root(root: complex) -> DominantRoot:
+def dominant_root(root: complex) -> DominantRoot:
+    """A root in rad/s with its damping ratio."""
     size = abs(root)
     damping_ratio = -root.real / size if size > 0 else 0.0
     return DominantRoot(

@@ -44,10 +44,12 @@ class ControllerTerms:
     """A controller's feedback and set-point path, and the feedback path as zeros and poles in rad/s.
 
     `gain` is the leading coefficient: C(s) = gain·∏(s−z)/∏(s−p). Direction is not in it.
+    `without_derivative`: the feedback path of a signal that the derivative does not see.
     """
 
     feedback: ParallelTerms
     setpoint: ParallelTerms
+    without_derivative: ParallelTerms
     zeros_rad_s: tuple[complex, ...]
     poles_rad_s: tuple[complex, ...]
     gain: float
@@ -189,7 +191,8 @@ def _series(controller: SeriesController) -> ControllerTerms:
         zeros.append(complex(-1.0 / td))
     poles = _poles(time_s is not None, tf)
     leading = gain * (td or 1.0) / (tf or 1.0)
-    return ControllerTerms(feedback, setpoint, tuple(zeros), poles, leading)
+    without = _series_terms(gain, time_s, tf, tf, 1.0)
+    return ControllerTerms(feedback, setpoint, without, tuple(zeros), poles, leading)
 
 
 def _series_terms(gain: float, time_s: float | None, td: float, tf: float, b: float) -> ParallelTerms:
@@ -210,7 +213,8 @@ def _two_zeros(controller: TwoZerosController) -> ControllerTerms:
         ki, linear, square = k * (zeros[0] * zeros[1]).real, -k * (zeros[0] + zeros[1]).real, k
     feedback = _over_common_denominator(ki, linear, square, tf)
     setpoint = _over_common_denominator(ki, weight.proportional * linear, weight.derivative * square, tf)
-    return ControllerTerms(feedback, setpoint, zeros, _poles(True, tf), k / (tf or 1.0))
+    without = _over_common_denominator(ki, linear, 0.0, tf)
+    return ControllerTerms(feedback, setpoint, without, zeros, _poles(True, tf), k / (tf or 1.0))
 
 
 def _over_common_denominator(ki: float, linear: float, square: float, tf: float) -> ParallelTerms:
@@ -229,8 +233,14 @@ def _with_zeros(feedback: ParallelTerms, setpoint: ParallelTerms) -> ControllerT
         else quadratic_roots(0.0, square, feedback.kp)
     )
     leading = next(value for value in (square, linear, feedback.ki_per_s) if value != 0)
+    without = ParallelTerms(feedback.kp, feedback.ki_per_s, 0.0, feedback.tf_s)
     return ControllerTerms(
-        feedback, setpoint, zeros, _poles(integrates, feedback.tf_s), leading / (feedback.tf_s or 1.0)
+        feedback,
+        setpoint,
+        without,
+        zeros,
+        _poles(integrates, feedback.tf_s),
+        leading / (feedback.tf_s or 1.0),
     )
 
 
