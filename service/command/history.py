@@ -2,29 +2,25 @@
 
 from __future__ import annotations
 
-import json
 import sys
-from collections.abc import Iterator
+import time
 from pathlib import Path
-from typing import TextIO
+from typing import BinaryIO
 
 import click
 
 from service.command import store
 from service.command.errors import UserMistake
-from service.command.store import Visit
-from service.records import history_queries
-from service.records.history_queries import HistoryFilter
-from service.records.roles import CONSOLE
-from service.records.views import EventView
+from service.documents import writing
+from service.records import full_export
 from service.settings import Settings
 from service.verification import verifier
+from service.verification.checkpoints import Checkpoint
 from service.verification.export import verify_export
 from service.verification.report import Report
-from service.verification.verifier import Checkpoint
 
-ENTRIES_AT_A_TIME = 500
 EXISTING = click.Path(exists=True, dir_okay=False, path_type=Path)
+PROGRESS_EVERY_S = 2.0
 
 
 @click.group()
@@ -35,13 +31,16 @@ def history() -> None:
 @history.command()
 @click.option("--checkpoint", "held", type=EXISTING, help="A checkpoint that was kept outside the database.")
 @click.option("--export", "exported", type=EXISTING, help="Verify this export in place of the database.")
-def verify(held: Path | None, exported: Path | None) -> None:
+@click.option(
+    "--public-key", "held_key", help="The public key, in base64, that was given to you on another way."
+)
+def verify(held: Path | None, exported: Path | None, held_key: str | None) -> None:
     """Recompute the history from its bytes, and every row that an entry vouches for.
 
     Exit status 1 and the first place that does not hold, where there is one. Without a checkpoint that is
     held elsewhere, a history that was rewritten whole or cut off at its end cannot be told from a true one.
     """
-    report = _report(_read(held), exported)
+    report = _report(_read(held), exported, held_key)
     _tell(report)
     if report.fault is not None:
         click.echo(f"The history does not hold. {report.fault.sentence()}", err=True)
@@ -49,34 +48,32 @@ def verify(held: Path | None, exported: Path | None) -> None:
 
 
 @history.command()
-@click.argument("file", type=click.File("w", encoding="utf-8", lazy=False))
-def export(file: TextIO) -> None:
-    """Write every entry to FILE (- is standard output), one a line, for `history verify --export`."""
+@click.argument("file", type=click.File("wb", lazy=False))
+def export(file: BinaryIO) -> None:
+    """Write every entry with its rows to FILE (- is standard output), one a line, for verify --export."""
     with store.reading() as visit:
-        for entry in _entries(visit):
-            line = {
-                "number": entry.number,
-                "digest": entry.digest,
-                "canonical": entry.canonical.decode(),
-            }
-            file.write(json.dumps(line, ensure_ascii=False) + "\n")
+        for entry in full_export.entries(visit.session):
+            file.write(writing.to_bytes(entry) + b"\n")
 
 
-def _entries(visit: Visit) -> Iterator[EventView]:
-    after: str | None = None
-    while True:
-        page = history_queries.history(visit.session, CONSOLE, HistoryFilter(), after, ENTRIES_AT_A_TIME)
-        yield from page.items
-        if page.after is None:
-            return
-        after = page.after
+class _Progress:
+    """Tells on standard error how far a long verification has come."""
+
+    def __init__(self) -> None:
+        self._next = time.monotonic() + PROGRESS_EVERY_S
+
+    def __call__(self, done: int, total: int) -> None:
+        if time.monotonic() >= self._next:
+            self._next += PROGRESS_EVERY_S
+            click.echo(f"{done} of {total} entries verified", err=True)
 
 
-def _report(checkpoint: Checkpoint | None, exported: Path | None) -> Report:
+def _report(checkpoint: Checkpoint | None, exported: Path | None, held_key: str | None) -> Report:
     if exported is None:
-        return verifier.verify(Settings.from_environment().database_url, checkpoint=checkpoint)
+        url = Settings.from_environment().database_url
+        return verifier.verify(url, checkpoint=checkpoint, held_key=held_key, progress=_Progress())
     with exported.open("rb") as lines:
-        return verify_export(lines, checkpoint=checkpoint)
+        return verify_export(lines, checkpoint=checkpoint, held_key=held_key)
 
 
 def _read(file: Path | None) -> Checkpoint | None:

@@ -1,99 +1,121 @@
 """Verifying an export of the history: one entry a line, without the store that it came from.
 
-A line is a JSON object with `number`, `digest` and `canonical`, the text whose UTF-8 bytes the digest is made
-of. An export holds the entries only: what they say of other tables' rows cannot be held against those rows.
+A line is a JSON object with `number`, `digest`, `canonical` (the text whose UTF-8 bytes the digest is made
+of) and `rows`: table → the rows that were inserted with the entry, as they lie in the store, bytes in base64
+under the name `base64`. A line without `rows` has its entry verified alone, and the report says so.
 """
 
 from __future__ import annotations
 
+import base64
+import hashlib
 import json
 from collections.abc import Iterable
-from dataclasses import dataclass, field
+from typing import Any
 
-from service.verification.report import Fault, Report
-from service.verification.tree import Tree, leaf_hash
-from service.verification.verifier import BEFORE_THE_FIRST, Checkpoint
+from service.verification.chain import Chain
+from service.verification.checkpoints import Checkpoint
+from service.verification.report import Broken, Fault, Report
 
-NOTE = "an export has the entries alone; rows of other tables are verified in the store"
-
-
-class _Broken(Exception):
-    """The entry does not hold, and why."""
+WITHOUT_ROWS = "the export has entries without their rows, of which only the digests were verified"
 
 
-@dataclass
-class _Chain:
-    """How far the reading has come."""
-
-    entries: int = 0
-    head: str = BEFORE_THE_FIRST
-    tree: Tree = field(default_factory=Tree)
-    meets_checkpoint: bool | None = None
-
-
-def verify_export(lines: Iterable[bytes], *, checkpoint: Checkpoint | None = None) -> Report:
-    """Verify that each entry has its digest and follows on the one before, and the root of them all."""
-    chain, fault = _Chain(), None
+def verify_export(
+    lines: Iterable[bytes], *, checkpoint: Checkpoint | None = None, held_key: str | None = None
+) -> Report:
+    """Verify each entry with its rows, that it follows on the one before, and the root of them all."""
+    reading = _Reading(Chain(checkpoint, held_key))
+    fault: Fault | None = None
     try:
         for line in lines:
-            _add(chain, line)
-            if checkpoint is not None and chain.entries == checkpoint.size:
-                chain.meets_checkpoint = chain.tree.root.hex() == checkpoint.root
-    except _Broken as broken:
-        fault = Fault(entry=chain.entries + 1, table=None, row=None, what=str(broken))
-    return _report(chain, checkpoint, fault or _missed(chain, checkpoint))
+            reading.add(line)
+        reading.chain.end()
+    except Broken as broken:
+        fault = broken.fault
+    return reading.report(fault, checkpoint)
 
 
-def _add(chain: _Chain, line: bytes) -> None:
-    canonical, digest = _parts(line)
-    leaf = leaf_hash(canonical)
-    if leaf.hex() != digest:
-        raise _Broken("the text does not have the digest that stands beside it")
-    number, previous = _place(canonical)
-    if number != chain.entries + 1:
-        raise _Broken(f"it is missing; entry {number} stands in its place")
-    if previous != chain.head:
-        raise _Broken("it does not follow on the entry before it: the chain is broken")
-    chain.tree.add(leaf)
-    chain.entries, chain.head = chain.entries + 1, digest
+class _Reading:
+    """How far the reading has come."""
+
+    def __init__(self, chain: Chain) -> None:
+        self.chain = chain
+        self.rows = 0
+        self._tables: set[str] = set()
+        self._without_rows = False
+
+    def report(self, fault: Fault | None, checkpoint: Checkpoint | None) -> Report:
+        chain = self.chain
+        return Report(
+            fault=fault,
+            entries=chain.entries,
+            rows=self.rows,
+            head=chain.head if chain.entries else None,
+            root=chain.tree.root.hex(),
+            checkpoint_size=checkpoint.size if checkpoint else None,
+            covered=("history_events", *sorted(self._tables)),
+            not_covered=(),
+            notes=(*chain.notes, *((WITHOUT_ROWS,) if self._without_rows else ())),
+        )
+
+    def add(self, line: bytes) -> None:
+        document = self._document(line)
+        entry = self.chain.add(document["canonical"].encode(), document["digest"])
+        rows = document.get("rows")
+        if rows is None:
+            self._without_rows = True
+        else:
+            self._check_rows(rows, entry["rows"])
+
+    def _document(self, line: bytes) -> dict[str, Any]:
+        try:
+            document = json.loads(line)
+        except ValueError:
+            document = None
+        is_entry = (
+            isinstance(document, dict)
+            and isinstance(document.get("canonical"), str)
+            and isinstance(document.get("digest"), str)
+            and isinstance(document.get("rows"), dict | None)
+        )
+        if not is_entry:
+            raise Broken("the line is no entry of an export", entry=self.chain.entries + 1)
+        whole: dict[str, Any] = document
+        return whole
+
+    def _check_rows(self, exported: dict[str, Any], recorded: dict[str, Any]) -> None:
+        number = self.chain.entries
+        for table in sorted({*exported, *recorded}):
+            waiting = sorted(_text(row) for row in recorded.get(table, []))
+            found = sorted(_text(_as_recorded(row, number, table)) for row in exported.get(table, []))
+            strange = [row for row in found if row not in waiting]
+            if strange:
+                what = "a row is not what the entry recorded"
+                raise Broken(what, entry=number, table=table, row=_shortened(strange[0]))
+            if len(found) != len(waiting):
+                raise Broken("the rows are not as many as the entry recorded", entry=number, table=table)
+            self._tables.add(table)
+            self.rows += len(found)
 
 
-def _parts(line: bytes) -> tuple[bytes, str]:
+def _as_recorded(row: object, number: int, table: str) -> dict[str, object]:
+    if not isinstance(row, dict):
+        raise Broken("what the export holds is no row", entry=number, table=table)
     try:
-        document = json.loads(line)
-        return document["canonical"].encode(), str(document["digest"])
-    except (ValueError, TypeError, KeyError, AttributeError):
-        raise _Broken("the line is no entry of an export") from None
+        return {name: _value(value) for name, value in row.items()}
+    except (KeyError, TypeError, ValueError):
+        raise Broken("a row has a value that is none", entry=number, table=table) from None
 
 
-def _place(canonical: bytes) -> tuple[object, object]:
-    try:
-        entry = json.loads(canonical)
-        return entry["number"], entry["previous"]
-    except (ValueError, TypeError, KeyError):
-        raise _Broken("the text is not an entry") from None
+def _value(value: object) -> object:
+    if isinstance(value, dict):
+        return hashlib.sha256(base64.b64decode(value["base64"], validate=True)).hexdigest()
+    return value
 
 
-def _missed(chain: _Chain, checkpoint: Checkpoint | None) -> Fault | None:
-    if checkpoint is None or chain.meets_checkpoint:
-        return None
-    what = (
-        f"the checkpoint covers {checkpoint.size} entries, and there are only {chain.entries}"
-        if chain.entries < checkpoint.size
-        else f"the first {checkpoint.size} entries are not those that the checkpoint was made of"
-    )
-    return Fault(entry=None, table=None, row=None, what=what)
+def _text(row: object) -> str:
+    return json.dumps(row, sort_keys=True, ensure_ascii=False)
 
 
-def _report(chain: _Chain, checkpoint: Checkpoint | None, fault: Fault | None) -> Report:
-    return Report(
-        fault=fault,
-        entries=chain.entries,
-        rows=0,
-        head=chain.head if chain.entries else None,
-        root=chain.tree.root.hex(),
-        checkpoint_size=checkpoint.size if checkpoint else None,
-        covered=("history_events",),
-        not_covered=(),
-        notes=(NOTE,),
-    )
+def _shortened(row: str, characters_max: int = 120) -> str:
+    return row if len(row) <= characters_max else f"{row[:characters_max]}…"

@@ -24,6 +24,16 @@ class Fault:
         return f"{'; '.join(place) or 'the store'}: {self.what}"
 
 
+class Broken(Exception):
+    """Something does not hold, and where."""
+
+    def __init__(
+        self, what: str, *, entry: int | None = None, table: str | None = None, row: str | None = None
+    ) -> None:
+        super().__init__(what)
+        self.fault = Fault(entry=entry, table=table, row=row, what=what)
+
+
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Report:
     """What was verified and what was found. `fault` None: everything that is covered holds."""

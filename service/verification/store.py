@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Iterator, Mapping
+from collections.abc import Generator, Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
@@ -70,13 +70,14 @@ def tables(connection: Connection) -> tuple[tuple[Table, ...], tuple[str, ...]]:
     return tuple(covered), tuple(name for name in others if name not in (EVENTS, HEAD))
 
 
-def rows(connection: Connection, table: str, order: str) -> Iterator[Mapping[str, Any]]:
+def rows(connection: Connection, table: str, order: str) -> Generator[Mapping[str, Any]]:
     """Read all rows of a table in order, a few at a time."""
     streaming = connection.execution_options(stream_results=True, yield_per=ROWS_AT_A_TIME)
     # names come from the database's own catalogue
     query = f'SELECT * FROM "{table}" ORDER BY "{order}"'  # noqa: S608
-    for row in streaming.execute(text(query)).mappings():
-        yield dict(row)
+    with streaming.execute(text(query)) as result:
+        for row in result.mappings():
+            yield dict(row)
 
 
 def count(connection: Connection, table: str) -> int:

@@ -7,20 +7,19 @@ there: after a break nothing more can be said.
 
 from __future__ import annotations
 
-import json
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass
+from contextlib import ExitStack, closing
 from typing import Any
 
 from sqlalchemy import Connection
 from sqlalchemy.exc import DBAPIError, SQLAlchemyError
 
 from service.verification import store
-from service.verification.report import Fault, Report
+from service.verification.chain import Chain
+from service.verification.checkpoints import Checkpoint
+from service.verification.report import Broken, Fault, Report
 from service.verification.store import Table
-from service.verification.tree import Tree, leaf_hash
 
-BEFORE_THE_FIRST = "0" * 64
 PROJECTED = ("number", "kind", "actor", "loop_id", "site", "tag", "area", "previous")
 """Columns of an entry that repeat a part of its bytes, the time aside."""
 
@@ -30,121 +29,87 @@ Progress = Callable[[int, int], None]
 PROGRESS_EVERY = 1000
 
 
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Checkpoint:
-    """How far a history reached and what its root was, as somebody outside the store has kept it."""
-
-    size: int
-    root: str
-
-    @staticmethod
-    def read(raw: bytes) -> Checkpoint:
-        """Read a checkpoint as the service gives it out. Raises ValueError where it is none."""
-        try:
-            document = json.loads(raw)
-            return Checkpoint(size=int(document["size"]), root=str(document["digest"]))
-        except (KeyError, TypeError, ValueError) as error:
-            raise ValueError("this is no checkpoint: it has a size and a digest") from error
-
-
-class _Broken(Exception):
-    def __init__(self, what: str, entry: int | None = None, table: str | None = None, row: str | None = None):
-        self.fault = Fault(entry=entry, table=table, row=row, what=what)
-
-
-def verify(url: str, *, checkpoint: Checkpoint | None = None, progress: Progress | None = None) -> Report:
+def verify(
+    url: str,
+    *,
+    checkpoint: Checkpoint | None = None,
+    held_key: str | None = None,
+    progress: Progress | None = None,
+) -> Report:
     """Verify the store at `url`, and that its history is the one the checkpoint was made of.
 
-    Reads only. A store that cannot be read is a fault, not an exception.
+    `held_key` is a public key, in base64, that somebody got on another way than through the store: the
+    history has to know it, and every later key has to follow on it. Reads only. A store that cannot be read
+    is a fault, not an exception.
     """
-    state = _State()
+    reading = _Reading(Chain(checkpoint, held_key))
     fault: Fault | None = None
     try:
-        with store.opened(url) as connection:
-            _verify(connection, state, checkpoint, progress)
-    except _Broken as broken:
+        with store.opened(url) as connection, ExitStack() as open_streams:
+            reading.verify(connection, open_streams, progress)
+    except Broken as broken:
         fault = broken.fault
     except (DBAPIError, SQLAlchemyError) as error:
         cause = error.orig if isinstance(error, DBAPIError) else error
         fault = Fault(entry=None, table=None, row=None, what=f"the store cannot be read: {cause}")
-    return state.report(fault, checkpoint)
+    return reading.report(fault, checkpoint)
 
 
-class _State:
+class _Reading:
     """How far the reading has come."""
 
-    def __init__(self) -> None:
-        self.entries = 0
+    def __init__(self, chain: Chain) -> None:
+        self.chain = chain
         self.rows = 0
-        self.head = BEFORE_THE_FIRST
-        self.time = ""
-        self.tree = Tree()
         self.covered: tuple[Table, ...] = ()
         self.not_covered: tuple[str, ...] = ()
-        self.notes: list[str] = []
 
     def report(self, fault: Fault | None, checkpoint: Checkpoint | None) -> Report:
         return Report(
             fault=fault,
-            entries=self.entries,
+            entries=self.chain.entries,
             rows=self.rows,
-            head=self.head if self.entries else None,
-            root=self.tree.root.hex(),
+            head=self.chain.head if self.chain.entries else None,
+            root=self.chain.tree.root.hex(),
             checkpoint_size=checkpoint.size if checkpoint else None,
             covered=(store.EVENTS, store.HEAD, *(table.name for table in self.covered)),
             not_covered=self.not_covered,
-            notes=tuple(self.notes),
+            notes=self.chain.notes,
         )
 
+    def verify(self, connection: Connection, open_streams: ExitStack, progress: Progress | None) -> None:
+        self.covered, self.not_covered = store.tables(connection)
+        total = store.count(connection, store.EVENTS)
+        kept = {table.name: _Rows(connection, table, open_streams) for table in self.covered}
+        events = open_streams.enter_context(closing(store.rows(connection, store.EVENTS, "number")))
+        for event in events:
+            recorded = self._check_entry(event)["rows"]
+            number = self.chain.entries
+            for name, rows in kept.items():
+                if name in recorded or rows.due <= number:
+                    self.rows += rows.check(number, recorded.get(name, []))
+            _check_tables_exist(number, recorded, kept)
+            if progress is not None and number % PROGRESS_EVERY == 0:
+                progress(number, total)
+        for rows in kept.values():
+            rows.check_end()
+        self.chain.end()
+        _check_head(connection, self.chain)
+        # last, since it names no row: an index that hides one, a row that breaks a constraint
+        damage = store.damage(connection)
+        if damage is not None:
+            raise Broken(f"the database's own check of its file says: {damage}")
 
-def _verify(
-    connection: Connection, state: _State, checkpoint: Checkpoint | None, progress: Progress | None
-) -> None:
-    state.covered, state.not_covered = store.tables(connection)
-    total = store.count(connection, store.EVENTS)
-    kept = {table.name: _Rows(connection, table) for table in state.covered}
-    for event in store.rows(connection, store.EVENTS, "number"):
-        entry = _check_entry(event, state)
-        for name, rows in kept.items():
-            state.rows += rows.check(state.entries, entry["rows"].get(name, []))
-        _check_tables_exist(state.entries, entry["rows"], kept)
-        if checkpoint is not None and checkpoint.size == state.entries:
-            _check_root(state, checkpoint)
-        if progress is not None and state.entries % PROGRESS_EVERY == 0:
-            progress(state.entries, total)
-    for rows in kept.values():
-        rows.check_end()
-    if checkpoint is not None and checkpoint.size > state.entries:
-        raise _Broken(f"the checkpoint covers {checkpoint.size} entries, and there are only {state.entries}")
-    _check_head(connection, state)
-    # last, since it names no row: an index that hides one, a row that breaks a constraint
-    damage = store.damage(connection)
-    if damage is not None:
-        raise _Broken(f"the database's own check of its file says: {damage}")
-
-
-def _check_entry(event: Mapping[str, Any], state: _State) -> dict[str, Any]:
-    """Hold one entry against its own bytes and the entry before; return what the bytes say."""
-    number = state.entries + 1
-    if event["number"] != number:
-        raise _Broken(f"entry {number} is missing; the next one is {event['number']}", number)
-    raw = _bytes(event["canonical"])
-    if raw is None:
-        raise _Broken("column canonical does not hold bytes", number)
-    leaf = leaf_hash(raw)
-    if leaf.hex() != event["digest"]:
-        raise _Broken("the bytes do not have the digest that stands beside them", number)
-    entry = _parsed(raw, number)
-    _check_columns(event, entry, number)
-    if entry["previous"] != state.head:
-        raise _Broken("it does not follow on the entry before it: the chain is broken", number)
-    if number > 1 and str(entry["time"]) < state.time:
-        state.notes.append(
-            f"entry {number} has an earlier time than the one before it: the clock was set back"
-        )
-    state.tree.add(leaf)
-    state.entries, state.head, state.time = number, leaf.hex(), str(entry["time"])
-    return entry
+    def _check_entry(self, event: Mapping[str, Any]) -> dict[str, Any]:
+        number = self.chain.entries + 1
+        if event["number"] != number:
+            raise Broken(f"entry {number} is missing; the next one is {event['number']}", entry=number)
+        raw = _bytes(event["canonical"])
+        if raw is None:
+            raise Broken("column canonical does not hold bytes", entry=number)
+        entry = self.chain.add(raw, event["digest"])
+        _check_columns(event, entry, number)
+        return entry
 
 
 def _bytes(value: object) -> bytes | None:
@@ -152,47 +117,35 @@ def _bytes(value: object) -> bytes | None:
     return bytes(value) if isinstance(value, (bytes, memoryview)) else None
 
 
-def _parsed(raw: bytes, number: int) -> dict[str, Any]:
-    try:
-        entry = json.loads(raw)
-    except ValueError:
-        entry = None
-    if not isinstance(entry, dict) or not isinstance(entry.get("rows"), dict):
-        raise _Broken("the bytes are not an entry", number)
-    return entry
-
-
 def _check_columns(event: Mapping[str, Any], entry: dict[str, Any], number: int) -> None:
-    shown = {name: event[name] for name in PROJECTED} | {"time": store.as_time(event["time"])}
-    for name, value in shown.items():
-        if value != entry.get(name):
-            raise _Broken(f"column {name} says {value!r}, the bytes say {entry.get(name)!r}", number)
+    for name in PROJECTED:
+        if event[name] != entry.get(name):
+            raise _other_column(name, event[name], entry, number)
+    time = store.as_time(event["time"])
+    if time != entry.get("time"):
+        raise _other_column("time", time, entry, number)
+
+
+def _other_column(name: str, found: object, entry: dict[str, Any], number: int) -> Broken:
+    return Broken(f"column {name} says {found!r}, the bytes say {entry.get(name)!r}", entry=number)
 
 
 def _check_tables_exist(number: int, recorded: dict[str, Any], kept: Mapping[str, object]) -> None:
     for name in recorded:
         if name not in kept:
-            raise _Broken("the table is missing", number, name)
+            raise Broken("the table is missing", entry=number, table=name)
 
 
-def _check_root(state: _State, checkpoint: Checkpoint) -> None:
-    if state.tree.root.hex() != checkpoint.root:
-        raise _Broken(
-            f"the first {checkpoint.size} entries are not those that the checkpoint was made of: the history"
-            " was rewritten somewhere in them"
-        )
-
-
-def _check_head(connection: Connection, state: _State) -> None:
+def _check_head(connection: Connection, chain: Chain) -> None:
     heads = list(store.rows(connection, store.HEAD, "id"))
     if len(heads) != 1:
-        raise _Broken(f"there are {len(heads)} heads", None, store.HEAD)
+        raise Broken(f"there are {len(heads)} heads", table=store.HEAD)
     head = heads[0]
     expected = {
-        "size": state.entries,
-        "digest": state.head,
-        "time": state.time or None,
-        "right_edge": state.tree.edge,
+        "size": chain.entries,
+        "digest": chain.head,
+        "time": chain.time or None,
+        "right_edge": chain.tree.edge,
     }
     found = {
         "size": head["size"],
@@ -202,60 +155,67 @@ def _check_head(connection: Connection, state: _State) -> None:
     }
     for name, value in expected.items():
         if found[name] != value:
-            raise _Broken(f"{name} does not fit the entries", None, store.HEAD, "id 1")
+            raise Broken(f"{name} does not fit the entries", table=store.HEAD, row="id 1")
+
+
+_NEVER, _AT_ONCE = float("inf"), 0
 
 
 class _Rows:
     """The rows of one table, read along with the entries that vouch for them."""
 
-    def __init__(self, connection: Connection, table: Table) -> None:
+    def __init__(self, connection: Connection, table: Table, open_streams: ExitStack) -> None:
         self._table = table
-        self._rows: Iterator[Mapping[str, Any]] = store.rows(connection, table.name, store.TIE)
+        rows = store.rows(connection, table.name, store.TIE)
+        self._rows: Iterator[Mapping[str, Any]] = open_streams.enter_context(closing(rows))
+        self._move_on()
+
+    def _move_on(self) -> None:
         self._next = next(self._rows, None)
+        tie = None if self._next is None else self._next[store.TIE]
+        self.due: float = _NEVER if self._next is None else tie if isinstance(tie, int) else _AT_ONCE
+        """Number of the entry that the next row is tied to; a tie that is no number is a fault at once."""
 
     def check(self, number: int, recorded: list[dict[str, Any]]) -> int:
         """Hold the rows of one entry against what it recorded of them; return how many there are."""
-        # most entries have no row in most tables
-        if not recorded and (self._next is None or self._comes_after(self._next[store.TIE], number)):
-            return 0
-        found = list(self._of(number))
-        waiting = {self._table.row_name(row): row for row in recorded}
-        for row in found:
-            name = self._table.row_name(row)
+        waiting = self._waiting(number, recorded)
+        found = 0
+        while self._next is not None and self.due == number:
+            name = self._table.row_name(self._next)
             expected = waiting.pop(name, None)
             if expected is None:
-                raise _Broken("the entry knows nothing of this row", number, self._table.name, name)
-            self._compare(number, name, expected, self._table.values(row))
+                raise Broken(
+                    "the entry knows nothing of this row", entry=number, table=self._table.name, row=name
+                )
+            self._compare(number, name, expected, self._table.values(self._next))
+            self._move_on()
+            found += 1
+        # in order, so that what is still below was passed: it is tied to no entry
+        if self.due <= number:
+            self.check_end()
         for name in waiting:
-            raise _Broken("the row is missing", number, self._table.name, name)
-        return len(found)
+            raise Broken("the row is missing", entry=number, table=self._table.name, row=name)
+        return found
+
+    def _waiting(self, number: int, recorded: list[dict[str, Any]]) -> dict[str, dict[str, Any]]:
+        try:
+            return {self._table.row_name(row): row for row in recorded}
+        except (KeyError, TypeError):
+            raise Broken(
+                "what the entry recorded are no rows", entry=number, table=self._table.name
+            ) from None
 
     def check_end(self) -> None:
         """Raise where rows are left that no entry vouches for."""
         if self._next is not None:
-            self._orphan(self._next)
-
-    def _of(self, number: int) -> Iterator[Mapping[str, Any]]:
-        while self._next is not None and self._next[store.TIE] == number:
-            yield self._next
-            self._next = next(self._rows, None)
-        # in order, so that what is still below was passed: it is tied to no entry
-        if self._next is not None and not self._comes_after(self._next[store.TIE], number):
-            self._orphan(self._next)
-
-    @staticmethod
-    def _comes_after(tie: object, number: int) -> bool:
-        return isinstance(tie, int) and tie > number
-
-    def _orphan(self, row: Mapping[str, Any]) -> None:
-        name = self._table.row_name(row)
-        raise _Broken("no entry vouches for this row", None, self._table.name, name)
+            name = self._table.row_name(self._next)
+            raise Broken("no entry vouches for this row", table=self._table.name, row=name)
 
     def _compare(self, number: int, name: str, expected: dict[str, Any], found: dict[str, object]) -> None:
         for column in (*expected, *(found.keys() - expected.keys())):
             if not _same(expected.get(column), found.get(column)):
                 what = f"column {column} is not what the entry recorded"
-                raise _Broken(what, number, self._table.name, name)
+                raise Broken(what, entry=number, table=self._table.name, row=name)
 
 
 def _same(recorded: object, found: object) -> bool:

@@ -2,52 +2,53 @@
 
 from __future__ import annotations
 
-import shutil
-import sqlite3
+from collections.abc import Iterator
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
 import pytest
+from sqlalchemy import inspect
 
-from service.records import kept_sheets, migrating
+from service.records import migrating
 from service.verification.report import Report
 from service.verification.verifier import Checkpoint, verify
-from tests.records.store import START, Store, gains
+from tests.databases import Databases, Statement, is_sqlite, opened, run, without_guards
+from tests.records.store import START, Store
+from tests.records.year import live
 
 
 @dataclass(frozen=True)
 class Owned:
-    """A store's file in the hands of somebody who may do anything to it."""
+    """A store in the hands of somebody who may do anything to it."""
 
-    file: Path
+    url: str
 
     @property
-    def url(self) -> str:
-        return f"sqlite:///{self.file}"
+    def row_id(self) -> str:
+        """What names a row whatever stands in it."""
+        return "rowid" if is_sqlite(self.url) else "ctid::text"
 
     def verify(self, checkpoint: Checkpoint | None = None) -> Report:
         return verify(self.url, checkpoint=checkpoint)
 
-    def execute(self, *statements: str | tuple[str, tuple[Any, ...]]) -> None:
-        """Run statements with every trigger dropped and no constraint checked that can be left out."""
-        connection = sqlite3.connect(self.file, isolation_level=None)
-        names = connection.execute("SELECT name FROM sqlite_master WHERE type = 'trigger'").fetchall()
-        for (name,) in names:
-            connection.execute(f"DROP TRIGGER {name}")
-        connection.execute("PRAGMA ignore_check_constraints = ON")
-        for statement in statements:
-            connection.execute(*((statement,) if isinstance(statement, str) else statement))
-        connection.close()
+    def execute(self, *statements: Statement) -> None:
+        """Run statements with every trigger gone and no constraint checked that can be left out."""
+        without_guards(self.url, *statements)
 
     def rows(self, query: str, *parameters: Any) -> list[tuple[Any, ...]]:
-        connection = sqlite3.connect(self.file)
-        found = connection.execute(query, parameters).fetchall()
-        connection.close()
-        return found
+        with opened(self.url) as connection:
+            return run(connection, (query, parameters))
 
     def value(self, query: str, *parameters: Any) -> Any:
         return self.rows(query, *parameters)[0][0]
+
+    def columns(self, table: str) -> list[str]:
+        with opened(self.url) as connection:
+            return [column["name"] for column in inspect(connection).get_columns(table)]
+
+    def tables(self) -> list[str]:
+        with opened(self.url) as connection:
+            return inspect(connection).get_table_names()
 
     def checkpoint(self) -> Checkpoint:
         report = self.verify()
@@ -56,35 +57,18 @@ class Owned:
 
 
 @pytest.fixture(scope="session")
-def lived_in(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    file = tmp_path_factory.mktemp("verification") / "lived_in.db"
-    migrating.migrate(f"sqlite:///{file}", now=START, demonstration=True)
-    store = Store(f"sqlite:///{file}")
+def lived_in(databases: Databases) -> str:
+    url = databases.new()
+    migrating.migrate(url, now=START, demonstration=True)
+    store = Store(url)
     store.add_people()
-    _live(store)
+    live(store)
     store.database.close()
-    return file
-
-
-def _live(store: Store) -> None:
-    loop = store.register(criteria={"gain_margin_min": 2.0})
-    store.add_model(loop)
-    first = store.submit(temporary_until="2026-12-31T00:00:00Z", install_by="2026-12-30T00:00:00Z")
-    signed = store.approve(first)
-    with store.database.writing() as session:
-        reviewer = store.actor("reviewer")
-        kept_sheets.keep(session, reviewer, signed.decision.decision_id, b"%PDF", "1", store.clock())
-    store.clock.forward(hours=1)
-    store.install(first)
-    other = store.register(tag="LIC-7", area="Tank farm")
-    store.add_model(other)
-    second = store.submit(loop={"site": "North", "tag": "LIC-7"}, controller=gains(1.2))
-    store.decide(second, "reject")
-    store.submit(kind="emergency", controller=gains(1.1))
+    return url
 
 
 @pytest.fixture
-def owned(lived_in: Path, tmp_path: Path) -> Owned:
-    copy = tmp_path / "owned.db"
-    shutil.copy(lived_in, copy)
-    return Owned(copy)
+def owned(lived_in: str, databases: Databases) -> Iterator[Owned]:
+    owned = Owned(databases.copy_of(lived_in))
+    yield owned
+    databases.drop(owned.url)

@@ -4,14 +4,19 @@ from __future__ import annotations
 
 import hashlib
 import json
-import shutil
+from collections.abc import Iterator
+from datetime import datetime
 from pathlib import Path
 from typing import Any
 
 import pytest
 
 from service.verification.report import Report
+from tests.databases import Databases, file_of, is_sqlite
 from tests.verification.conftest import Owned
+
+sqlite_alone = pytest.mark.parametrize("databases", ["sqlite"], indirect=True)
+"""What only a file, or a database that takes any value in any column, lets somebody do."""
 
 
 def _named(report: Report) -> tuple[int | None, str | None]:
@@ -118,7 +123,7 @@ def test_an_entry_inserted_in_the_middle(owned: Owned) -> None:
 
 def _append_copy_of(owned: Owned, number: int, as_number: int) -> None:
     (row,) = owned.rows("SELECT * FROM history_events WHERE number = ?", number)
-    names = [column[1] for column in owned.rows("PRAGMA table_info(history_events)")]
+    names = owned.columns("history_events")
     changed = dict(zip(names, row, strict=True))
     changed |= {"number": as_number, "digest": "e" * 64, "previous": "d" * 64}
     marks = ", ".join("?" for _ in names)
@@ -162,13 +167,19 @@ def test_the_last_entries_cut_off_with_everything_that_belongs_to_them(owned: Ow
     assert f"covers {checkpoint.size} entries" in report.fault.what
 
 
-def test_an_old_copy_of_the_store_put_back(owned: Owned, tmp_path: Path) -> None:
-    copy = Owned(tmp_path / "old.db")
-    shutil.copy(owned.file, copy.file)
-    _cut(copy, 10)
+@pytest.fixture
+def earlier(owned: Owned, databases: Databases) -> Iterator[Owned]:
+    """The store as it was after ten entries."""
+    earlier = Owned(databases.copy_of(owned.url))
+    _cut(earlier, 10)
+    yield earlier
+    databases.drop(earlier.url)
+
+
+def test_an_old_copy_of_the_store_put_back(owned: Owned, earlier: Owned) -> None:
     newer = owned.checkpoint()
-    assert copy.verify().holds
-    assert not copy.verify(newer).holds
+    assert earlier.verify().holds
+    assert not earlier.verify(newer).holds
 
 
 def test_everything_rewritten_from_an_entry_on(owned: Owned) -> None:
@@ -180,10 +191,7 @@ def test_everything_rewritten_from_an_entry_on(owned: Owned) -> None:
     assert "rewritten" in report.fault.what
 
 
-def test_a_checkpoint_of_an_earlier_time_still_holds(owned: Owned, tmp_path: Path) -> None:
-    earlier = Owned(tmp_path / "earlier.db")
-    shutil.copy(owned.file, earlier.file)
-    _cut(earlier, 10)
+def test_a_checkpoint_of_an_earlier_time_still_holds(owned: Owned, earlier: Owned) -> None:
     assert owned.verify(earlier.checkpoint()).holds
 
 
@@ -218,11 +226,7 @@ def _set_head(owned: Owned) -> None:
 
 
 def _cut(owned: Owned, size: int) -> None:
-    tables = [
-        name
-        for (name,) in owned.rows("SELECT name FROM sqlite_master WHERE type = 'table'")
-        if any(column[1] == "event_number" for column in owned.rows(f"PRAGMA table_info({name})"))
-    ]
+    tables = [name for name in owned.tables() if "event_number" in owned.columns(name)]
     owned.execute(
         *(f"DELETE FROM {table} WHERE event_number > {size}" for table in tables),  # noqa: S608
         f"DELETE FROM history_events WHERE number > {size}",  # noqa: S608
@@ -245,7 +249,8 @@ def _rewrite_from(owned: Owned, first: int) -> None:
         changes.append((update, (forged, previous, digest, entry["actor"], number)))
         previous = digest
     # each digest has to be free before another entry takes it
-    free = f"UPDATE history_events SET digest = number, previous = -number WHERE number >= {first}"  # noqa: S608
+    free = "UPDATE history_events SET digest = CAST(number AS TEXT), previous = CAST(-number AS TEXT)"
+    free += f" WHERE number >= {first}"
     owned.execute(free, *changes)
     _set_head(owned)
 
@@ -333,9 +338,7 @@ EVERY_COLUMN = [(table, column) for table, columns in COVERED.items() for column
 
 def test_the_list_above_is_all_there_is(owned: Owned) -> None:
     found = {
-        table: [column[1] for column in owned.rows(f"PRAGMA table_info({table})")]
-        for table in owned.verify().covered
-        if not table.startswith("history_")
+        table: owned.columns(table) for table in owned.verify().covered if not table.startswith("history_")
     }
     without_tie = {
         table: [column for column in columns if column != "event_number"] for table, columns in found.items()
@@ -346,9 +349,10 @@ def test_the_list_above_is_all_there_is(owned: Owned) -> None:
 @pytest.mark.parametrize(("table", "column"), EVERY_COLUMN)
 def test_any_column_of_any_kept_row_changed(owned: Owned, table: str, column: str) -> None:
     rowid, number, value = owned.rows(
-        f"SELECT rowid, event_number, {column} FROM {table} WHERE {column} IS NOT NULL LIMIT 1"  # noqa: S608
+        f"SELECT {owned.row_id}, event_number, {column} FROM {table}"  # noqa: S608
+        f" WHERE {column} IS NOT NULL ORDER BY event_number LIMIT 1"
     )[0]
-    change = f"UPDATE {table} SET {column} = ? WHERE rowid = ?"  # noqa: S608
+    change = f"UPDATE {table} SET {column} = ? WHERE {owned.row_id} = ?"  # noqa: S608
     owned.execute((change, (_other(column, value), rowid)))
     report = owned.verify()
     assert _named(report) == (number, table)
@@ -357,6 +361,10 @@ def test_any_column_of_any_kept_row_changed(owned: Owned, table: str, column: st
 def _other(column: str, value: Any) -> Any:
     if isinstance(value, bytes):
         return _flipped(value)
+    if isinstance(value, bool):
+        return not value
+    if isinstance(value, datetime):
+        return value.replace(year=2025)
     if isinstance(value, int):
         return 1 - value if column in ("safety_related", "retired", "as_approved") else value + 7
     if column in ("submitted_at", "install_by", "temporary_until", "since", "decided_at", "recorded_at"):
@@ -366,8 +374,9 @@ def _other(column: str, value: Any) -> Any:
 
 @pytest.mark.parametrize("table", [table for table in COVERED if table not in ("sheets",)])
 def test_any_kept_row_deleted(owned: Owned, table: str) -> None:
-    rowid, number = owned.rows(f"SELECT rowid, event_number FROM {table} LIMIT 1")[0]  # noqa: S608
-    owned.execute((f"DELETE FROM {table} WHERE rowid = ?", (rowid,)))  # noqa: S608
+    first = f"SELECT {owned.row_id}, event_number FROM {table} ORDER BY event_number LIMIT 1"  # noqa: S608
+    rowid, number = owned.rows(first)[0]
+    owned.execute((f"DELETE FROM {table} WHERE {owned.row_id} = ?", (rowid,)))  # noqa: S608
     report = owned.verify()
     assert _named(report) == (number, table)
     assert "missing" in report.fault.what  # type: ignore[union-attr]
@@ -404,7 +413,9 @@ def test_a_signature_moved_to_another_entry(owned: Owned) -> None:
 def test_a_limit_or_a_result_of_a_past_recomputation_changed(
     owned: Owned, part: str, with_digest: bool
 ) -> None:
-    rowid, number, raw = owned.rows("SELECT rowid, event_number, content FROM submissions LIMIT 1")[0]
+    first = f"SELECT {owned.row_id}, event_number, content, content_digest FROM submissions"  # noqa: S608
+    first += " ORDER BY event_number"
+    rowid, number, raw, stored = owned.rows(first)[0]
     content = json.loads(raw)
     recomputation = content["recomputations"][0]
     if part == "limit":
@@ -413,19 +424,19 @@ def test_a_limit_or_a_result_of_a_past_recomputation_changed(
         recomputation["answer"]["continuous"]["margins"]["gain_margin"] = 9.9
     forged = json.dumps(content, sort_keys=True, separators=(",", ":"), ensure_ascii=False).encode()
     assert forged != raw
-    owned.execute(("UPDATE submissions SET content = ? WHERE rowid = ?", (forged, rowid)))
-    if with_digest:
-        digest = hashlib.sha256(forged).hexdigest()
-        owned.execute(("UPDATE submissions SET content_digest = ? WHERE rowid = ?", (digest, rowid)))
+    digest = hashlib.sha256(forged).hexdigest() if with_digest else stored
+    change = f"UPDATE submissions SET content = ?, content_digest = ? WHERE {owned.row_id} = ?"  # noqa: S608
+    owned.execute((change, (forged, digest, rowid)))
     assert _named(owned.verify()) == (number, "submissions")
 
 
 def test_a_table_removed(owned: Owned) -> None:
-    owned.execute("DROP TABLE decisions")
+    owned.execute("DROP TABLE decisions" if is_sqlite(owned.url) else "DROP TABLE decisions CASCADE")
     report = owned.verify()
     assert _named(report) == (_entry(owned, "gains_approved"), "decisions")
 
 
+@sqlite_alone
 def test_a_text_in_a_numbers_place(owned: Owned) -> None:
     number = owned.value("SELECT event_number FROM loop_models LIMIT 1")
     owned.execute("UPDATE loop_models SET version = CAST(version AS BLOB) WHERE version = 1")
@@ -435,6 +446,7 @@ def test_a_text_in_a_numbers_place(owned: Owned) -> None:
 # --- the file
 
 
+@sqlite_alone
 def test_a_row_that_breaks_a_constraint_where_no_entry_says_so(owned: Owned) -> None:
     """The entries know nothing of working tables, but the database's own check looks at every one."""
     owned.execute("UPDATE account_roles SET role = 'owner' WHERE role = 'auditor'")
@@ -443,16 +455,18 @@ def test_a_row_that_breaks_a_constraint_where_no_entry_says_so(owned: Owned) -> 
     assert "account_roles" in report.fault.what
 
 
+@sqlite_alone
 def test_bytes_of_the_file_edited(owned: Owned) -> None:
-    raw = owned.file.read_bytes()
+    file = file_of(owned.url)
+    raw = file.read_bytes()
     place = raw.index(b'"kind":"gains_approved"')
-    owned.file.write_bytes(raw[:place] + b'"kind":"gains_rejected"' + raw[place + 23 :])
+    file.write_bytes(raw[:place] + b'"kind":"gains_rejected"' + raw[place + 23 :])
     assert not owned.verify().holds
 
 
 def test_a_file_that_is_no_store(tmp_path: Path) -> None:
     file = tmp_path / "other.db"
     file.write_bytes(b"not a database at all" * 100)
-    report = Owned(file).verify()
+    report = Owned(f"sqlite:///{file}").verify()
     assert report.fault is not None
     assert "cannot be read" in report.fault.what
