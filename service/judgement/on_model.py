@@ -53,12 +53,12 @@ def _setting_unknown(field: str) -> Finding:
 
 
 def integral_time_out_of_scale(case: Case) -> Finding | None:
-    """Integral time far outside the times of the model."""
+    """Integral time far outside the times of the loop."""
     return _out_of_scale(case, "integral", case.facts.integral_time_s)
 
 
 def derivative_time_out_of_scale(case: Case) -> Finding | None:
-    """Derivative time far above the times of the model; a short one does no harm."""
+    """Derivative time far above the times of the loop; a short one does no harm."""
     slowest = _times(case)[-1:]
     given = case.facts.derivative_time_s
     if given is None or not slowest or given <= TIME_SCALE_RATIO * slowest[0]:
@@ -71,9 +71,9 @@ def _out_of_scale(case: Case, term: str, given_s: float | None) -> Finding | Non
     if given_s is None or not times:
         return None
     if given_s > TIME_SCALE_RATIO * times[-1]:
-        ratio, other = given_s / times[-1], f"longer than the slowest of the model ({time(times[-1])})"
+        ratio, other = given_s / times[-1], f"longer than the slowest of the loop ({time(times[-1])})"
     elif given_s < times[0] / TIME_SCALE_RATIO:
-        ratio, other = times[0] / given_s, f"shorter than the fastest of the model ({time(times[0])})"
+        ratio, other = times[0] / given_s, f"shorter than the fastest of the loop ({time(times[0])})"
     else:
         return None
     return Finding(
@@ -85,10 +85,16 @@ def _out_of_scale(case: Case, term: str, given_s: float | None) -> Finding | Non
 
 
 def _times(case: Case) -> list[float]:
-    """Times of the model in s, shortest first; empty where it has none."""
+    """Times in s that the controller's are held against, shortest first; empty where there are none."""
     facts = case.facts
     known = (facts.fastest_plant_time_s, facts.slowest_plant_time_s, facts.dead_time_s)
-    return sorted(time_s for time_s in known if time_s)
+    return sorted(time_s for time_s in (*known, _crossover_time_s(case)) if time_s)
+
+
+def _crossover_time_s(case: Case) -> float | None:
+    """Of a process that integrates the slow time is not in the model: the gain decides it."""
+    crossovers = case.judged.crossovers.gain_crossovers if case.judged else ()
+    return 1 / crossovers[0].rad_s if case.facts.plant_integrates and crossovers else None
 
 
 def inverse_response(case: Case) -> Finding | None:

@@ -14,7 +14,7 @@ import pytest
 
 from service.analysis import recomputation
 from service.analysis.controller import Controller, SetpointWeight
-from service.analysis.plant import PlantModel, SecondOrder, TransferFunction, Uncertainty
+from service.analysis.plant import Integrating, PlantModel, SecondOrder, TransferFunction, Uncertainty
 from service.analysis.results import BoxMember, Recomputation, Route, SecondOpinion, WorstCase
 from service.judgement.claims import Claims, compare
 from service.judgement.findings import FINDERS, Finding, find
@@ -215,6 +215,14 @@ def test_a_short_derivative_time_is_not_told() -> None:
 
 def test_a_model_without_times_has_no_scale() -> None:
     assert "integral_time_out_of_scale" not in codes(loop(STATIC, ideal(integral_s=1e6)))
+
+
+@pytest.mark.parametrize(("integral_s", "found"), [(600.0, False), (36_000.0, True)])
+def test_the_slow_time_of_a_level_is_that_of_its_own_loop(integral_s: float, found: bool) -> None:
+    # held at 0.0025·1/0.6 = 0.0042 rad/s, so at 240 s; the model's own times are 3 and 2 s
+    buffer_tank = Integrating(kind="integrating", gain_per_s=0.0025, lag_s=3.0, dead_time_s=2.0)
+    gains = ideal(gain=1 / 0.6, integral_s=integral_s)
+    assert ("integral_time_out_of_scale" in codes(loop(buffer_tank, gains))) is found
 
 
 def test_a_process_that_drifts_in_manual_is_told() -> None:
