@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from datetime import UTC, datetime, timedelta
 
 import pytest
@@ -20,6 +21,15 @@ def test_the_plant_has_loops_of_every_kind() -> None:
     assert {"F", "L", "P", "T", "A"} <= {tag[0] for tag in PLANT.loops}
     kinds = {loop.model["plant_model"]["kind"] for loop in PLANT.loops.values()}
     assert kinds == {"first_order", "second_order", "integrating", "transfer_function"}
+
+
+def test_the_plant_has_an_inverse_response_and_a_dead_time_that_is_longer_than_the_lag() -> None:
+    models = [loop.model["plant_model"] for loop in PLANT.loops.values()]
+    numerators = [model["numerator"] for model in models if "numerator" in model]
+    assert any(high * low < 0 for high, low in numerators)  # a zero right of the axis
+    assert any(
+        model.get("dead_time_s", 0) > 2 * abs(model.get("time_constant_s", math.inf)) for model in models
+    )
 
 
 def test_the_plant_has_a_cascade_and_a_process_that_does_not_hold_itself() -> None:

@@ -84,6 +84,12 @@ def test_a_claim_that_differs_is_waiting(shown: Shown) -> None:
     assert outcomes["phase_margin_deg"] == "agrees"
 
 
+def test_a_proposal_in_good_order_is_waiting(shown: Shown) -> None:
+    (dosing,) = shown.submissions("&state=awaiting_review&tag=FIC-2250")
+    assert {claim["outcome"] for claim in dosing["recomputations"][0]["result"]["claims"]} == {"agrees"}
+    assert (dosing["deviations_needed"], dosing["hindrances"]) == ([], [])
+
+
 def test_the_rejected_gains_of_the_vacuum_had_the_wrong_action(shown: Shown) -> None:
     (vacuum,) = shown.submissions("&state=rejected&tag=PIC-3302")
     findings = {finding.get("finding") for finding in vacuum["recomputations"][0]["result"]["findings"]}
