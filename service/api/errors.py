@@ -42,6 +42,7 @@ TABLE: dict[type[Exception], ProblemType] = {
     records.IdempotencyKeyReused: problems.IDEMPOTENCY_KEY_REUSED,
     records.StaleContent: problems.PRECONDITION_FAILED,
     records.Conflict: problems.CONFLICT,
+    records.SecondPersonNeeded: problems.SECOND_PERSON_NEEDED,
     records.StoreNotUsable: problems.UNAVAILABLE,
     # down, locked, full, read-only, no free connection: the drivers say it in these four ways
     OperationalError: problems.UNAVAILABLE,

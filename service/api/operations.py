@@ -179,10 +179,14 @@ def changes(
 def changes_prepared(
     body: type[DocumentT],
     answer: type,
-    prepare: Callable[[Call, Reader[DocumentT]], PreparedT],
+    prepare: Callable[Concatenate[Call, Reader[DocumentT], ...], PreparedT],
+    *,
+    trace: Trace | None = None,
 ) -> Callable[[Callable[Concatenate[Call, PreparedT, ...], Answer]], Changing]:
     """Make a handler of `call, prepared` an operation whose long work `prepare` does, holding up nobody."""
-    return lambda handler: Changing(handler=handler, body=body, answer=answer, status=201, prepare=prepare)
+    return lambda handler: Changing(
+        handler=handler, body=body, answer=answer, status=201, prepare=prepare, trace=trace
+    )
 
 
 def computes(

@@ -134,6 +134,15 @@ CONFLICT = ProblemType(
     "computed from has changed since, or somebody else was quicker. The detail says which.",
     "Read the resource again. Where the basis changed, submit again, so that it is recomputed.",
 )
+SECOND_PERSON_NEEDED = ProblemType(
+    "second-person-needed",
+    409,
+    "One person alone does not change this",
+    "Approvals of the loop rest on what would change: ranges, what the output acts on, a limit loosened, or "
+    "the safety mark taken off. Such a change is proposed by one person and confirmed by another.",
+    "Each entry of errors names a field and what would change. Send the same loop with a reason to "
+    "POST /v1/loops/{id}/changes, and have a reviewer confirm it.",
+)
 TOO_LARGE = ProblemType(
     "too-large",
     413,
@@ -185,6 +194,7 @@ CATALOGUE: tuple[ProblemType, ...] = (
     PRECONDITION_FAILED,
     PRECONDITION_REQUIRED,
     CONFLICT,
+    SECOND_PERSON_NEEDED,
     TOO_LARGE,
     UNSUPPORTED_MEDIA_TYPE,
     TOO_MANY_REQUESTS,

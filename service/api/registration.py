@@ -5,6 +5,7 @@ from __future__ import annotations
 from flask import Flask
 
 from service.api import (
+    changes,
     decisions,
     health,
     history,
@@ -21,6 +22,7 @@ from service.api import (
 BLUEPRINTS = (
     recomputations.blueprint,
     loops.blueprint,
+    changes.blueprint,
     submissions.blueprint,
     decisions.blueprint,
     installations.blueprint,

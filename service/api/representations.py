@@ -16,18 +16,25 @@ from service.documents.recomputations import RecomputationAnswer
 from service.documents.submissions import Tool
 from service.judgement.claims import Claims
 from service.judgement.criteria import Criteria, CriterionFinding
+from service.records.change_lifecycle import ChangeAction, ChangeState
 from service.records.content import (
+    ChangeDecisionContent,
     DecisionContent,
     InstallationContent,
     Person,
+    RecomputedAgain,
+    SecondPersonReason,
     SignedContent,
     SignedGains,
     SignedGainsInForce,
+    SignedModel,
     SignedRecomputation,
     WorstCriterion,
 )
 from service.records.lifecycle import Action, Kind, State
 from service.records.views import (
+    ChangeDecisionView,
+    ChangeView,
     Comparison,
     DecisionView,
     EntryReference,
@@ -35,6 +42,7 @@ from service.records.views import (
     InstallationView,
     LoopView,
     ModelView,
+    RecheckView,
     SubmissionView,
 )
 
@@ -78,6 +86,8 @@ class ModelIdentity:
     version: int
     in_force: bool
     """The latest of its operating point, and that is not retired."""
+    retired: bool
+    """From this version on its operating point has no model in force."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -96,7 +106,60 @@ class Model(ModelVersion, ModelIdentity):
             loop_id=view.loop_id,
             version=view.version,
             in_force=view.in_force,
+            retired=view.retired,
             added_by=view.added_by,
+            entry=view.entry,
+        )
+
+
+@dataclass(frozen=True, kw_only=True)
+class LoopChangeDecision(ChangeDecisionContent):
+    """The signature that a change was decided with, and the entry of the history that it stands in."""
+
+    entry: EntryReference
+
+    @classmethod
+    def of(cls, view: ChangeDecisionView) -> LoopChangeDecision:
+        """Represent a decision on a change."""
+        return cls(**_fields_of(view.decision), entry=view.entry)
+
+
+@dataclass(frozen=True, kw_only=True)
+class LoopChange:
+    """A change of what approvals of a loop rest on, in its state at the time of reading."""
+
+    id: str
+    state: ChangeState
+    content_digest: str
+    loop_id: str
+    loop_revision: int
+    """The revision that the change was made from."""
+    before: LoopRegistration
+    after: LoopRegistration | None
+    """The loop as it is to be; null where an operating point is to be retired."""
+    retires: SignedModel | None
+    """The model version that is taken out of force with its operating point."""
+    needs_second_person: tuple[SecondPersonReason, ...]
+    """Empty: one person could have made the change, and asked for another all the same."""
+    reason: str
+    proposed_by: Person
+    proposed_at: datetime
+    decision: LoopChangeDecision | None
+    open_decisions: tuple[ChangeAction, ...]
+    """What the account that reads may decide."""
+    entry: EntryReference
+
+    @classmethod
+    def of(cls, view: ChangeView) -> LoopChange:
+        """Represent a change."""
+        content = {name: value for name, value in _fields_of(view.content).items() if name != "change_id"}
+        return cls(
+            **content,
+            id=view.id,
+            state=view.state,
+            content_digest=view.content_digest,
+            decision=None if view.decision is None else LoopChangeDecision.of(view.decision),
+            open_decisions=view.open_decisions,
             entry=view.entry,
         )
 
@@ -193,12 +256,16 @@ class Submission:
     changed_basis: tuple[str, ...]
     decisions: tuple[Decision, ...]
     installations: tuple[Installation, ...]
+    recomputed_again: RecomputedAgain | None
+    """The change of the loop after which this was recomputed; null: as it was submitted."""
     gains_in_force: SignedGainsInForce | None
     """Those that ran when this was submitted; part of what is signed."""
     comparison: tuple[Comparison, ...]
     """One a gain set: those gains in force → these."""
     review_due_at: datetime | None
     overdue: bool
+    recheck_due: RecheckView | None
+    """The change of what these gains were approved on, while they run or may be installed; else null."""
     open_actions: tuple[Action, ...]
     """What the account that reads may do next."""
     entry: EntryReference
@@ -257,6 +324,7 @@ def _of_view(view: SubmissionView) -> dict[str, Any]:
         "changed_basis",
         "review_due_at",
         "overdue",
+        "recheck_due",
         "open_actions",
         "entry",
     )

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Literal
 
 from flask import Blueprint
 
@@ -27,6 +28,7 @@ class SubmissionQuery(PageQuery):
     state: State | None = None
     site: Text | None = None
     tag: Text | None = None
+    recheck_due: Literal["true", "false"] | None = None
 
 
 def _recompute(call: Call, read: Reader[SubmissionRequest]) -> PreparedSubmission:
@@ -48,7 +50,8 @@ def submit(call: Call, prepared: PreparedSubmission) -> Answer:
 def list_submissions(call: Call, query: SubmissionQuery) -> Answer:
     """List submissions, latest first."""
     states = frozenset({query.state} if query.state else ())
-    wanted = SubmissionFilter(states=states, site=query.site, tag=query.tag)
+    due = None if query.recheck_due is None else query.recheck_due == "true"
+    wanted = SubmissionFilter(states=states, site=query.site, tag=query.tag, recheck_due=due)
     part = queries.submissions(call.session, call.actor, wanted, call.now, answers.after(query), query.limit)
     return answers.page(part, answers.as_it_is)
 

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from service.documents.changes import ChangeDecisionRequest, LoopChangeRequest
 from service.documents.decisions import DecisionRequest
 from service.documents.installations import InstallationRequest
 from service.documents.loops import LoopRegistration, ModelVersion
@@ -36,6 +37,16 @@ _AS_LEFT: dict[str, Any] = _AS_FOUND | {
     "proportional": {"value": 55.0, "unit": "percent_band", "displayed": "55.0"},
     "integral": {"value": 0.7, "unit": "repeats_per_minute", "displayed": "0.70"},
 }
+_LOOP: dict[str, Any] = {
+    "site": "Hillside works",
+    "tag": "TIC-4012",
+    "description": "Outlet temperature of the wash heater",
+    "area": "Washing",
+    "pv": {"low": 0, "high": 150, "unit": "°C"},
+    "output": {"low": 0, "high": 100, "unit": "%"},
+    "criteria": {"gain_margin_min": 2.5, "phase_margin_deg_min": 45},
+    "fail_position": "closed",
+}
 
 EXAMPLES: dict[type, dict[str, Any]] = {
     RecomputationRequest: {
@@ -44,16 +55,7 @@ EXAMPLES: dict[type, dict[str, Any]] = {
         "criteria": {"gain_margin_min": 2.5, "phase_margin_deg_min": 45, "overshoot_percent_max": 15},
         "claims": {"gain_margin": 3.3, "phase_margin_deg": 61},
     },
-    LoopRegistration: {
-        "site": "Hillside works",
-        "tag": "TIC-4012",
-        "description": "Outlet temperature of the wash heater",
-        "area": "Washing",
-        "pv": {"low": 0, "high": 150, "unit": "°C"},
-        "output": {"low": 0, "high": 100, "unit": "%"},
-        "criteria": {"gain_margin_min": 2.5, "phase_margin_deg_min": 45},
-        "fail_position": "closed",
-    },
+    LoopRegistration: _LOOP,
     ModelVersion: {
         "plant_model": _PLANT_MODEL,
         "operating_point": "normal feed",
@@ -68,6 +70,17 @@ EXAMPLES: dict[type, dict[str, Any]] = {
         "claims": {"gain_margin": 3.3, "phase_margin_deg": 61},
         "tool": {"name": "loop helper", "version": "2.4"},
         "install_by": "2027-01-31T18:00:00Z",
+    },
+    LoopChangeRequest: {
+        "revision": 1,
+        "reason": "The transmitter was ranged anew for the new heater; work order 5-118.",
+        "loop": _LOOP | {"pv": {"low": 0, "high": 200, "unit": "°C"}},
+    },
+    ChangeDecisionRequest: {
+        "decision": "confirm",
+        "reason": "Read against the data sheet of the transmitter.",
+        "content_digest": "5b0e6f6a" * 8,
+        "password": "the password of whoever signs",
     },
     DecisionRequest: {
         "decision": "approve",

@@ -45,6 +45,11 @@ class LoopRegistration:
         if self.inner_loop and self.inner_loop.names(self.site, self.tag):
             raise FieldError(("inner_loop",), "a loop is not its own inner loop")
 
+    @property
+    def own_criteria(self) -> Criteria | None:
+        """The loop's own limits; an empty set of limits is none."""
+        return None if self.criteria == Criteria() else self.criteria
+
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class ModelVersion:

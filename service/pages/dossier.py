@@ -21,7 +21,7 @@ from service.records import queries
 from service.records.views import Comparison, CurvesView, SubmissionView
 from service.sheets.assessments import Assessment
 from service.sheets.content import SheetContent
-from service.sheets.signatures import DECISIONS
+from service.sheets.signatures import DECISIONS, EARLIER
 
 NARROW = {"width_pt": 300, "height_pt": 420, "text_pt": 12}
 """A drawing for a screen of 320 px, in points."""
@@ -150,7 +150,7 @@ def _happenings(view: SubmissionView) -> Iterator[Happening]:
             what=DECISIONS[made.decision],
             who=made.signed_by.full_name,
             meaning=made.meaning,
-            lines=(made.reason,),
+            lines=(made.reason, *((EARLIER,) if made.content_digest != view.content_digest else ())),
             deviations=tuple((deviation.criterion, deviation.reason) for deviation in made.deviation),
             entry=each.entry.number,
         )

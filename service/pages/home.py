@@ -6,11 +6,14 @@ from flask import Blueprint, Response
 
 from service.pages import visits
 from service.pages.frame import page
-from service.records import queries
+from service.records import change_queries, queries
+from service.records.change_queries import ChangeFilter
 from service.records.queries import SubmissionFilter
 
 SHOWN = 50
 TO_INSTALL = SubmissionFilter(states=frozenset({"approved"}))
+DUE_FOR_RECHECK = SubmissionFilter(recheck_due=True)
+TO_CONFIRM = ChangeFilter(state="awaiting_confirmation")
 PAST_THEIR_TIME = SubmissionFilter(states=frozenset({"lapsed", "expired"}))
 
 
@@ -26,4 +29,14 @@ def home() -> Response:
         waiting = queries.awaiting_review(session, actor, now, limit=SHOWN)
         to_install = queries.submissions(session, actor, TO_INSTALL, now, limit=SHOWN)
         past = queries.submissions(session, actor, PAST_THEIR_TIME, now, limit=SHOWN)
-    return page("home.html", actor=actor, waiting=waiting, to_install=to_install, past=past)
+        due = queries.submissions(session, actor, DUE_FOR_RECHECK, now, limit=SHOWN)
+        proposed = change_queries.changes(session, actor, TO_CONFIRM, limit=SHOWN)
+    return page(
+        "home.html",
+        actor=actor,
+        waiting=waiting,
+        to_install=to_install,
+        past=past,
+        due=due,
+        proposed=proposed,
+    )

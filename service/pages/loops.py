@@ -11,10 +11,11 @@ from service.pages import forms, lists, visits
 from service.pages.forms import Form
 from service.pages.frame import page
 from service.pages.visits import Visit
+from service.records import change_queries, queries
 from service.records import loops as records
-from service.records import queries
+from service.records.change_queries import ChangeFilter
 from service.records.queries import LoopFilter, SubmissionFilter
-from service.records.views import GainsInForce, LoopView, ModelView, Page, SubmissionSummary
+from service.records.views import ChangeView, GainsInForce, LoopView, ModelView, Page, SubmissionSummary
 from service.sheets import controllers, plants
 from service.sheets.controllers import Told
 
@@ -49,6 +50,7 @@ class LoopPage:
     gain_sets: tuple[ToldGains, ...]
     limits: tuple[str, ...]
     """Empty: the service's own floors hold."""
+    changes: Page[ChangeView]
     submissions: Page[SubmissionSummary]
 
 
@@ -91,6 +93,7 @@ def _loop_page(visit: Visit, loop_id: str) -> LoopPage:
         in_force=in_force,
         gain_sets=_gain_sets(in_force),
         limits=_limits(view),
+        changes=change_queries.changes(session, actor, ChangeFilter(loop_id=loop_id)),
         submissions=queries.submissions(session, actor, wanted, now, limit=SUBMISSIONS_SHOWN),
     )
 

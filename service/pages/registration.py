@@ -11,6 +11,7 @@ from service.pages import (
     history,
     home,
     installations,
+    loop_changes,
     loops,
     paper,
     sign_in,
@@ -23,7 +24,18 @@ from service.pages import (
 TYPEFACE_KEPT_S = 30 * 24 * 3600
 """How long a browser keeps the typeface of the figures; it is large and never changes."""
 
-SUBJECTS = (sign_in, home, loops, submission_list, submissions, decisions, installations, paper, history)
+SUBJECTS = (
+    sign_in,
+    home,
+    loops,
+    loop_changes,
+    submission_list,
+    submissions,
+    decisions,
+    installations,
+    paper,
+    history,
+)
 
 
 def register(app: Flask) -> None:

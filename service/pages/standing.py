@@ -99,7 +99,11 @@ def _why_not(view: SubmissionView, actor: Actor) -> str:
         lifecycle.check_who("reject", actor, _mine(view, actor))
     except NotAllowed as refusal:
         return f"You cannot decide about these gains: {refusal}."
-    if any(decision.decision.signed_by.name == actor.name for decision in view.decisions):
+    if any(
+        (decision.decision.signed_by.name, decision.decision.content_digest)
+        == (actor.name, view.content_digest)
+        for decision in view.decisions
+    ):
         return "You have approved these gains. They need a second approval, by another person."
     return ""
 

@@ -11,7 +11,7 @@ from markupsafe import Markup
 from service.judgement import wording
 from service.judgement.digits import as_entered, three_digits
 from service.pages import forms
-from service.records import lifecycle
+from service.records import change_lifecycle, lifecycle
 from service.sheets import controllers
 
 KINDS: dict[str, str] = {
@@ -148,6 +148,7 @@ FILTERS: dict[str, Callable[..., Any]] = {
     "as_entered": as_entered,
     "sentence": forms.sentence,
     "state": lifecycle.in_words,
+    "change_state": change_lifecycle.in_words,
     "kind": KINDS.__getitem__,
     "decided": DECIDED.__getitem__,
     "deciding": DECISIONS.__getitem__,

@@ -70,6 +70,11 @@ def _to_answer(content: SignedContent) -> Iterator[str]:
 
 
 def _hindrances(content: SignedContent) -> Iterator[str]:
+    judged = {recomputation.gain_set for recomputation in content.recomputations}
+    for index, gain_set in enumerate(content.gain_sets):
+        if index not in judged:
+            points = ", ".join(gain_set.operating_points)
+            yield f"the gains for {gain_set.condition} were not recomputed: no model is in force at {points}"
     for recomputation in content.recomputations:
         where = f"at operating point {recomputation.operating_point}"
         if recomputation.answer.verdict != "stable":

@@ -84,6 +84,14 @@ class SignedGainsInForce:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
+class RecomputedAgain:
+    """That a submission was recomputed after a change of its loop, which change, and when."""
+
+    change_id: str
+    recomputed_at: Moment
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
 class SignedContent:
     """Everything that a signature on a submission covers."""
 
@@ -107,6 +115,8 @@ class SignedContent:
     criteria: tuple[WorstCriterion, ...]
     recomputations: tuple[SignedRecomputation, ...]
     gains_in_force: SignedGainsInForce | None
+    recomputed_again: RecomputedAgain | None = None
+    """None: everything is as it was when the gains were submitted."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -157,6 +167,49 @@ class InstallationContent:
     """The gains that were in force as far as was recorded → as found; None where none were."""
 
 
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SecondPersonReason:
+    """One thing that needs a second person: the field it stands in, and a sentence."""
+
+    field: str
+    sentence: str
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class LoopChangeContent:
+    """A change of what approvals rest on, as a second person confirms it.
+
+    `after` is the loop as it is to be; where it is None, `retires` is the model version that is taken out of
+    force with its operating point.
+    """
+
+    change_id: str
+    loop_id: str
+    loop_revision: int
+    """The revision that the change was made from."""
+    before: LoopRegistration
+    after: LoopRegistration | None
+    retires: SignedModel | None
+    needs_second_person: tuple[SecondPersonReason, ...]
+    """Empty: one person could have made it, and asked for another all the same."""
+    reason: str
+    proposed_by: Person
+    proposed_at: Moment
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class ChangeDecisionContent:
+    """A signature on a change: who, what it means, when, on which content, with which reason."""
+
+    change_id: str
+    decision: Literal["confirm", "reject", "withdraw"]
+    meaning: str
+    reason: str
+    content_digest: str
+    signed_by: Person
+    signed_at: Moment
+
+
 def read_content(kept: bytes) -> SignedContent:
     """Read the kept content of a submission."""
     return read(SignedContent, json.loads(kept))
@@ -165,6 +218,16 @@ def read_content(kept: bytes) -> SignedContent:
 def read_decision(kept: bytes) -> DecisionContent:
     """Read the kept content of a decision."""
     return read(DecisionContent, json.loads(kept))
+
+
+def read_change(kept: bytes) -> LoopChangeContent:
+    """Read the kept content of a change of a loop."""
+    return read(LoopChangeContent, json.loads(kept))
+
+
+def read_change_decision(kept: bytes) -> ChangeDecisionContent:
+    """Read the kept content of a decision on a change of a loop."""
+    return read(ChangeDecisionContent, json.loads(kept))
 
 
 def read_installation(kept: bytes) -> InstallationContent:

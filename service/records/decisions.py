@@ -20,11 +20,12 @@ from service.records import (
     history,
     lifecycle,
     loops,
+    present_content,
     states,
     throttles,
     visibility,
 )
-from service.records.content import DecisionContent, Person, SignedContent, read_content
+from service.records.content import DecisionContent, Person, SignedContent
 from service.records.errors import (
     BasisChanged,
     FieldErrors,
@@ -74,16 +75,18 @@ def decide(
     (MissingDeviation); StaleContent (another digest); Conflict (WrongStep, BasisChanged, NotApprovable).
     """
     submission = visibility.submission(session, actor, submission_id)
+    present = present_content.present(session, submission)
     earlier = _decisions(session, submission_id)
+    approvals = _approvals(earlier, present.digest)
     lifecycle.check_who(request.decision, actor, visibility.authors(session, submission_id))
     if lifecycle.allows(states.as_read(session, submission, now), request.decision):
-        _check_signs_once(actor, request, earlier)
+        _check_signs_once(actor, request, approvals)
     accounts.check_password(session, actor, request.password, now)
-    content = read_content(submission.content)
+    content = present.read()
     _check_deviations(request, content)
-    if request.content_digest != submission.content_digest:
+    if request.content_digest != present.digest:
         raise StaleContent("the content is not the one that was reviewed; read it again")
-    state = states.next_row(session, submission, _action(request, content, earlier), now)
+    state = states.next_row(session, submission, _action(request, content, approvals), now)
     if request.decision == "approve":
         _check_approvable(session, content)
     throttles.forget(session, throttles.of_account(actor.name))
@@ -119,8 +122,13 @@ def _decisions(session: Session, submission_id: str) -> tuple[Decision, ...]:
     return tuple(session.execute(query).scalars())
 
 
-def _check_signs_once(actor: Actor, request: DecisionRequest, earlier: tuple[Decision, ...]) -> None:
-    signed = {row.decided_by for row in earlier if row.decision == "approve"}
+def _approvals(decisions: tuple[Decision, ...], digest: str) -> tuple[Decision, ...]:
+    """Keep the approvals of exactly this content: one that was recomputed since is approved anew."""
+    return tuple(row for row in decisions if (row.decision, row.submission_digest) == ("approve", digest))
+
+
+def _check_signs_once(actor: Actor, request: DecisionRequest, approvals: tuple[Decision, ...]) -> None:
+    signed = {row.decided_by for row in approvals}
     if request.decision == "approve" and actor.account_id in signed:
         raise NotIndependent("you have approved this; the second approval is another person's")
 
@@ -146,11 +154,10 @@ def _check_deviations(request: DecisionRequest, content: SignedContent) -> None:
         raise FieldErrors(idle)
 
 
-def _action(request: DecisionRequest, content: SignedContent, earlier: tuple[Decision, ...]) -> Action:
+def _action(request: DecisionRequest, content: SignedContent, approvals: tuple[Decision, ...]) -> Action:
     if request.decision != "approve":
         return request.decision
-    approvals = sum(row.decision == "approve" for row in earlier) + 1
-    return "approve" if approvals >= approvability.approvals_needed(content) else "approve_first"
+    return "approve" if len(approvals) + 1 >= approvability.approvals_needed(content) else "approve_first"
 
 
 def _check_approvable(session: Session, content: SignedContent) -> None:
@@ -178,7 +185,7 @@ def _sign(
         meaning=MEANINGS[request.decision],
         reason=request.reason,
         deviation=request.deviation,
-        content_digest=submission.content_digest,
+        content_digest=request.content_digest,
         signed_by=Person(name=actor.name, full_name=actor.full_name),
         signed_at=now,
     )
@@ -190,7 +197,7 @@ def _sign(
         decision=request.decision,
         decided_by=actor.account_id,
         decided_at=now,
-        submission_digest=submission.content_digest,
+        submission_digest=request.content_digest,
         content=kept,
         content_digest=sha256(kept).hexdigest(),
     )

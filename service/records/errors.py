@@ -90,6 +90,15 @@ class BasisChanged(Conflict):
         )
 
 
+class SecondPersonNeeded(Conflict):
+    """One person alone does not change what an approval rests on: `errors` names each thing and its place."""
+
+    def __init__(self, reasons: tuple[tuple[str, str], ...]) -> None:
+        self.errors = tuple(FieldProblem(f"/{field}", sentence) for field, sentence in reasons)
+        told = "; ".join(sentence for _, sentence in reasons)
+        super().__init__(f"this is proposed by one person and confirmed by another: {told}")
+
+
 class NotApprovable(Conflict):
     """No deviation makes this approvable: not stable everywhere, no model, or below the hard floor."""
 

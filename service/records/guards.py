@@ -43,6 +43,22 @@ POSTGRESQL_FUNCTIONS = (
     """,
 )
 
+POSTGRESQL_CHANGE_FUNCTIONS = (
+    """
+    CREATE FUNCTION refuse_proposer() RETURNS trigger LANGUAGE plpgsql AS $$
+    BEGIN
+        IF NEW.decision <> 'withdraw' AND EXISTS (
+            SELECT 1 FROM loop_changes WHERE id = NEW.change_id AND proposed_by = NEW.decided_by
+        ) THEN
+            RAISE EXCEPTION 'an author decides on their own change'
+                USING ERRCODE = 'integrity_constraint_violation';
+        END IF;
+        RETURN NEW;
+    END $$
+    """,
+)
+"""Beside POSTGRESQL_FUNCTIONS, which the first migration has made."""
+
 
 def append_only(dialect: str, table: str, *keys: Key) -> Iterator[str]:
     """Make the statements that let rows be inserted into `table` and nothing else; `keys` are all unique
@@ -71,6 +87,19 @@ def independent_decisions(dialect: str) -> Iterator[str]:
         yield _sqlite_refusal("decisions", "author", "INSERT", message, condition)
     else:
         yield from _postgresql_trigger("decisions", "refuse_author", "INSERT", "ROW", "author")
+
+
+def independent_confirmations(dialect: str) -> Iterator[str]:
+    """Make the statements that keep whoever proposed a change of a loop from confirming or rejecting it."""
+    if dialect == "sqlite":
+        condition = (
+            "NEW.decision <> 'withdraw' AND EXISTS (SELECT 1 FROM loop_changes"
+            " WHERE id = NEW.change_id AND proposed_by = NEW.decided_by)"
+        )
+        message = "an author decides on their own change"
+        yield _sqlite_refusal("loop_change_decisions", "author", "INSERT", message, condition)
+    else:
+        yield from _postgresql_trigger("loop_change_decisions", "refuse_proposer", "INSERT", "ROW", "author")
 
 
 def head_moves_by_one(dialect: str) -> Iterator[str]:

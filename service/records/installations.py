@@ -15,13 +15,12 @@ from service.documents.canonical import canonical_bytes
 from service.documents.errors import FieldProblem
 from service.documents.installations import InstallationRequest
 from service.documents.writing import plain
-from service.records import comparison, history, lifecycle, loops, states, visibility
+from service.records import comparison, history, lifecycle, loops, present_content, states, visibility
 from service.records.content import (
     Difference,
     InstallationContent,
     Person,
     SignedContent,
-    read_content,
     read_installation,
 )
 from service.records.errors import FieldErrors
@@ -66,7 +65,7 @@ def install(
     """
     submission = visibility.submission(session, actor, submission_id)
     lifecycle.check_who("install", actor, visibility.authors(session, submission_id))
-    content = read_content(submission.content)
+    content = present_content.present(session, submission).read()
     _check_time(request, content, now)
     held = _nearest(content, request.as_left)
     earlier = _installations(session, submission_id)
@@ -164,7 +163,7 @@ def _as_found(
 
 
 def _read(session: Session, submission_id: str) -> SignedContent:
-    return read_content(session.get_one(Submission, submission_id).content)
+    return present_content.present(session, session.get_one(Submission, submission_id)).read()
 
 
 def _keep(

@@ -127,6 +127,11 @@ CLOCK: tuple[ClockRule, ...] = (
 REVIEW_OWED: frozenset[State] = frozenset(step.state for step in TABLE if step.action == "approve")
 """States in which a review is still owed."""
 
+APPROVED_TO_RUN: frozenset[State] = frozenset(
+    step.state for step in TABLE if (step.action, step.target) == ("install", "in_force")
+)
+"""States in which approved gains run, or are to be installed."""
+
 _STEPS = {(step.state, step.action): step for step in TABLE}
 
 

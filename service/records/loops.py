@@ -11,7 +11,7 @@ from datetime import datetime
 from hashlib import sha256
 from uuid import uuid4
 
-from sqlalchemy import Select, select
+from sqlalchemy import ColumnElement, Select, select
 from sqlalchemy.orm import Session, aliased
 
 from service.analysis.plant import Ranges
@@ -20,8 +20,8 @@ from service.documents.errors import FieldProblem
 from service.documents.loops import LoopReference, LoopRegistration, ModelVersion
 from service.documents.reading import read
 from service.documents.writing import plain
-from service.records import history
-from service.records.errors import AlreadyExists, FieldErrors, NotFound, StaleContent
+from service.records import history, protection
+from service.records.errors import AlreadyExists, FieldErrors, NotFound, SecondPersonNeeded, StaleContent
 from service.records.history import About
 from service.records.roles import Actor, require_area, require_role
 from service.records.tables.history import HistoryEvent
@@ -73,17 +73,17 @@ def change(
 ) -> LoopView:
     """Make a new revision of a loop. `revision` is the one that the change was made from.
 
-    Raises NotFound, NotAllowed, FieldErrors (site and tag stay), StaleContent.
+    Raises NotFound, NotAllowed, FieldErrors (site and tag stay), StaleContent, SecondPersonNeeded.
     """
-    loop, present = _found(session, actor, loop_id)
+    loop, present = found(session, actor, loop_id)
     check_may_change(actor)
-    if (document.site, document.tag) != (loop.site, loop.tag):
-        detail = "site and tag are what a loop is known by, and stay; another tag is another loop"
-        raise FieldErrors((FieldProblem("/site" if document.site != loop.site else "/tag", detail),))
-    _check_references(session, actor, document)
+    check_document(session, actor, loop, document)
     if revision != present.revision:
         raise StaleContent(f"the loop is at revision {present.revision} by now")
-    latest = _revision(loop.id, present.revision + 1, document)
+    reasons = protection.protected(read_loop(present), document)
+    if reasons:
+        raise SecondPersonNeeded(tuple((reason.field, reason.sentence) for reason in reasons))
+    latest = next_revision(loop, present, document)
     entry = history.append(
         session,
         kind="loop_changed",
@@ -96,9 +96,36 @@ def change(
     return _view(loop, latest, actor.name, entry)
 
 
+def check_document(session: Session, actor: Actor, loop: Loop, document: LoopRegistration) -> None:
+    """Raise FieldErrors where a document cannot be the next revision of this loop."""
+    if (document.site, document.tag) != (loop.site, loop.tag):
+        detail = "site and tag are what a loop is known by, and stay; another tag is another loop"
+        raise FieldErrors((FieldProblem("/site" if document.site != loop.site else "/tag", detail),))
+    _check_references(session, actor, document)
+
+
+def next_revision(loop: Loop, present: LoopRevision, document: LoopRegistration) -> LoopRevision:
+    """Make the row of the revision that follows on the present one."""
+    return _revision(loop.id, present.revision + 1, document)
+
+
+def retirement(session: Session, retired: LoopModel) -> LoopModel:
+    """Make the row of the model version from which on an operating point has no model in force."""
+    return LoopModel(
+        id=uuid4().hex,
+        loop_id=retired.loop_id,
+        version=len(_models(session, retired.loop_id)) + 1,
+        operating_point=retired.operating_point,
+        operating_point_key=retired.operating_point_key,
+        retired=True,
+        content=retired.content,
+        content_digest=retired.content_digest,
+    )
+
+
 def find(session: Session, actor: Actor, loop_id: str, revision: int | None = None) -> LoopView:
     """Return a loop at its present or an earlier revision. Raises NotFound."""
-    loop, present = _found(session, actor, loop_id)
+    loop, present = found(session, actor, loop_id)
     wanted = present if revision is None else session.get(LoopRevision, (loop_id, revision))
     if wanted is None:
         raise NotFound("there is no such revision")
@@ -115,7 +142,7 @@ def find_by_tag(session: Session, actor: Actor, site: str, tag: str) -> LoopView
 
 def revisions(session: Session, actor: Actor, loop_id: str) -> tuple[LoopView, ...]:
     """Return all revisions of a loop, latest first. Raises NotFound."""
-    loop, _ = _found(session, actor, loop_id)
+    loop, _ = found(session, actor, loop_id)
     query = select(LoopRevision).where(LoopRevision.loop_id == loop_id).order_by(LoopRevision.revision.desc())
     return tuple(view(session, loop, row) for row in session.execute(query).scalars())
 
@@ -127,7 +154,7 @@ def add_model(
 
     Raises NotFound, NotAllowed.
     """
-    loop, revision = _found(session, actor, loop_id)
+    loop, revision = found(session, actor, loop_id)
     check_may_change(actor)
     content = canonical_bytes(plain(document))
     row = LoopModel(
@@ -154,7 +181,7 @@ def add_model(
 
 def models(session: Session, actor: Actor, loop_id: str) -> tuple[ModelView, ...]:
     """Return all model versions of a loop, latest first. Raises NotFound."""
-    _found(session, actor, loop_id)
+    found(session, actor, loop_id)
     rows = _models(session, loop_id)
     in_force = {row.id for row in rows_in_force(rows)}
     return tuple(
@@ -215,11 +242,16 @@ def present(session: Session, loop_id: str) -> tuple[Loop, LoopRevision]:
 
 def present_revisions() -> Select[Loop]:
     """Select loops joined with their present revision."""
+    return select(Loop).join(LoopRevision, LoopRevision.loop_id == Loop.id).where(is_present())
+
+
+def is_present() -> ColumnElement[bool]:
+    """Return the condition that a selected revision is its loop's present one."""
     later = aliased(LoopRevision)
     superseded = select(later.loop_id).where(
         later.loop_id == LoopRevision.loop_id, later.revision > LoopRevision.revision
     )
-    return select(Loop).join(LoopRevision, LoopRevision.loop_id == Loop.id).where(~superseded.exists())
+    return ~superseded.exists()
 
 
 def view(session: Session, loop: Loop, revision: LoopRevision) -> LoopView:
@@ -233,7 +265,8 @@ def written_by(session: Session, event_number: int) -> tuple[str, EntryReference
     return event.actor, EntryReference(number=event.number, digest=event.digest, time=event.time)
 
 
-def _found(session: Session, actor: Actor, loop_id: str) -> tuple[Loop, LoopRevision]:
+def found(session: Session, actor: Actor, loop_id: str) -> tuple[Loop, LoopRevision]:
+    """Return a loop in the actor's areas with its present revision. Raises NotFound."""
     if session.get(Loop, loop_id) is None:
         raise NotFound("there is no such loop")
     loop, revision = present(session, loop_id)
@@ -301,6 +334,7 @@ def _model_view(row: LoopModel, in_force: bool, added_by: str, entry: EntryRefer
         operating_point=row.operating_point,
         model=read_model(row),
         in_force=in_force,
+        retired=row.retired,
         added_by=added_by,
         entry=entry,
     )

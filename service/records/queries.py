@@ -6,20 +6,20 @@ import json
 from dataclasses import dataclass
 from datetime import datetime
 
-from sqlalchemy import ColumnElement, Select, and_, case, func, or_, select, tuple_
+from sqlalchemy import ColumnElement, Select, and_, case, func, not_, or_, select, tuple_
 from sqlalchemy.orm import Session, aliased
 
 from service.analysis.results import Curves
 from service.documents.reading import read
-from service.records import lifecycle, states, submission_views, visibility
+from service.records import lifecycle, present_content, rechecks, states, submission_views, visibility
 from service.records import loops as loop_records
-from service.records.content import read_content
 from service.records.errors import Conflict
 from service.records.history_queries import HistoryFilter as HistoryFilter
 from service.records.history_queries import entry as entry
 from service.records.history_queries import history as history
 from service.records.lifecycle import State
 from service.records.roles import Actor
+from service.records.tables.changes import SubmissionContent
 from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopRevision
 from service.records.tables.submissions import Submission, SubmissionRecomputation, SubmissionState
@@ -55,6 +55,7 @@ class SubmissionFilter:
     site: str | None = None
     tag: str | None = None
     loop_id: str | None = None
+    recheck_due: bool | None = None
 
 
 def loops(
@@ -94,7 +95,7 @@ def submissions(
     limit: int = 50,
 ) -> Page[SubmissionSummary]:
     """Submissions, latest first."""
-    query = _lines(actor).where(*_submission_conditions(wanted, now))
+    query = _lines(actor, now).where(*_submission_conditions(wanted, now))
     query = query.order_by(Submission.event_number.desc()).limit(limit + 1)
     if after is not None:
         query = query.where(Submission.event_number < int(after))
@@ -109,7 +110,7 @@ def awaiting_review(
     """Submissions whose review is owed: those that run already first, then the oldest first."""
     wanted = SubmissionFilter(states=lifecycle.REVIEW_OWED)
     rank = case((Submission.kind.in_(sorted(lifecycle.IN_FORCE_FROM_THE_START)), 0), else_=1)
-    query = _lines(actor).where(*_submission_conditions(wanted, now))
+    query = _lines(actor, now).where(*_submission_conditions(wanted, now))
     query = query.order_by(rank, Submission.event_number).limit(limit + 1)
     if after is not None:
         first, _, number = after.partition(SEPARATOR)
@@ -122,15 +123,19 @@ def awaiting_review(
 
 def content_bytes(session: Session, actor: Actor, submission_id: str) -> bytes:
     """The exact canonical bytes that `content_digest` is the SHA-256 of. Raises NotFound."""
-    return visibility.submission(session, actor, submission_id).content
+    row = visibility.submission(session, actor, submission_id)
+    return present_content.present(session, row).kept
 
 
 def curves(session: Session, actor: Actor, submission_id: str) -> tuple[CurvesView, ...]:
     """The stored curves of a submission, in the order of its recomputations. Raises NotFound."""
-    visibility.submission(session, actor, submission_id)
+    row = visibility.submission(session, actor, submission_id)
+    first = present_content.present(session, row).first_recomputation
     query = (
         select(SubmissionRecomputation)
-        .where(SubmissionRecomputation.submission_id == submission_id)
+        .where(
+            SubmissionRecomputation.submission_id == submission_id, SubmissionRecomputation.ordinal >= first
+        )
         .order_by(SubmissionRecomputation.ordinal)
     )
     return tuple(
@@ -152,14 +157,16 @@ def gains_in_force(session: Session, actor: Actor, loop_id: str, now: datetime) 
     if running is None:
         return None
     row = session.get_one(Submission, running.submission_id)
-    content = read_content(row.content)
+    present = present_content.present(session, row)
+    content, state = present.read(), states.as_read(session, row, now)
     return GainsInForce(
         submission_id=row.id,
-        content_digest=row.content_digest,
+        content_digest=present.digest,
         kind=content.kind,
-        state=states.as_read(session, row, now),
+        state=state,
         since=running.since,
         gain_sets=content.gain_sets,
+        recheck_due=rechecks.due(session, row, state),
         entry=loop_records.written_by(session, running.event_number)[1],
     )
 
@@ -170,8 +177,8 @@ def compare(session: Session, actor: Actor, submission_id: str, other_id: str) -
     other = visibility.submission(session, actor, other_id)
     if this.loop_id != other.loop_id:
         raise Conflict("these are gains of two loops")
-    before = read_content(other.content).gain_sets
-    return submission_views.comparisons(read_content(this.content), before)
+    before = present_content.present(session, other).read().gain_sets
+    return submission_views.comparisons(present_content.present(session, this).read(), before)
 
 
 def _loop_conditions(wanted: LoopFilter) -> list[ColumnElement[bool]]:
@@ -189,15 +196,29 @@ def _loop_conditions(wanted: LoopFilter) -> list[ColumnElement[bool]]:
     return conditions
 
 
-def _lines(actor: Actor) -> Select[Submission, SubmissionState, Loop, LoopRevision, HistoryEvent]:
-    """Select submissions in sight, each with its last stored state, loop, present revision and entry."""
+def _lines(
+    actor: Actor, now: datetime
+) -> Select[Submission, SubmissionState, Loop, LoopRevision, HistoryEvent, SubmissionContent, bool]:
+    """Select submissions in sight, each with all that a line of a list is made of."""
     later = aliased(SubmissionState)
     not_last = select(later.submission_id).where(
         later.submission_id == SubmissionState.submission_id, later.ordinal > SubmissionState.ordinal
     )
+    newer = aliased(SubmissionContent)
+    replaced = select(newer.version).where(
+        newer.submission_id == SubmissionContent.submission_id, newer.version > SubmissionContent.version
+    )
     loop = loop_records.present_revisions().with_only_columns(Loop.id, LoopRevision.revision).subquery()
     return (
-        select(Submission, SubmissionState, Loop, LoopRevision, HistoryEvent)
+        select(
+            Submission,
+            SubmissionState,
+            Loop,
+            LoopRevision,
+            HistoryEvent,
+            SubmissionContent,
+            rechecks.is_due(_reads_as(now)),
+        )
         .join(SubmissionState, SubmissionState.submission_id == Submission.id)
         .join(Loop, Loop.id == Submission.loop_id)
         .join(loop, loop.c.id == Submission.loop_id)
@@ -206,6 +227,10 @@ def _lines(actor: Actor) -> Select[Submission, SubmissionState, Loop, LoopRevisi
             and_(LoopRevision.loop_id == Loop.id, LoopRevision.revision == loop.c.revision),
         )
         .join(HistoryEvent, HistoryEvent.number == Submission.event_number)
+        .outerjoin(
+            SubmissionContent,
+            and_(SubmissionContent.submission_id == Submission.id, ~replaced.exists()),
+        )
         .where(~not_last.exists(), visibility.in_sight(actor))
     )
 
@@ -218,6 +243,9 @@ def _submission_conditions(wanted: SubmissionFilter, now: datetime) -> list[Colu
         conditions.append(Loop.site_key == loop_records.matching_key(wanted.site))
     if wanted.tag is not None:
         conditions.append(Loop.tag_key == loop_records.matching_key(wanted.tag))
+    if wanted.recheck_due is not None:
+        due = rechecks.is_due(_reads_as(now))
+        conditions.append(due if wanted.recheck_due else not_(due))
     if wanted.loop_id is not None:
         conditions.append(Loop.id == wanted.loop_id)
     return conditions

@@ -6,6 +6,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, replace
 from hashlib import sha256
+from typing import Literal
 
 from service.analysis.controller import Scan
 from service.analysis.recomputation import recompute
@@ -14,9 +15,10 @@ from service.documents.loops import LoopRegistration
 from service.documents.recomputations import judged
 from service.documents.writing import plain
 from service.judgement.claims import Claims
-from service.judgement.criteria import Criteria, past_hard_floors, service_floors
-from service.records import loops
+from service.judgement.criteria import past_hard_floors, service_floors
+from service.records import gain_sets, loops
 from service.records.content import SignedGains, SignedModel, SignedRecomputation
+from service.records.tables.submissions import SubmissionRecomputation
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -44,7 +46,7 @@ def recomputed(
     )
     scan = gain_set.controller.scan
     interval_s = scan.interval_s if isinstance(scan, Scan) else None
-    criteria = own_criteria(loop) or service_floors(recomputation, interval_s)
+    criteria = loop.own_criteria or service_floors(recomputation, interval_s)
     answer = judged(recomputation, criteria, claims)
     curves = None if answer.curves is None else canonical_bytes(plain(answer.curves))
     signed = SignedRecomputation(
@@ -59,6 +61,40 @@ def recomputed(
     return Recomputed(signed=signed, curves=curves)
 
 
-def own_criteria(loop: LoopRegistration) -> Criteria | None:
-    """Return the loop's own limits; an empty set of limits is none."""
-    return None if loop.criteria == Criteria() else loop.criteria
+def everywhere(
+    loop: LoopRegistration,
+    sets: tuple[SignedGains, ...],
+    models: tuple[SignedModel, ...],
+    claims: Claims | None,
+) -> tuple[Recomputed, ...]:
+    """Recompute every gain set with each model that it is judged by.
+
+    Raises FieldError as `recomputed` does.
+    """
+    return tuple(
+        recomputed(loop, model, index, gain_set, claims)
+        for index, gain_set in enumerate(sets)
+        for model in gain_sets.models_for(gain_set, models)
+    )
+
+
+def rows(submission_id: str, first: int, made: tuple[Recomputed, ...]) -> tuple[SubmissionRecomputation, ...]:
+    """Make the rows of recomputations, their ordinals counted from `first`."""
+    return tuple(
+        SubmissionRecomputation(
+            submission_id=submission_id,
+            ordinal=first + place,
+            model_id=each.signed.model_id,
+            gain_set=each.signed.gain_set,
+            operating_point=each.signed.operating_point,
+            verdict=each.signed.answer.verdict,
+            curves=each.curves,
+            curves_digest=each.signed.curves_digest,
+        )
+        for place, each in enumerate(made)
+    )
+
+
+def criteria_source(loop: LoopRegistration) -> Literal["loop", "service_floors"]:
+    """Say whose limits a loop is held against."""
+    return "loop" if loop.own_criteria else "service_floors"

@@ -7,7 +7,7 @@ from datetime import datetime
 from typing import cast
 
 from sqlalchemy import select
-from sqlalchemy.orm import Session
+from sqlalchemy.orm import Session, aliased
 
 from service.records import lifecycle
 from service.records.lifecycle import Action, Limits, State
@@ -69,6 +69,21 @@ def next_row(session: Session, submission: Submission, action: Action, now: date
     return SubmissionState(
         submission_id=submission.id, ordinal=last.ordinal + 1, action=action, state=step.target
     )
+
+
+def of_loop(session: Session, loop_id: str, now: datetime) -> dict[str, State]:
+    """Return the state of every submission of a loop as it reads at `now`, earliest first."""
+    later = aliased(SubmissionState)
+    not_last = select(later.ordinal).where(
+        later.submission_id == SubmissionState.submission_id, later.ordinal > SubmissionState.ordinal
+    )
+    query = (
+        select(Submission, SubmissionState)
+        .join(SubmissionState, SubmissionState.submission_id == Submission.id)
+        .where(Submission.loop_id == loop_id, ~not_last.exists())
+        .order_by(Submission.event_number)
+    )
+    return {row.id: read_state(stored, row, now) for row, stored in session.execute(query)}
 
 
 def running(session: Session, loop_id: str) -> GainsComingIntoForce | None:

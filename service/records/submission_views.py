@@ -15,6 +15,8 @@ from service.records import (
     comparison,
     lifecycle,
     loops,
+    present_content,
+    rechecks,
     states,
     visibility,
 )
@@ -22,12 +24,12 @@ from service.records.content import (
     Person,
     SignedContent,
     SignedGains,
-    read_content,
     read_decision,
     read_installation,
 )
 from service.records.lifecycle import Action, Kind, State
 from service.records.roles import Actor
+from service.records.tables.changes import SubmissionContent
 from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopRevision
 from service.records.tables.submissions import Decision, Installation, Submission, SubmissionState
@@ -43,7 +45,8 @@ from service.records.views import (
 
 def whole(session: Session, actor: Actor, row: Submission, now: datetime) -> SubmissionView:
     """Return a submission with everything that belongs to it, as `actor` sees it at `now`."""
-    content = read_content(row.content)
+    present = present_content.present(session, row)
+    content = present.read()
     stored = states.stored(session, row.id)
     state = states.read_state(stored, row, now)
     due_at = lifecycle.review_due_at(state, content.kind, row.submitted_at)
@@ -52,9 +55,9 @@ def whole(session: Session, actor: Actor, row: Submission, now: datetime) -> Sub
         id=row.id,
         state=state,
         content=content,
-        content_digest=row.content_digest,
+        content_digest=present.digest,
         area=loops.present(session, row.loop_id)[1].area,
-        verdict=cast(Verdict | None, row.verdict),
+        verdict=present.verdict,
         approvals_needed=approvability.approvals_needed(content),
         deviations_needed=approvability.deviations_needed(content),
         hindrances=approvability.hindrances(content),
@@ -64,7 +67,8 @@ def whole(session: Session, actor: Actor, row: Submission, now: datetime) -> Sub
         comparisons=comparisons(content, content.gains_in_force.gain_sets if content.gains_in_force else ()),
         review_due_at=due_at,
         overdue=states.is_overdue(stored, row, due_at, now),
-        open_actions=_open_actions(session, actor, row, state),
+        recheck_due=rechecks.due(session, row, state),
+        open_actions=_open_actions(session, actor, row, state, present.digest),
         entry=_entry(session, row.event_number),
     )
 
@@ -76,8 +80,11 @@ def line(
     loop: Loop,
     revision: LoopRevision,
     event: HistoryEvent,
+    again: SubmissionContent | None,
+    recheck_due: bool,
 ) -> SubmissionSummary:
-    """Return one line of a list, from columns alone."""
+    """Return one line of a list, from columns alone; `again` is what was recomputed last after a change."""
+    present = submission if again is None else again
     state = states.read_state(stored, submission, now)
     due_at = lifecycle.review_due_at(state, cast(Kind, submission.kind), submission.submitted_at)
     return SubmissionSummary(
@@ -90,12 +97,13 @@ def line(
         kind=cast(Kind, submission.kind),
         state=state,
         reason=submission.reason,
-        verdict=cast(Verdict | None, submission.verdict),
+        verdict=cast(Verdict | None, present.verdict),
         submitted_by=Person(name=submission.submitted_by_name, full_name=submission.submitted_by_full_name),
         submitted_at=submission.submitted_at,
         review_due_at=due_at,
         overdue=states.is_overdue(stored, submission, due_at, now),
-        content_digest=submission.content_digest,
+        recheck_due=recheck_due,
+        content_digest=present.content_digest,
         entry=EntryReference(number=event.number, digest=event.digest, time=event.time),
     )
 
@@ -116,13 +124,16 @@ def comparisons(content: SignedContent, before: tuple[SignedGains, ...]) -> tupl
     )
 
 
-def _open_actions(session: Session, actor: Actor, row: Submission, state: State) -> tuple[Action, ...]:
+def _open_actions(
+    session: Session, actor: Actor, row: Submission, state: State, digest: str
+) -> tuple[Action, ...]:
     """What may be done next; a first approval of two is an approval to whoever gives it."""
     found = lifecycle.actions_open_to(state, actor, visibility.authors(session, row.id))
     query = select(Decision.id).where(
         Decision.submission_id == row.id,
         Decision.decision == "approve",
         Decision.decided_by == actor.account_id,
+        Decision.submission_digest == digest,
     )
     signed: frozenset[Action] = frozenset({"approve"}) if session.execute(query).first() else frozenset()
     hidden = signed | {"approve_first", "install_otherwise"}

@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 from datetime import datetime
 from hashlib import sha256
-from typing import Literal
 from uuid import uuid4
 
 from sqlalchemy import select
@@ -17,7 +16,17 @@ from service.documents.errors import FieldProblem, pointer
 from service.documents.loops import LoopRegistration
 from service.documents.submissions import SubmissionRequest
 from service.documents.writing import plain
-from service.records import approvability, gain_sets, history, lifecycle, loops, queries, recomputing, states
+from service.records import (
+    approvability,
+    gain_sets,
+    history,
+    lifecycle,
+    loops,
+    present_content,
+    queries,
+    recomputing,
+    states,
+)
 from service.records.basis import Basis, present_basis
 from service.records.content import (
     Person,
@@ -36,7 +45,6 @@ from service.records.tables.columns import Base
 from service.records.tables.submissions import (
     Submission,
     SubmissionAuthor,
-    SubmissionRecomputation,
     SubmissionState,
 )
 from service.records.views import LoopView, SubmissionView
@@ -52,11 +60,14 @@ class PreparedSubmission:
     authors: tuple[Account, ...]
     """Whoever prepared it."""
     models: tuple[SignedModel, ...]
-    recomputations: tuple[SignedRecomputation, ...]
-    curves: tuple[bytes | None, ...]
-    """Canonical bytes, one a recomputation."""
+    recomputed: tuple[Recomputed, ...]
     gains_in_force: SignedGainsInForce | None
     basis: Basis
+
+    @property
+    def recomputations(self) -> tuple[SignedRecomputation, ...]:
+        """The recomputations as they are signed."""
+        return tuple(each.signed for each in self.recomputed)
 
 
 def check_may_submit(actor: Actor) -> None:
@@ -79,7 +90,7 @@ def prepare(session: Session, actor: Actor, request: SubmissionRequest, now: dat
     )
     authors = _authors(session, actor, request)
     _check_fields(session, request, loop, sets, models, now)
-    in_force = _gains_in_force(session, loop.id)
+    in_force = present_content.gains_in_force(session, loop.id)
     _check_baseline(request, loop.loop, sets, in_force)
     recomputed = tuple(
         _recompute(loop.loop, model, index, sets[index], request)
@@ -92,8 +103,7 @@ def prepare(session: Session, actor: Actor, request: SubmissionRequest, now: dat
         gain_sets=sets,
         authors=authors,
         models=models,
-        recomputations=tuple(entry.signed for entry in recomputed),
-        curves=tuple(entry.curves for entry in recomputed),
+        recomputed=recomputed,
         gains_in_force=in_force,
         basis=present_basis(session, loop.id),
     )
@@ -126,7 +136,7 @@ def submit(session: Session, actor: Actor, prepared: PreparedSubmission, now: da
         rows=(
             submission,
             *_author_rows(actor, prepared, submission.id),
-            *_recomputation_rows(prepared, submission.id),
+            *recomputing.rows(submission.id, 0, prepared.recomputed),
             states.first(submission.id, state),
             *outcome.rows,
         ),
@@ -192,18 +202,6 @@ def _was_approved(session: Session, loop: LoopView, sets: tuple[SignedGains, ...
     return any(gain_sets.same(content.gain_sets, sets, loops.ranges(loop.loop)) for content in contents)
 
 
-def _gains_in_force(session: Session, loop_id: str) -> SignedGainsInForce | None:
-    row = states.running(session, loop_id)
-    if row is None:
-        return None
-    submission = session.get_one(Submission, row.submission_id)
-    return SignedGainsInForce(
-        submission_id=submission.id,
-        content_digest=submission.content_digest,
-        gain_sets=read_content(submission.content).gain_sets,
-    )
-
-
 def _check_baseline(
     request: SubmissionRequest,
     loop: LoopRegistration,
@@ -241,9 +239,6 @@ def _problem_of_recomputation(
 
 def _content(actor: Actor, prepared: PreparedSubmission, now: datetime) -> SignedContent:
     request, loop = prepared.request, prepared.loop
-    source: Literal["loop", "service_floors"] = (
-        "loop" if recomputing.own_criteria(loop.loop) else "service_floors"
-    )
     return SignedContent(
         submission_id=uuid4().hex,
         loop_id=loop.id,
@@ -261,7 +256,7 @@ def _content(actor: Actor, prepared: PreparedSubmission, now: datetime) -> Signe
         temporary_until=request.temporary_until,
         install_by=request.install_by,
         models=prepared.models,
-        criteria_source=source,
+        criteria_source=recomputing.criteria_source(loop.loop),
         criteria=approvability.worst_criteria(prepared.recomputations),
         recomputations=prepared.recomputations,
         gains_in_force=prepared.gains_in_force,
@@ -292,24 +287,6 @@ def _submission(
 def _author_rows(actor: Actor, prepared: PreparedSubmission, submission_id: str) -> tuple[Base, ...]:
     ids = dict.fromkeys((actor.account_id, *(row.id for row in prepared.authors)))
     return tuple(SubmissionAuthor(submission_id=submission_id, account_id=account_id) for account_id in ids)
-
-
-def _recomputation_rows(prepared: PreparedSubmission, submission_id: str) -> tuple[Base, ...]:
-    return tuple(
-        SubmissionRecomputation(
-            submission_id=submission_id,
-            ordinal=ordinal,
-            model_id=recomputation.model_id,
-            gain_set=recomputation.gain_set,
-            operating_point=recomputation.operating_point,
-            verdict=recomputation.answer.verdict,
-            curves=curves,
-            curves_digest=recomputation.curves_digest,
-        )
-        for ordinal, (recomputation, curves) in enumerate(
-            zip(prepared.recomputations, prepared.curves, strict=True)
-        )
-    )
 
 
 def _told(

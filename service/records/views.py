@@ -9,9 +9,12 @@ from typing import Generic, Literal, TypeVar
 from service.analysis.results import Curves, Verdict
 from service.documents.loops import LoopRegistration, ModelVersion
 from service.documents.strict_json import Plain
+from service.records.change_lifecycle import ChangeAction, ChangeState
 from service.records.content import (
+    ChangeDecisionContent,
     DecisionContent,
     InstallationContent,
+    LoopChangeContent,
     Person,
     SignedContent,
     SignedGains,
@@ -91,7 +94,33 @@ class ModelView:
     operating_point: str
     model: ModelVersion
     in_force: bool
+    retired: bool
+    """From this version on the operating point has no model in force."""
     added_by: str
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class ChangeDecisionView:
+    """The signature that a change of a loop was decided with."""
+
+    decision: ChangeDecisionContent
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class ChangeView:
+    """A change of what approvals rest on, in its state at the time it was read."""
+
+    id: str
+    state: ChangeState
+    content: LoopChangeContent
+    content_digest: str
+    area: str
+    """The loop's present area."""
+    decision: ChangeDecisionView | None
+    open_decisions: tuple[ChangeAction, ...]
+    """What the actor who read it may decide."""
     entry: EntryReference
 
 
@@ -112,6 +141,15 @@ class InstallationView:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
+class RecheckView:
+    """That gains are due for a recheck: the change that altered what they were approved on, in sentences."""
+
+    change_id: str
+    sentences: tuple[str, ...]
+    entry: EntryReference
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
 class GainsInForce:
     """The gains that run in the controller as far as is recorded, whatever has become of their approval.
 
@@ -124,6 +162,7 @@ class GainsInForce:
     state: State
     since: datetime
     gain_sets: tuple[SignedGains, ...]
+    recheck_due: RecheckView | None
     entry: EntryReference
 
 
@@ -181,6 +220,8 @@ class SubmissionSummary:
     submitted_at: datetime
     review_due_at: datetime | None
     overdue: bool
+    recheck_due: bool
+    """What the gains were approved on has been changed since."""
     content_digest: str
     entry: EntryReference
 
@@ -211,6 +252,8 @@ class SubmissionView:
     review_due_at: datetime | None
     overdue: bool
     """An emergency change whose review is owed past its time, or a temporary one past its own."""
+    recheck_due: RecheckView | None
+    """The change of what these gains were approved on; None where there is none, or they do not run."""
     open_actions: tuple[Action, ...]
     """What the actor who read it may do next: `approve`, `reject`, `withdraw`, `revoke`, `install`."""
     entry: EntryReference

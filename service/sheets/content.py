@@ -14,7 +14,7 @@ from service.documents.loops import LoopRegistration
 from service.figures.responses import Response, stored_responses
 from service.judgement.digits import as_entered
 from service.judgement.wording import criterion_sentence
-from service.records.content import SignedContent, SignedModel, SignedRecomputation
+from service.records.content import DecisionContent, SignedContent, SignedModel, SignedRecomputation
 from service.records.lifecycle import REVIEW_OWED
 from service.records.views import CurvesView, EntryReference, SubmissionView
 from service.sheets import plants
@@ -120,7 +120,7 @@ def content_of(
         ),
         hard_limits=tuple(_hard_limits(signed.recomputations)),
         models=tuple(_model(model) for model in signed.models),
-        signatures=tuple(signature(decision) for decision in view.decisions),
+        signatures=tuple(signature(decision, view.content_digest) for decision in view.decisions),
         no_signature="" if view.decisions else "Nobody has signed this record.",
         installations=tuple(installation(each) for each in view.installations),
         version=tuple(_version(view)),
@@ -190,14 +190,22 @@ def _conditions(view: SubmissionView) -> Iterator[str]:
     if signed.temporary_until:
         yield f"TEMPORARY: valid until {utc(signed.temporary_until)}."
     if view.approvals_needed > 1 and view.state in REVIEW_OWED:
-        given = sum(decision.decision.decision == "approve" for decision in view.decisions)
+        given = sum(_approves(decision.decision, view) for decision in view.decisions)
         yield f"{view.approvals_needed} approvals by different people are needed, {given} given."
     if view.review_due_at:
         yield f"The review is due at {utc(view.review_due_at)}."
     if view.overdue:
         yield "OVERDUE."
+    if view.recheck_due:
+        told = "; ".join(view.recheck_due.sentences)
+        yield f"DUE FOR A RECHECK since change {view.recheck_due.change_id} of the loop: {told}."
     if view.changed_basis and view.state in REVIEW_OWED:
         yield f"Changed since this was recomputed: {'; '.join(view.changed_basis)}."
+
+
+def _approves(decision: DecisionContent, view: SubmissionView) -> bool:
+    # an approval of what has been recomputed since is no approval of these results
+    return (decision.decision, decision.content_digest) == ("approve", view.content_digest)
 
 
 def _loop(loop: LoopRegistration, revision: int) -> Iterator[Told]:
@@ -223,6 +231,10 @@ def _request(signed: SignedContent) -> Iterator[Told]:
     yield Told(name=role, value=f"{named(signed.submitted_by)}, {utc(signed.submitted_at)}")
     if signed.prepared_by and not alone:
         yield Told(name="Prepared by", value=", ".join(named(person) for person in signed.prepared_by))
+    if signed.recomputed_again:
+        again = signed.recomputed_again
+        told = f"{utc(again.recomputed_at)}, after change {again.change_id} of the loop"
+        yield Told(name="Recomputed again", value=told)
     if signed.tool:
         yield Told(name="Tool", value=f"{signed.tool.name}, version {signed.tool.version}")
 

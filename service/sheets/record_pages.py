@@ -167,6 +167,8 @@ def _signatures(content: SheetContent) -> Iterator[Flowable]:
 def _signature(signature: Signature) -> Iterator[Flowable]:
     yield said(signature.heading, styles.SUBHEADING)
     yield joined([("Meaning", signature.meaning), ("Reason", signature.reason)])
+    if signature.on_earlier_results:
+        yield said(signature.on_earlier_results, styles.STRONG)
     for deviation in signature.deviations:
         yield named(f"Deviation, {deviation.name}", deviation.value)
     yield said(signature.entry, styles.SMALL)

@@ -22,6 +22,9 @@ DECISIONS = {
 }
 
 
+EARLIER = "Signed on the content as it was before it was recomputed; it does not count for the present one."
+
+
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Signature:
     """One signature as it was given, its reason and deviations, and its own entry of the history."""
@@ -30,13 +33,17 @@ class Signature:
     meaning: str
     reason: str
     deviations: tuple[Told, ...]
+    on_earlier_results: str
+    """A sentence where the content was recomputed after this was signed, and so is another; else empty."""
     entry: str
 
 
-def signature(view: DecisionView) -> Signature:
-    """Tell a signature."""
+def signature(view: DecisionView, content_digest: str) -> Signature:
+    """Tell a signature; `content_digest` is that of the present content."""
     decision = view.decision
+    earlier = decision.content_digest != content_digest
     return Signature(
+        on_earlier_results=f"{EARLIER} Its digest: {decision.content_digest}." if earlier else "",
         heading=f"{DECISIONS[decision.decision]} by {named(decision.signed_by)}, {utc(decision.signed_at)}",
         meaning=decision.meaning,
         reason=decision.reason,

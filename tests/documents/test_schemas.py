@@ -9,6 +9,7 @@ from typing import Any
 import jsonschema_rs
 import pytest
 
+from service.documents.changes import LoopChangeRequest
 from service.documents.errors import InvalidDocument
 from service.documents.examples import EXAMPLES
 from service.documents.reading import read
@@ -54,8 +55,8 @@ def changes(example: dict[str, Any]) -> Iterator[tuple[str, object]]:
             yield from ((f"/{name}/{inner}", ABSENT) for inner in part)
 
 
-JOINT_RULES = [(SubmissionRequest, "/controller", ABSENT)]
-"""A controller or gain sets: what joins several fields is said by the reader alone."""
+JOINT_RULES = [(SubmissionRequest, "/controller", ABSENT), (LoopChangeRequest, "/loop", ABSENT)]
+"""One field or another in its place: what joins several fields is said by the reader alone."""
 
 CHANGES = [
     (document_type, pointer, value)

@@ -9,17 +9,25 @@ from typing import Any
 from argon2 import PasswordHasher
 from sqlalchemy import Table, func, select
 
+from service.documents.changes import ChangeDecisionRequest, LoopChangeRequest
 from service.documents.decisions import DecisionRequest, Deviation
 from service.documents.installations import InstallationRequest
 from service.documents.loops import LoopRegistration, ModelVersion
 from service.documents.reading import read
 from service.documents.submissions import SubmissionRequest
-from service.records import accounts, decisions, installations, loops, queries, submissions
+from service.records import accounts, changes, decisions, installations, loops, queries, submissions
 from service.records.accounts import NewAccount
 from service.records.database import Database
 from service.records.roles import CONSOLE, Actor, Role
 from service.records.tables import collection
-from service.records.views import DecisionView, InstallationView, LoopView, ModelView, SubmissionView
+from service.records.views import (
+    ChangeView,
+    DecisionView,
+    InstallationView,
+    LoopView,
+    ModelView,
+    SubmissionView,
+)
 
 CHEAP = PasswordHasher(time_cost=1, memory_cost=8, parallelism=1)
 """The real Argon2id, with a cost at which a test does not wait."""
@@ -54,6 +62,10 @@ def gains(proportional: float = 1.5, **changes: object) -> dict[str, Any]:
     """A complete controller; the plant below is stable with a gain below some 8."""
     term = GAINS["proportional"] | {"value": proportional, "displayed": f"{proportional:.2f}"}
     return GAINS | {"proportional": term} | changes
+
+
+WIDER = {"low": 0.0, "high": 60.0, "unit": "m3/h"}
+"""Another range of the PV than the one below."""
 
 
 def registration(**changes: object) -> LoopRegistration:
@@ -176,6 +188,43 @@ class Store:
     def read(self, submission: SubmissionView, person: str = "reviewer") -> SubmissionView:
         with self.database.reading() as session:
             return queries.submission(session, self.actor(person), submission.id, self.clock())
+
+    def propose(
+        self,
+        loop: LoopView,
+        person: str = "submitter",
+        revision: int = 1,
+        retire: str | None = None,
+        **changed: Any,
+    ) -> ChangeView:
+        request = LoopChangeRequest(
+            revision=revision,
+            reason="the transmitter was ranged anew",
+            loop=None if retire else registration(**(changed or {"pv": WIDER})),
+            retire_operating_point=retire,
+        )
+        with self.database.writing() as session:
+            return changes.propose(session, self.actor(person), loop.id, request, self.clock())
+
+    def prepare_decision(
+        self, change: ChangeView, decision: str = "confirm", person: str = "reviewer", **changed: Any
+    ) -> changes.PreparedDecision:
+        document = {
+            "decision": decision,
+            "reason": "read against the data sheet",
+            "content_digest": change.content_digest,
+            "password": password_of(person),
+        }
+        request = read(ChangeDecisionRequest, document | changed)
+        with self.database.reading() as session:
+            return changes.prepare(session, self.actor(person), change.id, request, self.clock())
+
+    def decide_change(
+        self, change: ChangeView, decision: str = "confirm", person: str = "reviewer", **changed: Any
+    ) -> ChangeView:
+        prepared = self.prepare_decision(change, decision, person, **changed)
+        with self.database.writing() as session:
+            return changes.decide(session, self.actor(person), change.id, prepared, self.clock())
 
     def events(self) -> list[str]:
         """The kinds of all entries, in order."""

@@ -11,6 +11,7 @@ import pytest
 from sqlalchemy.exc import IntegrityError
 
 from service.documents.decisions import Deviation
+from service.documents.loops import LoopRegistration
 from service.records import accounts, decisions, loops, queries
 from service.records.errors import (
     BasisChanged,
@@ -235,17 +236,20 @@ def test_without_a_model_nothing_is_approved(store: Store) -> None:
         store.approve(submission)
 
 
-def _change_loop(store: Store, loop: LoopView) -> None:
-    with store.database.writing() as session:
-        loops.change(
-            session, store.actor("submitter"), loop.id, registration(description="other"), 1, store.clock()
-        )
+LIMITS = {"gain_margin_min": 1.5}
 
 
-def _change_criteria(store: Store, loop: LoopView) -> None:
-    changed = registration(criteria={"gain_margin_min": 1.5})
+def _change(store: Store, loop: LoopView, changed: LoopRegistration) -> None:
     with store.database.writing() as session:
         loops.change(session, store.actor("submitter"), loop.id, changed, 1, store.clock())
+
+
+def _change_loop(store: Store, loop: LoopView) -> None:
+    _change(store, loop, registration(description="other", criteria=LIMITS))
+
+
+def _tighten_criteria(store: Store, loop: LoopView) -> None:
+    _change(store, loop, registration(criteria=LIMITS | {"phase_margin_deg_min": 20.0}))
 
 
 def _change_models(store: Store, loop: LoopView) -> None:
@@ -260,14 +264,16 @@ def _change_gains_in_force(store: Store, loop: LoopView) -> None:
     ("change", "named"),
     [
         (_change_loop, "the loop's own data"),
-        (_change_criteria, "the criteria"),
+        (_tighten_criteria, "the criteria"),
         (_change_models, "the plant models"),
         (_change_gains_in_force, "the gains in force"),
     ],
 )
 def test_what_was_recomputed_on_another_basis_is_not_approved(
-    store: Store, loop: LoopView, change: Callable[[Store, LoopView], None], named: str
+    store: Store, change: Callable[[Store, LoopView], None], named: str
 ) -> None:
+    loop = store.register(criteria=LIMITS)
+    store.add_model(loop)
     submission = store.submit()
     change(store, loop)
     assert store.read(submission).changed_basis == (named,)

@@ -10,13 +10,14 @@ from sqlalchemy import Engine, event
 from sqlalchemy.exc import OperationalError
 from sqlalchemy.orm import Session
 
-from service.records import accounts, decisions, idempotency, kept_sheets, loops, submissions, tokens
+from service.documents.changes import LoopChangeRequest
+from service.records import accounts, changes, decisions, idempotency, kept_sheets, loops, submissions, tokens
 from service.records.accounts import NewAccount
 from service.records.errors import WrongPassword
 from service.records.idempotency import KeptAnswer
 from service.records.roles import CONSOLE
 from service.verification.verifier import verify
-from tests.records.store import Store, gains, model_version, registration
+from tests.records.store import WIDER, Store, gains, model_version, registration
 
 Change = Callable[[Session], object]
 MOST_STATEMENTS = 200
@@ -31,6 +32,22 @@ def _change_loop(store: Store) -> Change:
     loop, actor = store.register(), store.actor("submitter")
     changed = registration(description="other")
     return lambda session: loops.change(session, actor, loop.id, changed, 1, store.clock())
+
+
+def _propose(store: Store) -> Change:
+    loop, actor = store.register(), store.actor("submitter")
+    request = LoopChangeRequest(revision=1, reason="ranged anew", loop=registration(pv=WIDER))
+    return lambda session: changes.propose(session, actor, loop.id, request, store.clock())
+
+
+def _confirm(store: Store) -> Change:
+    loop, actor = store.register(), store.actor("reviewer")
+    store.add_model(loop)
+    store.submit(kind="baseline", controller=gains(1.0))
+    store.submit()
+    change = store.propose(loop)
+    prepared = store.prepare_decision(change)
+    return lambda session: changes.decide(session, actor, change.id, prepared, store.clock())
 
 
 def _add_model(store: Store) -> Change:
@@ -118,6 +135,8 @@ class _Fault:
     [
         _register,
         _change_loop,
+        _propose,
+        _confirm,
         _add_model,
         _submit,
         _keep_sheet,

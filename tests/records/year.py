@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 from service.records import kept_sheets
-from tests.records.store import Store, gains
+from tests.records.store import WIDER, Store, gains
 
 
 def live(store: Store) -> None:
-    """Two loops: gains approved and installed, gains refused, gains that were installed first."""
+    """Two loops: gains approved and installed, gains refused, gains that were installed first, a change that
+    two people made, and an operating point that they retired.
+    """
     loop = store.register(criteria={"gain_margin_min": 2.0})
     store.add_model(loop)
     first = store.submit(temporary_until="2026-12-31T00:00:00Z", install_by="2026-12-30T00:00:00Z")
@@ -22,3 +24,8 @@ def live(store: Store) -> None:
     second = store.submit(loop={"site": "North", "tag": "LIC-7"}, controller=gains(1.2))
     store.decide(second, "reject")
     store.submit(kind="emergency", controller=gains(1.1))
+    store.approve(store.submit(loop={"site": "North", "tag": "LIC-7"}))
+    store.submit(loop={"site": "North", "tag": "LIC-7"}, controller=gains(1.3))
+    ranged = store.propose(other, tag="LIC-7", area="Tank farm", pv=WIDER)
+    store.decide_change(ranged)
+    store.decide_change(store.propose(other, revision=2, retire="normal"), person="second")

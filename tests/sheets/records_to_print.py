@@ -198,6 +198,7 @@ def submission(
         comparisons=(),
         review_due_at=None,
         overdue=False,
+        recheck_due=None,
         open_actions=(),
         entry=EntryReference(number=417, digest="a1" * 32, time=NOON),
     )

@@ -94,7 +94,14 @@ class Decision(Kept, Base):
     __tablename__ = "decisions"
     __table_args__ = (
         UniqueConstraint("submission_id", "ordinal"),
-        UniqueConstraint("submission_id", "decided_by", "decision"),
+        # the name that the columns would make is longer than PostgreSQL's 63 characters
+        UniqueConstraint(
+            "submission_id",
+            "decided_by",
+            "decision",
+            "submission_digest",
+            name="uq_decisions_one_of_a_kind_on_a_content",
+        ),
         CheckConstraint("decision IN ('approve', 'reject', 'withdraw', 'revoke')", name="decision"),
     )
 
