@@ -30,9 +30,12 @@ class OnTheLineError(ValueError):
 def roots_right_of(loop: ExactLoop, line: Any = 0) -> int:
     """The number of characteristic roots with real part above `line`, with multiplicity.
 
-    For loops that roll off, or whose abs L(∞) is below 1 on the line; ValueError where it is not.
+    For loops that roll off, or whose abs L(∞) is below 1 on the line; ValueError where it is not. Of a loop
+    without dead time that does not roll off the roots of the characteristic polynomial are counted.
     """
     line = mpf(line)
+    if loop.dead_time == 0 and len(loop.numerator) >= len(loop.denominator):
+        return _roots_of_polynomial_right_of(loop, line)
     if len(loop.numerator) > len(loop.denominator) and loop.dead_time > 0:
         raise ValueError("abs L grows without bound")
     top = _highest_frequency(loop, line)
@@ -49,6 +52,16 @@ def roots_right_of(loop: ExactLoop, line: Any = 0) -> int:
     if abs(count - nearest) > 1e-6:
         raise ValueError(f"the turn gives {mp.nstr(count, 10)} roots")
     return nearest
+
+
+def _roots_of_polynomial_right_of(loop: ExactLoop, line: Any) -> int:
+    short = len(loop.numerator) - len(loop.denominator)
+    denominator = [mpf(0)] * short + loop.denominator
+    total = [n + d for n, d in zip(loop.numerator, denominator, strict=True)]
+    distances = [root.real - line for root in polynomial_roots(total)]
+    if any(abs(distance) < SMALLEST_STEP for distance in distances):
+        raise OnTheLineError("a root lies on the line")
+    return sum(distance > 0 for distance in distances)
 
 
 def _rest_of_denominator(loop: ExactLoop, line: Any, top: Any) -> Any:
