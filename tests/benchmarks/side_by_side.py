@@ -76,7 +76,7 @@ def cold_start_s(times_each: int) -> list[float]:
 def table(found: Times, cold_s: list[float]) -> str:
     """What is printed."""
     lines = [
-        f"continuous recomputation, {len(found.service_ms)} loops, least of {REPEATED} each, in ms of processor",
+        f"continuous recomputation, {len(found.service_ms)} loops, least of {REPEATED}, processor time in ms",
         f"{'':24}{'median':>10}{'95 %':>10}{'95 %/median':>14}{'largest':>10}",
     ]
     for name, values in (("service", found.service_ms), ("plain script", found.script_ms)):
