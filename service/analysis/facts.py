@@ -8,7 +8,7 @@ from dataclasses import replace
 import numpy as np
 import numpy.typing as npt
 
-from service.analysis.controller import Controller
+from service.analysis.controller import Controller, Scan
 from service.analysis.frequency import AxisResponse
 from service.analysis.loop import EPSILON, ClosedLoopParts, Complexes
 from service.analysis.realisation import StateSpace
@@ -50,6 +50,8 @@ def facts(
         dead_time_s=parts.dead_time_s,
         dead_time_reduced_by_s=parts.dead_time_reduced_by_s,
         dead_time_negative_by_s=parts.dead_time_negative_by_s,
+        scan_interval_s=controller.scan.interval_s if isinstance(controller.scan, Scan) else None,
+        ringing_filters=tuple(_ringing_filters(parts, controller)),
         assumed=tuple(_unknown_fields(controller)),
     )
 
@@ -85,6 +87,17 @@ def _right_of_axis(roots: Complexes) -> npt.NDArray[np.bool_]:
 def _controller_zeros_right(parts: ClosedLoopParts) -> int:
     zeros = np.array(parts.controller.zeros_rad_s, complex)
     return int(np.count_nonzero(_right_of_axis(zeros)))
+
+
+def _ringing_filters(parts: ClosedLoopParts, controller: Controller) -> list[tuple[str, float]]:
+    scan = controller.scan
+    if not (isinstance(scan, Scan) and scan.method == "trapezoidal"):
+        return []
+    times = {
+        "derivative": parts.controller.feedback.tf_s,
+        "measured value": parts.measurement_filter / parts.unit_rad_s,
+    }
+    return [(of, time_s) for of, time_s in times.items() if 0 < time_s < 0.5 * scan.interval_s]
 
 
 def _unknown_fields(controller: Controller) -> list[str]:

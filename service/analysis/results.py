@@ -154,11 +154,12 @@ class Interval:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class BoxMember:
-    """One member of the box of models, by its factors."""
+    """One member of the box of models, by its factors; the extra dead time is added to the multiplied one."""
 
     gain: float
     time_constants: float
     dead_time: float
+    dead_time_extra_s: float = 0.0
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -173,6 +174,8 @@ class WorstCase:
     phase_margin_deg: Quantity
     delay_margin_s: Quantity
     tolerated_error_scale: Interval | None
+    notes: tuple[str, ...] = ()
+    """Codes of what could not be computed and why, as in `Analysis.notes`."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -277,6 +280,9 @@ class LoopFacts:
     dead_time_reduced_by_s: float
     dead_time_negative_by_s: float
     """How much of the half interval could not be taken off, since the dead time was shorter."""
+    scan_interval_s: float | None = None
+    ringing_filters: tuple[tuple[str, float], ...] = ()
+    """What is filtered and the filter's time, where the trapezoidal method gives it a pole below 0."""
     assumed: tuple[str, ...] = field(default=())
     """Fields that were "unknown" and analysed as if absent or at their default."""
 
@@ -293,6 +299,6 @@ class Recomputation:
     loop_type: int
     equivalent_gains: tuple[EquivalentGains, ...]
     facts: LoopFacts
-    not_computed: tuple[Literal["sampled", "worst_case"], ...] = ()
+    not_computed: tuple[Literal["worst_case"], ...] = ()
     curves: Curves | None = None
     second_opinion: SecondOpinion | None = None

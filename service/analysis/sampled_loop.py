@@ -15,6 +15,7 @@ of sampled plants, the bilinear transformation). From memory.
 from __future__ import annotations
 
 import math
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -30,8 +31,14 @@ small.
 SMALL = 1e-3
 """Below this abs L the loop is met to `MET` of this; rounding in the state equations allows no more."""
 
+SHIFT = 0.37
+"""A point right of the axis of w, where no loop has a zero but by chance."""
+
 FARTHEST_ZERO = 1e13
 """A zero beyond this is z = −1 to float64."""
+
+
+StateMatrices = tuple[Reals, Reals, Reals, float]
 
 
 class NotFactoredError(ArithmeticError):
@@ -115,19 +122,25 @@ def _plant_factors(scanned: Scanned, plant: SampledPlant, controller: Factors) -
         poles = np.append(poles, -1.0)
     if scanned.parts.plant.gain == 0:
         return Factors(np.empty(0, complex), poles, -math.inf, 0.0)
-    a, b, c, d = _bilinear(plant)
-    zeros = _zeros(a, b, c, d)
+    space = _bilinear(plant)
+    for zeros in _zeros(*space):
+        gain = _gain(space, zeros, poles, controller)
+        if gain is not None:
+            return Factors(zeros, poles, math.log(abs(gain)), math.copysign(1.0, gain))
+    raise NotFactoredError("the sampled plant's zeros cannot be computed to enough digits")
+
+
+def _gain(space: StateMatrices, zeros: Complexes, poles: Complexes, controller: Factors) -> float | None:
+    """The plant's gain with these zeros; None where they do not meet its state equations."""
     points = _points(poles, zeros)
-    direct = response(a, b, c, d, points)
+    direct = response(*space, points)
     ratio = direct / np.exp(_log_product(points, zeros, poles))
     through = np.abs(np.exp(_log_product(points, controller.zeros, controller.poles) + controller.log_gain))
     size = np.abs(direct) * through
     told = size >= min(SMALL, float(np.sort(size)[-3]))
     gain = float(np.median(ratio.real[told]))
     error = np.abs(ratio - gain) * size / abs(gain)
-    if not (gain != 0 and np.all(error <= MET * np.maximum(size, SMALL))):
-        raise NotFactoredError("the sampled plant's zeros cannot be computed to enough digits")
-    return Factors(zeros, poles, math.log(abs(gain)), math.copysign(1.0, gain))
+    return gain if gain != 0 and np.all(error <= MET * np.maximum(size, SMALL)) else None
 
 
 def _log_product(points: Complexes, zeros: Complexes, poles: Complexes) -> Complexes:
@@ -136,7 +149,7 @@ def _log_product(points: Complexes, zeros: Complexes, poles: Complexes) -> Compl
     return np.asarray(logs)
 
 
-def _bilinear(plant: SampledPlant) -> tuple[Reals, Reals, Reals, float]:
+def _bilinear(plant: SampledPlant) -> StateMatrices:
     """The plant over a scan as a state space in w, the last output a state of its own where it acts."""
     n = len(plant.phi_less_one)
     more = plant.held_scans - plant.whole_scans
@@ -149,15 +162,25 @@ def _bilinear(plant: SampledPlant) -> tuple[Reals, Reals, Reals, float]:
     return inverse @ less_one, 2.0 * inverse @ b, to_output, -float(to_output @ b)
 
 
-def _zeros(a: Reals, b: Reals, c: Reals, d: float) -> Complexes:
-    """Transmission zeros: eigenvalues of a − b·c/d; those at infinity left out."""
-    scale = float(np.abs(b).max(initial=0.0) * np.abs(c).max(initial=0.0))
-    feedthrough = d if abs(d) > 1e-17 * scale else 1e-17 * scale
-    zeros = np.linalg.eigvals(a - np.outer(b, c) / feedthrough).astype(complex)
-    zeros = zeros[np.abs(zeros) < FARTHEST_ZERO]
-    for _ in range(2):
-        zeros = _polished(zeros, a, b, c, d)
-    return zeros
+def _zeros(a: Reals, b: Reals, c: Reals, d: float) -> Iterator[Complexes]:
+    """Transmission zeros, those at infinity left out, by two ways: which is the better depends on the plant.
+
+    They are the finite eigenvalues w of the pencil (a b; c d) − w·(1 0; 0 0): by way of 1/(w − σ), of which a
+    zero at infinity is an ordinary eigenvalue 0, or those of a − b·c/d.
+    """
+    n = len(a)
+    pencil = np.zeros((n + 1, n + 1))
+    pencil[:n, :n], pencil[:n, n], pencil[n, :n], pencil[n, n] = a - SHIFT * np.eye(n), b, c, d
+    # both sides brought to one size, which moves no zero
+    pencil[:, n] /= float(np.abs(b).max(initial=0.0)) or 1.0
+    pencil[n] /= float(np.abs(pencil[n]).max()) or 1.0
+    inverse = np.linalg.eigvals(np.linalg.inv(pencil)[:, :n] @ np.eye(n, n + 1)).astype(complex)
+    zeros = SHIFT + 1.0 / inverse[np.abs(inverse) > 1.0 / FARTHEST_ZERO]
+    yield _polished(_polished(zeros, a, b, c, d), a, b, c, d)
+    if d != 0:
+        zeros = np.linalg.eigvals(a - np.outer(b, c) / d).astype(complex)
+        zeros = zeros[np.abs(zeros) < FARTHEST_ZERO]
+        yield _polished(_polished(zeros, a, b, c, d), a, b, c, d)
 
 
 def _polished(zeros: Complexes, a: Reals, b: Reals, c: Reals, d: float) -> Complexes:

@@ -62,7 +62,7 @@ class RecomputationAnswer:
     claims: tuple[ClaimFinding, ...]
     engine: Engine
     facts: LoopFacts
-    not_computed: tuple[Literal["sampled", "worst_case"], ...] = ()
+    not_computed: tuple[Literal["worst_case"], ...] = ()
     curves: Curves | None = None
     second_opinion: SecondOpinion | None = None
 

@@ -1,7 +1,7 @@
 """What the service itself finds in a recomputation, each in a sentence that a technician understands.
 
 One function a finding; the tuple below is all of them. A new one is written where its subject stands
-(`on_stability`, `on_responses`, `on_model`, `on_comparison`) and added here.
+(`on_stability`, `on_scan`, `on_responses`, `on_model`, `on_comparison`) and added here.
 """
 
 from __future__ import annotations
@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from service.analysis.results import Recomputation
-from service.judgement import on_comparison, on_model, on_responses, on_stability
+from service.judgement import on_comparison, on_model, on_responses, on_scan, on_stability
 from service.judgement.claims import ClaimFinding
 from service.judgement.finding import Case, Finding, Weight
 
@@ -20,14 +20,17 @@ Finder = Callable[[Case], "Finding | list[Finding] | None"]
 FINDERS: tuple[Finder, ...] = (
     on_stability.unstable,
     on_stability.wrong_action,
-    on_stability.scan_destabilises,
+    on_scan.scan_destabilises,
+    on_scan.scan_alone_stabilises,
     on_stability.undecided,
-    on_stability.sampled_not_computed,
     on_stability.hidden_roots,
     on_stability.unstable_in_the_box,
     on_stability.box_undecided,
     on_stability.worst_case_not_computed,
     on_model.not_realisable,
+    on_scan.scan_takes_phase,
+    on_scan.filter_rings,
+    on_scan.noise_moves_output,
     on_model.settings_unknown,
     on_model.integral_time_out_of_scale,
     on_model.derivative_time_out_of_scale,

@@ -26,6 +26,11 @@ _NOTES: dict[str, tuple[Weight, str]] = {
         "The loop gain passes 1 too often for the margins to be computed: the dead time is very long beside "
         "the other times of the loop. There are no margins.",
     ),
+    "delay_margin_not_confirmed": (
+        "caution",
+        "How much more dead time the scanned loop bears was not computed: two ways to find it do not agree. "
+        "There is no delay margin.",
+    ),
     "responses_not_realisable": (
         "caution",
         "An unfiltered derivative acts on a process that answers at once: there is no response to show.",

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from service.analysis.results import Analysis, Stability, WorstCase
+from service.analysis.results import Stability, WorstCase
 from service.judgement.digits import three_digits
 from service.judgement.finding import Case, Finding
 
@@ -32,24 +32,6 @@ def _unstable_roots(stability: Stability) -> str:
     return f"{number} of its characteristic roots {'grows' if count == 1 else 'grow'} in place of dying out"
 
 
-def scan_destabilises(case: Case) -> Finding | None:
-    """Stable in continuous time and not at the scan interval."""
-    recomputation = case.recomputation
-    sampled = recomputation.sampled
-    if sampled is None or (_verdict(recomputation.continuous), _verdict(sampled)) != ("stable", "unstable"):
-        return None
-    return Finding(
-        finding="scan_destabilises",
-        weight="stop",
-        sentence="A controller that acts all the time would be stable with these gains; at this scan "
-        "interval the loop is unstable. The scan is too slow for them.",
-    )
-
-
-def _verdict(analysis: Analysis) -> str:
-    return analysis.stability.verdict
-
-
 def wrong_action(case: Case) -> Finding | None:
     """Unstable as entered and stable with the other action."""
     if case.facts.stable_with_other_action is not True:
@@ -74,18 +56,6 @@ def undecided(case: Case) -> Finding | None:
         finding="undecided",
         weight="stop",
         sentence=f"It could not be decided whether the loop is stable: {reason}. Treat it as not stable.",
-    )
-
-
-def sampled_not_computed(case: Case) -> Finding | None:
-    """A scan was given and the sampled loop is missing."""
-    if "sampled" not in case.recomputation.not_computed:
-        return None
-    return Finding(
-        finding="sampled_not_computed",
-        weight="stop",
-        sentence="A scan interval was given, but the loop as it is scanned was not computed. The verdict "
-        "stays undecided; the figures here hold for a controller that acts all the time.",
     )
 
 

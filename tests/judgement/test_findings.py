@@ -95,20 +95,9 @@ def test_methods_that_disagree_are_told() -> None:
     assert reason in one(disagreeing, "undecided").sentence
 
 
-def test_a_scan_that_was_not_computed_is_told() -> None:
-    scanned = replace(loop(), verdict="undecided", judged_on="sampled", not_computed=("sampled",))
-    assert one(scanned, "sampled_not_computed").weight == "stop"
-
-
 def test_a_worst_case_that_was_not_computed_is_told() -> None:
     uncertain = replace(loop(), not_computed=("worst_case",))
     assert one(uncertain, "worst_case_not_computed").weight == "caution"
-
-
-def test_a_scan_that_destabilises_is_told() -> None:
-    sampled = loop(controller=ideal(gain=12.0)).continuous
-    scanned = replace(loop(), verdict="unstable", judged_on="sampled", sampled=sampled)
-    assert {"unstable", "scan_destabilises"} <= set(codes(scanned))
 
 
 @pytest.mark.parametrize(
