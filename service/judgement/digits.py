@@ -37,6 +37,12 @@ def beside_limit(value: Quantity, limit: float) -> str:
     return repr(value)
 
 
+def apart(one: float, other: float) -> tuple[str, str]:
+    """Tell two computed numbers with three digits, or with as many more as it takes to tell them apart."""
+    told = [(_significant(one, digits), _significant(other, digits)) for digits in range(DIGITS, 18)]
+    return next((both for both in told if both[0] != both[1]), told[0])
+
+
 def as_entered(value: float, displayed: str | None = None) -> str:
     """Tell an entered number: as the controller displays it, else with no digit more or less."""
     if displayed is not None:

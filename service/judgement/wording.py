@@ -70,6 +70,24 @@ PLANT_GAIN_BASES: dict[str, str] = {
     "engineering_units": "PV units over output units",
 }
 """What a plant's gain is counted in: the other way round."""
+_SETTINGS: dict[str, str] = {
+    "proportional": "Proportional",
+    "integral": "Integral",
+    "derivative": "Derivative",
+    "derivative_filter": "Derivative filter",
+    "gain": "Gain k",
+    "zeros_rad_s": "Zeros",
+    "setpoint_proportional": "Proportional, as the set point sees it",
+    "setpoint_derivative": "Derivative, as the set point sees it",
+    "setpoint_weight.proportional": "Set-point weight, proportional",
+    "setpoint_weight.derivative": "Set-point weight, derivative",
+    "action": "Action",
+    "measurement_filter_s": "Filter on PV",
+    "scan.interval_s": "Scan interval",
+    "scan.method": "Scan method",
+    "scan.output_delay_s": "Delay of the output",
+    "algorithm": "Algorithm",
+}
 SCAN_METHODS: dict[str, str] = {
     "backward_difference": "backward difference",
     "trapezoidal": "trapezoidal",
@@ -94,6 +112,11 @@ WORST_CASE_LABELS: dict[str, str] = {
     "tolerated_error_scale": "scale of model error that is tolerated",
 }
 _WORST_CASE_UNITS = {"worst_case_phase_margin_deg": "deg", "worst_case_delay_margin_s": "s"}
+
+
+def setting_name(name: str) -> str:
+    """The name of a compared setting in words; one that was recorded only keeps the name it was given."""
+    return _SETTINGS.get(name) or name.removeprefix("recorded_settings.")
 
 
 def quantity_label(name: str) -> str:

@@ -6,7 +6,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 from service.analysis.plant import Ranges
-from service.judgement.wording import UNITS
+from service.judgement.wording import UNITS, setting_name
 from service.pages import words
 from service.records.comparison import compare
 from service.records.content import InstallationContent, SignedContent
@@ -116,7 +116,7 @@ def _compared(change: SettingChange, told: Callable[[float | str | None], str]) 
     unit = UNITS.get(change.unit, change.unit)
     before, after = told(change.before), told(change.after)
     return ChangeLine(
-        name=words.setting(change.setting),
+        name=setting_name(change.setting),
         before=before,
         before_unit=unit if before[:1].isdigit() else "",
         after=after,

@@ -42,24 +42,6 @@ NOT_RECOMPUTED = (
     "Not recomputed: no model of this process is on record, so nothing can be said of its stability."
 )
 _ACTIONS: dict[str, str] = dict(wording.ACTIONS.items())
-_SETTINGS = {
-    "proportional": "Proportional",
-    "integral": "Integral",
-    "derivative": "Derivative",
-    "derivative_filter": "Derivative filter",
-    "gain": "Gain k",
-    "zeros_rad_s": "Zeros",
-    "setpoint_proportional": "Proportional, as the set point sees it",
-    "setpoint_derivative": "Derivative, as the set point sees it",
-    "setpoint_weight.proportional": "Set-point weight, proportional",
-    "setpoint_weight.derivative": "Set-point weight, derivative",
-    "action": "Action",
-    "measurement_filter_s": "Filter on PV",
-    "scan.interval_s": "Scan interval",
-    "scan.method": "Scan method",
-    "scan.output_delay_s": "Delay of the output",
-    "algorithm": "Algorithm",
-}
 _MARK_CLASSES = {"✓": "mark", "=": "mark", "✗": "mark against", "≠": "mark against", "?": "mark open"}
 
 
@@ -124,11 +106,6 @@ def _value(value: float | str | None, digits: Callable[[float], str]) -> str:
     if value is None:
         return controllers.NONE
     return _ACTIONS.get(value, value) if isinstance(value, str) else digits(value)
-
-
-def setting(name: str) -> str:
-    """The name of a compared setting in words; one that was recorded only keeps the name it was given."""
-    return _SETTINGS.get(name) or name.removeprefix("recorded_settings.")
 
 
 def event_kind(kind: str) -> str:

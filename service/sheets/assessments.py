@@ -176,8 +176,9 @@ def _routes(recomputation: Recomputation) -> Iterator[str]:
             if route.unstable_roots is not None:
                 told += f", unstable roots: {route.unstable_roots}"
             yield f"{told} ({route.reason})" if route.reason else told
-        if analysis.stability.reason:
-            yield analysis.stability.reason
+        reason = analysis.stability.reason
+        if reason and reason not in [route.reason for route in analysis.stability.routes]:
+            yield reason
     for part in recomputation.not_computed:
         yield f"{part.replace('_', ' ')}: asked for and not computed"
 

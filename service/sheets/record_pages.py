@@ -74,7 +74,8 @@ def _assessment(told: Assessment) -> Iterator[Flowable]:
         yield said("The same gains in other forms (computed: not for typing)", styles.SUBHEADING)
         yield from _told(told.equivalents)
     yield said("How the verdict was reached", styles.SUBHEADING)
-    yield said(f"{'; '.join(told.routes)}. {told.engine}")
+    routes = "; ".join(told.routes)
+    yield said(f"{routes[:1].upper()}{routes[1:]}. {told.engine}")
     yield _joined(told.further)
 
 

@@ -6,9 +6,9 @@ from dataclasses import dataclass
 from datetime import datetime
 
 from service.judgement.criteria import quantity_name
-from service.judgement.digits import as_entered
+from service.judgement.digits import apart, as_entered
 from service.judgement.quantities import QUANTITIES
-from service.judgement.wording import WORST_CASE_LABELS, quantity_label
+from service.judgement.wording import UNITS, WORST_CASE_LABELS, quantity_label, setting_name
 from service.records.content import Difference, Person
 from service.records.views import DecisionView, InstallationView
 from service.sheets import controllers
@@ -81,9 +81,29 @@ def installation(view: InstallationView) -> Told:
 
 
 def _difference(difference: Difference) -> str:
-    recorded, found = (_entered(value) for value in (difference.recorded, difference.found))
-    setting = difference.setting.replace("_", " ")
-    return f"{setting} {found} {difference.unit}, on record {recorded}"
+    recorded, found = _told(difference)
+    name = setting_name(difference.setting)
+    unit = UNITS.get(difference.unit, difference.unit)
+    return f"{name[:1].lower()}{name[1:]} {found} {unit}, on record {recorded}".replace(" ,", ",")
+
+
+def _told(difference: Difference) -> tuple[str, str]:
+    """What is on record and what was found; a term was brought to a common form, so is a computed value."""
+    recorded, found = difference.recorded, difference.found
+    converted = difference.setting in _CONVERTED
+    if converted and isinstance(recorded, float) and isinstance(found, float):
+        return apart(recorded, found)
+    return _entered(recorded), _entered(found)
+
+
+_CONVERTED = {
+    "proportional",
+    "integral",
+    "derivative",
+    "derivative_filter",
+    "setpoint_proportional",
+    "setpoint_derivative",
+}
 
 
 def _entered(value: float | str | None) -> str:

@@ -7,7 +7,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from service.analysis.results import Quantity
-from service.judgement.digits import as_entered, beside_limit, three_digits, time
+from service.judgement.digits import apart, as_entered, beside_limit, three_digits, time
 
 
 @pytest.mark.parametrize(
@@ -52,6 +52,21 @@ def test_a_value_just_past_its_limit_is_told_with_digits_that_show_it(
 def test_a_value_beside_its_limit_reads_as_it_lies(value: float, limit: float) -> None:
     read = float(beside_limit(value, limit))
     assert (read > limit, read < limit) == (value > limit, value < limit)
+
+
+@pytest.mark.parametrize(
+    ("one", "other", "told"),
+    [
+        (0.0027272727272727272, 0.027272727272727270, ("0.00273", "0.0273")),
+        (3.0, 3.0000001, ("3.0000000", "3.0000001")),
+        (0.0, 1.5, ("0", "1.50")),
+        (2.0, 2.0, ("2.00", "2.00")),
+    ],
+)
+def test_two_numbers_are_told_with_digits_that_show_their_difference(
+    one: float, other: float, told: tuple[str, str]
+) -> None:
+    assert apart(one, other) == told
 
 
 @pytest.mark.parametrize(

@@ -62,7 +62,9 @@ def ordinary() -> SheetContent:
 
 def in_force() -> SheetContent:
     view, curves, before = submission(prepared_by=(REVIEWER,), install_by=NOON, temporary_until=NOON)
-    difference = Difference(setting="integral", unit="s", recorded=90.0, found=95.0, hinders=True)
+    difference = Difference(
+        setting="integral", unit="gain_per_second", recorded=0.02, found=0.019, hinders=True
+    )
     view = replace(installed(decided(view), differences=(difference,)), approvals_needed=2, overdue=True)
     return content_of(replace(view, review_due_at=NOON), curves, curves_in_force=before)
 

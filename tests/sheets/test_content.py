@@ -230,7 +230,7 @@ def test_a_basis_that_changed_is_said_while_the_review_is_owed() -> None:
 
 def test_an_installation_names_what_was_left_otherwise(print_case: PrintCase) -> None:
     told = print_case("in_force").content.installations[0].value
-    assert "AS LEFT IS NOT AS APPROVED; left: integral 95 s, on record 90" in told
+    assert "AS LEFT IS NOT AS APPROVED; left: integral 0.0190 gain per second, on record 0.0200" in told
     assert "typed by M. Sato" in told
 
 
