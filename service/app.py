@@ -10,6 +10,7 @@ from service.api import errors as api_errors
 from service.api.registration import register as register_api
 from service.context import Services, attach, request_id
 from service.documents.limits import BODY_BYTES_MAX
+from service.issuing import signing_keys
 from service.issuing.checkpoints import read_key
 from service.pages import errors as pages_errors
 from service.pages.registration import register as register_pages
@@ -50,6 +51,8 @@ def create_app(
     secret_key = settings.required_secret_key()
     signing_key = read_key(settings.signing_key_file) if settings.signing_key_file else None
     database = Database.open(settings.database_url, clock=clock, password_hasher=password_hasher)
+    if signing_key is not None:
+        signing_keys.take_up(database, signing_key)
     app = Flask(__name__, static_folder=None)
     app.config.update(
         SECRET_KEY=secret_key, MAX_CONTENT_LENGTH=BODY_BYTES_MAX, PROVIDE_AUTOMATIC_OPTIONS=False

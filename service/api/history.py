@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Annotated
 
+from annotated_types import Ge, Le
 from flask import Blueprint, request
 
 from service.api import answers, history_csv
@@ -15,7 +17,9 @@ from service.context import services
 from service.issuing import checkpoints
 from service.issuing.checkpoints import Checkpoint
 from service.records import history_queries as queries
+from service.records import proofs
 from service.records.history_queries import HistoryFilter
+from service.records.proofs import ConsistencyProof, InclusionProof
 
 blueprint = Blueprint("history", __name__, url_prefix="/v1/history")
 
@@ -48,6 +52,24 @@ class HistoryQuery(PageQuery):
         )
 
 
+Size = Annotated[int, Ge(1), Le(2**53)]
+
+
+@dataclass(frozen=True, kw_only=True)
+class InclusionQuery:
+    """In the tree of how many entries; all where it is left out."""
+
+    size: Size | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class ConsistencyQuery:
+    """The sizes of two checkpoints; `second` is the present one where it is left out."""
+
+    first: Size
+    second: Size | None = None
+
+
 @blueprint.get("")
 @reads(HistoryQuery, Event, a_list=True, media_types=JSON_OR_CSV)
 def list_history(call: Call, query: HistoryQuery) -> Answer:
@@ -63,6 +85,20 @@ def show_entry(call: Call, _query: NoQuery, number: int) -> Answer:
     """Show one entry with the exact text that its digest is made from."""
     view = queries.entry(call.session, call.actor, number)
     return answers.document(WholeEvent(event=Event.of(view), canonical=view.canonical.decode()))
+
+
+@blueprint.get(f"/<int(max={2**53}):number>/inclusion")
+@reads(InclusionQuery, InclusionProof)
+def prove_inclusion(call: Call, query: InclusionQuery, number: int) -> Answer:
+    """Prove that an entry is among those of a checkpoint (RFC 9162, section 2.1.3)."""
+    return answers.document(proofs.inclusion(call.session, call.actor, number, query.size))
+
+
+@blueprint.get("/consistency")
+@reads(ConsistencyQuery, ConsistencyProof)
+def prove_consistency(call: Call, query: ConsistencyQuery) -> Answer:
+    """Prove that an earlier checkpoint's entries begin a later one's (RFC 9162, section 2.1.4)."""
+    return answers.document(proofs.consistency(call.session, query.first, query.second))
 
 
 @blueprint.get("/checkpoint")

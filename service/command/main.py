@@ -17,6 +17,7 @@ SUBJECTS: dict[str, tuple[str, str]] = {
     "account": ("service.command.account", "Make accounts."),
     "demo": ("service.command.demo", "Show the service on an invented plant."),
     "history": ("service.command.history", "Verify and export the history of the records."),
+    "key": ("service.command.key", "Make, show and change the key that signs checkpoints."),
     "migrate": ("service.command.migrate", "Bring the database to the current schema."),
     "recompute": ("service.command.recompute", "Recompute stability and margins of loops from files."),
     "serve": ("service.command.serve", "Run the service."),

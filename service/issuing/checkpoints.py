@@ -7,18 +7,19 @@ this service made it; it covers the canonical JSON (RFC 8785) of the other field
 
 from __future__ import annotations
 
-import base64
 from dataclasses import dataclass
 from datetime import datetime
 from pathlib import Path
 
 from cryptography.exceptions import UnsupportedAlgorithm
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
-from cryptography.hazmat.primitives.serialization import Encoding, PublicFormat, load_pem_private_key
+from cryptography.hazmat.primitives.serialization import load_pem_private_key
 from sqlalchemy.orm import Session
 
 from service.documents import writing
 from service.documents.canonical import canonical_bytes
+from service.issuing import signing_keys
+from service.issuing.base64_text import base64_text, public_text
 from service.records import history
 
 SigningKey = Ed25519PrivateKey
@@ -55,7 +56,10 @@ class Checkpoint(Unsigned):
 
 
 def checkpoint(session: Session, key: SigningKey | None) -> Checkpoint:
-    """Return the checkpoint of the history as it stands."""
+    """Return the checkpoint of the history as it stands; unsigned where `key` is not its present key."""
+    if key is not None and signing_keys.present(session) not in (None, public_text(key)):
+        # the key was changed while this process runs with the old one, whose word is no longer taken
+        key = None
     head = history.head(session)
     unsigned = Unsigned(
         origin=history.origin(session),
@@ -63,9 +67,9 @@ def checkpoint(session: Session, key: SigningKey | None) -> Checkpoint:
         digest=head.root,
         head=head.digest,
         time=head.time,
-        public_key=_text(key.public_key().public_bytes(Encoding.Raw, PublicFormat.Raw)) if key else None,
+        public_key=public_text(key) if key else None,
     )
-    signature = _text(key.sign(canonical_bytes(writing.plain(unsigned)))) if key else None
+    signature = base64_text(key.sign(canonical_bytes(writing.plain(unsigned)))) if key else None
     return Checkpoint(**{name: getattr(unsigned, name) for name in Unsigned.__slots__}, signature=signature)
 
 
@@ -80,7 +84,3 @@ def read_key(file: Path) -> SigningKey:
     if not isinstance(key, Ed25519PrivateKey):
         raise UnusableKey(f"the signing key file {file} holds a key of another kind than Ed25519")
     return key
-
-
-def _text(raw: bytes) -> str:
-    return base64.b64encode(raw).decode()

@@ -9,9 +9,11 @@ inserted with the entry (bytes columns by their SHA-256), so that a changed, rem
 from __future__ import annotations
 
 import hashlib
+import json
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from datetime import UTC, datetime
+from typing import Any
 
 from sqlalchemy import inspect, select
 from sqlalchemy.orm import Session
@@ -96,6 +98,19 @@ def is_demonstration(session: Session) -> bool:
     """Say whether the first entry of the history says that the store is a demonstration's."""
     first = session.get(HistoryEvent, 1)
     return first is not None and first.kind == STORE_MADE and b'"demonstration":true' in first.canonical
+
+
+def last_content(session: Session, *kinds: str) -> dict[str, Any] | None:
+    """Return what the last entry of these kinds tells; None where there is none."""
+    query = select(HistoryEvent.canonical).where(HistoryEvent.kind.in_(kinds))
+    found = session.execute(query.order_by(HistoryEvent.number.desc()).limit(1)).scalar_one_or_none()
+    return None if found is None else dict(json.loads(found)["content"])
+
+
+def leaves(session: Session, size: int) -> list[bytes]:
+    """Return the leaf hashes of the first `size` entries."""
+    query = select(HistoryEvent.digest).where(HistoryEvent.number <= size).order_by(HistoryEvent.number)
+    return [bytes.fromhex(digest) for digest in session.execute(query).scalars()]
 
 
 def origin(session: Session) -> str:

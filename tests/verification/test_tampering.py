@@ -14,6 +14,7 @@ import pytest
 from service.verification.report import Report
 from tests.databases import Databases, file_of, is_sqlite
 from tests.verification.conftest import Owned
+from tests.verification.forging import leaf, rewrite_from, set_head
 
 sqlite_alone = pytest.mark.parametrize("databases", ["sqlite"], indirect=True)
 """What only a file, or a database that takes any value in any column, lets somebody do."""
@@ -75,7 +76,7 @@ def test_an_entry_rewritten_with_its_own_digest_and_not_the_later_ones(owned: Ow
     forged = raw.replace(b"Colleague", b"Accomplice")
     assert forged != raw
     change = "UPDATE history_events SET canonical = ?, digest = ? WHERE number = 3"
-    owned.execute((change, (forged, _leaf(forged).hex())))
+    owned.execute((change, (forged, leaf(forged).hex())))
     report = owned.verify()
     assert _named(report) == (4, None)
     assert "chain is broken" in report.fault.what  # type: ignore[union-attr]
@@ -184,7 +185,7 @@ def test_an_old_copy_of_the_store_put_back(owned: Owned, earlier: Owned) -> None
 
 def test_everything_rewritten_from_an_entry_on(owned: Owned) -> None:
     checkpoint = owned.checkpoint()
-    _rewrite_from(owned, 2)
+    rewrite_from(owned, 2, _by_somebody_else)
     assert owned.verify().holds
     report = owned.verify(checkpoint)
     assert report.fault is not None
@@ -195,34 +196,8 @@ def test_a_checkpoint_of_an_earlier_time_still_holds(owned: Owned, earlier: Owne
     assert owned.verify(earlier.checkpoint()).holds
 
 
-def _leaf(raw: bytes) -> bytes:
-    return hashlib.sha256(b"\0" + raw).digest()
-
-
-def _edge(leaves: list[bytes]) -> bytes:
-    """The roots of the perfect subtrees, by the set bits of their number."""
-
-    def root(part: list[bytes]) -> bytes:
-        half = len(part) // 2
-        return (
-            part[0] if half == 0 else hashlib.sha256(b"\1" + root(part[:half]) + root(part[half:])).digest()
-        )
-
-    edge, start = b"", 0
-    for bit in reversed(range(len(leaves).bit_length())):
-        if len(leaves) >> bit & 1:
-            edge += root(leaves[start : start + (1 << bit)])
-            start += 1 << bit
-    return edge
-
-
-def _set_head(owned: Owned) -> None:
-    """Make the head fit the entries, as a forger who knows the design would."""
-    entries = owned.rows("SELECT canonical, digest, time FROM history_events ORDER BY number")
-    edge = _edge([_leaf(raw) for raw, _, _ in entries])
-    _, digest, time = entries[-1]
-    change = "UPDATE history_head SET size = ?, digest = ?, time = ?, right_edge = ?"
-    owned.execute((change, (len(entries), digest, time, edge)))
+def _by_somebody_else(entry: dict[str, Any], _root: str, _origin: str) -> None:
+    entry["actor"] = "somebody" if entry["number"] == 2 else entry["actor"]
 
 
 def _cut(owned: Owned, size: int) -> None:
@@ -231,28 +206,7 @@ def _cut(owned: Owned, size: int) -> None:
         *(f"DELETE FROM {table} WHERE event_number > {size}" for table in tables),  # noqa: S608
         f"DELETE FROM history_events WHERE number > {size}",  # noqa: S608
     )
-    _set_head(owned)
-
-
-def _rewrite_from(owned: Owned, first: int) -> None:
-    """Change who acted in one entry and make every later digest fit."""
-    entries = owned.rows("SELECT number, canonical FROM history_events ORDER BY number")
-    previous = owned.value("SELECT previous FROM history_events WHERE number = ?", first)
-    changes: list[tuple[str, tuple[Any, ...]]] = []
-    update = "UPDATE history_events SET canonical = ?, previous = ?, digest = ?, actor = ? WHERE number = ?"
-    for number, raw in entries[first - 1 :]:
-        entry = json.loads(raw)
-        entry["previous"] = previous
-        entry["actor"] = "somebody" if number == first else entry["actor"]
-        forged = json.dumps(entry, sort_keys=True, separators=(",", ":"), ensure_ascii=False).encode()
-        digest = _leaf(forged).hex()
-        changes.append((update, (forged, previous, digest, entry["actor"], number)))
-        previous = digest
-    # each digest has to be free before another entry takes it
-    free = "UPDATE history_events SET digest = CAST(number AS TEXT), previous = CAST(-number AS TEXT)"
-    free += f" WHERE number >= {first}"
-    owned.execute(free, *changes)
-    _set_head(owned)
+    set_head(owned)
 
 
 # --- what the entries vouch for
