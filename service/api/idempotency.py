@@ -23,7 +23,9 @@ from service.records.errors import IdempotencyKeyReused
 from service.records.idempotency import KeptAnswer
 from service.records.roles import Actor
 
-_KEY = re.compile(r"[!-~]{1,200}")
+KEY_CHARACTERS_MAX = 200
+
+_KEY = re.compile(rf"[!-~]{{1,{KEY_CHARACTERS_MAX}}}")
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -44,7 +46,7 @@ def key_of(request: Request, plain: Plain) -> Key | None:
     if text is None or request.method != "POST":
         return None
     if not _KEY.fullmatch(text):
-        raise BadHeader("an Idempotency-Key has 1 to 200 visible ASCII characters")
+        raise BadHeader(f"an Idempotency-Key has 1 to {KEY_CHARACTERS_MAX} visible ASCII characters")
     rest, password = _without_password(plain)
     fingerprint = canonical.digest({"method": request.method, "path": request.path, "body": rest})
     return Key(text=text, fingerprint=fingerprint, password=password)

@@ -10,7 +10,7 @@ from typing import Any
 from flask import Blueprint, Flask, Response, current_app
 from werkzeug.routing import Rule
 
-from service.api import answers, problems, queries
+from service.api import answers, idempotency, problems, queries
 from service.api.answers import Answer
 from service.api.operations import Changing, Computing, Operation, Reading
 from service.api.problems import ProblemType
@@ -164,7 +164,7 @@ def _query_parameters(operation: Operation) -> Iterator[Json]:
 def _headers(route: Route) -> Iterator[Json]:
     if route.method == "post":
         text = "The same key and body give the first answer again."
-        schema: Json = {"type": "string", "minLength": 1, "maxLength": 200}
+        schema: Json = {"type": "string", "minLength": 1, "maxLength": idempotency.KEY_CHARACTERS_MAX}
         yield {"name": "Idempotency-Key", "in": "header", "description": text, "schema": schema}
     if route.method == "put":
         text = "The ETag of the last reading."

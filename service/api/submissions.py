@@ -16,7 +16,7 @@ from service.records import queries, submissions
 from service.records.lifecycle import State
 from service.records.queries import SubmissionFilter
 from service.records.submissions import PreparedSubmission
-from service.records.views import CurvesView, SubmissionSummary
+from service.records.views import CurvesView, SubmissionComparison, SubmissionSummary
 
 blueprint = Blueprint("submissions", __name__, url_prefix="/v1/submissions")
 
@@ -29,6 +29,13 @@ class SubmissionQuery(PageQuery):
     site: Text | None = None
     tag: Text | None = None
     recheck_due: Literal["true", "false"] | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class ComparisonQuery:
+    """Which submission is taken as the one before; left out: the gains in force now."""
+
+    before: Text | None = None
 
 
 def _recompute(call: Call, read: Reader[SubmissionRequest]) -> PreparedSubmission:
@@ -62,6 +69,13 @@ def show_submission(call: Call, _query: NoQuery, submission_id: str) -> Answer:
     """Show a submission whole, with its decisions and the comparison to the gains in force."""
     view = queries.submission(call.session, call.actor, submission_id, call.now)
     return answers.document(representations.Submission.of(view))
+
+
+@blueprint.get("/<submission_id>/comparison")
+@reads(ComparisonQuery, SubmissionComparison)
+def show_comparison(call: Call, query: ComparisonQuery, submission_id: str) -> Answer:
+    """Hold the gains against another submission of the loop, or against the gains in force now."""
+    return answers.document(queries.compare(call.session, call.actor, submission_id, query.before))
 
 
 @blueprint.get("/<submission_id>/content")

@@ -24,11 +24,13 @@ from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopRevision
 from service.records.tables.submissions import Submission, SubmissionRecomputation, SubmissionState
 from service.records.views import (
-    Comparison,
+    Compared,
     CurvesView,
+    GainSetComparison,
     GainsInForce,
     LoopView,
     Page,
+    SubmissionComparison,
     SubmissionSummary,
     SubmissionView,
 )
@@ -171,14 +173,34 @@ def gains_in_force(session: Session, actor: Actor, loop_id: str, now: datetime) 
     )
 
 
-def compare(session: Session, actor: Actor, submission_id: str, other_id: str) -> tuple[Comparison, ...]:
-    """Two submissions of one loop, set by set (the other → this). Raises NotFound, Conflict."""
+def compare(
+    session: Session, actor: Actor, submission_id: str, before_id: str | None = None
+) -> SubmissionComparison:
+    """Hold a submission against another of the same loop, None: against the gains in force now.
+
+    Raises NotFound, Conflict.
+    """
     this = visibility.submission(session, actor, submission_id)
-    other = visibility.submission(session, actor, other_id)
+    after = present_content.present(session, this)
+    compared = Compared(submission_id=submission_id, content_digest=after.digest)
+    if before_id is None:
+        running = states.running(session, this.loop_id)
+        if running is None:
+            return SubmissionComparison(before=None, after=compared, gain_sets=())
+        before_id = running.submission_id
+    other = visibility.submission(session, actor, before_id)
     if this.loop_id != other.loop_id:
         raise Conflict("these are gains of two loops")
-    before = present_content.present(session, other).read().gain_sets
-    return submission_views.comparisons(present_content.present(session, this).read(), before)
+    before, content = present_content.present(session, other), after.read()
+    comparisons = submission_views.comparisons(content, before.read().gain_sets)
+    return SubmissionComparison(
+        before=Compared(submission_id=other.id, content_digest=before.digest),
+        after=compared,
+        gain_sets=tuple(
+            GainSetComparison(condition=gain_set.condition, comparison=comparison)
+            for gain_set, comparison in zip(content.gain_sets, comparisons, strict=True)
+        ),
+    )
 
 
 def _loop_conditions(wanted: LoopFilter) -> list[ColumnElement[bool]]:

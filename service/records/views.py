@@ -202,6 +202,34 @@ class Comparison:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
+class Compared:
+    """Which gains stand on one side of a comparison."""
+
+    submission_id: str
+    content_digest: str
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class GainSetComparison:
+    """One gain set of `after` with the one that it is held against."""
+
+    condition: str | None
+    comparison: Comparison
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SubmissionComparison:
+    """The gains of one submission held against those of another, set by set.
+
+    `before` None, and no sets: no gains of the loop are in force as far as is recorded.
+    """
+
+    before: Compared | None
+    after: Compared
+    gain_sets: tuple[GainSetComparison, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
 class SubmissionSummary:
     """One line of a list of submissions."""
 

@@ -163,11 +163,28 @@ def test_an_account_with_areas_sees_entries_about_its_loops_only(store: Store, l
 def test_two_submissions_of_one_loop_are_compared_term_by_term(store: Store, loop: LoopView) -> None:
     first, second = store.submit(), store.submit(controller=gains(1.8))
     with store.database.reading() as session:
-        (compared,) = queries.compare(session, store.actor("auditor"), second.id, first.id)
+        found = queries.compare(session, store.actor("auditor"), second.id, first.id)
+    assert found.before is not None
+    assert (found.before.submission_id, found.after.submission_id) == (first.id, second.id)
+    (compared,) = (gain_set.comparison for gain_set in found.gain_sets)
     changed = [(c.setting, c.unit, c.before, c.after) for c in compared.settings if c.changed]
     assert changed == [("proportional", "gain", 1.5, 1.8)]
     assert compared.settings[0].percent == pytest.approx(20.0)
     assert not compared.same_gains
+
+
+def test_a_submission_is_compared_with_the_gains_that_are_in_force_now(store: Store, loop: LoopView) -> None:
+    submission, actor = store.submit(), store.actor("auditor")
+    with store.database.reading() as session:
+        none = queries.compare(session, actor, submission.id)
+    assert (none.before, none.gain_sets) == (None, ())
+    running = store.submit(kind="baseline", controller=gains(1.2))
+    with store.database.reading() as session:
+        found = queries.compare(session, actor, submission.id)
+    assert found.before is not None
+    assert found.before.submission_id == running.id
+    changed = [c for c in found.gain_sets[0].comparison.settings if c.changed]
+    assert [(c.setting, c.before, c.after) for c in changed] == [("proportional", 1.2, 1.5)]
 
 
 def test_gains_of_two_loops_are_not_compared(store: Store, loop: LoopView) -> None:
