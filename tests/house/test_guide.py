@@ -7,7 +7,9 @@ from pathlib import Path
 
 from service.records.lifecycle import diagram
 
-GUIDE = (Path(__file__).parents[2] / "DEVELOPERS.md").read_text("utf-8")
+ROOT = Path(__file__).parents[2]
+GUIDE = (ROOT / "DEVELOPERS.md").read_text("utf-8")
+README = (ROOT / "README.md").read_text("utf-8")
 
 
 def test_the_diagram_of_the_life_cycle_is_the_table_s() -> None:
@@ -16,7 +18,13 @@ def test_the_diagram_of_the_life_cycle_is_the_table_s() -> None:
 
 
 def test_the_commands_of_the_guide_stand_in_the_script_that_runs_every_check() -> None:
-    script = (Path(__file__).parents[2] / ".ci" / "tests").read_text("utf-8")
+    script = (ROOT / ".ci" / "tests").read_text("utf-8")
     for tool in ("ruff check", "ruff format --check", "mypy", "-n 2 --dist loadgroup"):
         assert tool in GUIDE
         assert tool in script
+
+
+def test_every_place_that_the_guides_name_is_there() -> None:
+    named = set(re.findall(r"(?<![\w/])(?:service|tests|migrations|docker|\.ci)/[\w./-]*\w", GUIDE + README))
+    assert len(named) > 10
+    assert [place for place in sorted(named) if not (ROOT / place).exists()] == []
