@@ -176,22 +176,31 @@ def integrals(of: list[Signal]) -> list[Integrals]:
     scale = np.repeat([signal.scale for signal in of], pieces)[:, None]
     row, place = chebyshev.zeros_of_rows(rows, ROUNDING * scale)
     times = np.tile(start[:, None] + length[:, None] * chebyshev.points(nodes), (count, 1))
-    lengths = np.tile(length, count)[:, None]
-    summed = rows @ chebyshev.integration(nodes).T * lengths
-    weighted = (rows * times) @ chebyshev.integration(nodes).T * lengths
-    fine = rows @ _to_twice_as_fine(nodes).T
+    lengths = np.tile(length, count)
+    signed = rows @ chebyshev.integration(nodes)[-1] * lengths
     columns = (
-        _variation(summed, row, place).reshape(count, pieces).sum(axis=1),
-        ((fine * fine) @ chebyshev.integration(2 * nodes)[-1] * lengths[:, 0])
-        .reshape(count, pieces)
-        .sum(axis=1),
-        _variation(weighted, row, place).reshape(count, pieces).sum(axis=1),
-        summed[:, -1].reshape(count, pieces).sum(axis=1),
+        _absolute(rows, lengths, signed, row, place),
+        ((rows @ _of_squares(nodes)) * rows).sum(axis=1) * lengths,
+        _absolute(
+            rows * times, lengths, (rows * times) @ chebyshev.integration(nodes)[-1] * lengths, row, place
+        ),
+        signed,
     )
+    sums = [column.reshape(count, pieces).sum(axis=1) for column in columns]
     return [
         Integrals(*(float(total) + more for total, more in zip(in_pieces, _of_tail(signal), strict=True)))
-        for signal, in_pieces in zip(of, zip(*columns, strict=True), strict=True)
+        for signal, in_pieces in zip(of, zip(*sums, strict=True), strict=True)
     ]
+
+
+def _absolute(rows: Reals, lengths: Reals, signed: Reals, row: Indices, place: Reals) -> Reals:
+    """∫ abs x over each row, (rows,), from ∫ x and the places where x changes its sign."""
+    absolute = np.abs(signed)
+    if row.size:
+        changing = row[np.flatnonzero(np.diff(row, prepend=-1))]
+        summed = rows[changing] @ chebyshev.integration(rows.shape[1]).T * lengths[changing, None]
+        absolute[changing] = _variation(summed, np.searchsorted(changing, row), place)
+    return absolute
 
 
 def _of_tail(signal: Signal) -> tuple[float, float, float, float]:
@@ -215,14 +224,22 @@ def _places(passages: list[Passage]) -> list[float]:
 
 
 def _with_ends(rows: Reals, row: Indices, place: Reals) -> tuple[Indices, Reals, Reals]:
-    """Places inside rows and both ends of every row, in order: row, place, value."""
+    """Places inside rows, in order of row and place, and both ends of every row: row, place, value."""
     inner = chebyshev.evaluate_rows(rows[row], place)
+    last = np.cumsum(2 + np.bincount(row, minlength=len(rows))) - 1
+    first = np.concatenate([[0], last[:-1] + 1])
+    # row r has 1 + 2r ends before its inner places
+    between = np.arange(len(row)) + 1 + 2 * row
+    total = 2 * len(rows) + len(row)
+    rows_of, places, values = np.empty(total, np.intp), np.empty(total), np.empty(total)
     every = np.arange(len(rows))
-    rows_of = np.concatenate([every, row, every])
-    places = np.concatenate([np.zeros(len(rows)), place, np.ones(len(rows))])
-    values = np.concatenate([rows[:, 0], inner, rows[:, -1]])
-    order = np.lexsort((places, rows_of))
-    return rows_of[order], places[order], values[order]
+    for at, of, where, value in (
+        (first, every, 0.0, rows[:, 0]),
+        (between, row, place, inner),
+        (last, every, 1.0, rows[:, -1]),
+    ):
+        rows_of[at], places[at], values[at] = of, where, value
+    return rows_of, places, values
 
 
 def _variation(integrals_in_rows: Reals, row: Indices, place: Reals) -> Reals:
@@ -233,5 +250,7 @@ def _variation(integrals_in_rows: Reals, row: Indices, place: Reals) -> Reals:
 
 
 @lru_cache(maxsize=16)
-def _to_twice_as_fine(nodes: int) -> Reals:
-    return chebyshev.evaluation(nodes, chebyshev.points(2 * nodes))
+def _of_squares(nodes: int) -> Reals:
+    """The form x·Q·x that gives ∫ x² over [0, 1] from values at the nodes."""
+    fine = chebyshev.evaluation(nodes, chebyshev.points(2 * nodes))
+    return np.asarray(fine.T * chebyshev.integration(2 * nodes)[-1] @ fine)
