@@ -37,6 +37,7 @@ from service.analysis.sampled import NYQUIST_AT_SCANS, ROOTS_AT_SCANS, analyse_a
 from service.analysis.sampled_loop import NotFactoredError
 from service.analysis.stability import NYQUIST, ROOTS, decide
 from service.analysis.step_metrics import step_metrics
+from service.analysis.worst_case import worst_case
 
 NOTE_MARGINS_TOO_MUCH_WORK = "margins_too_much_work"
 """The dead time makes more crossings than the stated bound; margins are not computed."""
@@ -76,7 +77,7 @@ def recompute(
     with np.errstate(all="ignore"):
         parts = form_loop(plant_model, controller, ranges)
         _refuse_ill_posed(parts.loop)
-        result = _recompute(parts, plant_model, controller, settling_band_percent, with_curves)
+        result = _recompute(parts, plant_model, controller, ranges, settling_band_percent, with_curves)
     if not with_second_opinion:
         return result
     # python-control takes longer to import than everything else together, so only who asks for it waits
@@ -89,6 +90,7 @@ def _recompute(
     parts: ClosedLoopParts,
     plant_model: PlantModel,
     controller: Controller,
+    ranges: Ranges | None,
     settling_band_percent: float,
     with_curves: bool,
 ) -> Recomputation:
@@ -100,17 +102,17 @@ def _recompute(
     sampled = None
     if isinstance(controller.scan, Scan):
         sampled, drawn = _sampled(parts, controller.scan, settling_band_percent, with_curves)
-    uncertain = plant_model.uncertainty is not None
+    worst = worst_case(parts, plant_model, controller, ranges, continuous)
     return Recomputation(
         verdict=_of_all(continuous, sampled),
         judged_on="sampled" if sampled else "continuous",
         continuous=continuous,
         sampled=sampled,
-        worst_case=None,
+        worst_case=worst,
         loop_type=max(0, parts.loop.order_at_origin),
         equivalent_gains=equivalent_gains(controller),
         facts=facts(parts, space, controller, continuous.stability.verdict),
-        not_computed=("worst_case",) if uncertain else (),
+        not_computed=("worst_case",) if plant_model.uncertainty is not None and worst is None else (),
         curves=drawn,
     )
 

@@ -1,7 +1,7 @@
 """What the service itself finds in a recomputation, each in a sentence that a technician understands.
 
 One function a finding; the tuple below is all of them. A new one is written where its subject stands
-(`on_stability`, `on_scan`, `on_responses`, `on_model`, `on_comparison`) and added here.
+(`on_stability`, `on_uncertainty`, `on_scan`, `on_responses`, `on_model`, `on_comparison`) and added here.
 """
 
 from __future__ import annotations
@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from service.analysis.results import Recomputation
-from service.judgement import on_comparison, on_model, on_responses, on_scan, on_stability
+from service.judgement import on_comparison, on_model, on_responses, on_scan, on_stability, on_uncertainty
 from service.judgement.claims import ClaimFinding
 from service.judgement.finding import Case, Finding, Weight
 
@@ -24,9 +24,11 @@ FINDERS: tuple[Finder, ...] = (
     on_scan.scan_alone_stabilises,
     on_stability.undecided,
     on_stability.hidden_roots,
-    on_stability.unstable_in_the_box,
-    on_stability.box_undecided,
-    on_stability.worst_case_not_computed,
+    on_uncertainty.unstable_in_the_box,
+    on_uncertainty.box_undecided,
+    on_uncertainty.worst_case_not_computed,
+    on_uncertainty.worst_margins_lacking,
+    on_uncertainty.worst_case_without_scan,
     on_model.not_realisable,
     on_scan.scan_takes_phase,
     on_scan.filter_rings,

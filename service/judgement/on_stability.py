@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-from service.analysis.results import Stability, WorstCase
-from service.judgement.digits import three_digits
+from service.analysis.results import Stability
 from service.judgement.finding import Case, Finding
 
 _NUMBERS = {1: "one", 2: "two", 3: "three", 4: "four", 5: "five", 6: "six"}
@@ -56,56 +55,6 @@ def undecided(case: Case) -> Finding | None:
         finding="undecided",
         weight="stop",
         sentence=f"It could not be decided whether the loop is stable: {reason}. Treat it as not stable.",
-    )
-
-
-def worst_case_not_computed(case: Case) -> Finding | None:
-    """Uncertainty was given and the worst case is missing."""
-    if "worst_case" not in case.recomputation.not_computed:
-        return None
-    return Finding(
-        finding="worst_case_not_computed",
-        weight="caution",
-        sentence="How wrong the model may be was given, but the worst case was not computed. The figures "
-        "here hold for the model exactly as entered.",
-    )
-
-
-def unstable_in_the_box(case: Case) -> Finding | None:
-    """A model within the stated uncertainty makes the loop unstable."""
-    worst = case.recomputation.worst_case
-    if worst is None or worst.stable_for_all is not False:
-        return None
-    return Finding(
-        finding="unstable_within_uncertainty",
-        weight="stop",
-        sentence="Within the stated uncertainty of the model the loop can be unstable"
-        f"{_counterexample(worst)}.",
-    )
-
-
-def _counterexample(worst: WorstCase) -> str:
-    member = worst.counterexample
-    if member is None:
-        return ""
-    factors = {
-        "gain": member.gain,
-        "time constants": member.time_constants,
-        "dead time": member.dead_time,
-    }
-    return ": with " + ", ".join(f"{name} × {three_digits(factor)}" for name, factor in factors.items())
-
-
-def box_undecided(case: Case) -> Finding | None:
-    """It is not proven either way that the loop is stable for every model in the box."""
-    worst = case.recomputation.worst_case
-    if worst is None or worst.stable_for_all is not None:
-        return None
-    return Finding(
-        finding="uncertainty_undecided",
-        weight="caution",
-        sentence="It could not be decided whether the loop stays stable over the whole stated uncertainty of "
-        "the model.",
     )
 
 

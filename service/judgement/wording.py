@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from service.analysis.controller import Action
-from service.analysis.results import Quantity, Verdict
+from service.analysis.results import BoxMember, Quantity, Verdict
 from service.judgement.criteria import CriterionFinding, Outcome, quantity_name
 from service.judgement.digits import as_entered, beside_limit, three_digits
 from service.judgement.quantities import QUANTITIES
@@ -133,6 +133,19 @@ def quantity_unit(name: str) -> str:
 def told(name: str, quantity: Quantity) -> str:
     """A recomputed quantity with three digits and its unit: "44.1°", "12.3 s", "without limit"."""
     return with_unit(name, quantity, three_digits(quantity))
+
+
+def box_member(member: BoxMember) -> str:
+    """One model of the box, by its factors: "gain × 1.25, time constants × 0.800, dead time × 1.40"."""
+    factors = {
+        "gain": member.gain,
+        "time constants": member.time_constants,
+        "dead time": member.dead_time,
+    }
+    parts = [f"{name} × {three_digits(factor)}" for name, factor in factors.items()]
+    if member.dead_time_extra_s > 0:
+        parts.append(f"{three_digits(member.dead_time_extra_s)} s of dead time more")
+    return ", ".join(parts)
 
 
 def criterion_words(criterion: str, limit: float) -> str:

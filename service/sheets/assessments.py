@@ -80,6 +80,7 @@ SHORT = {
 
 SYMBOLS = {"met": "✓ met", "not_met": "✗ NOT MET", "not_assessed": "? not assessed"}
 CLAIM_SYMBOLS = {"agrees": "= agrees", "differs": "≠ DIFFERS", "not_comparable": "? cannot be compared"}
+BOX = {True: "yes, proven", False: "NO", None: "not decided"}
 CROSSOVERS_MAX = 4
 """The sheet lists so many of each; the record has them all."""
 ON_THE_AXIS = 1e-12
@@ -147,7 +148,7 @@ def assessment(title: str, answer: RecomputationAnswer, responses: tuple[Respons
         verdict=wording.VERDICTS[recomputation.verdict],
         stable=stable,
         routes=tuple(_routes(recomputation)),
-        limits=tuple(_limits(analysis, answer.criteria)),
+        limits=(*_limits(analysis, answer.criteria), *_over_the_box(recomputation, answer.criteria)),
         no_margins="" if analysis and analysis.margins else _NO_MARGINS,
         setpoint=_quantities(analysis, SETPOINT) if analysis and analysis.setpoint_step else (),
         load=_quantities(analysis, LOAD) if analysis and analysis.load_step else (),
@@ -203,6 +204,27 @@ def _limits(analysis: Analysis | None, criteria: tuple[CriterionFinding, ...]) -
         if name not in limited:
             told = _told(analysis, name)
             yield LimitRow(name=told.name, value=told.value, limit="", outcome="", met=True)
+
+
+def _over_the_box(recomputation: Recomputation, criteria: tuple[CriterionFinding, ...]) -> Iterator[LimitRow]:
+    """Whether every model of the stated uncertainty is stable, and its worst sensitivity if nothing limits
+    it.
+    """
+    worst = recomputation.worst_case
+    if worst is None:
+        return
+    yield LimitRow(
+        name="Stable for every model in the box",
+        value=BOX[worst.stable_for_all],
+        limit="",
+        outcome="",
+        met=worst.stable_for_all is True,
+    )
+    name = "worst_case_max_sensitivity"
+    if worst.max_sensitivity and name not in {quantity_name(finding.criterion) for finding in criteria}:
+        at_most = digits.three_digits(worst.max_sensitivity.at_most)
+        label = _capital(wording.quantity_label(name))
+        yield LimitRow(name=label, value=f"at most {at_most}", limit="", outcome="", met=True)
 
 
 def _beside(name: str, finding: CriterionFinding) -> str:
@@ -272,19 +294,9 @@ def _crossovers(margins: Margins) -> Iterator[Told]:
 
 
 def _worst_case(worst: WorstCase) -> Iterator[Told]:
-    held = {True: "yes, proven", False: "NO", None: "not decided"}[worst.stable_for_all]
-    yield Told(name="Stable for every model in the box", value=held)
+    yield Told(name="Worst case computed for the analysis", value=worst.analysis)
     if worst.counterexample:
-        member = worst.counterexample
-        factors = ", ".join(
-            f"{name} × {digits.three_digits(value)}"
-            for name, value in (
-                ("gain", member.gain),
-                ("time constants", member.time_constants),
-                ("dead time", member.dead_time),
-            )
-        )
-        yield Told(name="Not stable at", value=factors)
+        yield Told(name="Not stable at", value=wording.box_member(worst.counterexample))
     for name in ("gain_margin", "phase_margin_deg", "delay_margin_s"):
         told = wording.told(name, getattr(worst, name))
         yield Told(name=f"Worst {wording.quantity_label(name)}", value=told)

@@ -1,0 +1,90 @@
+"""Findings on how wrong the model may be: whether the loop stays stable over the whole stated uncertainty."""
+
+from __future__ import annotations
+
+from service.analysis.results import WorstCase
+from service.analysis.worst_case import NOTE_NOT_CONFIRMED, NOTE_NUMBERS, NOTE_TOO_MUCH_WORK
+from service.judgement.finding import Case, Finding
+from service.judgement.wording import box_member
+
+_REASONS = {
+    NOTE_TOO_MUCH_WORK: "that takes more work than the service's bound allows; narrower factors may help",
+    NOTE_NUMBERS: "the factors lead to numbers that cannot be computed with",
+    NOTE_NOT_CONFIRMED: "some model in it lies on the very edge of stability",
+}
+"""Codes of `WorstCase.notes` → why the box is undecided."""
+
+
+def worst_case_not_computed(case: Case) -> Finding | None:
+    """Uncertainty was given for a kind of plant that has no box of models."""
+    if "worst_case" not in case.recomputation.not_computed:
+        return None
+    return Finding(
+        finding="worst_case_not_computed",
+        weight="caution",
+        sentence="How wrong the model may be was given, but the worst case was not computed. The figures "
+        "here hold for the model exactly as entered.",
+        needs_deviation=True,
+    )
+
+
+def unstable_in_the_box(case: Case) -> Finding | None:
+    """A model within the stated uncertainty makes the loop unstable, and the one as entered does not."""
+    worst = _of_stable(case)
+    if worst is None or worst.stable_for_all is not False:
+        return None
+    found = f": with {box_member(worst.counterexample)}" if worst.counterexample else ""
+    return Finding(
+        finding="unstable_within_uncertainty",
+        weight="stop",
+        sentence=f"Within the stated uncertainty of the model the loop can be unstable{found}.",
+        needs_deviation=True,
+    )
+
+
+def box_undecided(case: Case) -> Finding | None:
+    """It is not proven either way that the loop is stable for every model in the box."""
+    worst = _of_stable(case)
+    if worst is None or worst.stable_for_all is not None:
+        return None
+    reason = next((f": {_REASONS[note]}" for note in worst.notes if note in _REASONS), "")
+    return Finding(
+        finding="uncertainty_undecided",
+        weight="caution",
+        sentence="It could not be decided whether the loop stays stable over the whole stated uncertainty of "
+        f"the model{reason}. Treat it as not shown.",
+        needs_deviation=True,
+    )
+
+
+def worst_margins_lacking(case: Case) -> Finding | None:
+    """The box is proven stable, but not every worst margin was found within the bound on work."""
+    worst = _of_stable(case)
+    if worst is None or not worst.stable_for_all or NOTE_TOO_MUCH_WORK not in worst.notes:
+        return None
+    return Finding(
+        finding="worst_margins_not_computed",
+        weight="caution",
+        sentence="The loop is stable over the whole stated uncertainty of the model, but not every margin of "
+        "the worst model was computed: that would take more work than the service's bound allows.",
+    )
+
+
+def worst_case_without_scan(case: Case) -> Finding | None:
+    """The loop is scanned, and the worst case is that of a controller that acts all the time."""
+    worst = _of_stable(case)
+    if worst is None or case.recomputation.judged_on != "sampled" or worst.analysis != "continuous":
+        return None
+    return Finding(
+        finding="worst_case_without_scan",
+        weight="caution",
+        sentence="The worst case over the model's uncertainty was computed for a controller that acts all "
+        "the time. The scan mostly takes some of that margin away.",
+    )
+
+
+def _of_stable(case: Case) -> WorstCase | None:
+    """The worst case of a loop that is stable as entered; of any other nothing more is to be said."""
+    if case.recomputation.continuous.stability.verdict != "stable":
+        return None
+    return case.recomputation.worst_case
