@@ -18,9 +18,12 @@ import sys
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
+from zipfile import ZipFile
 
 import pytest
 from pypdf import PdfReader
+
+from service.command.main import SUBJECTS
 
 ROOT = Path(__file__).parents[2]
 pytestmark = pytest.mark.xdist_group("wheel")
@@ -30,6 +33,7 @@ pytestmark = pytest.mark.xdist_group("wheel")
 class Installed:
     """The console command in its own environment, and a folder that is not the clone."""
 
+    wheel: Path
     programs: Path
     folder: Path
 
@@ -59,7 +63,7 @@ def installed(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Installed]:
     subprocess.run([sys.executable, "-m", "venv", "--without-pip", place / "venv"], check=True)
     install = ["--python", place / "venv/bin/python", "install", "--no-compile", wheel]
     subprocess.run([*pip, *install], check=True)
-    yield Installed(place / "venv/bin", tmp_path_factory.mktemp("elsewhere"))
+    yield Installed(wheel, place / "venv/bin", tmp_path_factory.mktemp("elsewhere"))
     shutil.rmtree(place)  # some hundred megabytes
 
 
@@ -96,12 +100,26 @@ def follow(installed: Installed, folder: Path, block: str) -> str:
     return printed
 
 
+def test_the_wheel_holds_every_kept_file_of_the_service(installed: Installed) -> None:
+    kept = subprocess.run(
+        ["git", "ls-files", "service", "migrations"],  # noqa: S607  the README asks for git
+        cwd=ROOT,
+        check=True,
+        capture_output=True,
+        text=True,
+    ).stdout.splitlines()
+    with ZipFile(installed.wheel) as wheel:
+        held = set(wheel.namelist())
+    missing = [
+        name for name in kept if re.sub("^migrations/", "service/records/migrations/", name) not in held
+    ]
+    assert missing == []
+
+
 def test_the_installed_command_lists_what_it_can_do(installed: Installed) -> None:
     answer = installed.run("--help")
     assert answer.returncode == 0, answer.stderr
-    assert re.findall(r"^  (\w+)  ", answer.stdout, re.MULTILINE) == (
-        ["account", "demo", "history", "migrate", "recompute", "serve", "token"]
-    )
+    assert re.findall(r"^  (\w+)  ", answer.stdout, re.MULTILINE) == sorted(SUBJECTS)
 
 
 def test_the_readme_s_question_without_a_record_is_answered(installed: Installed, tmp_path: Path) -> None:
