@@ -92,12 +92,12 @@ def kept(databases: Databases) -> Kept:
     migrating.migrate(url, now=system_clock())
     database = Database.open(url, password_hasher=CHEAP)
     with database.writing() as session:
-        issued = {person: _account(session, database, person) for person in PEOPLE}
+        issued = {person: add_account(session, database, person) for person in PEOPLE}
     database.close()
     return Kept(url, issued)
 
 
-def _account(session: Any, database: Database, person: str) -> str:
+def add_account(session: Any, database: Database, person: str) -> str:
     roles, areas = PEOPLE[person]
     new = NewAccount(
         name=person, full_name=person.title(), roles=roles, areas=areas, password=password_of(person)
