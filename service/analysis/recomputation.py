@@ -83,7 +83,9 @@ def recompute(
     # python-control takes longer to import than everything else together, so only who asks for it waits
     from service.analysis.second_opinion import second_opinion  # noqa: PLC0415
 
-    return replace(result, second_opinion=second_opinion(parts, result.continuous, settling_band_percent))
+    scan = controller.scan if isinstance(controller.scan, Scan) else None
+    opinion = second_opinion(parts, scan, result.sampled or result.continuous, settling_band_percent)
+    return replace(result, second_opinion=opinion)
 
 
 def _recompute(

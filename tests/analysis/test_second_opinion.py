@@ -12,12 +12,15 @@ import pytest
 
 from service.analysis.controller import (
     IdealController,
+    IntegralTime,
     Proportional,
+    Scan,
     TwoZerosController,
 )
 from service.analysis.loop import ClosedLoopParts, form_loop
 from service.analysis.plant import FirstOrder, PlantModel, TransferFunction
-from service.analysis.results import Analysis, Crossovers, Margins, SetpointStep, Stability
+from service.analysis.recomputation import recompute
+from service.analysis.results import Analysis, Crossovers, Margins, SecondOpinion, SetpointStep, Stability
 from service.analysis.second_opinion import second_opinion
 from tests.checks.loops import CheckLoop, read
 
@@ -67,12 +70,12 @@ def parts_of(loop: CheckLoop, time_scale: float = 1.0) -> ClosedLoopParts:
 
 @pytest.mark.parametrize("name", sorted(set(LOOPS) - OVERSHOOT_OFF))
 def test_on_ordinary_loops_the_library_agrees(name: str) -> None:
-    opinion = second_opinion(parts_of(LOOPS[name]), recomputed(LOOPS[name]), 2.0)
+    opinion = second_opinion(parts_of(LOOPS[name]), None, recomputed(LOOPS[name]), 2.0)
     assert opinion.outcome == "agrees", opinion.note
 
 
 def test_a_library_wrong_by_its_grid_differs_and_the_note_says_where_and_why() -> None:
-    opinion = second_opinion(parts_of(LOOPS["ipdt_00"]), recomputed(LOOPS["ipdt_00"]), 2.0)
+    opinion = second_opinion(parts_of(LOOPS["ipdt_00"]), None, recomputed(LOOPS["ipdt_00"]), 2.0)
     assert opinion.outcome == "differs"
     assert "differs in overshoot" in opinion.note
     assert "grid of times" in opinion.note
@@ -80,9 +83,9 @@ def test_a_library_wrong_by_its_grid_differs_and_the_note_says_where_and_why() -
 
 @pytest.mark.parametrize("time_scale", [1e3, 1.0 / 3600.0])
 def test_the_unit_of_time_does_not_change_the_opinion(time_scale: float) -> None:
-    in_seconds = second_opinion(parts_of(LOOPS["fopdt_08"]), recomputed(LOOPS["fopdt_08"]), 2.0)
+    in_seconds = second_opinion(parts_of(LOOPS["fopdt_08"]), None, recomputed(LOOPS["fopdt_08"]), 2.0)
     told_otherwise = second_opinion(
-        parts_of(LOOPS["fopdt_08"], time_scale), recomputed(LOOPS["fopdt_08"]), 2.0
+        parts_of(LOOPS["fopdt_08"], time_scale), None, recomputed(LOOPS["fopdt_08"]), 2.0
     )
     for name in ("gain_margin", "phase_margin_deg", "max_sensitivity", "overshoot_percent"):
         assert told_otherwise.values[name] == pytest.approx(in_seconds.values[name], rel=1e-6)
@@ -104,14 +107,14 @@ def test_the_unit_of_time_does_not_change_the_opinion(time_scale: float) -> None
 def test_each_value_that_is_not_ours_is_a_difference(name: str, factor: float, words: str) -> None:
     loop = LOOPS["fopdt_08"]
     truth = {**loop.expected, **loop.expected["step"]}
-    opinion = second_opinion(parts_of(loop), recomputed(loop, **{name: truth[name] * factor}), 2.0)
+    opinion = second_opinion(parts_of(loop), None, recomputed(loop, **{name: truth[name] * factor}), 2.0)
     assert opinion.outcome == "differs"
     assert f"differs in {words} (" in opinion.note
 
 
 def test_a_verdict_that_is_not_ours_is_a_difference() -> None:
     loop = LOOPS["fopdt_00"]
-    opinion = second_opinion(parts_of(loop), recomputed(loop, stable=False, unstable_roots=0), 2.0)
+    opinion = second_opinion(parts_of(loop), None, recomputed(loop, stable=False, unstable_roots=0), 2.0)
     assert opinion.outcome == "differs"
     assert "differs in the number of unstable roots (" in opinion.note
 
@@ -120,7 +123,7 @@ def test_infinitely_many_roots_are_no_difference_where_the_library_finds_any() -
     loop = LOOPS["fopdt_00"]
     ours = recomputed(loop)
     many = replace(ours, stability=replace(ours.stability, unstable_roots="unbounded"))
-    assert second_opinion(parts_of(loop), many, 2.0).outcome == "agrees"
+    assert second_opinion(parts_of(loop), None, many, 2.0).outcome == "agrees"
 
 
 def test_a_settling_time_near_an_extremum_is_not_compared() -> None:
@@ -128,22 +131,22 @@ def test_a_settling_time_near_an_extremum_is_not_compared() -> None:
     ours = recomputed(loop, settling_time_s=1.0)
     assert ours.setpoint_step is not None
     sensitive = replace(ours, setpoint_step=replace(ours.setpoint_step, settling_time_sensitive=True))
-    assert second_opinion(parts_of(loop), sensitive, 2.0).outcome == "agrees"
+    assert second_opinion(parts_of(loop), None, sensitive, 2.0).outcome == "agrees"
 
 
 def test_the_settling_band_is_the_one_asked_for() -> None:
     loop = LOOPS["fopdt_08"]
-    two, five = (second_opinion(parts_of(loop), recomputed(loop), band).values for band in (2.0, 5.0))
+    two, five = (second_opinion(parts_of(loop), None, recomputed(loop), band).values for band in (2.0, 5.0))
     assert five["settling_time_s"] < two["settling_time_s"]  # type: ignore[operator]
 
 
 def test_without_dead_time_nothing_is_approximated() -> None:
-    opinion = second_opinion(parts_of(LOOPS["zero_04"]), recomputed(LOOPS["zero_04"]), 2.0)
+    opinion = second_opinion(parts_of(LOOPS["zero_04"]), None, recomputed(LOOPS["zero_04"]), 2.0)
     assert opinion.approximation is None
 
 
 def test_with_dead_time_the_approximation_is_named() -> None:
-    opinion = second_opinion(parts_of(LOOPS["fopdt_08"]), recomputed(LOOPS["fopdt_08"]), 2.0)
+    opinion = second_opinion(parts_of(LOOPS["fopdt_08"]), None, recomputed(LOOPS["fopdt_08"]), 2.0)
     assert opinion.approximation == "dead time by a Padé approximation of order 10"
     assert (opinion.library, opinion.version) == ("python-control", control.__version__)
 
@@ -168,21 +171,21 @@ def anything(verdict: str = "stable") -> Analysis:
 
 def test_a_loop_that_never_crosses_comes_back_without_inf_or_nan() -> None:
     plant = FirstOrder(kind="first_order", gain=0.5, time_constant_s=4.0)
-    values = second_opinion(proportional_loop(plant), anything(), 2.0).values
+    values = second_opinion(proportional_loop(plant), None, anything(), 2.0).values
     assert values["gain_margin"] == values["phase_margin_deg"] == "unbounded"
     assert values["max_sensitivity"] is None
 
 
 def test_a_loop_on_which_the_library_fails_is_not_available_and_raises_nothing() -> None:
     plant = FirstOrder(kind="first_order", gain=1e300, time_constant_s=1.0, dead_time_s=1e-60)
-    opinion = second_opinion(proportional_loop(plant), anything("unstable"), 2.0)
+    opinion = second_opinion(proportional_loop(plant), None, anything("unstable"), 2.0)
     assert (opinion.outcome, opinion.values) == ("not_available", {})
     assert "could not analyse this loop" in opinion.note
 
 
 def test_a_response_without_a_final_value_has_no_step_metrics() -> None:
     washout = TransferFunction(kind="transfer_function", numerator=(1.0, 0.0), denominator=(1.0, 1.0, 2.0))
-    values = second_opinion(proportional_loop(washout), anything(), 2.0).values
+    values = second_opinion(proportional_loop(washout), None, anything(), 2.0).values
     assert values["verdict"] == "stable"
     assert values["settling_time_s"] is None
 
@@ -190,13 +193,13 @@ def test_a_response_without_a_final_value_has_no_step_metrics() -> None:
 def test_where_the_peak_sensitivity_differs_the_ends_of_the_axis_are_named() -> None:
     loop = LOOPS["fopdt_08"]
     ours = recomputed(loop, max_sensitivity=2.0 * loop.expected["max_sensitivity"])
-    assert "here its ends count" in second_opinion(parts_of(loop), ours, 2.0).note
+    assert "here its ends count" in second_opinion(parts_of(loop), None, ours, 2.0).note
 
 
 def test_an_integrator_hidden_by_a_zero_counts_as_a_pole() -> None:
     hiding = TwoZerosController(form="two_zeros", action="reverse", gain=1.0, zeros_rad_s=(0.0,))
     plant = FirstOrder(kind="first_order", gain=1.0, time_constant_s=3.0)
-    values = second_opinion(form_loop(plant, hiding, None), anything("unstable"), 2.0).values
+    values = second_opinion(form_loop(plant, hiding, None), None, anything("unstable"), 2.0).values
     assert values["verdict"] == "unstable"
 
 
@@ -206,3 +209,40 @@ def test_the_library_is_imported_only_with_this_module() -> None:
         "import service.analysis.second_opinion; assert 'control' in sys.modules"
     )
     subprocess.run([sys.executable, "-c", script], check=True)
+
+
+def scanned(gain: float, integral_s: float | None = None, **scan: Any) -> SecondOpinion:
+    plant = FirstOrder(
+        kind="first_order", gain=1.2, time_constant_s=30.0, dead_time_s=scan.pop("dead_time_s", 5.0)
+    )
+    controller = IdealController(
+        form="ideal",
+        action="reverse",
+        proportional=Proportional(value=gain, unit="gain"),
+        integral=None if integral_s is None else IntegralTime(value=integral_s, unit="seconds"),
+        scan=Scan(**scan),
+    )
+    opinion = recompute(plant, controller, with_second_opinion=True).second_opinion
+    assert opinion is not None
+    return opinion
+
+
+@pytest.mark.parametrize("method", ["backward_difference", "trapezoidal"])
+@pytest.mark.parametrize("dead_time_s", [0.0, 5.0, 6.3])
+def test_on_an_ordinary_scanned_loop_the_library_agrees(method: str, dead_time_s: float) -> None:
+    opinion = scanned(2.0, 40.0, interval_s=1.0, method=method, dead_time_s=dead_time_s)
+    assert opinion.outcome == "agrees", opinion.note
+    assert opinion.values["gain_margin"] != "unbounded"
+    assert opinion.approximation is not None
+    assert ("Padé" in opinion.approximation) == (dead_time_s == 6.3)
+
+
+def test_on_a_loop_that_its_scan_destabilises_the_library_agrees() -> None:
+    opinion = scanned(5.0, 40.0, interval_s=20.0)
+    assert (opinion.outcome, opinion.values["verdict"]) == ("agrees", "unstable")
+
+
+def test_a_dead_time_of_very_many_scans_is_not_available() -> None:
+    opinion = scanned(2.0, 40.0, interval_s=0.1)
+    assert opinion.outcome == "not_available"
+    assert "too many scans" in opinion.note
