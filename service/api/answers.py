@@ -30,6 +30,8 @@ class Answer:
     etag: str | None = None
     link: str | None = None
     file_name: str | None = None
+    kept_body: bytes | None = None
+    """What is kept under an Idempotency-Key in place of a body that holds a secret."""
 
 
 def document(

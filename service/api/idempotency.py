@@ -32,7 +32,7 @@ _KEY = re.compile(rf"[!-~]{{1,{KEY_CHARACTERS_MAX}}}")
 class Key:
     """A key with what identifies its request.
 
-    The password is no part of the fingerprint: it is checked again.
+    No password is part of the fingerprint; the one that signs is checked again.
     """
 
     text: str
@@ -86,7 +86,7 @@ def _kept(answer: Answer, key: Key) -> KeptAnswer:
         status=answer.status,
         location=answer.location,
         etag=answer.etag,
-        body=answer.body,
+        body=answer.body if answer.kept_body is None else answer.kept_body,
     )
 
 
@@ -94,5 +94,6 @@ def _without_password(plain: Plain) -> tuple[Plain, str | None]:
     if not isinstance(plain, dict):
         return plain, None
     password = plain.get("password")
-    rest = {name: value for name, value in plain.items() if name != "password"}
+    # a fingerprint is a quick hash, from which a password could be guessed: none goes into it
+    rest = {name: value for name, value in plain.items() if not name.endswith("password")}
     return rest, password if isinstance(password, str) else None

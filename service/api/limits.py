@@ -41,6 +41,8 @@ class Limits:
     """Of one gain set."""
     prepared_by_max: int = limits.PREPARED_BY_MAX
     deviations_max: int = limits.DEVIATIONS_MAX
+    areas_max: int = limits.AREAS_MAX
+    """Of one account."""
     recorded_settings_max: int = MAX_RECORDED_SETTINGS
     plant_order_max: int = MAX_ORDER
     """Poles of a plant model, and zeros."""

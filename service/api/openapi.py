@@ -13,6 +13,7 @@ from werkzeug.routing import Rule
 from service.api import answers, idempotency, problems, queries
 from service.api.answers import Answer
 from service.api.operations import Changing, Computing, Operation, Reading
+from service.api.people import Account
 from service.api.problems import ProblemType
 from service.api.queries import PageQuery
 from service.api.representations import Loop
@@ -38,7 +39,7 @@ WITH_BODY = (
     problems.IDEMPOTENCY_KEY_REUSED,
 )
 CHANGING = (problems.FORBIDDEN, problems.CONFLICT)
-REPLACING = (problems.PRECONDITION_REQUIRED, problems.PRECONDITION_FAILED, problems.SECOND_PERSON_NEEDED)
+REPLACING = (problems.PRECONDITION_REQUIRED, problems.PRECONDITION_FAILED)
 SIGNING = (problems.SIGNING_REFUSED, problems.PRECONDITION_FAILED, problems.TOO_MANY_REQUESTS)
 
 SENT: Json = {
@@ -196,7 +197,7 @@ def _answer_schema(operation: Operation, of_written: dict[type, Json]) -> Json:
 def _headers_sent(operation: Operation) -> Iterator[str]:
     if operation.status == 201:
         yield "Location"
-    if operation.answer is Loop and not operation.a_list:
+    if operation.answer in (Loop, Account) and not operation.a_list:
         yield "ETag"
     if isinstance(operation, Reading) and issubclass(operation.query, PageQuery):
         yield "Link"
@@ -228,3 +229,5 @@ def _problems(route: Route) -> Iterator[ProblemType]:
         yield from SIGNING if route.operation.trace else ()
     if route.method == "put":
         yield from REPLACING
+    if route.method == "put" and route.operation.answer is Loop:
+        yield problems.SECOND_PERSON_NEEDED

@@ -5,11 +5,17 @@ from __future__ import annotations
 from flask import Request
 
 from service.api.refusals import Stale, StateNotNamed
+from service.documents import canonical, writing
 
 
 def revision_etag(revision: int) -> str:
     """Return the entity tag of a resource that counts its revisions."""
     return f"revision-{revision}"
+
+
+def content_etag(shown: object) -> str:
+    """Return the entity tag of a resource that has no revisions, made from what is shown of it."""
+    return canonical.digest(writing.plain(shown))[:32]
 
 
 def check_match(request: Request, etag: str) -> None:

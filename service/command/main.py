@@ -14,7 +14,7 @@ import click  # noqa: E402  the variables above come first on purpose
 from service.documents.version import SERVICE_VERSION  # noqa: E402  see above
 
 SUBJECTS: dict[str, tuple[str, str]] = {
-    "account": ("service.command.account", "Make accounts."),
+    "account": ("service.command.account", "Make accounts and look after them."),
     "demo": ("service.command.demo", "Show the service on an invented plant."),
     "history": ("service.command.history", "Verify and export the history of the records."),
     "key": ("service.command.key", "Make, show and change the key that signs checkpoints."),

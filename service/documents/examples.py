@@ -11,6 +11,15 @@ from service.documents.changes import ChangeDecisionRequest, LoopChangeRequest
 from service.documents.decisions import DecisionRequest
 from service.documents.installations import InstallationRequest
 from service.documents.loops import LoopRegistration, ModelVersion
+from service.documents.people import (
+    AccessRequest,
+    AccountRequest,
+    FullNameRequest,
+    PasswordChangeRequest,
+    PasswordResetRequest,
+    ReasonRequest,
+    TokenRequest,
+)
 from service.documents.recomputations import RecomputationRequest
 from service.documents.submissions import SubmissionRequest
 
@@ -82,6 +91,29 @@ EXAMPLES: dict[type, dict[str, Any]] = {
         "content_digest": "5b0e6f6a" * 8,
         "password": "the password of whoever signs",
     },
+    AccountRequest: {
+        "name": "m.okafor",
+        "full_name": "Mina Okafor",
+        "roles": ["submitter"],
+        "areas": ["Washing"],
+        "new_password": "fifteen characters or more",
+    },
+    AccessRequest: {
+        "roles": ["submitter", "reviewer"],
+        "areas": ["Washing", "Drying"],
+        "reason": "Reviews for the day shift from May on.",
+    },
+    FullNameRequest: {"full_name": "Mina Okafor-Lind", "reason": "Married."},
+    ReasonRequest: {"reason": "Left the site."},
+    PasswordResetRequest: {
+        "new_password": "fifteen characters or more",
+        "reason": "Forgotten; asked for in person.",
+    },
+    PasswordChangeRequest: {
+        "present_password": "the password until now",
+        "new_password": "fifteen characters or more",
+    },
+    TokenRequest: {"account": "m.okafor", "note": "tuning tool on the engineering station"},
     DecisionRequest: {
         "decision": "approve",
         "reason": "Margins agree with two independent step tests.",

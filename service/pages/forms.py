@@ -7,7 +7,7 @@ from dataclasses import dataclass, field
 
 from flask import request
 
-SECRET = frozenset({"password", "token"})
+SECRET = frozenset({"password", "present_password", "new_password", "again", "token"})
 """Fields that are never kept and never shown again."""
 
 

@@ -14,6 +14,7 @@ from service.pages import (
     loop_changes,
     loops,
     paper,
+    password,
     sign_in,
     submission_list,
     submissions,
@@ -35,6 +36,7 @@ SUBJECTS = (
     installations,
     paper,
     history,
+    password,
 )
 
 

@@ -19,6 +19,12 @@ _OWN_PATH = re.compile(r"/(?![/\\])[^\\\s\x00-\x1f\x7f]*")
 
 WRONG = Problem("The name and the password do not belong together, or the account is closed.")
 
+_TOLD = {
+    "left": "You are signed out.",
+    "changed": "Your password is changed. Sign in with the new one.",
+}
+"""What stands in the address → what it says; anything else there says nothing."""
+
 
 def add_to(pages: Blueprint) -> None:
     """Add these pages."""
@@ -29,7 +35,8 @@ def add_to(pages: Blueprint) -> None:
 def sign_in() -> AnyResponse:
     """Ask for name and password; a session begins with a new identifier."""
     if request.method == "GET":
-        return form_page(Form({"next": request.args.get("next", "")}), signed_out="left" in request.args)
+        form = Form({"next": request.args.get("next", "")})
+        return form_page(form, told=next((_TOLD[name] for name in _TOLD if name in request.args), ""))
     form = forms.posted()
     try:
         source = request.remote_addr or ""
@@ -52,11 +59,12 @@ def sign_out() -> AnyResponse:
     return response
 
 
-def form_page(
-    form: Form, *, status: int = 200, signed_out: bool = False, lost: Form | None = None
-) -> Response:
-    """The sign-in form. `lost`: what was typed into another form while the session ended."""
-    response = page("sign_in.html", status, form=form, signed_out=signed_out, lost=lost)
+def form_page(form: Form, *, status: int = 200, told: str = "", lost: Form | None = None) -> Response:
+    """The sign-in form.
+
+    `told`: what has just been done. `lost`: what was typed into another form while the session ended.
+    """
+    response = page("sign_in.html", status, form=form, told=told, lost=lost)
     if status == 401:
         response.headers["WWW-Authenticate"] = 'Form realm="gain sign-off"'
     visits.keep_visit(response)

@@ -22,6 +22,7 @@ from service.records.errors import (
     NotAuthenticated,
     NotFound,
     NotIndependent,
+    SigningRefused,
     SigningSuspended,
     WrongPassword,
 )
@@ -56,7 +57,7 @@ def add(session: Session, actor: Actor, new: NewAccount, now: datetime) -> Accou
         _name_problem(new.name),
         _text_problem(new.full_name, "/full_name", FULL_NAME_CHARACTERS_MAX),
         *_access_problems(new.roles, new.areas),
-        passwords.problem(new.password, "/password"),
+        passwords.problem(new.password, "/new_password"),
     )
     if new.name == CONSOLE_NAME or _row(session, new.name) is not None:
         raise AlreadyExists(f"the name {new.name} is taken; names are never used twice")
@@ -159,8 +160,20 @@ def change_password(session: Session, actor: Actor, password: str, new_password:
     """Change one's own password and end all one's sessions. Raises WrongPassword, FieldErrors."""
     account = _own(session, actor)
     _check(session, account, password, now)
+    throttles.forget(session, throttles.of_account(account.name))
     _set_password(session, account, new_password, now)
     _tell(session, actor, "password_changed", account, now, {})
+
+
+def record_refused_password(session: Session, actor: Actor, refusal: SigningRefused, now: datetime) -> None:
+    """Leave the trace of a change of password that was refused, and count a wrong password.
+
+    In a transaction of its own, after what was begun has been rolled back.
+    """
+    account = _own(session, actor)
+    if isinstance(refusal, WrongPassword):
+        throttles.count(session, throttles.of_account(account.name), now)
+    _tell(session, actor, "password_change_refused", account, now, {"reason": refusal.detail})
 
 
 def reset_password(

@@ -3,11 +3,10 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Literal
 
+from service.documents.people import Role as Role
 from service.records.errors import NotAllowed, NotFound
 
-Role = Literal["submitter", "reviewer", "auditor", "administrator"]
 ROLES: tuple[Role, ...] = ("submitter", "reviewer", "auditor", "administrator")
 
 CONSOLE_NAME = "console"

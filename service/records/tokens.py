@@ -58,24 +58,24 @@ def issue(
 def tokens(session: Session, actor: Actor, account_name: str | None = None) -> tuple[TokenView, ...]:
     """Tokens of one account or of all, by account and time of issue.
 
-    Raises NotAllowed for others' tokens unless the actor is an administrator.
+    Raises NotAllowed for others' tokens unless the actor is an administrator or an auditor.
     """
     if account_name != actor.name:
-        require_role(actor, "administrator")
+        require_role(actor, "administrator", "auditor")
     query = select(Token, Account.name).join(Account).order_by(Account.name, Token.issued_at, Token.id)
     if account_name is not None:
         query = query.where(Account.name == account_name)
     return tuple(_view(token, name) for token, name in session.execute(query))
 
 
+def check_may_revoke(session: Session, actor: Actor, token_id: str) -> None:
+    """Raise NotFound for whoever neither owns the token nor is an administrator."""
+    _found(session, actor, token_id)
+
+
 def revoke(session: Session, actor: Actor, token_id: str, reason: str, now: datetime) -> TokenView:
     """Revoke a token, one's own or, as an administrator, any. Raises NotFound, FieldErrors, Conflict."""
-    found = session.execute(
-        select(Token, Account.name).join(Account).where(Token.id == token_id)
-    ).one_or_none()
-    if found is None or (found[1] != actor.name and "administrator" not in actor.roles):
-        raise NotFound("there is no such token")
-    token, account_name = found
+    token, account_name = _found(session, actor, token_id)
     if not reason.strip() or len(reason) > accounts.REASON_CHARACTERS_MAX:
         raise FieldErrors((FieldProblem("/reason", "a reason is wanted"),))
     if token.revoked_at is not None:
@@ -117,6 +117,16 @@ def note_use(session: Session, token_id: str, now: datetime) -> None:
     if account is not None:
         account.last_used_at = now
     session.flush()
+
+
+def _found(session: Session, actor: Actor, token_id: str) -> tuple[Token, str]:
+    found = session.execute(
+        select(Token, Account.name).join(Account).where(Token.id == token_id)
+    ).one_or_none()
+    if found is None or (found[1] != actor.name and "administrator" not in actor.roles):
+        raise NotFound("there is no such token")
+    token, account_name = found
+    return token, account_name
 
 
 def _hash(secret: bytes) -> bytes:

@@ -74,6 +74,7 @@ SIZED: dict[str, Sized] = {
     "operating_points_max": lambda n: _sets(1, n),
     "prepared_by_max": lambda n: _submitted(prepared_by=["submitter"] * n),
     "deviations_max": _deviations,
+    "areas_max": lambda n: ("access", {"roles": ["reviewer"], "areas": ["x"] * n, "reason": "moved"}),
     "recorded_settings_max": lambda n: _recomputed(
         controller=plant.CONTROLLER
         | {"recorded_settings": [{"name": f"{k}", "value": 1, "unit": ""} for k in range(n)]}
@@ -116,6 +117,10 @@ def _sent(service: Service, submission: Body, sized: tuple[str, Any]) -> Any:
     path, body = sized
     if path == "decisions":
         return service.post(f"/v1/submissions/{submission['id']}/decisions", body, "reviewer")
+    if path == "access":
+        account = service.get("/v1/accounts/reviewer", "administrator")
+        headers = {"If-Match": account.headers["ETag"]}
+        return service.call("PUT", "/v1/accounts/reviewer/access", "administrator", body, headers=headers)
     return service.post(path, body)
 
 

@@ -90,6 +90,11 @@ def test_a_listed_token_can_be_revoked_by_its_identifier(store: Run) -> None:
         (REVIEWER, "short\n", "15"),
         (("account", "add", "console", *REVIEWER[3:]), PASSWORD, "taken"),
         (("token", "issue", "nobody", "--note", "bench"), "", "no such account"),
+        (("account", "close", "nobody", "--reason", "left"), "", "no such account"),
+        (("account", "rename", "nobody", "--full-name", "N", "--reason", "married"), "", "no such account"),
+        (("account", "access", "nobody", "--role", "auditor", "--reason", "moved"), "", "no such account"),
+        (("account", "reset-password", "nobody", "--reason", "lost"), PASSWORD, "no such account"),
+        (("account", "reset-password", "nobody", "--reason", "lost"), "", "password"),
         (("token", "revoke", "unknown", "--reason", "lost"), "", "no such"),
     ],
 )
@@ -116,6 +121,38 @@ def test_a_store_of_another_schema_is_said(run: Run, url: str) -> None:
     if is_sqlite(url):
         file_of(url).touch()
     assert "gain-signoff migrate" in refused_in_one_sentence(run("token", "list"))
+
+
+def test_accounts_are_listed_with_what_they_may(store: Run) -> None:
+    store(*REVIEWER, "--area", "Washing", standard_input=PASSWORD)
+    line = store("account", "list").stdout.strip().split("\t")
+    assert line == ["ines", "Ines Okafor", "reviewer", "Washing", "open", "never used"]
+    assert store("account", "list", "--unused").stdout == ""
+
+
+def test_roles_areas_and_name_are_changed_with_a_reason(store: Run) -> None:
+    store(*REVIEWER, standard_input=PASSWORD)
+    changed = store("account", "access", "ines", "--role", "auditor", "--area", "Drying", "--reason", "moved")
+    assert changed.stdout == "ines is auditor in Drying.\n"
+    renamed = store("account", "rename", "ines", "--full-name", "Ines Lind", "--reason", "married")
+    assert renamed.stdout == "ines is Ines Lind.\n"
+    line = store("account", "list").stdout.strip().split("\t")
+    assert line[:4] == ["ines", "Ines Lind", "auditor", "Drying"]
+
+
+def test_a_reset_suspends_signing_and_the_console_cannot_confirm_it(store: Run) -> None:
+    store(*REVIEWER, standard_input=PASSWORD)
+    new = "nine dry bicycles\n"
+    reset = store("account", "reset-password", "ines", "--reason", "forgotten", standard_input=new)
+    assert reset.exit_code == 0
+    assert new.strip() not in reset.output
+    assert "signs nothing until its reset is confirmed" in store("account", "list").stdout
+
+
+def test_a_closed_account_stays_in_the_list(store: Run) -> None:
+    store(*REVIEWER, standard_input=PASSWORD)
+    assert store("account", "close", "ines", "--reason", "left").stdout == "Closed ines.\n"
+    assert "closed" in store("account", "list").stdout
 
 
 @pytest.mark.parametrize("subject", SUBJECTS)

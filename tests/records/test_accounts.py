@@ -55,8 +55,8 @@ def _sign_in(
 @pytest.mark.parametrize(
     ("changes", "pointer"),
     [
-        ({"password": "fourteen chars"}, "/password"),
-        ({"password": "x" * 129}, "/password"),
+        ({"password": "fourteen chars"}, "/new_password"),
+        ({"password": "x" * 129}, "/new_password"),
         ({"name": "New Comer"}, "/name"),
         ({"name": "nеwcomer"}, "/name"),  # a Cyrillic letter
         ({"name": ""}, "/name"),
