@@ -44,6 +44,11 @@ def test_gains_of_every_form_are_shown(form: str) -> None:
     assert controllers(PLANT, form=form)
 
 
+def test_scanned_controllers_and_an_uncertain_model_are_shown() -> None:
+    assert len([gains for gains in PLANT.gains.values() if gains["scan"]]) >= 4
+    assert any("uncertainty" in loop.model["plant_model"] for loop in PLANT.loops.values())
+
+
 def test_both_actions_are_shown() -> None:
     assert controllers(PLANT, action="direct")
     assert controllers(PLANT, action="reverse")

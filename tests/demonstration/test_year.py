@@ -96,6 +96,20 @@ def test_the_rejected_gains_of_the_vacuum_had_the_wrong_action(shown: Shown) -> 
     assert "wrong_action" in findings
 
 
+def test_the_rejected_gains_of_the_ph_would_have_cycled_on_the_steep_part_of_its_curve(shown: Shown) -> None:
+    (acid,) = shown.submissions("&state=rejected&tag=AIC-2231")
+    worst = acid["recomputations"][0]["result"]["worst_case"]
+    assert worst["stable_for_all"] is False
+    (acid,) = shown.submissions("&state=in_force&tag=AIC-2231")
+    assert acid["recomputations"][0]["result"]["worst_case"]["stable_for_all"] is True
+
+
+def test_the_cascade_is_judged_as_its_controllers_scan_it(shown: Shown) -> None:
+    for tag in ("TIC-2240", "TIC-2241"):
+        (loop,) = shown.submissions(f"&state=in_force&tag={tag}")
+        assert loop["recomputations"][0]["result"]["judged_on"] == "sampled"
+
+
 def test_nothing_that_was_approved_is_below_the_service_s_floors(shown: Shown) -> None:
     for submission in shown.submissions():
         if any(decision["decision"] == "approve" for decision in submission["decisions"]):
