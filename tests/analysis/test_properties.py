@@ -12,7 +12,7 @@ from dataclasses import dataclass, fields, replace
 from typing import Any
 
 import pytest
-from hypothesis import HealthCheck, assume, given, settings
+from hypothesis import HealthCheck, assume, given, reject, settings
 from hypothesis import strategies as st
 
 from service.analysis.controller import (
@@ -30,6 +30,7 @@ from service.analysis.controller import (
     TwoZerosController,
 )
 from service.analysis.equivalents import equivalent_gains
+from service.analysis.errors import FieldError
 from service.analysis.plant import ZerosPolesGain
 from service.analysis.recomputation import recompute
 from service.analysis.results import Analysis, EquivalentTerms, Margins
@@ -40,7 +41,7 @@ from tests.references.winding import roots_right_of
 EXAMPLES = os.environ.get("PROPERTY_EXAMPLES")
 
 tried = settings(
-    max_examples=int(EXAMPLES or 50),
+    max_examples=int(EXAMPLES or 30),
     derandomize=EXAMPLES is None,
     suppress_health_check=[HealthCheck.filter_too_much, HealthCheck.too_slow],
 )
@@ -72,7 +73,11 @@ class Loop:
     controller: IdealController
 
     def analysis(self) -> Analysis:
-        return recompute(self.plant, self.controller).continuous
+        try:
+            return recompute(self.plant, self.controller).continuous
+        except FieldError:
+            # ill-posed: without dead time the gain at infinite frequency is −1
+            reject()
 
     def in_time(self, unit: float) -> Loop:
         """The loop with every time multiplied."""
