@@ -84,8 +84,9 @@ class DeadTimes:
         log = self.log_factor[0]
         if not (self.entered > 0 and log < 0):
             return np.where(less > 0, np.inf, 0.0)
+        # a dead time of 0 is only approached
         share = np.where(less < self.nominal, less, self.entered) / self.entered
-        return np.asarray(np.log1p(-share) / log)
+        return np.where(less > 0, np.log1p(-share) / log, 0.0)
 
 
 @dataclass(frozen=True, slots=True)

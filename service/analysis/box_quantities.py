@@ -18,6 +18,7 @@ it, less what the cell's width carries across.
 from __future__ import annotations
 
 import math
+from abc import ABC, abstractmethod
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -187,7 +188,7 @@ class Linear(NamedTuple):
 
 
 @dataclass(frozen=True, eq=False)
-class _OverCrossings:
+class _OverCrossings(ABC):
     """What margins have in common: a value that exists where two constraints hold."""
 
     bounds: Bounds
@@ -209,9 +210,9 @@ class _OverCrossings:
         low, high = self.bounds.log_gain
         return np.asarray(~(high_x + high < 0) & ~(low_x + low > 0))
 
+    @abstractmethod
     def _values(self, logs: Complexes, omega: Reals) -> Reals:
         """The value at points, inf where the constraints do not hold; `logs`: ln(−L) without dead time."""
-        raise NotImplementedError
 
     def _solved(self, logs: Complexes, slopes: Complexes, omega: Reals) -> tuple[Reals, Reals]:
         """(What is 0 where one or other constraint is just met, its slope by w), (2, …)."""

@@ -208,4 +208,5 @@ def _at_upper(loop: UncertainLoop, end: End) -> tuple[float, float]:
 
 def _needed(log: float, error: float, logs: tuple[float, float]) -> tuple[float, float]:
     near = math.copysign(max(0.0, abs(log) - error), log)
-    return float(scale_of(np.array([near]), logs)[0]), float(scale_of(np.array([log]), logs)[0])
+    proven, attained = scale_of(np.array([near, log]), logs)
+    return float(proven), float(attained) * (1.0 + NEARLY)

@@ -56,6 +56,9 @@ FLAT_SENSITIVITY = 1.002
 WIDEST_SLACK = 0.99
 """With this share of the distance left open its bracket is a hundredfold: a proof, and no more."""
 
+STEPS_BEYOND = (1.0, 0.3, 0.1, 0.03, 0.01, 0.002)
+"""How far beyond a member with a root on the axis unstable ones are looked for, relatively."""
+
 BOUNDARY = 1e-7
 """A box whose edge is so near to a member with a root on the axis is not told from one that holds it."""
 
@@ -335,9 +338,8 @@ def _beyond(loop: UncertainLoop, tolerated: Tolerated) -> list[Touching]:
     if touching is None or not tolerated.attained > 0:
         return []
     nominal, (low, high) = loop.dead_times.nominal, loop.dead_times.range()
-    places = []
-    for share in (1.0, 0.5, 0.2, 0.05, 0.01, 0.002):
-        factor = 1.0 + share * (1.0 / tolerated.attained - 1.0)
+    edge, places = 1.0 / tolerated.attained, []
+    for factor in sorted({edge, *(min(edge, 1.0 + step) for step in STEPS_BEYOND)}, reverse=True):
         dead_time = nominal + factor * (touching.dead_time - nominal)
         dead_time = min(max(dead_time, low), high)
         places.append(Touching(factor * touching.log_gain, factor * touching.log_time, dead_time))
