@@ -19,7 +19,11 @@ from service.settings import Settings, SettingsError
 @click.option("--port", default=8000, show_default=True, type=click.IntRange(0, 65535), help="0: any free.")
 def serve(host: str, port: int) -> None:
     """Run the service until it is told to end (SIGTERM or SIGINT); requests that were begun are finished."""
-    store.check()
+    if store.may_change_what_is_kept():
+        click.echo(
+            "Note: this database role may change what is kept; see PostgreSQL in the README for another one.",
+            err=True,
+        )
     try:
         with store.mistakes_in_a_sentence():
             app = create_app(Settings.from_environment())

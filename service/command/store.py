@@ -14,7 +14,7 @@ from sqlalchemy.orm import Session
 
 from service.command.errors import UserMistake
 from service.documents.errors import FieldProblem
-from service.records import migrating
+from service.records import grants, migrating
 from service.records.database import Database
 from service.records.errors import FieldErrors, RecordsError
 from service.settings import Settings
@@ -60,10 +60,13 @@ def reading() -> Iterator[Visit]:
         yield Visit(session=session, now=database.now())
 
 
-def check() -> None:
-    """Say whether the store is there and at the current schema, by raising UserMistake where it is not."""
-    with mistakes_in_a_sentence(), _open():
-        pass
+def may_change_what_is_kept() -> bool:
+    """Say whether the database lets this role change kept rows.
+
+    Raises UserMistake where the store is not there or not at the current schema.
+    """
+    with reading() as visit:
+        return grants.may_change_what_is_kept(visit.session.connection())
 
 
 @contextmanager

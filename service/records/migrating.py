@@ -20,7 +20,7 @@ from alembic.script import ScriptDirectory
 from sqlalchemy import Connection
 from sqlalchemy.orm import Session
 
-from service.records import history
+from service.records import grants, history
 from service.records.database import migrating_engine
 
 
@@ -30,10 +30,11 @@ def scripts_folder() -> Path:
     return installed if installed.is_dir() else Path(__file__).parents[2] / "migrations"
 
 
-def migrate(url: str, *, now: datetime, demonstration: bool = False) -> None:
+def migrate(url: str, *, now: datetime, demonstration: bool = False, service_role: str | None = None) -> None:
     """Bring the store at `url` to the current schema and begin its history where it has none.
 
-    `demonstration` is said in the first entry of a new store, for good.
+    `demonstration` is said in the first entry of a new store, for good. `service_role` is given the service's
+    rights (`service.records.grants`); a role that has them keeps them. Raises StoreNotUsable.
     """
     with open_for_migration(url) as connection:
         config = _config()
@@ -42,6 +43,9 @@ def migrate(url: str, *, now: datetime, demonstration: bool = False) -> None:
         with Session(connection, autoflush=False) as session:
             history.begin(session, demonstration=demonstration, now=now)
             session.flush()
+        grants.grant_again(connection)
+        if service_role is not None:
+            grants.grant(connection, service_role)
 
 
 def is_current(session: Session) -> bool:
