@@ -14,9 +14,11 @@ from service.analysis.plant import (
     Integrating,
     PlantModel,
     SecondOrder,
+    StateSpace,
     TransferFunction,
     ZerosPolesGain,
 )
+from service.analysis.realised_plant import zeros_poles_gain
 from service.analysis.terms import quadratic_roots
 
 
@@ -54,6 +56,8 @@ def rational(plant: PlantModel) -> Rational:
                 tuple(as_complex(pole) for pole in plant.poles_rad_s),
                 plant.gain,
             )
+        case StateSpace():
+            return Rational(*zeros_poles_gain(plant))
         case _:
             raise FieldError(("kind",), f"the kind {plant.kind} is not analysed by this version")
 

@@ -20,7 +20,7 @@ import numpy as np
 import numpy.typing as npt
 
 from service.analysis.frequency import AxisResponse
-from service.analysis.loop import Complexes, OpenLoop, Reals
+from service.analysis.loop import EPSILON, Complexes, OpenLoop, Reals
 from service.analysis.nyquist import Count, count_right_of_axis, rounding
 from service.analysis.realisation import StateSpace
 
@@ -87,6 +87,8 @@ def _with_nodes(
     starts = _starts(space, loop, nodes)
     if space is not None:
         starts = without_nearest(starts, hidden_roots)
+    if loop.sign == 0:
+        return _of_open_loop(loop, starts)
     roots = polished_roots(loop, starts[starts.imag >= 0])
     roots = roots[np.lexsort((np.abs(roots.imag), -roots.real))]
     if loop.dead_time == 0:
@@ -97,6 +99,20 @@ def _with_nodes(
         return CharacteristicRoots(roots, math.inf, count)
     kept, line = _verified(loop, roots)
     return CharacteristicRoots(kept, line, count)
+
+
+def _of_open_loop(loop: OpenLoop, eigenvalues: Complexes) -> CharacteristicRoots:
+    """A gain of 0 leaves the poles; the eigenvalues say for themselves how many of them lie right of the
+    axis.
+    """
+    poles = loop.poles[loop.poles.imag >= 0]
+    poles = poles[np.lexsort((np.abs(poles.imag), -poles.real))]
+    on_axis = np.abs(eigenvalues.real) <= EPSILON ** (1 / 2) * np.abs(eigenvalues)
+    if on_axis.any():
+        count = Count(None, reason="the loop is open and has a root on the axis")
+    else:
+        count = Count(int(np.count_nonzero(eigenvalues.real > 0)))
+    return CharacteristicRoots(poles, -math.inf, count)
 
 
 def without_nearest(starts: Complexes, hidden_roots: Complexes) -> Complexes:

@@ -15,13 +15,13 @@ of sampled plants, the bilinear transformation). From memory.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
 
 from service.analysis.loop import Complexes, Factors, OpenLoop, Reals, without_hidden
 from service.analysis.scan import SampledPlant, Scanned
+from service.analysis.transmission_zeros import log_product, response, transmission_zeros
 
 MET = 1e-9
 """How well the factored loop must meet the plant's state equations, relatively, wherever abs L is not
@@ -30,13 +30,6 @@ small.
 
 SMALL = 1e-3
 """Below this abs L the loop is met to `MET` of this; rounding in the state equations allows no more."""
-
-SHIFT = 0.37
-"""A point right of the axis of w, where no loop has a zero but by chance."""
-
-FARTHEST_ZERO = 1e13
-"""A zero beyond this is z = −1 to float64."""
-
 
 StateMatrices = tuple[Reals, Reals, Reals, float]
 
@@ -123,7 +116,7 @@ def _plant_factors(scanned: Scanned, plant: SampledPlant, controller: Factors) -
     if scanned.parts.plant.gain == 0:
         return Factors(np.empty(0, complex), poles, -math.inf, 0.0)
     space = _bilinear(plant)
-    for zeros in _zeros(*space):
+    for zeros in transmission_zeros(*space):
         gain = _gain(space, zeros, poles, controller)
         if gain is not None:
             return Factors(zeros, poles, math.log(abs(gain)), math.copysign(1.0, gain))
@@ -134,19 +127,13 @@ def _gain(space: StateMatrices, zeros: Complexes, poles: Complexes, controller: 
     """The plant's gain with these zeros; None where they do not meet its state equations."""
     points = _points(poles, zeros)
     direct = response(*space, points)
-    ratio = direct / np.exp(_log_product(points, zeros, poles))
-    through = np.abs(np.exp(_log_product(points, controller.zeros, controller.poles) + controller.log_gain))
+    ratio = direct / np.exp(log_product(points, zeros, poles))
+    through = np.abs(np.exp(log_product(points, controller.zeros, controller.poles) + controller.log_gain))
     size = np.abs(direct) * through
     told = size >= min(SMALL, float(np.sort(size)[-3]))
     gain = float(np.median(ratio.real[told]))
     error = np.abs(ratio - gain) * size / abs(gain)
     return gain if gain != 0 and np.all(error <= MET * np.maximum(size, SMALL)) else None
-
-
-def _log_product(points: Complexes, zeros: Complexes, poles: Complexes) -> Complexes:
-    """ln of ∏(w−z)/∏(w−p), shape of `points`."""
-    logs = np.log(points[:, None] - zeros).sum(1) - np.log(points[:, None] - poles).sum(1)
-    return np.asarray(logs)
 
 
 def _bilinear(plant: SampledPlant) -> StateMatrices:
@@ -160,51 +147,6 @@ def _bilinear(plant: SampledPlant) -> StateMatrices:
     inverse = np.linalg.inv(less_one + 2.0 * np.eye(n + more))
     to_output = c @ inverse
     return inverse @ less_one, 2.0 * inverse @ b, to_output, -float(to_output @ b)
-
-
-def _zeros(a: Reals, b: Reals, c: Reals, d: float) -> Iterator[Complexes]:
-    """Transmission zeros, those at infinity left out, by two ways: which is the better depends on the plant.
-
-    They are the finite eigenvalues w of the pencil (a b; c d) − w·(1 0; 0 0): by way of 1/(w − σ), of which a
-    zero at infinity is an ordinary eigenvalue 0, or those of a − b·c/d.
-    """
-    n = len(a)
-    pencil = np.zeros((n + 1, n + 1))
-    pencil[:n, :n], pencil[:n, n], pencil[n, :n], pencil[n, n] = a - SHIFT * np.eye(n), b, c, d
-    # both sides brought to one size, which moves no zero
-    pencil[:, n] /= float(np.abs(b).max(initial=0.0)) or 1.0
-    pencil[n] /= float(np.abs(pencil[n]).max()) or 1.0
-    inverse = np.linalg.eigvals(np.linalg.inv(pencil)[:, :n] @ np.eye(n, n + 1)).astype(complex)
-    zeros = SHIFT + 1.0 / inverse[np.abs(inverse) > 1.0 / FARTHEST_ZERO]
-    yield _polished(_polished(zeros, a, b, c, d), a, b, c, d)
-    if d != 0:
-        zeros = np.linalg.eigvals(a - np.outer(b, c) / d).astype(complex)
-        zeros = zeros[np.abs(zeros) < FARTHEST_ZERO]
-        yield _polished(_polished(zeros, a, b, c, d), a, b, c, d)
-
-
-def _polished(zeros: Complexes, a: Reals, b: Reals, c: Reals, d: float) -> Complexes:
-    """One step of Newton on the state equations, kept where it is small."""
-    try:
-        resolvent = np.linalg.inv(zeros[:, None, None] * np.eye(len(a)) - a)
-    except np.linalg.LinAlgError:
-        # a zero that is a pole too
-        return zeros
-    state = resolvent @ b
-    value, slope = state @ c + d, -((resolvent @ state[..., None])[..., 0] @ c)
-    step = value / slope
-    step = np.where(np.isfinite(step) & (np.abs(step) < 1e-3 * np.abs(zeros)), step, 0.0)
-    moved = zeros - step
-    # a real zero stays real, and a pair a pair
-    return np.where(zeros.imag == 0, moved.real + 0j, moved)
-
-
-def response(a: Reals, b: Reals, c: Reals, d: float, w: Complexes) -> Complexes:
-    """c·(w − a)⁻¹·b + d, shape of `w`."""
-    states = np.linalg.solve(
-        w[:, None, None] * np.eye(len(a)) - a, np.broadcast_to(b, (len(w), len(a)))[..., None]
-    )
-    return np.asarray(states[..., 0] @ c + d)
 
 
 def _points(poles: Complexes, zeros: Complexes) -> Complexes:
