@@ -146,8 +146,8 @@ class Box:
         low, high = self.omega[places], self.omega[places + 1]
         if not places.size:
             return low
-        for _ in range(4):
-            share = np.linspace(0.0, 1.0, 12)[:, None]
+        for _ in range(6):
+            share = np.linspace(0.0, 1.0, 24)[:, None]
             omega = low + (high - low) * share
             response = self.response(omega.ravel(), member).reshape(omega.shape)
             values = np.angle(-response) if which else np.log(np.abs(response))
