@@ -8,9 +8,9 @@ from dataclasses import dataclass
 import numpy as np
 
 from service.analysis.controller import as_complex
-from service.analysis.errors import FieldError
 from service.analysis.plant import (
     FirstOrder,
+    FrequencyResponse,
     Integrating,
     PlantModel,
     SecondOrder,
@@ -19,6 +19,7 @@ from service.analysis.plant import (
     ZerosPolesGain,
 )
 from service.analysis.realised_plant import zeros_poles_gain
+from service.analysis.response_fit import fitted
 from service.analysis.terms import quadratic_roots
 
 
@@ -32,9 +33,10 @@ class Rational:
 
 
 def rational(plant: PlantModel) -> Rational:
-    """The rational part of a parametric plant kind.
+    """The rational part of a plant; of measured points a rational fit, which is no more evidence than they
+    are.
 
-    Raises FieldError where the kind has no zeros and poles of its own.
+    Raises FieldError where zeros and poles cannot be found.
     """
     match plant:
         case FirstOrder():
@@ -58,8 +60,8 @@ def rational(plant: PlantModel) -> Rational:
             )
         case StateSpace():
             return Rational(*zeros_poles_gain(plant))
-        case _:
-            raise FieldError(("kind",), f"the kind {plant.kind} is not analysed by this version")
+        case FrequencyResponse():
+            return Rational(*fitted(plant))
 
 
 def polynomial_roots(coefficients: tuple[float, ...]) -> tuple[complex, ...]:

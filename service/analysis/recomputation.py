@@ -16,8 +16,9 @@ from service.analysis.facts import facts
 from service.analysis.frequency import AxisResponse
 from service.analysis.loop import EPSILON, ClosedLoopParts, OpenLoop, form_loop
 from service.analysis.margins import WorkBoundError, crossovers, delay_margin, margins, told
+from service.analysis.measured_response import count_by_points
 from service.analysis.noise import noise
-from service.analysis.plant import PlantModel, Ranges
+from service.analysis.plant import FrequencyResponse, PlantModel, Ranges
 from service.analysis.realisation import StateSpace, realise
 from service.analysis.responses import Responses, respond
 from service.analysis.results import (
@@ -51,10 +52,14 @@ NOTE_TOO_SLOW = "responses_too_slow"
 NOTE_IMPULSE = "setpoint_impulse"
 """The unfiltered derivative of a stepped set point is an impulse; the output has no peak and no travel."""
 
+NOTE_FROM_POINTS = "responses_not_from_points"
+"""Points of a frequency response give no step response."""
+
 NOTE_NUMBERS = "numbers_out_of_range"
 """The loop's numbers leave float64 on the way; what they reach is not computed."""
 
 
+POINTS_AT_SCANS = "a plant that is known by points of its frequency response is not analysed at the scans"
 BEYOND_FLOAT64 = "the loop's numbers leave the range of float64"
 
 
@@ -98,12 +103,15 @@ def _recompute(
 ) -> Recomputation:
     try:
         space = realise(parts)
-        continuous, drawn = _continuous(parts, space, settling_band_percent, with_curves)
+        continuous, drawn = _continuous(parts, space, plant_model, settling_band_percent, with_curves)
     except (ArithmeticError, np.linalg.LinAlgError):
         space, continuous, drawn = None, _undecided((NYQUIST, ROOTS), BEYOND_FLOAT64), None
     sampled = None
     if isinstance(controller.scan, Scan):
-        sampled, drawn = _sampled(parts, controller.scan, settling_band_percent, with_curves)
+        if isinstance(plant_model, FrequencyResponse):
+            sampled = _undecided((NYQUIST_AT_SCANS, ROOTS_AT_SCANS), POINTS_AT_SCANS)
+        else:
+            sampled, drawn = _sampled(parts, controller.scan, settling_band_percent, with_curves)
     worst = worst_case(parts, plant_model, controller, ranges, continuous)
     return Recomputation(
         verdict=_of_all(continuous, sampled),
@@ -148,11 +156,16 @@ def _sampled(
 
 
 def _continuous(
-    parts: ClosedLoopParts, space: StateSpace | None, settling_band_percent: float, with_curves: bool
+    parts: ClosedLoopParts,
+    space: StateSpace | None,
+    plant_model: PlantModel,
+    settling_band_percent: float,
+    with_curves: bool,
 ) -> tuple[Analysis, Curves | None]:
     unit = parts.unit_rad_s
     axis = AxisResponse.of(parts.loop)
-    decided = decide(parts, space, axis)
+    measured = count_by_points(plant_model, parts) if isinstance(plant_model, FrequencyResponse) else None
+    decided = decide(parts, space, axis, measured)
     listed = crossovers(axis, parts.in_rad_s)
     stability = decided.stability
     if stability.verdict != "stable":
@@ -173,7 +186,9 @@ def _continuous(
     except WorkBoundError:
         notes.append(NOTE_MARGINS_TOO_MUCH_WORK)
     responses = None
-    if space is None:
+    if measured is not None:
+        notes.append(NOTE_FROM_POINTS)
+    elif space is None:
         notes.append(NOTE_NOT_REALISABLE)
     else:
         responses = respond(parts, space, decided.roots)

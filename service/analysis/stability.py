@@ -17,6 +17,9 @@ from service.analysis.roots import CharacteristicRoots, characteristic_roots
 MAX_DOMINANT_ROOTS = 6
 
 NYQUIST = "encirclements of -1 counted from the gain crossovers (Nyquist)"
+POINTS = (
+    "encirclements of -1 counted along the measured points; the other methods use a fit of these same points"
+)
 ROOTS = "characteristic roots by collocation of the delay system, polished by Newton"
 
 
@@ -28,10 +31,15 @@ class DecidedStability:
     roots: CharacteristicRoots
 
 
-def decide(parts: ClosedLoopParts, space: StateSpace | None, axis: AxisResponse) -> DecidedStability:
-    """Reach the verdict of the continuous loop by both routes."""
+def decide(
+    parts: ClosedLoopParts, space: StateSpace | None, axis: AxisResponse, by_points: Count | None = None
+) -> DecidedStability:
+    """Reach the verdict of the continuous loop by both routes, and by measured points where the plant is
+    those.
+    """
     hidden = count_hidden(parts.hidden_roots)
-    routes = [route(NYQUIST, count_right_of_axis(axis), hidden)]
+    routes = [] if by_points is None else [route(POINTS, by_points, hidden)]
+    routes.append(route(NYQUIST, count_right_of_axis(axis), hidden))
     roots = characteristic_roots(space, axis, parts.hidden_roots)
     routes.append(route(ROOTS, roots.count, hidden))
     verdict, unstable_roots, reason = agree(routes)

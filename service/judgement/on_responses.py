@@ -40,6 +40,11 @@ _NOTES: dict[str, tuple[Weight, str]] = {
         "The loop comes to rest so slowly beside its fastest part that the response was not followed to its "
         "end. Figures that need the end are left out.",
     ),
+    "responses_not_from_points": (
+        "note",
+        "The process is known by measured points of its frequency response, which give no step response. "
+        "Figures that need one are left out; the margins come from a rational fit of the same points.",
+    ),
     "setpoint_impulse": (
         "note",
         "The unfiltered derivative sees the set point: at a step of it the output jumps without limit.",
