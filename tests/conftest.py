@@ -26,6 +26,10 @@ settings.register_profile("house", deadline=None, print_blob=True)
 settings.load_profile("house")
 
 
+def pytest_addoption(parser: pytest.Parser) -> None:
+    parser.addoption("--walks", type=int, default=100, help="Walks through the life cycle (default 100).")
+
+
 @pytest.fixture(scope="session")
 def cluster() -> Iterator[Cluster]:
     """A PostgreSQL server of this worker's own, started when a test first asks for it."""

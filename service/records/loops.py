@@ -28,6 +28,9 @@ from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopModel, LoopRevision
 from service.records.views import EntryReference, LoopView, ModelView
 
+_LATER = aliased(LoopRevision)
+"""Made once: making an alias costs more than the query that it stands in."""
+
 
 def matching_key(text: str) -> str:
     """Return how a site, tag or operating point is matched: composed characters, without regard to case."""
@@ -247,9 +250,8 @@ def present_revisions() -> Select[Loop]:
 
 def is_present() -> ColumnElement[bool]:
     """Return the condition that a selected revision is its loop's present one."""
-    later = aliased(LoopRevision)
-    superseded = select(later.loop_id).where(
-        later.loop_id == LoopRevision.loop_id, later.revision > LoopRevision.revision
+    superseded = select(_LATER.loop_id).where(
+        _LATER.loop_id == LoopRevision.loop_id, _LATER.revision > LoopRevision.revision
     )
     return ~superseded.exists()
 

@@ -38,6 +38,9 @@ from service.records.views import (
 SEPARATOR = "\n"
 """Between the parts of a list's key; stands in no site or tag."""
 
+_LATER = aliased(SubmissionState)
+_NEWER = aliased(SubmissionContent)
+
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class LoopFilter:
@@ -222,13 +225,11 @@ def _lines(
     actor: Actor, now: datetime
 ) -> Select[Submission, SubmissionState, Loop, LoopRevision, HistoryEvent, SubmissionContent, bool]:
     """Select submissions in sight, each with all that a line of a list is made of."""
-    later = aliased(SubmissionState)
-    not_last = select(later.submission_id).where(
-        later.submission_id == SubmissionState.submission_id, later.ordinal > SubmissionState.ordinal
+    not_last = select(_LATER.submission_id).where(
+        _LATER.submission_id == SubmissionState.submission_id, _LATER.ordinal > SubmissionState.ordinal
     )
-    newer = aliased(SubmissionContent)
-    replaced = select(newer.version).where(
-        newer.submission_id == SubmissionContent.submission_id, newer.version > SubmissionContent.version
+    replaced = select(_NEWER.version).where(
+        _NEWER.submission_id == SubmissionContent.submission_id, _NEWER.version > SubmissionContent.version
     )
     loop = loop_records.present_revisions().with_only_columns(Loop.id, LoopRevision.revision).subquery()
     return (

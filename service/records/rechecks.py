@@ -16,6 +16,8 @@ from service.records.tables.changes import LoopChange, RecheckDue
 from service.records.tables.submissions import GainsComingIntoForce, Submission
 from service.records.views import RecheckView
 
+_RUNNING, _LATER = aliased(GainsComingIntoForce), aliased(GainsComingIntoForce)
+
 
 def due(session: Session, submission: Submission, state: State) -> RecheckView | None:
     """Return the last change that makes a submission, which reads as `state`, due for a recheck."""
@@ -45,9 +47,10 @@ def due(session: Session, submission: Submission, state: State) -> RecheckView |
 def is_due(state: ColumnElement[str]) -> ColumnElement[bool]:
     """Return the condition that a selected submission, which reads as `state`, is due for a recheck."""
     mark = select(RecheckDue.change_id).where(RecheckDue.submission_id == Submission.id)
-    running, later = aliased(GainsComingIntoForce), aliased(GainsComingIntoForce)
-    taken = select(later.ordinal).where(later.loop_id == running.loop_id, later.ordinal > running.ordinal)
-    runs = select(running.ordinal).where(running.submission_id == Submission.id, ~taken.exists())
+    taken = select(_LATER.ordinal).where(
+        _LATER.loop_id == _RUNNING.loop_id, _LATER.ordinal > _RUNNING.ordinal
+    )
+    runs = select(_RUNNING.ordinal).where(_RUNNING.submission_id == Submission.id, ~taken.exists())
     return and_(mark.exists(), or_(runs.exists(), state.in_(sorted(lifecycle.APPROVED_TO_RUN))))
 
 

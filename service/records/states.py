@@ -17,6 +17,8 @@ from service.records.tables.submissions import GainsComingIntoForce, Submission,
 SUBMITTED = "submit"
 """The action by which a submission came into its first state."""
 
+_LATER = aliased(SubmissionState)
+
 
 @dataclass(frozen=True, slots=True)
 class Outcome:
@@ -73,9 +75,8 @@ def next_row(session: Session, submission: Submission, action: Action, now: date
 
 def of_loop(session: Session, loop_id: str, now: datetime) -> dict[str, State]:
     """Return the state of every submission of a loop as it reads at `now`, earliest first."""
-    later = aliased(SubmissionState)
-    not_last = select(later.ordinal).where(
-        later.submission_id == SubmissionState.submission_id, later.ordinal > SubmissionState.ordinal
+    not_last = select(_LATER.ordinal).where(
+        _LATER.submission_id == SubmissionState.submission_id, _LATER.ordinal > SubmissionState.ordinal
     )
     query = (
         select(Submission, SubmissionState)
