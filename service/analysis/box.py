@@ -22,9 +22,8 @@ from typing import NamedTuple
 import numpy as np
 import numpy.typing as npt
 
-from service.analysis.errors import FieldError
 from service.analysis.loop import EPSILON, ClosedLoopParts, Complexes, Reals
-from service.analysis.plant import PlantModel, Uncertainty, ZerosPolesGain
+from service.analysis.plant import FrequencyResponse, PlantModel, Uncertainty, ZerosPolesGain
 from service.analysis.rational import rational
 from service.analysis.results import BoxMember
 
@@ -352,11 +351,10 @@ class Combination:
 def uncertain_loop(
     parts: ClosedLoopParts, plant_model: PlantModel, uncertainty: Uncertainty
 ) -> UncertainLoop | None:
-    """The uncertain loop; None where the plant's kind has no zeros and poles of its own."""
-    try:
-        own = rational(plant_model)
-    except FieldError:
+    """The uncertain loop; None for measured points, of which a fit is no proof."""
+    if isinstance(plant_model, FrequencyResponse):
         return None
+    own = rational(plant_model)
     unit = parts.unit_rad_s
     # a filter that was divided out is known: its zero stands behind the plant's own and does not move
     moving_zeros, fixed_zeros = np.split(np.array(parts.plant.zeros_rad_s, complex), [len(own.zeros_rad_s)])

@@ -27,6 +27,9 @@ LARGEST_SCALE = 10.0
 SCALE_SLACK = 0.008
 """Relative width of the bracket."""
 
+FINE_SLACK = 1e-6
+"""The same where the bracket would hold 1."""
+
 NO_CROSSING = Wanted(log_small=-1e-9, log_large=1e-9)
 
 SHARES = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
@@ -71,10 +74,11 @@ class ErrorScale:
     """The least scale of the box at which a member has a root on the axis."""
 
     loop: UncertainLoop
+    share: float = SCALE_SLACK
 
     def slack(self, attained: float) -> float:
         """A share of the value."""
-        return SCALE_SLACK * attained
+        return self.share * attained
 
     def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals]:
         """Bounds over cells."""
@@ -163,15 +167,21 @@ def tolerated_error(loop: UncertainLoop, margins: Margins | None) -> Tolerated:
         known, touching = min(low_attained, high_attained), None
     if known == 0:
         return Tolerated(0.0, 0.0, None)
-    try:
-        cells = first_cells(loop, bounds, low.omega, high.omega)
-        found = minimum(ErrorScale(loop), cells, known, min(low_proven, high_proven))
-    except WorkBoundError as error:
-        found = Minimum(error.known.proven, min(error.known.attained, known), error.known.place)
-    if found.place is not None:
-        w, v = (np.array([coordinate]) for coordinate in found.place)
+    place, elsewhere = None, min(low_proven, high_proven)
+    for share in (SCALE_SLACK, FINE_SLACK):
+        try:
+            cells = first_cells(loop, bounds, low.omega, high.omega)
+            found = minimum(ErrorScale(loop, share), cells, known, elsewhere)
+        except WorkBoundError as error:
+            found = Minimum(error.known.proven, min(error.known.attained, known), error.known.place)
+        place, known = found.place or place, found.attained
+        # the box as stated is worth knowing on which side of it the bracket lies
+        if not found.proven <= 1.0 < found.attained:
+            break
+    if place is not None:
+        w, v = (np.array([coordinate]) for coordinate in place)
         _, log_gain, dead_time = least_scales(loop, w, v)
-        touching = Touching(float(log_gain[0]), found.place[1], float(dead_time[0]))
+        touching = Touching(float(log_gain[0]), place[1], float(dead_time[0]))
     return Tolerated(found.proven, found.attained, touching)
 
 

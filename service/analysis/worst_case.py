@@ -100,14 +100,14 @@ def _of_stable(loop: UncertainLoop, margins: Margins | None, trial: _Trial) -> W
     """The worst case of a loop that is stable as entered."""
     tolerated = tolerated_error(loop, margins)
     if tolerated.attained <= 1.0 + BOUNDARY:
-        return _refuted(loop, trial, tolerated)
+        return _refuted(loop, trial, tolerated, NOTE_NOT_CONFIRMED)
     bounds = loop.bounds()
     wanted = _wanted(margins)
     ends = _Ends(bounds, lower_end(loop, bounds, wanted), upper_end(loop, bounds, wanted))
     search = _Search(loop, ends, margins, trial.parts.unit_rad_s)
     distance = search.distance() if _no_roots_at_the_ends(ends) else Minimum(0.0, 0.0)
     if distance.proven <= 0:
-        return _nothing(None, notes=(NOTE_TOO_MUCH_WORK,), tolerated=tolerated.interval)
+        return _refuted(loop, trial, tolerated, NOTE_TOO_MUCH_WORK)
     gain = search.log_gain_margin(distance.proven)
     phase, delay = search.phase_margin(), search.delay_margin()
     scale = tolerated.interval
@@ -323,12 +323,14 @@ class _Trial:
         return stability.verdict == "unstable"
 
 
-def _refuted(loop: UncertainLoop, trial: _Trial, tolerated: Tolerated) -> WorstCase:
-    """The answer where some member has a root on the axis: unstable members lie beside it, if anywhere."""
+def _refuted(loop: UncertainLoop, trial: _Trial, tolerated: Tolerated, otherwise: str) -> WorstCase:
+    """The answer where the box is not proven: unstable members lie beside one with a root on the axis, if
+    anywhere; `otherwise` is the note where none is confirmed.
+    """
     places = _beyond(loop, tolerated) + _corners(loop)
     found = next((m for m in (trial.member(*place) for place in places) if trial.is_unstable(m)), None)
     if found is None:
-        return _nothing(None, notes=(NOTE_NOT_CONFIRMED,), tolerated=tolerated.interval)
+        return _nothing(None, notes=(otherwise,), tolerated=tolerated.interval)
     return _nothing(False, counterexample=found, tolerated=tolerated.interval)
 
 
