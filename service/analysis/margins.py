@@ -90,14 +90,14 @@ def crossovers(axis: AxisResponse, in_rad_s: InRadS) -> Crossovers:
 def margins(axis: AxisResponse, listed: Crossovers, in_rad_s: InRadS, delay_margin_s: Quantity) -> Margins:
     """Every margin of a stable loop. Raises WorkBoundError where the bound on the work is passed."""
     loop = axis.loop
-    upper, lower = _gain_margins(axis)
+    upper, lower = _gain_margins(axis, in_rad_s)
     search = PeakSearch(axis)
     sensitivity = search.peak(Sensitivity(loop))
     complementary = search.peak(ComplementarySensitivity(loop))
     disk = search.peak(DiskSensitivity(loop))
     return Margins(
-        gain_margin=upper,
-        gain_reduction_margin=lower,
+        gain_margin=upper.factor,
+        gain_reduction_margin=lower.factor,
         phase_margin_deg=_phase_margin_deg(axis),
         delay_margin_s=delay_margin_s,
         max_sensitivity=sensitivity.value,
@@ -106,6 +106,8 @@ def margins(axis: AxisResponse, listed: Crossovers, in_rad_s: InRadS, delay_marg
         ),
         max_complementary_sensitivity=complementary.value,
         disk_margin=min(2.0, 1.0 / disk.value),
+        gain_margin_period_s=upper.period_s,
+        gain_reduction_margin_period_s=lower.period_s,
         gain_crossovers=listed.gain_crossovers,
         phase_crossovers=listed.phase_crossovers,
         truncated=listed.truncated,
@@ -148,12 +150,38 @@ def _factors_at_the_ends(loop: OpenLoop) -> tuple[float | None, float | None]:
     return origin, infinity
 
 
-def _gain_margins(axis: AxisResponse) -> tuple[Quantity, Quantity]:
-    logs = axis.phase_crossovers.log_magnitude.tolist()
-    factors = [math.exp(-log) for log in logs] + [f for f in _factors_at_the_ends(axis.loop) if f is not None]
-    above = [factor for factor in factors if factor > 1]
-    below = [factor for factor in factors if factor < 1]
-    return (min(above) if above else "unbounded"), (max(below) if below else "unbounded")
+@dataclass(frozen=True, slots=True)
+class _GainLimit:
+    factor: Quantity
+    period_s: Quantity
+
+
+def _gain_margins(axis: AxisResponse, in_rad_s: InRadS) -> tuple[_GainLimit, _GainLimit]:
+    """The factors that destabilise, next above and next below 1, and the period of the oscillation there."""
+    crossings = axis.phase_crossovers
+    at_origin, at_infinity = _factors_at_the_ends(axis.loop)
+    factors = np.exp(-crossings.log_magnitude).tolist()
+    omega = crossings.omega.tolist()
+    for factor, at in ((at_origin, 0.0), (at_infinity, math.inf)):
+        if factor is not None:
+            factors.append(factor)
+            omega.append(at)
+    above = [index for index, factor in enumerate(factors) if factor > 1]
+    below = [index for index, factor in enumerate(factors) if factor < 1]
+    return (
+        _limit(min(above, key=factors.__getitem__, default=None), factors, omega, in_rad_s),
+        _limit(max(below, key=factors.__getitem__, default=None), factors, omega, in_rad_s),
+    )
+
+
+def _limit(index: int | None, factors: list[float], omega: list[float], in_rad_s: InRadS) -> _GainLimit:
+    if index is None:
+        return _GainLimit("unbounded", None)
+    rad_s = float(in_rad_s(np.array(omega[index])))
+    if math.isinf(rad_s):
+        # approached as the frequency grows: there is no period
+        return _GainLimit(factors[index], None)
+    return _GainLimit(factors[index], 2.0 * math.pi / rad_s if rad_s > 0 else "unbounded")
 
 
 def _phase_margin_deg(axis: AxisResponse) -> Quantity:

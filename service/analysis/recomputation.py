@@ -34,6 +34,7 @@ from service.analysis.results import (
     Stability,
     Verdict,
 )
+from service.analysis.root_loci import root_loci
 from service.analysis.sampled import NYQUIST_AT_SCANS, ROOTS_AT_SCANS, analyse_at_scans
 from service.analysis.sampled_loop import NotFactoredError
 from service.analysis.stability import NYQUIST, ROOTS, decide
@@ -112,6 +113,8 @@ def _recompute(
             sampled = _undecided((NYQUIST_AT_SCANS, ROOTS_AT_SCANS), POINTS_AT_SCANS)
         else:
             sampled, drawn = _sampled(parts, controller.scan, settling_band_percent, with_curves)
+    if drawn is not None:
+        drawn = replace(drawn, root_loci=root_loci(parts, space))
     worst = worst_case(parts, plant_model, controller, ranges, continuous)
     return Recomputation(
         verdict=_of_all(continuous, sampled),

@@ -84,6 +84,11 @@ class Margins:
     max_sensitivity_rad_s: Quantity
     max_complementary_sensitivity: Quantity
     disk_margin: Quantity
+    gain_margin_period_s: Quantity = None
+    """The period at which the loop would oscillate with its gain at the margin; "unbounded": it would drift
+    off.
+    """
+    gain_reduction_margin_period_s: Quantity = None
     gain_crossovers: tuple[GainCrossover, ...] = ()
     phase_crossovers: tuple[PhaseCrossover, ...] = ()
     truncated: bool = False
@@ -231,12 +236,33 @@ class FrequencyCurve:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
+class RootsAt:
+    """The rightmost characteristic roots in rad/s, of a pair the one above the axis, with a factor on
+    something.
+    """
+
+    factor: float
+    roots: tuple[Complex, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class RootLoci:
+    """Dominant roots of the continuous loop against factors on its gain and on its dead time (none without
+    it).
+    """
+
+    gain: tuple[RootsAt, ...]
+    dead_time: tuple[RootsAt, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
 class Curves:
     """What pages and sheets draw; None where there is nothing to draw."""
 
     setpoint: ResponseCurve | None
     load: ResponseCurve | None
     frequency: FrequencyCurve | None
+    root_loci: RootLoci | None = None
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
