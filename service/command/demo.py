@@ -7,7 +7,7 @@ import shutil
 import sys
 import tempfile
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import closing, contextmanager
 from dataclasses import replace
 from pathlib import Path
 
@@ -16,7 +16,7 @@ from sqlalchemy import make_url
 
 from service.app import create_app
 from service.command.errors import UserMistake
-from service.command.serving import serve_until_told
+from service.command.serving import listen, serve_until_told
 from service.demonstration.plant import Change, Person, invented_plant
 from service.demonstration.store import Demonstration, fill
 from service.records.database import system_clock
@@ -37,11 +37,14 @@ def demo(port: int, only_data: bool) -> None:
     The data go to a fresh SQLite store in a temporary folder, which is removed at the end; or, where
     GAIN_SIGNOFF_DATABASE_URL names an empty store, there, where they stay.
     """
-    with _store(keep=only_data) as settings:
-        demonstration = _fill(settings)
-        _describe(demonstration, settings)
-        if not only_data:
-            serve_until_told(create_app(settings), HOST, port, on_ready=_announce)
+    if only_data:
+        with _store(keep=True) as settings:
+            _describe(_fill(settings), settings)
+        return
+    # a port that is taken is told before the year is made, not after it
+    with closing(listen(HOST, port)) as listener, _store(keep=False) as settings:
+        _describe(_fill(settings), settings)
+        serve_until_told(create_app(settings), listener, on_ready=_announce)
 
 
 @contextmanager

@@ -9,7 +9,7 @@ import click
 from service.app import create_app
 from service.command import store
 from service.command.errors import UserMistake
-from service.command.serving import serve_until_told
+from service.command.serving import listen, serve_until_told
 from service.issuing.checkpoints import UnusableKey
 from service.settings import Settings, SettingsError
 
@@ -30,7 +30,7 @@ def serve(host: str, port: int) -> None:
     except (SettingsError, UnusableKey) as refused:
         raise UserMistake(str(refused)) from None
     _log_to_standard_error()
-    serve_until_told(app, host, port, lambda address: click.echo(f"Serving at {address}"))
+    serve_until_told(app, listen(host, port), lambda address: click.echo(f"Serving at {address}"))
 
 
 def _log_to_standard_error() -> None:

@@ -27,13 +27,21 @@ DRAIN_S_MAX = 30.0
 it."""
 
 
-def serve_until_told(app: Flask, host: str, port: int, on_ready: Callable[[str], None]) -> None:
+def listen(host: str, port: int) -> socket.socket:
+    """Return a socket that listens at the address; port 0 takes a free one. Raises UserMistake."""
+    family = socket.AF_INET6 if ":" in host else socket.AF_INET
+    try:
+        return socket.create_server((host, port), family=family)
+    except OSError as refused:
+        reason = (refused.strerror or str(refused)).partition(" (")[0]
+        raise UserMistake(f"cannot listen at {host}:{port}: {reason}; --port takes another one") from None
+
+
+def serve_until_told(app: Flask, listener: socket.socket, on_ready: Callable[[str], None]) -> None:
     """Serve `app` until SIGTERM or SIGINT, then finish the requests that were begun and return.
 
-    `on_ready` is called once with the address; port 0 takes a free one. Raises UserMistake where the address
-    cannot be listened at.
+    `on_ready` is called once with the address. The listener is closed at the end.
     """
-    listener = _listen(host, port)
     server = waitress.create_server(
         app,
         map={},
@@ -50,15 +58,6 @@ def serve_until_told(app: Flask, host: str, port: int, on_ready: Callable[[str],
         deadline = time.monotonic() + DRAIN_S_MAX
         _loop(server, until=lambda: not _busy(server) or time.monotonic() > deadline)
         server.task_dispatcher.shutdown()
-
-
-def _listen(host: str, port: int) -> socket.socket:
-    family = socket.AF_INET6 if ":" in host else socket.AF_INET
-    try:
-        return socket.create_server((host, port), family=family)
-    except OSError as refused:
-        reason = (refused.strerror or str(refused)).partition(" (")[0]
-        raise UserMistake(f"cannot listen at {host}:{port}: {reason}") from None
 
 
 def _address(listener: socket.socket) -> str:

@@ -146,3 +146,24 @@ def test_it_says_when_its_port_is_taken(environment: dict[str, str]) -> None:
     with socket.create_server(("127.0.0.1", 0)) as taken:
         port = taken.getsockname()[1]
         assert f"127.0.0.1:{port}" in refusal(environment, "--port", str(port))
+
+
+@pytest.mark.parametrize("subject", ["serve", "demo"])
+def test_a_port_that_is_taken_is_told_in_one_sentence_before_anything_is_done(
+    environment: dict[str, str], subject: str
+) -> None:
+    store = Path(environment["GAIN_SIGNOFF_DATABASE_URL"].removeprefix("sqlite:///"))
+    before = store.read_bytes()
+    with socket.create_server(("127.0.0.1", 0)) as taken:
+        port = str(taken.getsockname()[1])
+        ended = subprocess.run(
+            [*COMMAND[:-3], subject, "--port", port],
+            env=environment,
+            capture_output=True,
+            text=True,
+            timeout=60,
+        )
+    assert ended.returncode == 2
+    assert ended.stderr.splitlines()[-1].startswith(f"Error: cannot listen at 127.0.0.1:{port}: ")
+    assert "--port" in ended.stderr
+    assert store.read_bytes() == before
