@@ -5,9 +5,11 @@ from __future__ import annotations
 import hashlib
 import io
 import json
+import math
 from itertools import pairwise
 
 import pytest
+import rfc8785
 from pypdf import PdfReader
 
 from tests.api import plant
@@ -116,14 +118,44 @@ def test_the_content_digest_is_the_sha256_of_the_content_that_is_served(
     assert content.json["reason"] == plant.SUBMISSION["reason"]
 
 
+AWKWARD = (
+    0.1 + 0.2,
+    1 / 3,
+    math.pi,
+    5e-324,
+    2.2250738585072014e-308,
+    1.7976931348623157e308,
+    1e16,
+    1e21,
+    1e-7,
+    123456789012345680.0,
+    4.35,
+    -1.0000000000000002,
+    *(math.ldexp(0.7, power) for power in range(-1000, 1001, 250)),
+)
+"""Where shortest digits, exponents and subnormal numbers go wrong; RFC 8785, appendix B, has such a list."""
+
+
 def test_what_is_read_back_is_what_was_sent_to_the_last_bit(service: Service, loop_id: str) -> None:
-    awkward = 0.1 + 0.2
-    controller = plant.CONTROLLER | {"proportional": {"value": awkward, "unit": "gain"}}
+    settings = [{"name": f"setting {n}", "value": value, "unit": ""} for n, value in enumerate(AWKWARD)]
+    controller = plant.CONTROLLER | {"recorded_settings": settings}
+    controller |= {"proportional": {"value": AWKWARD[0], "unit": "gain"}}
     made = service.post("/v1/submissions", plant.SUBMISSION | {"controller": controller}).json
-    read = service.get(f"/v1/submissions/{made['id']}").json
-    assert read["controller"]["proportional"]["value"].hex() == awkward.hex()
-    content = service.get(f"/v1/submissions/{made['id']}/content").json
-    assert content["gain_sets"][0]["controller"]["proportional"]["value"].hex() == awkward.hex()
+    path = f"/v1/submissions/{made['id']}"
+    content = service.get(f"{path}/content")
+    for kept in (service.get(path).json["controller"], content.json["gain_sets"][0]["controller"]):
+        assert kept["proportional"]["value"].hex() == AWKWARD[0].hex()
+        values = [setting["value"] for setting in kept["recorded_settings"]]
+        assert [float(value).hex() for value in values] == [value.hex() for value in AWKWARD]
+    # the digest is that of exactly these bits, in the canonical form of a reference of RFC 8785
+    whole = json.loads(content.data, parse_int=float)
+    assert hashlib.sha256(rfc8785.dumps(whole)).hexdigest() == made["content_digest"]
+
+
+def test_a_negative_zero_is_read_as_zero(service: Service, loop_id: str) -> None:
+    controller = plant.CONTROLLER | {"measurement_filter_s": -0.0}
+    made = service.post("/v1/submissions", plant.SUBMISSION | {"controller": controller}).json
+    assert math.copysign(1.0, made["controller"]["measurement_filter_s"]) == 1.0
 
 
 def test_the_answer_to_a_submission_is_what_reading_it_gives(service: Service, submission: Body) -> None:
