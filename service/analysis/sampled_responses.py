@@ -62,7 +62,8 @@ class Scans:
 
 def scans(states: SampledStates, log_radius: float) -> Scans:
     """The four answers until all is at rest; `log_radius` is ln of the loop's spectral radius, below 0."""
-    wanted = AT_REST / -log_radius + states.plant.held_scans + 2.0
+    # what lies at z = 0 is gone only after as many scans as there are states, and a last move follows
+    wanted = AT_REST / -log_radius + states.order + states.plant.held_scans + 2.0
     count = int(min(math.ceil(min(wanted, 1e9)), MAX_SCANS))
     march = _by_states if states.plant.held_scans <= LONGEST_LINE else _by_inputs
     plant_states, output = march(states, count)
