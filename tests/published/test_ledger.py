@@ -7,7 +7,6 @@ from pathlib import Path
 
 from tests.published.reading import PUBLISHED
 
-SAMPLED = "a loop or a filter at a scan interval"
 IDENTIFICATION = "a model found from a step or a table of data: the service takes models as they are given"
 TUNING = "arithmetic of a tuning rule: the service recomputes gains and proposes none"
 
@@ -15,16 +14,8 @@ ELSEWHERE = {
     "A27": TUNING,
     "A28": TUNING,
     "A29": TUNING,
-    "B22": SAMPLED,
     "B27": "the file does not tell the loop",
-    "C11": SAMPLED,
-    "E02": SAMPLED,
-    "E05": SAMPLED,
-    "E06": SAMPLED,
-    "E07": SAMPLED,
-    "E09": SAMPLED,
-    "E10": SAMPLED,
-    "E12": SAMPLED,
+    "E12": "the file does not tell the loop",
     "F04": "a filter of the second order, which no form of the interface has",
     "G02": "the variance of continuous white noise: the service tells noise by the scan",
     "I01": IDENTIFICATION,
