@@ -60,7 +60,7 @@ class Distance:
         """A share of the value."""
         return self.share * attained
 
-    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals]:
+    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals, Reals | None]:
         """Bounds over cells."""
         low_x, high_x = cells.log_magnitude
         low_x, high_x = low_x + self.bounds.log_gain[0], high_x + self.bounds.log_gain[1]
@@ -95,7 +95,9 @@ class Distance:
         turned = cells.omega * self.bounds.dead_time[1]
         # the convex set bends away from the half-plane that touches it
         cost_w = cost_w + (np.abs(cells.slope_w - 1j * turned) * cells.half_w) ** 2
-        return bound, cost_w, cost_v + (np.abs(cells.slope_v + 1j * turned) * cells.half_v) ** 2
+        cost_v = cost_v + (np.abs(cells.slope_v + 1j * turned) * cells.half_v) ** 2
+        # where the rectangle holds a multiple, the distance at the centre is not that of its corner
+        return bound, cost_w, cost_v, np.where(inside, np.inf, distance.min(0)) * (1.0 + 1e-12)
 
     def _widest(self, cells: Cells, dead_time: Reals) -> Reals:
         """How far ln(−L) may move in a cell, (2, q)."""
@@ -270,7 +272,7 @@ class GainMargin(_OverCrossings):
         turned = TURN * self._multiple(cells)[0]
         return Linear(none, one, -low * one, -turned), Linear(none, -one, high * one, turned)
 
-    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals]:
+    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals, Reals | None]:
         """Bounds over cells."""
         one, none = np.ones(len(cells)), np.zeros(len(cells))
         _, reached, alone = self._multiple(cells)
@@ -280,7 +282,7 @@ class GainMargin(_OverCrossings):
         best = np.where(alone, np.fmax(best, plain), plain)
         # where the phase reaches −180°, abs L keeps its distance from 1: so much below is below for good
         above = low_x + self.bounds.log_gain[1] > math.log1p(-min(self.distance, 1.0 - 1e-9))
-        return np.where(reached & ~above, best, np.inf), *cells.curvature(self.bounds.dead_time[1])
+        return np.where(reached & ~above, best, np.inf), *cells.curvature(self.bounds.dead_time[1]), None
 
     def _solved(self, logs: Complexes, slopes: Complexes, omega: Reals) -> tuple[Reals, Reals]:
         low, high = self.bounds.dead_time
@@ -300,7 +302,7 @@ class GainMargin(_OverCrossings):
 class PhaseMargin(_OverCrossings):
     """The worst phase margin in rad, over members that are all stable."""
 
-    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals]:
+    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals, Reals | None]:
         """Bounds over cells."""
         one, none = np.ones(len(cells)), np.zeros(len(cells))
         low, high = self.bounds.dead_time
@@ -315,7 +317,7 @@ class PhaseMargin(_OverCrossings):
             combination, best = self._dual(cells, aim)
             # past a whole turn the nearest multiple is another one
             bound = np.minimum(bound, np.where(combination.highest[0] < TURN, best, -np.inf))
-        return np.where(self._crossed(cells), bound, np.inf), *cells.curvature(high)
+        return np.where(self._crossed(cells), bound, np.inf), *cells.curvature(high), None
 
     def _values(self, logs: Complexes, omega: Reals) -> Reals:
         low = logs.imag - omega * self.bounds.dead_time[1]
@@ -328,7 +330,7 @@ class PhaseMargin(_OverCrossings):
 class DelayMargin(_OverCrossings):
     """The worst delay margin in the loop's own unit of time, over members that are all stable."""
 
-    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals]:
+    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals, Reals | None]:
         """Bounds over cells."""
         one, none = np.ones(len(cells)), np.zeros(len(cells))
         high = self.bounds.dead_time[1]
@@ -339,7 +341,7 @@ class DelayMargin(_OverCrossings):
         # the angle that is missing at ω costs so much time, that which is to spare is worth so much
         bound = known + np.where(best < 0, best / cells.omega_lowest, best / cells.omega_highest)
         bound = np.where(highest < TURN, bound, -np.inf)
-        return np.where(self._crossed(cells), bound, np.inf), *cells.curvature(high + known)
+        return np.where(self._crossed(cells), bound, np.inf), *cells.curvature(high + known), None
 
     def _values(self, logs: Complexes, omega: Reals) -> Reals:
         angle = (logs.imag - omega * self.bounds.dead_time[1]) % TURN

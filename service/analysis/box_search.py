@@ -49,8 +49,9 @@ class Found(NamedTuple):
 class Quantity(Protocol):
     """What is minimised over a box."""
 
-    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals]:
-        """(A bound below the value in each cell, what its width in w and in v costs); (q,) each.
+    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals, Reals | None]:
+        """(A bound below the value in each cell, what its widths in w and v cost, the value at its centre);
+        (q,) each, the last None where it takes more to know it.
 
         A bound is inf where the value does not exist in the cell, and may be anything that is not above the
         value; nan counts as unknown.
@@ -134,12 +135,17 @@ def minimum(quantity: Quantity, cells: Cells, attained: float, proven_elsewhere:
     """
     loop, best, work, wave = cells.loop, Found(attained), 0, 0
     while True:
-        lowest, cost_w, cost_v = quantity.bound(cells, best.value)
+        lowest, cost_w, cost_v, centres = quantity.bound(cells, best.value)
+        if centres is not None:
+            index = int(np.argmin(centres))
+            if centres[index] < best.value:
+                best = Found(float(centres[index]), (float(cells.w[index]), float(cells.v[index])))
         # nan: nothing is known of the cell
         kept = np.flatnonzero(~(lowest >= _threshold(quantity, best.value)))
         # after the first wave the cells shrink to where the value has been met, if it was
         if kept.size and (wave == 0 or wave in WAVES_THAT_TRY or math.isinf(best.value)):
-            order = kept[np.argsort(lowest[kept])][:TRIED]
+            promise = lowest if centres is None else centres
+            order = kept[np.argsort(promise[kept])][:TRIED]
             found = quantity.attain(loop, cells.only(order))
             if found.value < best.value:
                 best = found
@@ -166,13 +172,16 @@ def _threshold(quantity: Quantity, attained: float) -> float:
 def _parts(missing: Reals | float, cost_w: Reals, cost_v: Reals) -> tuple[Reals, Reals]:
     """Into how many parts to divide each cell along w and v; `missing` in units of the slack."""
     # errors fall with the square of the width; a wave is kept to a size at which its overhead is paid for
-    most = max(2, math.isqrt(CHILDREN // len(cost_w)))
-    wanted = np.sqrt(np.minimum(missing + 1.0, 1e9)) * np.ones(len(cost_w))
-    largest = np.maximum(cost_w, cost_v)
-    ideal = (wanted * np.sqrt(cost / largest) for cost in (cost_w, cost_v))
-    parts_w, parts_v = (np.clip(np.ceil(np.fmin(parts, most)), 1, most) for parts in ideal)
-    # never none at all
-    return np.where((parts_w == 1) & (parts_v == 1), 2, parts_w), parts_v
+    most = max(2, CHILDREN // len(cost_w))
+    wanted = np.clip(np.sqrt(missing + 1.0), 2.0, most) * np.ones(len(cost_w))
+    along_w = cost_w >= cost_v
+    ratio = np.sqrt(np.where(along_w, cost_v / cost_w, cost_w / cost_v))
+    minor = np.fmax(wanted * np.where(ratio == ratio, ratio, 0.0), 1.0)
+    # where both cannot be had the narrower parts are those of the width that costs more
+    share = np.sqrt(np.minimum(most / (wanted * minor), 1.0))
+    minor = np.floor(np.fmax(minor * share, 1.0))
+    major = np.floor(np.clip(wanted, 2.0, np.fmax(most / minor, 2.0)))
+    return np.where(along_w, major, minor), np.where(along_w, minor, major)
 
 
 def _divided(cells: Cells, kept: npt.NDArray[np.intp], parts_w: Reals, parts_v: Reals) -> Cells:

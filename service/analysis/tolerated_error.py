@@ -80,7 +80,7 @@ class ErrorScale:
         """A share of the value."""
         return self.share * attained
 
-    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals]:
+    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals, Reals | None]:
         """Bounds over cells."""
         loop, dead_time = self.loop, self.loop.dead_times.nominal
         low_x, high_x = cells.log_magnitude
@@ -96,7 +96,7 @@ class ErrorScale:
         turned = cells.omega * dead_time
         cost_w = (np.abs(cells.slope_w - 1j * turned) * cells.half_w) ** 2
         cost_v = ((np.abs(cells.slope_v + 1j * turned) + 1.0) * cells.half_v) ** 2
-        return scale * (1.0 - 1e-12), cost_w, cost_v
+        return scale * (1.0 - 1e-12), cost_w, cost_v, None
 
     def attain(self, loop: UncertainLoop, corners: Corners) -> Found:
         """The least scale at points of the cells, or beside them where a condition is met."""

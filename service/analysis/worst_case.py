@@ -110,6 +110,7 @@ def _of_stable(loop: UncertainLoop, margins: Margins | None, trial: _Trial) -> W
         return _refuted(loop, trial, tolerated, NOTE_TOO_MUCH_WORK)
     gain = search.log_gain_margin(distance.proven)
     phase, delay = search.phase_margin(), search.delay_margin()
+    wide = distance.proven < (1.0 - 1.01 * DISTANCE_SLACK) * distance.attained
     scale = tolerated.interval
     if scale is not None:
         # the box as stated is proven in any case
@@ -124,7 +125,7 @@ def _of_stable(loop: UncertainLoop, margins: Margins | None, trial: _Trial) -> W
         phase_margin_deg=math.degrees(phase) if isinstance(phase, float) else phase,
         delay_margin_s=delay / trial.parts.unit_rad_s if isinstance(delay, float) else delay,
         tolerated_error_scale=scale,
-        notes=(NOTE_TOO_MUCH_WORK,) if None in (gain, phase, delay) else (),
+        notes=(NOTE_TOO_MUCH_WORK,) if wide or None in (gain, phase, delay) else (),
     )
 
 

@@ -99,7 +99,9 @@ class Box:
 
         For loops that roll off or are without dead time, and have no zero of their plant on the axis.
         """
-        omega = self.omega
+        # a slow root is known only by where the function has become real
+        first = math.log10(self.omega[0])
+        omega = np.concatenate([np.logspace(first - 8.0, first, 400)[:-1], self.omega])
         for _ in range(14):
             s = 1j * omega
             above, below = self._plant(omega, member)
