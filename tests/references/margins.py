@@ -90,7 +90,8 @@ def frequencies(loop: ExactLoop) -> Any:
         count = int(POINTS_A_DEAD_TIME_TURN * last * float(loop.dead_time) / (2 * np.pi)) + 10
         parts.append(np.linspace(low, last, min(count, 3_000_000)))
     for root in roots:
-        if root.imag > 0:
+        # equal real roots come as pairs with what rounding at fifty digits leaves of an imaginary part
+        if root.imag > mpf("1e-9") * abs(root):
             width, centre = max(abs(float(root.real)), 1e-9 * float(root.imag)), float(root.imag)
             near = width * np.sinh(np.linspace(0.0, np.arcsinh(0.8 * centre / width), 4000))
             parts += [centre - near, centre + near]
@@ -145,11 +146,23 @@ def _bisected(
     if changes is None:
         changes = np.flatnonzero(np.sign(values[:-1]) != np.sign(values[1:]))
     for index in changes:
-        low, high = mpf(float(omega[index])), mpf(float(omega[index + 1]))
-        if mp.sign(function(low)) == mp.sign(function(high)):
+        bracket = _bracket(function, omega, int(index))
+        if bracket is None:
             continue
-        found.append(mp.findroot(function, (low, high), solver="anderson", verify=False))
+        root = mp.findroot(function, bracket, solver="anderson", verify=False)
+        if bracket[0] <= root <= bracket[1] and all(
+            abs(root - other) > mpf("1e-40") * root for other in found
+        ):
+            found.append(root)
     return found
+
+
+def _bracket(function: Callable[[Any], Any], omega: Any, index: int) -> tuple[Any, Any] | None:
+    """Where the sign changes at fifty digits: with a root on the grid float64 may see it one step beside."""
+    at = [mpf(float(value)) for value in omega[max(index - 1, 0) : index + 3]]
+    signs = [mp.sign(function(value)) for value in at]
+    order = sorted(range(len(at) - 1), key=lambda step: abs(step - min(index, 1)))
+    return next(((at[step], at[step + 1]) for step in order if signs[step] != signs[step + 1]), None)
 
 
 def _phase_margin_deg(value: Any) -> Any:
