@@ -33,7 +33,7 @@ WRITERS = PROCESSES * THREADS
 
 
 def race(url: str, appends: int) -> float:
-    """Append so many entries by all writers together, assert that all is well, return the appends a second."""
+    """Append by all writers together, assert that all is well, return the appends a second."""
     migrating.migrate(url, now=system_clock())
     each = appends // WRITERS
     spawn = multiprocessing.get_context("spawn")
