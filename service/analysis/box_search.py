@@ -32,8 +32,8 @@ MAX_FACTORS = 1_500_000
 CHILDREN = 200
 """Few cells are divided into about so many at once, many into halves."""
 
-WAVES_THAT_TRY = frozenset(range(2, 1000))
-"""The waves after the first in which a lower value is looked for."""
+WAVE_THAT_TRIES = 3
+"""From this wave on a lower value is looked for again: until then the first one mostly suffices."""
 
 TRIED = 4
 """The most promising cells of a wave in which a lower value is looked for."""
@@ -142,8 +142,7 @@ def minimum(quantity: Quantity, cells: Cells, attained: float, proven_elsewhere:
                 best = Found(float(centres[index]), (float(cells.w[index]), float(cells.v[index])))
         # nan: nothing is known of the cell
         kept = np.flatnonzero(~(lowest >= _threshold(quantity, best.value)))
-        # after the first wave the cells shrink to where the value has been met, if it was
-        if kept.size and (wave == 0 or wave in WAVES_THAT_TRY or math.isinf(best.value)):
+        if kept.size and (wave == 0 or wave >= WAVE_THAT_TRIES or math.isinf(best.value)):
             promise = lowest if centres is None else centres
             order = kept[np.argsort(promise[kept])][:TRIED]
             found = quantity.attain(loop, cells.only(order))
@@ -173,7 +172,7 @@ def _parts(missing: Reals | float, cost_w: Reals, cost_v: Reals) -> tuple[Reals,
     """Into how many parts to divide each cell along w and v; `missing` in units of the slack."""
     # errors fall with the square of the width; a wave is kept to a size at which its overhead is paid for
     most = max(2, CHILDREN // len(cost_w))
-    wanted = np.clip(np.sqrt(missing + 1.0), 2.0, most) * np.ones(len(cost_w))
+    wanted = np.clip(2.0 * np.sqrt(missing + 1.0), 2.0, most) * np.ones(len(cost_w))
     along_w = cost_w >= cost_v
     ratio = np.sqrt(np.where(along_w, cost_v / cost_w, cost_w / cost_v))
     minor = np.fmax(wanted * np.where(ratio == ratio, ratio, 0.0), 1.0)

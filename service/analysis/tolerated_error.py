@@ -9,7 +9,7 @@ one of a row of dead times; the least r whose box holds it is exact, and it is m
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import NamedTuple
 
 import numpy as np
@@ -33,6 +33,10 @@ FINE_SLACK = 1e-6
 NO_CROSSING = Wanted(log_small=-1e-9, log_large=1e-9)
 
 SHARES = np.array([-1.0, -0.5, 0.0, 0.5, 1.0])
+FINE_SHARES = np.linspace(-1.0, 1.0, 17)
+
+STARTS = 3
+"""So many gain and phase crossovers of the loop as entered are tried as a start."""
 
 NEWTON_STEPS = 4
 
@@ -75,6 +79,7 @@ class ErrorScale:
 
     loop: UncertainLoop
     share: float = SCALE_SLACK
+    shares: Reals = field(default_factory=lambda: SHARES)
 
     def slack(self, attained: float) -> float:
         """A share of the value."""
@@ -100,7 +105,7 @@ class ErrorScale:
 
     def attain(self, loop: UncertainLoop, corners: Corners) -> Found:
         """The least scale at points of the cells, or beside them where a condition is met."""
-        w, v = spread_out(corners, SHARES, SHARES)
+        w, v = spread_out(corners, self.shares, SHARES)
         if loop.conditions:
             w, v = _on_conditions(loop, w, v)
         return least(least_scales(loop, w, v)[0], w, v)
@@ -153,21 +158,26 @@ def _on_conditions(loop: UncertainLoop, w: Reals, v: Reals) -> tuple[Reals, Real
     return w, v
 
 
-def tolerated_error(loop: UncertainLoop, margins: Margins | None) -> Tolerated:
-    """The bracket for a loop that is stable as entered.
+def tolerated_error(loop: UncertainLoop, margins: Margins | None, unit_rad_s: float) -> Tolerated:
+    """The bracket for a loop that is stable as entered, with its margins and unit of time.
 
     Raises EndsError where the ends of the axis are beyond float64.
     """
     nothing = LARGEST_SCALE / (1.0 - SCALE_SLACK)
     known, touching = min(_of_nominal_margins(loop, margins), (nothing, None), key=lambda pair: pair[0])
+    place: tuple[float, float] | None = None
+    if margins is not None:
+        met = _near_crossovers(loop, margins, unit_rad_s, known)
+        if met.value < known:
+            known, place = met
     bounds = loop.bounds(known)
     low, high = lower_end(loop, bounds, NO_CROSSING), upper_end(loop, bounds, NO_CROSSING)
     (low_proven, low_attained), (high_proven, high_attained) = _at_lower(loop, low), _at_upper(loop, high)
     if min(low_attained, high_attained) < known:
-        known, touching = min(low_attained, high_attained), None
+        known, touching, place = min(low_attained, high_attained), None, None
     if known == 0:
         return Tolerated(0.0, 0.0, None)
-    place, elsewhere = None, min(low_proven, high_proven)
+    elsewhere = min(low_proven, high_proven)
     for share in (SCALE_SLACK, FINE_SLACK):
         try:
             cells = first_cells(loop, bounds, low.omega, high.omega)
@@ -183,6 +193,20 @@ def tolerated_error(loop: UncertainLoop, margins: Margins | None) -> Tolerated:
         _, log_gain, dead_time = least_scales(loop, w, v)
         touching = Touching(float(log_gain[0]), place[1], float(dead_time[0]))
     return Tolerated(found.proven, found.attained, touching)
+
+
+def _near_crossovers(loop: UncertainLoop, margins: Margins, unit_rad_s: float, known: float) -> Found:
+    """A scale that is attained near the crossovers of the loop as entered: a start that spares cells."""
+    crossings = (*margins.gain_crossovers[:STARTS], *margins.phase_crossovers[:STARTS])
+    rad_s = [c.rad_s for c in crossings if isinstance(c.rad_s, float) and c.rad_s > 0]
+    if not rad_s:
+        return Found(math.inf)
+    w = np.log(np.array(rad_s) / unit_rad_s)
+    low, high = loop.bounds(known).log_time
+    corners = Corners(
+        w, np.full(len(w), 0.5 * (low + high)), np.full(len(w), 1.0), np.full(len(w), 0.5 * (high - low))
+    )
+    return ErrorScale(loop, shares=FINE_SHARES).attain(loop, corners)
 
 
 def _of_nominal_margins(loop: UncertainLoop, margins: Margins | None) -> tuple[float, Touching | None]:

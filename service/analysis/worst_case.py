@@ -98,7 +98,7 @@ def worst_case(
 
 def _of_stable(loop: UncertainLoop, margins: Margins | None, trial: _Trial) -> WorstCase:
     """The worst case of a loop that is stable as entered."""
-    tolerated = tolerated_error(loop, margins)
+    tolerated = tolerated_error(loop, margins, trial.parts.unit_rad_s)
     if tolerated.attained <= 1.0 + BOUNDARY:
         return _refuted(loop, trial, tolerated, NOTE_NOT_CONFIRMED)
     bounds = loop.bounds()
