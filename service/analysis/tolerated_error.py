@@ -197,8 +197,9 @@ def tolerated_error(loop: UncertainLoop, margins: Margins | None, unit_rad_s: fl
 
 def _near_crossovers(loop: UncertainLoop, margins: Margins, unit_rad_s: float, known: float) -> Found:
     """A scale that is attained near the crossovers of the loop as entered: a start that spares cells."""
-    crossings = (*margins.gain_crossovers[:STARTS], *margins.phase_crossovers[:STARTS])
-    rad_s = [c.rad_s for c in crossings if isinstance(c.rad_s, float) and c.rad_s > 0]
+    found = [each.rad_s for each in margins.gain_crossovers[:STARTS]]
+    found += [each.rad_s for each in margins.phase_crossovers[:STARTS] if isinstance(each.rad_s, float)]
+    rad_s = [omega for omega in found if omega > 0]
     if not rad_s:
         return Found(math.inf)
     w = np.log(np.array(rad_s) / unit_rad_s)

@@ -9,6 +9,7 @@ fields, with the definitions of the interface written down again (`told`): an er
 - `margins`: dense search over frequency, each find bisected at fifty digits.
 - `marching`: step responses by marching the delayed loop in small steps with an exponential integrator.
 - `measures`: the metrics of a marched response.
+- `worst_case`: the worst member of a box of models, by dense search over members and frequency.
 - `sampled_told`: the same loop at its scan, as polynomials in z; its roots, found and counted.
 - `sampled_margins`: dense search on the unit circle; the delay margin by lengthening the dead time.
 - `sampled_marching`: the controller's difference equations, the plant's answer in between, noise.
