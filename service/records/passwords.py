@@ -52,8 +52,10 @@ def verified(hasher: PasswordHasher, kept: str | None, password: str) -> bool:
     # longer than any password that can have been set: not worth hashing
     if len(password) > 4 * CHARACTERS_MAX:
         return False
+    # made by whoever signs in first, known or not: it takes as long as one more verification
+    nobodys = _nobodys(hasher)
     try:
-        return hasher.verify(kept or _nobodys(hasher), _composed(password)) and kept is not None
+        return hasher.verify(kept or nobodys, _composed(password)) and kept is not None
     except (VerificationError, InvalidHashError):
         return False
 

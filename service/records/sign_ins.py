@@ -63,16 +63,19 @@ def sign_in(database: Database, name: str, password: str, source: str) -> Starte
         for subject in subjects:
             throttles.count(session, subject, database.now())
     with database.reading() as session:
-        account = session.execute(select(Account).where(Account.name == name)).scalar_one_or_none()
+        # these columns alone: an account's roles would cost two statements more than no account does
+        columns = select(Account.id, Account.name, Account.password_hash, Account.closed_at)
+        account = session.execute(columns.where(Account.name == name)).one_or_none()
         kept = account.password_hash if account and account.closed_at is None else None
         right = passwords.verified(passwords.hasher_of(session), kept, password)
     with database.writing() as session:
-        if account is None or not right:
-            _leave_trace(session, account, database.now())
+        # looked at again: another password may have been set while this one was compared
+        if account is None or not right or session.get_one(Account, account.id).password_hash != kept:
+            _leave_trace(session, account.name if account else None, database.now())
         else:
             throttles.forget(session, subjects[0])
             throttles.take_back(session, subjects[1])
-            return _start(session, account, database.now())
+            return _start(session, account.id, database.now())
     raise NotAuthenticated("name or password is wrong")
 
 
@@ -110,27 +113,27 @@ def sign_out(session: Session, session_id: str, now: datetime) -> None:
         session.flush()
 
 
-def _start(session: Session, account: Account, now: datetime) -> StartedSession:
+def _start(session: Session, account_id: str, now: datetime) -> StartedSession:
     secret = secrets.token_urlsafe(SECRET_BYTES)
     session.add(
         SignInSession(
             id=_hash(secret),
-            account_id=account.id,
+            account_id=account_id,
             csrf_secret=secrets.token_bytes(SECRET_BYTES),
             started_at=now,
             last_used_at=now,
         )
     )
-    own = session.get_one(Account, account.id)
+    own = session.get_one(Account, account_id)
     own.last_used_at = now
     session.flush()
-    actor = accounts.actor_of(session, account.id)
+    actor = accounts.actor_of(session, account_id)
     return StartedSession(secret=secret, actor=actor, ends_at=now + ABSOLUTE_LIMIT)
 
 
-def _leave_trace(session: Session, account: Account | None, now: datetime) -> None:
+def _leave_trace(session: Session, account_name: str | None, now: datetime) -> None:
     nobody = Actor(account_id=None, name=NOBODY, full_name="", roles=frozenset())
-    content = {"account": account.name if account else None}
+    content = {"account": account_name}
     history.append(session, kind="sign_in_refused", actor=nobody, content=content, now=now)
 
 
