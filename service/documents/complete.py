@@ -40,4 +40,5 @@ def missing_in(document: Plain, names: tuple[str, ...]) -> Iterator[FieldProblem
     sets = document.get("gain_sets")
     for index, gain_set in enumerate(sets if isinstance(sets, list) else []):
         if isinstance(gain_set, dict):
-            yield from missing_names(gain_set.get("controller"), ("gain_sets", index, "controller"))
+            for name in names:
+                yield from missing_names(gain_set.get(name), ("gain_sets", index, name))

@@ -4,8 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from typing import Annotated
 
-from service.documents import complete
+from annotated_types import Len
+
+from service.analysis.errors import FieldError
+from service.documents import complete, limits
 from service.documents.discriminated import ControllerField
 from service.documents.errors import FieldProblem
 from service.documents.strict_json import Plain
@@ -13,16 +17,34 @@ from service.documents.texts import Line, Moment
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
-class InstallationRequest:
-    """Gains as found and as left at the controller, and who was there."""
+class InstalledGainSet:
+    """One set of scheduled gains as found and as left, named by its condition."""
 
+    condition: Line
     as_found: ControllerField
     as_left: ControllerField
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class InstallationRequest:
+    """Gains as found and as left at the controller, and who was there.
+
+    One controller, or in its place those sets of a scheduled loop that were looked at.
+    """
+
     installed_at: Moment
+    as_found: ControllerField | None = None
+    as_left: ControllerField | None = None
+    gain_sets: Annotated[tuple[InstalledGainSet, ...], Len(1, limits.GAIN_SETS_MAX)] | None = None
     typed_by: Line | None = None
     read_back_by: Line | None = None
     operator: Line | None = None
     saved_to_engineering_database: bool | None = None
+
+    def __post_init__(self) -> None:
+        for name in ("as_found", "as_left"):
+            if (getattr(self, name) is None) == (self.gain_sets is None):
+                raise FieldError((name,), "give as_found and as_left, or gain_sets in their place")
 
     @staticmethod
     def missing(plain: Plain) -> Iterator[FieldProblem]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from service.analysis.plant import Ranges
 from service.judgement.wording import UNITS, setting_name
@@ -66,12 +66,25 @@ def change_table(table: GainTable, comparison: Comparison | None) -> ChangeTable
 
 
 def installed_otherwise(content: SignedContent, done: InstallationContent) -> tuple[ChangeLine, ...]:
-    """Where as left differs from the approved set: `before` is what was approved, `after` what was left."""
-    approved = content.gain_sets[done.gain_set].controller
+    """Where as left differs from the approved sets: `before` is what was approved, `after` what was left."""
+    return tuple(_left_otherwise(content, done))
+
+
+def _left_otherwise(content: SignedContent, done: InstallationContent) -> Iterator[ChangeLine]:
+    typed = done.installation
+    lefts = [each.as_left for each in typed.gain_sets or ()]
+    if typed.as_left is not None:
+        lefts.append(typed.as_left)
     ranges = Ranges(pv=content.loop.pv, output=content.loop.output)
-    compared = compare(approved, done.installation.as_left, ranges)
-    told = words.told_value if compared.common_form is None else words.computed_value
-    return tuple(_compared(change, told) for change in compared.settings if change.changed)
+    for held, left in zip(done.sets_left(), lefts, strict=True):
+        approved = content.gain_sets[held.gain_set]
+        compared = compare(approved.controller, left, ranges)
+        told = words.told_value if compared.common_form is None else words.computed_value
+        for change in compared.settings:
+            if change.changed:
+                line = _compared(change, told)
+                several = len(lefts) > 1
+                yield replace(line, name=f"{approved.condition}: {line.name}") if several else line
 
 
 def _line(line: GainLine, percent: float | None, before: str) -> ChangeLine:

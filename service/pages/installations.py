@@ -126,9 +126,15 @@ def _document(view: SubmissionView, form: Form) -> InstallationRequest:
     for name, prefix in PREFIXES.items():
         plain[name], problems = controller_fields.plain_of(form, prefix, models[name])
         wrong.extend(problems)
+    condition = view.content.gain_sets[_gain_set(view)].condition
     if wrong:
         raise InvalidDocument(tuple(FieldProblem(f"#{problem.field}", problem.sentence) for problem in wrong))
-    return reading.read(InstallationRequest, plain)
+    if condition is None:
+        return reading.read(InstallationRequest, plain)
+    # the form is for the one set that its address names
+    named: dict[str, Plain] = {name: plain.pop(name) for name in PREFIXES}
+    named["condition"] = condition
+    return reading.read(InstallationRequest, plain | {"gain_sets": [named]})
 
 
 def _moment(text: str) -> str:
@@ -159,7 +165,7 @@ def _field(form: Form, pointer: str) -> str:
     """The field that a place in the document stands in: itself, or the first one below it."""
     if pointer.startswith("#"):
         return pointer[1:]
-    first, *steps = pointer.split("/")[1:] or [""]
+    first, *steps = pointer.removeprefix("/gain_sets/0").split("/")[1:] or [""]
     name = "-".join([PREFIXES.get(first, first), *steps])
     if steps[-1:] == ["action"] or name in form.texts:
         return name

@@ -144,6 +144,16 @@ class Difference:
     found: float | str | None
     hinders: bool
     """True: the gains are other gains. False: a recorded setting differs, which is only said."""
+    condition: str | None = None
+    """Of the set of scheduled gains; None where there is one set only."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class SetLeft:
+    """One approved set that was looked at: its index, and whether as left it is as approved."""
+
+    gain_set: int
+    as_approved: bool
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -153,7 +163,7 @@ class InstallationContent:
     installation_id: str
     submission_id: str
     gain_set: int
-    """Index of the approved set that as left was compared with."""
+    """Index of the first approved set that as left was compared with."""
     recorded_by: Person
     recorded_at: Moment
     installation: InstallationRequest
@@ -165,6 +175,12 @@ class InstallationContent:
     """The approved gains → as left."""
     as_found_differences: tuple[Difference, ...] | None
     """The gains that were in force as far as was recorded → as found; None where none were."""
+    gain_sets: tuple[SetLeft, ...] = ()
+    """Every set that was looked at; empty: `gain_set` alone, as it was recorded before there were several."""
+
+    def sets_left(self) -> tuple[SetLeft, ...]:
+        """Return every set that was looked at."""
+        return self.gain_sets or (SetLeft(gain_set=self.gain_set, as_approved=self.as_approved),)
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import datetime, timedelta
 from hashlib import sha256
 from uuid import uuid4
@@ -20,7 +20,9 @@ from service.records.content import (
     Difference,
     InstallationContent,
     Person,
+    SetLeft,
     SignedContent,
+    SignedGains,
     read_installation,
 )
 from service.records.errors import FieldErrors
@@ -36,14 +38,16 @@ CLOCKS_APART = timedelta(minutes=5)
 
 @dataclass(frozen=True, slots=True)
 class _Held:
-    """As left held against the nearest approved set."""
+    """One set as left, held against the approved set at index `gain_set`; as found beside it."""
 
     gain_set: int
+    as_found: Controller
     differences: tuple[Difference, ...]
 
     @property
-    def as_approved(self) -> bool:
-        return not any(difference.hinders for difference in self.differences)
+    def left(self) -> SetLeft:
+        hindered = any(difference.hinders for difference in self.differences)
+        return SetLeft(gain_set=self.gain_set, as_approved=not hindered)
 
 
 def check_may_install(session: Session, actor: Actor, submission_id: str) -> None:
@@ -59,17 +63,17 @@ def install(
 
     As left equal to the approved gains, in any form, to 1e-9: they are in force.
 
-    Else it is recorded with its differences and the state stays. Gain sets are typed in one by one: they
-    are in force when the last of them is. Raises NotFound, NotAllowed, FieldErrors (installed in the
-    future, or before the submission was made), WrongStep.
+    Else it is recorded with its differences and the state stays. Gain sets may be typed in one by one: they
+    are in force when each of them is left as approved. Raises NotFound, NotAllowed, FieldErrors (installed in
+    the future, or before the submission was made; a set that is none of those approved), WrongStep.
     """
     submission = visibility.submission(session, actor, submission_id)
     lifecycle.check_who("install", actor, visibility.authors(session, submission_id))
     content = present_content.present(session, submission).read()
     _check_time(request, content, now)
-    held = _nearest(content, request.as_left)
+    held = _held(content, request)
     earlier = _installations(session, submission_id)
-    whole = held.as_approved and _all_sets_left(content, earlier, held.gain_set)
+    whole = all(each.left.as_approved for each in held) and _all_sets_left(content, earlier, held)
     # by the clock at the controller: what was installed in time is often recorded on the next working day
     at = min(request.installed_at, now)
     state = states.next_row(session, submission, "install" if whole else "install_otherwise", at)
@@ -89,18 +93,68 @@ def _check_time(request: InstallationRequest, content: SignedContent, now: datet
         raise FieldErrors((FieldProblem("/installed_at", "these gains were not yet submitted then"),))
 
 
-def _nearest(content: SignedContent, as_left: Controller) -> _Held:
-    loop_ranges = loops.ranges(content.loop)
-    held = (
-        _Held(index, comparison.differences(gain_set.controller, as_left, loop_ranges))
+def _held(content: SignedContent, request: InstallationRequest) -> tuple[_Held, ...]:
+    """Hold what was typed against the approved sets that it is for."""
+    if request.gain_sets is None:
+        assert request.as_found is not None  # noqa: S101  the document has both or gain sets
+        assert request.as_left is not None  # noqa: S101  the same
+        index = _only_set(content, request.as_left)
+        return (_against(content, index, request.as_found, request.as_left),)
+    indices = {
+        loops.matching_key(gain_set.condition or ""): index
         for index, gain_set in enumerate(content.gain_sets)
-    )
-    return min(held, key=lambda entry: sum(difference.hinders for difference in entry.differences))
+        if gain_set.condition is not None
+    }
+    held, problems = [], []
+    for place, typed in enumerate(request.gain_sets):
+        found = indices.pop(loops.matching_key(typed.condition), None)
+        if found is None:
+            detail = "this is no condition of the approved sets, or stands here twice"
+            problems.append(FieldProblem(f"/gain_sets/{place}/condition", detail))
+        else:
+            held.append(_against(content, found, typed.as_found, typed.as_left))
+    if problems:
+        raise FieldErrors(tuple(problems))
+    return tuple(held)
 
 
-def _all_sets_left(content: SignedContent, earlier: tuple[Installation, ...], gain_set: int) -> bool:
-    left = {read_installation(row.content).gain_set for row in earlier if row.as_approved} | {gain_set}
-    return len(left) == len(content.gain_sets)
+def _only_set(content: SignedContent, as_left: Controller) -> int:
+    """Return the one set that a bare controller can be: nobody guesses which of several was mistyped."""
+    if len(content.gain_sets) == 1:
+        return 0
+    loop_ranges = loops.ranges(content.loop)
+    same = [
+        index
+        for index, gain_set in enumerate(content.gain_sets)
+        if comparison.same_gains(gain_set.controller, as_left, loop_ranges)
+    ]
+    if len(same) != 1:
+        detail = "gains were approved for several conditions: say in gain_sets for which one these are"
+        raise FieldErrors((FieldProblem("/as_left", detail),))
+    return same[0]
+
+
+def _against(content: SignedContent, index: int, as_found: Controller, as_left: Controller) -> _Held:
+    approved = content.gain_sets[index]
+    differences = comparison.differences(approved.controller, as_left, loops.ranges(content.loop))
+    return _Held(index, as_found, _of_set(approved, differences))
+
+
+def _of_set(approved: SignedGains, differences: tuple[Difference, ...]) -> tuple[Difference, ...]:
+    return tuple(replace(difference, condition=approved.condition) for difference in differences)
+
+
+def _all_sets_left(
+    content: SignedContent, earlier: tuple[Installation, ...], held: tuple[_Held, ...]
+) -> bool:
+    """Say whether each set was left as approved when it was looked at last."""
+    left = {
+        each.gain_set: each.as_approved
+        for row in earlier
+        for each in read_installation(row.content).sets_left()
+    }
+    left |= {each.gain_set: each.left.as_approved for each in held}
+    return len(left) == len(content.gain_sets) and all(left.values())
 
 
 def _installations(session: Session, submission_id: str) -> tuple[Installation, ...]:
@@ -116,20 +170,21 @@ def _content(
     submission: Submission,
     content: SignedContent,
     request: InstallationRequest,
-    held: _Held,
+    held: tuple[_Held, ...],
     now: datetime,
 ) -> InstallationContent:
     return InstallationContent(
         installation_id=uuid4().hex,
         submission_id=submission.id,
-        gain_set=held.gain_set,
+        gain_set=held[0].gain_set,
+        gain_sets=tuple(each.left for each in held),
         recorded_by=Person(name=actor.name, full_name=actor.full_name),
         recorded_at=now,
         installation=request,
-        as_approved=held.as_approved,
+        as_approved=all(each.left.as_approved for each in held),
         before_approval=_before_approval(session, submission, request),
-        differences=held.differences,
-        as_found_differences=_as_found(session, submission, content, request),
+        differences=tuple(difference for each in held for difference in each.differences),
+        as_found_differences=_as_found(session, submission, content, held),
     )
 
 
@@ -144,22 +199,31 @@ def _before_approval(session: Session, submission: Submission, request: Installa
 
 
 def _as_found(
-    session: Session, submission: Submission, content: SignedContent, request: InstallationRequest
+    session: Session, submission: Submission, content: SignedContent, held: tuple[_Held, ...]
 ) -> tuple[Difference, ...] | None:
     """Hold as found against what ran before these gains, as far as is recorded."""
     running = states.running(session, submission.loop_id)
     if running is None:
         return None
-    own = running.submission_id == submission.id
-    before = content.gains_in_force if own else _read(session, running.submission_id)
+    if running.submission_id == submission.id:
+        before = content.gains_in_force.gain_sets if content.gains_in_force else None
+    else:
+        before = _read(session, running.submission_id).gain_sets
     if before is None:
         return None
-    loop_ranges = loops.ranges(content.loop)
+    return tuple(difference for each in held for difference in _found(content, before, each))
+
+
+def _found(content: SignedContent, before: tuple[SignedGains, ...], held: _Held) -> tuple[Difference, ...]:
+    """Hold one set as found against the set of its condition, else against the nearest one."""
+    approved, loop_ranges = content.gain_sets[held.gain_set], loops.ranges(content.loop)
+    named = [each for each in before if each.condition is not None and each.condition == approved.condition]
     found = (
-        comparison.differences(gain_set.controller, request.as_found, loop_ranges)
-        for gain_set in before.gain_sets
+        comparison.differences(gain_set.controller, held.as_found, loop_ranges)
+        for gain_set in named or before
     )
-    return min(found, key=lambda differences: sum(difference.hinders for difference in differences))
+    nearest = min(found, key=lambda differences: sum(difference.hinders for difference in differences))
+    return _of_set(approved, nearest)
 
 
 def _read(session: Session, submission_id: str) -> SignedContent:

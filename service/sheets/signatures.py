@@ -84,7 +84,8 @@ def _difference(difference: Difference) -> str:
     recorded, found = _told(difference)
     name = setting_name(difference.setting)
     unit = UNITS.get(difference.unit, difference.unit)
-    return f"{name[:1].lower()}{name[1:]} {found} {unit}, on record {recorded}".replace(" ,", ",")
+    where = f"{difference.condition}: " if difference.condition else ""
+    return f"{where}{name[:1].lower()}{name[1:]} {found} {unit}, on record {recorded}".replace(" ,", ",")
 
 
 def _told(difference: Difference) -> tuple[str, str]:

@@ -18,7 +18,8 @@ REQUESTS: dict[str, Body] = {
     "ModelVersion": plant.MODEL,
     "RecomputationRequest": plant.RECOMPUTATION,
     "SubmissionRequest": plant.SUBMISSION,
-    "InstallationRequest": plant.installed_now(),
+    # its time first: as found and as left may be given by set in place of one controller
+    "InstallationRequest": {"installed_at": ""} | plant.installed_now(),
 }
 
 

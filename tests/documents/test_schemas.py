@@ -12,6 +12,7 @@ import pytest
 from service.documents.changes import LoopChangeRequest
 from service.documents.errors import InvalidDocument
 from service.documents.examples import EXAMPLES
+from service.documents.installations import InstallationRequest
 from service.documents.reading import read
 from service.documents.recomputations import RecomputationAnswer, RecomputationRequest, answer
 from service.documents.schemas import json_schemas
@@ -55,7 +56,12 @@ def changes(example: dict[str, Any]) -> Iterator[tuple[str, object]]:
             yield from ((f"/{name}/{inner}", ABSENT) for inner in part)
 
 
-JOINT_RULES = [(SubmissionRequest, "/controller", ABSENT), (LoopChangeRequest, "/loop", ABSENT)]
+JOINT_RULES = [
+    (SubmissionRequest, "/controller", ABSENT),
+    (LoopChangeRequest, "/loop", ABSENT),
+    (InstallationRequest, "/as_found", ABSENT),
+    (InstallationRequest, "/as_left", ABSENT),
+]
 """One field or another in its place: what joins several fields is said by the reader alone."""
 
 CHANGES = [

@@ -152,6 +152,98 @@ def test_gain_sets_are_in_force_when_the_last_of_them_is_typed_in(store: Store, 
     assert store.read(submission).state == "in_force"
 
 
+@pytest.fixture
+def scheduled(store: Store, loop: LoopView) -> SubmissionView:
+    """Approved gains for two conditions."""
+    store.add_model(loop, operating_point="high load", gain=2.0)
+    sets = [
+        {"condition": "low", "operating_points": ["normal"], "controller": gains(1.5)},
+        {"condition": "high", "operating_points": ["high load"], "controller": gains(0.7)},
+    ]
+    submission = store.submit(controller=None, gain_sets=sets)
+    store.approve(submission)
+    return submission
+
+
+def _sets(**left: float) -> dict[str, Any]:
+    """An installation of sets by their condition, each with the proportional gain that was left."""
+    return {
+        "as_found": None,
+        "as_left": None,
+        "gain_sets": [
+            {"condition": condition, "as_found": gains(1.0), "as_left": gains(value)}
+            for condition, value in left.items()
+        ],
+    }
+
+
+def test_all_sets_of_a_schedule_are_recorded_in_one_installation(
+    store: Store, scheduled: SubmissionView
+) -> None:
+    done = store.install(scheduled, **_sets(low=1.5, HIGH=0.7)).installation
+    assert done.as_approved
+    assert [(left.gain_set, left.as_approved) for left in done.sets_left()] == [(0, True), (1, True)]
+    assert store.read(scheduled).state == "in_force"
+
+
+def test_a_set_that_was_mistyped_is_told_by_its_condition(store: Store, scheduled: SubmissionView) -> None:
+    done = store.install(scheduled, **_sets(low=1.5, high=7.0)).installation
+    hindering = [(d.condition, d.setting, d.recorded, d.found) for d in done.differences if d.hinders]
+    assert ("high", "proportional", 0.7, 7.0) in hindering
+    assert {condition for condition, *_ in hindering} == {"high"}
+    assert store.read(scheduled).state == "approved"
+    store.install(scheduled, **_sets(high=0.7))
+    assert store.read(scheduled).state == "in_force"
+
+
+def test_a_set_counts_as_it_was_left_last(store: Store, scheduled: SubmissionView) -> None:
+    store.install(scheduled, **_sets(low=1.5))
+    store.install(scheduled, **_sets(low=1.6))
+    store.install(scheduled, **_sets(high=0.7))
+    assert store.read(scheduled).state == "approved"
+    store.install(scheduled, **_sets(low=1.5))
+    assert store.read(scheduled).state == "in_force"
+
+
+def test_nobody_guesses_which_of_several_sets_was_mistyped(store: Store, scheduled: SubmissionView) -> None:
+    with pytest.raises(FieldErrors, match="say in gain_sets") as refused:
+        store.install(scheduled, as_left=gains(7.0))
+    assert refused.value.errors[0].pointer == "/as_left"
+
+
+@pytest.mark.parametrize("conditions", [("middle",), ("low", "LOW")])
+def test_a_condition_that_is_none_of_those_approved_is_refused(
+    store: Store, scheduled: SubmissionView, conditions: tuple[str, ...]
+) -> None:
+    with pytest.raises(FieldErrors) as refused:
+        store.install(scheduled, **_sets(**dict.fromkeys(conditions, 1.5)))
+    last = len(conditions) - 1
+    assert [problem.pointer for problem in refused.value.errors] == [f"/gain_sets/{last}/condition"]
+
+
+def test_as_found_is_held_against_the_set_of_the_same_condition(
+    store: Store, scheduled: SubmissionView
+) -> None:
+    store.install(scheduled, **_sets(low=1.5, high=0.7))
+    later = store.submit(
+        controller=None,
+        gain_sets=[
+            {"condition": "low", "operating_points": ["normal"], "controller": gains(1.4)},
+            {"condition": "high", "operating_points": ["high load"], "controller": gains(0.6)},
+        ],
+    )
+    store.approve(later)
+    # found in the high set is what is recorded of the low one
+    found = _sets(low=1.4, high=0.6)
+    found["gain_sets"][0]["as_found"] = gains(1.5)
+    found["gain_sets"][1]["as_found"] = gains(1.5)
+    done = store.install(later, **found).installation
+    assert done.as_found_differences is not None
+    told = {(d.condition, d.setting, d.recorded, d.found) for d in done.as_found_differences if d.hinders}
+    assert ("high", "proportional", 0.7, 1.5) in told
+    assert {condition for condition, *_ in told} == {"high"}
+
+
 def test_as_found_is_held_against_what_was_recorded_to_be_in_force(store: Store, loop: LoopView) -> None:
     store.submit(kind="baseline", controller=gains(1.0))
     submission = _approved(store, gains())
