@@ -62,7 +62,7 @@ EXAMPLES: dict[type, dict[str, Any]] = {
         "plant_model": _PLANT_MODEL,
         "controller": _AS_LEFT,
         "criteria": {"gain_margin_min": 2.5, "phase_margin_deg_min": 45, "overshoot_percent_max": 15},
-        "claims": {"gain_margin": 3.3, "phase_margin_deg": 61},
+        "claims": {"gain_margin": 4.3, "phase_margin_deg": 66},
     },
     LoopRegistration: _LOOP,
     ModelVersion: {
@@ -76,7 +76,7 @@ EXAMPLES: dict[type, dict[str, Any]] = {
         "controller": _AS_LEFT,
         "reason": "Returns too slowly after a change of feed.",
         "safety_effect": "None: the high temperature trip acts on a sensor of its own.",
-        "claims": {"gain_margin": 3.3, "phase_margin_deg": 61},
+        "claims": {"gain_margin": 4.3, "phase_margin_deg": 66},
         "tool": {"name": "loop helper", "version": "2.4"},
         "install_by": "2027-01-31T18:00:00Z",
     },

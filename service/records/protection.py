@@ -60,9 +60,10 @@ def _loosened(before: LoopRegistration, after: LoopRegistration) -> Iterator[str
         if was is None:
             continue
         if will is None:
-            yield f"the limit is taken away: {criterion_words(limit.name, was)}"
+            yield f"a limit is taken away: {criterion_words(limit.name, was)}"
         elif (will < was) if limit.name.endswith("_min") else (will > was):
-            yield f"the limit is loosened from {as_entered(was)}: {criterion_words(limit.name, will)}"
+            words = criterion_words(limit.name, will)
+            yield f"a limit is loosened: {words} in place of {as_entered(was)}"
     if own_before is None and own_after is not None:
         yield "the service's floor under the delay margin, which follows the dead time, no longer holds"
 
