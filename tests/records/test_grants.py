@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator
+from pathlib import Path
 
 import pytest
 from psycopg import sql
@@ -20,24 +22,31 @@ from tests.databases import opened, run
 from tests.records.store import START, Store, password_of
 from tests.records.year import live
 
-OWNER, SERVICE = "store_owner", "store_service"
+OWNER, SERVICE, DATABASE = "gain_owner", "gain_service", "gain_signoff"
+README = (Path(__file__).parents[2] / "README.md").read_text("utf-8")
 
 
 @pytest.fixture(scope="module")
 def roles(cluster: Cluster) -> Cluster:
-    for role in (OWNER, SERVICE):
-        cluster.administer(sql.SQL("CREATE ROLE {} LOGIN").format(sql.Identifier(role)))
+    for statement in _set_up():
+        if statement.startswith("CREATE ROLE"):
+            cluster.administer(sql.SQL(statement))
     return cluster
 
 
 @pytest.fixture
 def database(roles: Cluster) -> Iterator[str]:
-    """An empty database that belongs to the owner, set up by the README's commands."""
-    name = roles.create()
-    owned = sql.SQL("ALTER DATABASE {} OWNER TO {}")
-    roles.administer(owned.format(sql.Identifier(name), sql.Identifier(OWNER)))
-    yield name
-    roles.drop(name)
+    """An empty database, set up by the README's commands."""
+    for statement in _set_up():
+        if not statement.startswith("CREATE ROLE"):
+            roles.administer(sql.SQL(statement))
+    yield DATABASE
+    roles.drop(DATABASE)
+
+
+def _set_up() -> list[str]:
+    (block,) = re.findall(r"^```sql\n(.*?)^```$", README, re.MULTILINE | re.DOTALL)
+    return [statement.strip() for statement in block.split(";") if statement.strip()]
 
 
 @pytest.fixture
