@@ -34,7 +34,7 @@ from service.analysis.controller import Controller
 from service.analysis.errors import FieldError
 from service.analysis.frequency import AxisResponse
 from service.analysis.loop import ClosedLoopParts, form_loop
-from service.analysis.plant import PlantModel, Ranges
+from service.analysis.plant import PlantModel, Ranges, Uncertainty
 from service.analysis.realisation import realise
 from service.analysis.results import Analysis, BoxMember, Interval, Margins, WorstCase
 from service.analysis.results import Quantity as Told
@@ -300,18 +300,17 @@ class _Trial:
 
     def member(self, log_gain: float, log_time: float, dead_time: float) -> BoxMember:
         """The factors of a member, its dead time (in the loop's own unit) told as factor and extra."""
-        box, times = self.plant_model.uncertainty, self.loop.dead_times
+        box, times = self.plant_model.uncertainty or Uncertainty(), self.loop.dead_times
         entered = dead_time + times.reduction
         factor = 1.0
-        if times.entered > 0 and box is not None:
+        if times.entered > 0:
             factor = min(max(entered / times.entered, box.dead_time[0]), box.dead_time[1])
         extra = max(0.0, entered - factor * times.entered) / self.parts.unit_rad_s
-        extra = extra if extra > CERTAIN * self.plant_model.dead_time_s else 0.0
         return BoxMember(
-            gain=math.exp(log_gain),
-            time_constants=math.exp(log_time),
-            dead_time=factor,
-            dead_time_extra_s=extra,
+            gain=_to_edge(math.exp(log_gain), box.gain),
+            time_constants=_to_edge(math.exp(log_time), box.time_constants),
+            dead_time=_to_edge(factor, box.dead_time),
+            dead_time_extra_s=_to_edge(extra, box.dead_time_extra_s, CERTAIN * self.plant_model.dead_time_s),
         )
 
     def is_unstable(self, member: BoxMember) -> bool:
@@ -324,11 +323,20 @@ class _Trial:
         return stability.verdict == "unstable"
 
 
+def _to_edge(value: float, ends: tuple[float, float], size: float = 0.0) -> float:
+    """The value in its range: the end of it that rounding alone has missed, else itself."""
+    for end in ends:
+        if abs(value - end) <= CERTAIN * end + size:
+            return end
+    return min(max(value, ends[0]), ends[1])
+
+
 def _refuted(loop: UncertainLoop, trial: _Trial, tolerated: Tolerated, otherwise: str) -> WorstCase:
     """The answer where the box is not proven: unstable members lie beside one with a root on the axis, if
     anywhere; `otherwise` is the note where none is confirmed.
     """
-    places = _beyond(loop, tolerated) + _corners(loop)
+    # dict: a corner may be the end of the way
+    places = dict.fromkeys(_beyond(loop, tolerated) + _corners(loop))
     found = next((m for m in (trial.member(*place) for place in places) if trial.is_unstable(m)), None)
     if found is None:
         return _nothing(None, notes=(otherwise,), tolerated=tolerated.interval)
@@ -336,12 +344,21 @@ def _refuted(loop: UncertainLoop, trial: _Trial, tolerated: Tolerated, otherwise
 
 
 def _beyond(loop: UncertainLoop, tolerated: Tolerated) -> list[Touching]:
-    """Members on the way from the loop as entered through the touching one to the edge of the box."""
+    """Members beyond the touching one: the corner on its side, and the way from the loop as entered on."""
     touching = tolerated.touching
     if touching is None or not tolerated.attained > 0:
         return []
     nominal, (low, high) = loop.dead_times.nominal, loop.dead_times.range()
-    edge, places = 1.0 / tolerated.attained, []
+    bounds = loop.bounds()
+    # the corner beyond it has factors that people know
+    places = [
+        Touching(
+            bounds.log_gain[touching.log_gain > 0],
+            bounds.log_time[touching.log_time > 0],
+            bounds.dead_time[touching.dead_time > nominal],
+        )
+    ]
+    edge = 1.0 / tolerated.attained
     for factor in sorted({edge, *(min(edge, 1.0 + step) for step in STEPS_BEYOND)}, reverse=True):
         dead_time = nominal + factor * (touching.dead_time - nominal)
         dead_time = min(max(dead_time, low), high)

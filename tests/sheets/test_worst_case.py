@@ -1,0 +1,56 @@
+"""The worst case over the model's uncertainty stands beside the margins, in words."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+from service.analysis.plant import Uncertainty
+from service.documents.recomputations import RecomputationRequest, answer
+from service.judgement.criteria import Criteria
+from service.sheets.assessments import Assessment, assessment
+from tests.analysis.entered import first_order, ideal
+
+BOX = Uncertainty(gain=(0.8, 1.25), time_constants=(0.8, 1.25), dead_time=(0.7, 1.4))
+
+
+def told(kc: float, box: Uncertainty | None = BOX, criteria: Criteria | None = None) -> Assessment:
+    plant = replace(first_order(2.0, 10.0, 3.0), uncertainty=box)
+    request = RecomputationRequest(plant_model=plant, controller=ideal(kc, 10.0), criteria=criteria)
+    return assessment("Normal load", answer(request), ())
+
+
+def rows(found: Assessment) -> dict[str, str]:
+    return {row.name: row.value for row in found.limits}
+
+
+def test_a_proven_box_stands_among_the_margins() -> None:
+    found = rows(told(0.6))
+    assert found["Stable for every model in the box"] == "yes, proven"
+    assert found["Maximum sensitivity of the worst model in the box"] == "at most 2.09"
+
+
+def test_an_unstable_member_stands_among_the_margins() -> None:
+    found = told(1.6)
+    assert rows(found)["Stable for every model in the box"] == "NO"
+    assert "Maximum sensitivity of the worst model in the box" not in rows(found)
+    assert not next(row for row in found.limits if row.value == "NO").met
+    further = {entry.name: entry.value for entry in found.further}
+    assert further["Not stable at"] == "gain × 1.25, time constants × 0.800, dead time × 1.40"
+
+
+def test_a_limited_quantity_is_not_told_twice() -> None:
+    found = told(0.6, criteria=Criteria(worst_case_max_sensitivity_max=2.5))
+    named = [row for row in found.limits if row.name == "Maximum sensitivity of the worst model in the box"]
+    assert [row.outcome for row in named] == ["✓ met"]
+
+
+def test_without_uncertainty_there_is_no_box() -> None:
+    assert not [name for name in rows(told(0.6, None)) if "box" in name]
+
+
+def test_the_worst_margins_stand_among_all_computed_figures() -> None:
+    further = {entry.name: entry.value for entry in told(0.6).further}
+    assert further["Worst gain margin"] == "2.11"
+    assert further["Worst phase margin"] == "53.0°"
+    assert further["Worst case computed for the analysis"] == "continuous"
+    assert further["Scale of model error that is tolerated"].startswith("2.")
