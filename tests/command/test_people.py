@@ -155,6 +155,20 @@ def test_a_closed_account_stays_in_the_list(store: Run) -> None:
     assert "closed" in store("account", "list").stdout
 
 
+def test_the_readmes_commands_about_people_run(store: Run) -> None:
+    maud = ("account", "add", "maud", "--full-name", "Maud Tavener", "--role", "submitter")
+    store(*maud, standard_input=PASSWORD)
+    readme = (Path(__file__).parents[2] / "README.md").read_text(encoding="utf-8")
+    _, _, after = readme.partition("<!-- tests/command/test_people.py runs this block. -->\n```sh\n")
+    lines = after.partition("```")[0].splitlines()
+    assert len(lines) == 5
+    for line in lines:
+        said, _, command = line.rpartition(" | ")
+        typed = f"{shlex.split(said)[1]}\n" if said else ""
+        done = store(*shlex.split(command, comments=True)[1:], standard_input=typed)
+        assert done.exit_code == 0, (line, done.stderr)
+
+
 @pytest.mark.parametrize("subject", SUBJECTS)
 def test_every_command_in_the_list_is_there(run: Run, subject: str) -> None:
     shown = run(subject, "--help")
