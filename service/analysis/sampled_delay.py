@@ -1,16 +1,19 @@
 """The delay margin of a loop at its scans: the least extra dead time at which a root reaches the unit circle.
 
 More dead time is not just more phase here: where it divides a scan the sampled plant itself changes. So the
-condition 1 + L(e^(jωh), δ) = 0 is solved for frequency and extra dead time together, by Newton from every
-gain crossover of the loop at any division of a scan, and the least solution is confirmed by counting roots on
-both sides.
+condition 1 + L(e^(jωh), δ) = 0 is solved for frequency and extra dead time together by Newton. Where every
+gain crossover lies far below the scan's frequency there is one solution for each, and it is started from
+there; elsewhere abs L moves with the division of the scan, a crossover may meet −1 several times within one,
+and all solutions are found first by the turns of 1 + L about the cells of a grid over both. The least
+solution is confirmed by counting roots on both sides.
 """
 
 from __future__ import annotations
 
 import cmath
 import math
-from dataclasses import dataclass
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -29,6 +32,21 @@ BESIDE = 1e-7
 
 STEPS = 30
 
+FAR_BELOW = 0.25
+SLOW_PLANT = 0.5
+"""A crossover at this angle ωh and below, with abs λ·h of the plant no larger than this, hardly moves in a
+scan.
+"""
+
+PROBES = 16
+"""Counts before a solution where the plant is fast and the crossover slow against the scan."""
+
+MAX_SCANS = 400
+"""Work bound: the grid is not laid over more scans than this."""
+
+DIVIDED, ANGLE_SHARE, ANGLE_STEP = 32, 0.06, 0.03
+"""The grid: cells of a scan, and the longest steps of ωh, against itself and in itself."""
+
 WHOLE_SCANS = 40
 """So many whole numbers of scans are tried next to a place where a plant that passes a step at once may
 differ.
@@ -36,17 +54,32 @@ differ.
 
 
 def sampled_delay_margin_s(sampled: SampledLoop, axis: AxisResponse) -> Quantity:
-    """The delay margin of a stable loop in seconds; None where counting does not confirm what Newton
-    found.
-    """
+    """The delay margin of a stable loop in seconds; None where counting does not confirm what was found."""
     starts = _starts(sampled, axis)
     if not starts:
         # abs L stays below 1 however the dead time divides a scan
         return "unbounded"
     touching = sorted(delay for angle in starts if (delay := _solved(sampled, angle)) is not None)
-    least = _confirmed if sampled.plant.d == 0 else _least_with_jumps
-    found = least(sampled, touching)
+    if sampled.plant.d != 0:
+        found = _least_with_jumps(sampled, touching)
+    elif max(starts) <= FAR_BELOW and (_fastest(sampled) <= SLOW_PLANT or _none_before(sampled, touching)):
+        found = _confirmed(sampled, touching)
+    else:
+        found = _least_on_grid(sampled, min(starts), touching[0] if touching else None)
     return None if found is None else found / sampled.scanned.parts.unit_rad_s
+
+
+def _none_before(sampled: SampledLoop, touching: list[float]) -> bool:
+    """Whether no root is outside the circle at any of some delays before the first solution."""
+    if not touching:
+        return False
+    probes = touching[0] * (np.arange(1, PROBES + 1) / (PROBES + 0.37))
+    return all(_unstable_roots(sampled, delay) == 0 for delay in probes.tolist())
+
+
+def _fastest(sampled: SampledLoop) -> float:
+    """Largest abs λ·h of the plant."""
+    return float(np.abs(sampled.scanned.parts.plant.poles_rad_s).max(initial=0.0)) * sampled.scanned.interval
 
 
 def _confirmed(sampled: SampledLoop, touching: list[float]) -> float | None:
@@ -58,6 +91,43 @@ def _confirmed(sampled: SampledLoop, touching: list[float]) -> float | None:
         if behind > 0:
             return delay
     return None
+
+
+def _least_on_grid(sampled: SampledLoop, lowest: float, limit: float | None) -> float | None:
+    """The least delay at which a root leaves the circle, from the cells of the grid and counts between
+    them.
+    """
+    if limit is not None and limit > MAX_SCANS * sampled.scanned.interval:
+        return None
+    probes = [edge for cell in _cells(sampled, lowest, limit) for edge in cell]
+    if limit is not None:
+        probes += [limit * (1.0 - BESIDE), limit * (1.0 + BESIDE)]
+    last_stable, step = 0.0, sampled.scanned.interval / DIVIDED
+    for delay in sorted(probes):
+        count = _unstable_roots(sampled, delay)
+        if count is None:
+            return None
+        if count > 0:
+            nearer = max(last_stable, delay - step)
+            return _by_counting(
+                sampled, nearer if _unstable_roots(sampled, nearer) == 0 else last_stable, delay
+            )
+        last_stable = delay
+    return None
+
+
+def _by_counting(sampled: SampledLoop, low: float, high: float) -> float | None:
+    """Where the first root leaves the circle, between a delay with none outside and one with some."""
+    for _ in range(60):
+        middle = 0.5 * (low + high)
+        count = _unstable_roots(sampled, middle)
+        if count is None:
+            # a root upon the circle, as nearly as float64 tells
+            return middle if high - low <= 1e-6 * high else None
+        low, high = (low, middle) if count > 0 else (middle, high)
+        if high - low <= 1e-12 * high:
+            break
+    return 0.5 * (low + high)
 
 
 def _least_with_jumps(sampled: SampledLoop, touching: list[float]) -> float | None:
@@ -121,6 +191,63 @@ def _starts(sampled: SampledLoop, axis: AxisResponse) -> list[float]:
     if at_nyquist.any() and not at_nyquist.all():
         more.append(math.pi)
     return own + more
+
+
+def _cells(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator[tuple[float, float]]:
+    """Least and largest extra delay of every cell about which 1 + L turns, the least first; up to a little
+    beyond `limit`, or through a whole turn of the lowest crossover.
+    """
+    interval, plant = sampled.scanned.interval, sampled.plant
+    angles = _angles(lowest)
+    shares = _shares(sampled)
+    delays = [(share - plant.fraction) % 1.0 * interval for share in shares]
+    divided = [sampled.scanned.sample(delay) for delay in delays]
+    values = np.array([_Response(sampled, angles, replace(each, whole_scans=0)).value for each in divided])
+    last = 2.0 * math.pi / lowest + 2.0 if limit is None else limit / interval
+    for whole in range(plant.whole_scans, plant.whole_scans + math.ceil(min(last, MAX_SCANS)) + 2):
+        rows = _rows_about_zero(1.0 + values * np.exp(-1j * whole * angles))
+        for row in rows:
+            low, high = (
+                (whole + share - plant.whole_scans - plant.fraction) * interval
+                for share in shares[row : row + 2]
+            )
+            if high > 0:
+                yield max(low, 0.0), high
+
+
+def _angles(lowest: float) -> Reals:
+    """ωh from below the lowest crossover to the Nyquist frequency, where real roots reach the circle, and
+    beyond it, in steps that are short in themselves and against ωh.
+    """
+    angles = [0.7 * lowest]
+    while angles[-1] < math.pi:
+        angles.append(angles[-1] + min(ANGLE_SHARE * angles[-1], ANGLE_STEP))
+    # the Nyquist frequency lies in the middle of the last step
+    scale = (math.pi - angles[0]) / (0.5 * (angles[-2] + angles[-1]) - angles[0])
+    return np.asarray(angles[0] + scale * (np.array(angles) - angles[0]))
+
+
+def _shares(sampled: SampledLoop) -> list[float]:
+    """Divisions of a scan, closer where a fast plant answers to the last part of it."""
+    even = np.linspace(0.0, 1.0, DIVIDED + 1)
+    fastest = _fastest(sampled)
+    if fastest > DIVIDED / 8:
+        # e^(−λh(1−ε)) moves within some 1/(λh) before the whole scan
+        even = np.concatenate([even, 1.0 - np.geomspace(0.1 / fastest, 1.0, DIVIDED)])
+    shares = np.sort(even[(even >= 0) & (even < 1.0)])
+    return [*shares[np.append(True, np.diff(shares) > 1e-9)].tolist(), 1.0 - 1e-9]
+
+
+def _rows_about_zero(values: Complexes) -> list[int]:
+    """The rows with a cell about whose boundary a function turns: a zero lies inside."""
+    angle = np.angle(values)
+    along, across = (_wrapped(np.diff(angle, axis=axis)) for axis in (1, 0))
+    turn = along[:-1] + across[:, 1:] - along[1:] - across[:, :-1]
+    return np.flatnonzero((np.abs(turn) > math.pi).any(axis=1)).tolist()
+
+
+def _wrapped(angle: Reals) -> Reals:
+    return np.asarray((angle + math.pi) % (2.0 * math.pi) - math.pi)
 
 
 def _solved(sampled: SampledLoop, angle: float) -> float | None:

@@ -23,7 +23,7 @@ from service.analysis.loop import Complexes, Factors, OpenLoop, Reals, without_h
 from service.analysis.scan import SampledPlant, Scanned
 from service.analysis.transmission_zeros import log_product, response, transmission_zeros
 
-MET = 1e-9
+MET = 1e-8
 """How well the factored loop must meet the plant's state equations, relatively, wherever abs L is not
 small.
 """

@@ -101,7 +101,12 @@ def test_an_analysis_has_the_parts_of_the_interface() -> None:
 
 
 def test_curves_are_sent_where_they_are_asked_for() -> None:
-    assert set(answered(changed("/include", ["curves"]))["curves"]) == {"setpoint", "load", "frequency"}
+    assert set(answered(changed("/include", ["curves"]))["curves"]) == {
+        "setpoint",
+        "load",
+        "frequency",
+        "root_loci",
+    }
 
 
 def test_a_term_that_a_controller_does_not_have_is_left_out_of_its_equivalents() -> None:
