@@ -22,6 +22,7 @@ from service.pages import forms, visits
 from service.pages.forms import Form, Problem
 from service.pages.frame import page
 from service.pages.options import Option
+from service.records import change_lifecycle
 from service.records import change_queries as queries
 from service.records import changes as records
 from service.records.errors import (
@@ -139,6 +140,7 @@ def _page(change_id: str, form: Form, status: int = 200) -> Response:
         lines=tuple(_lines(view)),
         retired=plants.told(retires.model.plant_model) if retires else (),
         choices=CHOICES,
+        overtaken=change_lifecycle.is_overtaken(view.state),
         signer=visit.actor,
         meanings=records.MEANINGS,
         word_for_word=writing.to_bytes(json.loads(kept), indent=2).decode(),

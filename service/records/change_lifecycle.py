@@ -28,6 +28,12 @@ _DECIDED: dict[ChangeAction, ChangeState] = {
 }
 """The state that each decision leaves for good."""
 
+_WHO: dict[ChangeAction, str] = {
+    "confirm": "another reviewer",
+    "reject": "another reviewer",
+    "withdraw": "author",
+}
+
 _WORDS: dict[ChangeState, str] = {
     "awaiting_confirmation": "awaiting a second person",
     "overtaken": "overtaken by another change",
@@ -42,6 +48,11 @@ def as_read(decision: ChangeAction | None, *, moved: bool) -> ChangeState:
     if decision is not None:
         return _DECIDED[decision]
     return "overtaken" if moved else "awaiting_confirmation"
+
+
+def is_overtaken(state: ChangeState) -> bool:
+    """Say whether something is left to decide, and it is not the change itself."""
+    return allows(state, "reject") and not allows(state, "confirm")
 
 
 def allows(state: ChangeState, action: ChangeAction) -> bool:
@@ -83,6 +94,18 @@ def open_to(state: ChangeState, actor: Actor, proposed_by: str) -> tuple[ChangeA
             yield action
 
     return tuple(possible())
+
+
+def diagram() -> str:
+    """The table as a Mermaid state diagram, and what the loop's own movement makes of a change."""
+    start, moved = as_read(None, moved=False), as_read(None, moved=True)
+    steps = [
+        f"    {state} --> {target}: {action} ({_WHO[action]})" for (state, action), target in TABLE.items()
+    ]
+    clock = f"    {start} --> {moved}: the loop or the model has moved (as read)"
+    return "\n".join(
+        ["stateDiagram-v2", f"    [*] --> {start}: propose (submitter, administrator)", *steps, clock]
+    )
 
 
 def in_words(state: ChangeState) -> str:

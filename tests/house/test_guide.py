@@ -5,16 +5,16 @@ from __future__ import annotations
 import re
 from pathlib import Path
 
-from service.records.lifecycle import diagram
+from service.records import change_lifecycle, lifecycle
 
 ROOT = Path(__file__).parents[2]
 GUIDE = (ROOT / "DEVELOPERS.md").read_text("utf-8")
 README = (ROOT / "README.md").read_text("utf-8")
 
 
-def test_the_diagram_of_the_life_cycle_is_the_table_s() -> None:
-    (drawn,) = re.findall(r"^```mermaid\n(.*?)\n```$", GUIDE, re.MULTILINE | re.DOTALL)
-    assert drawn == diagram()
+def test_the_diagrams_of_the_life_cycles_are_the_tables() -> None:
+    drawn = re.findall(r"^```mermaid\n(.*?)\n```$", GUIDE, re.MULTILINE | re.DOTALL)
+    assert drawn == [lifecycle.diagram(), change_lifecycle.diagram()]
 
 
 def test_the_commands_of_the_guide_stand_in_the_script_that_runs_every_check() -> None:
