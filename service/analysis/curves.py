@@ -15,6 +15,9 @@ from service.analysis.responses import LOAD, SETPOINT, Responses
 from service.analysis.results import Curves, FrequencyCurve, ResponseCurve
 
 MAX_POINTS = 600
+MOST_POINTS = 1200
+"""A loop that is scanned often has very many short pieces; no curve has more points than this."""
+
 MAX_POINTS_A_PIECE = 120
 """A loop without dead time may settle within two pieces: with a dozen points its curve would show corners."""
 
@@ -39,16 +42,35 @@ def curves(
 def _response(responses: Responses, which: int, unit_rad_s: float) -> ResponseCurve:
     shown = _pieces_shown(responses, which)
     places = _places(shown)
-    at_places = chebyshev.evaluation(responses.pv.shape[2], places).T
     start, length = responses.start[:shown], responses.length[:shown]
     times = (start[:, None] + length[:, None] * places).ravel()
-    pv, output = ((signal[which, :shown] @ at_places).ravel() for signal in (responses.pv, responses.output))
-    keep = _without_repeats(times, pv, output)
+    pv, output = (_at_places(signal[which, :shown], places) for signal in (responses.pv, responses.output))
+    keep = np.flatnonzero(_without_repeats(times, pv, output))
+    keep = keep[_turns_of_many(pv[keep], output[keep])]
     return ResponseCurve(
-        time_s=tuple(float(value) for value in times[keep] / unit_rad_s),
-        pv=tuple(float(value) for value in pv[keep]),
-        output=tuple(float(value) for value in output[keep]),
+        time_s=_floats(times[keep] / unit_rad_s), pv=_floats(pv[keep]), output=_floats(output[keep])
     )
+
+
+def _at_places(values: Reals, places: Reals) -> Reals:
+    """A signal (p, nodes) at places of each piece, in order."""
+    if values.shape[1] == 1:
+        return np.repeat(values[:, 0], len(places))
+    return np.asarray(values @ chebyshev.evaluation(values.shape[1], places).T).ravel()
+
+
+def _turns_of_many(pv: Reals, output: Reals) -> npt.NDArray[np.intp]:
+    """Which of many points stay, so that every turn shows: of each bunch its ends, its least and its
+    largest.
+    """
+    if len(pv) <= MOST_POINTS:
+        return np.arange(len(pv))
+    kept = set()
+    for bunch in np.array_split(np.arange(len(pv)), MOST_POINTS // 6):
+        kept |= {int(bunch[0]), int(bunch[-1])}
+        for signal in (pv[bunch], output[bunch]):
+            kept |= {int(bunch[np.argmin(signal)]), int(bunch[np.argmax(signal)])}
+    return np.array(sorted(kept))
 
 
 def _pieces_shown(responses: Responses, which: int) -> int:
@@ -62,7 +84,8 @@ def _pieces_shown(responses: Responses, which: int) -> int:
 
 
 def _places(pieces: int) -> Reals:
-    count = min(MAX_POINTS_A_PIECE, max(4, MAX_POINTS // pieces))
+    fewest = 4 if pieces < MOST_POINTS else 2
+    count = min(MAX_POINTS_A_PIECE, max(fewest, MAX_POINTS // pieces))
     return np.linspace(0.0, 1.0, count)
 
 

@@ -65,7 +65,7 @@ class Responses:
     """Set-point and load response in pieces, in the loop's own unit of time.
 
     `start`, `length`: (p,). `pv`, `output`: (2, p, nodes), set point first, at Chebyshev points of each
-    piece.
+    piece; an output that is held in each piece has one node.
     `final_pv`, `final_output`: (2,). `complete`: the pieces end where nothing moves any more, or where the
     oscillation in `pv_tails` and `output_tails` (about the final values) is all that moves.
     """

@@ -26,8 +26,8 @@ from service.analysis.sampled_states import (
 )
 from service.analysis.scan import SampledPlant, Scanned, augmented, exponentials_less_one
 
-AT_REST = 25.0
-"""A loop is at rest when its slowest root has died away by so many nepers (1e-11)."""
+AT_REST = 19.0
+"""A loop is at rest when its slowest root has died away by so many nepers (6e-9)."""
 
 MAX_SCANS = 100_000
 """Work bound: a response of more scans than this is called too slow."""
@@ -89,14 +89,13 @@ def between_scans(scanned: Scanned, plant: SampledPlant, found: Scans) -> Respon
     rows = _rows(scanned, plant, lengths, len(before), nodes)
     known = np.concatenate([found.states, found.old[:, None], found.new[:, None]], axis=1)[:count, :, :2]
     pv = np.moveaxis(rows @ known, 2, 0).reshape(2, count * len(lengths), nodes)
-    output = np.repeat(found.output[:count, :2].T, len(lengths), axis=1)
     starts = np.arange(count)[:, None] * h + np.concatenate([[0.0], np.cumsum(lengths)[:-1]])
     final_pv, final_output = _final_values(scanned)
     return Responses(
         start=starts.ravel(),
         length=np.tile(lengths, count),
         pv=pv,
-        output=np.repeat(output[:, :, None], nodes, axis=2),
+        output=np.repeat(found.output[:count, :2].T, len(lengths), axis=1)[:, :, None],
         final_pv=final_pv,
         final_output=final_output,
         complete=found.complete and count == len(found.output),

@@ -152,6 +152,13 @@ def signals(start: Reals, length: Reals, values: Reals, tails: list[Tail | None]
     return result
 
 
+def held_signal(start: Reals, length: Reals, values: Reals) -> Signal:
+    """A signal that stays at one value in each piece; `values` (p,)."""
+    pieces = np.repeat(np.arange(len(values)), 2)
+    places = np.tile([0.0, 1.0], len(values))
+    return Signal(start, length, values[:, None], pieces, places, np.repeat(values, 2), None)
+
+
 def solved(passages: list[Passage | None]) -> list[float | None]:
     """The times of passages, in the loop's own unit."""
     open_ones = [passage for passage in passages if passage is not None and passage.row is not None]

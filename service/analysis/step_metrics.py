@@ -11,7 +11,7 @@ import numpy as np
 
 from service.analysis.responses import LOAD, SETPOINT, Responses
 from service.analysis.results import LoadStep, Quantity, SetpointStep
-from service.analysis.signals import ROUNDING, Integrals, Signal, integrals, signals, solved
+from service.analysis.signals import ROUNDING, Integrals, Signal, held_signal, integrals, signals, solved
 from service.analysis.tails import Tail
 
 RECOVERY_BAND = 0.05
@@ -61,11 +61,15 @@ def step_metrics(
 
 def _signals(responses: Responses) -> list[Signal]:
     """PV and output of the set-point response and PV of the load response."""
+    start, length = responses.start, responses.length
     pv_tails: tuple[Tail | None, ...] = responses.pv_tails or (None, None)
     output_tails: tuple[Tail | None, ...] = responses.output_tails or (None, None)
+    if responses.output.shape[2] == 1:
+        pv, load_pv = signals(start, length, responses.pv, list(pv_tails))
+        return [pv, held_signal(start, length, responses.output[SETPOINT, :, 0]), load_pv]
     values = np.array([responses.pv[SETPOINT], responses.output[SETPOINT], responses.pv[LOAD]])
     tails = [pv_tails[SETPOINT], output_tails[SETPOINT], pv_tails[LOAD]]
-    return signals(responses.start, responses.length, values, tails)
+    return signals(start, length, values, tails)
 
 
 def _largest(signal: Signal) -> int:
