@@ -105,10 +105,10 @@ VERDICTS: dict[Verdict, str] = {
 OUTCOMES: dict[Outcome, str] = {"met": "met", "not_met": "not met", "not_assessed": "not assessed"}
 WEIGHTS: dict[str, str] = {"stop": "stop", "caution": "caution", "note": "note"}
 WORST_CASE_LABELS: dict[str, str] = {
-    "worst_case_gain_margin": "gain margin of the worst model in the box",
-    "worst_case_phase_margin_deg": "phase margin of the worst model in the box",
-    "worst_case_delay_margin_s": "delay margin of the worst model in the box",
-    "worst_case_max_sensitivity": "maximum sensitivity of the worst model in the box",
+    "worst_case_gain_margin": "gain margin of the worst model within the uncertainty",
+    "worst_case_phase_margin_deg": "phase margin of the worst model within the uncertainty",
+    "worst_case_delay_margin_s": "delay margin of the worst model within the uncertainty",
+    "worst_case_max_sensitivity": "maximum sensitivity of the worst model within the uncertainty",
     "tolerated_error_scale": "scale of model error that is tolerated",
 }
 _WORST_CASE_UNITS = {"worst_case_phase_margin_deg": "deg", "worst_case_delay_margin_s": "s"}

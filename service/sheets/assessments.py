@@ -214,7 +214,7 @@ def _over_the_box(recomputation: Recomputation, criteria: tuple[CriterionFinding
     if worst is None:
         return
     yield LimitRow(
-        name="Stable for every model in the box",
+        name="Stable for every model within the uncertainty",
         value=BOX[worst.stable_for_all],
         limit="",
         outcome="",

@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from typing import NamedTuple
 
 from service.analysis.plant import Range
 from service.analysis.results import Curves
@@ -168,10 +169,11 @@ def _summary(signed: SignedContent) -> tuple[bool, str]:
         return False, "Nothing was recomputed: there is no model of this process on record."
     verdicts = {each.answer.recomputation.verdict for each in signed.recomputations}
     verdict = next(worst for worst in ("unstable", "undecided", "stable") if worst in verdicts)
+    uncertainty = _uncertainty(signed)
     told = {
         "unstable": "The recomputed loop is UNSTABLE.",
         "undecided": "It could NOT BE SHOWN that the loop is stable.",
-        "stable": "The recomputed loop is stable.",
+        "stable": f"The recomputed loop is stable{uncertainty.words}.",
     }[verdict]
     outcomes = [worst.finding.outcome for worst in signed.criteria]
     counts = ((outcomes.count("not_met"), "NOT MET"), (outcomes.count("not_assessed"), "NOT ASSESSED"))
@@ -180,7 +182,26 @@ def _summary(signed: SignedContent) -> tuple[bool, str]:
         told += f" Limits: {' and '.join(failed)}, of {len(outcomes)}."
     else:
         told += f" Limits: all {len(outcomes)} met." if outcomes else " It was held against NO LIMIT."
-    return verdict == "stable" and bool(outcomes) and not failed, told
+    return verdict == "stable" and uncertainty.well and bool(outcomes) and not failed, told
+
+
+class _Uncertainty(NamedTuple):
+    """Whether what is known of the models' uncertainty speaks for the loop, and the words behind "stable"."""
+
+    well: bool
+    words: str
+
+
+def _uncertainty(signed: SignedContent) -> _Uncertainty:
+    told = [each.answer.recomputation for each in signed.recomputations]
+    boxes = [each.worst_case.stable_for_all for each in told if each.worst_case is not None]
+    if False in boxes:
+        return _Uncertainty(False, " as modelled, but NOT for every model within the stated uncertainty")
+    if None in boxes or any("worst_case" in each.not_computed for each in told):
+        return _Uncertainty(False, " as modelled; for its stated uncertainty that is NOT SHOWN")
+    # where one operating point states none, nothing is said of all of them
+    proven = len(boxes) == len(told) > 0
+    return _Uncertainty(True, ", and so is every model within the stated uncertainty" if proven else "")
 
 
 def _conditions(view: SubmissionView) -> Iterator[str]:

@@ -4,11 +4,15 @@ from __future__ import annotations
 
 from dataclasses import replace
 
+import pytest
+
 from service.analysis.plant import Uncertainty
 from service.documents.recomputations import RecomputationRequest, answer
 from service.judgement.criteria import Criteria
 from service.sheets.assessments import Assessment, assessment
+from service.sheets.content import content_of
 from tests.analysis.entered import first_order, ideal
+from tests.sheets.records_to_print import LAG, submission
 
 BOX = Uncertainty(gain=(0.8, 1.25), time_constants=(0.8, 1.25), dead_time=(0.7, 1.4))
 
@@ -25,14 +29,14 @@ def rows(found: Assessment) -> dict[str, str]:
 
 def test_a_proven_box_stands_among_the_margins() -> None:
     found = rows(told(0.6))
-    assert found["Stable for every model in the box"] == "yes, proven"
-    assert found["Maximum sensitivity of the worst model in the box"] == "at most 2.09"
+    assert found["Stable for every model within the uncertainty"] == "yes, proven"
+    assert found["Maximum sensitivity of the worst model within the uncertainty"] == "at most 2.09"
 
 
 def test_an_unstable_member_stands_among_the_margins() -> None:
     found = told(1.6)
-    assert rows(found)["Stable for every model in the box"] == "NO"
-    assert "Maximum sensitivity of the worst model in the box" not in rows(found)
+    assert rows(found)["Stable for every model within the uncertainty"] == "NO"
+    assert "Maximum sensitivity of the worst model within the uncertainty" not in rows(found)
     assert not next(row for row in found.limits if row.value == "NO").met
     further = {entry.name: entry.value for entry in found.further}
     assert further["Not stable at"] == "gain × 1.25, time constants × 0.800, dead time × 1.40"
@@ -40,12 +44,16 @@ def test_an_unstable_member_stands_among_the_margins() -> None:
 
 def test_a_limited_quantity_is_not_told_twice() -> None:
     found = told(0.6, criteria=Criteria(worst_case_max_sensitivity_max=2.5))
-    named = [row for row in found.limits if row.name == "Maximum sensitivity of the worst model in the box"]
+    named = [
+        row
+        for row in found.limits
+        if row.name == "Maximum sensitivity of the worst model within the uncertainty"
+    ]
     assert [row.outcome for row in named] == ["✓ met"]
 
 
 def test_without_uncertainty_there_is_no_box() -> None:
-    assert not [name for name in rows(told(0.6, None)) if "box" in name]
+    assert not [name for name in rows(told(0.6, None)) if "uncertainty" in name]
 
 
 def test_the_worst_margins_stand_among_all_computed_figures() -> None:
@@ -54,3 +62,25 @@ def test_the_worst_margins_stand_among_all_computed_figures() -> None:
     assert further["Worst phase margin"] == "53.0°"
     assert further["Worst case computed for the analysis"] == "continuous"
     assert further["Scale of model error that is tolerated"].startswith("2.")
+
+
+@pytest.mark.parametrize(
+    ("boxes", "words"),
+    [
+        ([BOX], "The recomputed loop is stable, and so is every model within the stated uncertainty."),
+        ([BOX, None], "The recomputed loop is stable."),
+        ([None], "The recomputed loop is stable."),
+        (
+            [None, Uncertainty(dead_time=(1.0, 9.0))],
+            "The recomputed loop is stable as modelled, but NOT for every model within the stated "
+            "uncertainty.",
+        ),
+    ],
+)
+def test_the_line_beside_the_gains_says_what_holds_within_the_uncertainty(
+    boxes: list[Uncertainty | None], words: str
+) -> None:
+    view, *_ = submission(plants=tuple(replace(LAG, uncertainty=box) for box in boxes))
+    content = content_of(view)
+    assert content.summary.startswith(words)
+    assert content.summary_good is ("NOT" not in words)
