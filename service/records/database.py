@@ -25,6 +25,15 @@ SQLITE_PRAGMAS = (
 )
 """What SQLite forgets with every connection."""
 
+POSTGRESQL_SETTINGS = (
+    # a server that is set otherwise acknowledges what a fault can still take back
+    "synchronous_commit = on",
+    # as long as SQLite waits; a worker that hangs with the lock must not stop all others for good
+    "lock_timeout = '30s'",
+    "idle_in_transaction_session_timeout = '60s'",
+)
+"""What a writing connection asks of the server, whatever its own settings are."""
+
 
 def system_clock() -> datetime:
     """Return the time now, in UTC."""
@@ -106,7 +115,9 @@ def _engine(url: str, *, begin: str, pragmas: tuple[str, ...], read_only: bool =
             options = {"isolation_level": "REPEATABLE READ", "postgresql_readonly": True}
             return create_engine(url, execution_options=options)
         # the lock on the head is what keeps the order; a snapshot taken before it would fork the chain
-        return create_engine(url, isolation_level="READ COMMITTED")
+        engine = create_engine(url, isolation_level="READ COMMITTED")
+        event.listen(engine, "connect", _set_up_postgresql)
+        return engine
     # the driver's own way of beginning is late: it reads before it locks, and then finds the store busy
     engine = create_engine(url, connect_args={"isolation_level": None})
 
@@ -122,3 +133,12 @@ def _engine(url: str, *, begin: str, pragmas: tuple[str, ...], read_only: bool =
         connection.exec_driver_sql(begin)
 
     return engine
+
+
+def _set_up_postgresql(connection: DBAPIConnection, _record: object) -> None:
+    cursor = connection.cursor()
+    for setting in POSTGRESQL_SETTINGS:
+        cursor.execute(f"SET {setting}")
+    cursor.close()
+    # a rollback would take them back
+    connection.commit()

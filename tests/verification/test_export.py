@@ -1,0 +1,116 @@
+"""An export stands for the store: everything that it holds is held against what the entries recorded."""
+
+from __future__ import annotations
+
+import base64
+import json
+from collections.abc import Callable
+from typing import Any
+
+import pytest
+
+from service.documents import writing
+from service.records import full_export
+from service.verification.checkpoints import Checkpoint
+from service.verification.export import WITHOUT_ROWS, verify_export
+from service.verification.report import Report
+from tests.records.store import Store
+from tests.verification.conftest import Owned
+
+Lines = list[dict[str, Any]]
+
+
+@pytest.fixture
+def lines(owned: Owned) -> Lines:
+    """The export of a store, a line each, to be tampered with."""
+    store = Store(owned.url)
+    with store.database.reading() as session:
+        raw = [writing.to_bytes(entry) for entry in full_export.entries(session)]
+    store.database.close()
+    return [json.loads(line) for line in raw]
+
+
+def verified(lines: Lines, checkpoint: Checkpoint | None = None) -> Report:
+    return verify_export((json.dumps(line).encode() for line in lines), checkpoint=checkpoint)
+
+
+def test_an_export_says_what_the_store_says(owned: Owned, lines: Lines) -> None:
+    store, export = owned.verify(), verified(lines)
+    assert verified(lines, owned.checkpoint()).holds
+    assert (export.entries, export.rows, export.head, export.root) == (
+        store.entries,
+        store.rows,
+        store.head,
+        store.root,
+    )
+    assert set(export.covered) <= set(store.covered)
+    assert export.notes == ()
+
+
+def _line_of(lines: Lines, table: str) -> dict[str, Any]:
+    return next(line for line in lines if table in line["rows"])
+
+
+def _other_text(row: dict[str, Any]) -> None:
+    row["description"] += "x"
+
+
+def _other_bytes(row: dict[str, Any]) -> None:
+    raw = base64.b64decode(row["content"]["base64"])
+    row["content"]["base64"] = base64.b64encode(raw.replace(b"40", b"41")).decode()
+
+
+def _no_base64(row: dict[str, Any]) -> None:
+    row["content"] = {"base64": "no base64 at all"}
+
+
+def _column_added(row: dict[str, Any]) -> None:
+    row["remark"] = "added"
+
+
+def _column_removed(row: dict[str, Any]) -> None:
+    del row["description"]
+
+
+@pytest.mark.parametrize("tamper", [_other_text, _other_bytes, _no_base64, _column_added, _column_removed])
+def test_a_row_that_is_not_what_was_recorded_is_named(
+    lines: Lines, tamper: Callable[[dict[str, Any]], None]
+) -> None:
+    line = _line_of(lines, "loop_revisions")
+    tamper(line["rows"]["loop_revisions"][0])
+    report = verified(lines)
+    assert report.fault is not None
+    assert (report.fault.entry, report.fault.table) == (line["number"], "loop_revisions")
+
+
+def test_a_row_taken_out_put_in_or_doubled_is_named(lines: Lines) -> None:
+    line = _line_of(lines, "submission_authors")
+    row = line["rows"]["submission_authors"][0]
+    for rows in ([], [row, row], [row, row | {"account_id": "0" * 32}], ["no row"]):
+        line["rows"]["submission_authors"] = rows
+        report = verified(lines)
+        assert report.fault is not None
+        assert (report.fault.entry, report.fault.table) == (line["number"], "submission_authors")
+
+
+def test_a_row_in_a_table_that_no_entry_speaks_of_is_named(lines: Lines) -> None:
+    lines[0]["rows"]["decisions"] = [{"id": "1"}]
+    report = verified(lines)
+    assert report.fault is not None
+    assert (report.fault.entry, report.fault.table) == (1, "decisions")
+
+
+def test_entries_without_their_rows_are_verified_alone_and_that_is_said(lines: Lines) -> None:
+    report = verified([{"digest": line["digest"], "canonical": line["canonical"]} for line in lines])
+    assert report.holds
+    assert report.notes == (WITHOUT_ROWS,)
+
+
+@pytest.mark.parametrize(
+    "line",
+    [b"", b"[]", b"7", b'{"digest": "x"}', b'{"canonical": 1, "digest": "x"}', b"\xff", b'{"rows": 1}'],
+)
+def test_a_line_that_is_no_entry_is_a_fault(line: bytes) -> None:
+    report = verify_export([line])
+    assert report.fault is not None
+    assert report.fault.entry == 1
