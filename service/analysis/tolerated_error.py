@@ -65,6 +65,11 @@ class Tolerated:
     touching: Touching | None
 
     @property
+    def too_wide(self) -> bool:
+        """The bracket is wider than it is meant to be: the search has met its bound on work."""
+        return self.proven < min((1.0 - 1.01 * SCALE_SLACK) * self.attained, LARGEST_SCALE * (1.0 - NEARLY))
+
+    @property
     def interval(self) -> Interval | None:
         """The bracket as it is told; None where nothing was proven."""
         if not (self.proven > 0 or self.attained == 0):

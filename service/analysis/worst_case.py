@@ -15,7 +15,7 @@ Approach (1995), chapter 8. From memory.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -111,10 +111,8 @@ def _of_stable(loop: UncertainLoop, margins: Margins | None, trial: _Trial) -> W
     gain = search.log_gain_margin(distance.proven)
     phase, delay = search.phase_margin(), search.delay_margin()
     wide = distance.proven < (1.0 - 1.01 * DISTANCE_SLACK) * distance.attained
-    scale = tolerated.interval
-    if scale is not None:
-        # the box as stated is proven in any case
-        scale = Interval(at_least=max(1.0, scale.at_least), at_most=scale.at_most)
+    # the box as stated is proven in any case
+    scale = replace(tolerated, proven=max(1.0, tolerated.proven))
     return WorstCase(
         analysis="continuous",
         stable_for_all=True,
@@ -124,8 +122,8 @@ def _of_stable(loop: UncertainLoop, margins: Margins | None, trial: _Trial) -> W
         gain_margin=math.exp(gain) if isinstance(gain, float) else gain,
         phase_margin_deg=math.degrees(phase) if isinstance(phase, float) else phase,
         delay_margin_s=delay / trial.parts.unit_rad_s if isinstance(delay, float) else delay,
-        tolerated_error_scale=scale,
-        notes=(NOTE_TOO_MUCH_WORK,) if wide or None in (gain, phase, delay) else (),
+        tolerated_error_scale=scale.interval,
+        notes=(NOTE_TOO_MUCH_WORK,) if wide or tolerated.too_wide or None in (gain, phase, delay) else (),
     )
 
 
@@ -248,7 +246,8 @@ class _Search:
     def delay_margin(self) -> Told:
         """The worst delay margin in the loop's own unit of time."""
         low, high = self.ends.low, self.ends.high
-        if high.order < 0 or (high.order == 0 and _largest(high) >= 1.0):
+        # a crossing that may lie beyond every frequency leaves no time at all
+        if high.order < 0 or (high.order == 0 and high.log_magnitude[1] >= 0):
             return 0.0
         elsewhere = math.inf
         if low.order == 0 and low.log_magnitude[0] <= 0 <= low.log_magnitude[1]:

@@ -58,15 +58,15 @@ def box_undecided(case: Case) -> Finding | None:
 
 
 def worst_margins_lacking(case: Case) -> Finding | None:
-    """The box is proven stable, but not every worst margin was found within the bound on work."""
+    """The box is proven stable, but not every figure of it was found within the bound on work."""
     worst = _of_stable(case)
     if worst is None or not worst.stable_for_all or NOTE_TOO_MUCH_WORK not in worst.notes:
         return None
     return Finding(
         finding="worst_margins_not_computed",
         weight="caution",
-        sentence="The loop is stable over the whole stated uncertainty of the model, but not every margin of "
-        "the worst model was computed: that would take more work than the service's bound allows.",
+        sentence="The loop is stable over the whole stated uncertainty of the model, but not every figure of "
+        "the worst model was computed in full: that takes more work than the service's bound allows.",
     )
 
 

@@ -131,6 +131,8 @@ class Assessment:
     noise: tuple[Told, ...]
     further: tuple[Told, ...]
     findings: tuple[Sentence, ...]
+    effects: tuple[str, ...]
+    """What the change does to the loop; empty where it is not known."""
     claims: tuple[ClaimRow, ...]
     equivalents: tuple[Told, ...]
     responses: tuple[Response, ...]
@@ -138,8 +140,13 @@ class Assessment:
     engine: str
 
 
-def assessment(title: str, answer: RecomputationAnswer, responses: tuple[Response, ...]) -> Assessment:
-    """Tell an answer, with the responses that were stored for it."""
+def assessment(
+    title: str,
+    answer: RecomputationAnswer,
+    responses: tuple[Response, ...],
+    effects: tuple[str, ...] = (),
+) -> Assessment:
+    """Tell an answer, with the responses that were stored for it and what the change does."""
     recomputation = answer.recomputation
     analysis = judged(recomputation)
     stable = recomputation.verdict == "stable"
@@ -155,6 +162,7 @@ def assessment(title: str, answer: RecomputationAnswer, responses: tuple[Respons
         noise=_quantities(analysis, NOISE) if analysis and analysis.noise else (),
         further=tuple(_further(recomputation, analysis)),
         findings=_sentences(answer.own_findings),
+        effects=effects,
         claims=tuple(_claim(claim) for claim in answer.claims),
         equivalents=tuple(_equivalents(recomputation)),
         responses=responses,
@@ -298,8 +306,9 @@ def _worst_case(worst: WorstCase) -> Iterator[Told]:
     if worst.counterexample:
         yield Told(name="Not stable at", value=wording.box_member(worst.counterexample))
     for name in ("gain_margin", "phase_margin_deg", "delay_margin_s"):
-        told = wording.told(name, getattr(worst, name))
-        yield Told(name=f"Worst {wording.quantity_label(name)}", value=told)
+        if getattr(worst, name) is not None:
+            told = wording.told(name, getattr(worst, name))
+            yield Told(name=f"Worst {wording.quantity_label(name)}", value=told)
     for name, interval in (
         ("Worst maximum sensitivity", worst.max_sensitivity),
         ("Scale of model error that is tolerated", worst.tolerated_error_scale),

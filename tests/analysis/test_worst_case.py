@@ -277,6 +277,14 @@ def test_factors_beyond_float64_are_answered_without_a_claim() -> None:
     assert worst_case(plant, ideal(0.1, 10.0)).stable_for_all is not True
 
 
+def test_what_is_too_much_work_beyond_the_box_leaves_the_proof_of_the_box() -> None:
+    # to the power 10 the time factor spans a hundred decades
+    worst = worst_case(uncertain(first_order(1.0, 1.0, 1.0), time_constants=(1e-12, 1.0)), ideal(0.1, 10.0))
+    assert worst.stable_for_all is True
+    assert worst.tolerated_error_scale == Interval(at_least=1.0, at_most="unbounded")
+    assert worst.notes == (NOTE_TOO_MUCH_WORK,)
+
+
 @pytest.mark.parametrize(
     "plant",
     [
