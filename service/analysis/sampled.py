@@ -115,7 +115,9 @@ def _spectral_radius(sampled: SampledLoop, roots: CharacteristicRoots) -> Quanti
     if roots.count.roots is None:
         return None
     every = np.concatenate([roots.roots, sampled.hidden_roots])
-    return float(np.abs(_on_circle(every)).max()) if every.size else 0.0
+    radius = float(np.abs(_on_circle(every)).max()) if every.size else 0.0
+    # a root farther out than 1e16 is w = 1 to float64
+    return radius if math.isfinite(radius) else None
 
 
 def _log_radius(sampled: SampledLoop, roots: CharacteristicRoots) -> float:
@@ -130,7 +132,7 @@ def _dominant_roots(sampled: SampledLoop, roots: CharacteristicRoots) -> tuple[D
     """Roots s = ln z/h in rad/s, the slowest to die first; z = 0 is no root in s."""
     hidden = sampled.hidden_roots[sampled.hidden_roots.imag >= 0]
     every = np.concatenate([roots.roots, hidden])
-    every = every[np.abs(1.0 + every) > 1e-12]
+    every = every[(np.abs(1.0 + every) > 1e-12) & (every != 1.0)]
     # ln z = 2·atanh w; a negative z is told above the axis, at the Nyquist frequency
     logs = 2.0 * np.arctanh(every)
     logs = np.where(logs.imag < 0, np.conj(logs), logs)

@@ -23,6 +23,9 @@ from service.analysis.loop import Complexes, Factors, OpenLoop, Reals, without_h
 from service.analysis.scan import SampledPlant, Scanned
 from service.analysis.transmission_zeros import log_product, response, transmission_zeros
 
+BEYOND = 1e-13
+"""A pole as near to w = 1 as this, z some 1e13, has lost its digits."""
+
 MET = 1e-8
 """How well the factored loop must meet the plant's state equations, relatively, wherever abs L is not
 small.
@@ -111,6 +114,8 @@ def warped_controller(scanned: Scanned) -> Factors:
 def _plant_factors(scanned: Scanned, plant: SampledPlant, controller: Factors) -> Factors:
     """The plant over a scan but for its whole scans of dead time."""
     poles = np.tanh(np.array(scanned.parts.plant.poles_rad_s, complex) * (0.5 * scanned.interval))
+    if (np.abs(1.0 - poles) < BEYOND).any():
+        raise OverflowError("an unstable pole of the sampled plant is not told from infinity")
     if plant.held_scans > plant.whole_scans:
         poles = np.append(poles, -1.0)
     if scanned.parts.plant.gain == 0:
