@@ -33,10 +33,10 @@ RADIUS, MARGIN, NOISE, STEP = 1e-8, 1e-7, 1e-6, 1e-6
 ON_THE_CIRCLE = 1e-11
 """A spectral radius as near to 1 as this may be called undecided."""
 
-LONGEST_MARCH = 12_000
+LONGEST_MARCH = 6_000
 SEARCHED_SCANS = 25.0
 LONG_DELAY = 60.0
-"""With more scans of dead time than this fewer of the delays below a delay margin are tried."""
+"""With more scans of dead time than this every root of every delay would take too long."""
 
 MARGINS = (
     "gain_margin",
@@ -146,20 +146,23 @@ class Comparison:
         interval, delay = float(self.loop.interval), float(self.loop.delay)
         quick = FloatRoots(self.loop)
         if margins.delay_margin_s == "unbounded":
-            tried = np.linspace(0.0, SEARCHED_SCANS * interval, 60) + 1e-9 * interval
+            tried = np.linspace(0.0, SEARCHED_SCANS * interval, 30) + 1e-9 * interval
         else:
             end = float(margins.delay_margin_s)
-            count = 40 if delay < LONG_DELAY * interval else 4
-            tried = np.append(np.linspace(0.0, end, count)[1:-1], end * (1 - 1e-6))
+            # as many as their matrices are small
+            scans = (delay + end) / interval
+            tried = np.append(
+                np.linspace(0.0, end, int(min(40.0, 3.0 + 800.0 / scans)))[1:-1], end * (1 - 1e-6)
+            )
+            tried = tried[delay + tried < LONG_DELAY * interval]
             if roots_outside(self.loop.characteristic(mpf(end) * (1 + mpf(MARGIN)))) == 0:
                 self.differences.append(f"delay_margin_s: {end} but no root is outside behind it")
             if roots_outside(self.loop.characteristic(mpf(end) * (1 - mpf(MARGIN)))) > 0:
                 self.differences.append(f"delay_margin_s: {end} but a root is outside before it")
         # and where a direct path makes it to the next scan
         first = math.ceil(delay / interval) * interval - delay
-        tried = np.concatenate(
-            [tried, [first + interval * k for k in range(6) if first + interval * k < tried.max()]]
-        )
+        jumps = first + interval * np.arange(6)
+        tried = np.concatenate([tried, jumps[jumps < tried.max(initial=0.0)]])
         for extra in tried:
             if quick.radius(float(extra)) > 1.0 + 1e-9:
                 self.differences.append(f"delay_margin_s: {margins.delay_margin_s} but unstable at {extra}")

@@ -10,6 +10,7 @@ import pytest
 from service.analysis.controller import Controller, Scan, SetpointWeight
 from service.analysis.plant import PlantModel
 from service.analysis.recomputation import recompute
+from service.analysis.results import Stability
 from tests.analysis.entered import (
     factors,
     first_order,
@@ -189,3 +190,34 @@ def test_as_near_as_a_part_in_a_thousand_million_the_verdict_is_never_wrong(side
     near = recompute(lags(limit * (1.0 + side), [5.0, 1.0], (), 0.77), controller).sampled
     assert near is not None
     assert near.stability.verdict in ("undecided", "unstable" if side > 0 else "stable")
+
+
+@pytest.mark.parametrize("interval_s", [30.0, 60.0, 400.0, 1e5])
+def test_an_unstable_plant_that_a_scan_leaves_far_behind_is_never_called_stable(interval_s: float) -> None:
+    # its pole at exp(h) is beyond float64, or has lost its digits
+    found = recompute(first_order(-1.0, -1.0), ideal(2.0, scan=scan(interval_s))).sampled
+    assert found is not None
+    assert found.stability.verdict != "stable"
+    assert_numbers(found.stability)
+
+
+@pytest.mark.parametrize("gain", [1e16, 1e200])
+def test_a_gain_beyond_all_reason_gives_numbers_or_nothing(gain: float) -> None:
+    found = recompute(first_order(1.0, 5.0, 0.7), ideal(gain, 5.0, scan=scan(0.5))).sampled
+    assert found is not None
+    assert found.stability.verdict == "unstable"
+    assert_numbers(found.stability)
+
+
+def test_a_plant_with_an_unstable_pole_beside_its_zero_at_a_long_scan_gives_numbers_or_nothing() -> None:
+    plant = factors(0.76, [0.0736], [0.0690, -0.8093])
+    found = recompute(plant, ideal(1.0, scan=scan(805.0, BACKWARD, 10.0), measurement_filter_s=1.0)).sampled
+    assert found is not None
+    assert found.stability.verdict != "stable"
+    assert_numbers(found.stability)
+
+
+def assert_numbers(stability: Stability) -> None:
+    assert stability.spectral_radius is None or math.isfinite(float(stability.spectral_radius))
+    for told in stability.dominant_roots:
+        assert math.isfinite(abs(complex(*told.root) if isinstance(told.root, tuple) else told.root))

@@ -26,6 +26,7 @@ SETPOINT, LOAD, NOISE, SPARED = range(4)
 
 PIECE = 0.25
 MOST_PIECES = 800
+TERMS = 20
 
 _NODES, _WEIGHTS = (lambda x, w: (0.5 * (x + 1.0), 0.5 * w))(*np.polynomial.legendre.leggauss(8))
 
@@ -246,13 +247,10 @@ class Answer:
 
     def _after(self, piece: int, time: float) -> Any:
         """State and input so long after the start of a piece: Taylor's series, since a piece is short."""
-        total = term = self._at[piece]
+        start = total = self._at[piece]
         matrix = self._m * time
-        for order in range(1, 24):
-            term = matrix @ term / order
-            total = total + term
-            if np.abs(term).max() <= 1e-18 * np.abs(total).max():
-                break
+        for order in range(TERMS, 0, -1):
+            total = start + matrix @ total / order
         return total
 
     def _turns(self) -> None:
@@ -341,9 +339,9 @@ class Answer:
         weight = self.length[:, None] * _WEIGHTS
         time = self.start[:, None] + self.length[:, None] * _NODES
         absolute, timed = (weight * np.abs(error)).sum(axis=1), (weight * time * np.abs(error)).sum(axis=1)
-        ends = level - self.ends
+        ends, largest = level - self.ends, np.abs(error).max(axis=1)
         changing = (ends[:, 0] * ends[:, 1] < 0) | ((error.min(axis=1) < 0) & (error.max(axis=1) > 0))
-        for piece in np.flatnonzero(changing & (np.abs(error).max(axis=1) > 1e-10)).tolist():
+        for piece in np.flatnonzero(changing & (largest > 1e-7 * largest.max())).tolist():
             length = float(self.length[piece])
             at = [0.0, *sorted(self._passages(piece, level)), length]
             absolute[piece] = timed[piece] = 0.0

@@ -227,8 +227,10 @@ def _peak(circle: Circle, of: Callable[[Any, Any], Any], low: float, high: float
             best = min(max(values.index(max(values)), 1), 11)
             a, b = at[best - 1], at[best + 1]
         left, middle, right = values[best - 1 : best + 2]
-        bend = left - 2 * middle + right
-        return middle - (right - left) ** 2 / (8 * bend) if bend != 0 else middle
+        if middle < max(left, right) or middle == left == right:
+            # no peak lies inside: the grid's own rounding looked like one
+            return max(values)
+        return middle - (right - left) ** 2 / (8 * (left - 2 * middle + right))
 
 
 def reference_delay_margin(loop: ExactSampledLoop, most: float, steps_a_scan: int = 20) -> Any:
