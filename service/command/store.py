@@ -41,8 +41,8 @@ def mistakes_in_a_sentence() -> Iterator[None]:
         # a driver is an extra of its own and imported only when a database of its kind is named
         raise UserMistake(f"the database needs the package {missing.name}, which is not installed") from None
     except SQLAlchemyError as failed:
-        # only the driver's own words: the statement and the address of the database stay out
-        reason = getattr(failed, "orig", None) or failed
+        # only the driver's own first line: the statement and the address of the database stay out
+        reason = str(getattr(failed, "orig", None) or failed).partition("\n")[0]
         raise UserMistake(f"the database cannot be used: {reason}") from None
 
 

@@ -8,10 +8,12 @@ from pathlib import Path
 
 import pytest
 from click.testing import CliRunner, Result
+from psycopg import sql
 
 from service.command.main import SUBJECTS, main
 from service.records import tokens
 from service.records.database import Database
+from tests.clusters import Cluster
 from tests.databases import Databases, file_of, is_sqlite
 
 Run = Callable[..., Result]
@@ -182,6 +184,17 @@ def test_a_store_that_cannot_be_reached_is_said_without_its_password(
 ) -> None:
     monkeypatch.setenv("GAIN_SIGNOFF_DATABASE_URL", "sqlite:////nowhere/at/all.db")
     assert "unable to open database file" in refused_in_one_sentence(run("migrate"))
+
+
+def test_what_postgresql_says_of_a_role_without_rights_is_one_sentence(
+    cluster: Cluster, monkeypatch: pytest.MonkeyPatch, run: Run
+) -> None:
+    cluster.administer(sql.SQL("CREATE ROLE powerless LOGIN"))
+    name = cluster.create()
+    monkeypatch.setenv("GAIN_SIGNOFF_DATABASE_URL", cluster.url(name, "powerless"))
+    assert "permission denied" in refused_in_one_sentence(run("migrate"))
+    cluster.drop(name)
+    cluster.administer(sql.SQL("DROP ROLE powerless"))
 
 
 def test_a_role_that_does_not_exist_is_refused(store: Run) -> None:
