@@ -156,8 +156,12 @@ def _on_conditions(loop: UncertainLoop, w: Reals, v: Reals) -> tuple[Reals, Real
             step_w = (error.real * by_v.imag - error.imag * by_v.real) / area
             step_v = (by_w.real * error.imag - by_w.imag * error.real) / area
         else:
-            step_w = error.real / by_w.real if certain_gain else error.imag / by_w.imag
-            step_v = np.zeros_like(v)
+            # one condition: the shortest way to it, since either direction alone may run along it
+            missed = error.real if certain_gain else error.imag
+            along_w = by_w.real if certain_gain else by_w.imag
+            along_v = (by_v.real if certain_gain else by_v.imag) * moves_v
+            square = along_w * along_w + along_v * along_v
+            step_w, step_v = missed * along_w / square, missed * along_v / square
         w = w - np.clip(np.where(step_w == step_w, step_w, 0.0), -0.5, 0.5)
         v = v - np.clip(np.where(step_v == step_v, step_v, 0.0), -0.5, 0.5)
     return w, v

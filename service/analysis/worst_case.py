@@ -339,7 +339,9 @@ def _refuted(loop: UncertainLoop, trial: _Trial, tolerated: Tolerated, otherwise
     found = next((m for m in (trial.member(*place) for place in places) if trial.is_unstable(m)), None)
     if found is None:
         return _nothing(None, notes=(otherwise,), tolerated=tolerated.interval)
-    return _nothing(False, counterexample=found, tolerated=tolerated.interval)
+    # whatever the search has met: the box as stated is too wide
+    refuted = replace(tolerated, attained=min(1.0, tolerated.attained))
+    return _nothing(False, counterexample=found, tolerated=refuted.interval)
 
 
 def _beyond(loop: UncertainLoop, tolerated: Tolerated) -> list[Touching]:

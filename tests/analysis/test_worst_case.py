@@ -179,6 +179,15 @@ def test_a_static_gain_that_may_pass_minus_one_is_refuted_at_the_origin() -> Non
     assert at_least <= math.log(1.0 / 0.9) / math.log(1.25) <= at_most
 
 
+def test_a_phase_that_reaches_180_degrees_at_every_frequency_at_once_is_met() -> None:
+    # integrator and lag under PI without dead time: the lag may not be longer than the integral time
+    plant = factors(1.25, [], [-1.25, 0.0])
+    worst = worst_case(uncertain(plant, gain=(0.5, 1.4), time_constants=(0.5, 2.1)), ideal(0.15, 1.16))
+    assert worst.stable_for_all is False
+    at_least, at_most = ends(worst.tolerated_error_scale)
+    assert at_least <= math.log(1.16 * 1.25) / math.log(2.1) <= at_most <= 1.01 * at_least
+
+
 @pytest.mark.parametrize(
     ("plant", "controller"),
     [

@@ -60,6 +60,7 @@ class Box:
         sizes = np.abs(roots[np.abs(roots) > 1e-9])
         longest = self.ranges[2][1]
         marks = [*sizes.tolist(), *([1.0 / longest] if longest else [])]
+        marks = marks or [1.0]
         spread = math.exp(max(abs(end) for end in self.ranges[1]))
         low, high = math.log10(1e-3 * min(marks) / spread), math.log10(1e3 * max(marks) * spread)
         omega = np.logspace(low, high, int((high - low) * POINTS_A_DECADE))
