@@ -2,8 +2,8 @@
 
 Imports point left only; packages at one place, parted by commas, never import each other:
 
-    analysis ← judgement ← documents ← records ← context
-    ← figures ← sheets ← issuing ← api, pages ← app ← demonstration ← command
+    analysis ← judgement ← documents ← monitoring ← records ← context
+    ← figures ← sheets ← issuing ← api, pages, request_log ← app ← demonstration ← command
 
 Two stand outside this order. `settings` reads the environment, alone, and is read by `app`, `demonstration`,
 `command` and the migrations only. `verification` proves or breaks what the others wrote: it imports nothing

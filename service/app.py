@@ -6,6 +6,7 @@ from argon2 import PasswordHasher
 from flask import Flask, Response, request
 from werkzeug.routing import BaseConverter
 
+from service import request_log
 from service.api import errors as api_errors
 from service.api.registration import register as register_api
 from service.context import Services, attach, request_id
@@ -65,6 +66,7 @@ def create_app(
     register_pages(app)
     app.register_error_handler(Exception, _answer_failure)
     app.after_request(_add_headers)
+    request_log.attach(app)
     return app
 
 

@@ -34,8 +34,35 @@ def attach(app: Flask, services: Services) -> None:
 
 def services() -> Services:
     """Return the services of the application that handles the present request."""
-    attached: Services = current_app.extensions[_EXTENSION]
+    return services_of(current_app)
+
+
+def services_of(app: Flask) -> Services:
+    """Return the services of an application, outside its requests."""
+    attached: Services = app.extensions[_EXTENSION]
     return attached
+
+
+def note_account(name: str) -> None:
+    """Note whose credential the present request came with, for the log."""
+    g.account = name
+
+
+def account() -> str | None:
+    """Return the name of the account whose credential the present request came with, if it came with one."""
+    name: str | None = g.get("account")
+    return name
+
+
+def note_problem(name: str) -> None:
+    """Note which type of problem the present request is answered with, for the log."""
+    g.problem = name
+
+
+def problem() -> str | None:
+    """Return the type of problem that the present request is answered with, None where there is none."""
+    name: str | None = g.get("problem")
+    return name
 
 
 def request_id() -> str:

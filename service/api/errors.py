@@ -15,7 +15,7 @@ from werkzeug.exceptions import HTTPException
 
 from service.api import problems, refusals
 from service.api.problems import ProblemType
-from service.context import request_id
+from service.context import note_problem, request_id
 from service.documents import errors as documents
 from service.documents import writing
 from service.records import errors as records
@@ -66,8 +66,9 @@ OF_HTTP: dict[int, ProblemType] = {
 def answer(error: Exception) -> Response:
     """Return the problem that stands for any exception raised while a request was handled."""
     problem = problem_type(error)
+    note_problem(problem.name)
     if problem.status >= 500:
-        LOG.error("request %s failed", request_id(), exc_info=error)
+        LOG.error("request failed", exc_info=error, extra={"request_id": request_id()})
     response = Response(_body(problem, error), problem.status, content_type="application/problem+json")
     response.headers.extend(_headers(problem, error))
     return response

@@ -21,7 +21,7 @@ from service.api import answers, bodies, idempotency, queries
 from service.api.answers import Answer
 from service.api.credentials import bearer_token
 from service.api.queries import NoQuery
-from service.context import services
+from service.context import note_account, services
 from service.documents import reading
 from service.records import tokens
 from service.records.errors import NotIndependent, SigningRefused
@@ -201,7 +201,9 @@ def _pass_on(_call: Call, read: Reader[DocumentT], **_path: Any) -> Reader[Docum
 
 
 def _authenticate(session: Session) -> tokens.Authenticated:
-    return tokens.authenticate(session, bearer_token(request), services().database.now())
+    who = tokens.authenticate(session, bearer_token(request), services().database.now())
+    note_account(who.actor.name)
+    return who
 
 
 def _call(session: Session, who: tokens.Authenticated) -> Call:

@@ -11,15 +11,19 @@ for _variable in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):
 
 import click  # noqa: E402  the variables above come first on purpose
 
+from service.command.errors import UserMistake  # noqa: E402  see above
 from service.documents.version import SERVICE_VERSION  # noqa: E402  see above
+from service.settings import SettingsError  # noqa: E402  see above
 
 SUBJECTS: dict[str, tuple[str, str]] = {
     "account": ("service.command.account", "Make accounts and look after them."),
+    "backup": ("service.command.backup", "Copy a SQLite store into one file while the service runs."),
     "demo": ("service.command.demo", "Show the service on an invented plant."),
     "history": ("service.command.history", "Verify and export the history of the records."),
     "key": ("service.command.key", "Make, show and change the key that signs checkpoints."),
     "migrate": ("service.command.migrate", "Bring the database to the current schema."),
     "recompute": ("service.command.recompute", "Recompute stability and margins of loops from files."),
+    "restore": ("service.command.backup", "Make a SQLite store from a backup."),
     "serve": ("service.command.serve", "Run the service."),
     "token": ("service.command.token", "Issue, list and revoke tokens for the API."),
 }
@@ -28,6 +32,13 @@ SUBJECTS: dict[str, tuple[str, str]] = {
 
 class LazyGroup(click.Group):
     """A group that imports a command when it is called, and none to print the list of them."""
+
+    def invoke(self, ctx: click.Context) -> object:
+        """Run the command; a setting that cannot be used is the mistake of whoever set it."""
+        try:
+            return super().invoke(ctx)
+        except SettingsError as refused:
+            raise UserMistake(str(refused)) from None
 
     def list_commands(self, ctx: click.Context) -> list[str]:
         """Name the subjects."""

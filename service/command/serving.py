@@ -22,9 +22,10 @@ THREADS = 8
 BODY_BYTES_BUFFERED_MAX = 4 * BODY_BYTES_MAX
 """Past this a body is not even taken in. Between the two limits the application says what is wrong."""
 
-DRAIN_S_MAX = 30.0
-"""How long requests that were begun may take after the signal; a recomputation has a work bound far below
-it."""
+DRAIN_S = 30.0
+"""How long requests that were begun may take after the signal, where nothing else is said.
+
+A recomputation has a work bound far below it."""
 
 
 def listen(host: str, port: int) -> socket.socket:
@@ -37,10 +38,13 @@ def listen(host: str, port: int) -> socket.socket:
         raise UserMistake(f"cannot listen at {host}:{port}: {reason}; --port takes another one") from None
 
 
-def serve_until_told(app: Flask, listener: socket.socket, on_ready: Callable[[str], None]) -> None:
+def serve_until_told(
+    app: Flask, listener: socket.socket, on_ready: Callable[[str], None], drain_s: float = DRAIN_S
+) -> None:
     """Serve `app` until SIGTERM or SIGINT, then finish the requests that were begun and return.
 
-    `on_ready` is called once with the address. The listener is closed at the end.
+    What is not finished after `drain_s` seconds is cut off; the records roll it back. `on_ready` is called
+    once with the address. The listener is closed at the end.
     """
     server = waitress.create_server(
         app,
@@ -55,7 +59,7 @@ def serve_until_told(app: Flask, listener: socket.socket, on_ready: Callable[[st
         _loop(server, until=told.is_set)
         server.del_channel()
         listener.close()
-        deadline = time.monotonic() + DRAIN_S_MAX
+        deadline = time.monotonic() + drain_s
         _loop(server, until=lambda: not _busy(server) or time.monotonic() > deadline)
         server.task_dispatcher.shutdown()
 

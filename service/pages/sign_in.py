@@ -7,7 +7,8 @@ import re
 from flask import Blueprint, Response, redirect, request, url_for
 from werkzeug.wrappers import Response as AnyResponse
 
-from service.context import services
+from service.context import note_account, services
+from service.monitoring.metrics import SIGN_IN_FAILURES
 from service.pages import forms, visits
 from service.pages.forms import Form, Problem
 from service.pages.frame import page
@@ -42,9 +43,12 @@ def sign_in() -> AnyResponse:
         source = request.remote_addr or ""
         started = sign_ins.sign_in(services().database, form.typed("name"), forms.secret("password"), source)
     except TooManyAttempts as refusal:
+        SIGN_IN_FAILURES.labels("too_soon").inc()
         return _too_many(form, refusal)
     except NotAuthenticated:
+        SIGN_IN_FAILURES.labels("wrong").inc()
         return form_page(form.with_problems([WRONG]), status=401)
+    note_account(started.actor.name)
     response = redirect(safe_path(form.typed("next")), 303)
     visits.begin(response, started)
     return response

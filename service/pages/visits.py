@@ -21,7 +21,7 @@ from sqlalchemy.exc import SQLAlchemyError
 from sqlalchemy.orm import Session
 from werkzeug.wrappers import Response as AnyResponse
 
-from service.context import services
+from service.context import note_account, services
 from service.pages import forgery
 from service.records import accounts, history, sign_ins
 from service.records.errors import NotAuthenticated
@@ -135,6 +135,7 @@ def _resume() -> PresentSession:
     with store.reading() as session:
         found = sign_ins.resume(session, secret, now)
         g.demonstration = history.is_demonstration(session)
+    note_account(found.actor.name)
     if found.use_is_due:
         with store.writing() as session:
             sign_ins.note_use(session, found.id, now)

@@ -110,16 +110,17 @@ def migrating_engine(url: str) -> Engine:
 
 
 def _engine(url: str, *, begin: str, pragmas: tuple[str, ...], read_only: bool = False) -> Engine:
+    # parameters are hidden: a failed statement would bring reasons and hashes of passwords into the log
     if make_url(url).get_backend_name() != "sqlite":
         if read_only:
             options = {"isolation_level": "REPEATABLE READ", "postgresql_readonly": True}
-            return create_engine(url, execution_options=options)
+            return create_engine(url, hide_parameters=True, execution_options=options)
         # the lock on the head is what keeps the order; a snapshot taken before it would fork the chain
-        engine = create_engine(url, isolation_level="READ COMMITTED")
+        engine = create_engine(url, hide_parameters=True, isolation_level="READ COMMITTED")
         event.listen(engine, "connect", _set_up_postgresql)
         return engine
     # the driver's own way of beginning is late: it reads before it locks, and then finds the store busy
-    engine = create_engine(url, connect_args={"isolation_level": None})
+    engine = create_engine(url, hide_parameters=True, connect_args={"isolation_level": None})
 
     @event.listens_for(engine, "connect")
     def _set_pragmas(connection: DBAPIConnection, _record: object) -> None:

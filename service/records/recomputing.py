@@ -16,6 +16,7 @@ from service.documents.recomputations import judged
 from service.documents.writing import plain
 from service.judgement.claims import Claims
 from service.judgement.criteria import past_hard_floors, service_floors
+from service.monitoring.metrics import RECOMPUTATION_SECONDS
 from service.records import gain_sets, loops
 from service.records.content import SignedGains, SignedModel, SignedRecomputation
 from service.records.tables.submissions import SubmissionRecomputation
@@ -37,13 +38,14 @@ def recomputed(
     Raises FieldError, its path starting with "plant_model", "controller" or "ranges", where the loop
     cannot be formed.
     """
-    recomputation = recompute(
-        model.model.plant_model,
-        gain_set.controller,
-        ranges=loops.ranges(loop),
-        with_curves=True,
-        with_second_opinion=True,
-    )
+    with RECOMPUTATION_SECONDS.time():
+        recomputation = recompute(
+            model.model.plant_model,
+            gain_set.controller,
+            ranges=loops.ranges(loop),
+            with_curves=True,
+            with_second_opinion=True,
+        )
     scan = gain_set.controller.scan
     interval_s = scan.interval_s if isinstance(scan, Scan) else None
     criteria = loop.own_criteria or service_floors(recomputation, interval_s)

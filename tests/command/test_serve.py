@@ -33,10 +33,10 @@ def environment(tmp_path: Path) -> dict[str, str]:
 
 
 @contextmanager
-def serving(environment: dict[str, str]) -> Iterator[tuple[subprocess.Popen[str], str, int]]:
+def serving(environment: dict[str, str], *options: str) -> Iterator[tuple[subprocess.Popen[str], str, int]]:
     """Start the service; give its process, host and port; end it if the test has not."""
     process = subprocess.Popen(
-        COMMAND, env=environment, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
+        (*COMMAND, *options), env=environment, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True
     )
     try:
         assert process.stdout is not None
@@ -93,6 +93,16 @@ def test_at_sigterm_an_idle_connection_holds_nothing_up(environment: dict[str, s
         process.send_signal(signal.SIGTERM)
         assert process.wait(timeout=10) == 0
         idle.close()
+
+
+def test_a_request_that_does_not_end_is_cut_off_after_the_time_given(environment: dict[str, str]) -> None:
+    with serving(environment, "--drain", "0.5") as (process, host, port):
+        stuck = socket.create_connection((host, port), timeout=20)
+        stuck.sendall(b"POST /v1/recomputations HTTP/1.1\r\nHost: x\r\nContent-Length: 4\r\n\r\nab")
+        time.sleep(0.3)
+        process.send_signal(signal.SIGTERM)
+        assert process.wait(timeout=10) == 0
+        stuck.close()
 
 
 def test_many_at_once_are_answered(environment: dict[str, str]) -> None:

@@ -5,6 +5,7 @@ from typing import Any
 import pytest
 from flask import Flask
 
+from service.monitoring.metrics import REGISTRY
 from tests.pages.conftest import Person, SignedIn
 from tests.pages.invented import password_of
 
@@ -100,6 +101,22 @@ def test_no_address_outside_follows_the_sign_in(visitor: Person, path: str) -> N
     visitor.send("/sign-in", follow=False, next=path, name="reviewer", password=password_of("reviewer"))
     assert visitor.answer is not None
     assert visitor.answer.headers["Location"] == "/"
+
+
+def test_every_failure_is_counted_for_whoever_watches_the_service(visitor: Person) -> None:
+    def counted() -> tuple[float, float]:
+        name = "gain_signoff_sign_in_failures_total"
+        wrong, too_soon = (
+            REGISTRY.get_sample_value(name, {"reason": reason}) for reason in ("wrong", "too_soon")
+        )
+        return wrong or 0, too_soon or 0
+
+    before = counted()
+    visitor.open("/sign-in")
+    for _ in range(6):
+        visitor.send("/sign-in", name="nobody", password="wrong " * 4)
+    visitor.sign_in("reviewer")
+    assert (counted()[0] - before[0], counted()[1] - before[1]) == (5, 1)
 
 
 def test_too_many_failures_are_told_to_wait(visitor: Person) -> None:
