@@ -28,12 +28,12 @@ def test_entries_verified_a_second(databases: Databases) -> None:
                 document = registration(tag=f"FIC-{number}")
                 loops.register(session, CONSOLE, document, store.clock())
     store.database.close()
-    began = time.perf_counter()
+    began, began_cpu = time.perf_counter(), time.process_time()
     report = verify(url)
-    lasted = time.perf_counter() - began
+    lasted, cpu = time.perf_counter() - began, time.process_time() - began_cpu
     assert report.holds
     print(
         f"\n{databases.name}: {report.entries} entries with {report.rows} rows verified in {lasted:.2f} s,"
-        f" {report.entries / lasted:.0f} a second"
+        f" {report.entries / lasted:.0f} a second ({report.entries / cpu:.0f} a second of its own CPU)"
     )
     databases.drop(url)
