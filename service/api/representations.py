@@ -37,6 +37,7 @@ from service.records.views import (
     ChangeView,
     Comparison,
     DecisionView,
+    Effect,
     EntryReference,
     EventView,
     InstallationView,
@@ -262,6 +263,8 @@ class Submission:
     """Those that ran when this was submitted; part of what is signed."""
     comparison: tuple[Comparison, ...]
     """One a gain set: those gains in force → these."""
+    effects: tuple[Effect, ...]
+    """What the change does, in sentences, on every model that the gains before were recomputed with too."""
     review_due_at: datetime | None
     overdue: bool
     recheck_due: RecheckView | None
@@ -278,6 +281,7 @@ class Submission:
             **_of_view(view),
             **_of_content(view.content),
             comparison=view.comparisons,
+            effects=view.effects,
             decisions=tuple(Decision.of(decision) for decision in view.decisions),
             installations=tuple(Installation.of(installation) for installation in view.installations),
         )

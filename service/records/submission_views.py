@@ -9,6 +9,7 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session
 
 from service.analysis.results import Verdict
+from service.judgement.on_change import what_changes
 from service.records import (
     approvability,
     basis,
@@ -36,6 +37,7 @@ from service.records.tables.submissions import Decision, Installation, Submissio
 from service.records.views import (
     Comparison,
     DecisionView,
+    Effect,
     EntryReference,
     InstallationView,
     SubmissionSummary,
@@ -65,6 +67,7 @@ def whole(session: Session, actor: Actor, row: Submission, now: datetime) -> Sub
         decisions=_decisions(session, row.id),
         installations=_installations(session, row.id),
         comparisons=comparisons(content, content.gains_in_force.gain_sets if content.gains_in_force else ()),
+        effects=_effects(session, content),
         review_due_at=due_at,
         overdue=states.is_overdue(stored, row, due_at, now),
         recheck_due=rechecks.due(session, row, state),
@@ -112,16 +115,39 @@ def comparisons(content: SignedContent, before: tuple[SignedGains, ...]) -> tupl
     """Compare each gain set with the one before it: by its condition, or by its place where none is named."""
     if not before:
         return ()
-    by_condition = {gain_set.condition: gain_set for gain_set in before}
     ranges = loops.ranges(content.loop)
     return tuple(
         comparison.compare(
-            by_condition.get(gain_set.condition, before[min(index, len(before) - 1)]).controller,
-            gain_set.controller,
-            ranges,
+            before[_place_before(content, index, before)].controller, gain_set.controller, ranges
         )
         for index, gain_set in enumerate(content.gain_sets)
     )
+
+
+def _place_before(content: SignedContent, index: int, before: tuple[SignedGains, ...]) -> int:
+    """Which of the gain sets before a gain set takes the place of."""
+    condition = content.gain_sets[index].condition
+    same = [place for place, gain_set in enumerate(before) if gain_set.condition == condition]
+    return same[-1] if same else min(index, len(before) - 1)
+
+
+def _effects(session: Session, content: SignedContent) -> tuple[Effect, ...]:
+    """What the change does on every model that the gains before were recomputed with too."""
+    if content.gains_in_force is None:
+        return ()
+    row = session.get_one(Submission, content.gains_in_force.submission_id)
+    earlier = {
+        (each.model_id, each.gain_set): each.answer.recomputation
+        for each in present_content.present(session, row).read().recomputations
+    }
+    before = content.gains_in_force.gain_sets
+    found = []
+    for each in content.recomputations:
+        was = earlier.get((each.model_id, _place_before(content, each.gain_set, before)))
+        if was is not None:
+            sentences = what_changes(was, each.answer.recomputation)
+            found.append(Effect(model_id=each.model_id, gain_set=each.gain_set, sentences=sentences))
+    return tuple(found)
 
 
 def _open_actions(

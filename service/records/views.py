@@ -202,6 +202,15 @@ class Comparison:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
+class Effect:
+    """What a change of gains does to the loop on one model, in sentences, from the stored results."""
+
+    model_id: str
+    gain_set: int
+    sentences: tuple[str, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
 class Compared:
     """Which gains stand on one side of a comparison."""
 
@@ -277,6 +286,8 @@ class SubmissionView:
     installations: tuple[InstallationView, ...]
     comparisons: tuple[Comparison, ...]
     """One a gain set: the gains in force when this was submitted → these. Empty where none were known."""
+    effects: tuple[Effect, ...]
+    """One for each recomputation whose model the gains before were recomputed with too."""
     review_due_at: datetime | None
     overdue: bool
     """An emergency change whose review is owed past its time, or a temporary one past its own."""

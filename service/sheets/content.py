@@ -96,6 +96,7 @@ def content_of(
     good, summary = _summary(signed)
     drawn = {(each.model_id, each.gain_set): each.curves for each in curves}
     beside = {(each.model_id, each.gain_set): each.curves for each in curves_in_force}
+    effects = {(each.model_id, each.gain_set): each.sentences for each in view.effects}
     return SheetContent(
         demonstration=demonstration,
         record=view.id,
@@ -116,7 +117,12 @@ def content_of(
         criteria_source=_CRITERIA_SOURCES[signed.criteria_source],
         worst=tuple(_worst(signed)),
         assessments=tuple(
-            assessment(_title(signed, each), each.answer, _responses(signed, each, drawn, beside))
+            assessment(
+                _title(signed, each),
+                each.answer,
+                _responses(signed, each, drawn, beside),
+                effects.get((each.model_id, each.gain_set), ()),
+            )
             for each in signed.recomputations
         ),
         hard_limits=tuple(_hard_limits(signed.recomputations)),

@@ -51,3 +51,11 @@ def test_what_cannot_be_compared_is_refused(service: Service, submission: Body) 
     other_loop = {"loop": {"site": "Vanholm", "tag": "TIC-205"}}
     other = service.post("/v1/submissions", plant.SUBMISSION | other_loop).json
     assert service.get(f"{path}?before={other['id']}").status_code == 409
+
+
+def test_what_the_change_does_stands_in_sentences(service: Service, submission: Body) -> None:
+    assert submission["effects"] == []
+    found = plant.CONTROLLER | {"proportional": {"value": 1.2, "unit": "gain", "displayed": "1.20"}}
+    service.post("/v1/submissions", plant.SUBMISSION | {"kind": "baseline", "controller": found})
+    (effect,) = service.post("/v1/submissions", plant.SUBMISSION).json["effects"]
+    assert any("nearer to instability" in sentence for sentence in effect["sentences"])

@@ -201,6 +201,18 @@ def test_a_submission_is_shown_beside_the_gains_then_in_force(store: Store, loop
     assert compared.common_form is None
 
 
+def test_what_the_change_does_is_told_from_the_results_of_both_on_the_same_model(
+    store: Store, loop: LoopView
+) -> None:
+    assert store.submit().effects == ()
+    store.submit(kind="baseline", controller=gains(1.0))
+    (effect,) = store.submit().effects
+    assert any("nearer to instability" in sentence for sentence in effect.sentences)
+    # the gains before were never recomputed with a model that came later
+    store.add_model(loop, gain=1.1)
+    assert store.submit().effects == ()
+
+
 def test_gains_in_two_forms_are_shown_in_one(store: Store, loop: LoopView) -> None:
     parallel = gains(1.5, form="parallel", integral={"value": 0.15, "unit": "gain_per_second"})
     store.submit(kind="baseline", controller=parallel)

@@ -196,6 +196,7 @@ def submission(
         decisions=(),
         installations=(),
         comparisons=(),
+        effects=(),
         review_due_at=None,
         overdue=False,
         recheck_due=None,
