@@ -216,9 +216,9 @@ class Run:
 
     def _request(self) -> Request:
         with self._lock:
-            marker = f"marker-{next(self._markers)}"
-            chance = self.random.random()
-        if chance < 0.8:
+            number = next(self._markers)
+        marker = f"marker-{number}"
+        if number % 5:
             return Request(marker, self._models_of, plant.MODEL | {"evidence": marker})
         return Request(marker, "/v1/submissions", GAINS | {"reason": marker})
 
