@@ -6,7 +6,7 @@ from flask import Flask
 from tests.pages.conftest import Person, SignedIn
 from tests.pages.invented import Kept, password_of
 
-FORMS = ["sign_out", "confirm", "sign", "installation"]
+FORMS = ["sign_out", "confirm", "sign", "installation", "sign_change", "password"]
 
 
 def routes(app: Flask) -> dict[str, tuple[str, set[str]]]:
