@@ -42,6 +42,8 @@ def restore(file: Path) -> None:
     was kept elsewhere shows that something is missing (history verify --checkpoint).
     """
     store = _store_file()
+    if store.exists():
+        raise UserMistake(f"{store} is there already; nothing is written over it")
     for beside in ("-wal", "-shm", "-journal"):
         # left by another store under this name, SQLite would play it into this one
         if store.with_name(store.name + beside).exists():
