@@ -37,7 +37,20 @@ PORT = click.IntRange(0, 65535)
     metavar="SECONDS",
     help="How long requests that were begun may take once the service is told to end.",
 )
-def serve(host: str, port: int, metrics_port: int | None, metrics_host: str, drain_s: float) -> None:
+@click.option(
+    "--trusted-proxy",
+    metavar="ADDRESS",
+    help="The address of the proxy before this service: its X-Forwarded-For says where a request comes from."
+    " Without it, failed sign-ins of all people count for the one address of the proxy.",
+)
+def serve(
+    host: str,
+    port: int,
+    metrics_port: int | None,
+    metrics_host: str,
+    drain_s: float,
+    trusted_proxy: str | None,
+) -> None:
     """Run the service until it is told to end (SIGTERM or SIGINT); requests that were begun are finished."""
     settings = Settings.from_environment()
     settings.required_secret_key()
@@ -58,4 +71,10 @@ def serve(host: str, port: int, metrics_port: int | None, metrics_host: str, dra
             database = services_of(app).database
             at = running.enter_context(metrics.served(database, metrics_host, metrics_port))
             click.echo(f"Metrics at port {at} of {metrics_host}, path /metrics", err=True)
-        serve_until_told(app, listener, lambda address: click.echo(f"Serving at {address}"), drain_s)
+        serve_until_told(
+            app,
+            listener,
+            lambda address: click.echo(f"Serving at {address}"),
+            drain_s=drain_s,
+            trusted_proxy=trusted_proxy,
+        )

@@ -39,12 +39,18 @@ def listen(host: str, port: int) -> socket.socket:
 
 
 def serve_until_told(
-    app: Flask, listener: socket.socket, on_ready: Callable[[str], None], drain_s: float = DRAIN_S
+    app: Flask,
+    listener: socket.socket,
+    on_ready: Callable[[str], None],
+    *,
+    drain_s: float = DRAIN_S,
+    trusted_proxy: str | None = None,
 ) -> None:
     """Serve `app` until SIGTERM or SIGINT, then finish the requests that were begun and return.
 
-    What is not finished after `drain_s` seconds is cut off; the records roll it back. `on_ready` is called
-    once with the address. The listener is closed at the end.
+    What is not finished after `drain_s` seconds is cut off; the records roll it back. `trusted_proxy` is the
+    address of a proxy whose X-Forwarded-For says where a request comes from; from anyone else it is dropped.
+    `on_ready` is called once with the address. The listener is closed at the end.
     """
     server = waitress.create_server(
         app,
@@ -53,6 +59,9 @@ def serve_until_told(
         threads=THREADS,
         ident=None,
         max_request_body_size=BODY_BYTES_BUFFERED_MAX,
+        trusted_proxy=trusted_proxy,
+        trusted_proxy_headers={"x-forwarded-for"} if trusted_proxy else set(),
+        clear_untrusted_proxy_headers=True,
     )
     with _told_to_end(server) as told:
         on_ready(_address(listener))

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import http.client
 import os
+import re
 import signal
 import socket
 import subprocess
@@ -13,12 +14,13 @@ import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from urllib.parse import urlsplit
+from urllib.parse import urlencode, urlsplit
 
 import pytest
 
 from service.records import migrating
 from service.records.database import system_clock
+from tests.databases import opened, run
 
 SECRET_KEY = "a secret of the tests, of 32 bytes or more"
 COMMAND = (sys.executable, "-m", "service.command", "serve", "--port", "0")
@@ -103,6 +105,37 @@ def test_a_request_that_does_not_end_is_cut_off_after_the_time_given(environment
         process.send_signal(signal.SIGTERM)
         assert process.wait(timeout=10) == 0
         stuck.close()
+
+
+@pytest.mark.parametrize(
+    ("options", "counted"),
+    [
+        ((), "source:127.0.0.1"),
+        (("--trusted-proxy", "127.0.0.1"), "source:192.0.2.7"),
+        (("--trusted-proxy", "192.0.2.1"), "source:127.0.0.1"),
+    ],
+    ids=["no proxy", "the proxy", "another one"],
+)
+def test_a_failed_sign_in_counts_where_it_comes_from_and_only_the_proxy_may_say_so(
+    environment: dict[str, str], options: tuple[str, ...], counted: str
+) -> None:
+    with serving(environment, *options) as (_, host, port):
+        connection = http.client.HTTPConnection(host, port, timeout=20)
+        connection.request("GET", "/sign-in")
+        answered = connection.getresponse()
+        (token,) = re.findall(r'name="token" value="([^"]+)"', answered.read().decode())
+        headers = {
+            "Cookie": (answered.headers["Set-Cookie"] or "").partition(";")[0],
+            "Content-Type": "application/x-www-form-urlencoded",
+            "X-Forwarded-For": "192.0.2.7",
+        }
+        typed = urlencode({"token": token, "name": "nobody", "password": "wrong"})
+        connection.request("POST", "/sign-in", typed, headers)
+        assert connection.getresponse().status == 401
+        connection.close()
+    with opened(environment["GAIN_SIGNOFF_DATABASE_URL"]) as store:
+        found = [subject for (subject,) in run(store, "SELECT subject FROM throttles")]
+    assert sorted(found) == ["account:nobody", counted]
 
 
 def test_many_at_once_are_answered(environment: dict[str, str]) -> None:
