@@ -38,6 +38,14 @@ def cluster() -> Iterator[Cluster]:
     cluster.remove()
 
 
+@pytest.fixture
+def own_cluster() -> Iterator[Cluster]:
+    """A server of its own, since the names of roles hold for a whole server."""
+    cluster = Cluster()
+    yield cluster
+    cluster.remove()
+
+
 @pytest.fixture(scope="session", params=["sqlite", "postgresql"])
 def databases(request: pytest.FixtureRequest, tmp_path_factory: pytest.TempPathFactory) -> Databases:
     """Where stores are made: every test that touches records runs on both kinds of database."""

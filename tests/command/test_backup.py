@@ -9,7 +9,6 @@ import stat
 import subprocess
 import sys
 import threading
-from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
@@ -49,14 +48,6 @@ def readme_sql() -> list[str]:
     """The statements that set a PostgreSQL database up."""
     (block,) = re.findall(r"^```sql\n(.*?)^```$", README, re.MULTILINE | re.DOTALL)
     return [statement.strip() for statement in block.split(";") if statement.strip()]
-
-
-@pytest.fixture
-def own_cluster() -> Iterator[Cluster]:
-    """A server of its own, since the names of roles hold for a whole server."""
-    cluster = Cluster()
-    yield cluster
-    cluster.remove()
 
 
 def gain_signoff(url: str, *arguments: str) -> Result:
