@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import http.client
+import json
 import os
 import re
+import select
 import signal
 import socket
 import subprocess
@@ -19,7 +21,9 @@ from urllib.parse import urlencode, urlsplit
 import pytest
 
 from service.records import migrating
-from service.records.database import system_clock
+from service.records.database import Database, system_clock
+from tests.api import plant
+from tests.api.conftest import CHEAP, add_account
 from tests.databases import opened, run
 
 SECRET_KEY = "a secret of the tests, of 32 bytes or more"
@@ -84,6 +88,27 @@ def test_at_sigterm_a_request_that_was_begun_is_finished_and_no_other_is_taken(
         begun.sendall(b"cd")
         assert begun.recv(100).startswith(b"HTTP/1.1 401 ")
         begun.close()
+        assert process.wait(timeout=20) == 0
+
+
+def test_at_sigterm_what_is_being_computed_is_answered_whole(environment: dict[str, str]) -> None:
+    database = Database.open(environment["GAIN_SIGNOFF_DATABASE_URL"], password_hasher=CHEAP)
+    with database.writing() as session:
+        token = add_account(session, database, "submitter")
+    database.close()
+    headers = {"Authorization": f"Bearer {token}", "Content-Type": "application/json"}
+    # the second opinion is imported at its first use, which takes a second: the signal comes amid it
+    body = json.dumps(plant.RECOMPUTATION | {"include": ["curves", "second_opinion"]})
+    with serving(environment) as (process, host, port):
+        connection = http.client.HTTPConnection(host, port, timeout=60)
+        connection.request("POST", "/v1/recomputations", body, headers)
+        time.sleep(0.3)
+        assert select.select([connection.sock], [], [], 0)[0] == [], "it is answered already"
+        process.send_signal(signal.SIGTERM)
+        answered = connection.getresponse()
+        assert answered.status == 200
+        assert json.loads(answered.read())["verdict"] == "stable"
+        connection.close()
         assert process.wait(timeout=20) == 0
 
 
