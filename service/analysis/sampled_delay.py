@@ -16,6 +16,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
 import numpy as np
+import numpy.typing as npt
 
 from service.analysis.frequency import AxisResponse
 from service.analysis.loop import EPSILON, Complexes, Reals
@@ -32,25 +33,23 @@ BESIDE = 1e-7
 
 STEPS = 30
 
+MAX_PROBES = 500
+"""Work bound: a loop that is as near to instability as that at more delays has no delay margin computed."""
+
+NEAR_ONE = 0.1
+"""Within this of 1 abs L at the points of a step may pass 1 between them."""
+
 FAR_BELOW = 0.25
 SLOW_PLANT = 0.5
 """A crossover at this angle ωh and below, with abs λ·h of the plant no larger than this, hardly moves in a
 scan.
 """
 
-PROBES = 16
-"""Counts before a solution where the plant is fast and the crossover slow against the scan."""
-
-MAX_SCANS = 400
+MAX_SCANS = 3000
 """Work bound: the grid is not laid over more scans than this."""
 
 DIVIDED, ANGLE_SHARE, ANGLE_STEP = 32, 0.06, 0.03
 """The grid: cells of a scan, and the longest steps of ωh, against itself and in itself."""
-
-WHOLE_SCANS = 40
-"""So many whole numbers of scans are tried next to a place where a plant that passes a step at once may
-differ.
-"""
 
 
 def sampled_delay_margin_s(sampled: SampledLoop, axis: AxisResponse) -> Quantity:
@@ -60,21 +59,11 @@ def sampled_delay_margin_s(sampled: SampledLoop, axis: AxisResponse) -> Quantity
         # abs L stays below 1 however the dead time divides a scan
         return "unbounded"
     touching = sorted(delay for angle in starts if (delay := _solved(sampled, angle)) is not None)
-    if sampled.plant.d != 0:
-        found = _least_with_jumps(sampled, touching)
-    elif max(starts) <= FAR_BELOW and (_fastest(sampled) <= SLOW_PLANT or _none_before(sampled, touching)):
+    if max(starts) <= FAR_BELOW and sampled.plant.d == 0 and _fastest(sampled) <= SLOW_PLANT:
         found = _confirmed(sampled, touching)
     else:
         found = _least_on_grid(sampled, min(starts), touching[0] if touching else None)
     return None if found is None else found / sampled.scanned.parts.unit_rad_s
-
-
-def _none_before(sampled: SampledLoop, touching: list[float]) -> bool:
-    """Whether no root is outside the circle at any of some delays before the first solution."""
-    if not touching:
-        return False
-    probes = touching[0] * (np.arange(1, PROBES + 1) / (PROBES + 0.37))
-    return all(_unstable_roots(sampled, delay) == 0 for delay in probes.tolist())
 
 
 def _fastest(sampled: SampledLoop) -> float:
@@ -99,21 +88,28 @@ def _least_on_grid(sampled: SampledLoop, lowest: float, limit: float | None) -> 
     """
     if limit is not None and limit > MAX_SCANS * sampled.scanned.interval:
         return None
-    probes = [edge for cell in _cells(sampled, lowest, limit) for edge in cell]
-    if limit is not None:
-        probes += [limit * (1.0 - BESIDE), limit * (1.0 + BESIDE)]
-    last_stable, step = 0.0, sampled.scanned.interval / DIVIDED
-    for delay in sorted(probes):
-        count = _unstable_roots(sampled, delay)
-        if count is None:
+    last_stable, tried = 0.0, 0
+    for delay in _probes(sampled, lowest, limit):
+        if delay <= last_stable:
+            continue
+        count, tried = _unstable_roots(sampled, delay), tried + 1
+        if tried > MAX_PROBES:
             return None
+        if count is None:
+            continue
         if count > 0:
-            nearer = max(last_stable, delay - step)
-            return _by_counting(
-                sampled, nearer if _unstable_roots(sampled, nearer) == 0 else last_stable, delay
-            )
+            return _by_counting(sampled, last_stable, delay)
         last_stable = delay
     return None
+
+
+def _probes(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator[float]:
+    """Delays at which roots are counted, rising: before, in and behind every step in which one may leave."""
+    for low, high in _cells(sampled, lowest, limit):
+        yield max(low - sampled.scanned.interval / DIVIDED, 0.0)
+        yield from (low, 0.5 * (low + high), high)
+    if limit is not None:
+        yield from (limit * (1.0 - BESIDE), limit * (1.0 + BESIDE))
 
 
 def _by_counting(sampled: SampledLoop, low: float, high: float) -> float | None:
@@ -128,33 +124,6 @@ def _by_counting(sampled: SampledLoop, low: float, high: float) -> float | None:
         if high - low <= 1e-12 * high:
             break
     return 0.5 * (low + high)
-
-
-def _least_with_jumps(sampled: SampledLoop, touching: list[float]) -> float | None:
-    """The same for a plant that passes a step at once: at a whole number of scans that comes a scan later."""
-    for jump in _jumps(sampled, touching[0] if touching else None):
-        while touching and touching[0] < jump * (1.0 - BESIDE):
-            if _unstable_roots(sampled, touching[0] * (1.0 + BESIDE)) != 0:
-                return _confirmed(sampled, touching[:1])
-            touching = touching[1:]
-        count = _unstable_roots(sampled, jump)
-        if count != 0:
-            return jump if count else None
-    return None
-
-
-def _jumps(sampled: SampledLoop, touching: float | None) -> list[float]:
-    """Extra dead times that make whole scans: the next ones, and those about a solution that lies far behind.
-
-    In between the direct path comes no later than there, and the loop has more phase to spare.
-    """
-    scanned = sampled.scanned
-    first = scanned.split_delay()[0] + 1
-    numbers = list(range(first, first + WHOLE_SCANS))
-    if touching is not None:
-        about = scanned.split_delay(touching)[0]
-        numbers += range(max(numbers[-1] + 1, about - WHOLE_SCANS), about + 2)
-    return [number * scanned.interval - scanned.delay for number in numbers]
 
 
 def _unstable_roots(sampled: SampledLoop, delay: float) -> int | None:
@@ -194,25 +163,43 @@ def _starts(sampled: SampledLoop, axis: AxisResponse) -> list[float]:
 
 
 def _cells(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator[tuple[float, float]]:
-    """Least and largest extra delay of every cell about which 1 + L turns, the least first; up to a little
-    beyond `limit`, or through a whole turn of the lowest crossover.
+    """Least and largest extra delay of every step of the grid in which 1 + L turns about a cell, the least
+    first; up to a little beyond `limit`, or through a whole turn of the lowest crossover.
+
+    A step from the last division of a scan to the next whole one is among them: there a direct path comes a
+    scan later at once.
     """
     interval, plant = sampled.scanned.interval, sampled.plant
-    angles = _angles(lowest)
-    shares = _shares(sampled)
-    delays = [(share - plant.fraction) % 1.0 * interval for share in shares]
-    divided = [sampled.scanned.sample(delay) for delay in delays]
-    values = np.array([_Response(sampled, angles, replace(each, whole_scans=0)).value for each in divided])
+    angles, shares = _angles(lowest), np.array(_shares(sampled))
+    delays = (shares - plant.fraction) % 1.0 * interval
+    divided = [replace(sampled.scanned.sample(delay), whole_scans=0) for delay in delays.tolist()]
+    values = np.array([_Response(sampled, angles, each).value for each in divided])
+    left = _cells_near_one(np.abs(values))
     last = 2.0 * math.pi / lowest + 2.0 if limit is None else limit / interval
-    for whole in range(plant.whole_scans, plant.whole_scans + math.ceil(min(last, MAX_SCANS)) + 2):
-        rows = _rows_about_zero(1.0 + values * np.exp(-1j * whole * angles))
-        for row in rows:
-            low, high = (
-                (whole + share - plant.whole_scans - plant.fraction) * interval
-                for share in shares[row : row + 2]
-            )
-            if high > 0:
-                yield max(low, 0.0), high
+    before: tuple[Complexes, Complexes, float] | None = None
+    for whole in range(plant.whole_scans, plant.whole_scans + math.ceil(last) + 2):
+        at_left, at_right = (
+            1.0 + values[:, columns] * np.exp(-1j * whole * angles[columns]) for columns in (left, left + 1)
+        )
+        extra = (whole + shares - plant.whole_scans - plant.fraction) * interval
+        if before is not None:
+            at_left, at_right = np.vstack([before[0], at_left]), np.vstack([before[1], at_right])
+            extra = np.append(before[2], extra)
+        for row in _rows_about_zero(at_left, at_right):
+            if extra[row + 1] > 0:
+                yield max(float(extra[row]), 0.0), float(extra[row + 1])
+        before = at_left[-1:], at_right[-1:], float(extra[-1])
+
+
+def _cells_near_one(magnitude: Reals) -> npt.NDArray[np.intp]:
+    """The steps of ωh, by their left ends, in which abs L comes near 1 at some division; elsewhere 1 + L is
+    not 0.
+    """
+    low, high = magnitude.min(axis=0), magnitude.max(axis=0)
+    passes = (np.minimum(low[:-1], low[1:]) <= 1.0 + NEAR_ONE) & (
+        np.maximum(high[:-1], high[1:]) >= 1.0 - NEAR_ONE
+    )
+    return np.flatnonzero(passes)
 
 
 def _angles(lowest: float) -> Reals:
@@ -238,12 +225,22 @@ def _shares(sampled: SampledLoop) -> list[float]:
     return [*shares[np.append(True, np.diff(shares) > 1e-9)].tolist(), 1.0 - 1e-9]
 
 
-def _rows_about_zero(values: Complexes) -> list[int]:
-    """The rows with a cell about whose boundary a function turns: a zero lies inside."""
-    angle = np.angle(values)
-    along, across = (_wrapped(np.diff(angle, axis=axis)) for axis in (1, 0))
-    turn = along[:-1] + across[:, 1:] - along[1:] - across[:, :-1]
-    return np.flatnonzero((np.abs(turn) > math.pi).any(axis=1)).tolist()
+def _rows_about_zero(at_left: Complexes, at_right: Complexes) -> list[int]:
+    """The rows with a cell about whose boundary a function turns, and those where it comes nearest to 0 and
+    so near, against how it changes in the cell, that two zeros may lie inside; values (rows, cells).
+    """
+    left, right = np.angle(at_left), np.angle(at_right)
+    along = _wrapped(right - left)
+    turn = along[:-1] + _wrapped(np.diff(right, axis=0)) - along[1:] - _wrapped(np.diff(left, axis=0))
+    centre = np.abs(0.25 * (at_left[:-1] + at_left[1:] + at_right[:-1] + at_right[1:]))
+    across = np.abs(at_right - at_left)
+    along_delay = np.maximum(np.abs(np.diff(at_left, axis=0)), np.abs(np.diff(at_right, axis=0)))
+    near = (centre < 0.5 * (np.maximum(across[:-1], across[1:]) + along_delay)).any(axis=1)
+    nearest = centre.min(axis=1)
+    walled = np.concatenate([[np.inf], nearest, [np.inf]])
+    least = (nearest <= walled[:-2]) & (nearest <= walled[2:])
+    rows: list[int] = np.flatnonzero((np.abs(turn) > math.pi).any(axis=1) | (near & least)).tolist()
+    return rows
 
 
 def _wrapped(angle: Reals) -> Reals:

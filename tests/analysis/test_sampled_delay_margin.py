@@ -1,0 +1,76 @@
+"""The delay margin of scanned loops whose plant is fast against the scan: the first delay that loses the
+loop.
+
+How much of a scan the dead time takes matters much to such a plant, so that a root may leave the circle, come
+back and leave again. The loops are made up; roots are counted delay by delay.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+import pytest
+
+from service.analysis.controller import Scan
+from service.analysis.loop import form_loop
+from service.analysis.recomputation import recompute
+from service.analysis.sampled_states import sampled_states
+from service.analysis.scan import Scanned
+from tests.analysis.entered import first_order, ideal, integrating
+from tests.analysis.sampled_truth import made_up
+
+STEPS_A_SCAN = 43
+
+
+def unstable_roots(plant: Any, controller: Any, extra_s: float) -> int:
+    """Eigenvalues outside the circle of the closed loop's matrix; the margin is found from L alone."""
+    parts = form_loop(replace(plant, dead_time_s=plant.dead_time_s + extra_s), controller, None)
+    scanned = Scanned.of(parts, controller.scan)
+    matrix, _, _ = sampled_states(scanned, scanned.sample(), with_spared_noise=False).closed()
+    return int(np.count_nonzero(np.abs(np.linalg.eigvals(matrix)) > 1.0))
+
+
+def delay_margin_s(plant: Any, controller: Any) -> float:
+    sampled = recompute(plant, controller).sampled
+    assert sampled is not None
+    assert sampled.margins is not None
+    margin = sampled.margins.delay_margin_s
+    assert isinstance(margin, float)
+    return margin
+
+
+@pytest.mark.parametrize("seed", [22, 26, 75, 83, 100119, 100142, 100236, 100237])
+def test_no_root_is_outside_before_the_margin_and_one_is_behind_it(seed: int) -> None:
+    plant, controller = made_up(seed)
+    assert isinstance(controller.scan, Scan)
+    margin, interval = delay_margin_s(plant, controller), controller.scan.interval_s
+    # the last scans before it, every part of them
+    start = max(0.0, margin - 6.0 * interval)
+    for extra_s in np.arange(start + interval / STEPS_A_SCAN, margin * (1.0 - 1e-6), interval / STEPS_A_SCAN):
+        assert unstable_roots(plant, controller, float(extra_s)) == 0
+    assert unstable_roots(plant, controller, margin * (1.0 + 1e-6)) > 0
+
+
+@pytest.mark.parametrize("seed", [100181])
+def test_a_loop_that_is_lost_for_a_moment_and_regained_has_the_margin_of_that_moment(seed: int) -> None:
+    plant, controller = made_up(seed)
+    assert isinstance(controller.scan, Scan)
+    margin, interval = delay_margin_s(plant, controller), controller.scan.interval_s
+    assert unstable_roots(plant, controller, margin + 0.02 * interval) > 0
+    assert unstable_roots(plant, controller, margin + 0.3 * interval) == 0
+
+
+def test_a_plant_slow_against_its_scan_has_one_crossing() -> None:
+    plant, controller = integrating(0.1, 2.0, 0.5), ideal(1.0, 20.0, scan=Scan(interval_s=0.1))
+    margin = delay_margin_s(plant, controller)
+    assert unstable_roots(plant, controller, margin * (1.0 - 1e-7)) == 0
+    assert unstable_roots(plant, controller, margin * (1.0 + 1e-7)) == 2
+
+
+def test_a_loop_whose_gain_never_reaches_one_bears_any_delay() -> None:
+    sampled = recompute(first_order(0.5, 10.0), ideal(1.0, scan=Scan(interval_s=1.0))).sampled
+    assert sampled is not None
+    assert sampled.margins is not None
+    assert sampled.margins.delay_margin_s == "unbounded"
