@@ -68,7 +68,7 @@ def answer(error: Exception) -> Response:
     problem = problem_type(error)
     note_problem(problem.name)
     if problem.status >= 500:
-        LOG.error("request failed", exc_info=error, extra={"request_id": request_id()})
+        LOG.error("request %s failed", request_id(), exc_info=error, extra={"request_id": request_id()})
     response = Response(_body(problem, error), problem.status, content_type="application/problem+json")
     response.headers.extend(_headers(problem, error))
     return response

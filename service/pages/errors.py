@@ -89,7 +89,7 @@ def answer(error: Exception) -> Response:
     visits.recognise()
     failure = failure_of(error)
     if failure.status >= 500:
-        LOG.error("request failed", exc_info=error, extra={"request_id": request_id()})
+        LOG.error("request %s failed", request_id(), exc_info=error, extra={"request_id": request_id()})
     sentence = failure.sentence or forms.sentence(str(error))
     response = page("error.html", failure.status, failure=failure, sentence=sentence, request_id=request_id())
     if isinstance(error, HTTPException):
