@@ -52,7 +52,8 @@ def restore(file: Path) -> None:
 
 
 def _store_file() -> Path:
-    parts = make_url(Settings.from_environment().database_url)
+    with mistakes_in_a_sentence():
+        parts = make_url(Settings.from_environment().database_url)
     if parts.get_backend_name() != "sqlite":
         raise UserMistake(OF_POSTGRESQL)
     if not parts.database or parts.database == ":memory:":

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import ipaddress
 from contextlib import ExitStack
 
 import click
@@ -16,6 +17,14 @@ from service.monitoring import logs
 from service.settings import Settings
 
 PORT = click.IntRange(0, 65535)
+
+
+def _address(_context: click.Context, _option: click.Parameter, given: str | None) -> str | None:
+    """Let an address pass, and not the sign by which the server would trust everybody."""
+    try:
+        return None if given is None else str(ipaddress.ip_address(given))
+    except ValueError:
+        raise click.BadParameter(f"{given!r} is no IP address") from None
 
 
 @click.command()
@@ -40,6 +49,7 @@ PORT = click.IntRange(0, 65535)
 @click.option(
     "--trusted-proxy",
     metavar="ADDRESS",
+    callback=_address,
     help="The address of the proxy before this service: its X-Forwarded-For says where a request comes from."
     " Without it, failed sign-ins of all people count for the one address of the proxy.",
 )

@@ -217,6 +217,18 @@ def test_what_is_no_store_is_not_restored_as_one(tmp_path: Path, content: bytes)
     assert "does not hold" in ended.stderr or "cannot be copied" in ended.stderr
 
 
+@pytest.mark.parametrize("url", ["no address", "sqlite://", "sqlite:///not-there.db"])
+def test_a_store_that_is_none_is_told_in_one_sentence(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, url: str
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    ended = gain_signoff(url, "backup", "copy")
+    assert ended.exit_code == 2
+    assert ended.stderr.startswith("Error: ")
+    assert ended.stderr.count("\n") == 1
+    assert list(tmp_path.iterdir()) == []
+
+
 def test_with_postgresql_both_say_which_programs_do_it() -> None:
     for command in ("backup", "restore"):
         ended = gain_signoff("postgresql+psycopg://a@/b", command, __file__)

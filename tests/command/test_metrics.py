@@ -133,6 +133,7 @@ def test_the_figures_name_no_loop_and_nobody_and_stand_at_no_other_address(
         status, _ = read("127.0.0.1", service.port, "/metrics")
     assert status == 404
     assert 'route="none"' in text
+    assert "_created" not in text
     assert not re.search(r"TIC|Vanholm|Washing|submitter\b", text)
 
 

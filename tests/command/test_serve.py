@@ -210,6 +210,14 @@ def test_it_does_not_start_with_a_signing_key_that_is_none(
     assert "signing key file" in said
 
 
+def test_everybody_is_no_proxy_to_be_trusted(environment: dict[str, str]) -> None:
+    process = subprocess.run(
+        (*COMMAND, "--trusted-proxy", "*"), env=environment, capture_output=True, text=True, check=False
+    )
+    assert process.returncode == 2
+    assert "'*' is no IP address" in process.stderr
+
+
 def test_it_says_when_its_port_is_taken(environment: dict[str, str]) -> None:
     with socket.create_server(("127.0.0.1", 0)) as taken:
         port = taken.getsockname()[1]
