@@ -5,9 +5,10 @@ The scripts lie in `migrations/` beside the package in a source tree, and inside
 
 from __future__ import annotations
 
+import os
 import re
 from collections.abc import Callable, Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from datetime import datetime
 from pathlib import Path
 from typing import Any
@@ -17,7 +18,7 @@ from alembic.config import Config
 from alembic.operations.ops import MigrationScript
 from alembic.runtime.migration import MigrationContext
 from alembic.script import ScriptDirectory
-from sqlalchemy import Connection
+from sqlalchemy import Connection, make_url
 from sqlalchemy.orm import Session
 
 from service.records import grants, history
@@ -36,6 +37,7 @@ def migrate(url: str, *, now: datetime, demonstration: bool = False, service_rol
     `demonstration` is said in the first entry of a new store, for good. `service_role` is given the service's
     rights (`service.records.grants`); a role that has them keeps them. Raises StoreNotUsable.
     """
+    _keep_to_its_owner(url)
     with open_for_migration(url) as connection:
         config = _config()
         config.attributes["connection"] = connection
@@ -46,6 +48,16 @@ def migrate(url: str, *, now: datetime, demonstration: bool = False, service_rol
         grants.grant_again(connection)
         if service_role is not None:
             grants.grant(connection, service_role)
+
+
+def _keep_to_its_owner(url: str) -> None:
+    # SQLite would make the file readable by all, with the hashes of passwords in it; its companions follow it
+    parts = make_url(url)
+    file = parts.database or ""
+    if parts.get_backend_name() == "sqlite" and file and not file.startswith((":memory:", "file:")):
+        # where it cannot be made, SQLite says so in its own words
+        with suppress(OSError):
+            os.close(os.open(file, os.O_RDWR | os.O_CREAT, 0o600))
 
 
 def is_current(session: Session) -> bool:

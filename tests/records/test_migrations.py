@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import stat
 from collections.abc import Iterator
 from datetime import timedelta
 from pathlib import Path
@@ -80,3 +81,12 @@ def test_scripts_are_found_inside_an_installed_package(
     (installed / "migrations").mkdir(parents=True)
     monkeypatch.setattr(migrating, "__file__", str(installed / "migrating.py"))
     assert migrating.scripts_folder() == installed / "migrations"
+
+
+def test_a_new_sqlite_store_is_readable_by_its_owner_alone(tmp_path: Path) -> None:
+    migrating.migrate(f"sqlite:///{tmp_path / 'store.db'}", now=START, demonstration=True)
+    store = Store(f"sqlite:///{tmp_path / 'store.db'}")
+    store.add_people()
+    modes = {file.name: stat.S_IMODE(file.stat().st_mode) for file in tmp_path.iterdir()}
+    store.database.close()
+    assert modes == dict.fromkeys(("store.db", "store.db-wal", "store.db-shm"), 0o600)
