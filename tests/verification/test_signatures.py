@@ -173,6 +173,8 @@ Forge = Callable[[dict[str, Any]], None]
         ("previous_key", None, "follows on"),
         ("public_key", public_text(STRANGE), "the new key did not sign"),
     ],
+    # the key is made for the test, and every worker must call the test by one name
+    ids=["no signature", "another signature", "no key before", "another key"],
 )
 def test_an_entry_of_a_key_that_its_keys_did_not_sign(
     signed: Store, owned: Owned, name: str, value: object, says: str
