@@ -26,8 +26,8 @@ from service.analysis.sampled_states import (
 )
 from service.analysis.scan import SampledPlant, Scanned, augmented, exponentials_less_one
 
-AT_REST = 19.0
-"""A loop is at rest when its slowest root has died away by so many nepers (6e-9)."""
+AT_REST = 23.0
+"""A loop is at rest when its slowest root has died away by so many nepers (1e-10)."""
 
 MAX_SCANS = 100_000
 """Work bound: a response of more scans than this is called too slow."""

@@ -48,7 +48,7 @@ tried = settings(
 
 tried_slowly = settings(tried, max_examples=int(EXAMPLES or 20))
 
-TIMES = ("delay_margin_s",)
+TIMES = ("delay_margin_s", "gain_margin_period_s", "gain_reduction_margin_period_s")
 FREQUENCIES = ("max_sensitivity_rad_s",)
 FREE_OF_TIME = (
     "gain_margin",
