@@ -40,11 +40,16 @@ def what_changes(before: Recomputation, after: Recomputation) -> tuple[str, ...]
 
 
 def _verdicts(before: Recomputation, after: Recomputation) -> Iterator[str]:
-    words = {"stable": "stable", "unstable": "unstable", "undecided": "not shown to be stable"}
+    was = {"stable": "was stable", "unstable": "was unstable", "undecided": "was not shown to be stable"}
+    will = {
+        "stable": "would be stable",
+        "unstable": "would be unstable",
+        "undecided": "is not shown to be stable with these gains",
+    }
     if before.verdict != after.verdict:
-        yield f"The loop was {words[before.verdict]} and would be {words[after.verdict]}."
+        yield f"The loop {was[before.verdict]} and {will[after.verdict]}."
     else:
-        yield f"The loop was {words[before.verdict]} before and stays so."
+        yield f"The loop {was[before.verdict]} before and stays so."
 
 
 def _nearness(was: Analysis, will: Analysis) -> Iterator[str]:
