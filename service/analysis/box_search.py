@@ -136,7 +136,7 @@ def minimum(quantity: Quantity, cells: Cells, attained: float, proven_elsewhere:
     loop, best, work, wave = cells.loop, Found(attained), 0, 0
     while True:
         lowest, cost_w, cost_v, centres = quantity.bound(cells, best.value)
-        if centres is not None:
+        if centres is not None and centres.size:
             index = int(np.argmin(centres))
             if centres[index] < best.value:
                 best = Found(float(centres[index]), (float(cells.w[index]), float(cells.v[index])))

@@ -109,6 +109,11 @@ def _frequency(axis: AxisResponse, in_rad_s: Callable[[Reals], Reals]) -> Freque
     omega = distinct(np.concatenate([even, inside, axis.gain_crossovers]))
     omega = omega[(omega >= ends[0]) & (omega <= ends[1])]
     logs = axis.loop.log_response(omega)
+    # a dead time of very many turns has no phase in float64
+    told = np.isfinite(logs.real) & np.isfinite(np.degrees(logs.imag))
+    if not told.any():
+        return None
+    omega, logs = omega[told], logs[told]
     response = np.exp(logs)
     return FrequencyCurve(
         rad_s=_floats(in_rad_s(omega)),

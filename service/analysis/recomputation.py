@@ -194,7 +194,10 @@ def _continuous(
     elif space is None:
         notes.append(NOTE_NOT_REALISABLE)
     else:
-        responses = respond(parts, space, decided.roots)
+        try:
+            responses = respond(parts, space, decided.roots)
+        except WorkBoundError:
+            notes.append(NOTE_TOO_SLOW)
     setpoint, load = _steps(space, responses, settling_band_percent, unit, notes)
     analysis = Analysis(
         stability=stability,

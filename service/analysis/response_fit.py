@@ -94,8 +94,12 @@ def _candidates(at: Complexes, smooth: Complexes) -> Iterator[tuple[Complexes, C
     from scipy.interpolate import AAA  # noqa: PLC0415
 
     both = np.concatenate([at, np.conj(at)]), np.concatenate([smooth, np.conj(smooth)])
-    through = AAA(*both, rtol=EXACT, max_terms=MAX_ORDER + 1)
-    yield _in_pairs(through.roots()), _in_pairs(through.poles())
+    try:
+        through = AAA(*both, rtol=EXACT, max_terms=MAX_ORDER + 1)
+        yield _in_pairs(through.roots()), _in_pairs(through.poles())
+    except (ValueError, np.linalg.LinAlgError):
+        # its numbers have left float64
+        pass
     for order in range(1, min(MOST_POLES_BETWEEN, len(at) - 1) + 1):
         try:
             yield _between(at, smooth, order)

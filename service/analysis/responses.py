@@ -25,6 +25,7 @@ import numpy as np
 from service.analysis import chebyshev
 from service.analysis.chebyshev import NODES
 from service.analysis.loop import ClosedLoopParts, Complexes, Reals
+from service.analysis.margins import WorkBoundError
 from service.analysis.realisation import StateSpace
 from service.analysis.roots import CharacteristicRoots
 from service.analysis.tails import Tail
@@ -394,9 +395,15 @@ def _divided_dead_time(parts: ClosedLoopParts) -> list[float]:
 
 
 def divided(length: float, modes: Complexes) -> list[float]:
-    """Lengths that divide `length`, halves of halves, each short against every mode not yet died away."""
-    position, lengths = 0.0, []
+    """Lengths that divide `length`, halves of halves, each short against every mode not yet died away.
+
+    Raises WorkBoundError where they would be more than `MAX_PIECES`.
+    """
+    position = 0.0
+    lengths: list[float] = []
     while position < 1.0 - 1e-12:
+        if len(lengths) >= MAX_PIECES:
+            raise WorkBoundError("too many pieces")
         longest = TURN / _fastest(modes, position * length) / length
         part = 1.0
         while part > longest or (position / part) % 1.0 != 0.0:

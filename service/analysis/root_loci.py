@@ -18,6 +18,9 @@ GAIN_FACTORS = tuple(np.geomspace(0.1, 10.0, 25).tolist())
 DEAD_TIME_FACTORS = tuple(np.linspace(0.0, 3.0, 13).tolist())
 ROOTS_SHOWN = 6
 
+MOST_NODES = 64
+"""Work bound: at a factor where the roots would need more nodes than this they are left out."""
+
 
 def root_loci(parts: ClosedLoopParts, space: StateSpace | None) -> RootLoci:
     """The rightmost roots at each factor, rad/s, of a pair the one above the axis; none where they are not
@@ -46,9 +49,10 @@ def _with_gain(space: StateSpace, factor: float) -> StateSpace:
 
 def _roots_at(parts: ClosedLoopParts, space: StateSpace | None, loop: OpenLoop, factor: float) -> RootsAt:
     try:
-        found = characteristic_roots(space, AxisResponse.of(loop), parts.hidden_roots)
+        found = characteristic_roots(space, AxisResponse.of(loop), parts.hidden_roots, MOST_NODES)
     except (ArithmeticError, np.linalg.LinAlgError):
         return RootsAt(factor=factor, roots=())
     roots: Complexes = np.concatenate([found.roots, parts.hidden_roots[parts.hidden_roots.imag >= 0]])
     roots = roots[np.argsort(-roots.real, kind="stable")][:ROOTS_SHOWN] * parts.unit_rad_s
+    roots = roots[np.isfinite(roots)]
     return RootsAt(factor=factor, roots=tuple((root.real, root.imag) for root in roots.tolist()))

@@ -60,14 +60,17 @@ class CharacteristicRoots:
 
 
 def characteristic_roots(
-    space: StateSpace | None, axis: AxisResponse, hidden_roots: Complexes
+    space: StateSpace | None, axis: AxisResponse, hidden_roots: Complexes, most_nodes: int = MAX_NODES
 ) -> CharacteristicRoots:
-    """Polished roots of 1 + L from the state space of the closed loop, which holds the hidden ones too."""
+    """Polished roots of 1 + L from the state space of the closed loop, which holds the hidden ones too.
+
+    Where more than `most_nodes` would be needed the roots are not computed.
+    """
     loop = axis.loop
     if loop.dead_time > 0 and loop.high_frequency_magnitude >= 1.0:
         return _infinite_chain(loop)
     best: CharacteristicRoots | None = None
-    for nodes in _node_counts(axis):
+    for nodes in (count for count in _node_counts(axis) if count <= most_nodes):
         found = _with_nodes(space, loop, hidden_roots, nodes)
         if best is None or found.complete_right_of < best.complete_right_of:
             best = found

@@ -76,10 +76,14 @@ def analyse_at_scans(
         notes.append(NOTE_MARGINS_TOO_MUCH_WORK)
     states = sampled_states(scanned, sampled.plant, with_spared_noise=True)
     found = scans(states, _log_radius(sampled, roots))
-    responses = between_scans(scanned, sampled.plant, found)
-    if not responses.complete:
+    responses, setpoint, load = None, None, None
+    try:
+        responses = between_scans(scanned, sampled.plant, found)
+        setpoint, load = step_metrics(responses, settling_band_percent, parts.unit_rad_s, impulse=False)
+    except WorkBoundError:
         notes.append(NOTE_TOO_SLOW)
-    setpoint, load = step_metrics(responses, settling_band_percent, parts.unit_rad_s, impulse=False)
+    if responses is not None and not responses.complete:
+        notes.append(NOTE_TOO_SLOW)
     analysis = replace(
         analysis,
         setpoint_step=setpoint,

@@ -86,7 +86,8 @@ def _least_on_grid(sampled: SampledLoop, lowest: float, limit: float | None) -> 
     """The least delay at which a root leaves the circle, from the cells of the grid and counts between
     them.
     """
-    if limit is not None and limit > MAX_SCANS * sampled.scanned.interval:
+    turn = 2.0 * math.pi / lowest * sampled.scanned.interval
+    if (turn if limit is None else limit) > MAX_SCANS * sampled.scanned.interval:
         return None
     last_stable, tried = 0.0, 0
     for delay in _probes(sampled, lowest, limit):

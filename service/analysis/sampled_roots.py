@@ -30,7 +30,7 @@ LONGEST_WHOLE_LINE = 400
 MOST_AMPLIFIED = 16.0
 """ln of how much interpolation may amplify rounding; the starts that come of it are polished."""
 
-FEWEST_POINTS = 14
+FEWEST_POINTS, MOST_POINTS = 14, 400
 
 WELL_INSIDE = 0.3
 """Eigenvalues of smaller magnitude say nothing: those of a chain of delays are all 0 but for rounding."""
@@ -92,7 +92,7 @@ def _points_needed(axis: AxisResponse, line: int, level: float) -> int | None:
         highest = math.pi
     angle = highest * line
     points = FEWEST_POINTS + math.ceil(0.5 * angle + 3.0 * angle ** (1 / 3))
-    return points if 2.0 * points / math.sqrt(line) <= MOST_AMPLIFIED else None
+    return points if points <= MOST_POINTS and 2.0 * points / math.sqrt(line) <= MOST_AMPLIFIED else None
 
 
 def _compressed(states: SampledStates, points: int) -> Reals:

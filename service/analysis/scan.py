@@ -79,14 +79,20 @@ class Scanned:
 
     @staticmethod
     def of(parts: ClosedLoopParts, scan: Scan) -> Scanned:
-        """The loop with its scan brought to the loop's unit of time."""
+        """The loop with its scan brought to the loop's unit of time.
+
+        Raises OverflowError where interval or delay leave float64.
+        """
         unit = parts.unit_rad_s
+        interval, delay = scan.interval_s * unit, parts.dead_time + scan.output_delay_s * unit
+        if not (0.0 < interval < math.inf and delay / interval < math.inf and 2.0 / interval > 0.0):
+            raise OverflowError("the scan interval leaves the range of float64")
         return Scanned(
             parts=parts,
             plant=plant_state_space(parts.plant),
-            interval=scan.interval_s * unit,
+            interval=interval,
             trapezoidal=scan.method == "trapezoidal",
-            delay=parts.dead_time + scan.output_delay_s * unit,
+            delay=delay,
         )
 
     @property

@@ -78,7 +78,7 @@ class Tail:
     def turns_near(self, band: float, share: float) -> bool:
         """Whether a turning value lies within `share` of the band's edge."""
         turn = abs(self.value(self.first_turn()))
-        if turn < band * (1 - share):
+        if not band * (1 - share) <= turn < math.inf:
             return False
         # turning values fall by q; one lies in the strip exactly if the strip, in logarithms, holds a
         # multiple

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import sys
+
 from service.judgement.digits import three_digits, time
 from service.judgement.finding import Case, Finding
 
@@ -76,6 +78,8 @@ def _out_of_scale(case: Case, term: str, given_s: float | None) -> Finding | Non
         ratio, other = times[0] / given_s, f"shorter than the fastest of the loop ({time(times[0])})"
     else:
         return None
+    # two numbers that float64 holds may have a ratio that it does not
+    ratio = min(ratio, sys.float_info.max)
     return Finding(
         finding=f"{term}_time_out_of_scale",
         weight="caution",

@@ -1,0 +1,84 @@
+"""Loops that no plant has: each is answered or refused by name, in bounded work, never with inf or nan."""
+
+from __future__ import annotations
+
+import json
+from typing import Any
+
+import pytest
+
+from service.documents.errors import InvalidDocument
+from service.documents.reading import read
+from service.documents.recomputations import RecomputationRequest, answer
+from service.documents.writing import to_bytes
+
+PI = {
+    "form": "ideal",
+    "action": "reverse",
+    "proportional": {"value": 1.0, "unit": "gain"},
+    "integral": {"value": 10.0, "unit": "seconds"},
+}
+LAG = {"kind": "first_order", "gain": 1.0, "time_constant_s": 10.0, "dead_time_s": 1.0}
+RESONANCE = {"kind": "second_order", "gain": 1.0, "natural_frequency_rad_s": 1.0, "damping_ratio": 1e-9}
+POINTS = {"kind": "frequency_response", "frequencies_rad_s": [0.1, 1.0, 10.0], "unstable_poles": 0}
+
+
+def scanned(interval_s: float, output_delay_s: float = 0.0, method: str = "backward_difference") -> Any:
+    scan = {"interval_s": interval_s, "output_delay_s": output_delay_s, "method": method}
+    return PI | {"scan": scan}
+
+
+HOSTILE: dict[str, tuple[Any, Any]] = {
+    "a scan for ever": (LAG, scanned(1.7e308)),
+    "a scan for ever, trapezoidal": (LAG, scanned(1.7e308, method="trapezoidal")),
+    "a scan in no time": (LAG, scanned(1e-20)),
+    "a delay of very many scans": (LAG, scanned(1.0, 1e300)),
+    "a scan very long against an oscillation that hardly dies": (RESONANCE, scanned(1e12)),
+    "a gain at the end of float64, scanned": (LAG | {"gain": 1.7e308}, scanned(1.0)),
+    "a gain near nothing, scanned": (LAG | {"gain": 5e-324}, scanned(1.0)),
+    "an integral of next to no action at a scan": (
+        LAG,
+        scanned(1.0) | {"integral": {"value": 1e17, "unit": "seconds"}},
+    ),
+    "a dead time with no phase in float64": (LAG | {"dead_time_s": 1e300}, PI),
+    "a gain of 10^20 under long dead time": (LAG | {"gain": 1e20, "dead_time_s": 500.0}, PI),
+    "a response at the end of float64": (
+        POINTS | {"response": [[1.7e308, 0.0], [1.0, -1.0], [0.1, -1.0]]},
+        PI,
+    ),
+    "a response of nothing": (POINTS | {"response": [[0.0, 0.0], [0.0, 0.0], [0.0, 0.0]]}, PI),
+    "a state space at the end of float64": (
+        {
+            "kind": "state_space",
+            "a": [[1.0, 0.0], [0.0, 1.7e308]],
+            "b": [1.0, 1e20],
+            "c": [5e-324, -1.0],
+            "d": 6.0,
+        },
+        PI | {"derivative": {"value": 446.0, "unit": "seconds"}},
+    ),
+    "a range of a plant that is a mere gain": (
+        {
+            "kind": "transfer_function",
+            "numerator": [-3.0],
+            "denominator": [1.0],
+            "uncertainty": {"gain": [0.8, 1.2]},
+        },
+        {"form": "ideal", "action": "direct", "proportional": {"value": 1e-20, "unit": "gain"}},
+    ),
+}
+
+
+@pytest.mark.parametrize("name", HOSTILE)
+def test_it_is_answered_or_refused_by_name(name: str) -> None:
+    plant, controller = HOSTILE[name]
+    document = {"plant_model": plant, "controller": controller, "include": ["curves"]}
+    found, places = None, ()
+    try:
+        found = answer(read(RecomputationRequest, document))
+    except InvalidDocument as refused:
+        places = tuple(refused.errors)
+    if found is None:
+        assert places
+    else:
+        assert json.loads(to_bytes(found))["verdict"] == found.verdict
