@@ -219,6 +219,8 @@ def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges |
     if not (np.isfinite(zeros).all() and np.isfinite(poles).all()):
         raise OverflowError
     unit = _natural_unit(zeros, poles, dead_time_s)
+    if not math.isfinite(dead_time_s * unit):
+        raise OverflowError
     direction = 1.0 if controller.action == "reverse" else -1.0
     of_controller = (basis, terms.gain, 1.0 / filter_s if filter_s > 0 else 1.0)
     controller_log_gain = math.fsum(math.log(factor) for factor in of_controller)
