@@ -21,9 +21,11 @@ from hypothesis import settings  # noqa: E402  the variables above come first on
 from tests.clusters import Cluster  # noqa: E402
 from tests.databases import Databases, PostgresqlDatabases, SqliteFiles  # noqa: E402
 
-# no deadline for one example: the machine is shared, and a slow one is not a wrong one
-settings.register_profile("house", deadline=None, print_blob=True)
-settings.load_profile("house")
+# No deadline for one example: the machine is shared, and a slow one is not a wrong one. The same examples in
+# every normal run, so that a failure is a change of ours; HYPOTHESIS_PROFILE=new_examples tries others.
+settings.register_profile("new_examples", deadline=None, print_blob=True)
+settings.register_profile("house", deadline=None, print_blob=True, derandomize=True)
+settings.load_profile(os.environ.get("HYPOTHESIS_PROFILE", "house"))
 
 
 def pytest_addoption(parser: pytest.Parser) -> None:

@@ -38,7 +38,10 @@ def round_up(value: float) -> float:
 
 
 def linear(low: float, high: float, at_most: int) -> tuple[float, ...]:
-    """Multiples of 1, 2 or 5 times a power of ten within [low, high]: `at_most` of them, two at the least."""
+    """Multiples of 1, 2 or 5 times a power of ten within [low, high]: `at_most` of them, two at the least.
+
+    Where the next step leaves fewer than two, the one before stays, with up to five.
+    """
     rough = (high - low) / max(at_most - 1, 1)
     decade = 10.0 ** math.floor(math.log10(rough))
     multiples: list[range] = []
