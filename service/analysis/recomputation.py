@@ -8,6 +8,7 @@ from typing import TypeVar
 
 import numpy as np
 
+from service.analysis import codes
 from service.analysis.controller import Controller, Scan
 from service.analysis.curves import curves
 from service.analysis.equivalents import equivalent_gains
@@ -40,25 +41,6 @@ from service.analysis.sampled_loop import NotFactoredError
 from service.analysis.stability import NYQUIST, ROOTS, decide
 from service.analysis.step_metrics import step_metrics
 from service.analysis.worst_case import worst_case
-
-NOTE_MARGINS_TOO_MUCH_WORK = "margins_too_much_work"
-"""The dead time makes more crossings than the stated bound; margins are not computed."""
-
-NOTE_NOT_REALISABLE = "responses_not_realisable"
-"""An unfiltered derivative acts on a plant that passes a step at once; no response exists."""
-
-NOTE_TOO_SLOW = "responses_too_slow"
-"""The response needs more pieces than the stated bound before it comes to rest."""
-
-NOTE_IMPULSE = "setpoint_impulse"
-"""The unfiltered derivative of a stepped set point is an impulse; the output has no peak and no travel."""
-
-NOTE_FROM_POINTS = "responses_not_from_points"
-"""Points of a frequency response give no step response."""
-
-NOTE_NUMBERS = "numbers_out_of_range"
-"""The loop's numbers leave float64 on the way; what they reach is not computed."""
-
 
 POINTS_AT_SCANS = "a plant that is known by points of its frequency response is not analysed at the scans"
 BEYOND_FLOAT64 = "the loop's numbers leave the range of float64"
@@ -187,17 +169,17 @@ def _continuous(
         delay_margin_s = told(lambda delay: delay / unit, delay_margin(axis))
         found_margins = margins(axis, listed, parts.in_rad_s, delay_margin_s)
     except WorkBoundError:
-        notes.append(NOTE_MARGINS_TOO_MUCH_WORK)
+        notes.append(codes.MARGINS_TOO_MUCH_WORK)
     responses = None
     if measured is not None:
-        notes.append(NOTE_FROM_POINTS)
+        notes.append(codes.FROM_POINTS)
     elif space is None:
-        notes.append(NOTE_NOT_REALISABLE)
+        notes.append(codes.NOT_REALISABLE)
     else:
         try:
             responses = respond(parts, space, decided.roots)
         except WorkBoundError:
-            notes.append(NOTE_TOO_SLOW)
+            notes.append(codes.TOO_SLOW)
     setpoint, load = _steps(space, responses, settling_band_percent, unit, notes)
     analysis = Analysis(
         stability=stability,
@@ -217,10 +199,10 @@ def _steps(
     if space is None or responses is None:
         return None, None
     if not responses.complete:
-        notes.append(NOTE_TOO_SLOW)
+        notes.append(codes.TOO_SLOW)
     impulse = space.setpoint_impulse != 0
     if impulse:
-        notes.append(NOTE_IMPULSE)
+        notes.append(codes.IMPULSE)
     setpoint, load = step_metrics(responses, band_percent, unit, impulse=impulse)
     # an impulse of the output that the plant passes at once leaves PV without a response in time
     return (None if impulse and space.d_y != 0 else setpoint), load
@@ -237,8 +219,8 @@ def _finite(part: Part | None, notes: list[str]) -> Part | None:
     lost = [name for name, value in values.items() if isinstance(value, float) and not isfinite(value)]
     if not lost:
         return part
-    if NOTE_NUMBERS not in notes:
-        notes.append(NOTE_NUMBERS)
+    if codes.NUMBERS not in notes:
+        notes.append(codes.NUMBERS)
     values.update(dict.fromkeys(lost))
     return type(part)(**values)
 
@@ -254,7 +236,7 @@ def _undecided(methods: tuple[str, str], reason: str) -> Analysis:
         setpoint_step=None,
         load_step=None,
         noise=None,
-        notes=(NOTE_NUMBERS,),
+        notes=(codes.NUMBERS,),
     )
 
 

@@ -7,6 +7,7 @@ from dataclasses import replace
 
 import numpy as np
 
+from service.analysis import codes
 from service.analysis.controller import Scan
 from service.analysis.curves import curves
 from service.analysis.frequency import AxisResponse
@@ -27,15 +28,6 @@ from service.analysis.step_metrics import step_metrics
 
 NYQUIST_AT_SCANS = "encirclements of -1 up to the Nyquist frequency, counted from the gain crossovers"
 ROOTS_AT_SCANS = "eigenvalues of the closed loop from scan to scan, polished by Newton"
-
-NOTE_MARGINS_TOO_MUCH_WORK = "margins_too_much_work"
-"""The dead time makes more crossings than the stated bound; margins are not computed."""
-
-NOTE_TOO_SLOW = "responses_too_slow"
-"""The response needs more pieces than the stated bound before it comes to rest."""
-
-NOTE_DELAY_MARGIN = "delay_margin_not_confirmed"
-"""Counting the roots beside the delay margin does not confirm it."""
 
 ABSOLUTE_OF_NORMAL = math.sqrt(2.0 / math.pi)
 """Mean magnitude of a normal variable of standard deviation 1."""
@@ -70,10 +62,10 @@ def analyse_at_scans(
     try:
         delay_margin_s = sampled_delay_margin_s(sampled, axis)
         if delay_margin_s is None:
-            notes.append(NOTE_DELAY_MARGIN)
+            notes.append(codes.DELAY_MARGIN)
         analysis = replace(analysis, margins=margins(axis, listed, sampled.rad_s, delay_margin_s))
     except WorkBoundError:
-        notes.append(NOTE_MARGINS_TOO_MUCH_WORK)
+        notes.append(codes.MARGINS_TOO_MUCH_WORK)
     states = sampled_states(scanned, sampled.plant, with_spared_noise=True)
     found = scans(states, _log_radius(sampled, roots))
     responses, setpoint, load = None, None, None
@@ -81,9 +73,9 @@ def analyse_at_scans(
         responses = between_scans(scanned, sampled.plant, found)
         setpoint, load = step_metrics(responses, settling_band_percent, parts.unit_rad_s, impulse=False)
     except WorkBoundError:
-        notes.append(NOTE_TOO_SLOW)
+        notes.append(codes.TOO_SLOW)
     if responses is not None and not responses.complete:
-        notes.append(NOTE_TOO_SLOW)
+        notes.append(codes.TOO_SLOW)
     analysis = replace(
         analysis,
         setpoint_step=setpoint,

@@ -1,11 +1,11 @@
 """The delay margin of a loop at its scans: the least extra dead time at which a root reaches the unit circle.
 
 More dead time is not just more phase here: where it divides a scan the sampled plant itself changes. So the
-condition 1 + L(e^(jωh), δ) = 0 is solved for frequency and extra dead time together by Newton. Where every
-gain crossover lies far below the scan's frequency there is one solution for each, and it is started from
-there; elsewhere abs L moves with the division of the scan, a crossover may meet −1 several times within one,
-and all solutions are found first by the turns of 1 + L about the cells of a grid over both. The least
-solution is confirmed by counting roots on both sides.
+condition 1 + L(e^(jωh), δ) = 0 is one on frequency and extra dead time together. Where plant and gain
+crossovers are slow against the scan it is solved by Newton from each crossover, and the least solution is
+confirmed by counting roots on both sides. Elsewhere a crossover may meet −1 several times within a scan, and
+a direct path comes a scan later at once: there the steps in which a root may leave are found by the turns of
+1 + L about the cells of a grid over both, and the first that does by counting about them.
 """
 
 from __future__ import annotations

@@ -95,11 +95,6 @@ class Scanned:
             delay=delay,
         )
 
-    @property
-    def nyquist_rad_s(self) -> float:
-        """Half the scan's frequency."""
-        return math.pi / self.interval * self.parts.unit_rad_s
-
     def integrator(self) -> Section:
         """1/s."""
         h = self.interval

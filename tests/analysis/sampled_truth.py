@@ -9,11 +9,11 @@ from typing import Any
 import numpy as np
 from mpmath import mp, mpf
 
+from service.analysis.codes import DELAY_MARGIN
 from service.analysis.controller import Controller, Scan, SetpointWeight
 from service.analysis.plant import PlantModel
 from service.analysis.recomputation import recompute
 from service.analysis.results import Analysis
-from service.analysis.sampled import NOTE_DELAY_MARGIN
 from tests.analysis.entered import factors, ideal, parallel, series, two_zeros
 from tests.references.sampled_marching import (
     LoadMeasures,
@@ -141,11 +141,7 @@ class Comparison:
     def delay_margin(self) -> None:
         """No root outside at any shorter delay that is tried, one just behind."""
         margins = self.analysis.margins
-        if (
-            margins is not None
-            and margins.delay_margin_s is None
-            and NOTE_DELAY_MARGIN in self.analysis.notes
-        ):
+        if margins is not None and margins.delay_margin_s is None and DELAY_MARGIN in self.analysis.notes:
             # said to be not confirmed: no figure, and so none that could be wrong
             return
         if margins is None or margins.delay_margin_s is None:
