@@ -18,6 +18,9 @@ from service.analysis.loop import Reals
 NODES = 16
 """Nodes of a piece of a response; e^(λt) over a piece with abs λ·length ≤ 6 is met to some 1e-11."""
 
+ZEROS_AT_ONCE = 4096
+"""More would leave the processor's cache, and take memory in proportion."""
+
 
 @lru_cache(maxsize=64)
 def points(count: int) -> Reals:
@@ -82,14 +85,20 @@ def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[npt.NDArray[np.int
     row, node = np.nonzero(changes)
     if not row.size:
         return row, np.empty(0)
-    nodes, chosen = points(rows.shape[1]), rows[row]
-    slopes = chosen @ differentiation(rows.shape[1]).T
+    blocks = (slice(start, start + ZEROS_AT_ONCE) for start in range(0, len(row), ZEROS_AT_ONCE))
+    return row, np.concatenate([_zeros(rows[row[block]], node[block]) for block in blocks])
+
+
+def _zeros(rows: Reals, node: npt.NDArray[np.intp]) -> Reals:
+    """Of each row, shape (m, count), the zero between two of its nodes, shape (m,)."""
+    nodes, slopes = points(rows.shape[1]), rows @ differentiation(rows.shape[1]).T
 
     def value_and_slope(at: Reals) -> tuple[Reals, Reals]:
         matrix = evaluation(rows.shape[1], at)
-        return (matrix * chosen).sum(axis=1), (matrix * slopes).sum(axis=1)
+        return (matrix * rows).sum(axis=1), (matrix * slopes).sum(axis=1)
 
-    return row, newton_zero(value_and_slope, nodes[node], nodes[node + 1], before[row, node], 1.0)
+    before = rows[np.arange(len(rows)), node]
+    return newton_zero(value_and_slope, nodes[node], nodes[node + 1], before, 1.0)
 
 
 def _frozen(array: Reals) -> Reals:

@@ -13,6 +13,7 @@ import numpy as np
 
 from service.analysis import chebyshev
 from service.analysis.loop import Reals
+from service.analysis.margins import WorkBoundError
 from service.analysis.realisation import realise
 from service.analysis.responses import Responses, divided, final_values
 from service.analysis.sampled_states import (
@@ -32,7 +33,14 @@ AT_REST = 23.0
 MAX_SCANS = 100_000
 """Work bound: a response of more scans than this is called too slow."""
 
-MAX_PIECES = 300_000
+MAX_STATES = 1_000_000
+"""Work bound: states of one answer at all of its scans together."""
+
+MAX_VALUES = 400_000
+"""Work bound: values of one response at the nodes of all its pieces."""
+
+MAX_EXPONENTIALS = 500_000
+"""Work bound: entries of the matrices that lead from a scan to the nodes of its pieces."""
 
 SCANS_AT_ONCE = 256
 LONGEST_LINE = 24
@@ -49,8 +57,9 @@ NODES_FOR = ((0.02, 4), (0.2, 6), (1.0, 9), (math.inf, 16))
 
 @dataclass(frozen=True, eq=False)
 class Scans:
-    """The four answers at `count` scans: `states` (count, n, 4) of the plant; w[n−k−1] `old`, w[n−k] `new`
-    and the controller's `output`, (count, 4) each. `complete`: at the end all is at rest.
+    """The four answers at `count` scans: `states` (count, n, 2) of the plant in both step responses;
+    w[n−k−1] `old`, w[n−k] `new` and the controller's `output`, (count, 4) each. `complete`: at the end all
+    is at rest.
     """
 
     states: Reals
@@ -64,7 +73,8 @@ def scans(states: SampledStates, log_radius: float) -> Scans:
     """The four answers until all is at rest; `log_radius` is ln of the loop's spectral radius, below 0."""
     # what lies at z = 0 is gone only after as many scans as there are states, and a last move follows
     wanted = AT_REST / -log_radius + states.order + states.plant.held_scans + 2.0
-    count = int(min(math.ceil(min(wanted, 1e9)), MAX_SCANS))
+    most = min(MAX_SCANS, MAX_STATES // (len(states.plant.c) + 1))
+    count = int(min(math.ceil(min(wanted, 1e9)), most))
     march = _by_states if states.plant.held_scans <= LONGEST_LINE else _by_inputs
     plant_states, output = march(states, count)
     held = output + _load()
@@ -74,7 +84,7 @@ def scans(states: SampledStates, log_radius: float) -> Scans:
         old=_later(held, k + 1)[:count] if line > k else np.zeros((count, 4)),
         new=_later(held, k)[:count],
         output=output[:count],
-        complete=wanted <= MAX_SCANS,
+        complete=wanted <= most,
     )
 
 
@@ -85,9 +95,10 @@ def between_scans(scanned: Scanned, plant: SampledPlant, found: Scans) -> Respon
     before = divided(plant.fraction * h, modes) if plant.fraction > 0 else []
     lengths = np.array(before + divided((1.0 - plant.fraction) * h, modes))
     nodes = _nodes(modes, float(lengths.max()))
-    count = min(len(found.output), max(1, MAX_PIECES // len(lengths)))
+    count = min(len(found.output), max(1, MAX_VALUES // (len(lengths) * nodes)))
     rows = _rows(scanned, plant, lengths, len(before), nodes)
-    known = np.concatenate([found.states, found.old[:, None], found.new[:, None]], axis=1)[:count, :, :2]
+    acting = found.old[:count, None, :2], found.new[:count, None, :2]
+    known = np.concatenate([found.states[:count], *acting], axis=1)
     pv = np.moveaxis(rows @ known, 2, 0).reshape(2, count * len(lengths), nodes)
     starts = np.arange(count)[:, None] * h + np.concatenate([[0.0], np.cumsum(lengths)[:-1]])
     final_pv, final_output = _final_values(scanned)
@@ -126,7 +137,7 @@ def _later(values: Reals, scans_later: int) -> Reals:
 
 
 def _by_states(states: SampledStates, count: int) -> tuple[Reals, Reals]:
-    """Plant states (≥ count, n, 4) and output (≥ count, 4) by powers of the closed loop's matrix."""
+    """Plant states (≥ count, n, 2) and output (≥ count, 4) by powers of the closed loop's matrix."""
     a, b, u = states.closed()
     n, size = len(states.plant.c), len(a)
     # the constant inputs of the two steps are states, so that one matrix does it all
@@ -149,13 +160,14 @@ def _by_states(states: SampledStates, count: int) -> tuple[Reals, Reals]:
     first[0, n, NOISE_PULSE], first[0, n, SPARED_PULSE] = u[size + 1], u[size + 2]
     start = matrix @ start
     start[:size, NOISE_PULSE], start[:size, SPARED_PULSE] = b[:, 1], b[:, 2]
-    parts, done = [first], 1
+    parts, outputs, done = [first[:, :n, :2]], [first[:, n]], 1
     while done < count:
-        parts.append((flat @ start).reshape(block, n + 1, 4))
+        found = (flat @ start).reshape(block, n + 1, 4)
+        parts.append(found[:, :n, :2].copy())
+        outputs.append(found[:, n].copy())
         start = power @ start
         done += block
-    together = np.concatenate(parts)
-    return together[:, :n], together[:, n]
+    return np.concatenate(parts), np.concatenate(outputs)
 
 
 def _by_inputs(states: SampledStates, count: int) -> tuple[Reals, Reals]:
@@ -174,8 +186,8 @@ def _by_inputs(states: SampledStates, count: int) -> tuple[Reals, Reals]:
             pulse[0, NOISE_PULSE] = pulse[1, SPARED_PULSE] = 1.0
         known = np.concatenate([state, held[begin : begin + block + 1], steps[:1], pulse])
         found = (rows @ known).reshape(block + 1, m + 1, 4)
-        plant_states.append(found[:-1, :n])
-        outputs.append(found[:-1, m])
+        plant_states.append(found[:-1, :n, :2].copy())
+        outputs.append(found[:-1, m].copy())
         state = found[-1, :m]
         held[begin + k + 1 : begin + k + 1 + block] = found[:-1, m] + _load()
     return np.concatenate(plant_states), np.concatenate(outputs)
@@ -209,9 +221,14 @@ def _nodes(modes: np.ndarray[tuple[int], np.dtype[np.complex128]], longest: floa
 
 
 def _rows(scanned: Scanned, plant: SampledPlant, lengths: Reals, before: int, nodes: int) -> Reals:
-    """From (x, old, new) at a scan to PV at the nodes of its pieces, shape (pieces·nodes, n + 2)."""
+    """From (x, old, new) at a scan to PV at the nodes of its pieces, shape (pieces·nodes, n + 2).
+
+    Raises WorkBoundError where they are too many for a plant of this order.
+    """
     a, b, c, d = scanned.plant
     n = len(a)
+    if len(lengths) * nodes * (n + 1) ** 2 > MAX_EXPONENTIALS:
+        raise WorkBoundError("too many pieces in a scan")
     matrix = augmented(a, b)
     to_nodes = exponentials_less_one(matrix, (lengths[:, None] * chebyshev.points(nodes)).ravel())
     to_nodes = to_nodes.reshape(len(lengths), nodes, n + 1, n + 1) + np.eye(n + 1)
