@@ -203,7 +203,7 @@ def form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges | 
     """
     try:
         return _form_loop(plant_model, controller, ranges)
-    except (OverflowError, ZeroDivisionError) as error:
+    except (OverflowError, ZeroDivisionError, np.linalg.LinAlgError) as error:
         raise FieldError((), "the loop's numbers are too large or too small to be computed with") from error
 
 
@@ -223,6 +223,8 @@ def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges |
         raise OverflowError
     direction = 1.0 if controller.action == "reverse" else -1.0
     of_controller = (basis, terms.gain, 1.0 / filter_s if filter_s > 0 else 1.0)
+    if 0.0 in of_controller:
+        raise OverflowError
     controller_log_gain = math.fsum(math.log(factor) for factor in of_controller)
     controller_log_gain += (len(terms.zeros_rad_s) - len(controller_poles)) * math.log(unit)
     log_gain, sign = _log_of_product((direction, *of_controller, plant.gain))

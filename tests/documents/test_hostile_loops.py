@@ -57,6 +57,16 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
         },
         PI | {"derivative": {"value": 446.0, "unit": "seconds"}},
     ),
+    "a controller whose gain at high frequency is 0 in float64": (
+        LAG,
+        {
+            "form": "two_zeros",
+            "action": "direct",
+            "gain": 1e-300,
+            "zeros_rad_s": [[-3.0, 34.0], [-3.0, -34.0]],
+            "derivative_filter": {"value": 1.7e308, "unit": "seconds"},
+        },
+    ),
     "a range of a plant that is a mere gain": (
         {
             "kind": "transfer_function",
