@@ -6,6 +6,7 @@ A test takes the fixture `databases` and runs on both.
 from __future__ import annotations
 
 import itertools
+import os
 import shutil
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
@@ -46,7 +47,7 @@ class SqliteFiles:
     _numbers: itertools.count[int] = field(default_factory=itertools.count)
 
     def new(self) -> str:
-        return f"sqlite:///{self.folder / f'store_{next(self._numbers)}.db'}"
+        return f"sqlite:///{self.folder / f'store_{os.getpid()}_{next(self._numbers)}.db'}"
 
     def copy_of(self, url: str) -> str:
         copy = self.new()
