@@ -33,6 +33,14 @@ def read(document_type: type[Document], source: bytes | Plain) -> Document:
     return cast(Document, document)
 
 
+def read_kept(document_type: type[Document], kept: bytes) -> Document:
+    """Read back the canonical JSON that a document of this type was kept as.
+
+    What it asks for beyond its fields was asked for before it was kept.
+    """
+    return cast(Document, adapter(document_type).validate_json(kept))  # type: ignore[arg-type]  # see `_validated`
+
+
 @cache
 def adapter(document_type: type[Any]) -> TypeAdapter[Any]:
     """Return the reader of a document type, made once: making it costs some 40 ms."""

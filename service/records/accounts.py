@@ -9,8 +9,8 @@ from dataclasses import dataclass, field
 from datetime import datetime, timedelta
 from uuid import uuid4
 
-from sqlalchemy import func, select, update
-from sqlalchemy.orm import Session
+from sqlalchemy import bindparam, func, select, update
+from sqlalchemy.orm import Session, lazyload
 
 from service.documents.errors import FieldProblem
 from service.records import history, passwords, throttles
@@ -36,6 +36,9 @@ NAME_PATTERN = re.compile(r"[a-z0-9](?:[a-z0-9._-]{0,38}[a-z0-9])?")
 FULL_NAME_CHARACTERS_MAX = 100
 REASON_CHARACTERS_MAX = 1000
 UNUSED_AFTER = timedelta(days=90)
+
+_ALONE = select(Account).options(lazyload("*")).where(Account.id == bindparam("account_id"))
+"""An account without its roles and areas."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -236,7 +239,7 @@ def _row(session: Session, name: str) -> Account | None:
 
 
 def _own(session: Session, actor: Actor) -> Account:
-    account = session.get(Account, actor.account_id) if actor.account_id else None
+    account = session.execute(_ALONE, {"account_id": actor.account_id}).scalar_one_or_none()
     if account is None:
         raise WrongPassword("only a person's own account signs")
     return account

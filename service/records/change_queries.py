@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from functools import cache
 from typing import Any, cast, get_args
 
-from sqlalchemy import ColumnElement, Select, case, or_, select
+from sqlalchemy import ColumnElement, Select, bindparam, case, or_, select
 from sqlalchemy.orm import Session, aliased
 
 from service.records import change_lifecycle, loops, visibility
@@ -31,8 +32,8 @@ class ChangeFilter:
 
 def find(session: Session, actor: Actor, change_id: str) -> ChangeView:
     """Return a change whose loop lies in the actor's areas now. Raises NotFound."""
-    found = session.execute(_changes(actor).where(LoopChange.id == change_id)).one_or_none()
-    if found is None:
+    found = session.execute(_one_change(), {"change_id": change_id}).one_or_none()
+    if found is None or not actor.sees(found[2].area):
         raise NotFound("there is no such change")
     return _view(session, actor, *found)
 
@@ -41,7 +42,8 @@ def changes(
     session: Session, actor: Actor, wanted: ChangeFilter, after: str | None = None, limit: int = 50
 ) -> Page[ChangeView]:
     """Changes, latest first."""
-    query = _changes(actor).where(*_conditions(wanted)).order_by(LoopChange.event_number.desc())
+    query = _changes().where(visibility.in_sight(actor), *_conditions(wanted))
+    query = query.order_by(LoopChange.event_number.desc())
     if after is not None:
         query = query.where(LoopChange.event_number < int(after))
     rows = session.execute(query.limit(limit + 1)).all()
@@ -55,17 +57,24 @@ def content_bytes(session: Session, actor: Actor, change_id: str) -> bytes:
     return session.get_one(LoopChange, change_id).content
 
 
-def _changes(actor: Actor) -> Select[LoopChange, LoopChangeDecision, LoopRevision, str]:
-    """Select changes in sight, each with its decision, the loop's present revision and its state."""
+@cache
+def _changes() -> Select[LoopChange, LoopChangeDecision, LoopRevision, str]:
+    """Select changes, each with its decision, the loop's present revision and its state."""
     return (
         select(LoopChange, LoopChangeDecision, LoopRevision, _state())
         .join(Loop, Loop.id == LoopChange.loop_id)
         .join(LoopRevision, LoopRevision.loop_id == Loop.id)
         .outerjoin(LoopChangeDecision, LoopChangeDecision.change_id == LoopChange.id)
-        .where(loops.is_present(), visibility.in_sight(actor))
+        .where(loops.is_present())
     )
 
 
+@cache
+def _one_change() -> Select[LoopChange, LoopChangeDecision, LoopRevision, str]:
+    return _changes().where(LoopChange.id == bindparam("change_id"))
+
+
+@cache
 def _state() -> ColumnElement[str]:
     """The state of a selected change."""
     retired, later = aliased(LoopModel), aliased(LoopModel)

@@ -6,7 +6,6 @@ that earlier content still reads.
 
 from __future__ import annotations
 
-import json
 from dataclasses import dataclass
 from typing import Literal
 
@@ -14,7 +13,7 @@ from service.documents.decisions import Deviation
 from service.documents.discriminated import ControllerField
 from service.documents.installations import InstallationRequest
 from service.documents.loops import LoopRegistration, ModelVersion
-from service.documents.reading import read
+from service.documents.reading import read_kept
 from service.documents.recomputations import RecomputationAnswer
 from service.documents.submissions import Tool
 from service.documents.texts import Moment
@@ -228,24 +227,24 @@ class ChangeDecisionContent:
 
 def read_content(kept: bytes) -> SignedContent:
     """Read the kept content of a submission."""
-    return read(SignedContent, json.loads(kept))
+    return read_kept(SignedContent, kept)
 
 
 def read_decision(kept: bytes) -> DecisionContent:
     """Read the kept content of a decision."""
-    return read(DecisionContent, json.loads(kept))
+    return read_kept(DecisionContent, kept)
 
 
 def read_change(kept: bytes) -> LoopChangeContent:
     """Read the kept content of a change of a loop."""
-    return read(LoopChangeContent, json.loads(kept))
+    return read_kept(LoopChangeContent, kept)
 
 
 def read_change_decision(kept: bytes) -> ChangeDecisionContent:
     """Read the kept content of a decision on a change of a loop."""
-    return read(ChangeDecisionContent, json.loads(kept))
+    return read_kept(ChangeDecisionContent, kept)
 
 
 def read_installation(kept: bytes) -> InstallationContent:
     """Read the kept content of an installation."""
-    return read(InstallationContent, json.loads(kept))
+    return read_kept(InstallationContent, kept)

@@ -6,7 +6,7 @@ from datetime import datetime
 from hashlib import sha256
 from uuid import uuid4
 
-from sqlalchemy import select
+from sqlalchemy import bindparam, select
 from sqlalchemy.orm import Session
 
 from service.documents.canonical import canonical_bytes
@@ -56,6 +56,10 @@ KINDS = {
     "revoke": "approval_revoked",
 }
 """The kind of entry in the history, by decision."""
+
+_OF_SUBMISSION = (
+    select(Decision).where(Decision.submission_id == bindparam("submission_id")).order_by(Decision.ordinal)
+)
 
 
 def check_may_decide(session: Session, actor: Actor, submission_id: str) -> None:
@@ -118,8 +122,7 @@ def record_refused_signing(
 
 
 def _decisions(session: Session, submission_id: str) -> tuple[Decision, ...]:
-    query = select(Decision).where(Decision.submission_id == submission_id).order_by(Decision.ordinal)
-    return tuple(session.execute(query).scalars())
+    return tuple(session.execute(_OF_SUBMISSION, {"submission_id": submission_id}).scalars())
 
 
 def _approvals(decisions: tuple[Decision, ...], digest: str) -> tuple[Decision, ...]:

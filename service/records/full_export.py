@@ -16,10 +16,10 @@ from sqlalchemy.orm import Session
 
 from service.documents.strict_json import Plain
 from service.documents.writing import plain
+from service.records.history import TIE
 from service.records.tables import collection
 from service.records.tables.history import HistoryEvent
 
-TIE = "event_number"
 ROWS_AT_A_TIME = 500
 
 

@@ -12,12 +12,10 @@ from collections.abc import Iterator
 from sqlalchemy import Connection, Table, inspect, text
 
 from service.records.errors import StoreNotUsable
+from service.records.history import TIE
 from service.records.tables import collection
 
 EVENTS = "history_events"
-TIE = "event_number"
-"""The column that ties a kept row to its entry."""
-
 VERSION = "alembic_version"
 KEPT_RIGHTS = ("SELECT", "INSERT")
 WORKING_RIGHTS: dict[str, tuple[str, ...]] = {

@@ -13,9 +13,10 @@ import json
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from datetime import UTC, datetime
+from functools import cache
 from typing import Any
 
-from sqlalchemy import inspect, select
+from sqlalchemy import Insert, insert, inspect, select, update
 from sqlalchemy.orm import Session
 
 from service.documents.canonical import canonical_bytes
@@ -27,8 +28,17 @@ from service.records.tables.columns import Base
 from service.records.tables.history import HistoryEvent, HistoryHead
 from service.records.views import EntryReference, HeadView
 
+TIE = "event_number"
+"""The column that ties a kept row to the entry that vouches for it."""
+
 STORE_MADE = "store_made"
 """The kind of the first entry of every history."""
+
+# statements are made once: making one costs more than running it
+_HEAD = select(HistoryHead.size, HistoryHead.digest, HistoryHead.time, HistoryHead.right_edge)
+_LOCKED_HEAD = _HEAD.with_for_update()
+_TURN = select(HistoryHead.size).with_for_update()
+_MOVE_HEAD = update(Base.metadata.tables[HistoryHead.__tablename__])
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -54,7 +64,7 @@ class _Told:
 
 def take_turn(session: Session) -> None:
     """Wait until no other writer is at work. SQLite waits at BEGIN IMMEDIATE and ignores FOR UPDATE."""
-    session.execute(select(HistoryHead.size).with_for_update())
+    session.execute(_TURN)
 
 
 def append(
@@ -67,24 +77,24 @@ def append(
     about: About | None = None,
     rows: Iterable[Base] = (),
 ) -> EntryReference:
-    """Insert `rows` and the one entry that vouches for them, and move the head. Flushes.
+    """Insert `rows` and the one entry that vouches for them, and move the head. Flushes what was begun.
 
     `content` says what happened, in words and numbers that are made to be read (whatever
     `service.documents.writing.plain` takes). `rows` are kept rows, in the order in which they are inserted.
     """
-    head = session.execute(select(HistoryHead).with_for_update()).scalar_one()
-    rows = tuple(rows)
-    for row in rows:
-        row.event_number = head.size + 1  # type: ignore[attr-defined]  # every kept table has it
-    told = _Told(kind=kind, actor=actor.name, content=content, time=now, about=about)
-    event = _event(told, rows, head)
-    session.add(event)
-    head.right_edge = merkle.with_leaf(head.right_edge, head.size, bytes.fromhex(event.digest))
-    head.size, head.digest, head.time = event.number, event.digest, now
     session.flush()
+    size, previous, _, right_edge = session.execute(_LOCKED_HEAD).one()
+    rows = tuple(rows)
+    told = _Told(kind=kind, actor=actor.name, content=content, time=now, about=about)
+    event = _event(told, rows, size + 1, previous)
+    connection = session.connection()
+    connection.execute(_insertion(HistoryEvent), _values(event))
+    right_edge = merkle.with_leaf(right_edge, size, bytes.fromhex(event.digest))
+    moved = {"size": event.number, "digest": event.digest, "time": now, "right_edge": right_edge}
+    connection.execute(_MOVE_HEAD, moved)
+    # one by one, in the order in which they refer to each other
     for row in rows:
-        session.add(row)
-        session.flush()
+        connection.execute(_insertion(type(row)), _values(row) | {TIE: event.number})
     return EntryReference(number=event.number, digest=event.digest, time=now)
 
 
@@ -121,22 +131,22 @@ def origin(session: Session) -> str:
 
 def head(session: Session) -> HeadView:
     """Return where the history stands."""
-    row = session.execute(select(HistoryHead)).scalar_one()
-    return HeadView(size=row.size, digest=row.digest, root=merkle.root(row.right_edge).hex(), time=row.time)
+    size, digest, time, right_edge = session.execute(_HEAD).one()
+    return HeadView(size=size, digest=digest, root=merkle.root(right_edge).hex(), time=time)
 
 
-def _event(told: _Told, rows: tuple[Base, ...], head: HistoryHead) -> HistoryEvent:
+def _event(told: _Told, rows: tuple[Base, ...], number: int, previous: str) -> HistoryEvent:
     """Make the entry that follows on the head: its canonical bytes, their digest, the searchable columns."""
     about = told.about
     projected: dict[str, Plain] = {
-        "number": head.size + 1,
+        "number": number,
         "kind": told.kind,
         "actor": told.actor,
         "loop_id": about.loop_id if about else None,
         "site": about.site if about else None,
         "tag": about.tag if about else None,
         "area": about.area if about else None,
-        "previous": head.digest,
+        "previous": previous,
     }
     more: dict[str, Plain] = {
         "time": plain(told.time),
@@ -157,8 +167,21 @@ def _rows_by_table(rows: tuple[Base, ...]) -> dict[str, Plain]:
 
 def _columns(row: Base) -> dict[str, Plain]:
     """Every column but the entry's own number; bytes by their SHA-256, times as RFC 3339 in UTC."""
-    names = [column.key for column in inspect(type(row)).columns if column.key != "event_number"]
-    return {name: _value(getattr(row, name)) for name in names}
+    return {name: _value(value) for name, value in _values(row).items() if name != TIE}
+
+
+def _values(row: Base) -> dict[str, Any]:
+    return {name: getattr(row, name) for name in _names(type(row))}
+
+
+@cache
+def _names(table: type[Base]) -> tuple[str, ...]:
+    return tuple(column.key for column in inspect(table).columns)
+
+
+@cache
+def _insertion(table: type[Base]) -> Insert:
+    return insert(Base.metadata.tables[table.__tablename__])
 
 
 def _value(value: object) -> Plain:

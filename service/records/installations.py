@@ -7,7 +7,7 @@ from datetime import datetime, timedelta
 from hashlib import sha256
 from uuid import uuid4
 
-from sqlalchemy import select
+from sqlalchemy import bindparam, select
 from sqlalchemy.orm import Session
 
 from service.analysis.controller import Controller
@@ -34,6 +34,12 @@ from service.records.views import InstallationView
 
 CLOCKS_APART = timedelta(minutes=5)
 """How far the clock of whoever reports may be from ours. Common practice."""
+
+_OF_SUBMISSION = (
+    select(Installation)
+    .where(Installation.submission_id == bindparam("submission_id"))
+    .order_by(Installation.ordinal)
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -158,10 +164,7 @@ def _all_sets_left(
 
 
 def _installations(session: Session, submission_id: str) -> tuple[Installation, ...]:
-    query = (
-        select(Installation).where(Installation.submission_id == submission_id).order_by(Installation.ordinal)
-    )
-    return tuple(session.execute(query).scalars())
+    return tuple(session.execute(_OF_SUBMISSION, {"submission_id": submission_id}).scalars())
 
 
 def _content(

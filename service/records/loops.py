@@ -8,17 +8,18 @@ from __future__ import annotations
 import json
 import unicodedata
 from datetime import datetime
+from functools import cache
 from hashlib import sha256
 from uuid import uuid4
 
-from sqlalchemy import ColumnElement, Select, select
+from sqlalchemy import ColumnElement, Row, Select, bindparam, select
 from sqlalchemy.orm import Session, aliased
 
 from service.analysis.plant import Ranges
 from service.documents.canonical import canonical_bytes
 from service.documents.errors import FieldProblem
 from service.documents.loops import LoopReference, LoopRegistration, ModelVersion
-from service.documents.reading import read
+from service.documents.reading import read_kept
 from service.documents.writing import plain
 from service.records import history, protection
 from service.records.errors import AlreadyExists, FieldErrors, NotFound, SecondPersonNeeded, StaleContent
@@ -28,8 +29,12 @@ from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopModel, LoopRevision
 from service.records.views import EntryReference, LoopView, ModelView
 
+# statements are made once: making one costs more than running it
 _LATER = aliased(LoopRevision)
-"""Made once: making an alias costs more than the query that it stands in."""
+_MODELS = select(LoopModel).where(LoopModel.loop_id == bindparam("loop_id")).order_by(LoopModel.version)
+_WRITTEN = select(HistoryEvent.actor, HistoryEvent.number, HistoryEvent.digest, HistoryEvent.time).where(
+    HistoryEvent.number == bindparam("number")
+)
 
 
 def matching_key(text: str) -> str:
@@ -49,7 +54,7 @@ def register(session: Session, actor: Actor, document: LoopRegistration, now: da
     """
     check_may_change(actor)
     _check_references(session, actor, document)
-    if _identity(session, document.site, document.tag) is not None:
+    if _by_tag(session, document.site, document.tag) is not None:
         raise AlreadyExists(f"{document.site} has a loop {document.tag} already")
     loop = Loop(
         id=uuid4().hex,
@@ -137,10 +142,7 @@ def find(session: Session, actor: Actor, loop_id: str, revision: int | None = No
 
 def find_by_tag(session: Session, actor: Actor, site: str, tag: str) -> LoopView:
     """Return a loop by site and tag, without regard to case. Raises NotFound."""
-    loop = _identity(session, site, tag)
-    if loop is None:
-        raise NotFound("there is no such loop")
-    return find(session, actor, loop.id)
+    return view(session, *_in_sight(actor, _by_tag(session, site, tag)))
 
 
 def revisions(session: Session, actor: Actor, loop_id: str) -> tuple[LoopView, ...]:
@@ -217,12 +219,12 @@ def rows_in_force(rows: tuple[LoopModel, ...]) -> tuple[LoopModel, ...]:
 
 def read_model(row: LoopModel) -> ModelVersion:
     """Read a kept model version."""
-    return read(ModelVersion, json.loads(row.content))
+    return read_kept(ModelVersion, row.content)
 
 
 def read_loop(row: LoopRevision) -> LoopRegistration:
     """Read a kept revision of a loop."""
-    return read(LoopRegistration, json.loads(row.content))
+    return read_kept(LoopRegistration, row.content)
 
 
 def ranges(loop: LoopRegistration) -> Ranges:
@@ -237,17 +239,17 @@ def about(loop: Loop, revision: LoopRevision) -> About:
 
 def present(session: Session, loop_id: str) -> tuple[Loop, LoopRevision]:
     """Return a loop and its present revision, whoever asks."""
-    loop, revision = session.execute(
-        present_revisions().add_columns(LoopRevision).where(Loop.id == loop_id)
-    ).one()
+    loop, revision = session.execute(_loops_by_id(), {"loop_id": loop_id}).one()
     return loop, revision
 
 
+@cache
 def present_revisions() -> Select[Loop]:
     """Select loops joined with their present revision."""
     return select(Loop).join(LoopRevision, LoopRevision.loop_id == Loop.id).where(is_present())
 
 
+@cache
 def is_present() -> ColumnElement[bool]:
     """Return the condition that a selected revision is its loop's present one."""
     superseded = select(_LATER.loop_id).where(
@@ -263,22 +265,37 @@ def view(session: Session, loop: Loop, revision: LoopRevision) -> LoopView:
 
 def written_by(session: Session, event_number: int) -> tuple[str, EntryReference]:
     """Return who wrote an entry of the history, and the reference to it."""
-    event = session.get_one(HistoryEvent, event_number)
-    return event.actor, EntryReference(number=event.number, digest=event.digest, time=event.time)
+    actor, number, digest, time = session.execute(_WRITTEN, {"number": event_number}).one()
+    return actor, EntryReference(number=number, digest=digest, time=time)
 
 
 def found(session: Session, actor: Actor, loop_id: str) -> tuple[Loop, LoopRevision]:
     """Return a loop in the actor's areas with its present revision. Raises NotFound."""
-    if session.get(Loop, loop_id) is None:
+    return _in_sight(actor, session.execute(_loops_by_id(), {"loop_id": loop_id}).one_or_none())
+
+
+def _in_sight(actor: Actor, found: Row[Loop, LoopRevision] | None) -> tuple[Loop, LoopRevision]:
+    if found is None:
         raise NotFound("there is no such loop")
-    loop, revision = present(session, loop_id)
+    loop, revision = found
     require_area(actor, revision.area, "loop")
     return loop, revision
 
 
-def _identity(session: Session, site: str, tag: str) -> Loop | None:
-    query = select(Loop).where(Loop.site_key == matching_key(site), Loop.tag_key == matching_key(tag))
-    return session.execute(query).scalar_one_or_none()
+def _by_tag(session: Session, site: str, tag: str) -> Row[Loop, LoopRevision] | None:
+    keys = {"site_key": matching_key(site), "tag_key": matching_key(tag)}
+    return session.execute(_loops_by_tag(), keys).one_or_none()
+
+
+@cache
+def _loops_by_id() -> Select[Loop, LoopRevision]:
+    return present_revisions().add_columns(LoopRevision).where(Loop.id == bindparam("loop_id"))
+
+
+@cache
+def _loops_by_tag() -> Select[Loop, LoopRevision]:
+    by_tag = (Loop.site_key == bindparam("site_key"), Loop.tag_key == bindparam("tag_key"))
+    return present_revisions().add_columns(LoopRevision).where(*by_tag)
 
 
 def _check_references(session: Session, actor: Actor, document: LoopRegistration) -> None:
@@ -313,8 +330,7 @@ def _revision(loop_id: str, number: int, document: LoopRegistration) -> LoopRevi
 
 
 def _models(session: Session, loop_id: str) -> tuple[LoopModel, ...]:
-    query = select(LoopModel).where(LoopModel.loop_id == loop_id).order_by(LoopModel.version)
-    return tuple(session.execute(query).scalars())
+    return tuple(session.execute(_MODELS, {"loop_id": loop_id}).scalars())
 
 
 def _view(loop: Loop, revision: LoopRevision, changed_by: str, entry: EntryReference) -> LoopView:

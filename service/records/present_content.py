@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import cast
 
-from sqlalchemy import select
+from sqlalchemy import bindparam, select
 from sqlalchemy.orm import Session
 
 from service.analysis.results import Verdict
@@ -13,6 +13,13 @@ from service.records import states
 from service.records.content import SignedContent, SignedGainsInForce, read_content
 from service.records.tables.changes import SubmissionContent
 from service.records.tables.submissions import Submission
+
+_LAST_AGAIN = (
+    select(SubmissionContent)
+    .where(SubmissionContent.submission_id == bindparam("submission_id"))
+    .order_by(SubmissionContent.version.desc())
+    .limit(1)
+)
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -34,13 +41,7 @@ class PresentContent:
 
 def present(session: Session, submission: Submission) -> PresentContent:
     """Return the content of a submission that is signed now."""
-    query = (
-        select(SubmissionContent)
-        .where(SubmissionContent.submission_id == submission.id)
-        .order_by(SubmissionContent.version.desc())
-        .limit(1)
-    )
-    again = session.execute(query).scalar_one_or_none()
+    again = session.execute(_LAST_AGAIN, {"submission_id": submission.id}).scalar_one_or_none()
     row = submission if again is None else again
     return PresentContent(
         version=1 if again is None else again.version,

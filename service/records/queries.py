@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 from dataclasses import dataclass
 from datetime import datetime
 
@@ -10,7 +9,7 @@ from sqlalchemy import ColumnElement, Select, and_, case, func, not_, or_, selec
 from sqlalchemy.orm import Session, aliased
 
 from service.analysis.results import Curves
-from service.documents.reading import read
+from service.documents.reading import read_kept
 from service.records import lifecycle, present_content, rechecks, states, submission_views, visibility
 from service.records import loops as loop_records
 from service.records.errors import Conflict
@@ -148,7 +147,7 @@ def curves(session: Session, actor: Actor, submission_id: str) -> tuple[CurvesVi
             model_id=row.model_id,
             operating_point=row.operating_point,
             gain_set=row.gain_set,
-            curves=read(Curves, json.loads(row.curves)),
+            curves=read_kept(Curves, row.curves),
         )
         for row in session.execute(query).scalars()
         if row.curves is not None

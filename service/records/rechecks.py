@@ -6,7 +6,7 @@ submit them again: recomputed on what holds now, approved, and installed in the 
 
 from __future__ import annotations
 
-from sqlalchemy import ColumnElement, and_, or_, select
+from sqlalchemy import ColumnElement, and_, bindparam, or_, select
 from sqlalchemy.orm import Session, aliased
 
 from service.records import lifecycle, loops, states
@@ -17,6 +17,13 @@ from service.records.tables.submissions import GainsComingIntoForce, Submission
 from service.records.views import RecheckView
 
 _RUNNING, _LATER = aliased(GainsComingIntoForce), aliased(GainsComingIntoForce)
+_LAST_MARK = (
+    select(LoopChange, RecheckDue.event_number)
+    .join(RecheckDue, RecheckDue.change_id == LoopChange.id)
+    .where(RecheckDue.submission_id == bindparam("submission_id"))
+    .order_by(RecheckDue.event_number.desc())
+    .limit(1)
+)
 
 
 def due(session: Session, submission: Submission, state: State) -> RecheckView | None:
@@ -25,14 +32,7 @@ def due(session: Session, submission: Submission, state: State) -> RecheckView |
     runs = running is not None and running.submission_id == submission.id
     if not runs and state not in lifecycle.APPROVED_TO_RUN:
         return None
-    query = (
-        select(LoopChange, RecheckDue.event_number)
-        .join(RecheckDue, RecheckDue.change_id == LoopChange.id)
-        .where(RecheckDue.submission_id == submission.id)
-        .order_by(RecheckDue.event_number.desc())
-        .limit(1)
-    )
-    found = session.execute(query).one_or_none()
+    found = session.execute(_LAST_MARK, {"submission_id": submission.id}).one_or_none()
     if found is None:
         return None
     change, event_number = found

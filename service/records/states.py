@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from datetime import datetime
 from typing import cast
 
-from sqlalchemy import select
+from sqlalchemy import bindparam, select
 from sqlalchemy.orm import Session, aliased
 
 from service.records import lifecycle
@@ -17,7 +17,37 @@ from service.records.tables.submissions import GainsComingIntoForce, Submission,
 SUBMITTED = "submit"
 """The action by which a submission came into its first state."""
 
+# statements are made once: making one costs more than running it
 _LATER = aliased(SubmissionState)
+_NOT_LAST = select(_LATER.ordinal).where(
+    _LATER.submission_id == SubmissionState.submission_id, _LATER.ordinal > SubmissionState.ordinal
+)
+_STORED = (
+    select(SubmissionState)
+    .where(SubmissionState.submission_id == bindparam("submission_id"))
+    .order_by(SubmissionState.ordinal.desc())
+    .limit(1)
+)
+_OF_LOOP = (
+    select(Submission, SubmissionState)
+    .join(SubmissionState, SubmissionState.submission_id == Submission.id)
+    .where(Submission.loop_id == bindparam("loop_id"), ~_NOT_LAST.exists())
+    .order_by(Submission.event_number)
+)
+_RUNNING = (
+    select(GainsComingIntoForce)
+    .where(GainsComingIntoForce.loop_id == bindparam("loop_id"))
+    .order_by(GainsComingIntoForce.ordinal.desc())
+    .limit(1)
+)
+_HAS_RUN = (
+    select(GainsComingIntoForce.ordinal)
+    .where(
+        GainsComingIntoForce.loop_id == bindparam("loop_id"),
+        GainsComingIntoForce.submission_id == bindparam("submission_id"),
+    )
+    .limit(1)
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -30,13 +60,7 @@ class Outcome:
 
 def stored(session: Session, submission_id: str) -> SubmissionState:
     """Return the last state that a submission came into."""
-    query = (
-        select(SubmissionState)
-        .where(SubmissionState.submission_id == submission_id)
-        .order_by(SubmissionState.ordinal.desc())
-        .limit(1)
-    )
-    return session.execute(query).scalar_one()
+    return session.execute(_STORED, {"submission_id": submission_id}).scalar_one()
 
 
 def as_read(session: Session, submission: Submission, now: datetime) -> State:
@@ -75,27 +99,13 @@ def next_row(session: Session, submission: Submission, action: Action, now: date
 
 def of_loop(session: Session, loop_id: str, now: datetime) -> dict[str, State]:
     """Return the state of every submission of a loop as it reads at `now`, earliest first."""
-    not_last = select(_LATER.ordinal).where(
-        _LATER.submission_id == SubmissionState.submission_id, _LATER.ordinal > SubmissionState.ordinal
-    )
-    query = (
-        select(Submission, SubmissionState)
-        .join(SubmissionState, SubmissionState.submission_id == Submission.id)
-        .where(Submission.loop_id == loop_id, ~not_last.exists())
-        .order_by(Submission.event_number)
-    )
-    return {row.id: read_state(stored, row, now) for row, stored in session.execute(query)}
+    found = session.execute(_OF_LOOP, {"loop_id": loop_id})
+    return {row.id: read_state(stored, row, now) for row, stored in found}
 
 
 def running(session: Session, loop_id: str) -> GainsComingIntoForce | None:
     """Return what last came into force in a loop's controller."""
-    query = (
-        select(GainsComingIntoForce)
-        .where(GainsComingIntoForce.loop_id == loop_id)
-        .order_by(GainsComingIntoForce.ordinal.desc())
-        .limit(1)
-    )
-    return session.execute(query).scalar_one_or_none()
+    return session.execute(_RUNNING, {"loop_id": loop_id}).scalar_one_or_none()
 
 
 def coming_into_force(
@@ -122,7 +132,5 @@ def coming_into_force(
 
 def has_run(session: Session, loop_id: str, submission_id: str) -> bool:
     """Say whether a submission's gains ever came into force in its loop's controller."""
-    query = select(GainsComingIntoForce.ordinal).where(
-        GainsComingIntoForce.loop_id == loop_id, GainsComingIntoForce.submission_id == submission_id
-    )
-    return session.execute(query.limit(1)).first() is not None
+    which = {"loop_id": loop_id, "submission_id": submission_id}
+    return session.execute(_HAS_RUN, which).first() is not None

@@ -7,7 +7,7 @@ from datetime import datetime
 from hashlib import sha256
 from uuid import uuid4
 
-from sqlalchemy import select
+from sqlalchemy import bindparam, select
 from sqlalchemy.orm import Session
 
 from service.analysis.errors import FieldError
@@ -49,6 +49,16 @@ from service.records.tables.submissions import (
 )
 from service.records.views import LoopView, SubmissionView
 
+_ACCOUNTS = select(Account.id, Account.name, Account.full_name).where(
+    Account.name.in_(bindparam("names", expanding=True))
+)
+
+
+@dataclass(frozen=True, slots=True)
+class _Author:
+    account_id: str
+    person: Person
+
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class PreparedSubmission:
@@ -57,7 +67,7 @@ class PreparedSubmission:
     request: SubmissionRequest
     loop: LoopView
     gain_sets: tuple[SignedGains, ...]
-    authors: tuple[Account, ...]
+    authors: tuple[_Author, ...]
     """Whoever prepared it."""
     models: tuple[SignedModel, ...]
     recomputed: tuple[Recomputed, ...]
@@ -144,19 +154,20 @@ def submit(session: Session, actor: Actor, prepared: PreparedSubmission, now: da
     return queries.submission(session, actor, submission.id, now)
 
 
-def _authors(session: Session, actor: Actor, request: SubmissionRequest) -> tuple[Account, ...]:
+def _authors(session: Session, actor: Actor, request: SubmissionRequest) -> tuple[_Author, ...]:
     names = tuple(dict.fromkeys(request.prepared_by or (actor.name,)))
-    rows = {
-        row.name: row for row in session.execute(select(Account).where(Account.name.in_(names))).scalars()
+    found = {
+        name: _Author(account_id, Person(name=name, full_name=full_name))
+        for account_id, name, full_name in session.execute(_ACCOUNTS, {"names": names})
     }
     problems = tuple(
         FieldProblem(f"/prepared_by/{index}", "there is no such account")
         for index, name in enumerate(request.prepared_by or ())
-        if name not in rows
+        if name not in found
     )
     if problems:
         raise FieldErrors(problems)
-    return tuple(rows[name] for name in names)
+    return tuple(found[name] for name in names)
 
 
 def _check_fields(
@@ -250,7 +261,7 @@ def _content(actor: Actor, prepared: PreparedSubmission, now: datetime) -> Signe
         gain_sets=prepared.gain_sets,
         submitted_by=Person(name=actor.name, full_name=actor.full_name),
         submitted_at=now,
-        prepared_by=tuple(Person(name=row.name, full_name=row.full_name) for row in prepared.authors),
+        prepared_by=tuple(author.person for author in prepared.authors),
         tool=request.tool,
         claims=request.claims,
         temporary_until=request.temporary_until,
@@ -285,7 +296,7 @@ def _submission(
 
 
 def _author_rows(actor: Actor, prepared: PreparedSubmission, submission_id: str) -> tuple[Base, ...]:
-    ids = dict.fromkeys((actor.account_id, *(row.id for row in prepared.authors)))
+    ids = dict.fromkeys((actor.account_id, *(author.account_id for author in prepared.authors)))
     return tuple(SubmissionAuthor(submission_id=submission_id, account_id=account_id) for account_id in ids)
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from sqlalchemy import ColumnElement, select, true
+from sqlalchemy import ColumnElement, bindparam, select, true
 from sqlalchemy.orm import Session
 
 from service.records import loops
@@ -10,6 +10,10 @@ from service.records.errors import NotFound
 from service.records.roles import Actor
 from service.records.tables.loops import LoopRevision
 from service.records.tables.submissions import Submission, SubmissionAuthor
+
+_AUTHORS = select(SubmissionAuthor.account_id).where(
+    SubmissionAuthor.submission_id == bindparam("submission_id")
+)
 
 
 def submission(session: Session, actor: Actor, submission_id: str) -> Submission:
@@ -22,8 +26,7 @@ def submission(session: Session, actor: Actor, submission_id: str) -> Submission
 
 def authors(session: Session, submission_id: str) -> frozenset[str]:
     """Return the accounts of whoever submitted or prepared a submission."""
-    query = select(SubmissionAuthor.account_id).where(SubmissionAuthor.submission_id == submission_id)
-    return frozenset(session.execute(query).scalars())
+    return frozenset(session.execute(_AUTHORS, {"submission_id": submission_id}).scalars())
 
 
 def in_sight(actor: Actor) -> ColumnElement[bool]:
