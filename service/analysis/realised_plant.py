@@ -61,15 +61,19 @@ def _candidates(scaled: tuple[Reals, Reals, Reals, float]) -> list[Complexes]:
 
 def _poles(a: Reals) -> Complexes:
     """Eigenvalues, those at the origin exact: each is split off by a vector that A takes to 0."""
+    largest = float(np.abs(a).max(initial=0.0))
+    # a power of two moves no bit, and LAPACK may never end on singular values of a matrix that has overflown
+    size = 2.0 ** math.floor(math.log2(largest)) if largest > 0 else 1.0
     at_origin = 0
-    rest = a
+    rest = a / size
+    largest /= size
     while rest.size:
         _, sizes, vectors = np.linalg.svd(rest)
-        if sizes[-1] > AT_ORIGIN * max(float(sizes[0]), float(np.abs(a).max(initial=0.0))):
+        if sizes[-1] > AT_ORIGIN * max(float(sizes[0]), largest):
             break
         at_origin += 1
         rest = vectors[:-1] @ rest @ vectors[:-1].T
-    others = np.linalg.eigvals(rest).astype(complex) if rest.size else np.empty(0, complex)
+    others = size * np.linalg.eigvals(rest).astype(complex) if rest.size else np.empty(0, complex)
     return np.concatenate([np.zeros(at_origin, complex), others])
 
 
@@ -96,6 +100,8 @@ def _gain(scaled: tuple[Reals, Reals, Reals, float], zeros: Complexes, poles: Co
         ratio = direct / np.exp(log_product(points, zeros, poles))
     size = np.abs(direct)
     told = size >= 1e-6 * float(size.max())
+    if not told.any():
+        return None
     gain = float(np.median(ratio.real[told]))
     met = math.isfinite(gain) and gain != 0 and bool(np.all(np.abs(ratio[told] - gain) <= MET * abs(gain)))
     return gain if met else None

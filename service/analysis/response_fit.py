@@ -76,6 +76,8 @@ def _fit(plant: FrequencyResponse) -> ZerosPolesGain | None:
     smooth: Complexes = np.asarray(response * at**plant.poles_at_origin)
     with warnings.catch_warnings(), np.errstate(all="ignore"):
         warnings.simplefilter("ignore")
+        if not _carried(at.imag, smooth):
+            return None
         for zeros, poles in _candidates(at, smooth):
             every = np.concatenate([np.zeros(plant.poles_at_origin, complex), poles])
             # a proper plant has no more zeros than poles; the farthest say nothing of what was measured
@@ -86,6 +88,12 @@ def _fit(plant: FrequencyResponse) -> ZerosPolesGain | None:
             if _meets(plant, found):
                 return found
     return None
+
+
+def _carried(omega: Reals, smooth: Complexes) -> bool:
+    """Whether every divided difference of the points is a float64: LAPACK may never end on one that is inf."""
+    nearest = min(float(np.diff(omega).min()), float(omega[0]))
+    return bool(np.isfinite(4.0 * np.abs(smooth) / nearest).all())
 
 
 def _candidates(at: Complexes, smooth: Complexes) -> Iterator[tuple[Complexes, Complexes]]:
@@ -156,6 +164,8 @@ def _least_squares(columns: list[Complexes], values: Complexes, weight: Reals) -
     """Real coefficients, by the real and imaginary parts of every row; columns brought to one size."""
     weighed = np.column_stack(columns) * weight[:, None]
     stacked = np.concatenate([weighed.real, weighed.imag])
+    if not np.isfinite(stacked).all():
+        raise np.linalg.LinAlgError("the numbers have left float64")
     sizes = np.linalg.norm(stacked, axis=0)
     sizes[sizes == 0] = 1.0
     found = np.linalg.lstsq(

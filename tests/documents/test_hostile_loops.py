@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 from typing import Any
 
+import numpy as np
 import pytest
 
 from service.documents.errors import InvalidDocument
@@ -26,6 +27,14 @@ POINTS = {"kind": "frequency_response", "frequencies_rad_s": [0.1, 1.0, 10.0], "
 def scanned(interval_s: float, output_delay_s: float = 0.0, method: str = "backward_difference") -> Any:
     scan = {"interval_s": interval_s, "output_delay_s": output_delay_s, "method": method}
     return PI | {"scan": scan}
+
+
+def numbers_of_every_size() -> list[list[float]]:
+    """A matrix on which LAPACK does not end once a mode is split off: what is left of it has overflown."""
+    drawn = np.random.default_rng(9)
+    matrix = 10.0 ** drawn.uniform(-4, 4, (6, 6)) * drawn.choice([-1.0, 1.0], (6, 6))
+    at_an_end = drawn.random((6, 6)) < 0.08
+    return np.where(at_an_end, drawn.choice([0.0, 1e300, 1.7e308], (6, 6)), matrix).tolist()
 
 
 HOSTILE: dict[str, tuple[Any, Any]] = {
@@ -66,6 +75,23 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
             "zeros_rad_s": [[-3.0, 34.0], [-3.0, -34.0]],
             "derivative_filter": {"value": 1.7e308, "unit": "seconds"},
         },
+    ),
+    "a state space that overflows once its pole at the origin is split off": (
+        {
+            "kind": "state_space",
+            "a": numbers_of_every_size(),
+            "b": [1.0] * 6,
+            "c": [1.0] * 6,
+        },
+        PI,
+    ),
+    "points so near that their differences overflow": (
+        POINTS
+        | {
+            "frequencies_rad_s": [1e-320, 2e-320, 1.0],
+            "response": [[1e9, 0.0], [-1e9, -1.0], [0.1, -1.0]],
+        },
+        PI,
     ),
     "a range of a plant that is a mere gain": (
         {
