@@ -60,8 +60,7 @@ def sign_in(database: Database, name: str, password: str, source: str) -> Starte
         for subject in subjects:
             throttles.check(session, subject, database.now())
         # counted first: attempts sent at once would otherwise all be looked at before one is counted
-        for subject in subjects:
-            throttles.count(session, subject, database.now())
+        _, of_source = [throttles.count(session, subject, database.now()) for subject in subjects]
     with database.reading() as session:
         # these columns alone: an account's roles would cost two statements more than no account does
         columns = select(Account.id, Account.name, Account.password_hash, Account.closed_at)
@@ -74,7 +73,7 @@ def sign_in(database: Database, name: str, password: str, source: str) -> Starte
             _leave_trace(session, account.name if account else None, database.now())
         else:
             throttles.forget(session, subjects[0])
-            throttles.take_back(session, subjects[1])
+            throttles.take_back(session, of_source)
             return _start(session, account.id, database.now())
     raise NotAuthenticated("name or password is wrong")
 
