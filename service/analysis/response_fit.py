@@ -91,7 +91,7 @@ def _fit(plant: FrequencyResponse) -> ZerosPolesGain | None:
 
 
 def _carried(omega: Reals, smooth: Complexes) -> bool:
-    """Whether every divided difference of the points is a float64: LAPACK may never end on one that is inf."""
+    """Whether every divided difference of the points is a float64: LAPACK may not end on an inf."""
     nearest = min(float(np.diff(omega).min()), float(omega[0]))
     return bool(np.isfinite(4.0 * np.abs(smooth) / nearest).all())
 

@@ -76,8 +76,12 @@ def second_opinion(
 
     Values that the library cannot give are None; a loop on which it fails altogether is `not_available`.
     """
-    approximation = _approximation(parts, scan)
-    if scan is not None and (unfit := _unfit_at_scans(parts, scan)) is not None:
+    try:
+        approximation = _approximation(parts, scan)
+        unfit = None if scan is None else _unfit_at_scans(parts, scan)
+    except ArithmeticError:
+        approximation, unfit = None, "the scan interval leaves the range of float64"
+    if unfit is not None:
         return _opinion(approximation, {}, "not_available", unfit)
     try:
         values = (

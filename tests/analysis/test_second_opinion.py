@@ -246,3 +246,10 @@ def test_a_dead_time_of_very_many_scans_is_not_available() -> None:
     opinion = scanned(2.0, 40.0, interval_s=0.1)
     assert opinion.outcome == "not_available"
     assert "too many scans" in opinion.note
+
+
+def test_a_scan_that_leaves_float64_is_not_available_and_raises_nothing() -> None:
+    plant = FirstOrder(kind="first_order", gain=1.0, time_constant_s=1e-4)
+    opinion = second_opinion(proportional_loop(plant), Scan(interval_s=1.7e308), anything(), 2.0)
+    assert (opinion.outcome, opinion.approximation) == ("not_available", None)
+    assert "leaves the range of float64" in opinion.note
