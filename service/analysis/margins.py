@@ -38,6 +38,8 @@ from service.analysis.results import (
 ROTATION_STEP_RAD = 0.2
 """How far e^(−jωθ) may turn between two points where peaks are looked for."""
 
+STEPS_OF_A_DIVIDED = 8
+
 MAX_PEAK_POINTS = 40_000
 """Work bound: more points than this and a peak is not computed."""
 
@@ -345,6 +347,8 @@ class PeakSearch:
             parts = self._parts(steps)
             narrow = np.flatnonzero(parts <= PARTS_AT_MOST)
             if not narrow.size:
+                if work + STEPS_OF_A_DIVIDED * len(parts) > MAX_PEAK_POINTS:
+                    raise WorkBoundError("too many points to look for a peak")
                 steps = self._divided(steps)
                 bounds, work = steps.bounds(quantity), work + len(bounds)
             else:
@@ -371,8 +375,8 @@ class PeakSearch:
         return np.maximum(np.ceil(turned / ROTATION_STEP_RAD), 1.0)
 
     def _divided(self, steps: _Steps) -> _Steps:
-        """Each step in eight."""
-        share = np.linspace(0.0, 1.0, 9)
+        """Each step in `STEPS_OF_A_DIVIDED`."""
+        share = np.linspace(0.0, 1.0, STEPS_OF_A_DIVIDED + 1)
         omega = steps.left[:, None] + (steps.right - steps.left)[:, None] * share
         magnitude = np.exp(self._axis.loop.log_response(omega).real)
         return _Steps(
