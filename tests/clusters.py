@@ -40,7 +40,7 @@ def program(name: str) -> str:
     return str(max(found, key=_version)) if found else str(on_path)
 
 
-def _in_memory() -> Path | None:
+def in_memory() -> Path | None:
     """A file system in memory with room enough, on which a database is copied in a tenth of the time."""
     if not IN_MEMORY.is_dir() or shutil.disk_usage(IN_MEMORY).free < IN_MEMORY_BYTES_MIN:
         return None
@@ -62,7 +62,7 @@ class Cluster:
     _numbers: itertools.count[int] = field(default_factory=itertools.count, init=False)
 
     def __post_init__(self) -> None:
-        place = None if self.durable else _in_memory()
+        place = None if self.durable else in_memory()
         self.folder = Path(tempfile.mkdtemp(prefix="gain-signoff-", dir=place))
         if self._user is not None:
             shutil.chown(self.folder, self._user, self._user)

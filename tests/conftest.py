@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import tempfile
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -18,7 +19,7 @@ os.environ.setdefault(
 
 from hypothesis import settings  # noqa: E402  the variables above come first on purpose
 
-from tests.clusters import Cluster  # noqa: E402
+from tests.clusters import Cluster, in_memory  # noqa: E402
 from tests.databases import Databases, PostgresqlDatabases, SqliteFiles  # noqa: E402
 
 # No deadline for one example: the machine is shared, and a slow one is not a wrong one. The same examples in
@@ -29,7 +30,7 @@ settings.load_profile(os.environ.get("HYPOTHESIS_PROFILE", "house"))
 
 
 def pytest_addoption(parser: pytest.Parser) -> None:
-    parser.addoption("--walks", type=int, default=100, help="Walks through the life cycle (default 100).")
+    parser.addoption("--walks", type=int, default=2000, help="Walks through the life cycle.")
 
 
 @pytest.fixture(scope="session")
@@ -49,8 +50,13 @@ def own_cluster() -> Iterator[Cluster]:
 
 
 @pytest.fixture(scope="session", params=["sqlite", "postgresql"])
-def databases(request: pytest.FixtureRequest, tmp_path_factory: pytest.TempPathFactory) -> Databases:
-    """Where stores are made: every test that touches records runs on both kinds of database."""
+def databases(request: pytest.FixtureRequest) -> Iterator[Databases]:
+    """Where stores are made: every test that touches records runs on both kinds of database.
+
+    In memory where there is room: a test waits longer for a disk than it computes.
+    """
     if request.param == "postgresql":
-        return PostgresqlDatabases(request.getfixturevalue("cluster"))
-    return SqliteFiles(tmp_path_factory.mktemp("databases"))
+        yield PostgresqlDatabases(request.getfixturevalue("cluster"))
+    else:
+        with tempfile.TemporaryDirectory(prefix="gain-signoff-", dir=in_memory()) as folder:
+            yield SqliteFiles(Path(folder))

@@ -8,7 +8,8 @@ from dataclasses import dataclass
 from sqlalchemy.orm import Session
 
 from service.records import loops, states
-from service.records.content import SignedContent
+from service.records.content import SignedContent, SignedGainsInForce, SignedModel
+from service.records.views import LoopView
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -46,6 +47,18 @@ def present_basis(session: Session, loop_id: str) -> Basis:
         criteria=loops.read_loop(revision).criteria,
         models=frozenset(row.id for row in loops.models_in_force(session, loop_id)),
         gains_in_force=running.submission_id if running else None,
+    )
+
+
+def read_basis(
+    loop: LoopView, models: tuple[SignedModel, ...], gains_in_force: SignedGainsInForce | None
+) -> Basis:
+    """Return the same from what was read in this transaction already."""
+    return Basis(
+        loop_revision=loop.revision,
+        criteria=loop.loop.criteria,
+        models=frozenset(model.id for model in models),
+        gains_in_force=gains_in_force.submission_id if gains_in_force else None,
     )
 
 

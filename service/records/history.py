@@ -35,10 +35,11 @@ STORE_MADE = "store_made"
 """The kind of the first entry of every history."""
 
 # statements are made once: making one costs more than running it
-_HEAD = select(HistoryHead.size, HistoryHead.digest, HistoryHead.time, HistoryHead.right_edge)
+_HEAD_TABLE = Base.metadata.tables[HistoryHead.__tablename__]
+_HEAD = select(*(_HEAD_TABLE.columns[name] for name in ("size", "digest", "time", "right_edge")))
 _LOCKED_HEAD = _HEAD.with_for_update()
-_TURN = select(HistoryHead.size).with_for_update()
-_MOVE_HEAD = update(Base.metadata.tables[HistoryHead.__tablename__])
+_TURN = select(_HEAD_TABLE.columns["size"]).with_for_update()
+_MOVE_HEAD = update(_HEAD_TABLE)
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from datetime import datetime
+from functools import cache
 
-from sqlalchemy import ColumnElement, Select, and_, case, func, not_, or_, select, tuple_
-from sqlalchemy.orm import Session, aliased
+from sqlalchemy import ColumnElement, Select, and_, bindparam, case, func, not_, or_, select, tuple_
+from sqlalchemy.orm import Session, aliased, defer
 
 from service.analysis.results import Curves
 from service.documents.reading import read_kept
@@ -19,6 +20,7 @@ from service.records.history_queries import history as history
 from service.records.lifecycle import State
 from service.records.roles import Actor
 from service.records.tables.changes import SubmissionContent
+from service.records.tables.columns import UtcTime
 from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopRevision
 from service.records.tables.submissions import Submission, SubmissionRecomputation, SubmissionState
@@ -36,6 +38,8 @@ from service.records.views import (
 
 SEPARATOR = "\n"
 """Between the parts of a list's key; stands in no site or tag."""
+
+_Lines = Select[Submission, SubmissionState, Loop, LoopRevision, HistoryEvent, SubmissionContent, bool]
 
 _LATER = aliased(SubmissionState)
 _NEWER = aliased(SubmissionContent)
@@ -99,11 +103,11 @@ def submissions(
     limit: int = 50,
 ) -> Page[SubmissionSummary]:
     """Submissions, latest first."""
-    query = _lines(actor, now).where(*_submission_conditions(wanted, now))
+    query = _lines().where(visibility.in_sight(actor), *_submission_conditions(wanted))
     query = query.order_by(Submission.event_number.desc()).limit(limit + 1)
     if after is not None:
         query = query.where(Submission.event_number < int(after))
-    rows = session.execute(query).all()
+    rows = session.execute(query, {"now": now}).all()
     items = tuple(submission_views.line(now, *row) for row in rows[:limit])
     return Page(items=items, after=str(items[-1].entry.number) if len(rows) > limit else None)
 
@@ -114,12 +118,12 @@ def awaiting_review(
     """Submissions whose review is owed: those that run already first, then the oldest first."""
     wanted = SubmissionFilter(states=lifecycle.REVIEW_OWED)
     rank = case((Submission.kind.in_(sorted(lifecycle.IN_FORCE_FROM_THE_START)), 0), else_=1)
-    query = _lines(actor, now).where(*_submission_conditions(wanted, now))
+    query = _lines().where(visibility.in_sight(actor), *_submission_conditions(wanted))
     query = query.order_by(rank, Submission.event_number).limit(limit + 1)
     if after is not None:
         first, _, number = after.partition(SEPARATOR)
         query = query.where(tuple_(rank, Submission.event_number) > tuple_(int(first), int(number)))
-    rows = session.execute(query).all()
+    rows = session.execute(query, {"now": now}).all()
     items = tuple(submission_views.line(now, *row) for row in rows[:limit])
     more = len(rows) > limit
     return Page(items=items, after=_review_key(items[-1]) if more else None)
@@ -220,10 +224,9 @@ def _loop_conditions(wanted: LoopFilter) -> list[ColumnElement[bool]]:
     return conditions
 
 
-def _lines(
-    actor: Actor, now: datetime
-) -> Select[Submission, SubmissionState, Loop, LoopRevision, HistoryEvent, SubmissionContent, bool]:
-    """Select submissions in sight, each with all that a line of a list is made of."""
+@cache
+def _lines() -> _Lines:
+    """Select submissions as they read at the parameter `now`, with all that a line of a list is made of."""
     not_last = select(_LATER.submission_id).where(
         _LATER.submission_id == SubmissionState.submission_id, _LATER.ordinal > SubmissionState.ordinal
     )
@@ -239,7 +242,7 @@ def _lines(
             LoopRevision,
             HistoryEvent,
             SubmissionContent,
-            rechecks.is_due(_reads_as(now)),
+            rechecks.is_due(_reads_as()),
         )
         .join(SubmissionState, SubmissionState.submission_id == Submission.id)
         .join(Loop, Loop.id == Submission.loop_id)
@@ -253,28 +256,32 @@ def _lines(
             SubmissionContent,
             and_(SubmissionContent.submission_id == Submission.id, ~replaced.exists()),
         )
-        .where(~not_last.exists(), visibility.in_sight(actor))
+        .where(~not_last.exists())
+        # a line shows none of it, and a page of lists has fifty
+        .options(*map(defer, (Submission.content, SubmissionContent.content, HistoryEvent.canonical)))
     )
 
 
-def _submission_conditions(wanted: SubmissionFilter, now: datetime) -> list[ColumnElement[bool]]:
+def _submission_conditions(wanted: SubmissionFilter) -> list[ColumnElement[bool]]:
     conditions: list[ColumnElement[bool]] = []
     if wanted.states:
-        conditions.append(_reads_as(now).in_(sorted(wanted.states)))
+        conditions.append(_reads_as().in_(sorted(wanted.states)))
     if wanted.site is not None:
         conditions.append(Loop.site_key == loop_records.matching_key(wanted.site))
     if wanted.tag is not None:
         conditions.append(Loop.tag_key == loop_records.matching_key(wanted.tag))
     if wanted.recheck_due is not None:
-        due = rechecks.is_due(_reads_as(now))
+        due = rechecks.is_due(_reads_as())
         conditions.append(due if wanted.recheck_due else not_(due))
     if wanted.loop_id is not None:
         conditions.append(Loop.id == wanted.loop_id)
     return conditions
 
 
-def _reads_as(now: datetime) -> ColumnElement[str]:
-    """The state as it reads at `now`, by the clock rules of the life cycle."""
+@cache
+def _reads_as() -> ColumnElement[str]:
+    """The state as it reads at the parameter `now`, by the clock rules of the life cycle."""
+    now = bindparam("now", type_=UtcTime)
     rules = [
         (and_(SubmissionState.state == rule.stored, getattr(Submission, rule.limit) < now), rule.reads)
         for rule in lifecycle.CLOCK

@@ -27,7 +27,7 @@ from service.records import (
     recomputing,
     states,
 )
-from service.records.basis import Basis, present_basis
+from service.records.basis import Basis, present_basis, read_basis
 from service.records.content import (
     Person,
     SignedContent,
@@ -115,7 +115,7 @@ def prepare(session: Session, actor: Actor, request: SubmissionRequest, now: dat
         models=models,
         recomputed=recomputed,
         gains_in_force=in_force,
-        basis=present_basis(session, loop.id),
+        basis=read_basis(loop, models, in_force),
     )
 
 

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from sqlalchemy import ColumnElement, bindparam, select, true
+from functools import cache
+
+from sqlalchemy import ColumnElement, Select, bindparam, select, true
 from sqlalchemy.orm import Session
 
 from service.records import loops
@@ -18,10 +20,20 @@ _AUTHORS = select(SubmissionAuthor.account_id).where(
 
 def submission(session: Session, actor: Actor, submission_id: str) -> Submission:
     """Return a submission whose loop lies in the actor's areas now. Raises NotFound."""
-    row = session.get(Submission, submission_id)
-    if row is None or not actor.sees(loops.present(session, row.loop_id)[1].area):
+    found = session.execute(_with_area(), {"submission_id": submission_id}).one_or_none()
+    if found is None or not actor.sees(found[1]):
         raise NotFound("there is no such submission")
-    return row
+    return found[0]
+
+
+@cache
+def _with_area() -> Select[Submission, str]:
+    """Select a submission with the present area of its loop."""
+    return (
+        select(Submission, LoopRevision.area)
+        .join(LoopRevision, LoopRevision.loop_id == Submission.loop_id)
+        .where(Submission.id == bindparam("submission_id"), loops.is_present())
+    )
 
 
 def authors(session: Session, submission_id: str) -> frozenset[str]:
