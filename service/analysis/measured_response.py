@@ -61,6 +61,8 @@ def count_by_points(plant: FrequencyResponse, parts: ClosedLoopParts) -> Count:
     turned += math.remainder(float(angle[0]) - _angle_at_origin(parts), 2.0 * math.pi)
     turned -= cmath.phase(1.0 + complex(along[-1]))
     roots = plant.unstable_poles + 0.5 * max(parts.loop.order_at_origin, 0) - turned / math.pi
+    if not math.isfinite(roots):
+        return Count(None, reason="the loop's numbers leave the range of float64")
     if abs(roots - round(roots)) > WHOLE or round(roots) < 0:
         return Count(None, reason="the encirclements along the points do not add up to a whole number")
     return Count(round(roots))

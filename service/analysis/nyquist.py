@@ -52,6 +52,8 @@ def count_right_of_axis(axis: AxisResponse) -> Count:
     degree += loop.all_pass
     turned = _argument_change(axis, crossovers)
     roots = 0.5 * degree - turned / math.pi
+    if not math.isfinite(roots):
+        return Count(None, reason="the loop's numbers leave the range of float64")
     if abs(roots - round(roots)) > 1e-4 or round(roots) < 0:
         return Count(None, reason="the encirclements do not add up to a whole number")
     return Count(round(roots))

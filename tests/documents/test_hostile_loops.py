@@ -50,6 +50,15 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
         scanned(1.0) | {"integral": {"value": 1e17, "unit": "seconds"}},
     ),
     "a dead time with no phase in float64": (LAG | {"dead_time_s": 1e300}, PI),
+    "a dead time without a phase under integral action twice": (
+        {"kind": "integrating", "gain_per_s": -2.0, "lag_s": 0.0, "dead_time_s": 1.7e308},
+        {
+            "form": "parallel",
+            "action": "direct",
+            "proportional": {"value": 20.0, "unit": "gain"},
+            "integral": {"value": 5.0, "unit": "seconds"},
+        },
+    ),
     "a gain of 10^20 under long dead time": (LAG | {"gain": 1e20, "dead_time_s": 500.0}, PI),
     "a response at the end of float64": (
         POINTS | {"response": [[1.7e308, 0.0], [1.0, -1.0], [0.1, -1.0]]},
