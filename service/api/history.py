@@ -11,6 +11,7 @@ from flask import Blueprint, request
 from service.api import answers, history_csv
 from service.api.answers import Answer
 from service.api.operations import Call, reads
+from service.api.problems import INVALID_FIELDS
 from service.api.queries import Instant, NoQuery, PageQuery, Text
 from service.api.representations import Event, WholeEvent
 from service.context import services
@@ -88,14 +89,14 @@ def show_entry(call: Call, _query: NoQuery, number: int) -> Answer:
 
 
 @blueprint.get(f"/<int(max={2**53}):number>/inclusion")
-@reads(InclusionQuery, InclusionProof)
+@reads(InclusionQuery, InclusionProof, refuses=(INVALID_FIELDS,))
 def prove_inclusion(call: Call, query: InclusionQuery, number: int) -> Answer:
     """Prove that an entry is among those of a checkpoint (RFC 9162, section 2.1.3)."""
     return answers.document(proofs.inclusion(call.session, call.actor, number, query.size))
 
 
 @blueprint.get("/consistency")
-@reads(ConsistencyQuery, ConsistencyProof)
+@reads(ConsistencyQuery, ConsistencyProof, refuses=(INVALID_FIELDS,))
 def prove_consistency(call: Call, query: ConsistencyQuery) -> Answer:
     """Prove that an earlier checkpoint's entries begin a later one's (RFC 9162, section 2.1.4)."""
     return answers.document(proofs.consistency(call.session, query.first, query.second))

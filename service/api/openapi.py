@@ -222,6 +222,10 @@ def _problems(route: Route) -> Iterator[ProblemType]:
     yield problems.BAD_QUERY
     if "{" in route.path or isinstance(route.operation, Changing):
         yield problems.NOT_FOUND
+    if isinstance(route.operation, Reading):
+        yield from route.operation.refuses
+    if len(route.operation.media_types) > 1:
+        yield problems.NOT_ACCEPTABLE
     if isinstance(route.operation, Changing | Computing):
         yield from WITH_BODY
     if isinstance(route.operation, Changing):

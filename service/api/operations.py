@@ -20,6 +20,7 @@ from sqlalchemy.orm import Session
 from service.api import answers, bodies, idempotency, queries
 from service.api.answers import Answer
 from service.api.credentials import bearer_token
+from service.api.problems import ProblemType
 from service.api.queries import NoQuery
 from service.context import note_account, services
 from service.documents import reading
@@ -81,6 +82,8 @@ class Reading(Operation):
     """Answers from one transaction that cannot write."""
 
     query: type[Any] = NoQuery
+    refuses: tuple[ProblemType, ...] = ()
+    """What it answers with beside the refusals of every reading."""
 
     def __call__(self, **path: Any) -> Response:
         """Handle one request."""
@@ -160,10 +163,11 @@ def reads(
     *,
     a_list: bool = False,
     media_types: tuple[str, ...] = ("application/json",),
+    refuses: tuple[ProblemType, ...] = (),
 ) -> Callable[[Callable[Concatenate[Call, QueryT, ...], Answer]], Reading]:
     """Make a handler of `call, query` and the address's variables an operation that only reads."""
     return lambda handler: Reading(
-        handler=handler, query=query, answer=answer, a_list=a_list, media_types=media_types
+        handler=handler, query=query, answer=answer, a_list=a_list, media_types=media_types, refuses=refuses
     )
 
 

@@ -12,6 +12,7 @@ from service.api import answers
 from service.api.answers import Answer
 from service.api.operations import Call, Reader, Variables, changes, reads
 from service.api.preconditions import check_match, content_etag
+from service.api.problems import FORBIDDEN
 from service.api.queries import NoQuery, PageQuery, Text
 from service.documents import writing
 from service.documents.people import (
@@ -111,7 +112,7 @@ class PasswordChanged:
 
 
 @blueprint.get("/accounts")
-@reads(AccountsQuery, Account, a_list=True)
+@reads(AccountsQuery, Account, a_list=True, refuses=(FORBIDDEN,))
 def list_accounts(call: Call, query: AccountsQuery) -> Answer:
     """List accounts by name."""
     if query.unused == "true":
@@ -213,7 +214,7 @@ def change_password(call: Call, read: Reader[PasswordChangeRequest]) -> Answer:
 
 
 @blueprint.get("/tokens")
-@reads(TokensQuery, Token, a_list=True)
+@reads(TokensQuery, Token, a_list=True, refuses=(FORBIDDEN,))
 def list_tokens(call: Call, query: TokensQuery) -> Answer:
     """List the tokens of an account or of all, with their last use."""
     return answers.whole_list(tokens.tokens(call.session, call.actor, query.account), Token.of)

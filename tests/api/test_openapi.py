@@ -149,6 +149,24 @@ def test_a_problem_is_as_described(service: Service, description: Body) -> None:
     assert problems(description, schema, service.post("/v1/loops", {}).json) == []
 
 
+@pytest.mark.parametrize(
+    ("path", "person", "headers", "status"),
+    [
+        ("/v1/tokens", "submitter", {}, 403),
+        ("/v1/accounts", "reviewer", {}, 403),
+        ("/v1/history", "auditor", {"Accept": "image/png"}, 406),
+        ("/v1/history/1/inclusion?size=99", "auditor", {}, 422),
+        ("/v1/history/consistency?first=98&second=99", "auditor", {}, 422),
+    ],
+)
+def test_what_a_reading_refuses_is_described(
+    service: Service, description: Body, path: str, person: str, headers: dict[str, str], status: int
+) -> None:
+    assert service.get(path, person, headers=headers).status_code == status
+    template = path.partition("?")[0].replace("/1/", "/{number}/")
+    assert str(status) in description["paths"][template]["get"]["responses"]
+
+
 def test_the_page_of_the_api_shows_every_call_and_asks_nothing_off_the_machine(
     service: Service, description: Body
 ) -> None:
