@@ -13,7 +13,7 @@ from sqlalchemy.orm import Session
 
 from service.documents.errors import FieldProblem
 from service.records import accounts, history
-from service.records.errors import Conflict, FieldErrors, NotAllowed, NotAuthenticated, NotFound
+from service.records.errors import Conflict, FieldErrors, NotAuthenticated, NotFound
 from service.records.roles import Actor, require_role
 from service.records.tables.accounts import Account, Token
 from service.records.views import TokenView
@@ -109,13 +109,9 @@ def authenticate(session: Session, text: str, now: datetime) -> Authenticated:
 
 def note_use(session: Session, token_id: str, now: datetime) -> None:
     """Note that a token was used, outside the history; asked for at most once an hour."""
-    token = session.get(Token, token_id)
-    if token is None:
-        raise NotAllowed("there is no such token")
+    token = session.get_one(Token, token_id)
     token.last_used_at = now
-    account = session.get(Account, token.account_id)
-    if account is not None:
-        account.last_used_at = now
+    session.get_one(Account, token.account_id).last_used_at = now
     session.flush()
 
 

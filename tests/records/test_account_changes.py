@@ -14,6 +14,7 @@ from service.records.accounts import NewAccount
 from service.records.errors import (
     Conflict,
     FieldErrors,
+    NotAllowed,
     NotAuthenticated,
     NotFound,
     NotIndependent,
@@ -376,6 +377,15 @@ def test_what_is_issued_and_revoked_is_told_and_listed(store: Store) -> None:
         assert tokens.tokens(session, CONSOLE, "reviewer") == (revoked,)
         assert tokens.tokens(session, store.actor("reviewer"), "reviewer") == (revoked,)
         assert accounts.find(session, CONSOLE, "reviewer").last_used_at == used_at
+
+
+def test_tokens_of_all_are_listed_for_those_who_look_after_them(store: Store) -> None:
+    with store.database.reading() as session:
+        for person in ("auditor", "administrator"):
+            assert tokens.tokens(session, store.actor(person)) == ()
+        for name in (None, "auditor"):
+            with pytest.raises(NotAllowed):
+                tokens.tokens(session, store.actor("reviewer"), name)
 
 
 def test_tokens_come_by_account_and_time_of_issue(store: Store) -> None:

@@ -9,10 +9,11 @@ from typing import Any
 import pytest
 from sqlalchemy import Engine, event
 
-from service.records import accounts, passwords, sign_ins
+from service.records import accounts, history_queries, passwords, sign_ins
 from service.records.errors import NotAuthenticated
+from service.records.history_queries import HistoryFilter
 from service.records.roles import CONSOLE
-from tests.records.store import Store, password_of
+from tests.records.store import CHEAP, Store, password_of
 
 HERE = "192.0.2.1"
 """An address that stands for none (RFC 5737)."""
@@ -45,6 +46,74 @@ def test_a_refusal_sends_the_same_statements_whether_there_is_such_an_account_or
     assert known == unknown == closed
 
 
+def test_a_closed_account_is_refused_like_a_wrong_password_and_its_attempt_is_told(store: Store) -> None:
+    with store.database.writing() as session:
+        accounts.close(session, CONSOLE, "second", "left", store.clock())
+    with pytest.raises(NotAuthenticated, match="name or password is wrong"):
+        sign_ins.sign_in(store.database, "second", password_of("second"), HERE)
+    with store.database.reading() as session:
+        (refused,) = history_queries.history(session, CONSOLE, HistoryFilter(kind="sign_in_refused")).items
+    assert (refused.actor, refused.content) == ("nobody", {"account": "second"})
+
+
+def test_a_name_that_nobody_has_is_not_written_down(store: Store) -> None:
+    """It may be a password, typed into the wrong field."""
+    with pytest.raises(NotAuthenticated):
+        sign_ins.sign_in(store.database, "my own password!", "my own password!", HERE)
+    with store.database.reading() as session:
+        (refused,) = history_queries.history(session, CONSOLE, HistoryFilter(kind="sign_in_refused")).items
+    assert refused.content == {"account": None}
+    assert b"my own" not in refused.canonical
+
+
+def test_a_password_that_is_replaced_while_it_is_compared_signs_nobody_in(
+    store: Store, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    compare = passwords.verified
+
+    def meanwhile(*compared: Any) -> bool:
+        with store.database.writing() as session:
+            accounts.reset_password(session, CONSOLE, "reviewer", "fifteen letters", "stolen", store.clock())
+        return compare(*compared)
+
+    monkeypatch.setattr(passwords, "verified", meanwhile)
+    with pytest.raises(NotAuthenticated):
+        sign_ins.sign_in(store.database, "reviewer", password_of("reviewer"), HERE)
+    assert store.counts()["sign_in_sessions"] == 0
+
+
+def test_a_session_says_when_it_ends_and_when_its_use_is_noted_next(store: Store) -> None:
+    began = store.clock()
+    started = sign_ins.sign_in(store.database, "reviewer", password_of("reviewer"), HERE)
+    assert (started.ends_at - began, started.actor.name) == (sign_ins.ABSOLUTE_LIMIT, "reviewer")
+    for passed_s, due in ((59, False), (1, True)):
+        store.clock.forward(seconds=passed_s)
+        with store.database.reading() as session:
+            assert sign_ins.resume(session, started.secret, store.clock()).use_is_due is due
+    with store.database.reading() as session:
+        assert accounts.find(session, CONSOLE, "reviewer").last_used_at == began
+
+
+def test_a_session_holds_to_the_last_moment_of_its_limits(store: Store) -> None:
+    started = sign_ins.sign_in(store.database, "reviewer", password_of("reviewer"), HERE)
+    store.clock.now += sign_ins.IDLE_LIMIT
+    with store.database.writing() as session:
+        present = sign_ins.resume(session, started.secret, store.clock())
+        # used to the end, so that the absolute limit alone is left
+        sign_ins.note_use(session, present.id, started.ends_at)
+        assert sign_ins.resume(session, started.secret, started.ends_at).id == present.id
+
+
+def test_a_password_longer_than_any_is_wrong(store: Store) -> None:
+    """Four code points may compose to one character; more than four times as many make no password."""
+    long = "x" * (4 * passwords.CHARACTERS_MAX + 1)
+    with pytest.raises(NotAuthenticated):
+        sign_ins.sign_in(store.database, "reviewer", long, HERE)
+    # no such password can be set, so that a hash of it shows that its length alone refuses it
+    assert not passwords.verified(CHEAP, CHEAP.hash(long), long)
+    assert passwords.verified(CHEAP, CHEAP.hash(long[1:]), long[1:])
+
+
 def test_a_password_is_hashed_at_the_cost_that_the_standard_recommends() -> None:
     """RFC 9106, section 4, second recommended option: Argon2id, t = 3, p = 4, m = 2^16 KiB, a salt of 128
     bits, a tag of 256 bits (22 and 43 characters of base64).
@@ -73,6 +142,8 @@ def _row(session: Any) -> Any:
 
 def test_a_session_that_never_was_is_neither_used_nor_ended(store: Store) -> None:
     with store.database.writing() as session:
+        with pytest.raises(NotAuthenticated):
+            sign_ins.resume(session, "made up", store.clock())
         sign_ins.note_use(session, "0" * 64, store.clock())
         sign_ins.sign_out(session, "0" * 64, store.clock())
     assert store.counts()["sign_in_sessions"] == 0

@@ -1,0 +1,127 @@
+"""Bytes, rows and keys that fit their digests and are not what an entry has: named, never an exception."""
+
+from __future__ import annotations
+
+import json
+from typing import Any
+
+import pytest
+
+from service.verification.checkpoints import Checkpoint
+from service.verification.report import Fault
+from tests.verification.conftest import Owned
+from tests.verification.forging import leaf, rewrite_from, set_head
+from tests.verification.test_tampering import sqlite_alone
+
+NUMBER = 5
+
+
+def _fault(owned: Owned) -> Fault:
+    fault = owned.verify().fault
+    assert fault is not None
+    return fault
+
+
+def _write(owned: Owned, raw: object, digest: str) -> None:
+    change = "UPDATE history_events SET canonical = ?, digest = ? WHERE number = ?"
+    owned.execute((change, (raw, digest, NUMBER)))
+
+
+@pytest.mark.parametrize("raw", [b"", b"no json", b"\xff", b"[]", b"7", b"{}", b'{"number": 5, "rows": []}'])
+def test_bytes_that_are_no_entry(owned: Owned, raw: bytes) -> None:
+    _write(owned, raw, leaf(raw).hex())
+    fault = _fault(owned)
+    assert (fault.entry, fault.what) == (NUMBER, "the bytes are not an entry")
+    assert fault.sentence() == "entry 5: the bytes are not an entry"
+
+
+@sqlite_alone
+def test_a_number_in_the_place_of_the_bytes(owned: Owned) -> None:
+    _write(owned, 7, "0" * 64)
+    assert (_fault(owned).entry, "does not hold bytes" in _fault(owned).what) == (NUMBER, True)
+
+
+@sqlite_alone
+def test_a_text_that_is_no_time_in_the_place_of_one(owned: Owned) -> None:
+    owned.execute(("UPDATE history_events SET time = 'yesterday' WHERE number = ?", (NUMBER,)))
+    assert (_fault(owned).entry, "time" in _fault(owned).what) == (NUMBER, True)
+
+
+@pytest.mark.parametrize("rows", [[{}], [7], [None]])
+def test_an_entry_whose_rows_are_none(owned: Owned, rows: list[object]) -> None:
+    """Everything else fits: the entry's digest, the chain after it and the head."""
+    number = owned.value("SELECT number FROM history_events WHERE kind = 'loop_registered' ORDER BY number")
+
+    def forge(entry: dict[str, Any], _root: str, _origin: str) -> None:
+        if entry["number"] == number:
+            entry["rows"]["loops"] = rows
+
+    rewrite_from(owned, number, forge)
+    fault = _fault(owned)
+    assert (fault.entry, fault.table) == (number, "loops")
+    assert fault.sentence().startswith(f"entry {number}; table loops: ")
+
+
+@pytest.mark.parametrize("content", [None, [], "a key"])
+def test_an_entry_of_a_key_that_tells_of_none(owned: Owned, content: object) -> None:
+    def forge(entry: dict[str, Any], _root: str, _origin: str) -> None:
+        if entry["number"] == NUMBER:
+            entry |= {"kind": "signing_key_taken_up", "content": content}
+
+    _forge_kind(owned, "signing_key_taken_up", forge)
+    assert (_fault(owned).entry, _fault(owned).what) == (NUMBER, "it tells of no key")
+
+
+def test_an_entry_of_a_later_kind_about_keys_is_an_entry_like_any_other(owned: Owned) -> None:
+    """A store that a later version wrote can be verified by this one as far as the digests go."""
+
+    def forge(entry: dict[str, Any], _root: str, _origin: str) -> None:
+        if entry["number"] == NUMBER:
+            entry["kind"] = "signing_key_looked_at"
+
+    _forge_kind(owned, "signing_key_looked_at", forge)
+    assert owned.verify().holds
+
+
+def _forge_kind(owned: Owned, kind: str, forge: Any) -> None:
+    rewrite_from(owned, NUMBER, forge)
+    owned.execute(("UPDATE history_events SET kind = ? WHERE number = ?", (kind, NUMBER)))
+    set_head(owned)
+
+
+@pytest.mark.parametrize(
+    "document",
+    [
+        None,
+        [],
+        7,
+        {"size": 3},
+        {"digest": "0" * 64},
+        {"size": "3", "digest": "0" * 64},
+        {"size": True, "digest": "0" * 64},
+        {"size": -1, "digest": "0" * 64},
+        {"size": 3.0, "digest": "0" * 64},
+        {"size": 3, "digest": 7},
+        {"size": 3, "digest": "0" * 64, "head": 7},
+        {"size": 3, "digest": "0" * 64, "origin": []},
+        {"size": 3, "digest": "0" * 64, "public_key": {}},
+    ],
+)
+def test_a_file_that_is_no_checkpoint_is_said_to_be_none(document: object) -> None:
+    with pytest.raises(ValueError, match="this is no checkpoint"):
+        Checkpoint.read(json.dumps(document).encode())
+
+
+def test_a_checkpoint_of_no_entries_is_one() -> None:
+    assert Checkpoint.read(json.dumps({"size": 0, "digest": "0" * 64}).encode()).size == 0
+
+
+@pytest.mark.parametrize("value", [1.5, True, [], {}])
+def test_a_signed_checkpoint_holds_texts_whole_numbers_and_null_alone(owned: Owned, value: object) -> None:
+    """Of anything else there would be more than one way to write it, and so to sign it."""
+    held = owned.checkpoint()
+    document = {"size": held.size, "digest": held.root, "more": value, "public_key": "A" * 43 + "="}
+    raw = json.dumps(document | {"signature": "A" * 86 + "=="}).encode()
+    fault = owned.verify(Checkpoint.read(raw)).fault
+    assert fault is not None
+    assert fault.sentence() == "the store: the checkpoint's signature is not one that its key made of it"
