@@ -7,6 +7,7 @@ from flask import Blueprint
 from service.api import answers, representations
 from service.api.answers import Answer
 from service.api.operations import Call, Reader, Variables, changes
+from service.context import services
 from service.documents.decisions import DecisionRequest
 from service.issuing import sheets
 from service.records import decisions
@@ -24,6 +25,6 @@ def _leave_trace(call: Call, refusal: SigningRefused | NotIndependent, path: Var
 def decide(call: Call, read: Reader[DecisionRequest], submission_id: str) -> Answer:
     """Sign a decision on exactly the content that was reviewed, with one's own password."""
     decisions.check_may_decide(call.session, call.actor, submission_id)
-    made = sheets.sign(call.session, call.actor, submission_id, read(), call.now)
+    made = sheets.sign(call.session, call.actor, submission_id, read(), call.now, services().signing_key)
     shown = representations.Decision.of(made)
     return answers.document(shown, status=201, location=f"/v1/submissions/{submission_id}")

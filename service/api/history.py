@@ -16,11 +16,11 @@ from service.api.queries import Instant, NoQuery, PageQuery, Text
 from service.api.representations import Event, WholeEvent
 from service.context import services
 from service.issuing import checkpoints
-from service.issuing.checkpoints import Checkpoint
 from service.records import history_queries as queries
 from service.records import proofs
 from service.records.history_queries import HistoryFilter
 from service.records.proofs import ConsistencyProof, InclusionProof
+from service.records.views import Checkpoint
 
 blueprint = Blueprint("history", __name__, url_prefix="/v1/history")
 

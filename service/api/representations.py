@@ -35,6 +35,7 @@ from service.records.lifecycle import Action, Kind, State
 from service.records.views import (
     ChangeDecisionView,
     ChangeView,
+    Checkpoint,
     Comparison,
     DecisionView,
     Effect,
@@ -205,11 +206,13 @@ class Decision(DecisionContent):
     """One signature, with the entry of the history that it stands in."""
 
     entry: EntryReference
+    checkpoint: Checkpoint | None
+    """Of the history up to that entry, made with the decision; null where none was kept with it."""
 
     @classmethod
     def of(cls, view: DecisionView) -> Decision:
         """Represent a decision."""
-        return cls(**_fields_of(view.decision), entry=view.entry)
+        return cls(**_fields_of(view.decision), entry=view.entry, checkpoint=view.checkpoint)
 
 
 @dataclass(frozen=True, kw_only=True)

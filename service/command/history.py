@@ -91,6 +91,8 @@ def _tell(report: Report) -> None:
         click.echo(f"Last digest  {report.head}")
         click.echo(f"Merkle root  {report.root}")
         click.echo(_compared(report.checkpoint_size))
+    for sentence in report.signatures:
+        click.echo(f"Signatures: {sentence}.")
     click.echo(f"Covered: {', '.join(report.covered)}.")
     if report.not_covered:
         click.echo(f"Not covered: {', '.join(report.not_covered)}.")

@@ -7,8 +7,7 @@ this service made it; it covers the canonical JSON (RFC 8785) of the other field
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from datetime import datetime
+from dataclasses import fields, replace
 from pathlib import Path
 
 from cryptography.exceptions import UnsupportedAlgorithm
@@ -21,6 +20,7 @@ from service.documents.canonical import canonical_bytes
 from service.issuing import signing_keys
 from service.issuing.base64_text import base64_text, public_text
 from service.records import history
+from service.records.views import Checkpoint
 
 SigningKey = Ed25519PrivateKey
 
@@ -29,48 +29,28 @@ class UnusableKey(ValueError):
     """A signing key file that cannot be read as one, said in a sentence."""
 
 
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Unsigned:
-    """What a checkpoint says."""
-
-    origin: str
-    """Digest of the first entry: it names the store, and no two stores share it."""
-    size: int
-    """Entries that are covered."""
-    digest: str
-    """Root of the Merkle tree over them."""
-    head: str
-    """Digest of the last of them."""
-    time: datetime | None
-    """Time of the last of them."""
-    public_key: str | None
-    """Raw Ed25519 key in base64, to be compared with one that is held elsewhere; null where none is set."""
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class Checkpoint(Unsigned):
-    """A checkpoint as it is given out."""
-
-    signature: str | None
-    """Ed25519 in base64; null where no signing key is set."""
-
-
 def checkpoint(session: Session, key: SigningKey | None) -> Checkpoint:
     """Return the checkpoint of the history as it stands; unsigned where `key` is not its present key."""
     if key is not None and signing_keys.present(session) not in (None, public_text(key)):
         # the key was changed while this process runs with the old one, whose word is no longer taken
         key = None
     head = history.head(session)
-    unsigned = Unsigned(
+    unsigned = Checkpoint(
         origin=history.origin(session),
         size=head.size,
         digest=head.root,
         head=head.digest,
         time=head.time,
         public_key=public_text(key) if key else None,
+        signature=None,
     )
-    signature = base64_text(key.sign(canonical_bytes(writing.plain(unsigned)))) if key else None
-    return Checkpoint(**{name: getattr(unsigned, name) for name in Unsigned.__slots__}, signature=signature)
+    return replace(unsigned, signature=base64_text(key.sign(_signed(unsigned)))) if key else unsigned
+
+
+def _signed(checkpoint: Checkpoint) -> bytes:
+    """Return what the signature covers: all but itself."""
+    parts = (each.name for each in fields(checkpoint) if each.name != "signature")
+    return canonical_bytes(writing.plain({name: getattr(checkpoint, name) for name in parts}))
 
 
 def read_key(file: Path) -> SigningKey:

@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from datetime import datetime
 
 from sqlalchemy.orm import Session
 
 from service.documents.decisions import DecisionRequest
+from service.issuing import checkpoints
+from service.issuing.checkpoints import SigningKey
 from service.records import decisions, history, kept_sheets, queries
 from service.records.roles import Actor
 from service.records.views import DecisionView, SubmissionView
@@ -26,15 +29,26 @@ def content(session: Session, actor: Actor, view: SubmissionView) -> SheetConten
 
 
 def sign(
-    session: Session, actor: Actor, submission_id: str, request: DecisionRequest, now: datetime
+    session: Session,
+    actor: Actor,
+    submission_id: str,
+    request: DecisionRequest,
+    now: datetime,
+    signing_key: SigningKey | None,
 ) -> DecisionView:
-    """Sign a decision, and keep the sheet as it was made at it, in the same transaction.
+    """Sign a decision, and keep with it a checkpoint and the sheet as it was made, in the same transaction.
 
-    Raises what `service.records.decisions.decide` raises.
+    The checkpoint covers the decision's own entry; without a key it is unsigned and says so. Raises what
+    `service.records.decisions.decide` raises.
     """
-    made = decisions.decide(session, actor, submission_id, request, now)
-    pdf = sheet(session, actor, submission_id, now)
-    kept_sheets.keep(session, actor, made.decision.decision_id, pdf, RENDERER_VERSION, now)
+    decided = decisions.decide(session, actor, submission_id, request, now)
+    checkpoint = checkpoints.checkpoint(session, signing_key)
+    made = replace(decided, checkpoint=checkpoint)
+    view = queries.submission(session, actor, submission_id, now)
+    # read back it has none yet: the entry that keeps both is the next one
+    view = replace(view, decisions=(*view.decisions[:-1], made))
+    pdf = sheet_pdf(content(session, actor, view))
+    kept_sheets.keep(session, actor, made.decision.decision_id, pdf, RENDERER_VERSION, checkpoint, now)
     return made
 
 

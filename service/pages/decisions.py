@@ -11,6 +11,7 @@ from flask import Blueprint, Response, redirect, request, url_for
 from werkzeug.exceptions import NotFound as NoSuchPage
 from werkzeug.wrappers import Response as AnyResponse
 
+from service.context import services
 from service.documents import limits, reading, writing
 from service.documents.decisions import DecisionRequest, Deviation, Digest
 from service.documents.errors import FieldProblem, InvalidDocument
@@ -111,14 +112,15 @@ def signed(submission_id: str, decision_id: str) -> Response:
     made = next((each for each in view.decisions if each.decision.decision_id == decision_id), None)
     if made is None:
         raise NoSuchPage
-    return page("signed.html", view=view, made=made, entry=made.entry)
+    return page("signed.html", view=view, made=made, entry=made.entry, checkpoint=made.checkpoint)
 
 
 def _sign(submission_id: str, request_: DecisionRequest) -> str:
     """Sign, and return the decision's identifier; a refused signature leaves its trace after the rollback."""
     try:
         with visits.writing() as visit:
-            made = sheets.sign(visit.session, visit.actor, submission_id, request_, visit.now)
+            key = services().signing_key
+            made = sheets.sign(visit.session, visit.actor, submission_id, request_, visit.now, key)
             return made.decision.decision_id
     except (SigningRefused, NotIndependent) as refusal:
         with visits.writing() as visit:

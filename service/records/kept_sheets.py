@@ -1,9 +1,11 @@
-"""The sheets of the panel, kept as the bytes that were made at a decision."""
+"""What was made at a decision and is kept with it: the sheet, as its bytes, and the history's checkpoint."""
 
 from __future__ import annotations
 
+from dataclasses import fields
 from datetime import datetime
 from hashlib import sha256
+from typing import Any
 
 from sqlalchemy import select
 from sqlalchemy.orm import Session
@@ -11,23 +13,31 @@ from sqlalchemy.orm import Session
 from service.records import history, loops, visibility
 from service.records.errors import NotFound
 from service.records.roles import Actor
-from service.records.tables.submissions import Decision, Sheet
-from service.records.views import EntryReference
+from service.records.tables.submissions import Decision, KeptCheckpoint, Sheet
+from service.records.views import Checkpoint, EntryReference
 
 
 def keep(
-    session: Session, actor: Actor, decision_id: str, pdf: bytes, renderer: str, now: datetime
+    session: Session,
+    actor: Actor,
+    decision_id: str,
+    pdf: bytes,
+    renderer: str,
+    checkpoint: Checkpoint,
+    now: datetime,
 ) -> EntryReference:
-    """Keep the sheet made at a decision, in the decision's own transaction.
+    """Keep the sheet and the checkpoint made at a decision, in the decision's own transaction.
 
-    It has an entry of its own in the history, since it shows the digest of the decision's. Raises NotFound.
+    They have an entry of their own in the history, since both hold the digest of the decision's. Raises
+    NotFound.
     """
     decision = session.get(Decision, decision_id)
     if decision is None:
         raise NotFound("there is no such decision")
     submission = visibility.submission(session, actor, decision.submission_id)
     digest = sha256(pdf).hexdigest()
-    row = Sheet(
+    kept = KeptCheckpoint(decision_id=decision_id, **_parts(checkpoint))
+    sheet = Sheet(
         decision_id=decision_id,
         submission_id=submission.id,
         renderer=renderer,
@@ -44,10 +54,20 @@ def keep(
             "decision_id": decision_id,
             "renderer": renderer,
             "sheet_digest": digest,
+            "checkpoint": checkpoint,
         },
         now=now,
-        rows=(row,),
+        rows=(kept, sheet),
     )
+
+
+def read_checkpoint(row: KeptCheckpoint | None) -> Checkpoint | None:
+    """Return a checkpoint as it was made; None where none was kept with the decision."""
+    return None if row is None else Checkpoint(**_parts(row))
+
+
+def _parts(told: Checkpoint | KeptCheckpoint) -> dict[str, Any]:
+    return {each.name: getattr(told, each.name) for each in fields(Checkpoint)}
 
 
 def latest(session: Session, actor: Actor, submission_id: str) -> bytes:

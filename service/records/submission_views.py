@@ -14,6 +14,7 @@ from service.records import (
     approvability,
     basis,
     comparison,
+    kept_sheets,
     lifecycle,
     loops,
     present_content,
@@ -33,7 +34,13 @@ from service.records.roles import Actor
 from service.records.tables.changes import SubmissionContent
 from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopRevision
-from service.records.tables.submissions import Decision, Installation, Submission, SubmissionState
+from service.records.tables.submissions import (
+    Decision,
+    Installation,
+    KeptCheckpoint,
+    Submission,
+    SubmissionState,
+)
 from service.records.views import (
     Comparison,
     DecisionView,
@@ -167,10 +174,19 @@ def _open_actions(
 
 
 def _decisions(session: Session, submission_id: str) -> tuple[DecisionView, ...]:
-    query = select(Decision).where(Decision.submission_id == submission_id).order_by(Decision.ordinal)
+    query = (
+        select(Decision, KeptCheckpoint)
+        .outerjoin(KeptCheckpoint, KeptCheckpoint.decision_id == Decision.id)
+        .where(Decision.submission_id == submission_id)
+        .order_by(Decision.ordinal)
+    )
     return tuple(
-        DecisionView(decision=read_decision(row.content), entry=_entry(session, row.event_number))
-        for row in session.execute(query).scalars()
+        DecisionView(
+            decision=read_decision(row.content),
+            entry=_entry(session, row.event_number),
+            checkpoint=kept_sheets.read_checkpoint(kept),
+        )
+        for row, kept in session.execute(query)
     )
 
 

@@ -125,11 +125,33 @@ class ChangeView:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
+class Checkpoint:
+    """The state of the whole history, as it was at one entry."""
+
+    origin: str
+    """Digest of the first entry: it names the store, and no two stores share it."""
+    size: int
+    """Entries that are covered."""
+    digest: str
+    """Root of the Merkle tree over them."""
+    head: str
+    """Digest of the last of them."""
+    time: datetime | None
+    """Time of the last of them."""
+    public_key: str | None
+    """Raw Ed25519 key in base64, to be compared with one that is held elsewhere; null where none is set."""
+    signature: str | None
+    """Ed25519 in base64, over the other parts; null where no signing key is set."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
 class DecisionView:
     """One signature."""
 
     decision: DecisionContent
     entry: EntryReference
+    checkpoint: Checkpoint | None = None
+    """Made with the decision, `entry` the last that it covers; None where none was kept."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)

@@ -18,7 +18,7 @@ from service.judgement.wording import criterion_sentence
 from service.records.content import DecisionContent, SignedContent, SignedModel, SignedRecomputation
 from service.records.lifecycle import REVIEW_OWED
 from service.records.views import CurvesView, EntryReference, SubmissionView
-from service.sheets import plants
+from service.sheets import checkpoints, plants
 from service.sheets.assessments import Assessment, assessment
 from service.sheets.cautions import Cautions, cautions
 from service.sheets.controllers import Told
@@ -26,7 +26,7 @@ from service.sheets.gain_tables import GainTable, gain_tables, set_before
 from service.sheets.signatures import Signature, installation, named, signature, utc
 from service.sheets.states import STATES, StateWords
 
-RENDERER_VERSION = "1"
+RENDERER_VERSION = "2"
 """Of all that decides how a sheet looks: raised with each change by which the bytes of a sheet change."""
 
 KINDS = {
@@ -78,6 +78,10 @@ class SheetContent:
     digests: tuple[Told, ...]
     code: str
     """What the QR code says: the digests of the record."""
+    checkpoint: tuple[str, ...]
+    """What the checkpoint of the latest signature covers, or why there is none; in sentences."""
+    checkpoint_code: str
+    """That checkpoint as the file that the verification takes, for a QR code of its own; empty: none."""
 
 
 def content_of(
@@ -133,6 +137,8 @@ def content_of(
         version=tuple(_version(view)),
         digests=tuple(_digests(view)),
         code=_code(view),
+        checkpoint=tuple(checkpoints.about(view.decisions)),
+        checkpoint_code=checkpoints.code(view.decisions),
     )
 
 

@@ -9,6 +9,8 @@ import json
 from typing import Any
 
 from service.verification.checkpoints import Checkpoint
+from service.verification.kept import TABLE as KEPT
+from service.verification.kept import KeptCheckpoints, State
 from service.verification.keys import Keys
 from service.verification.report import Broken
 from service.verification.tree import Tree, leaf_hash
@@ -25,9 +27,11 @@ class Chain:
         self.time = ""
         self.tree = Tree()
         self.keys = Keys()
+        self.kept = KeptCheckpoints()
         self._origin = ""
         self._checkpoint = checkpoint
         self._held_key = held_key
+        self._is_whole = False
         self._notes: list[str] = []
 
     @property
@@ -47,6 +51,9 @@ class Chain:
             raise Broken(f"it is missing; entry {entry.get('number')} stands in its place", entry=number)
         if entry.get("previous") != self.head:
             raise Broken("it does not follow on the entry before it: the chain is broken", entry=number)
+        keeps = KEPT in entry["rows"]
+        before, key = (self._state(), self.keys.at(self.entries)) if keeps else (None, None)
+        self.kept.add(entry, number, before, key)
         self._note_time(number, str(entry.get("time")))
         self._origin = self._origin or hexadecimal
         if str(entry.get("kind")).startswith("signing_key"):
@@ -63,6 +70,46 @@ class Chain:
             self._check_against(self._checkpoint)
         if self._held_key is not None:
             self.keys.check_held(self._held_key)
+        self._is_whole = True
+
+    @property
+    def signatures(self) -> tuple[str, ...]:
+        """In sentences: which signatures were checked, by which keys, and what none of them covers."""
+        of_the_end = (self._of_checkpoint(), self._of_held_key(), self._cover()) if self._is_whole else ()
+        return (*self.keys.sentences(), self.kept.sentence(), *of_the_end)
+
+    def _of_checkpoint(self) -> str:
+        given = self._checkpoint
+        if given is None:
+            return "No checkpoint was given"
+        if not given.is_signed:
+            return "The checkpoint that was given has no signature"
+        return f"The signature of the checkpoint that was given holds, by the key {given.public_key}"
+
+    def _of_held_key(self) -> str:
+        if self._held_key is not None:
+            return f"The key that was given, {self._held_key}, is the history's; all later ones follow on it"
+        if self.keys.at(self.entries) is None:
+            return "The history knows no key"
+        return "No key was given: that the history's keys are the service's own was not checked"
+
+    def _cover(self) -> str:
+        given = self._checkpoint
+        signed = max(self.kept.covered, given.size if given is not None and given.is_signed else 0)
+        if signed == 0:
+            return "No signed checkpoint covers any entry"
+        told = f"The last signed checkpoint covers entries 1 to {signed}"
+        later = self.entries - signed
+        return f"{told}, none the {later} after them" if later else f"{told}, which is all of them"
+
+    def _state(self) -> State:
+        return State(
+            origin=self._origin,
+            size=self.entries,
+            digest=self.tree.root.hex(),
+            head=self.head,
+            time=self.time,
+        )
 
     def _note_time(self, number: int, time: str) -> None:
         if time < self.time:

@@ -55,6 +55,7 @@ class _Reading:
             checkpoint_size=checkpoint.size if checkpoint else None,
             covered=("history_events", *sorted(self._tables)),
             not_covered=(),
+            signatures=chain.signatures,
             notes=(*chain.notes, *((WITHOUT_ROWS,) if self._without_rows else ())),
         )
 

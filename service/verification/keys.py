@@ -7,6 +7,7 @@ did not confirm (it was lost) is no fault, and said.
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from typing import Any
 
 from service.verification import signatures
@@ -61,6 +62,17 @@ class Keys:
             )
         elif not signatures.holds(present, signature, signed):
             raise Broken("the key before did not sign it", entry=number)
+
+    def sentences(self) -> Iterator[str]:
+        """Say of each key how it came in, and who signed that."""
+        for place, (number, key) in enumerate(self._since):
+            told = f"Entry {number} takes up the key {key}, which signed it"
+            if place == 0:
+                yield told
+            elif key in self._unconfirmed:
+                yield f"{told}; the key before it did not"
+            else:
+                yield f"{told}, as did the key before it"
 
     def at(self, size: int) -> str | None:
         """Return the key in force after so many entries; None where the history knows none."""

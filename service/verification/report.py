@@ -54,6 +54,8 @@ class Report:
     """Tables whose content nothing vouches for."""
     notes: tuple[str, ...]
     """What is no fault and worth knowing."""
+    signatures: tuple[str, ...]
+    """Sentences: which signatures were checked, by which keys, and which entries none of them covers."""
 
     @property
     def holds(self) -> bool:

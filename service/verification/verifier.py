@@ -75,6 +75,7 @@ class _Reading:
             covered=(store.EVENTS, store.HEAD, *(table.name for table in self.covered)),
             not_covered=self.not_covered,
             notes=self.chain.notes,
+            signatures=self.chain.signatures,
         )
 
     def verify(self, connection: Connection, open_streams: ExitStack, progress: Progress | None) -> None:

@@ -7,6 +7,7 @@ from datetime import timedelta
 
 import pytest
 
+from service.issuing import checkpoints
 from service.records import kept_sheets, queries
 from service.records.errors import Conflict, NotFound
 from service.records.lifecycle import State
@@ -230,11 +231,13 @@ def test_the_sheet_kept_at_a_decision_is_found_again(store: Store, loop: LoopVie
             signed.decision.decision_id,
             b"%PDF-1.7",
             "renderer 1",
+            made := checkpoints.checkpoint(session, None),
             store.clock(),
         )
     with store.database.reading() as session:
         assert kept_sheets.latest(session, store.actor("auditor"), submission.id) == b"%PDF-1.7"
     assert store.events()[-1] == "sheet_kept"
+    assert [decision.checkpoint for decision in store.read(submission).decisions] == [made]
 
 
 def test_without_a_decision_there_is_no_kept_sheet(store: Store, loop: LoopView) -> None:

@@ -16,7 +16,7 @@ from sqlalchemy.orm import Session
 
 from service.documents.changes import LoopChangeRequest
 from service.documents.decisions import DecisionRequest
-from service.issuing import sheets, signing_keys
+from service.issuing import checkpoints, sheets, signing_keys
 from service.records import (
     accounts,
     changes,
@@ -103,7 +103,9 @@ def _keep_sheet(store: Store) -> Change:
     store.add_model(store.register())
     signed, actor = store.approve(store.submit()), store.actor("reviewer")
     decision_id = signed.decision.decision_id
-    return lambda session: kept_sheets.keep(session, actor, decision_id, b"%PDF", "1", store.clock())
+    return lambda session: kept_sheets.keep(
+        session, actor, decision_id, b"%PDF", "1", checkpoints.checkpoint(session, None), store.clock()
+    )
 
 
 def _leave_trace(store: Store) -> Change:
@@ -174,7 +176,11 @@ def _sign_with_its_sheet(store: Store) -> Step:
         content_digest=submission.content_digest,
         password=password_of("reviewer"),
     )
-    return _written(store, lambda session: sheets.sign(session, actor, submission.id, request, store.clock()))
+    key = Ed25519PrivateKey.generate()
+    signing_keys.take_up(store.database, key)
+    return _written(
+        store, lambda session: sheets.sign(session, actor, submission.id, request, store.clock(), key)
+    )
 
 
 def _reject_change(store: Store) -> Step:

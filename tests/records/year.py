@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from service.issuing import checkpoints
 from service.records import kept_sheets
 from tests.records.store import WIDER, Store, gains
 
@@ -16,7 +17,10 @@ def live(store: Store) -> None:
     signed = store.approve(first)
     with store.database.writing() as session:
         reviewer = store.actor("reviewer")
-        kept_sheets.keep(session, reviewer, signed.decision.decision_id, b"%PDF", "1", store.clock())
+        checkpoint = checkpoints.checkpoint(session, None)
+        kept_sheets.keep(
+            session, reviewer, signed.decision.decision_id, b"%PDF", "1", checkpoint, store.clock()
+        )
     store.clock.forward(hours=1)
     store.install(first)
     other = store.register(tag="LIC-7", area="Tank farm")

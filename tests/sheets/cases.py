@@ -22,6 +22,7 @@ from service.judgement.claims import Claims
 from service.records.content import Difference
 from service.sheets.content import SheetContent, content_of
 from tests.sheets.records_to_print import (
+    CHECKPOINT,
     DEVIATION,
     EARLIER,
     LAG,
@@ -65,7 +66,9 @@ def in_force() -> SheetContent:
     difference = Difference(
         setting="integral", unit="gain_per_second", recorded=0.02, found=0.019, hinders=True
     )
-    view = replace(installed(decided(view), differences=(difference,)), approvals_needed=2, overdue=True)
+    unsigned = replace(CHECKPOINT, public_key=None, signature=None)
+    signed = decided(view, checkpoint=unsigned)
+    view = replace(installed(signed, differences=(difference,)), approvals_needed=2, overdue=True)
     return content_of(replace(view, review_due_at=NOON), curves, curves_in_force=before)
 
 
@@ -117,7 +120,7 @@ def two_zeros() -> SheetContent:
         derivative_filter=FilterTime(value=2.0, unit="seconds", displayed="2.000"),
     )
     view, curves, before = submission(controller=controller)
-    return content_of(decided(view), curves, curves_in_force=before)
+    return content_of(decided(view, checkpoint=None), curves, curves_in_force=before)
 
 
 def gain_sets() -> SheetContent:

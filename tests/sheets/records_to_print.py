@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import base64
 from dataclasses import replace
 from datetime import UTC, datetime, timedelta
 
@@ -37,6 +38,7 @@ from service.records.content import (
 )
 from service.records.lifecycle import State
 from service.records.views import (
+    Checkpoint,
     CurvesView,
     DecisionView,
     EntryReference,
@@ -206,7 +208,24 @@ def submission(
     return view, tuple(curves for _, curves in pairs), tuple(before)
 
 
-def decided(view: SubmissionView, decision: str = "approve", **further: object) -> SubmissionView:
+CHECKPOINT = Checkpoint(
+    origin="0e" * 32,
+    size=421,
+    digest="5d" * 32,
+    head="b7" * 32,
+    time=NOON + timedelta(hours=1),
+    public_key=base64.b64encode(b"\xff" * 32).decode(),
+    signature=base64.b64encode(b"\xfe" * 64).decode(),
+)
+"""As long as a true one; the sheet tells it and does not judge it."""
+
+
+def decided(
+    view: SubmissionView,
+    decision: str = "approve",
+    checkpoint: Checkpoint | None = CHECKPOINT,
+    **further: object,
+) -> SubmissionView:
     """The view with a signature by the reviewer, an hour later."""
     signed = DecisionContent(
         decision_id="01JQ8",
@@ -220,7 +239,8 @@ def decided(view: SubmissionView, decision: str = "approve", **further: object) 
         signed_at=NOON + timedelta(hours=1),
     )
     entry = EntryReference(number=421, digest="b7" * 32, time=NOON + timedelta(hours=1))
-    view = replace(view, decisions=(DecisionView(decision=replace(signed, **further), entry=entry),))
+    made = DecisionView(decision=replace(signed, **further), entry=entry, checkpoint=checkpoint)
+    view = replace(view, decisions=(made,))
     return replace(view, state="approved" if decision == "approve" else "rejected")
 
 

@@ -63,11 +63,12 @@ def running_text(printed: Printed) -> str:
 
 
 def said(content: SheetContent) -> Iterator[str]:
-    """Every text of the content but the one that stands in the code, and those that are drawn in charts."""
+    """Every text of the content but those that stand in the codes, and those that are drawn in charts."""
     drawn = {
         text for each in content.assessments for response in each.responses for text in strings_in(response)
     }
-    yield from (text for text in strings_in(content) if text != content.code and text not in drawn)
+    in_codes = (content.code, content.checkpoint_code)
+    yield from (text for text in strings_in(content) if text not in in_codes and text not in drawn)
 
 
 def test_every_field_of_the_content_is_on_the_paper(printed: Printed) -> None:

@@ -62,3 +62,27 @@ def rewrite_from(owned: Owned, first: int, forge: Forge) -> None:
     free += f" WHERE number >= {first}"
     owned.execute(free, *changes)
     set_head(owned)
+
+
+def rewrite_with_checkpoints_from(
+    owned: Owned, first: int, forge: Forge, remake: Callable[[dict[str, Any]], None] = lambda _row: None
+) -> None:
+    """Rewrite as above, and make each kept checkpoint fit as far as that takes no key.
+
+    `remake` does what the forger can about a signature that does not fit any more.
+    """
+    rewritten: dict[int, dict[str, Any]] = {}
+
+    def forge_all(entry: dict[str, Any], root: str, origin: str) -> None:
+        forge(entry, root, origin)
+        for row in entry["rows"].get("checkpoints", ()):
+            row |= {"origin": origin, "digest": root, "head": entry["previous"]}
+            if row["signature"] is not None:
+                remake(row)
+            rewritten[entry["number"]] = row
+
+    rewrite_from(owned, first, forge_all)
+    names = ("origin", "digest", "head", "public_key", "signature")
+    change = f"UPDATE checkpoints SET {', '.join(f'{name} = ?' for name in names)} WHERE event_number = ?"  # noqa: S608
+    for number, row in rewritten.items():
+        owned.execute((change, (*(row[name] for name in names), number)))

@@ -49,6 +49,12 @@ Identifier = String(32)
 DigestText = String(64)
 """SHA-256 as 64 lower-case hex digits."""
 
+KeyText = String(44)
+"""A raw Ed25519 public key in base64."""
+
+SignatureText = String(88)
+"""An Ed25519 signature in base64."""
+
 Number = BigInteger().with_variant(Integer, "sqlite")
 """A count. SQLite's INTEGER has 64 bits, and only by that name is it the row's own number."""
 

@@ -1,0 +1,98 @@
+"""The checkpoints that were kept with decisions: each is the history's own state right after its decision.
+
+A decision's entry is followed by the entry that keeps its checkpoint. What stands in that entry is held here
+against the entries before it; that the row in the table says the same is held against the entry elsewhere.
+"""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from service.verification import signatures
+from service.verification.report import Broken
+
+TABLE = "checkpoints"
+DECISIONS = "decisions"
+SIGNED = ("origin", "size", "digest", "head", "time", "public_key")
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class State:
+    """The history before an entry, as the entries themselves make it."""
+
+    origin: str
+    size: int
+    digest: str
+    head: str
+    time: str
+
+
+class KeptCheckpoints:
+    """The checkpoints of a history as far as it has been read. Every method raises Broken with the place."""
+
+    def __init__(self) -> None:
+        self.covered = 0
+        """How many entries the last signed one covers."""
+        self._signed: Counter[str] = Counter()
+        self._unsigned = 0
+        self._decisions = 0
+        self._decided: frozenset[str] = frozenset()
+
+    def add(self, entry: Mapping[str, Any], number: int, before: State | None, known_key: str | None) -> None:
+        """Take in one entry.
+
+        `before` is the history before it and `known_key` the key that signs there, as the history tells; both
+        are needed only where the entry keeps a checkpoint.
+        """
+        if before is not None:
+            for row in _rows(entry, TABLE, number):
+                self._check(row, before, known_key)
+        decided = _rows(entry, DECISIONS, number)
+        self._decided = frozenset(str(row.get("id")) for row in decided)
+        self._decisions += len(decided)
+
+    def sentence(self) -> str:
+        """Say what was found, in words."""
+        if not self._decisions:
+            return "There is no decision, and so no checkpoint that was kept with one"
+        kept = [f"{count} whose signatures by the key {key} hold" for key, count in self._signed.items()]
+        kept += [f"{self._unsigned} without a signature"] if self._unsigned else []
+        missing = self._decisions - self._unsigned - self._signed.total()
+        kept += [f"none with {missing} of the decisions"] if missing else []
+        return f"Checkpoints kept with the {self._decisions} decisions: {'; '.join(kept)}"
+
+    def _check(self, row: Mapping[str, Any], before: State, known_key: str | None) -> None:
+        fault = self._fault(row, before, known_key)
+        if fault:
+            name = f"decision_id {row.get('decision_id')}"
+            raise Broken(fault, entry=before.size + 1, table=TABLE, row=name)
+        if row.get("signature") is None:
+            self._unsigned += 1
+        else:
+            self._signed[row["public_key"]] += 1
+            self.covered = before.size
+
+    def _fault(self, row: Mapping[str, Any], before: State, known_key: str | None) -> str | None:
+        if str(row.get("decision_id")) not in self._decided:
+            return "the checkpoint was not made with the decision of the entry before it"
+        for name in State.__slots__:
+            if row.get(name) != getattr(before, name):
+                return f"the checkpoint's {name} is not that of the history at its place"
+        key, signature = row.get("public_key"), row.get("signature")
+        if signature is None:
+            return None if key is None else "the checkpoint names a key that did not sign it"
+        if not signatures.holds(key, signature, {name: row.get(name) for name in SIGNED}):
+            return "the checkpoint's signature is not one that its key made of it"
+        if key != known_key:
+            return "the checkpoint is signed with another key than the history tells of at that place"
+        return None
+
+
+def _rows(entry: Mapping[str, Any], table: str, number: int) -> list[dict[str, Any]]:
+    found = entry["rows"].get(table, [])
+    if not isinstance(found, list) or not all(isinstance(row, dict) for row in found):
+        raise Broken("what the entry recorded are no rows", entry=number, table=table)
+    return found

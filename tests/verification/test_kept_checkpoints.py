@@ -1,0 +1,249 @@
+"""The checkpoints that are kept with decisions, in a store whose owner knows the design and has no key."""
+
+from __future__ import annotations
+
+import base64
+import json
+from collections.abc import Callable, Iterator
+from typing import Any
+
+import pytest
+from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
+
+from service.documents import writing
+from service.documents.canonical import canonical_bytes
+from service.issuing import checkpoints, signing_keys
+from service.issuing.base64_text import public_text
+from service.records import full_export, kept_sheets, migrating
+from service.records.roles import CONSOLE
+from service.records.views import SubmissionView
+from service.verification.checkpoints import Checkpoint
+from service.verification.export import verify_export
+from service.verification.report import Report
+from service.verification.verifier import verify
+from tests.databases import Databases
+from tests.records.store import START, Store, gains
+from tests.verification.conftest import Owned
+from tests.verification.forging import rewrite_from, rewrite_with_checkpoints_from
+
+FIRST, SECOND, STRANGE = (Ed25519PrivateKey.generate() for _ in range(3))
+
+Row = dict[str, Any]
+
+
+def sign(store: Store, decision: str, submission: SubmissionView, key: Ed25519PrivateKey | None) -> None:
+    """Decide, and keep a checkpoint with the decision."""
+    made = store.decide(submission, decision)
+    with store.database.writing() as session:
+        checkpoint = checkpoints.checkpoint(session, key)
+        reviewer, decision_id = store.actor("reviewer"), made.decision.decision_id
+        kept_sheets.keep(session, reviewer, decision_id, b"%PDF", "1", checkpoint, store.clock())
+
+
+@pytest.fixture(scope="module")
+def lived_in(databases: Databases) -> Iterator[str]:
+    """One decision from before checkpoints were kept, one before there was a key, two by each of two keys."""
+    url = databases.new()
+    migrating.migrate(url, now=START, demonstration=True)
+    store = Store(url)
+    store.add_people()
+    store.add_model(store.register())
+    store.decide(store.submit(), "reject")
+    sign(store, "reject", store.submit(), None)
+    signing_keys.take_up(store.database, FIRST)
+    sign(store, "approve", store.submit(), FIRST)
+    sign(store, "reject", store.submit(controller=gains(1.2)), FIRST)
+    with store.database.writing() as session:
+        signing_keys.change(session, CONSOLE, previous=FIRST, new=SECOND, reason="yearly", now=store.clock())
+    sign(store, "reject", store.submit(controller=gains(1.3)), SECOND)
+    sign(store, "reject", store.submit(controller=gains(1.1)), SECOND)
+    store.register(tag="LIC-7")
+    store.database.close()
+    yield url
+    databases.drop(url)
+
+
+@pytest.fixture
+def owned(lived_in: str, databases: Databases) -> Iterator[Owned]:
+    owned = Owned(databases.copy_of(lived_in))
+    yield owned
+    databases.drop(owned.url)
+
+
+def kept_in(owned: Owned) -> list[int]:
+    """The entries that keep a checkpoint."""
+    return [number for (number,) in owned.rows("SELECT event_number FROM checkpoints ORDER BY event_number")]
+
+
+def place(report: Report) -> tuple[int | None, str | None]:
+    assert report.fault is not None
+    return report.fault.entry, report.fault.table
+
+
+def test_the_report_says_which_signatures_were_checked_and_what_they_leave_open(owned: Owned) -> None:
+    report = owned.verify()
+    assert report.holds
+    first, second = public_text(FIRST), public_text(SECOND)
+    covered = kept_in(owned)[-1] - 1
+    later = report.entries - covered
+    assert report.signatures == (
+        f"Entry {kept_in(owned)[0] + 1} takes up the key {first}, which signed it",
+        f"Entry {kept_in(owned)[2] + 1} takes up the key {second}, which signed it, as did the key before it",
+        f"Checkpoints kept with the 6 decisions: 2 whose signatures by the key {first} hold;"
+        f" 2 whose signatures by the key {second} hold; 1 without a signature; none with 1 of the decisions",
+        "No checkpoint was given",
+        "No key was given: that the history's keys are the service's own was not checked",
+        f"The last signed checkpoint covers entries 1 to {covered}, none the {later} after them",
+    )
+
+
+def test_a_given_checkpoint_and_a_given_key_are_told(owned: Owned) -> None:
+    store = Store(owned.url)
+    with store.database.reading() as session:
+        raw = writing.to_bytes(checkpoints.checkpoint(session, SECOND))
+    store.database.close()
+    report = verify(owned.url, checkpoint=Checkpoint.read(raw), held_key=public_text(FIRST))
+    assert report.signatures[-3:] == (
+        f"The signature of the checkpoint that was given holds, by the key {public_text(SECOND)}",
+        f"The key that was given, {public_text(FIRST)}, is the history's; all later ones follow on it",
+        f"The last signed checkpoint covers entries 1 to {report.entries}, which is all of them",
+    )
+
+
+def test_an_export_is_held_to_the_same(owned: Owned) -> None:
+    store = Store(owned.url)
+    with store.database.reading() as session:
+        lines = [writing.to_bytes(entry) for entry in full_export.entries(session)]
+    store.database.close()
+    report = verify_export(lines)
+    assert report.holds
+    assert report.signatures == owned.verify().signatures
+
+
+def test_every_kept_checkpoint_is_one_that_an_auditor_can_be_handed(owned: Owned) -> None:
+    """Read out of the history's own text, years later, it is a file for the verification."""
+    for number in kept_in(owned):
+        raw = owned.value("SELECT canonical FROM history_events WHERE number = ?", number)
+        document = json.loads(raw)["content"]["checkpoint"]
+        assert verify(owned.url, checkpoint=Checkpoint.read(json.dumps(document).encode())).holds
+
+
+OTHER: dict[str, object] = {
+    "decision_id": "0" * 32,
+    "origin": "0" * 64,
+    "size": 3,
+    "digest": "0" * 64,
+    "head": "0" * 64,
+    "time": "2026-03-02T06:00:01Z",
+    "public_key": public_text(STRANGE),
+    "signature": base64.b64encode(bytes(64)).decode(),
+}
+
+
+@pytest.mark.parametrize("name", OTHER)
+def test_a_part_that_was_changed_in_the_row_alone_is_named(owned: Owned, name: str) -> None:
+    change = f"UPDATE checkpoints SET {name} = ? WHERE event_number = ?"  # noqa: S608
+    owned.execute((change, (OTHER[name], kept_in(owned)[1])))
+    assert place(owned.verify()) == (kept_in(owned)[1], "checkpoints")
+
+
+@pytest.mark.parametrize("name", OTHER)
+def test_a_part_that_was_changed_is_named_though_every_later_digest_was_made_to_fit(
+    owned: Owned, name: str
+) -> None:
+    forged_at = kept_in(owned)[1]
+
+    def forge(entry: dict[str, Any], _root: str, _origin: str) -> None:
+        if entry["number"] == forged_at:
+            entry["rows"]["checkpoints"][0][name] = OTHER[name]
+
+    rewrite_from(owned, forged_at, forge)
+    owned.execute((f"UPDATE checkpoints SET {name} = ? WHERE event_number = ?", (OTHER[name], forged_at)))  # noqa: S608
+    assert place(owned.verify()) == (forged_at, "checkpoints")
+
+
+def _last_years_reason(entry: dict[str, Any], _root: str, _origin: str) -> None:
+    if entry["kind"] == "loop_registered":
+        entry["content"]["remark"] = "forged"
+
+
+def test_a_rewritten_history_does_not_fit_the_checkpoints_kept_in_it(owned: Owned) -> None:
+    registered = owned.value("SELECT min(number) FROM history_events WHERE kind = 'loop_registered'")
+    rewrite_from(owned, registered, _last_years_reason)
+    assert place(owned.verify()) == (kept_in(owned)[0], "checkpoints")
+
+
+Remake = Callable[[Row], None]
+
+
+def _leave_the_signature(_row: Row) -> None:
+    """The owner has none that would fit."""
+
+
+def _sign_with_another_key(row: Row) -> None:
+    signed = {name: value for name, value in row.items() if name not in ("decision_id", "signature")}
+    signed["public_key"] = row["public_key"] = public_text(STRANGE)
+    row["signature"] = base64.b64encode(STRANGE.sign(canonical_bytes(signed))).decode()
+
+
+def _take_the_signature_off(row: Row) -> None:
+    row["public_key"] = row["signature"] = None
+
+
+def _rewrite(owned: Owned, remake: Remake) -> None:
+    """Rewrite everything after the change of keys."""
+    changed = owned.value("SELECT number FROM history_events WHERE kind = ?", signing_keys.CHANGED)
+
+    def forge(entry: dict[str, Any], _root: str, _origin: str) -> None:
+        if entry["number"] == changed + 1:
+            entry["content"]["remark"] = "forged"
+
+    rewrite_with_checkpoints_from(owned, changed + 1, forge, remake)
+
+
+@pytest.mark.parametrize("remake", [_leave_the_signature, _sign_with_another_key])
+def test_nor_can_they_be_made_anew_without_the_key(owned: Owned, remake: Remake) -> None:
+    _rewrite(owned, remake)
+    report = owned.verify()
+    assert place(report) == (kept_in(owned)[3], "checkpoints")
+    assert report.fault is not None
+    assert "key" in report.fault.what
+
+
+def test_without_their_signatures_they_fit_and_the_report_says_what_is_covered(owned: Owned) -> None:
+    """What the owner of a database can do: only the count, and a checkpoint held elsewhere, show it."""
+    held = owned.checkpoint()
+    before = owned.verify()
+    _rewrite(owned, _take_the_signature_off)
+    after = owned.verify()
+    assert after.holds
+    assert "; 3 without a signature;" in after.signatures[2]
+    assert f"covers entries 1 to {kept_in(owned)[2] - 1}, none the" in after.signatures[-1]
+    assert before.signatures != after.signatures
+    assert not owned.verify(held).holds
+
+
+def test_with_a_key_that_nobody_took_up_the_report_says_that_there_is_none(
+    databases: Databases,
+) -> None:
+    url = databases.new()
+    migrating.migrate(url, now=START)
+    assert verify(url).signatures == (
+        "There is no decision, and so no checkpoint that was kept with one",
+        "No checkpoint was given",
+        "The history knows no key",
+        "No signed checkpoint covers any entry",
+    )
+    databases.drop(url)
+
+
+@pytest.mark.parametrize("forged", [7, [7], [{}], [{"decision_id": []}], None])
+def test_what_is_no_row_is_a_fault_and_no_crash(owned: Owned, forged: object) -> None:
+    number = kept_in(owned)[0]
+
+    def forge(entry: dict[str, Any], _root: str, _origin: str) -> None:
+        if entry["number"] == number:
+            entry["rows"]["checkpoints"] = forged
+
+    rewrite_from(owned, number, forge)
+    assert place(owned.verify()) == (number, "checkpoints")
