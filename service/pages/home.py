@@ -6,7 +6,7 @@ from flask import Blueprint, Response
 
 from service.pages import visits
 from service.pages.frame import page
-from service.records import change_queries, queries
+from service.records import change_queries, queries, resets
 from service.records.change_queries import ChangeFilter
 from service.records.queries import SubmissionFilter
 
@@ -31,6 +31,7 @@ def home() -> Response:
         past = queries.submissions(session, actor, PAST_THEIR_TIME, now, limit=SHOWN)
         due = queries.submissions(session, actor, DUE_FOR_RECHECK, now, limit=SHOWN)
         proposed = change_queries.changes(session, actor, TO_CONFIRM, limit=SHOWN)
+        reset = resets.awaiting(session, actor) if "administrator" in actor.roles else ()
     return page(
         "home.html",
         actor=actor,
@@ -39,4 +40,5 @@ def home() -> Response:
         past=past,
         due=due,
         proposed=proposed,
+        reset=reset,
     )

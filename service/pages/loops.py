@@ -51,6 +51,7 @@ class LoopPage:
     limits: tuple[str, ...]
     """Empty: the service's own floors hold."""
     changes: Page[ChangeView]
+    may_change: bool
     submissions: Page[SubmissionSummary]
 
 
@@ -94,6 +95,7 @@ def _loop_page(visit: Visit, loop_id: str) -> LoopPage:
         gain_sets=_gain_sets(in_force),
         limits=_limits(view),
         changes=change_queries.changes(session, actor, ChangeFilter(loop_id=loop_id)),
+        may_change=records.may_change(actor),
         submissions=queries.submissions(session, actor, wanted, now, limit=SUBMISSIONS_SHOWN),
     )
 

@@ -12,9 +12,11 @@ from service.pages import (
     home,
     installations,
     loop_changes,
+    loop_proposals,
     loops,
     paper,
     password,
+    resets,
     sign_in,
     submission_list,
     submissions,
@@ -30,6 +32,7 @@ SUBJECTS = (
     home,
     loops,
     loop_changes,
+    loop_proposals,
     submission_list,
     submissions,
     decisions,
@@ -37,6 +40,7 @@ SUBJECTS = (
     paper,
     history,
     password,
+    resets,
 )
 
 

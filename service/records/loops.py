@@ -24,10 +24,13 @@ from service.documents.writing import plain
 from service.records import history, protection
 from service.records.errors import AlreadyExists, FieldErrors, NotFound, SecondPersonNeeded, StaleContent
 from service.records.history import About
-from service.records.roles import Actor, require_area, require_role
+from service.records.roles import Actor, Role, require_area, require_role
 from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopModel, LoopRevision
 from service.records.views import EntryReference, LoopView, ModelView
+
+CHANGERS: tuple[Role, ...] = ("submitter", "administrator")
+"""Who registers and changes loops and adds models."""
 
 # statements are made once: making one costs more than running it
 _LATER = aliased(LoopRevision)
@@ -44,7 +47,12 @@ def matching_key(text: str) -> str:
 
 def check_may_change(actor: Actor) -> None:
     """Raise NotAllowed unless the actor may register and change loops and add models."""
-    require_role(actor, "submitter", "administrator")
+    require_role(actor, *CHANGERS)
+
+
+def may_change(actor: Actor) -> bool:
+    """Say whether the actor may."""
+    return not actor.roles.isdisjoint(CHANGERS)
 
 
 def register(session: Session, actor: Actor, document: LoopRegistration, now: datetime) -> LoopView:

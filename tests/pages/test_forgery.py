@@ -6,7 +6,17 @@ from flask import Flask
 from tests.pages.conftest import Person, SignedIn
 from tests.pages.invented import Kept, password_of
 
-FORMS = ["sign_out", "confirm", "sign", "installation", "sign_change", "password"]
+FORMS = [
+    "sign_out",
+    "confirm",
+    "sign",
+    "installation",
+    "sign_change",
+    "propose_change",
+    "propose_retirement",
+    "password",
+    "reset",
+]
 
 
 def routes(app: Flask) -> dict[str, tuple[str, set[str]]]:
