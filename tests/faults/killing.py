@@ -28,7 +28,7 @@ import time
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Any
+from typing import IO, Any
 from urllib.parse import urlsplit
 
 from service.records import migrating
@@ -82,6 +82,7 @@ class Service:
     url: str
     process: subprocess.Popen[str] | None = None
     port: int = 0
+    log: int | IO[str] = subprocess.DEVNULL
 
     def start(self) -> None:
         settings = {"GAIN_SIGNOFF_DATABASE_URL": self.url, "GAIN_SIGNOFF_SECRET_KEY": SECRET_KEY}
@@ -90,7 +91,7 @@ class Service:
             env=os.environ | settings | {"PYTHONUNBUFFERED": "1"},
             cwd=Path(__file__).parents[2],
             stdout=subprocess.PIPE,
-            stderr=subprocess.DEVNULL,
+            stderr=self.log,
             text=True,
         )
         assert self.process.stdout is not None
