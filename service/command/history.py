@@ -17,7 +17,7 @@ from service.settings import Settings
 from service.verification import verifier
 from service.verification.checkpoints import Checkpoint
 from service.verification.export import verify_export
-from service.verification.report import Report
+from service.verification.report import Report, printable
 
 EXISTING = click.Path(exists=True, dir_okay=False, path_type=Path)
 PROGRESS_EVERY_S = 2.0
@@ -93,9 +93,13 @@ def _tell(report: Report) -> None:
         click.echo(_compared(report.checkpoint_size))
     for sentence in report.signatures:
         click.echo(f"Signatures: {sentence}.")
-    click.echo(f"Covered: {', '.join(report.covered)}.")
+    click.echo(f"Covered: {_names(report.covered)}.")
     if report.not_covered:
-        click.echo(f"Not covered: {', '.join(report.not_covered)}.")
+        click.echo(f"Not covered: {_names(report.not_covered)}.")
+
+
+def _names(tables: tuple[str, ...]) -> str:
+    return ", ".join(map(printable, tables))
 
 
 def _compared(size: int | None) -> str:

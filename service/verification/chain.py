@@ -53,7 +53,7 @@ class Chain:
             raise Broken("it does not follow on the entry before it: the chain is broken", entry=number)
         keeps = KEPT in entry["rows"]
         before, key = (self._state(), self.keys.at(self.entries)) if keeps else (None, None)
-        self.kept.add(entry, number, before, key)
+        self.kept.add(entry, before, key)
         self._note_time(number, str(entry.get("time")))
         self._origin = self._origin or hexadecimal
         if str(entry.get("kind")).startswith("signing_key"):
@@ -152,4 +152,7 @@ def _parsed(raw: bytes, number: int) -> dict[str, Any]:
         entry = None
     if not isinstance(entry, dict) or not isinstance(entry.get("rows"), dict):
         raise Broken("the bytes are not an entry", entry=number)
+    for table, rows in entry["rows"].items():
+        if not isinstance(rows, list) or not all(isinstance(row, dict) for row in rows):
+            raise Broken("what the entry recorded are no rows", entry=number, table=table)
     return entry

@@ -61,7 +61,7 @@ class _Reading:
 
     def add(self, line: bytes) -> None:
         document = self._document(line)
-        entry = self.chain.add(document["canonical"].encode(), document["digest"])
+        entry = self.chain.add(document["canonical"], document["digest"])
         rows = document.get("rows")
         if rows is None:
             self._without_rows = True
@@ -79,16 +79,20 @@ class _Reading:
             and isinstance(document.get("digest"), str)
             and isinstance(document.get("rows"), dict | None)
         )
-        if not is_entry:
+        raw = _bytes(document["canonical"]) if is_entry else None
+        if raw is None:
             raise Broken("the line is no entry of an export", entry=self.chain.entries + 1)
-        whole: dict[str, Any] = document
+        whole: dict[str, Any] = document | {"canonical": raw}
         return whole
 
     def _check_rows(self, exported: dict[str, Any], recorded: dict[str, Any]) -> None:
         number = self.chain.entries
         for table in sorted({*exported, *recorded}):
             waiting = sorted(_text(row) for row in recorded.get(table, []))
-            found = sorted(_text(_as_recorded(row, number, table)) for row in exported.get(table, []))
+            rows = exported.get(table, [])
+            if not isinstance(rows, list):
+                raise Broken("what the export holds are no rows", entry=number, table=table)
+            found = sorted(_text(_as_recorded(row, number, table)) for row in rows)
             strange = [row for row in found if row not in waiting]
             if strange:
                 what = "a row is not what the entry recorded"
@@ -97,6 +101,13 @@ class _Reading:
                 raise Broken("the rows are not as many as the entry recorded", entry=number, table=table)
             self._tables.add(table)
             self.rows += len(found)
+
+
+def _bytes(canonical: str) -> bytes | None:
+    try:
+        return canonical.encode()
+    except UnicodeEncodeError:
+        return None
 
 
 def _as_recorded(row: object, number: int, table: str) -> dict[str, object]:

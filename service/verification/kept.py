@@ -41,16 +41,16 @@ class KeptCheckpoints:
         self._decisions = 0
         self._decided: frozenset[str] = frozenset()
 
-    def add(self, entry: Mapping[str, Any], number: int, before: State | None, known_key: str | None) -> None:
+    def add(self, entry: Mapping[str, Any], before: State | None, known_key: str | None) -> None:
         """Take in one entry.
 
         `before` is the history before it and `known_key` the key that signs there, as the history tells; both
         are needed only where the entry keeps a checkpoint.
         """
         if before is not None:
-            for row in _rows(entry, TABLE, number):
+            for row in entry["rows"].get(TABLE, []):
                 self._check(row, before, known_key)
-        decided = _rows(entry, DECISIONS, number)
+        decided = entry["rows"].get(DECISIONS, [])
         self._decided = frozenset(str(row.get("id")) for row in decided)
         self._decisions += len(decided)
 
@@ -89,10 +89,3 @@ class KeptCheckpoints:
         if key != known_key:
             return "the checkpoint is signed with another key than the history tells of at that place"
         return None
-
-
-def _rows(entry: Mapping[str, Any], table: str, number: int) -> list[dict[str, Any]]:
-    found = entry["rows"].get(table, [])
-    if not isinstance(found, list) or not all(isinstance(row, dict) for row in found):
-        raise Broken("what the entry recorded are no rows", entry=number, table=table)
-    return found

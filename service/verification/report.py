@@ -21,7 +21,18 @@ class Fault:
         place = [f"entry {self.entry}"] if self.entry is not None else []
         if self.table is not None:
             place.append(f"table {self.table}" + (f", row {self.row}" if self.row is not None else ""))
-        return f"{'; '.join(place) or 'the store'}: {self.what}"
+        return printable(f"{'; '.join(place) or 'the store'}: {self.what}")
+
+
+def printable(text: str) -> str:
+    """Return a text of the store with whatever does not show, or moves a terminal's cursor, as an escape.
+
+    Whoever tampered with a store could otherwise write over what is said of it.
+    """
+    return "".join(
+        character if character.isprintable() else character.encode("unicode_escape").decode()
+        for character in text
+    )
 
 
 class Broken(Exception):

@@ -50,8 +50,9 @@ def verify(
     except Broken as broken:
         fault = broken.fault
     except (DBAPIError, SQLAlchemyError) as error:
-        cause = error.orig if isinstance(error, DBAPIError) else error
-        fault = Fault(entry=None, table=None, row=None, what=f"the store cannot be read: {cause}")
+        cause = str(error.orig if isinstance(error, DBAPIError) else error)
+        in_one_line = " ".join(cause.split())
+        fault = Fault(entry=None, table=None, row=None, what=f"the store cannot be read: {in_one_line}")
     return reading.report(fault, checkpoint)
 
 
@@ -201,7 +202,7 @@ class _Rows:
     def _waiting(self, number: int, recorded: list[dict[str, Any]]) -> dict[str, dict[str, Any]]:
         try:
             return {self._table.row_name(row): row for row in recorded}
-        except (KeyError, TypeError):
+        except KeyError:
             raise Broken(
                 "what the entry recorded are no rows", entry=number, table=self._table.name
             ) from None

@@ -10,7 +10,7 @@ import pytest
 from service.verification.checkpoints import Checkpoint
 from service.verification.report import Fault
 from tests.verification.conftest import Owned
-from tests.verification.forging import leaf, rewrite_from, set_head
+from tests.verification.forging import leaf, rewrite_from, rewrite_with_checkpoints_from, set_head
 from tests.verification.test_tampering import sqlite_alone
 
 NUMBER = 5
@@ -84,7 +84,7 @@ def test_an_entry_of_a_later_kind_about_keys_is_an_entry_like_any_other(owned: O
 
 
 def _forge_kind(owned: Owned, kind: str, forge: Any) -> None:
-    rewrite_from(owned, NUMBER, forge)
+    rewrite_with_checkpoints_from(owned, NUMBER, forge)
     owned.execute(("UPDATE history_events SET kind = ? WHERE number = ?", (kind, NUMBER)))
     set_head(owned)
 
@@ -125,3 +125,10 @@ def test_a_signed_checkpoint_holds_texts_whole_numbers_and_null_alone(owned: Own
     fault = owned.verify(Checkpoint.read(raw)).fault
     assert fault is not None
     assert fault.sentence() == "the store: the checkpoint's signature is not one that its key made of it"
+
+
+def test_what_stands_in_a_store_cannot_write_over_what_is_said_of_it() -> None:
+    hidden = "\x1b[2K\rThe history holds\n\u202e\ud800"
+    said = Fault(entry=5, table="loops", row=f"id {hidden}", what="the row is missing").sentence()
+    told = r"id \x1b[2K\rThe history holds\n\u202e\ud800"
+    assert said == f"entry 5; table loops, row {told}: the row is missing"

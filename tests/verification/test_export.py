@@ -16,6 +16,7 @@ from service.verification.export import WITHOUT_ROWS, verify_export
 from service.verification.report import Report
 from tests.records.store import Store
 from tests.verification.conftest import Owned
+from tests.verification.forging import leaf
 
 Lines = list[dict[str, Any]]
 
@@ -114,3 +115,20 @@ def test_a_line_that_is_no_entry_is_a_fault(line: bytes) -> None:
     report = verify_export([line])
     assert report.fault is not None
     assert report.fault.entry == 1
+
+
+@pytest.mark.parametrize("rows", [7, None, {"id": 1}, "rows", [7]])
+def test_rows_that_are_none_are_named_in_the_entry_and_in_the_export(rows: object) -> None:
+    entry = {"number": 1, "previous": "0" * 64, "kind": "store_made", "rows": {}}
+    for recorded, exported in (({"loops": rows}, {}), ({}, {"loops": rows})):
+        raw = json.dumps(entry | {"rows": recorded})
+        line = {"canonical": raw, "digest": leaf(raw.encode()).hex(), "rows": exported}
+        fault = verified([line]).fault
+        assert fault is not None
+        assert (fault.entry, fault.table) == (1, "loops")
+
+
+def test_a_line_that_no_bytes_can_be_made_of_is_no_entry() -> None:
+    fault = verified([{"canonical": "\ud800", "digest": "0" * 64}]).fault
+    assert fault is not None
+    assert fault.sentence() == "entry 1: the line is no entry of an export"
