@@ -99,12 +99,11 @@ def test_roles_and_areas_are_kept_once_and_in_order(store: Store) -> None:
 
 
 def test_other_roles_and_areas_are_told_beside_those_before(store: Store) -> None:
-    _write(
-        store,
-        lambda session: accounts.change_access(
+    with store.database.writing() as session:
+        view = accounts.change_access(
             session, CONSOLE, "outsider", ("auditor",), ("Washing",), "moved", store.clock()
-        ),
-    )
+        )
+    assert (view.name, view.roles, view.areas) == ("outsider", ("auditor",), ("Washing",))
     assert _last(store)[2] == {
         "account": "outsider",
         "reason": "moved",
@@ -123,6 +122,9 @@ def test_another_full_name_is_told_beside_the_one_before(store: Store) -> None:
     assert view.full_name == "Rita Viewer"
     told = {"account": "reviewer", "reason": "married", "before": "Reviewer", "full_name": "Rita Viewer"}
     assert _last(store) == ("account_renamed", "console", told)
+    with store.database.writing() as session, pytest.raises(FieldErrors) as refused:
+        accounts.rename(session, CONSOLE, "reviewer", "", "married", store.clock())
+    assert [problem.pointer for problem in refused.value.errors] == ["/full_name"]
 
 
 @pytest.mark.parametrize(
@@ -158,16 +160,22 @@ def test_closing_ends_what_is_still_open_of_that_account_and_nothing_of_others(s
         tokens.issue(session, CONSOLE, "reviewer", "second", store.clock())
         _, anothers = tokens.issue(session, CONSOLE, "submitter", "tool", store.clock())
         tokens.revoke(session, CONSOLE, first.id, "lost", store.clock())
+    own_session = sign_ins.sign_in(store.database, "reviewer", password_of("reviewer"), "here")
+    with store.database.reading() as session:
+        own = sign_ins.resume(session, own_session.secret, store.clock()).id
     others_session = sign_ins.sign_in(store.database, "second", password_of("second"), "here")
     revoked_at = store.clock()
     closed_at = store.clock.forward(minutes=5)
-    _write(store, lambda session: accounts.close(session, CONSOLE, "reviewer", "left", closed_at))
+    with store.database.writing() as session:
+        closed = accounts.close(session, CONSOLE, "reviewer", "left", closed_at)
+    assert (closed.name, closed.closed_at) == ("reviewer", closed_at)
     with store.database.reading() as session:
         found = {token.note: token.revoked_at for token in tokens.tokens(session, CONSOLE, "reviewer")}
         assert found == {"first": revoked_at, "second": closed_at}
         assert tokens.authenticate(session, anothers, store.clock()).actor.name == "submitter"
         assert sign_ins.resume(session, others_session.secret, store.clock()).actor.name == "second"
-        assert accounts.find(session, CONSOLE, "reviewer").closed_at == closed_at
+        assert session.get_one(sign_ins.SignInSession, own).ended_at == closed_at
+        assert accounts.find(session, CONSOLE, "reviewer") == closed
 
 
 def test_a_closed_account_acts_no_more(store: Store) -> None:
@@ -196,6 +204,9 @@ def test_an_account_is_unused_when_more_than_90_days_have_passed_since_it_was_ma
 
 def test_the_last_page_of_accounts_says_that_it_is_the_last(store: Store) -> None:
     with store.database.reading() as session:
+        with pytest.raises(NotFound):
+            accounts.find(session, CONSOLE, "nobody")
+        assert len(accounts.accounts(session, store.actor("auditor")).items) == 7
         whole = accounts.accounts(session, CONSOLE, None, 7)
         assert (len(whole.items), whole.after) == (7, None)
         part = accounts.accounts(session, CONSOLE, None, 6)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from contextlib import contextmanager
+from datetime import timedelta
 from typing import Any
 
 import pytest
@@ -85,7 +86,7 @@ def test_a_password_that_is_replaced_while_it_is_compared_signs_nobody_in(
 def test_a_session_says_when_it_ends_and_when_its_use_is_noted_next(store: Store) -> None:
     began = store.clock()
     started = sign_ins.sign_in(store.database, "reviewer", password_of("reviewer"), HERE)
-    assert (started.ends_at - began, started.actor.name) == (sign_ins.ABSOLUTE_LIMIT, "reviewer")
+    assert (started.ends_at - began, started.actor.name) == (timedelta(hours=12), "reviewer")
     for passed_s, due in ((59, False), (1, True)):
         store.clock.forward(seconds=passed_s)
         with store.database.reading() as session:
@@ -96,12 +97,14 @@ def test_a_session_says_when_it_ends_and_when_its_use_is_noted_next(store: Store
 
 def test_a_session_holds_to_the_last_moment_of_its_limits(store: Store) -> None:
     started = sign_ins.sign_in(store.database, "reviewer", password_of("reviewer"), HERE)
-    store.clock.now += sign_ins.IDLE_LIMIT
+    store.clock.forward(minutes=30)
     with store.database.writing() as session:
         present = sign_ins.resume(session, started.secret, store.clock())
         # used to the end, so that the absolute limit alone is left
         sign_ins.note_use(session, present.id, started.ends_at)
         assert sign_ins.resume(session, started.secret, started.ends_at).id == present.id
+        with pytest.raises(NotAuthenticated):
+            sign_ins.resume(session, started.secret, started.ends_at + timedelta(seconds=1))
 
 
 def test_a_password_longer_than_any_is_wrong(store: Store) -> None:
@@ -112,6 +115,11 @@ def test_a_password_longer_than_any_is_wrong(store: Store) -> None:
     # no such password can be set, so that a hash of it shows that its length alone refuses it
     assert not passwords.verified(CHEAP, CHEAP.hash(long), long)
     assert passwords.verified(CHEAP, CHEAP.hash(long[1:]), long[1:])
+
+
+def test_no_password_is_right_where_there_is_no_account() -> None:
+    for password in ("the password of no account", "anything else at all"):
+        assert not passwords.verified(CHEAP, None, password)
 
 
 def test_a_password_is_hashed_at_the_cost_that_the_standard_recommends() -> None:
