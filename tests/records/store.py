@@ -15,7 +15,17 @@ from service.documents.installations import InstallationRequest
 from service.documents.loops import LoopRegistration, ModelVersion
 from service.documents.reading import read
 from service.documents.submissions import SubmissionRequest
-from service.records import accounts, changes, decisions, installations, loops, queries, submissions
+from service.records import (
+    accounts,
+    changes,
+    decisions,
+    history,
+    history_queries,
+    installations,
+    loops,
+    queries,
+    submissions,
+)
 from service.records.accounts import NewAccount
 from service.records.database import Database
 from service.records.roles import CONSOLE, Actor, Role
@@ -231,6 +241,12 @@ class Store:
         with self.database.reading() as session:
             found = queries.history(session, self.actor("auditor"), queries.HistoryFilter(), limit=10_000)
         return [event.kind for event in found.items]
+
+    def last_entry(self) -> tuple[str, str, dict[str, Any]]:
+        """Kind, actor and content of the last entry."""
+        with self.database.reading() as session:
+            entry = history_queries.entry(session, CONSOLE, history.head(session).size)
+        return entry.kind, entry.actor, entry.content
 
     def counts(self) -> dict[str, int]:
         """How many rows each table has."""

@@ -3,18 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from datetime import timedelta
 from typing import Any
 
 import pytest
 from sqlalchemy.orm import Session
 
-from service.records import accounts, history_queries, sign_ins, throttles, tokens
+from service.records import accounts, sign_ins, throttles, tokens
 from service.records.accounts import NewAccount
 from service.records.errors import (
     Conflict,
     FieldErrors,
-    NotAllowed,
     NotAuthenticated,
     NotFound,
     NotIndependent,
@@ -22,18 +20,10 @@ from service.records.errors import (
     TooManyAttempts,
     WrongPassword,
 )
-from service.records.history_queries import HistoryFilter
 from service.records.roles import CONSOLE, Actor
 from tests.records.store import Store, password_of
 
 NEW = "another fifteen letters"
-
-
-def _last(store: Store) -> tuple[str, str, dict[str, Any]]:
-    """Kind, actor and content of the last entry."""
-    with store.database.reading() as session:
-        entries = history_queries.history(session, CONSOLE, HistoryFilter(), limit=1000).items
-    return entries[-1].kind, entries[-1].actor, entries[-1].content
 
 
 def _write(store: Store, change: Callable[[Session], object]) -> None:
@@ -86,7 +76,7 @@ def test_roles_and_areas_are_kept_once_and_in_order(store: Store) -> None:
     view = _add(store, roles=("submitter", "auditor", "submitter"), areas=("Washing", "Drying", "Washing"))
     assert (view.roles, view.areas) == (("auditor", "submitter"), ("Drying", "Washing"))
     assert (view.created_at, view.closed_at, view.last_used_at) == (store.clock(), None, None)
-    assert _last(store) == (
+    assert store.last_entry() == (
         "account_added",
         "console",
         {
@@ -104,7 +94,7 @@ def test_other_roles_and_areas_are_told_beside_those_before(store: Store) -> Non
             session, CONSOLE, "outsider", ("auditor",), ("Washing",), "moved", store.clock()
         )
     assert (view.name, view.roles, view.areas) == ("outsider", ("auditor",), ("Washing",))
-    assert _last(store)[2] == {
+    assert store.last_entry()[2] == {
         "account": "outsider",
         "reason": "moved",
         "before": {
@@ -121,7 +111,7 @@ def test_another_full_name_is_told_beside_the_one_before(store: Store) -> None:
         view = accounts.rename(session, CONSOLE, "reviewer", "Rita Viewer", "married", store.clock())
     assert view.full_name == "Rita Viewer"
     told = {"account": "reviewer", "reason": "married", "before": "Reviewer", "full_name": "Rita Viewer"}
-    assert _last(store) == ("account_renamed", "console", told)
+    assert store.last_entry() == ("account_renamed", "console", told)
     with store.database.writing() as session, pytest.raises(FieldErrors) as refused:
         accounts.rename(session, CONSOLE, "reviewer", "", "married", store.clock())
     assert [problem.pointer for problem in refused.value.errors] == ["/full_name"]
@@ -149,7 +139,7 @@ def test_nobody_changes_an_account_that_is_not_there_or_is_closed(store: Store) 
     with pytest.raises(NotFound):
         _write(store, lambda session: accounts.close(session, CONSOLE, "nobody", "x", store.clock()))
     _write(store, lambda session: accounts.close(session, CONSOLE, "second", "left", store.clock()))
-    assert _last(store) == ("account_closed", "console", {"account": "second", "reason": "left"})
+    assert store.last_entry() == ("account_closed", "console", {"account": "second", "reason": "left"})
     with pytest.raises(Conflict):
         _write(store, lambda session: accounts.rename(session, CONSOLE, "second", "X", "x", store.clock()))
 
@@ -226,7 +216,7 @@ def test_a_changed_password_ends_ones_own_sessions_alone_and_is_told(store: Stor
         sign_ins.sign_in(store.database, name, password_of(name), "h") for name in ("reviewer", "second")
     )
     _change_password(store, password_of("reviewer"))
-    assert _last(store) == ("password_changed", "reviewer", {"account": "reviewer"})
+    assert store.last_entry() == ("password_changed", "reviewer", {"account": "reviewer"})
     with store.database.reading() as session:
         with pytest.raises(NotAuthenticated):
             sign_ins.resume(session, own.secret, store.clock())
@@ -271,7 +261,7 @@ def test_a_refused_change_is_told_and_only_a_wrong_password_is_counted(store: St
             lambda session: accounts.record_refused_password(session, actor, refusal, store.clock()),  # noqa: B023
         )
         told = {"account": "reviewer", "reason": refusal.detail}
-        assert _last(store) == ("password_change_refused", "reviewer", told)
+        assert store.last_entry() == ("password_change_refused", "reviewer", told)
     with store.database.reading() as session, pytest.raises(TooManyAttempts):
         accounts.check_password(session, actor, password_of("reviewer"), store.clock())
 
@@ -288,7 +278,7 @@ def _reset(store: Store, by: Actor, name: str = "reviewer") -> None:
 def test_a_reset_ends_the_sessions_and_suspends_signing(store: Store) -> None:
     started = sign_ins.sign_in(store.database, "reviewer", password_of("reviewer"), "here")
     _reset(store, CONSOLE)
-    assert _last(store) == ("password_reset", "console", {"account": "reviewer", "reason": "forgotten"})
+    assert store.last_entry() == ("password_reset", "console", {"account": "reviewer", "reason": "forgotten"})
     with store.database.reading() as session:
         with pytest.raises(NotAuthenticated):
             sign_ins.resume(session, started.secret, store.clock())
@@ -322,7 +312,7 @@ def test_a_reset_is_confirmed_by_a_second_administrator_by_name(
         return
     _write(store, confirm)
     told = {"account": "reviewer", "reason": "seen in person"}
-    assert _last(store) == ("password_reset_confirmed", confirmed_by, told)
+    assert store.last_entry() == ("password_reset_confirmed", confirmed_by, told)
     with store.database.reading() as session:
         accounts.check_password(session, store.actor("reviewer"), NEW, store.clock())
 
@@ -332,109 +322,3 @@ def test_nobody_confirms_the_reset_of_their_own_password(store: Store) -> None:
     own = store.actor("administrator")
     with pytest.raises(NotIndependent):
         _write(store, lambda s: accounts.confirm_reset(s, own, "administrator", "mine", store.clock()))
-
-
-# --- tokens
-
-
-@pytest.mark.parametrize(
-    ("note", "taken"), [("n", True), ("n" * 200, True), ("n" * 201, False), (" ", False)]
-)
-def test_a_token_has_a_note_of_1_to_200_characters(store: Store, note: str, taken: bool) -> None:
-    with store.database.writing() as session:
-        if taken:
-            view, _ = tokens.issue(session, CONSOLE, "reviewer", note, store.clock())
-            assert view.note == note
-        else:
-            with pytest.raises(FieldErrors) as refused:
-                tokens.issue(session, CONSOLE, "reviewer", note, store.clock())
-            assert [problem.pointer for problem in refused.value.errors] == ["/note"]
-
-
-def test_a_token_is_issued_for_an_open_account(store: Store) -> None:
-    with store.database.writing() as session:
-        with pytest.raises(NotFound):
-            tokens.issue(session, CONSOLE, "nobody", "tool", store.clock())
-        accounts.close(session, CONSOLE, "second", "left", store.clock())
-        with pytest.raises(Conflict):
-            tokens.issue(session, CONSOLE, "second", "tool", store.clock())
-
-
-def test_what_is_issued_and_revoked_is_told_and_listed(store: Store) -> None:
-    issued_at = store.clock()
-    with store.database.writing() as session:
-        view, text = tokens.issue(session, CONSOLE, "reviewer", "tuning tool", issued_at)
-    assert (view.account_name, view.issued_at, view.revoked_at, view.last_used_at) == (
-        "reviewer",
-        issued_at,
-        None,
-        None,
-    )
-    identifier, _, secret = text.partition(".")
-    assert (identifier, len(bytes.fromhex(secret))) == (view.id, 32)
-    told = {"account": "reviewer", "token": view.id, "note": "tuning tool"}
-    assert _last(store) == ("token_issued", "console", told)
-    used_at = store.clock.forward(minutes=1)
-    with store.database.writing() as session:
-        tokens.note_use(session, view.id, used_at)
-    revoked_at = store.clock.forward(minutes=1)
-    with store.database.writing() as session:
-        revoked = tokens.revoke(session, store.actor("administrator"), view.id, "lost", revoked_at)
-        with pytest.raises(Conflict):
-            tokens.revoke(session, CONSOLE, view.id, "again", revoked_at)
-    assert (revoked.last_used_at, revoked.revoked_at) == (used_at, revoked_at)
-    assert _last(store) == ("token_revoked", "administrator", told | {"reason": "lost"})
-    with store.database.reading() as session:
-        assert tokens.tokens(session, CONSOLE, "reviewer") == (revoked,)
-        assert tokens.tokens(session, store.actor("reviewer"), "reviewer") == (revoked,)
-        assert accounts.find(session, CONSOLE, "reviewer").last_used_at == used_at
-
-
-def test_tokens_of_all_are_listed_for_those_who_look_after_them(store: Store) -> None:
-    with store.database.reading() as session:
-        for person in ("auditor", "administrator"):
-            assert tokens.tokens(session, store.actor(person)) == ()
-        for name in (None, "auditor"):
-            with pytest.raises(NotAllowed):
-                tokens.tokens(session, store.actor("reviewer"), name)
-
-
-def test_tokens_come_by_account_and_time_of_issue(store: Store) -> None:
-    for name, note in (("submitter", "c"), ("reviewer", "b"), ("reviewer", "a")):
-        with store.database.writing() as session:
-            tokens.issue(session, CONSOLE, name, note, store.clock.forward(minutes=1))
-    with store.database.reading() as session:
-        found = [(token.account_name, token.note) for token in tokens.tokens(session, CONSOLE)]
-    assert found == [("reviewer", "b"), ("reviewer", "a"), ("submitter", "c")]
-
-
-@pytest.mark.parametrize(("reason", "taken"), [("r" * 1000, True), ("r" * 1001, False), (" ", False)])
-def test_a_token_is_revoked_with_a_reason(store: Store, reason: str, taken: bool) -> None:
-    with store.database.writing() as session:
-        view, _ = tokens.issue(session, CONSOLE, "reviewer", "tool", store.clock())
-        if taken:
-            assert tokens.revoke(session, CONSOLE, view.id, reason, store.clock()).revoked_at
-        else:
-            with pytest.raises(FieldErrors) as refused:
-                tokens.revoke(session, CONSOLE, view.id, reason, store.clock())
-            assert [problem.pointer for problem in refused.value.errors] == ["/reason"]
-
-
-def test_whether_a_token_may_be_revoked_is_told_beforehand(store: Store) -> None:
-    with store.database.writing() as session:
-        view, _ = tokens.issue(session, CONSOLE, "reviewer", "tool", store.clock())
-        for person in ("reviewer", "administrator"):
-            tokens.check_may_revoke(session, store.actor(person), view.id)
-        for person, identifier in (("auditor", view.id), ("administrator", "0" * 32)):
-            with pytest.raises(NotFound):
-                tokens.check_may_revoke(session, store.actor(person), identifier)
-
-
-def test_the_use_of_an_account_is_noted_with_that_of_its_token_after_an_hour(store: Store) -> None:
-    with store.database.writing() as session:
-        view, text = tokens.issue(session, CONSOLE, "reviewer", "tool", store.clock())
-        tokens.note_use(session, view.id, store.clock())
-    for passed, due in ((timedelta(minutes=59), False), (timedelta(minutes=1), True)):
-        store.clock.now += passed
-        with store.database.reading() as session:
-            assert tokens.authenticate(session, text, store.clock()).use_is_due is due
