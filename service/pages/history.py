@@ -25,10 +25,11 @@ def add_to(pages: Blueprint) -> None:
 
 
 def history() -> Response:
-    """Entries that match what stands in the address, earliest first."""
+    """Entries that match what stands in the address, latest first: that is what people come for."""
     form = _checked(forms.queried())
     with visits.reading() as visit:
-        found = queries.history(visit.session, visit.actor, _filter(form), lists.after(), SHOWN)
+        wanted, after = _filter(form), lists.after()
+        found = queries.history(visit.session, visit.actor, wanted, after, SHOWN, latest_first=True)
     return page("history.html", form=form, found=found, following=lists.next_address(found.after))
 
 

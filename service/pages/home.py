@@ -14,7 +14,7 @@ SHOWN = 50
 TO_INSTALL = SubmissionFilter(states=frozenset({"approved"}))
 DUE_FOR_RECHECK = SubmissionFilter(recheck_due=True)
 TO_CONFIRM = ChangeFilter(state="awaiting_confirmation")
-PAST_THEIR_TIME = SubmissionFilter(states=frozenset({"lapsed", "expired"}))
+PAST_THEIR_TIME = SubmissionFilter(past_time_and_open=True)
 
 
 def add_to(pages: Blueprint) -> None:

@@ -145,7 +145,7 @@ def _limit_fields(first: bool) -> Iterator[LineField]:
         if (field.name in FIRST_LIMITS) == first:
             name = quantity_name(field.name)
             bound = "at least" if field.name.endswith("_min") else "at most"
-            unit = quantity_unit(name)
+            unit = quantity_unit(name).replace("°", "degrees")
             label = f"{quantity_label(name)} {bound}{f', {unit}' if unit else ''}"
             yield LineField(field.name, f"{label[0].upper()}{label[1:]}", "")
 

@@ -31,17 +31,24 @@ class HistoryFilter:
 
 
 def history(
-    session: Session, actor: Actor, wanted: HistoryFilter, after: str | None = None, limit: int = 100
+    session: Session,
+    actor: Actor,
+    wanted: HistoryFilter,
+    after: str | None = None,
+    limit: int = 100,
+    *,
+    latest_first: bool = False,
 ) -> Page[EventView]:
-    """Entries of the history, earliest first.
+    """Entries of the history, earliest first unless `latest_first`.
 
     Entries about a loop are for whoever sees the loop. Those of no loop (accounts, the store itself) are for
     auditors and administrators without areas.
     """
     query = select(HistoryEvent).where(_in_sight(actor), *_conditions(wanted))
-    query = query.order_by(HistoryEvent.number).limit(limit + 1)
+    number = HistoryEvent.number
+    query = query.order_by(number.desc() if latest_first else number).limit(limit + 1)
     if after is not None:
-        query = query.where(HistoryEvent.number > int(after))
+        query = query.where(number < int(after) if latest_first else number > int(after))
     rows = session.execute(query).scalars().all()
     items = tuple(map(_view, rows[:limit]))
     return Page(items=items, after=str(items[-1].number) if len(rows) > limit else None)

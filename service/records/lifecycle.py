@@ -124,6 +124,9 @@ CLOCK: tuple[ClockRule, ...] = (
 )
 """The first rule that applies holds."""
 
+PAST_THEIR_TIME: frozenset[State] = frozenset(rule.reads for rule in CLOCK)
+"""States that the clock alone leads to."""
+
 REVIEW_OWED: frozenset[State] = frozenset(step.state for step in TABLE if step.action == "approve")
 """States in which a review is still owed."""
 

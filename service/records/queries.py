@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from datetime import datetime
+from datetime import datetime, timedelta
 from functools import cache
 
 from sqlalchemy import ColumnElement, Select, and_, bindparam, case, func, not_, or_, select, tuple_
@@ -39,10 +39,18 @@ from service.records.views import (
 SEPARATOR = "\n"
 """Between the parts of a list's key; stands in no site or tag."""
 
+PAST_TIME_SHOWN = timedelta(days=30)
+"""How long gains past their time that do not run are told unasked. Common practice.
+
+Temporary gains that still run stay until others take their place. What does not run waits for nobody: it is
+told until gains are submitted for the loop again, and no longer than this.
+"""
+
 _Lines = Select[Submission, SubmissionState, Loop, LoopRevision, HistoryEvent, SubmissionContent, bool]
 
 _LATER = aliased(SubmissionState)
 _NEWER = aliased(SubmissionContent)
+_NEXT = aliased(Submission)
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -64,6 +72,8 @@ class SubmissionFilter:
     tag: str | None = None
     loop_id: str | None = None
     recheck_due: bool | None = None
+    past_time_and_open: bool = False
+    """Only those past their time that somebody still has to look after, see `PAST_TIME_SHOWN`."""
 
 
 def loops(
@@ -103,7 +113,7 @@ def submissions(
     limit: int = 50,
 ) -> Page[SubmissionSummary]:
     """Submissions, latest first."""
-    query = _lines().where(visibility.in_sight(actor), *_submission_conditions(wanted))
+    query = _lines().where(visibility.in_sight(actor), *_submission_conditions(wanted, now))
     query = query.order_by(Submission.event_number.desc()).limit(limit + 1)
     if after is not None:
         query = query.where(Submission.event_number < int(after))
@@ -118,7 +128,7 @@ def awaiting_review(
     """Submissions whose review is owed: those that run already first, then the oldest first."""
     wanted = SubmissionFilter(states=lifecycle.REVIEW_OWED)
     rank = case((Submission.kind.in_(sorted(lifecycle.IN_FORCE_FROM_THE_START)), 0), else_=1)
-    query = _lines().where(visibility.in_sight(actor), *_submission_conditions(wanted))
+    query = _lines().where(visibility.in_sight(actor), *_submission_conditions(wanted, now))
     query = query.order_by(rank, Submission.event_number).limit(limit + 1)
     if after is not None:
         first, _, number = after.partition(SEPARATOR)
@@ -262,7 +272,7 @@ def _lines() -> _Lines:
     )
 
 
-def _submission_conditions(wanted: SubmissionFilter) -> list[ColumnElement[bool]]:
+def _submission_conditions(wanted: SubmissionFilter, now: datetime) -> list[ColumnElement[bool]]:
     conditions: list[ColumnElement[bool]] = []
     if wanted.states:
         conditions.append(_reads_as().in_(sorted(wanted.states)))
@@ -273,9 +283,21 @@ def _submission_conditions(wanted: SubmissionFilter) -> list[ColumnElement[bool]
     if wanted.recheck_due is not None:
         due = rechecks.is_due(_reads_as())
         conditions.append(due if wanted.recheck_due else not_(due))
+    if wanted.past_time_and_open:
+        conditions.append(_is_past_time_and_open(now))
     if wanted.loop_id is not None:
         conditions.append(Loop.id == wanted.loop_id)
     return conditions
+
+
+def _is_past_time_and_open(now: datetime) -> ColumnElement[bool]:
+    later = select(_NEXT.id).where(
+        _NEXT.loop_id == Submission.loop_id, _NEXT.event_number > Submission.event_number
+    )
+    since = now - PAST_TIME_SHOWN
+    lately = or_(Submission.install_by >= since, Submission.temporary_until >= since)
+    past = _reads_as().in_(sorted(lifecycle.PAST_THEIR_TIME))
+    return and_(past, or_(states.runs(), and_(lately, ~later.exists())))
 
 
 @cache

@@ -7,16 +7,15 @@ submit them again: recomputed on what holds now, approved, and installed in the 
 from __future__ import annotations
 
 from sqlalchemy import ColumnElement, and_, bindparam, or_, select
-from sqlalchemy.orm import Session, aliased
+from sqlalchemy.orm import Session
 
 from service.records import lifecycle, loops, states
 from service.records.content import read_change
 from service.records.lifecycle import State
 from service.records.tables.changes import LoopChange, RecheckDue
-from service.records.tables.submissions import GainsComingIntoForce, Submission
+from service.records.tables.submissions import Submission
 from service.records.views import RecheckView
 
-_RUNNING, _LATER = aliased(GainsComingIntoForce), aliased(GainsComingIntoForce)
 _LAST_MARK = (
     select(LoopChange, RecheckDue.event_number)
     .join(RecheckDue, RecheckDue.change_id == LoopChange.id)
@@ -47,11 +46,7 @@ def due(session: Session, submission: Submission, state: State) -> RecheckView |
 def is_due(state: ColumnElement[str]) -> ColumnElement[bool]:
     """Return the condition that a selected submission, which reads as `state`, is due for a recheck."""
     mark = select(RecheckDue.change_id).where(RecheckDue.submission_id == Submission.id)
-    taken = select(_LATER.ordinal).where(
-        _LATER.loop_id == _RUNNING.loop_id, _LATER.ordinal > _RUNNING.ordinal
-    )
-    runs = select(_RUNNING.ordinal).where(_RUNNING.submission_id == Submission.id, ~taken.exists())
-    return and_(mark.exists(), or_(runs.exists(), state.in_(sorted(lifecycle.APPROVED_TO_RUN))))
+    return and_(mark.exists(), or_(states.runs(), state.in_(sorted(lifecycle.APPROVED_TO_RUN))))
 
 
 def rows(

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from datetime import datetime
+from functools import cache
 from typing import cast
 
-from sqlalchemy import bindparam, select
+from sqlalchemy import ColumnElement, bindparam, select
 from sqlalchemy.orm import Session, aliased
 
 from service.records import lifecycle
@@ -40,6 +41,7 @@ _RUNNING = (
     .order_by(GainsComingIntoForce.ordinal.desc())
     .limit(1)
 )
+_RUNS, _TAKEN = aliased(GainsComingIntoForce), aliased(GainsComingIntoForce)
 _HAS_RUN = (
     select(GainsComingIntoForce.ordinal)
     .where(
@@ -106,6 +108,14 @@ def of_loop(session: Session, loop_id: str, now: datetime) -> dict[str, State]:
 def running(session: Session, loop_id: str) -> GainsComingIntoForce | None:
     """Return what last came into force in a loop's controller."""
     return session.execute(_RUNNING, {"loop_id": loop_id}).scalar_one_or_none()
+
+
+@cache
+def runs() -> ColumnElement[bool]:
+    """Return the condition that a selected submission's gains are those that run in the controller."""
+    taken = select(_TAKEN.ordinal).where(_TAKEN.loop_id == _RUNS.loop_id, _TAKEN.ordinal > _RUNS.ordinal)
+    mine = select(_RUNS.ordinal).where(_RUNS.submission_id == Submission.id, ~taken.exists())
+    return mine.exists()
 
 
 def coming_into_force(

@@ -12,7 +12,7 @@ from service.records import kept_sheets, queries
 from service.records.errors import Conflict, NotFound
 from service.records.lifecycle import State
 from service.records.queries import HistoryFilter, LoopFilter, SubmissionFilter
-from service.records.views import LoopView, Page
+from service.records.views import LoopView, Page, SubmissionView
 from tests.records.store import Store, gains
 
 
@@ -92,6 +92,41 @@ def test_submissions_come_latest_first_and_by_state_as_read(store: Store, loop: 
     assert ids("approved") == [approved.id]
     assert ids("expired") == [expired.id]
     assert ids("approved", "expired") == [approved.id, expired.id]
+
+
+def test_what_is_past_its_time_is_told_while_it_runs_or_until_somebody_takes_it_up(
+    store: Store, loop: LoopView
+) -> None:
+    def told() -> list[str]:
+        wanted = SubmissionFilter(past_time_and_open=True)
+        with store.database.reading() as session:
+            found = queries.submissions(session, store.actor("reviewer"), wanted, store.clock())
+        return [line.id for line in found.items]
+
+    def approved(**changes: object) -> SubmissionView:
+        submission = store.submit(**changes)
+        store.approve(submission)
+        return submission
+
+    until = (store.clock() + timedelta(days=1)).isoformat()
+    runs = approved(temporary_until=until)
+    store.install(runs)
+    expired = approved(install_by=until, controller=gains(1.1))
+    assert told() == []
+    store.clock.forward(days=2)
+    assert told() == [expired.id, runs.id]
+    # gains that still run past their time wait for somebody, however long it takes
+    store.clock.forward(days=30)
+    assert told() == [runs.id]
+    again = approved(controller=gains(1.1))
+    store.install(again, as_left=gains(1.1))
+    assert told() == []
+    until = (store.clock() + timedelta(days=1)).isoformat()
+    unused = approved(temporary_until=until, controller=gains(1.2))
+    store.clock.forward(days=2)
+    assert told() == [unused.id]
+    store.submit(controller=gains(1.3))
+    assert told() == []
 
 
 def test_what_awaits_review_has_what_runs_already_first_and_then_the_oldest(
