@@ -1,0 +1,63 @@
+"""Which tests run which lines, and how long each test takes."""
+
+from __future__ import annotations
+
+import json
+import time
+from collections.abc import Callable, Iterable
+from dataclasses import asdict, dataclass
+from pathlib import Path
+
+import coverage
+
+from tests.mutation.mutants import Mutant
+
+
+@dataclass(frozen=True)
+class Coverers:
+    """Tests by their node ids; `lines`: module → line → the tests that run it."""
+
+    durations_s: dict[str, float]
+    lines: dict[str, dict[str, list[str]]]
+
+    @staticmethod
+    def measured(modules: list[str], tests: Iterable[tuple[str, Callable[[], None]]]) -> Coverers:
+        """Run each test once."""
+        measuring = coverage.Coverage(data_file=None, config_file=False, include=modules)
+        measuring.start()
+        durations_s = {}
+        for name, run in tests:
+            measuring.switch_context(name)
+            began = time.perf_counter()
+            run()
+            durations_s[name] = time.perf_counter() - began
+        measuring.stop()
+        data, lines = measuring.get_data(), {}
+        for module in modules:
+            found = data.contexts_by_lineno(str(Path(module).resolve()))
+            lines[module] = {str(line): [name for name in names if name] for line, names in found.items()}
+        return Coverers(durations_s, lines)
+
+    @staticmethod
+    def read(file: Path) -> Coverers:
+        """Read what `write` wrote."""
+        return Coverers(**json.loads(file.read_text()))
+
+    def write(self, file: Path) -> None:
+        """Keep it for another process."""
+        file.write_text(json.dumps(asdict(self)))
+
+    def tests_of(self, module: str, mutant: Mutant) -> list[str]:
+        """Return the tests that run the statement; of a line that only an import runs, the module's tests.
+
+        Those of the module's own file come first, then the quickest.
+        """
+        lines = self.lines[module]
+        of_line = {test for line in mutant.statement for test in lines.get(str(line), ())}
+        tests = of_line or {test for tests in lines.values() for test in tests}
+        own = f"test_{Path(module).stem}."
+        return sorted(tests, key=lambda test: (own not in test, self.durations_s[test]))
+
+    def limit_s(self, tests: list[str]) -> float:
+        """Return the time past which these tests hang."""
+        return 30 + 10 * sum(self.durations_s[test] for test in tests)
