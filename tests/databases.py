@@ -14,6 +14,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any, Protocol
 
+from psycopg import sql
 from sqlalchemy import Connection, Engine, create_engine, inspect, make_url
 from sqlalchemy.pool import NullPool
 
@@ -74,6 +75,19 @@ class PostgresqlDatabases:
 
     def drop(self, url: str) -> None:
         self.cluster.drop(make_url(url).database or "")
+
+    @contextmanager
+    def read_only(self, url: str) -> Iterator[None]:
+        """A database in which sessions may only read by default, every earlier session of it ended."""
+        name = sql.Identifier(make_url(url).database or "")
+        self.cluster.administer(
+            sql.SQL("ALTER DATABASE {} SET default_transaction_read_only = on").format(name)
+        )
+        with opened(url) as connection:
+            others = "FROM pg_stat_activity WHERE datname = current_database() AND pid <> pg_backend_pid()"
+            run(connection, f"SELECT pg_terminate_backend(pid) {others}")
+        yield
+        self.cluster.administer(sql.SQL("ALTER DATABASE {} RESET default_transaction_read_only").format(name))
 
 
 def file_of(url: str) -> Path:

@@ -10,7 +10,6 @@ import logging
 from collections.abc import Iterator
 
 from flask import Response
-from sqlalchemy.exc import InterfaceError, InternalError, OperationalError, TimeoutError
 from werkzeug.exceptions import HTTPException
 
 from service.api import problems, refusals
@@ -19,6 +18,7 @@ from service.context import note_problem, request_id
 from service.documents import errors as documents
 from service.documents import writing
 from service.records import errors as records
+from service.records.database import CANNOT_BE_USED
 
 LOG = logging.getLogger("service.api")
 RETRY_AFTER_S = 5
@@ -44,11 +44,7 @@ TABLE: dict[type[Exception], ProblemType] = {
     records.Conflict: problems.CONFLICT,
     records.SecondPersonNeeded: problems.SECOND_PERSON_NEEDED,
     records.StoreNotUsable: problems.UNAVAILABLE,
-    # down, locked, full, read-only, no free connection: the drivers say it in these four ways
-    OperationalError: problems.UNAVAILABLE,
-    InterfaceError: problems.UNAVAILABLE,
-    InternalError: problems.UNAVAILABLE,
-    TimeoutError: problems.UNAVAILABLE,
+    **dict.fromkeys(CANNOT_BE_USED, problems.UNAVAILABLE),
 }
 """The nearest class in an exception's own order of classes decides."""
 

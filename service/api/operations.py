@@ -14,7 +14,6 @@ from functools import partial
 from typing import Any, Concatenate, TypeVar
 
 from flask import Response, request
-from sqlalchemy.exc import OperationalError
 from sqlalchemy.orm import Session
 
 from service.api import answers, bodies, idempotency, queries
@@ -25,6 +24,7 @@ from service.api.queries import NoQuery
 from service.context import note_account, services
 from service.documents import reading
 from service.records import tokens
+from service.records.database import CANNOT_BE_USED
 from service.records.errors import NotIndependent, SigningRefused
 from service.records.roles import Actor
 
@@ -225,6 +225,6 @@ def _note_use(who: tokens.Authenticated) -> None:
         try:
             with services().database.writing() as session:
                 tokens.note_use(session, who.token_id, services().database.now())
-        except OperationalError:
+        except CANNOT_BE_USED:
             # a note that serves the administrator's list only; the request itself can be answered without it
             LOG.warning("the use of token %s could not be noted", who.token_id, exc_info=True)

@@ -10,7 +10,6 @@ import logging
 from dataclasses import dataclass
 
 from flask import Response, request
-from sqlalchemy.exc import OperationalError
 from werkzeug.exceptions import HTTPException
 
 from service.context import request_id
@@ -19,6 +18,7 @@ from service.pages import forgery, forms, sign_in, visits
 from service.pages.forms import Form
 from service.pages.frame import page
 from service.records import errors as records
+from service.records.database import CANNOT_BE_USED
 
 LOG = logging.getLogger("service.pages")
 
@@ -64,7 +64,7 @@ TABLE: dict[type[Exception], Failure] = {
     records.StaleContent: Failure(412, "This has changed since you read it"),
     records.Conflict: Failure(409, "The present state does not allow this"),
     records.StoreNotUsable: UNAVAILABLE,
-    OperationalError: UNAVAILABLE,
+    **dict.fromkeys(CANNOT_BE_USED, UNAVAILABLE),
     DocumentError: Failure(422, "Something in this cannot be read"),
 }
 """The nearest class in an exception's own order of classes decides."""

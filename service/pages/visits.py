@@ -9,6 +9,7 @@ from __future__ import annotations
 import hashlib
 import hmac
 import ipaddress
+import logging
 import secrets
 from collections.abc import Iterator
 from contextlib import contextmanager, suppress
@@ -24,9 +25,12 @@ from werkzeug.wrappers import Response as AnyResponse
 from service.context import note_account, services
 from service.pages import forgery
 from service.records import accounts, history, sign_ins
+from service.records.database import CANNOT_BE_USED
 from service.records.errors import NotAuthenticated
 from service.records.roles import Actor
 from service.records.sign_ins import PresentSession
+
+LOG = logging.getLogger("service.pages")
 
 OPEN = frozenset({"pages.sign_in", "pages.static", "pages.typeface"})
 """Pages that need no sign-in."""
@@ -137,9 +141,17 @@ def _resume() -> PresentSession:
         g.demonstration = history.is_demonstration(session)
     note_account(found.actor.name)
     if found.use_is_due:
-        with store.writing() as session:
-            sign_ins.note_use(session, found.id, now)
+        _note_use(found, now)
     return found
+
+
+def _note_use(found: PresentSession, now: datetime) -> None:
+    try:
+        with services().database.writing() as session:
+            sign_ins.note_use(session, found.id, now)
+    except CANNOT_BE_USED:
+        # a session that is not noted as used ends too early and never too late; the page can be read
+        LOG.warning("the use of a session could not be noted", exc_info=True)
 
 
 def _visit() -> str:

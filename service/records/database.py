@@ -8,7 +8,8 @@ from datetime import UTC, datetime
 
 from argon2 import PasswordHasher
 from sqlalchemy import Connection, Engine, create_engine, event, make_url
-from sqlalchemy.engine.interfaces import DBAPIConnection
+from sqlalchemy.engine.interfaces import DBAPIConnection, ExceptionContext
+from sqlalchemy.exc import InterfaceError, InternalError, OperationalError, TimeoutError
 from sqlalchemy.orm import Session, sessionmaker
 
 from service.records import history, passwords
@@ -33,6 +34,13 @@ POSTGRESQL_SETTINGS = (
     "idle_in_transaction_session_timeout = '60s'",
 )
 """What a writing connection asks of the server, whatever its own settings are."""
+
+READ_ONLY = "25006"
+"""PostgreSQL's code for a write in a transaction that may not."""
+
+
+CANNOT_BE_USED = (OperationalError, InterfaceError, InternalError, TimeoutError)
+"""Down, locked, full, read-only, no free connection: the drivers and the pool say it in these four ways."""
 
 
 def system_clock() -> datetime:
@@ -118,6 +126,7 @@ def _engine(url: str, *, begin: str, pragmas: tuple[str, ...], read_only: bool =
         # the lock on the head is what keeps the order; a snapshot taken before it would fork the chain
         engine = create_engine(url, hide_parameters=True, isolation_level="READ COMMITTED")
         event.listen(engine, "connect", _set_up_postgresql)
+        event.listen(engine, "handle_error", _leave_a_read_only_session)
         return engine
     # the driver's own way of beginning is late: it reads before it locks, and then finds the store busy
     engine = create_engine(url, hide_parameters=True, connect_args={"isolation_level": None})
@@ -143,3 +152,9 @@ def _set_up_postgresql(connection: DBAPIConnection, _record: object) -> None:
     cursor.close()
     # a rollback would take them back
     connection.commit()
+
+
+def _leave_a_read_only_session(failure: ExceptionContext) -> None:
+    # a session keeps what was the database's default when it began; the next one may write again
+    if getattr(failure.original_exception, "sqlstate", None) == READ_ONLY:
+        failure.is_disconnect = True

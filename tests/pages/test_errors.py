@@ -4,7 +4,7 @@ import logging
 
 import pytest
 
-from tests.databases import Databases, without_guards
+from tests.databases import Databases, PostgresqlDatabases, without_guards
 from tests.pages import invented
 from tests.pages.conftest import Person
 from tests.pages.invented import Kept
@@ -38,6 +38,23 @@ def test_a_fault_of_ours_shows_the_requests_name_and_nothing_of_the_fault(
     assert reviewer.answer.headers["X-Request-Id"] in page.text
     assert "loop_revisions" not in reviewer.answer.text
     assert "Traceback" not in reviewer.answer.text
+
+
+@pytest.mark.parametrize("databases", ["postgresql"], indirect=True)
+def test_a_store_that_is_read_only_is_read_and_says_that_nothing_was_recorded(
+    url: str, reviewer: Person, databases: PostgresqlDatabases, caplog: pytest.LogCaptureFixture
+) -> None:
+    # the use of the session is due to be noted
+    without_guards(url, "UPDATE sign_in_sessions SET last_used_at = last_used_at - interval '5 minutes'")
+    with databases.read_only(url), caplog.at_level(logging.CRITICAL):
+        for _ in range(3):
+            # a connection that was ended is told by its first use
+            page = reviewer.open("/loops")
+        assert (reviewer.status, page.one("h1").text) == (200, "Loops")
+        page = Person(reviewer.client.application.test_client()).sign_in("author")
+        assert page.one("h1").text == "The records cannot be reached"
+    page = Person(reviewer.client.application.test_client()).sign_in("author")
+    assert "Ada Thorne" in page.one("header").text
 
 
 def test_more_than_any_form_needs_is_refused(reviewer: Person, kept: Kept) -> None:
