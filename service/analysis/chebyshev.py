@@ -15,6 +15,9 @@ import numpy.typing as npt
 from service.analysis.brackets import newton_zero
 from service.analysis.loop import Reals
 
+ROUNDED = 1e-4
+"""Against what is taken for noise, a value that is as good as 0."""
+
 NODES = 16
 """Nodes of a piece of a response; e^(λt) over a piece with abs λ·length ≤ 6 is met to some 1e-11."""
 
@@ -86,19 +89,22 @@ def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[npt.NDArray[np.int
     if not row.size:
         return row, np.empty(0)
     blocks = (slice(start, start + ZEROS_AT_ONCE) for start in range(0, len(row), ZEROS_AT_ONCE))
-    return row, np.concatenate([_zeros(rows[row[block]], node[block]) for block in blocks])
+    noise_of = np.broadcast_to(noise, (len(rows), 1))[row, 0]
+    return row, np.concatenate([_zeros(rows[row[block]], node[block], noise_of[block]) for block in blocks])
 
 
-def _zeros(rows: Reals, node: npt.NDArray[np.intp]) -> Reals:
-    """Of each row, shape (m, count), the zero between two of its nodes, shape (m,)."""
+def _zeros(rows: Reals, node: npt.NDArray[np.intp], noise: Reals) -> Reals:
+    """Of each row, shape (m, count), the zero between two of its nodes, shape (m,); `noise` (m,)."""
     nodes, slopes = points(rows.shape[1]), rows @ differentiation(rows.shape[1]).T
 
     def value_and_slope(at: Reals) -> tuple[Reals, Reals]:
         matrix = evaluation(rows.shape[1], at)
         return (matrix * rows).sum(axis=1), (matrix * slopes).sum(axis=1)
 
-    before = rows[np.arange(len(rows)), node]
-    return newton_zero(value_and_slope, nodes[node], nodes[node + 1], before, 1.0)
+    every = np.arange(len(rows))
+    low, high, at_low, at_high = nodes[node], nodes[node + 1], rows[every, node], rows[every, node + 1]
+    secant = low + (high - low) * (at_low / (at_low - at_high))
+    return newton_zero(value_and_slope, low, high, at_low, 1.0, ROUNDED * noise, secant)
 
 
 def _frozen(array: Reals) -> Reals:

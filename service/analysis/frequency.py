@@ -16,7 +16,7 @@ from functools import cached_property
 import numpy as np
 import numpy.typing as npt
 
-from service.analysis.brackets import newton_zero
+from service.analysis.brackets import newton_zero, zeros_in_steps
 from service.analysis.loop import Complexes, OpenLoop, Reals
 
 FINE_STEP = 0.25
@@ -30,8 +30,8 @@ LISTED_FACTORS = (0.01, 100.0)
 
 MAX_LISTED = 50
 
-HALVINGS_AT_TURNS = 12
-"""A turn is placed to 2^-12 of its grid step: it only splits a bracket."""
+TURN_PLACE = 1e-4
+"""A turn is placed to this, relatively: it only splits a bracket."""
 
 Indices = npt.NDArray[np.intp]
 
@@ -54,7 +54,7 @@ class AxisResponse:
     @cached_property
     def _magnitude_turns(self) -> Reals:
         """Where abs L turns, shape (t,)."""
-        return self._turns(self.log_slope.real, lambda omega: self.loop.on_axis(omega)[1].real)
+        return self._turns(self.log_slope.real, lambda omega: self.loop.at_frequency(omega)[1].real)
 
     @cached_property
     def gain_crossovers(self) -> Reals:
@@ -62,19 +62,12 @@ class AxisResponse:
         omega, logs = self._with_points(self._magnitude_turns)
         values = logs.real
         crossed = np.flatnonzero((values[:-1] > 0) != (values[1:] > 0))
-        if not crossed.size:
-            return np.empty(0)
-
-        def magnitude(at: Reals) -> tuple[Reals, Reals]:
-            logs, slopes = self.loop.on_axis(at)
-            return logs.real, slopes.real
-
-        return newton_zero(magnitude, omega[crossed], omega[crossed + 1], values[crossed])
+        return zeros_in_steps(lambda at: self.loop.at_frequency(at)[0].real, omega, values, crossed)
 
     @cached_property
     def phase_crossovers(self) -> PhaseCrossings:
         """Where L is real and negative: the lowest of them, and those that bound the margins."""
-        turns = self._turns(self.log_slope.imag, lambda omega: self.loop.on_axis(omega)[1].imag)
+        turns = self._turns(self.log_slope.imag, lambda omega: self.loop.at_frequency(omega)[1].imag)
         # abs L is monotone between these: the first and last crossing between two of them bound the rest
         marks = np.sort(np.concatenate([self._magnitude_turns, self.gain_crossovers]))
         inserted = np.sort(np.concatenate([turns, marks]))
@@ -101,17 +94,10 @@ class AxisResponse:
         solved = newton_zero(from_target, omega[pieces], omega[pieces + 1], at_low)
         return PhaseCrossings(solved, self.loop.log_response(solved).real, chosen.truncated)
 
-    def _turns(self, slopes: Reals, slope_at: Callable[[Reals], Reals]) -> Reals:
+    def _turns(self, slopes: Reals, slope_at: Callable[[float], float]) -> Reals:
         """Where a function of ω with these slopes on the grid turns, shape (t,)."""
         turning = np.flatnonzero((slopes[:-1] > 0) != (slopes[1:] > 0))
-        if not turning.size:
-            return np.empty(0)
-        low, high, rising = self.omega[turning], self.omega[turning + 1], slopes[turning] > 0
-        for _ in range(HALVINGS_AT_TURNS):
-            middle = 0.5 * (low + high)
-            before = (slope_at(middle) > 0) == rising
-            low, high = np.where(before, middle, low), np.where(before, high, middle)
-        return 0.5 * (low + high)
+        return zeros_in_steps(slope_at, self.omega, slopes, turning, TURN_PLACE)
 
     def _with_points(self, more: Reals) -> tuple[Reals, Complexes]:
         """The grid and ln L on it with further frequencies put in."""
@@ -219,7 +205,7 @@ def _log_spaced(low: float, high: float, step: float) -> Reals:
     if not 0 < low <= high < math.inf:
         raise OverflowError("frequencies leave the range of float64")
     count = max(2, math.ceil(math.log(high / low) / step) + 1)
-    return np.exp(np.linspace(math.log(low), math.log(high), count))
+    return np.asarray(low * np.exp(np.arange(count) * (math.log(high / low) / (count - 1))))
 
 
 def _near_root(root: complex) -> Reals:

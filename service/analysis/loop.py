@@ -9,6 +9,7 @@ loop wherever they lie, whatever L(jω) looks like.
 
 from __future__ import annotations
 
+import cmath
 import math
 from dataclasses import dataclass, replace
 from functools import cached_property
@@ -124,6 +125,27 @@ class OpenLoop:
             logs = logs - 2j * self.all_pass * np.arctan(omega)
             slopes = slopes - 2j * self.all_pass / (1.0 + omega * omega)
         return logs, slopes
+
+    @cached_property
+    def _factors_one_by_one(self) -> list[tuple[complex, float, float]]:
+        """(root, weight, turned) of `_factors` as plain numbers."""
+        roots, weights, turned, _ = self._factors
+        return list(zip(roots.tolist(), weights.tolist(), turned.tolist(), strict=True))
+
+    def at_frequency(self, omega: float) -> tuple[complex, complex]:
+        """`on_axis` at one frequency, in plain numbers, which is ten times as fast as an array of one.
+
+        Raises ValueError or ZeroDivisionError upon a zero or pole.
+        """
+        log, slope, s = self._factors[3] - 1j * self.dead_time * omega, complex(-self.dead_time), 1j * omega
+        for root, weight, turned in self._factors_one_by_one:
+            difference = s - root
+            log += weight * cmath.log(turned * difference)
+            slope += weight / difference
+        if self.all_pass:
+            log -= 2j * self.all_pass * math.atan(omega)
+            slope -= 2.0 * self.all_pass / (1.0 + omega * omega)
+        return log, 1j * slope
 
     def log_response(self, omega: Reals) -> Complexes:
         """ln L(jω) alone."""

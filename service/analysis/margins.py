@@ -16,6 +16,7 @@ disk margin: P. Seiler, A. Packard, P. Gahinet, An Introduction to Disk Margins,
 
 from __future__ import annotations
 
+import cmath
 import math
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -23,7 +24,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from service.analysis.brackets import falling_zero
+from service.analysis.brackets import zeros_in_steps
 from service.analysis.frequency import LISTED_FACTORS, MAX_LISTED, AxisResponse, Indices
 from service.analysis.loop import Complexes, OpenLoop, Reals
 from service.analysis.results import (
@@ -51,9 +52,17 @@ STEPS_AT_ONCE = 24
 PEAK_TIE = 1e-10
 """A step whose bound exceeds the largest value met by no more than this, relatively, is not searched."""
 
-PEAK_PLACE = 1e-9
+PEAK_PLACE = 1e-10
 """How well a peak's frequency is met, relatively; its value, being flat there, to the square of this."""
 
+
+OUT_OF_SIGHT = 100.0
+"""Where ln abs L is above this 1 + L is L, to float64 and far beyond, and its products are still in range."""
+
+Numbers = Reals | float
+"""Many numbers or one."""
+
+Responses = Complexes | complex
 
 InRadS = Callable[[Reals], Reals]
 """From a frequency on the axis, inf included, to rad/s: by a loop's unit or a sampled loop's scale."""
@@ -224,9 +233,12 @@ class Sensitivity:
         """A in A/(1+L), shape of `omega` or one for all."""
         return 1.0
 
-    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals | float:
-        """Re d ln A/dω, shape of `omega` or one for all; `slope` is d ln L/dω."""
-        return 0.0
+    def growth(self, omega: Numbers, response: Responses, slope: Responses) -> Numbers:
+        """A number with the sign of d abs(A/(1+L))/dω, which is smooth wherever L is, however sharp the peak.
+
+        Arrays of one shape, or plain numbers: ω, L and d ln L/dω.
+        """
+        return -(slope * response * (1.0 + response).conjugate()).real
 
     def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
         """An upper bound of abs A/(1+L) from `left` to `right`, where `magnitude` is the abs L nearest to 1;
@@ -250,9 +262,9 @@ class ComplementarySensitivity(Sensitivity):
         """L itself."""
         return response
 
-    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals | float:
-        """Re d ln L/dω."""
-        return slope.real
+    def growth(self, omega: Numbers, response: Responses, slope: Responses) -> Numbers:
+        """The sign of d abs T/dω."""
+        return (slope * (1.0 + response).conjugate()).real
 
     def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
         """abs L/abs(1 − abs L)."""
@@ -270,9 +282,9 @@ class DiskSensitivity(Sensitivity):
         """(1 − L)/2."""
         return 0.5 * (1.0 - response)
 
-    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals | float:
-        """Re d ln(1 − L)/dω."""
-        return (-slope * response / (1.0 - response)).real
+    def growth(self, omega: Numbers, response: Responses, slope: Responses) -> Numbers:
+        """The sign of d abs((1 − L)/(1 + L))/dω."""
+        return -(slope * response * (1.0 - response * response).conjugate()).real
 
     def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
         """(1 + abs L)/(2·abs(1 − abs L))."""
@@ -326,8 +338,7 @@ class PeakSearch:
 
     abs A/(1+L) cannot exceed a bound that follows from abs L alone, so a step of the grid is searched only
     where its bound is above the largest value met so far, and one in which dead time turns L many times is
-    divided first. In a step, stationary points are bracketed by the sign of d abs(A/(1+L))²/dω, which is
-    smooth wherever L is, however sharp the peak.
+    divided first. In a step, stationary points are bracketed by the sign of the slope.
     """
 
     def __init__(self, axis: AxisResponse) -> None:
@@ -339,7 +350,7 @@ class PeakSearch:
     def peak(self, quantity: Sensitivity) -> Peak:
         """The supremum. Raises WorkBoundError past the bound on points."""
         best = _ends_first(quantity)
-        _, values = _growth(quantity, self._axis.omega, self._response, self._axis.log_slope)
+        values = _values(quantity, self._axis.omega, self._response)
         met = max(best.value, float(values[np.isfinite(values)].max(initial=0.0)))
         steps, bounds, work = self._steps, self._steps.bounds(quantity), 0
         while (promising := bounds > met * (1 + PEAK_TIE)).any():
@@ -387,18 +398,19 @@ class PeakSearch:
         omega, joined = _points(steps, parts.astype(int))
         loop = self._axis.loop
         logs, slope = loop.on_axis(omega)
-        growth, _ = _growth(quantity, omega, np.exp(logs), slope)
-        brackets = np.flatnonzero((growth[:-1] > 0) & (growth[1:] <= 0) & joined)
+        growth = np.asarray(quantity.growth(omega, np.exp(_capped(logs)), slope))
+        rising = growth > 0
+        brackets = np.flatnonzero(rising[:-1] & ~rising[1:] & joined)
         if not brackets.size:
             return []
 
-        def growth_at(at: Reals) -> Reals:
-            logs, slope = loop.on_axis(at)
-            return _growth(quantity, at, np.exp(logs), slope)[0]
+        def growth_at(omega: float) -> float:
+            log, slope = loop.at_frequency(omega)
+            response = cmath.exp(complex(min(log.real, OUT_OF_SIGHT), log.imag))
+            return float(quantity.growth(omega, response, slope))
 
-        at = falling_zero(growth_at, omega[brackets], omega[brackets + 1], PEAK_PLACE)
-        logs, slope = loop.on_axis(at)
-        _, values = _growth(quantity, at, np.exp(logs), slope)
+        at = zeros_in_steps(growth_at, omega, growth, brackets, PEAK_PLACE)
+        values = _values(quantity, at, np.exp(loop.log_response(at)))
         return [Peak(value, where) for value, where in zip(values.tolist(), at.tolist(), strict=True)]
 
 
@@ -418,15 +430,11 @@ def _ends_first(quantity: Sensitivity) -> Peak:
     return Peak(largest, 0.0 if values[0] == largest else None)
 
 
-def _growth(
-    quantity: Sensitivity, omega: Reals, response: Complexes, slope: Complexes
-) -> tuple[Reals, Reals]:
-    """(A number with the sign of the slope of abs A/(1+L), and the value itself), shapes of `omega`."""
-    distance = 1.0 + response
-    # d ln abs(1+L)/dω without dividing by 1 + L; scaled so that nothing overflows where L is large
-    magnitude = np.abs(response)
-    scale = 1.0 / np.maximum(1.0, magnitude * magnitude)
-    along = (np.conj(distance) * response * slope).real
-    near = distance.real**2 + distance.imag**2
-    rate = (quantity.numerator_slope(omega, response, slope) * near - along) * scale
-    return np.nan_to_num(rate), np.abs(quantity.numerator(omega, response)) / np.sqrt(near)
+def _capped(logs: Complexes) -> Complexes:
+    """ln L with abs L no larger than where 1 plays no part beside it."""
+    return np.asarray(np.minimum(logs.real, OUT_OF_SIGHT) + 1j * logs.imag)
+
+
+def _values(quantity: Sensitivity, omega: Reals, response: Complexes) -> Reals:
+    """abs A/(1+L), shape of `omega`."""
+    return np.asarray(np.abs(quantity.numerator(omega, response)) / np.abs(1.0 + response))

@@ -7,8 +7,8 @@ import math
 import numpy as np
 
 from service.analysis.frequency import AxisResponse, log_factors
-from service.analysis.loop import Complexes, Factors, OpenLoop, Reals, reciprocal_sum
-from service.analysis.margins import PeakSearch, Sensitivity, WorkBoundError
+from service.analysis.loop import Complexes, Factors, OpenLoop, Reals
+from service.analysis.margins import Numbers, PeakSearch, Responses, Sensitivity, WorkBoundError
 from service.analysis.results import Noise, Quantity
 
 NUMERATOR_ALLOWANCE = 1.2
@@ -26,9 +26,11 @@ class ControlSensitivity(Sensitivity):
         """abs C·F; its angle plays no part."""
         return np.exp(self._log_magnitude(omega)).astype(complex)
 
-    def numerator_slope(self, omega: Reals, response: Complexes, slope: Complexes) -> Reals | float:
-        """d ln abs C·F/dω."""
-        return self._log_slope(omega)
+    def growth(self, omega: Numbers, response: Responses, slope: Responses) -> Numbers:
+        """The sign of d abs(C·F/(1+L))/dω."""
+        distance = 1.0 + response
+        near = (distance * distance.conjugate()).real
+        return self._log_slope(omega) * near - (slope * response * distance.conjugate()).real
 
     def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
         """Largest abs C·F/abs(1 − abs L) of the step; with an allowance where abs C·F has a maximum in it."""
@@ -45,9 +47,15 @@ class ControlSensitivity(Sensitivity):
         excess = len(self._poles) - len(self._zeros)
         return 0.0 if excess > 0 else (math.exp(self._log_gain) if excess == 0 else math.inf)
 
-    def _log_slope(self, omega: Reals) -> Reals:
-        s: Complexes = np.asarray(1j * omega)
-        return np.asarray((1j * (reciprocal_sum(s, self._zeros) - reciprocal_sum(s, self._poles))).real)
+    def _log_slope(self, omega: Numbers) -> Numbers:
+        """d ln abs C·F/dω."""
+        factors = [(root, 1.0) for root in self._zeros.tolist()] + [
+            (root, -1.0) for root in self._poles.tolist()
+        ]
+        slope: Numbers = 0.0 * omega
+        for root, weight in factors:
+            slope = slope - weight * (1.0 / (1j * omega - root)).imag
+        return slope
 
     def _log_magnitude(self, omega: Reals) -> Reals:
         logs = log_factors(omega, self._zeros) - log_factors(omega, self._poles)

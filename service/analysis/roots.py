@@ -41,6 +41,14 @@ NEPERS_OF_CHAIN = 5.0
 CLUSTER = 1e-4
 """Roots nearer to each other than this, relatively, are taken for one multiple root where errors are told."""
 
+MOST_STEPS = 12
+
+FAR_LEFT, STEPS_FAR_LEFT = -12.0, 5
+"""A start that is left of this, in units of 1/θ, after so many steps is the collocation's own and no root."""
+
+NEWTON_DONE = 1e-12
+"""A Newton step this small, relatively, leaves an error of its square; at a multiple root of its own size."""
+
 FAR_ENOUGH = -0.3
 """Where every root right of this line, in units of 1/θ, is known, responses can be continued by residues."""
 
@@ -237,10 +245,13 @@ def polished_roots(loop: OpenLoop, starts: Complexes) -> Complexes:
     """
     at, step = starts.copy(), np.zeros_like(starts)
     real = starts.imag == 0
-    for _ in range(12):
+    for count in range(MOST_STEPS):
         step = _newton_step(loop, at)
         at = at + np.where(real, step.real, step)
-        if np.all(np.abs(step) <= 1e-15 * np.abs(at)):
+        under_way = np.abs(step) > NEWTON_DONE * np.abs(at)
+        if count >= STEPS_FAR_LEFT:
+            under_way &= at.real * loop.dead_time > FAR_LEFT
+        if not under_way.any():
             break
     settled = np.isfinite(at) & (np.abs(step) <= 1e-7 * np.abs(at))
     at = np.where(at.imag < 0, np.conj(at), at)

@@ -14,19 +14,38 @@ import cmath
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 import numpy.typing as npt
 
 from service.analysis.frequency import AxisResponse
-from service.analysis.loop import EPSILON, Complexes, Reals
+from service.analysis.loop import EPSILON, Complexes, OpenLoop, Reals
 from service.analysis.nyquist import count_right_of_axis
 from service.analysis.results import Quantity
 from service.analysis.sampled_loop import NotFactoredError, SampledLoop, form_sampled_loop
+from service.analysis.sampled_roots import compressed, points_for, resolved
+from service.analysis.sampled_states import sampled_states
 from service.analysis.scan import SampledPlant
 
 DIVISIONS = (0.0, 0.2, 0.4, 0.6, 0.8)
 """Fractions of a scan at which gain crossovers are looked for, beside the loop's own."""
+
+FEW_HELD = 24
+"""So many past outputs are carried each for itself, more by points."""
+
+CLEARLY_BELOW = 0.5
+"""Where abs L is below this on the circle there is no root upon or outside it."""
+
+MOST_POINTS = 60
+
+CLEARLY = 1e-6
+"""A root is clearly inside the circle, and clearly leaves it, by this share of 1."""
+
+FEW_LAGS, FAR_FROM_CIRCLE = 4, 1e-3
+"""Equal lags in no larger a number spread by rounding to less than this distance: eigenvalues farther from
+the circle count as they are.
+"""
 
 BESIDE = 1e-7
 """Roots are counted this much before and behind the margin, relatively."""
@@ -58,11 +77,12 @@ def sampled_delay_margin_s(sampled: SampledLoop, axis: AxisResponse) -> Quantity
     if not starts:
         # abs L stays below 1 however the dead time divides a scan
         return "unbounded"
-    touching = sorted(delay for angle in starts if (delay := _solved(sampled, angle)) is not None)
+    touching = sorted(touch for angle in starts if (touch := _solved(sampled, angle)) is not None)
+    reach = _reach(sampled, axis)
     if max(starts) <= FAR_BELOW and sampled.plant.d == 0 and _fastest(sampled) <= SLOW_PLANT:
-        found = _confirmed(sampled, touching)
+        found = _confirmed(sampled, reach, touching)
     else:
-        found = _least_on_grid(sampled, min(starts), touching[0] if touching else None)
+        found = _least_on_grid(sampled, reach, min(starts), touching)
     return None if found is None else found / sampled.scanned.parts.unit_rad_s
 
 
@@ -71,46 +91,125 @@ def _fastest(sampled: SampledLoop) -> float:
     return float(np.abs(sampled.scanned.parts.plant.poles_rad_s).max(initial=0.0)) * sampled.scanned.interval
 
 
-def _confirmed(sampled: SampledLoop, touching: list[float]) -> float | None:
+@dataclass(frozen=True, order=True, slots=True)
+class _Touch:
+    """An extra dead time, in the loop's unit, at which a root lies upon the circle, at this angle ωh."""
+
+    delay: float
+    angle: float
+
+
+def _confirmed(sampled: SampledLoop, reach: float, touching: list[_Touch]) -> float | None:
     """The first of the delays behind which there are unstable roots and before which there are none."""
-    for delay in touching:
-        before, behind = (_unstable_roots(sampled, delay * (1.0 + side)) for side in (-BESIDE, BESIDE))
+    for touch in touching:
+        if _first_to_leave(sampled, reach, touch):
+            return touch.delay
+        before, behind = (_unstable_roots(sampled, touch.delay * (1.0 + side)) for side in (-BESIDE, BESIDE))
         if before != 0 or behind is None:
             return None
         if behind > 0:
-            return delay
+            return touch.delay
     return None
 
 
-def _least_on_grid(sampled: SampledLoop, lowest: float, limit: float | None) -> float | None:
+def _first_to_leave(sampled: SampledLoop, reach: float, touch: _Touch) -> bool:
+    """Whether the root upon the circle leaves it as the delay grows while all others are clearly inside.
+
+    False where the eigenvalues do not tell.
+    """
+    plant = sampled.scanned.sample(touch.delay)
+    roots = _outer_roots(sampled, plant, reach)
+    if roots is None:
+        return False
+    by_angle, by_scans = (
+        complex(slope[0]) for slope in _OnCircle(sampled, np.array([touch.angle])).slopes(plant)
+    )
+    # how ωh moves with the delay; abs z = e^(−Im ωh)
+    moves = -by_scans / by_angle
+    if not moves.imag < -CLEARLY * abs(moves):
+        return False
+    upon = np.exp(1j * touch.angle)
+    distance = np.minimum(np.abs(roots - upon), np.abs(roots - np.conj(upon)))
+    own = np.argsort(distance)[: 1 if touch.angle == math.pi else 2]
+    # the root that is known says how far eigenvalues are off here
+    clear = max(CLEARLY, 100.0 * float(distance[own].max()))
+    return bool(np.abs(np.delete(roots, own)).max(initial=0.0) < 1.0 - clear)
+
+
+def _outer_roots(sampled: SampledLoop, plant: SampledPlant, reach: float) -> Complexes | None:
+    """Eigenvalues with this plant, all roots outside the circle among them; None where they are too many.
+
+    `reach`: the angle of z above which there are none.
+    """
+    states, line = sampled_states(sampled.scanned, plant, with_spared_noise=False), plant.held_scans
+    if line <= FEW_HELD:
+        return np.linalg.eigvals(states.closed()[0]).astype(complex)
+    points = points_for(reach, line)
+    if points is None or points > MOST_POINTS:
+        return None
+    roots = np.linalg.eigvals(compressed(states, points)).astype(complex)
+    return np.asarray(roots[resolved(np.angle(roots), line, points)])
+
+
+def _reach(sampled: SampledLoop, axis: AxisResponse) -> float:
+    """The largest angle ωh at which abs L is not clearly below 1 at some division of a scan; 0 where there is
+    none.
+    """
+    angles = np.append(2.0 * np.arctan(axis.omega), math.pi)
+    above = angles[(np.abs(_divided(sampled, angles)) >= CLEARLY_BELOW).any(axis=0)]
+    return float(above.max(initial=0.0))
+
+
+def _divided(sampled: SampledLoop, angles: Reals) -> Complexes:
+    """L at `angles` for dead times that divide a scan in several ways, (divisions, angles)."""
+    scan, here = sampled.scanned, _OnCircle(sampled, angles)
+    delays = [(share - sampled.plant.fraction) % 1.0 * scan.interval for share in DIVISIONS]
+    return np.array([here.value(plant) for plant in scan.samples(delays)])
+
+
+def _least_on_grid(sampled: SampledLoop, reach: float, lowest: float, touching: list[_Touch]) -> float | None:
     """The least delay at which a root leaves the circle, from the cells of the grid and counts between
     them.
     """
-    turn = 2.0 * math.pi / lowest * sampled.scanned.interval
-    if (turn if limit is None else limit) > MAX_SCANS * sampled.scanned.interval:
+    interval = sampled.scanned.interval
+    limit = touching[0].delay if touching else None
+    if (2.0 * math.pi / lowest * interval if limit is None else limit) > MAX_SCANS * interval:
         return None
     last_stable, tried = 0.0, 0
-    for delay in _probes(sampled, lowest, limit):
-        if delay <= last_stable:
-            continue
-        count, tried = _unstable_roots(sampled, delay), tried + 1
-        if tried > MAX_PROBES:
-            return None
-        if count is None:
-            continue
-        if count > 0:
-            return _by_counting(sampled, last_stable, delay)
-        last_stable = delay
-    return None
-
-
-def _probes(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator[float]:
-    """Delays at which roots are counted, rising: before, in and behind every step in which one may leave."""
     for low, high in _cells(sampled, lowest, limit):
-        yield max(low - sampled.scanned.interval / DIVIDED, 0.0)
-        yield from (low, 0.5 * (low + high), high)
-    if limit is not None:
-        yield from (limit * (1.0 - BESIDE), limit * (1.0 + BESIDE))
+        if any(
+            low <= touch.delay <= high and _first_to_leave(sampled, reach, touch) for touch in touching[:1]
+        ):
+            return limit
+        for delay in (max(low - interval / DIVIDED, 0.0), low, 0.5 * (low + high), high):
+            if delay <= last_stable:
+                continue
+            count, tried = _unstable_roots(sampled, delay), tried + 1
+            if tried > MAX_PROBES:
+                return None
+            if count is not None and count > 0:
+                return _crossing(sampled, reach, last_stable, delay) or _by_counting(
+                    sampled, last_stable, delay
+                )
+            last_stable = last_stable if count is None else delay
+    return _confirmed(sampled, reach, touching[:1])
+
+
+def _crossing(sampled: SampledLoop, reach: float, low: float, high: float) -> float | None:
+    """Where the first root leaves the circle between two delays, by Newton; None where not confirmed."""
+    at_high = _loop_with(sampled, high)
+    if at_high is None:
+        return None
+    interval = sampled.scanned.interval
+    touching = []
+    for omega in AxisResponse.of(at_high).gain_crossovers.tolist():
+        solution = _newton(sampled, 2.0 * math.atan(omega), high / interval)
+        if solution is not None and low <= solution[1] * interval <= high:
+            touching.append(_Touch(solution[1] * interval, solution[0]))
+    for touch in sorted(touching):
+        if _first_to_leave(sampled, reach, touch):
+            return touch.delay
+    return None
 
 
 def _by_counting(sampled: SampledLoop, low: float, high: float) -> float | None:
@@ -128,11 +227,21 @@ def _by_counting(sampled: SampledLoop, low: float, high: float) -> float | None:
 
 
 def _unstable_roots(sampled: SampledLoop, delay: float) -> int | None:
+    """How many roots lie outside the circle with so much extra delay; None where that is not told."""
+    if len(sampled.plant.c) <= FEW_LAGS:
+        roots = _outer_roots(sampled, sampled.scanned.sample(delay), math.pi)
+        if roots is not None and np.all(np.abs(np.abs(roots) - 1.0) > FAR_FROM_CIRCLE):
+            return int(np.count_nonzero(np.abs(roots) > 1.0))
+    loop = _loop_with(sampled, delay)
+    return None if loop is None else count_right_of_axis(AxisResponse.of(loop)).roots
+
+
+def _loop_with(sampled: SampledLoop, delay: float) -> OpenLoop | None:
+    """The loop with so much extra delay; None where its zeros are not known well enough."""
     try:
-        loop = form_sampled_loop(sampled.scanned, delay).loop
+        return form_sampled_loop(sampled.scanned, delay).loop
     except NotFactoredError:
         return None
-    return count_right_of_axis(AxisResponse.of(loop)).roots
 
 
 def _starts(sampled: SampledLoop, axis: AxisResponse) -> list[float]:
@@ -146,9 +255,7 @@ def _starts(sampled: SampledLoop, axis: AxisResponse) -> list[float]:
     near[:-1] |= near[1:]
     near[1:] |= near[:-1]
     chosen = np.append(angles[near], math.pi)
-    scan = sampled.scanned
-    delays = [(share - sampled.plant.fraction) % 1.0 * scan.interval for share in DIVISIONS]
-    magnitude = np.abs([_Response(sampled, chosen, scan.sample(delay)).value for delay in delays])
+    magnitude = np.abs(_divided(sampled, chosen))
     crossed = ((magnitude[:, :-1] > 1) != (magnitude[:, 1:] > 1)).any(axis=0)
     middles = 0.5 * (chosen[:-1] + chosen[1:])[crossed]
     lows, highs = chosen[:-1][crossed], chosen[1:][crossed]
@@ -173,8 +280,9 @@ def _cells(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator
     interval, plant = sampled.scanned.interval, sampled.plant
     angles, shares = _angles(lowest), np.array(_shares(sampled))
     delays = (shares - plant.fraction) % 1.0 * interval
-    divided = [replace(sampled.scanned.sample(delay), whole_scans=0) for delay in delays.tolist()]
-    values = np.array([_Response(sampled, angles, each).value for each in divided])
+    here = _OnCircle(sampled, angles)
+    divided = [replace(each, whole_scans=0) for each in sampled.scanned.samples(delays.tolist())]
+    values = np.array([here.value(each) for each in divided])
     left = _cells_near_one(np.abs(values))
     last = 2.0 * math.pi / lowest + 2.0 if limit is None else limit / interval
     before: tuple[Complexes, Complexes, float] | None = None
@@ -248,18 +356,16 @@ def _wrapped(angle: Reals) -> Reals:
     return np.asarray((angle + math.pi) % (2.0 * math.pi) - math.pi)
 
 
-def _solved(sampled: SampledLoop, angle: float) -> float | None:
-    """The least extra delay > 0 of a solution near the angle, in the loop's unit; None where none is
-    found.
-    """
+def _solved(sampled: SampledLoop, angle: float) -> _Touch | None:
+    """The solution with the least extra delay > 0 near the angle; None where none is found."""
     scanned = sampled.scanned
-    here = _Response(sampled, np.array([angle]), sampled.plant)
-    phase = (cmath.phase(complex(here.value[0])) + math.pi) % (2.0 * math.pi)
+    here = _OnCircle(sampled, np.array([angle])).value(sampled.plant)
+    phase = (cmath.phase(complex(here[0])) + math.pi) % (2.0 * math.pi)
     for turns in (0, 1):
         start = (phase + 2.0 * math.pi * turns) / angle
         solution = _newton(sampled, angle, start) or _bracketed(sampled, angle, start)
         if solution is not None and solution[1] > 64 * EPSILON * max(scanned.delay / scanned.interval, 1.0):
-            return solution[1] * scanned.interval
+            return _Touch(solution[1] * scanned.interval, solution[0])
     return None
 
 
@@ -268,9 +374,9 @@ def _newton(sampled: SampledLoop, angle: float, scans: float) -> tuple[float, fl
     interval = sampled.scanned.interval
     for _ in range(STEPS):
         plant = sampled.scanned.sample(max(scans, 0.0) * interval)
-        at = _Response(sampled, np.array([angle]), plant)
-        residual = complex(np.log(-at.value[0]))
-        by_angle, by_scans = complex(at.slope_by_angle[0]), complex(at.slope_by_scans[0])
+        at = _OnCircle(sampled, np.array([angle]))
+        residual = complex(np.log(-at.value(plant)[0]))
+        by_angle, by_scans = (complex(slope[0]) for slope in at.slopes(plant))
         determinant = by_angle.real * by_scans.imag - by_angle.imag * by_scans.real
         if not math.isfinite(determinant) or determinant == 0:
             return None
@@ -321,9 +427,9 @@ def _phase_at_crossover(sampled: SampledLoop, angle: float, scans: float) -> tup
     """(ωh, phase beyond −180°) where abs L = 1 with so much extra dead time; None where it is not found."""
     plant = sampled.scanned.sample(scans * sampled.scanned.interval)
     for _ in range(STEPS):
-        at = _Response(sampled, np.array([angle]), plant)
-        residual = complex(np.log(-at.value[0]))
-        step = residual.real / float(at.slope_by_angle[0].real)
+        at = _OnCircle(sampled, np.array([angle]))
+        residual = complex(np.log(-at.value(plant)[0]))
+        step = residual.real / float(at.slopes(plant)[0][0].real)
         if abs(step) <= 1e-14:
             return angle, residual.imag
         angle = min(max(angle - step, 0.7 * angle), 1.3 * angle, math.pi)
@@ -331,59 +437,62 @@ def _phase_at_crossover(sampled: SampledLoop, angle: float, scans: float) -> tup
 
 
 @dataclass(frozen=True, eq=False)
-class _Response:
-    """L on the unit circle, straight from the plant's states, at angles ωh of shape (m,)."""
+class _OnCircle:
+    """L on the unit circle at angles ωh of shape (m,), straight from the states of a plant over one scan.
+
+    What plants with other delays have in common is computed once.
+    """
 
     sampled: SampledLoop
     angle: Reals
-    plant: SampledPlant
 
-    @property
-    def value(self) -> Complexes:
-        """L, (m,)."""
-        controller = self.sampled.controller
-        w = self._w
-        logs = np.log(w[:, None] - controller.zeros).sum(1) - np.log(w[:, None] - controller.poles).sum(1)
-        logs = logs + controller.log_gain - 1j * self.plant.whole_scans * self.angle
-        sign = controller.sign * self.sampled.scanned.parts.direction
-        return np.asarray(sign * np.exp(logs) * self._plant_value)
+    def value(self, plant: SampledPlant) -> Complexes:
+        """L with this plant, (m,)."""
+        return np.asarray(self._controller * np.exp(-1j * plant.whole_scans * self.angle) * self._of(plant))
 
-    @property
-    def slope_by_angle(self) -> Complexes:
-        """d ln L/d(ωh), (m,)."""
-        controller, w, z, plant = self.sampled.controller, self._w, self._z, self.plant
+    def slopes(self, plant: SampledPlant) -> tuple[Complexes, Complexes]:
+        """(d ln L/d(ωh), d ln L/d(δ/h)), (m,) each."""
+        controller, w, z = self.sampled.controller, self._w, self._z
         of_controller = (1.0 / (w[:, None] - controller.zeros)).sum(1)
         of_controller = of_controller - (1.0 / (w[:, None] - controller.poles)).sum(1)
         of_controller = of_controller * (0.5j * (1.0 - w * w))
-        resolvent = self._resolvent
+        own = self._of(plant)
         forced = plant.gamma0 + plant.gamma1 / z[:, None]
-        of_plant = -(resolvent @ (resolvent @ forced[..., None]))[..., 0] @ plant.c
-        of_plant = of_plant - ((resolvent @ plant.gamma1) @ plant.c + plant.d) / z**2
-        of_plant = of_plant * 1j * z / self._plant_value
-        return np.asarray(of_controller + of_plant - 1j * plant.whole_scans)
+        of_plant = -(self._row[:, None, :] @ self._resolvent @ forced[..., None])[:, 0, 0]
+        of_plant = of_plant - (self._row @ plant.gamma1 + plant.d) / z**2
+        by_angle = of_controller + of_plant * 1j * z / own - 1j * plant.whole_scans
+        by_scans = self._row @ plant.gamma0_slope * (1.0 / z - 1.0) / own
+        return np.asarray(by_angle), np.asarray(by_scans)
 
-    @property
-    def slope_by_scans(self) -> Complexes:
-        """d ln L/d(δ/h), (m,)."""
-        through = (self._resolvent @ self.plant.gamma0_slope) @ self.plant.c
-        return np.asarray(through * (1.0 / self._z - 1.0) / self._plant_value)
+    def _of(self, plant: SampledPlant) -> Complexes:
+        """The plant but for its whole scans of dead time, (m,)."""
+        row, z = self._row, self._z
+        return np.asarray(row @ plant.gamma0 + (row @ plant.gamma1 + plant.d) / z)
 
-    @property
+    @cached_property
+    def _controller(self) -> Complexes:
+        """Controller, filter and direction, (m,)."""
+        controller, w = self.sampled.controller, self._w
+        logs = np.log(w[:, None] - controller.zeros).sum(1) - np.log(w[:, None] - controller.poles).sum(1)
+        sign = controller.sign * self.sampled.scanned.parts.direction
+        return np.asarray(sign * np.exp(logs + controller.log_gain))
+
+    @cached_property
     def _w(self) -> Complexes:
         return np.asarray(1j * np.tan(0.5 * self.angle))
 
-    @property
+    @cached_property
     def _z(self) -> Complexes:
         return np.asarray(np.exp(1j * self.angle))
 
-    @property
+    @cached_property
     def _resolvent(self) -> Complexes:
+        """(z − Φ)⁻¹, (m, n, n)."""
         # z − 1 without the digits that z loses near 1
-        less_one = np.expm1(1j * self.angle)[:, None, None] * np.eye(len(self.plant.c))
-        return np.asarray(np.linalg.inv(less_one - self.plant.phi_less_one))
+        less_one = np.expm1(1j * self.angle)[:, None, None] * np.eye(len(self.sampled.plant.c))
+        return np.asarray(np.linalg.inv(less_one - self.sampled.plant.phi_less_one))
 
-    @property
-    def _plant_value(self) -> Complexes:
-        plant, z = self.plant, self._z
-        forced = plant.gamma0 + plant.gamma1 / z[:, None]
-        return np.asarray((self._resolvent @ forced[..., None])[..., 0] @ plant.c + plant.d / z)
+    @cached_property
+    def _row(self) -> Complexes:
+        """c·(z − Φ)⁻¹, (m, n)."""
+        return np.asarray(self.sampled.plant.c @ self._resolvent)

@@ -37,6 +37,10 @@ SMALL = 1e-3
 StateMatrices = tuple[Reals, Reals, Reals, float]
 
 
+POINTS = 16
+"""At so many points the factored plant is compared with its state equations."""
+
+
 class NotFactoredError(ArithmeticError):
     """The sampled plant's zeros are not met to the digits that a verdict needs."""
 
@@ -136,7 +140,8 @@ def _gain(space: StateMatrices, zeros: Complexes, poles: Complexes, controller: 
     through = np.abs(np.exp(log_product(points, controller.zeros, controller.poles) + controller.log_gain))
     size = np.abs(direct) * through
     told = size >= min(SMALL, float(np.sort(size)[-3]))
-    gain = float(np.median(ratio.real[told]))
+    ratios = np.sort(ratio.real[told])
+    gain = float(ratios[len(ratios) // 2])
     error = np.abs(ratio - gain) * size / abs(gain)
     return gain if gain != 0 and np.all(error <= MET * np.maximum(size, SMALL)) else None
 
@@ -159,4 +164,5 @@ def _points(poles: Complexes, zeros: Complexes) -> Complexes:
     places = np.abs(np.concatenate([poles, zeros]))
     places = places[(places > 0) & (places < 1e8)]
     low, high = (float(places.min()), float(places.max())) if places.size else (1.0, 1.0)
-    return np.asarray(1j * np.geomspace(0.1 * low, 10.0 * max(high, 1.0), 16))
+    low, high = 0.1 * low, 10.0 * max(high, 1.0)
+    return np.asarray(1j * low * np.exp(np.arange(POINTS) * (math.log(high / low) / (POINTS - 1))))

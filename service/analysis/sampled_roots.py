@@ -13,6 +13,7 @@ from __future__ import annotations
 import math
 
 import numpy as np
+import numpy.typing as npt
 
 from service.analysis import chebyshev
 from service.analysis.frequency import AxisResponse
@@ -61,8 +62,8 @@ def _from_points(
 ) -> CharacteristicRoots | None:
     """The roots that so many points resolve; None where the outermost may not be among them."""
     line = states.plant.held_scans
-    roots = _polished(loop, np.linalg.eigvals(_compressed(states, points)).astype(complex))
-    roots = roots[_angle(roots) * line <= 2.0 * (points - 3.0 * points ** (1 / 3))]
+    roots = _polished(loop, np.linalg.eigvals(compressed(states, points)).astype(complex))
+    roots = roots[resolved(np.angle((1.0 + roots) / (1.0 - roots)), line, points)]
     # a root that is not resolved lies where abs L is below the level, so inside this circle
     outside = np.log(np.abs((1.0 + roots) / (1.0 - roots))) > -level / line
     if not outside.any():
@@ -79,9 +80,11 @@ def _polished(loop: OpenLoop, z: Complexes) -> Complexes:
     return roots[np.lexsort((np.abs(roots.imag), -np.abs((1.0 + roots) / (1.0 - roots))))]
 
 
-def _angle(w: Complexes) -> Reals:
-    """The angle of z, shape of `w`."""
-    return np.asarray(np.abs(np.angle((1.0 + w) / (1.0 - w))))
+def resolved(angle: Reals, line: int, points: int) -> npt.NDArray[np.bool_]:
+    """Whether so many points resolve a root at this angle of z, shape of `angle`; others are not to be
+    trusted.
+    """
+    return np.asarray(np.abs(angle) * line <= 2.0 * (points - 3.0 * points ** (1 / 3)))
 
 
 def _points_needed(axis: AxisResponse, line: int, level: float) -> int | None:
@@ -90,13 +93,18 @@ def _points_needed(axis: AxisResponse, line: int, level: float) -> int | None:
     highest = 2.0 * math.atan(float(above[-1])) if above.size else 0.0
     if above.size and above[-1] == axis.omega[-1]:
         highest = math.pi
+    return points_for(highest, line)
+
+
+def points_for(highest: float, line: int) -> int | None:
+    """Points that resolve every root up to the angle `highest` of z; None where they are too many."""
     angle = highest * line
     points = FEWEST_POINTS + math.ceil(0.5 * angle + 3.0 * angle ** (1 / 3))
     return points if points <= MOST_POINTS and 2.0 * points / math.sqrt(line) <= MOST_AMPLIFIED else None
 
 
-def _compressed(states: SampledStates, points: int) -> Reals:
-    """The closed loop's matrix, the past outputs carried by `points` points; shape (m + points,) twice."""
+def compressed(states: SampledStates, points: int) -> Reals:
+    """The closed loop's matrix, square, the past outputs carried by `points` points; (m + points) rows."""
     m, line, k = states.order, states.plant.held_scans, states.plant.whole_scans
     # place j is w[n−j]: the present output first, then points from the last scan to the far end
     places = np.concatenate([[0.0], 1.0 + (line - 1.0) * chebyshev.points(points)])

@@ -12,6 +12,7 @@ dead time) and section 8.2 (approximation by substitution). From memory.
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -127,14 +128,22 @@ class Scanned:
 
     def sample(self, extra_delay: float = 0.0) -> SampledPlant:
         """The plant over one scan, with its delay lengthened by `extra_delay`."""
+        return self.samples([extra_delay])[0]
+
+    def samples(self, extra_delays: Sequence[float]) -> list[SampledPlant]:
+        """The plant over one scan for each of several extra delays."""
         a, b, c, d = self.plant
-        whole, fraction = self.split_delay(extra_delay)
-        h, n = self.interval, len(a)
-        over = exponentials_less_one(augmented(a, b), h * np.array([fraction, 1.0 - fraction, 1.0]))
-        first, second, scan = over
-        gamma1 = first[:n, n] + second[:n, :n] @ first[:n, n]
-        slope = h * (b + second[:n, :n] @ b)
-        return SampledPlant(scan[:n, :n], second[:n, n], gamma1, slope, c, d, whole, fraction)
+        n = len(a)
+        split = [self.split_delay(extra) for extra in extra_delays]
+        shares = [share for _, fraction in split for share in (fraction, 1.0 - fraction)]
+        over = exponentials_less_one(augmented(a, b), self.interval * np.array([*shares, 1.0]))
+        scan = over[-1, :n, :n]
+        plants = []
+        for (whole, fraction), first, second in zip(split, over[:-1:2], over[1::2], strict=True):
+            gamma1 = first[:n, n] + second[:n, :n] @ first[:n, n]
+            slope = self.interval * (b + second[:n, :n] @ b)
+            plants.append(SampledPlant(scan, second[:n, n], gamma1, slope, c, d, whole, fraction))
+        return plants
 
 
 def augmented(a: Reals, b: Reals) -> Reals:
