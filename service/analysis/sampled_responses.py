@@ -176,7 +176,9 @@ def _by_inputs(states: SampledStates, count: int) -> tuple[Reals, Reals]:
     block = min(k, 48)
     rows = _rows_of_known_inputs(states, block)
     state = np.zeros((m, 4))
-    held = np.zeros((k + 1 + count + block, 4))  # w from scan −k−1 on
+    # with a dead time beyond the last scan no output ever arrives, however far beyond it lies
+    line = min(k, count + block)
+    held = np.zeros((line + 1 + count + block, 4))  # w from scan −line−1 on
     steps = np.zeros((2, 4))
     steps[0, SETPOINT_STEP] = 1.0
     plant_states, outputs = [], []
@@ -189,7 +191,7 @@ def _by_inputs(states: SampledStates, count: int) -> tuple[Reals, Reals]:
         plant_states.append(found[:-1, :n, :2].copy())
         outputs.append(found[:-1, m].copy())
         state = found[-1, :m]
-        held[begin + k + 1 : begin + k + 1 + block] = found[:-1, m] + _load()
+        held[begin + line + 1 : begin + line + 1 + block] = found[:-1, m] + _load()
     return np.concatenate(plant_states), np.concatenate(outputs)
 
 
