@@ -41,7 +41,7 @@ from service.records.roles import CONSOLE
 from service.verification.verifier import verify
 from tests.api import plant
 from tests.api.conftest import CHEAP, PEOPLE, add_account, password_of
-from tests.api.plant import Body
+from tests.api.plant import Body, changed
 from tests.clusters import Cluster
 from tests.databases import PostgresqlDatabases, SqliteFiles
 from tests.faults import described
@@ -155,9 +155,10 @@ class Run:
         measured = [[1.0 / (1.0 + w * w), -w / (1.0 + w * w)] for w in (0.1, 0.3, 1.0, 3.0, 10.0, 30.0)]
         points = {"kind": "frequency_response", "response": measured, "unstable_poles": 0}
         points["frequencies_rad_s"] = [0.1, 0.3, 1.0, 3.0, 10.0, 30.0]
-        everything = {"include": ["curves", "second_opinion"]}
-        for model in (plant.MODEL["plant_model"], points):
-            self._made("/v1/recomputations", plant.RECOMPUTATION | {"plant_model": model} | everything)
+        everything = plant.RECOMPUTATION | {"include": ["curves", "second_opinion"]}
+        scanned = changed(everything, "/controller/scan", {"interval_s": 1.7})
+        for body in (everything, everything | {"plant_model": points}, scanned):
+            self._made("/v1/recomputations", body)
         for path in (
             f"/submissions/{self.world.submission}",
             f"/submissions/{self.world.submission}/sheet.pdf",
