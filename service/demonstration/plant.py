@@ -30,7 +30,7 @@ class Person:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Loop:
-    """A loop as it was registered, and its one model."""
+    """A loop as it was registered, and its first model."""
 
     registration: Body
     model: Body
@@ -38,7 +38,9 @@ class Loop:
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Change:
-    """One call that somebody made: `register`, `model`, `submit`, `decide` or `install`."""
+    """One call that somebody made: `register`, `model`, `submit`, `decide`, `install`, `propose` a change of
+    a loop, or `confirm` one.
+    """
 
     time: datetime
     who: str
@@ -46,6 +48,8 @@ class Change:
     tag: str | None = None
     submission: str | None = None
     """What the year calls the submission that is made or meant."""
+    proposal: str | None = None
+    """What it calls the change of a loop that is proposed or confirmed."""
     gains: str | None = None
     as_found: str | None = None
     as_left: str | None = None

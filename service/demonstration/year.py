@@ -41,6 +41,7 @@ class Year:
     """By account name."""
     _loop_ids: dict[str, str] = field(default_factory=dict)
     _submission_ids: dict[str, str] = field(default_factory=dict)
+    _proposal_ids: dict[str, str] = field(default_factory=dict)
 
     def live(self) -> Iterator[Change]:
         """Make one change after the other and yield each one that was made. Raises Refused."""
@@ -50,6 +51,8 @@ class Year:
             "submit": self._submit,
             "decide": self._decide,
             "install": self._install,
+            "propose": self._propose,
+            "confirm": self._confirm,
         }
         for change in self.plant.year:
             self.calendar.now = change.time
@@ -62,7 +65,7 @@ class Year:
 
     def _model(self, change: Change) -> None:
         model = self.plant.loops[str(change.tag)].model
-        self._post(change, f"/v1/loops/{self._loop_ids[str(change.tag)]}/models", model)
+        self._post(change, f"/v1/loops/{self._loop_ids[str(change.tag)]}/models", {**model, **change.body})
 
     def _submit(self, change: Change) -> None:
         registration = self.plant.loops[str(change.tag)].registration
@@ -71,16 +74,30 @@ class Year:
         self._submission_ids[str(change.submission)] = self._post(change, "/v1/submissions", body)["id"]
 
     def _decide(self, change: Change) -> None:
-        path = f"/v1/submissions/{self._submission_ids[str(change.submission)]}"
-        reviewed = self._call(change, "GET", path, None)
-        password = next(person.password for person in self.plant.people if person.name == change.who)
-        signed = {"content_digest": reviewed["content_digest"], "password": password}
-        self._post(change, f"{path}/decisions", {**change.body, **signed})
+        self._sign(change, f"/v1/submissions/{self._submission_ids[str(change.submission)]}")
 
     def _install(self, change: Change) -> None:
         path = f"/v1/submissions/{self._submission_ids[str(change.submission)]}/installations"
         found, left = (self.plant.gains[str(name)] for name in (change.as_found, change.as_left))
         self._post(change, path, {**change.body, "as_found": found, "as_left": left})
+
+    def _propose(self, change: Change) -> None:
+        """Propose the loop as it was registered with what the body's `loop` has otherwise."""
+        path = f"/v1/loops/{self._loop_ids[str(change.tag)]}"
+        present = self._call(change, "GET", path, None)
+        loop = {**self.plant.loops[str(change.tag)].registration, **change.body["loop"]}
+        body = {**change.body, "loop": loop, "revision": present["revision"]}
+        self._proposal_ids[str(change.proposal)] = self._post(change, f"{path}/changes", body)["id"]
+
+    def _confirm(self, change: Change) -> None:
+        self._sign(change, f"/v1/changes/{self._proposal_ids[str(change.proposal)]}")
+
+    def _sign(self, change: Change, path: str) -> None:
+        """Read, then decide on exactly what was read."""
+        read = self._call(change, "GET", path, None)
+        password = next(person.password for person in self.plant.people if person.name == change.who)
+        signed = {"content_digest": read["content_digest"], "password": password}
+        self._post(change, f"{path}/decisions", {**change.body, **signed})
 
     def _post(self, change: Change, path: str, body: Body) -> Any:
         return self._call(change, "POST", path, body)

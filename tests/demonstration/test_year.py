@@ -143,3 +143,29 @@ def test_a_store_that_holds_anything_is_not_touched(shown: Shown) -> None:
     with pytest.raises(StoreNotUsable):
         fill(shown.settings, NOW, on_change=lambda _change: None)
     assert store.read_bytes() == before
+
+
+def test_a_transmitter_was_ranged_anew_by_two_people_and_the_gains_followed(shown: Shown) -> None:
+    (change,) = shown.get("/v1/changes?tag=TIC-2205")["items"]
+    assert change["state"] == "confirmed"
+    assert change["proposed_by"]["name"] != change["decision"]["signed_by"]["name"]
+    assert (change["before"]["pv"]["low"], change["after"]["pv"]["low"]) == (20.0, 60.0)
+    (confirmed,) = shown.get("/v1/history?kind=loop_change_confirmed")["items"]
+    (due,) = confirmed["content"]["recheck_due"]
+    before, after = (
+        shown.get(f"/v1/submissions/{due}"),
+        shown.submissions("&state=in_force&tag=TIC-2205")[0],
+    )
+    assert before["state"] == "superseded"
+    assert not before["recheck_due"]
+    # the gain in per cent of the range follows the span, so that the loop is the loop that it was
+    margins = [
+        each["recomputations"][0]["result"]["continuous"]["margins"]["gain_margin"]
+        for each in (before, after)
+    ]
+    assert margins[1] == pytest.approx(margins[0], rel=0.01)
+
+
+def test_a_change_of_a_loop_awaits_a_second_person(shown: Shown) -> None:
+    (change,) = shown.get("/v1/changes?state=awaiting_confirmation")["items"]
+    assert change["before"]["tag"] == "PIC-4107"
