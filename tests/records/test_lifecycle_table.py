@@ -19,8 +19,53 @@ AN_INSTANT = timedelta(microseconds=1)
 NO_LIMITS = Limits(install_by=None, temporary_until=None)
 
 
+LEADS: dict[State, dict[Action, State]] = {
+    "awaiting_review": {
+        "approve_first": "awaiting_review",
+        "approve": "approved",
+        "reject": "rejected",
+        "withdraw": "withdrawn",
+    },
+    "approved": {"install": "in_force", "install_otherwise": "approved", "revoke": "revoked"},
+    "in_force": {
+        "install": "in_force",
+        "install_otherwise": "in_force",
+        "revoke": "revoked",
+        "supersede": "superseded",
+    },
+    "installed_awaiting_review": {
+        "install": "installed_awaiting_review",
+        "install_otherwise": "installed_awaiting_review",
+        "approve_first": "installed_awaiting_review",
+        "approve": "in_force",
+        "reject": "rejected",
+        "supersede": "superseded_awaiting_review",
+    },
+    "superseded_awaiting_review": {
+        "approve_first": "superseded_awaiting_review",
+        "approve": "superseded",
+        "reject": "rejected",
+    },
+    "recorded": {"supersede": "superseded"},
+    "lapsed": {"revoke": "revoked", "supersede": "superseded"},
+}
+"""Where each step leads, as the rules have it; whatever is not here is refused."""
+
+
 def _actor(*roles: Role, account: str = "a") -> Actor:
     return Actor(account_id=account, name=account, full_name=account, roles=frozenset(roles))
+
+
+@pytest.mark.parametrize("action", ACTIONS)
+@pytest.mark.parametrize("state", STATES)
+def test_a_step_leads_where_the_rules_say_and_nowhere_else(state: State, action: Action) -> None:
+    target = LEADS.get(state, {}).get(action)
+    assert lifecycle.allows(state, action) is (target is not None)
+    if target is None:
+        with pytest.raises(WrongStep):
+            lifecycle.step(state, action)
+    else:
+        assert lifecycle.step(state, action).target == target
 
 
 OTHERS, OWN = frozenset({"b"}), frozenset({"a", "b"})

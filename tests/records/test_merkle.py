@@ -7,6 +7,7 @@ import hashlib
 import pytest
 
 from service.records import merkle
+from service.verification.tree import Tree, leaf_hash
 
 LEAVES = [merkle.leaf_hash(bytes([number])) for number in range(70)]
 
@@ -76,6 +77,36 @@ def test_every_tree_is_proven_to_begin_every_later_one(second: int) -> None:
         path = merkle.consistency_path(LEAVES[:second], first)
         assert consistency_holds(first, second, old, root, path)
         assert not consistency_holds(first, second, merkle.root_of(LEAVES[1 : first + 1]), root, path)
+
+
+PUBLISHED = {
+    "": "6e340b9cffb37a989ca544e6bb780a2c78901d3fb33738768511a30617afa01d",
+    "00": "fac54203e7cc696cf0dfcb42c92a1d9dbaf70ad9e621f4bd8d98662f00e3c125",
+    "10": "aeb6bcfe274b70a14fb067a5e5578264db0fa9b51af5e0ba159158f329e06e77",
+    "2021": "d37ee418976dd95753c1c73862b9398fa2a2cf9b4ff0fdfe8b30cd95209614b7",
+    "3031": "4e3bbb1f7b478dcfe71fb631631519a3bca12c9aefca1612bfce4c13a86264d4",
+    "40414243": "76e67dadbcdf1e10e1b74ddc608abd2f98dfb16fbce75277b5232a127f2087ef",
+    "5051525354555657": "ddb89be403809e325750d3d263cd78929c2942b7942a34b77e122c9594a74c8c",
+    "606162636465666768696a6b6c6d6e6f": "5dc9da79a70659a9ad559cb701ded9a2ab9d823aad2f4960cfe370eff4604328",
+}
+"""Leaf, in hex → root of the tree that ends with it: the vectors with which the reference implementation of
+Certificate Transparency (RFC 6962, whose tree RFC 9162 keeps) tries its own; from memory.
+"""
+
+
+def test_the_writers_and_the_verifiers_trees_have_the_published_roots() -> None:
+    leaves, tree = [], Tree()
+    for leaf, root in PUBLISHED.items():
+        leaves.append(merkle.leaf_hash(bytes.fromhex(leaf)))
+        tree.add(leaf_hash(bytes.fromhex(leaf)))
+        assert merkle.root_of(leaves).hex() == tree.root.hex() == root
+
+
+def test_a_tree_without_leaves_has_the_digest_of_nothing_for_its_root() -> None:
+    """RFC 9162, section 2.1.1."""
+    nothing = hashlib.sha256(b"").digest()
+    assert merkle.root_of([]) == merkle.root(b"") == Tree().root == nothing
+    assert Tree().edge == b""
 
 
 def test_the_root_grown_leaf_by_leaf_is_the_root_of_all_leaves() -> None:
