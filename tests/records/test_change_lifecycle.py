@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from itertools import product
+from pathlib import Path
 from typing import get_args
 
 import pytest
@@ -65,3 +66,41 @@ def test_a_decision_stands_whatever_moves_afterwards() -> None:
 
 def test_every_state_has_its_words() -> None:
     assert len({change_lifecycle.in_words(state) for state in STATES}) == len(STATES)
+
+
+def test_a_change_that_nothing_has_moved_under_awaits_its_second_person() -> None:
+    assert change_lifecycle.as_read(None, moved=False) == "awaiting_confirmation"
+
+
+@pytest.mark.parametrize(
+    ("state", "roles", "account", "actions"),
+    [
+        ("awaiting_confirmation", ("reviewer",), "b", ("confirm", "reject")),
+        ("awaiting_confirmation", ("reviewer",), "a", ("withdraw",)),
+        ("awaiting_confirmation", ("administrator",), "b", ()),
+        ("overtaken", ("reviewer",), "b", ("reject",)),
+        ("overtaken", ("submitter",), "a", ("withdraw",)),
+        ("confirmed", ROLES, "b", ()),
+    ],
+)
+def test_what_is_open_is_what_the_table_and_the_person_allow(
+    state: ChangeState, roles: tuple[Role, ...], account: str, actions: tuple[ChangeAction, ...]
+) -> None:
+    assert change_lifecycle.open_to(state, actor(*roles, account=account), "a") == actions
+
+
+@pytest.mark.parametrize(
+    ("state", "told"),
+    [
+        ("overtaken", r"overtaken by another change; propose it again from the loop as it is$"),
+        ("confirmed", r"this change is confirmed$"),
+    ],
+)
+def test_a_refused_step_says_what_is_left_to_do(state: ChangeState, told: str) -> None:
+    with pytest.raises(WrongStep, match=told):
+        change_lifecycle.check(state, "confirm")
+
+
+def test_the_diagram_of_changes_in_the_developers_guide_is_the_table() -> None:
+    guide = (Path(__file__).parents[2] / "DEVELOPERS.md").read_text(encoding="utf-8")
+    assert f"```mermaid\n{change_lifecycle.diagram()}\n```" in guide
