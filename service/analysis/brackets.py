@@ -108,7 +108,7 @@ def zero_between(
 
 def _interpolated(a: float, b: float, c: float, at_a: float, at_b: float, at_c: float) -> float:
     """The share of the way from a to b where the inverse quadratic through three points is 0, or a half."""
-    if at_c == at_b or c == b:
+    if len({at_a, at_b, at_c}) < 3 or len({a, b, c}) < 3:
         return 0.5
     span, rise = (a - b) / (c - b), (at_a - at_b) / (at_c - at_b)
     if not (rise * rise < span and (1.0 - rise) * (1.0 - rise) < 1.0 - span):

@@ -135,11 +135,14 @@ class OpenLoop:
     def at_frequency(self, omega: float) -> tuple[complex, complex]:
         """`on_axis` at one frequency, in plain numbers, which is ten times as fast as an array of one.
 
-        Raises ValueError or ZeroDivisionError upon a zero or pole.
+        Upon a zero or pole, as there: ln abs L is infinite and the derivative is not a number.
         """
         log, slope, s = self._factors[3] - 1j * self.dead_time * omega, complex(-self.dead_time), 1j * omega
         for root, weight, turned in self._factors_one_by_one:
             difference = s - root
+            if difference == 0:
+                log, slope = log - weight * math.inf, complex(math.nan, math.nan)
+                continue
             log += weight * cmath.log(turned * difference)
             slope += weight / difference
         if self.all_pass:
