@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from itertools import product
-from pathlib import Path
 from typing import get_args
 
 import pytest
@@ -99,8 +98,3 @@ def test_what_is_open_is_what_the_table_and_the_person_allow(
 def test_a_refused_step_says_what_is_left_to_do(state: ChangeState, told: str) -> None:
     with pytest.raises(WrongStep, match=told):
         change_lifecycle.check(state, "confirm")
-
-
-def test_the_diagram_of_changes_in_the_developers_guide_is_the_table() -> None:
-    guide = (Path(__file__).parents[2] / "DEVELOPERS.md").read_text(encoding="utf-8")
-    assert f"```mermaid\n{change_lifecycle.diagram()}\n```" in guide
