@@ -44,7 +44,10 @@ class Scale:
         """Where the value stands, in points."""
         low, high = self.low, self.high
         if self.logarithmic:
-            low, high, value = (math.log10(max(each, _LEAST)) for each in (low, high, value))
+            least = min(_LEAST, low)
+            low, high, value = (math.log10(max(each, least)) for each in (low, high, value))
+        if high == low:
+            return self.start_pt
         return self.start_pt + (self.end_pt - self.start_pt) * (value - low) / (high - low)
 
     def ticks(self, at_most: int) -> tuple[tuple[float, ...], tuple[str, ...]]:

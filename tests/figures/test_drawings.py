@@ -97,3 +97,18 @@ def test_the_typeface_comes_with_its_licence() -> None:
 
 def _length(line: PolyLine) -> int:
     return len(line.points)
+
+
+@pytest.mark.parametrize("factor", [1e-300, 1e-31, 1e250])
+def test_frequencies_at_the_end_of_float64_are_drawn_side_by_side(factor: float) -> None:
+    usual = frequency()
+    curve = replace(usual, rad_s=tuple(value * factor for value in usual.rad_s))
+    lines = shapes(frequency_drawing(curve), PolyLine)
+    own = next(line for line in lines if line.strokeColor == SENSITIVITY.colour and len(line.points) > 8)
+    assert max(own.points[::2]) - min(own.points[::2]) > 300
+
+
+def test_a_single_frequency_is_drawn_too() -> None:
+    usual = frequency()
+    one = replace(usual, **{name: getattr(usual, name)[:1] for name in ("rad_s", "magnitude", "phase_deg")})
+    frequency_drawing(replace(one, sensitivity=usual.sensitivity[:1]))
