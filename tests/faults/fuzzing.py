@@ -71,6 +71,8 @@ VICTIM = NewAccount(
 
 DONE = frozenset({200, 201})
 TOLD_CHARACTERS_MAX = 4000
+TOLD_EACH = 500
+"""The figures are told each time so many more requests were sent."""
 
 
 @dataclass
@@ -122,11 +124,14 @@ class Run:
         try:
             self._begin()
             sources = [self._described(), self._attacks(), self._loops()]
-            told = 0
+            told, told_of_broken = 0, 0
             while self.figures.requests < wanted:
                 for source in sources:
                     next(source)
-                if self.figures.requests - told >= 500:
+                for broken in self.figures.broken[told_of_broken:]:
+                    tell(broken)
+                told_of_broken = len(self.figures.broken)
+                if self.figures.requests - told >= TOLD_EACH:
                     told = self.figures.requests
                     tell(str(self.figures))
         finally:
@@ -304,7 +309,7 @@ class Run:
 
 
 def main() -> None:
-    """Run, print the figures and what was broken."""
+    """Run, print what is broken as it is found, and the figures."""
     parser = argparse.ArgumentParser(description="Send hostile requests to a served process.")
     parser.add_argument("--database", choices=("sqlite", "postgresql"), default="sqlite")
     parser.add_argument("--requests", type=int, default=20_000)
@@ -328,8 +333,6 @@ def main() -> None:
 def _tell(run: Run, wanted: int) -> None:
     figures = run.go(wanted, lambda text: print(text, flush=True))
     print(figures)
-    for broken in figures.broken:
-        print(broken)
     if figures.broken:
         raise SystemExit(1)
 
