@@ -167,6 +167,25 @@ def test_a_margin_over_the_box_counts_only_where_stability_is_proven() -> None:
     assert only(loop, "worst_case_gain_margin_min", 1.1).outcome == "not_assessed"
 
 
+@pytest.mark.parametrize(("limit", "outcome"), [(0.5, "met"), (1.0, "not_met")])
+def test_how_much_error_is_tolerated_is_known_of_a_box_with_an_unstable_member_too(
+    limit: float, outcome: str
+) -> None:
+    scale = Interval(at_least=0.7, at_most=0.71)
+    loop = replace(recomputed(), worst_case=worst_case(stable_for_all=False, tolerated_error_scale=scale))
+    assert only(loop, "tolerated_error_scale_min", limit).outcome == outcome
+
+
+def test_a_tolerated_error_that_was_not_found_is_not_assessed() -> None:
+    loop = replace(recomputed(), worst_case=worst_case(tolerated_error_scale=None))
+    assert only(loop, "tolerated_error_scale_min", 1.0).outcome == "not_assessed"
+
+
+def test_what_holds_over_the_box_names_the_analysis_that_showed_it() -> None:
+    scanned = replace(recomputed(), judged_on="sampled", worst_case=worst_case(analysis="continuous"))
+    assert only(scanned, "worst_case_gain_margin_min", 1.0).analysis == "continuous"
+
+
 def test_the_services_own_floors_are_those_of_the_interface() -> None:
     # interface, section 5
     assert (
@@ -186,6 +205,11 @@ def test_the_floor_of_the_delay_margin_is_a_quarter_of_the_dead_time_and_the_sca
     scan_s: float | None, floor_s: float
 ) -> None:
     assert service_floors(recomputed(), scan_s).delay_margin_s_min == floor_s
+
+
+def test_the_floor_of_the_delay_margin_of_a_fast_loop_is_a_short_time() -> None:
+    loop = recomputed(replace(LAG, dead_time_s=0.2))
+    assert service_floors(loop, None).delay_margin_s_min == 0.05
 
 
 def test_without_dead_time_and_scan_the_delay_margin_has_no_floor() -> None:
