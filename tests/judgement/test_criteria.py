@@ -209,7 +209,7 @@ def test_the_floor_of_the_delay_margin_is_a_quarter_of_the_dead_time_and_the_sca
 
 def test_the_floor_of_the_delay_margin_of_a_fast_loop_is_a_short_time() -> None:
     loop = recomputed(replace(LAG, dead_time_s=0.2))
-    assert service_floors(loop, None).delay_margin_s_min == 0.05
+    assert service_floors(loop, None).delay_margin_s_min == pytest.approx(0.05, rel=1e-12)
 
 
 def test_without_dead_time_and_scan_the_delay_margin_has_no_floor() -> None:
