@@ -21,7 +21,7 @@ ROUNDED = 1e-4
 NODES = 16
 """Nodes of a piece of a response; e^(λt) over a piece with abs λ·length ≤ 6 is met to some 1e-11."""
 
-ZEROS_AT_ONCE = 4096
+ROWS_AT_ONCE = 4096
 """More would leave the processor's cache, and take memory in proportion."""
 
 
@@ -83,14 +83,21 @@ def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[npt.NDArray[np.int
     Changes between two values that are both below `noise` (scalar, or shape (r, 1)) are rounding and left
     out.
     """
+    noise = np.broadcast_to(noise, (len(rows), 1))
+    starts = range(0, len(rows), ROWS_AT_ONCE)
+    blocks = [slice(start, start + ROWS_AT_ONCE) for start in starts]
+    found = [_zeros_of_block(rows[block], noise[block]) for block in blocks]
+    if not found:
+        return np.empty(0, np.intp), np.empty(0)
+    row = [start + of_block for start, (of_block, _) in zip(starts, found, strict=True)]
+    return np.concatenate(row), np.concatenate([place for _, place in found])
+
+
+def _zeros_of_block(rows: Reals, noise: Reals) -> tuple[npt.NDArray[np.intp], Reals]:
     before, after = rows[:, :-1], rows[:, 1:]
     changes = ((before > 0) != (after > 0)) & (np.maximum(np.abs(before), np.abs(after)) > noise)
     row, node = np.nonzero(changes)
-    if not row.size:
-        return row, np.empty(0)
-    blocks = (slice(start, start + ZEROS_AT_ONCE) for start in range(0, len(row), ZEROS_AT_ONCE))
-    noise_of = np.broadcast_to(noise, (len(rows), 1))[row, 0]
-    return row, np.concatenate([_zeros(rows[row[block]], node[block], noise_of[block]) for block in blocks])
+    return row, _zeros(rows[row], node, noise[row, 0]) if row.size else np.empty(0)
 
 
 def _zeros(rows: Reals, node: npt.NDArray[np.intp], noise: Reals) -> Reals:
