@@ -47,16 +47,18 @@ class Coverers:
         """Keep it for another process."""
         file.write_text(json.dumps(asdict(self)))
 
-    def tests_of(self, module: str, mutant: Mutant) -> list[str]:
+    def tests_of(self, module: str, mutant: Mutant, others_max: int) -> list[str]:
         """Return the tests that run the statement; of a line that only an import runs, the module's tests.
 
-        Those of the module's own file come first, then the quickest.
+        Those of the module's own file come first, then the quickest `others_max` others.
         """
         lines = self.lines[module]
         of_line = {test for line in mutant.statement for test in lines.get(str(line), ())}
         tests = of_line or {test for tests in lines.values() for test in tests}
-        own = f"test_{Path(module).stem}."
-        return sorted(tests, key=lambda test: (own not in test, self.durations_s[test]))
+        name = f"test_{Path(module).stem}."
+        quickest = sorted(tests, key=self.durations_s.__getitem__)
+        own = [test for test in quickest if name in test]
+        return own + [test for test in quickest if name not in test][:others_max]
 
     def limit_s(self, tests: list[str]) -> float:
         """Return the time past which these tests hang."""

@@ -27,11 +27,11 @@ Functions = dict[tuple[str, str | None], list[FunctionType]]
 class TryingInside:
     """A pytest plugin that takes the place of the usual loop over the tests."""
 
-    def __init__(self, measured: list[str], tried: list[str], kept: Path, tests_max: int) -> None:
+    def __init__(self, measured: list[str], tried: list[str], kept: Path, others_max: int) -> None:
         self._measured = measured
         self._tried = tried
         self._kept = kept
-        self._tests_max = tests_max
+        self._others_max = others_max
         self._failed = False
 
     def pytest_runtest_logreport(self, report: pytest.TestReport) -> None:
@@ -72,7 +72,7 @@ class TryingInside:
         for mutant in mutants(Path(module).read_text()):
             if mutant.function is None:
                 continue
-            tests = coverers.tests_of(module, mutant)[: self._tests_max]
+            tests = coverers.tests_of(module, mutant, self._others_max)
             chosen = [items[test] for test in tests]
             functions = live[_file(module), mutant.function]
             outcome = forked(lambda: self._try(mutant, functions, chosen), coverers.limit_s(tests))  # noqa: B023

@@ -56,7 +56,9 @@ def _arguments() -> argparse.Namespace:
     parser.add_argument("modules", nargs="+", help="files of the service")
     parser.add_argument("--tests", nargs="+", required=True, help="folders or files of tests")
     parser.add_argument("--deselect", default="postgresql or walks", help="tests to leave out (pytest's -k)")
-    parser.add_argument("--tests-max", type=int, default=200, help="tests that a fault is tried with at most")
+    parser.add_argument(
+        "--others-max", type=int, default=200, help="tests beside the module's own file that are run at most"
+    )
     parser.add_argument(
         "--all-at-import", action="store_true", help="for what runs while a session's store is set up"
     )
@@ -69,7 +71,7 @@ def _try_inside(wanted: argparse.Namespace, kept: Path) -> int:
     from tests.mutation.inside import TryingInside  # noqa: PLC0415  imports pytest
 
     modules = [] if wanted.all_at_import else wanted.modules
-    trying = TryingInside(wanted.modules, modules, kept, wanted.tests_max)
+    trying = TryingInside(wanted.modules, modules, kept, wanted.others_max)
     return int(pytest.main(["-q", "-s", *wanted.tests, "-k", f"not ({wanted.deselect})"], plugins=[trying]))
 
 
@@ -82,7 +84,7 @@ def _try_at_import(module: str, kept: Path, wanted: argparse.Namespace) -> None:
         for mutant in mutants(source):
             if mutant.function is not None and not wanted.all_at_import:
                 continue
-            tests = coverers.tests_of(module, mutant)[: wanted.tests_max]
+            tests = coverers.tests_of(module, mutant, wanted.others_max)
             file.write_text(mutant.module)
             _forget_compiled(file)
             outcome = forked(lambda: _run(tests), coverers.limit_s(tests))  # noqa: B023  it runs at once
