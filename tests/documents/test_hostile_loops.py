@@ -12,6 +12,7 @@ from service.documents.errors import InvalidDocument
 from service.documents.reading import read
 from service.documents.recomputations import RecomputationRequest, answer
 from service.documents.writing import to_bytes
+from tests.documents.worst_requests import WORST, WorstRequest
 
 PI = {
     "form": "ideal",
@@ -131,3 +132,18 @@ def test_it_is_answered_or_refused_by_name(name: str) -> None:
         assert places
     else:
         assert json.loads(to_bytes(found))["verdict"] == found.verdict
+
+
+@pytest.mark.parametrize("worst", WORST, ids=lambda worst: worst.name)
+def test_the_worst_requests_found_end_in_their_verdict_with_its_reason(worst: WorstRequest) -> None:
+    found = answer(read(RecomputationRequest, json.dumps(worst.document).encode()))
+    assert found.verdict == worst.verdict
+    assert set(found.continuous.notes) == set(worst.notes)
+    assert (None if found.sampled is None else found.sampled.notes) == worst.notes_at_scans
+    if worst.verdict == "undecided":
+        reasons = {
+            analysis.stability.reason
+            for analysis in (found.continuous, found.sampled)
+            if analysis is not None
+        }
+        assert worst.reason in reasons

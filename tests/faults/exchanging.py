@@ -44,11 +44,12 @@ def exchange(
 def exchange_raw(port: int, raw: bytes, timeout_s: float = ANSWER_S_MAX) -> Answer:
     """Send these bytes and nothing more; return the first answer, `NO_ANSWER` where there is none."""
     with socket.create_connection(("127.0.0.1", port), timeout=timeout_s) as connection:
-        with contextlib.suppress(BrokenPipeError, ConnectionResetError):
+        # the other side may have answered and left before all was sent
+        with contextlib.suppress(OSError):
             connection.sendall(raw)
             connection.shutdown(socket.SHUT_WR)
         received = b""
-        with contextlib.suppress(ConnectionResetError, TimeoutError):
+        with contextlib.suppress(OSError):
             while part := connection.recv(65_536):
                 received += part
     return told_by(received)

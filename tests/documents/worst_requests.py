@@ -1,0 +1,214 @@
+"""Requests that took longest, or most memory, of all that a fuzz over float64 has found; each as it is now.
+
+They are no loops of a plant. `tests/benchmarks/test_worst_requests.py` prints what they take.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+from service.analysis import codes
+
+Json = dict[str, Any]
+
+
+@dataclass(frozen=True)
+class WorstRequest:
+    """A request, its verdict with the reason where it is undecided, and what could not be computed.
+
+    `notes` of the continuous analysis, `notes_at_scans` of the sampled one, None where there is none.
+    """
+
+    name: str
+    plant_model: Json
+    controller: Json
+    verdict: str
+    notes: tuple[str, ...] = ()
+    notes_at_scans: tuple[str, ...] | None = None
+    reason: str | None = None
+    include: tuple[str, ...] = ("curves",)
+
+    @property
+    def document(self) -> Json:
+        """The request as it is sent."""
+        return {
+            "plant_model": self.plant_model,
+            "controller": self.controller,
+            "include": list(self.include),
+        }
+
+
+def _gain(value: float) -> Json:
+    return {"value": value, "unit": "gain"}
+
+
+def _seconds(value: float) -> Json:
+    return {"value": value, "unit": "seconds"}
+
+
+def _order_20(dead_time_s: float) -> Json:
+    """Ten light resonances side by side, under a dead time that its own fastest crossover turns often."""
+    pairs = [[-0.01 * (n + 1), 1.0 + 0.05 * n] for n in range(10)]
+    poles = [pole for real, imag in pairs for pole in ([real, imag], [real, -imag])]
+    return {
+        "kind": "zeros_poles_gain",
+        "zeros_rad_s": [],
+        "poles_rad_s": poles,
+        "gain": 1000.0,
+        "dead_time_s": dead_time_s,
+    }
+
+
+TOO_SLOW = codes.TOO_SLOW
+NO_DELAY_MARGIN = codes.DELAY_MARGIN
+
+WORST: tuple[WorstRequest, ...] = (
+    WorstRequest(
+        # 6.4 s and 680 MiB before the values of a response were counted
+        "an oscillation that never dies, scanned slowly",
+        {
+            "kind": "second_order",
+            "gain": 1.6e-4,
+            "natural_frequency_rad_s": 0.649,
+            "damping_ratio": 0.0,
+            "dead_time_s": 3.84,
+        },
+        {
+            "form": "parallel",
+            "action": "reverse",
+            "proportional": _gain(0.0144),
+            "integral": _seconds(50.4),
+            "derivative": {"value": 157.0, "unit": "gain_seconds"},
+            "derivative_filter": _seconds(5514.0),
+            "scan": {"interval_s": 22.875368383830605},
+        },
+        "unstable",
+        notes_at_scans=(TOO_SLOW,),
+    ),
+    WorstRequest(
+        # 6.3 s and 860 MiB
+        "two light resonances, one scanned every hundred of its turns",
+        {
+            "kind": "zeros_poles_gain",
+            "zeros_rad_s": [80.9],
+            "poles_rad_s": [[0.0, 981.6], [0.0, -981.6], [-4.9e-4, 74.5], [-4.9e-4, -74.5]],
+            "gain": 0.0042,
+            "dead_time_s": 0.0063,
+        },
+        {
+            "form": "series",
+            "action": "direct",
+            "proportional": _gain(42.15),
+            "integral": _seconds(177.8),
+            "measurement_filter_s": 0.0214,
+            "scan": {"interval_s": 0.8926932452865985, "output_delay_s": 0.7018529857382103},
+        },
+        "stable",
+        notes=(TOO_SLOW,),
+        notes_at_scans=(NO_DELAY_MARGIN, TOO_SLOW),
+    ),
+    WorstRequest(
+        # 2.9 s and 540 MiB
+        "a resonance of thousands of turns in a dead time of thousands of scans",
+        {
+            "kind": "zeros_poles_gain",
+            "zeros_rad_s": [],
+            "poles_rad_s": [[-0.0386, 481.1], [-0.0386, -481.1]],
+            "gain": 9.03e-4,
+            "dead_time_s": 412.7,
+        },
+        {
+            "form": "ideal",
+            "action": "reverse",
+            "proportional": _gain(1.98),
+            "integral": _seconds(632.3),
+            "scan": {"interval_s": 0.1337},
+        },
+        "stable",
+        notes=(TOO_SLOW,),
+        notes_at_scans=(NO_DELAY_MARGIN, TOO_SLOW),
+    ),
+    WorstRequest(
+        # 2.2 s and 340 MiB
+        "a derivative filter of 1e-9 s under 1082 s of dead time",
+        {
+            "kind": "transfer_function",
+            "numerator": [-0.0319],
+            "denominator": [147.7, 0.366],
+            "dead_time_s": 1081.7,
+        },
+        {
+            "form": "ideal",
+            "action": "direct",
+            "proportional": _gain(0.0414),
+            "integral": _seconds(12.13),
+            "derivative": _seconds(989.3),
+            "derivative_filter": _seconds(1e-9),
+        },
+        "stable",
+        notes=(TOO_SLOW,),
+        include=("curves", "second_opinion"),
+    ),
+    WorstRequest(
+        # 0.7 s and 130 MiB
+        "a filter of 0.2 ms under 78 s of dead time",
+        {
+            "kind": "first_order",
+            "gain": 6e-4,
+            "time_constant_s": 17.32,
+            "dead_time_s": 77.65,
+        },
+        {
+            "form": "two_zeros",
+            "action": "reverse",
+            "gain": 9.21,
+            "zeros_rad_s": [[-0.371, 0.361], [-0.371, -0.361]],
+            "derivative_filter": _seconds(1.6e-4),
+        },
+        "stable",
+    ),
+    WorstRequest(
+        # asked for 200 GiB
+        "a dead time of billions of scans",
+        {"kind": "state_space", "a": [[-200.0]], "b": [1e-3], "c": [4000.0], "dead_time_s": 6.4},
+        {
+            "form": "ideal",
+            "action": "direct",
+            "proportional": _gain(0.76),
+            "scan": {"interval_s": 1e-9},
+        },
+        "undecided",
+        notes=(TOO_SLOW,),
+        notes_at_scans=(),
+        reason="the dead time is too many scans long against the loop's crossovers for the roots to be "
+        "computed",
+    ),
+    WorstRequest(
+        "order 20 at the bound on nodes",
+        _order_20(290.0),
+        {"form": "ideal", "action": "reverse", "proportional": _gain(1.0)},
+        "unstable",
+    ),
+    WorstRequest(
+        "order 20 past the bound on nodes",
+        _order_20(2900.0),
+        {"form": "ideal", "action": "reverse", "proportional": _gain(1.0)},
+        "undecided",
+        reason="the dead time is too long against the loop's fastest gain crossover for the roots to be "
+        "computed",
+    ),
+    WorstRequest(
+        "a loop that is at rest after 38,000 scans",
+        {"kind": "first_order", "gain": 1.0, "time_constant_s": 10.0, "dead_time_s": 2.0},
+        {
+            "form": "ideal",
+            "action": "reverse",
+            "proportional": _gain(2.0),
+            "integral": _seconds(10.0),
+            "scan": {"interval_s": 0.006},
+        },
+        "stable",
+        notes_at_scans=(),
+    ),
+)
