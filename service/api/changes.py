@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from flask import Blueprint
 
-from service.api import answers, representations
+from service.api import answers, problems, representations
 from service.api.answers import Answer
 from service.api.operations import Call, Reader, Variables, changes, changes_prepared, reads
 from service.api.queries import NoQuery, PageQuery, Text
@@ -42,7 +42,7 @@ def _leave_trace(call: Call, refusal: SigningRefused | NotIndependent, path: Var
 
 
 @blueprint.post("/loops/<loop_id>/changes")
-@changes(LoopChangeRequest, representations.LoopChange)
+@changes(LoopChangeRequest, representations.LoopChange, refuses=(problems.PRECONDITION_FAILED,))
 def propose_change(call: Call, read: Reader[LoopChangeRequest], loop_id: str) -> Answer:
     """Propose a change of what approvals of a loop rest on, or the retirement of an operating point."""
     loops.find(call.session, call.actor, loop_id)

@@ -12,7 +12,7 @@ from service.api.operations import Call, Reader, changes, reads
 from service.api.preconditions import check_match, revision_etag
 from service.api.queries import NoQuery, PageQuery, Text
 from service.documents.loops import LoopRegistration, ModelVersion
-from service.records import loops, queries
+from service.records import left_otherwise, loops, queries
 from service.records.queries import LoopFilter
 from service.records.views import GainsInForce, LoopView
 
@@ -34,6 +34,9 @@ class Running:
     """The gains that run in the controller as far as is recorded; null where nothing is."""
 
     gains_in_force: GainsInForce | None
+    left_otherwise: representations.Installation | None
+    """The last installation that left other gains than approved, where nothing has put that right since: then
+    those gains run, whatever is in force by the record."""
 
 
 @blueprint.post("")
@@ -83,7 +86,9 @@ def list_revisions(call: Call, _query: NoQuery, loop_id: str) -> Answer:
 def show_gains_in_force(call: Call, _query: NoQuery, loop_id: str) -> Answer:
     """Show the gains that run in a loop's controller as far as is recorded."""
     running = queries.gains_in_force(call.session, call.actor, loop_id, call.now)
-    return answers.document(Running(gains_in_force=running))
+    otherwise = left_otherwise.of_loop(call.session, call.actor, loop_id)
+    shown = representations.Installation.of(otherwise) if otherwise else None
+    return answers.document(Running(gains_in_force=running, left_otherwise=shown))
 
 
 @blueprint.post("/<loop_id>/models")

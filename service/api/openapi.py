@@ -28,7 +28,11 @@ Json = dict[str, Any]
 ABOUT = (
     "A tuning tool registers loops and models and submits gains; the service recomputes them by itself, a "
     "second person signs, and the sheet goes to the panel. Site procedure, local codes and licensed practice "
-    "govern."
+    "govern.\n\n"
+    "Nothing is pushed: whoever waits for a decision reads the submission again, some times a minute, until "
+    "its state is no longer one that awaits review. A POST that was not answered is sent again with the same "
+    "Idempotency-Key and makes nothing twice. Of a list, the Link header leads to the next page. "
+    "Refusals name every wrong place at once."
 )
 ALWAYS = (problems.UNAUTHENTICATED, problems.BAD_REQUEST, problems.UNAVAILABLE)
 WITH_BODY = (
@@ -48,6 +52,22 @@ SENT: Json = {
     "Location": {"description": "Where it stands.", "schema": {"type": "string"}},
 }
 """Headers of answers that a program needs."""
+
+SAID_OF_QUERIES = {
+    "limit": "How many items at the most.",
+    "cursor": "Where the page begins, as the Link header of the one before gives it.",
+    "site": "Matched without regard to case.",
+    "tag": "Matched without regard to case.",
+    "since": "From this time on.",
+    "until": "Before this time.",
+    "actor": "Account name of whoever did it.",
+    "kind": "Kind of entry, as the entries of the history name it: gains_submitted, gains_approved, …",
+    "q": "Stands anywhere in tag or description.",
+    "recheck_due": "What these gains were approved on has been changed since.",
+    "left_otherwise": "Other gains than approved were left in the controller and not put right since.",
+    "as_signed": "The bytes that were kept at the decision, in place of the present state.",
+}
+"""What a parameter asks for, where its name does not say it."""
 
 PROBLEM_SCHEMA: Json = {
     "type": "object",
@@ -159,7 +179,8 @@ def _path_parameters(route: Route) -> Iterator[Json]:
 def _query_parameters(operation: Operation) -> Iterator[Json]:
     if isinstance(operation, Reading):
         for name, schema in queries.schemas(operation.query).items():
-            yield {"name": name, "in": "query", "required": False, "schema": schema}
+            described = {"description": SAID_OF_QUERIES[name]} if name in SAID_OF_QUERIES else {}
+            yield {"name": name, "in": "query", "required": False, **described, "schema": schema}
 
 
 def _headers(route: Route) -> Iterator[Json]:
@@ -222,8 +243,7 @@ def _problems(route: Route) -> Iterator[ProblemType]:
     yield problems.BAD_QUERY
     if "{" in route.path or isinstance(route.operation, Changing):
         yield problems.NOT_FOUND
-    if isinstance(route.operation, Reading):
-        yield from route.operation.refuses
+    yield from route.operation.refuses
     if len(route.operation.media_types) > 1:
         yield problems.NOT_ACCEPTABLE
     if isinstance(route.operation, Changing | Computing):

@@ -65,6 +65,8 @@ class Operation:
     status: int = 200
     a_list: bool = False
     media_types: tuple[str, ...] = ("application/json",)
+    refuses: tuple[ProblemType, ...] = ()
+    """What it answers with beside the refusals of every operation of its kind."""
 
     @property
     def __name__(self) -> str:
@@ -82,8 +84,6 @@ class Reading(Operation):
     """Answers from one transaction that cannot write."""
 
     query: type[Any] = NoQuery
-    refuses: tuple[ProblemType, ...] = ()
-    """What it answers with beside the refusals of every reading."""
 
     def __call__(self, **path: Any) -> Response:
         """Handle one request."""
@@ -172,11 +172,22 @@ def reads(
 
 
 def changes(
-    body: type[DocumentT], answer: type, *, status: int = 201, trace: Trace | None = None
+    body: type[DocumentT],
+    answer: type,
+    *,
+    status: int = 201,
+    trace: Trace | None = None,
+    refuses: tuple[ProblemType, ...] = (),
 ) -> Callable[[Callable[Concatenate[Call, Reader[DocumentT], ...], Answer]], Changing]:
     """Make a handler of `call, read` and the address's variables an operation that changes the records."""
     return lambda handler: Changing(
-        handler=handler, body=body, answer=answer, status=status, prepare=_pass_on, trace=trace
+        handler=handler,
+        body=body,
+        answer=answer,
+        status=status,
+        prepare=_pass_on,
+        trace=trace,
+        refuses=refuses,
     )
 
 

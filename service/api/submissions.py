@@ -29,6 +29,7 @@ class SubmissionQuery(PageQuery):
     site: Text | None = None
     tag: Text | None = None
     recheck_due: Literal["true", "false"] | None = None
+    left_otherwise: Literal["true", "false"] | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -57,8 +58,13 @@ def submit(call: Call, prepared: PreparedSubmission) -> Answer:
 def list_submissions(call: Call, query: SubmissionQuery) -> Answer:
     """List submissions, latest first."""
     states = frozenset({query.state} if query.state else ())
-    due = None if query.recheck_due is None else query.recheck_due == "true"
-    wanted = SubmissionFilter(states=states, site=query.site, tag=query.tag, recheck_due=due)
+    wanted = SubmissionFilter(
+        states=states,
+        site=query.site,
+        tag=query.tag,
+        recheck_due=_said(query.recheck_due),
+        left_otherwise=_said(query.left_otherwise),
+    )
     part = queries.submissions(call.session, call.actor, wanted, call.now, answers.after(query), query.limit)
     return answers.page(part, answers.as_it_is)
 
@@ -90,3 +96,7 @@ def show_content(call: Call, _query: NoQuery, submission_id: str) -> Answer:
 def list_curves(call: Call, _query: NoQuery, submission_id: str) -> Answer:
     """List the response curves that were stored with the recomputations."""
     return answers.whole_list(queries.curves(call.session, call.actor, submission_id), answers.as_it_is)
+
+
+def _said(text: Literal["true", "false"] | None) -> bool | None:
+    return None if text is None else text == "true"

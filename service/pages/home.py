@@ -13,6 +13,7 @@ from service.records.queries import SubmissionFilter
 SHOWN = 50
 TO_INSTALL = SubmissionFilter(states=frozenset({"approved"}))
 DUE_FOR_RECHECK = SubmissionFilter(recheck_due=True)
+LEFT_OTHERWISE = SubmissionFilter(left_otherwise=True)
 TO_CONFIRM = ChangeFilter(state="awaiting_confirmation")
 PAST_THEIR_TIME = SubmissionFilter(past_time_and_open=True)
 
@@ -29,6 +30,7 @@ def home() -> Response:
         waiting = queries.awaiting_review(session, actor, now, limit=SHOWN)
         to_install = queries.submissions(session, actor, TO_INSTALL, now, limit=SHOWN)
         past = queries.submissions(session, actor, PAST_THEIR_TIME, now, limit=SHOWN)
+        otherwise = queries.submissions(session, actor, LEFT_OTHERWISE, now, limit=SHOWN)
         due = queries.submissions(session, actor, DUE_FOR_RECHECK, now, limit=SHOWN)
         proposed = change_queries.changes(session, actor, TO_CONFIRM, limit=SHOWN)
         reset = resets.awaiting(session, actor) if "administrator" in actor.roles else ()
@@ -38,6 +40,7 @@ def home() -> Response:
         waiting=waiting,
         to_install=to_install,
         past=past,
+        otherwise=otherwise,
         due=due,
         proposed=proposed,
         reset=reset,

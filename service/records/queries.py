@@ -11,7 +11,15 @@ from sqlalchemy.orm import Session, aliased, defer
 
 from service.analysis.results import Curves
 from service.documents.reading import read_kept
-from service.records import lifecycle, present_content, rechecks, states, submission_views, visibility
+from service.records import (
+    left_otherwise,
+    lifecycle,
+    present_content,
+    rechecks,
+    states,
+    submission_views,
+    visibility,
+)
 from service.records import loops as loop_records
 from service.records.errors import Conflict
 from service.records.history_queries import HistoryFilter as HistoryFilter
@@ -72,6 +80,8 @@ class SubmissionFilter:
     tag: str | None = None
     loop_id: str | None = None
     recheck_due: bool | None = None
+    left_otherwise: bool | None = None
+    """Whether other gains than approved were left in the controller, and not put right since."""
     past_time_and_open: bool = False
     """Only those past their time that somebody still has to look after, see `PAST_TIME_SHOWN`."""
 
@@ -283,6 +293,9 @@ def _submission_conditions(wanted: SubmissionFilter, now: datetime) -> list[Colu
     if wanted.recheck_due is not None:
         due = rechecks.is_due(_reads_as())
         conditions.append(due if wanted.recheck_due else not_(due))
+    if wanted.left_otherwise is not None:
+        otherwise = left_otherwise.is_left_otherwise()
+        conditions.append(otherwise if wanted.left_otherwise else not_(otherwise))
     if wanted.past_time_and_open:
         conditions.append(_is_past_time_and_open(now))
     if wanted.loop_id is not None:

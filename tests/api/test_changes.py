@@ -138,6 +138,8 @@ def test_another_digest_is_412_and_a_loop_that_moved_is_409(
 def test_a_proposal_from_another_revision_is_412(service: Service, loop_id: str) -> None:
     answer = service.post(f"/v1/loops/{loop_id}/changes", PROPOSAL | {"revision": 3})
     assert answer.status_code == 412
+    paths = service.get("/v1/openapi.json", person=None).json["paths"]
+    assert "412" in paths["/v1/loops/{loop_id}/changes"]["post"]["responses"]
 
 
 @pytest.mark.parametrize(

@@ -7,7 +7,7 @@ from typing import Any
 import jsonschema_rs
 import pytest
 
-from service.api.openapi import routes_of
+from service.api.openapi import SAID_OF_QUERIES, routes_of
 from tests.api import plant
 from tests.api.conftest import Decide, Service, password_of
 from tests.api.plant import Body, changed, without
@@ -165,6 +165,17 @@ def test_what_a_reading_refuses_is_described(
     assert service.get(path, person, headers=headers).status_code == status
     template = path.partition("?")[0].replace("/1/", "/{number}/")
     assert str(status) in description["paths"][template]["get"]["responses"]
+
+
+def test_what_is_said_of_a_query_parameter_stands_at_one_that_there_is(description: Body) -> None:
+    told = {
+        parameter["name"]: parameter.get("description")
+        for methods in description["paths"].values()
+        for operation in methods.values()
+        for parameter in operation["parameters"]
+        if parameter["in"] == "query"
+    }
+    assert {name: told[name] for name in SAID_OF_QUERIES} == SAID_OF_QUERIES
 
 
 def test_the_page_of_the_api_shows_every_call_and_asks_nothing_off_the_machine(

@@ -14,7 +14,7 @@ from pypdf import PdfReader
 
 from tests.api import plant
 from tests.api.conftest import Decide, Service
-from tests.api.plant import Body
+from tests.api.plant import Body, changed
 
 
 def test_a_recomputation_needs_no_record(service: Service) -> None:
@@ -61,6 +61,23 @@ def test_registered_gains_go_from_the_tool_to_the_panel(
     assert whole["installations"][0]["installation"]["typed_by"] == "N. Abara"
     running = service.get(f"/v1/loops/{loop_id}/gains-in-force").json["gains_in_force"]
     assert running["submission_id"] == submission["id"]
+
+
+def test_what_was_typed_in_last_is_told_beside_what_is_in_force(
+    service: Service, loop_id: str, submission: Body, decide: Decide
+) -> None:
+    decide()
+    path, running = f"/v1/submissions/{submission['id']}", f"/v1/loops/{loop_id}/gains-in-force"
+    mistyped = changed(plant.installed_now(), "/as_left/proportional/value", 20.0)
+    made = service.post(f"{path}/installations", mistyped).json
+    told = service.get(running).json
+    assert told == {"gains_in_force": None, "left_otherwise": made}
+    listed = service.get("/v1/submissions?left_otherwise=true").json["items"]
+    assert [line["id"] for line in listed] == [submission["id"]]
+    service.post(f"{path}/installations", plant.installed_now())
+    assert service.get(running).json["left_otherwise"] is None
+    assert service.get("/v1/submissions?left_otherwise=true").json["items"] == []
+    assert service.get("/v1/submissions?left_otherwise=perhaps").status_code == 400
 
 
 def test_the_sheet_comes_out_as_a_pdf_with_the_gains_as_they_were_typed(

@@ -107,3 +107,18 @@ def test_who_does_not_install_is_told_so(kept: Kept, signed_in: SignedIn, person
     reader.open(f"/submissions/{kept.submissions['stable']}/installation")
     assert reader.status == 403
     assert "This needs the role submitter." in reader.page.text
+
+
+def test_a_wrong_number_is_told_on_the_loop_and_on_the_first_page(
+    approved: str, kept: Kept, reviewer: Person, author: Person
+) -> None:
+    install(author, approved, **{"left-proportional-value": "20.0"})
+    loop = author.open(f"/loops/{kept.loops['stable']}")
+    assert "✗ left otherwise Other gains than approved were left in the controller" in loop.text
+    (differs,) = (link for link in loop.all("a") if link.text == "what differs")
+    assert "✗ As left is not as approved." in author.open(differs.get("href")).text
+    home = reviewer.open("/")
+    assert "Left otherwise than approved" in [heading.text for heading in home.all("h2")]
+    install(author, approved)
+    assert "left otherwise" not in author.open(f"/loops/{kept.loops['stable']}").text
+    assert "Left otherwise than approved" not in reviewer.open("/").text
