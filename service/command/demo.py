@@ -19,6 +19,8 @@ from service.command.errors import UserMistake
 from service.command.serving import listen, serve_until_told
 from service.demonstration.plant import Change, Person, invented_plant
 from service.demonstration.store import Demonstration, fill
+from service.issuing import checkpoints, signing_keys
+from service.issuing.base64_text import public_text
 from service.records.database import system_clock
 from service.records.errors import StoreNotUsable
 from service.settings import DEFAULT_DATABASE_URL, Settings
@@ -49,14 +51,19 @@ def demo(port: int, only_data: bool) -> None:
 
 @contextmanager
 def _store(keep: bool) -> Iterator[Settings]:
-    """The store named in the environment, or one in a new temporary folder; the secret key is made here."""
+    """The store named in the environment, or one in a new temporary folder with a signing key of its own.
+
+    The secret key is made here.
+    """
     settings = replace(Settings.from_environment(), secret_key=secrets.token_hex(32))
     if settings.database_url != DEFAULT_DATABASE_URL:
         yield settings
         return
     folder = Path(tempfile.mkdtemp(prefix="gain-signoff-demonstration-"))
+    key = folder / "signing.pem"
+    key.write_bytes(signing_keys.make())
     try:
-        yield replace(settings, database_url=f"sqlite:///{folder / 'gain-signoff.db'}")
+        yield replace(settings, database_url=f"sqlite:///{folder / 'gain-signoff.db'}", signing_key_file=key)
     finally:
         if not keep:
             shutil.rmtree(folder)
@@ -78,13 +85,18 @@ def _fill(settings: Settings) -> Demonstration:
 def _describe(demonstration: Demonstration, settings: Settings) -> None:
     people = demonstration.plant.people
     click.echo("Demonstration of the gain sign-off service. Plant, people and figures are invented.\n")
-    click.echo(f"Store: {make_url(settings.database_url)!r}\n")  # a password in it is not shown
+    click.echo(f"Store: {make_url(settings.database_url)!r}")  # a password in it is not shown
+    click.echo(f"Checkpoints of the history: {_signed(settings.signing_key_file)}\n")
     widths = max(len(person.name) for person in people), max(len(person.password) for person in people)
     for person in people:
         click.echo(f"  {person.name:{widths[0]}}  {person.password:{widths[1]}}  {_who(person)}")
     click.echo("\nTokens for programs (Authorization: Bearer TOKEN):\n")
     for name, token in demonstration.tokens.items():
         click.echo(f"  {name:{widths[0]}}  {token}")
+
+
+def _signed(key: Path | None) -> str:
+    return f"signed with {public_text(checkpoints.read_key(key))}" if key else "unsigned, for want of a key"
 
 
 def _who(person: Person) -> str:

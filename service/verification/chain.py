@@ -37,7 +37,7 @@ class Chain:
     @property
     def notes(self) -> tuple[str, ...]:
         """What is no fault and worth knowing."""
-        return (*self._notes, *self.keys.notes)
+        return (*self._notes, *self.keys.notes, *self.kept.notes)
 
     def add(self, raw: bytes, digest: object) -> dict[str, Any]:
         """Hold one entry against its own bytes and the entry before; return what the bytes say."""
@@ -51,9 +51,8 @@ class Chain:
             raise Broken(f"it is missing; entry {entry.get('number')} stands in its place", entry=number)
         if entry.get("previous") != self.head:
             raise Broken("it does not follow on the entry before it: the chain is broken", entry=number)
-        keeps = KEPT in entry["rows"]
-        before, key = (self._state(), self.keys.at(self.entries)) if keeps else (None, None)
-        self.kept.add(entry, before, key)
+        before = self._state() if KEPT in entry["rows"] else None
+        self.kept.add(entry, before, self.keys.at(self.entries))
         self._note_time(number, str(entry.get("time")))
         self._origin = self._origin or hexadecimal
         if str(entry.get("kind")).startswith("signing_key"):
@@ -75,13 +74,13 @@ class Chain:
     @property
     def signatures(self) -> tuple[str, ...]:
         """In sentences: which signatures were checked, by which keys, and what none of them covers."""
-        of_the_end = (self._of_checkpoint(), self._of_held_key(), self._cover()) if self._is_whole else ()
-        return (*self.keys.sentences(), self.kept.sentence(), *of_the_end)
+        checked = (*self.keys.sentences(), self.kept.sentence())
+        if not self._is_whole:
+            return checked
+        given = (self._of_checkpoint(self._checkpoint),) if self._checkpoint is not None else ()
+        return (*checked, *given, self._of_held_key(), self._cover())
 
-    def _of_checkpoint(self) -> str:
-        given = self._checkpoint
-        if given is None:
-            return "No checkpoint was given"
+    def _of_checkpoint(self, given: Checkpoint) -> str:
         if not given.is_signed:
             return "The checkpoint that was given has no signature"
         return f"The signature of the checkpoint that was given holds, by the key {given.public_key}"

@@ -39,13 +39,14 @@ class KeptCheckpoints:
         self._signed: Counter[str] = Counter()
         self._unsigned = 0
         self._decisions = 0
+        self._decisions_with_a_key = 0
         self._decided: frozenset[str] = frozenset()
 
     def add(self, entry: Mapping[str, Any], before: State | None, known_key: str | None) -> None:
         """Take in one entry.
 
-        `before` is the history before it and `known_key` the key that signs there, as the history tells; both
-        are needed only where the entry keeps a checkpoint.
+        `before` is the history before it, needed only where the entry keeps a checkpoint; `known_key` the key
+        that signs there, as the history tells.
         """
         if before is not None:
             for row in entry["rows"].get(TABLE, []):
@@ -53,6 +54,19 @@ class KeptCheckpoints:
         decided = entry["rows"].get(DECISIONS, [])
         self._decided = frozenset(str(row.get("id")) for row in decided)
         self._decisions += len(decided)
+        self._decisions_with_a_key += len(decided) if known_key is not None else 0
+
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """Say where signatures are missing that a key could have made."""
+        missing = self._decisions_with_a_key - self._signed.total()
+        if not missing:
+            return ()
+        return (
+            f"{missing} of the decisions made while the history had a key have no signed checkpoint: an "
+            "older version of the service kept none, a process with another key signs none, and neither can "
+            "whoever rewrites the history without the key",
+        )
 
     def sentence(self) -> str:
         """Say what was found, in words."""

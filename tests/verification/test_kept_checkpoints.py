@@ -83,6 +83,7 @@ def place(report: Report) -> tuple[int | None, str | None]:
 def test_the_report_says_which_signatures_were_checked_and_what_they_leave_open(owned: Owned) -> None:
     report = owned.verify()
     assert report.holds
+    assert report.notes == ()
     first, second = public_text(FIRST), public_text(SECOND)
     covered = kept_in(owned)[-1] - 1
     later = report.entries - covered
@@ -91,7 +92,6 @@ def test_the_report_says_which_signatures_were_checked_and_what_they_leave_open(
         f"Entry {kept_in(owned)[2] + 1} takes up the key {second}, which signed it, as did the key before it",
         f"Checkpoints kept with the 6 decisions: 2 whose signatures by the key {first} hold;"
         f" 2 whose signatures by the key {second} hold; 1 without a signature; none with 1 of the decisions",
-        "No checkpoint was given",
         "No key was given: that the history's keys are the service's own was not checked",
         f"The last signed checkpoint covers entries 1 to {covered}, none the {later} after them",
     )
@@ -211,7 +211,7 @@ def test_nor_can_they_be_made_anew_without_the_key(owned: Owned, remake: Remake)
 
 
 def test_without_their_signatures_they_fit_and_the_report_says_what_is_covered(owned: Owned) -> None:
-    """What the owner of a database can do: only the count, and a checkpoint held elsewhere, show it."""
+    """What the owner of a database can do: only a note, and a checkpoint held elsewhere, show it."""
     held = owned.checkpoint()
     before = owned.verify()
     _rewrite(owned, _take_the_signature_off)
@@ -220,6 +220,7 @@ def test_without_their_signatures_they_fit_and_the_report_says_what_is_covered(o
     assert "; 3 without a signature;" in after.signatures[2]
     assert f"covers entries 1 to {kept_in(owned)[2] - 1}, none the" in after.signatures[-1]
     assert before.signatures != after.signatures
+    assert after.notes[0].startswith("2 of the decisions made while the history had a key have no signed")
     assert not owned.verify(held).holds
 
 
@@ -230,7 +231,6 @@ def test_with_a_key_that_nobody_took_up_the_report_says_that_there_is_none(
     migrating.migrate(url, now=START)
     assert verify(url).signatures == (
         "There is no decision, and so no checkpoint that was kept with one",
-        "No checkpoint was given",
         "The history knows no key",
         "No signed checkpoint covers any entry",
     )
