@@ -284,6 +284,8 @@ def _cells(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator
     divided = [replace(each, whole_scans=0) for each in sampled.scanned.samples(delays.tolist())]
     values = np.array([here.value(each) for each in divided])
     left = _cells_near_one(np.abs(values))
+    if not left.size:
+        return
     last = 2.0 * math.pi / lowest + 2.0 if limit is None else limit / interval
     before: tuple[Complexes, Complexes, float] | None = None
     for whole in range(plant.whole_scans, plant.whole_scans + math.ceil(last) + 2):

@@ -141,6 +141,8 @@ def _gain(space: StateMatrices, zeros: Complexes, poles: Complexes, controller: 
     size = np.abs(direct) * through
     told = size >= min(SMALL, float(np.sort(size)[-3]))
     ratios = np.sort(ratio.real[told])
+    if not ratios.size:
+        return None
     gain = float(ratios[len(ratios) // 2])
     error = np.abs(ratio - gain) * size / abs(gain)
     return gain if gain != 0 and np.all(error <= MET * np.maximum(size, SMALL)) else None

@@ -43,6 +43,31 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
     "a scan for ever, trapezoidal": (LAG, scanned(1.7e308, method="trapezoidal")),
     "a scan in no time": (LAG, scanned(1e-20)),
     "a delay of very many scans": (LAG, scanned(1.0, 1e300)),
+    "a scan for longer than its plant can be told": (
+        {"kind": "integrating", "gain_per_s": 0.4, "lag_s": 0.0, "dead_time_s": 0.043},
+        {
+            "form": "two_zeros",
+            "action": "reverse",
+            "gain": 4.8,
+            "zeros_rad_s": [-2.136, -0.00997],
+            "derivative_filter": {"value": 1e-300, "unit": "seconds"},
+            "scan": {"interval_s": 1e20, "output_delay_s": 6105.0},
+        },
+    ),
+    "a crossover that no division of a scan is near": (
+        {
+            "kind": "transfer_function",
+            "numerator": [0.03232409304563535],
+            "denominator": [1.0, 1.3292289550487362, 76.22945326542556, 101.3263965079381],
+            "dead_time_s": 1e-300,
+        },
+        {
+            "form": "series",
+            "action": "reverse",
+            "proportional": {"value": 13.593726160500143, "unit": "gain"},
+            "scan": {"interval_s": 1.883195810847447, "method": "trapezoidal"},
+        },
+    ),
     "a dead time of billions of scans": (
         {"kind": "state_space", "a": [[-200.0]], "b": [1e-3], "c": [4000.0], "dead_time_s": 6.4},
         PI | {"proportional": {"value": 0.76, "unit": "gain"}, "integral": None} | scanned(1e-9),
