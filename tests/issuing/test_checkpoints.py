@@ -12,7 +12,12 @@ import pytest
 from cryptography.exceptions import InvalidSignature
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey, Ed25519PublicKey
 from cryptography.hazmat.primitives.asymmetric.rsa import generate_private_key
-from cryptography.hazmat.primitives.serialization import Encoding, NoEncryption, PrivateFormat
+from cryptography.hazmat.primitives.serialization import (
+    BestAvailableEncryption,
+    Encoding,
+    NoEncryption,
+    PrivateFormat,
+)
 
 from service.documents import reading, writing
 from service.documents.loops import LoopRegistration
@@ -103,3 +108,14 @@ def test_a_key_file_is_read_and_another_kind_of_file_is_refused(tmp_path: Path) 
         read_key(file)
     with pytest.raises(UnusableKey, match="No such file"):
         read_key(tmp_path / "none.pem")
+
+
+def test_a_key_file_without_a_key_or_with_a_locked_one_is_refused(tmp_path: Path) -> None:
+    locked = Ed25519PrivateKey.generate().private_bytes(
+        Encoding.PEM, PrivateFormat.PKCS8, BestAvailableEncryption(b"a passphrase")
+    )
+    for raw in (b"", b"no key at all", b"\xff\x00", locked):
+        file = tmp_path / "key.pem"
+        file.write_bytes(raw)
+        with pytest.raises(UnusableKey, match="no unencrypted private key in PEM"):
+            read_key(file)

@@ -7,7 +7,6 @@ from __future__ import annotations
 
 import gc
 from collections import defaultdict
-from collections.abc import Iterator
 from pathlib import Path
 from types import CodeType, FunctionType
 
@@ -21,7 +20,7 @@ from tests.mutation.telling import Tally
 CANNOT_BE_PUT_IN = 71
 
 Functions = dict[tuple[str, str | None], list[FunctionType]]
-"""By file and qualified name."""
+"""By file and qualified name: the function, and those that were made inside it and still live."""
 
 
 class TryingInside:
@@ -81,12 +80,14 @@ class TryingInside:
 
     def _try(self, mutant: Mutant, functions: list[FunctionType], items: list[pytest.Item]) -> int:
         silenced()
-        faulty = _code_of(mutant)
+        faulty = _codes_by_name(compile(mutant.module, "faulty", "exec"))
+        codes = [faulty[function.__code__.co_qualname] for function in functions]
         # code is put in only where it reaches for the same variables outside itself
-        if not functions or any(each.__code__.co_freevars != faulty.co_freevars for each in functions):
+        same = [f.__code__.co_freevars == c.co_freevars for f, c in zip(functions, codes, strict=True)]
+        if not functions or not all(same):
             return CANNOT_BE_PUT_IN
-        for function in functions:
-            function.__code__ = faulty
+        for function, code in zip(functions, codes, strict=True):
+            function.__code__ = code
         for item in items:
             self._run(item)
             if self._failed:
@@ -99,7 +100,8 @@ def _live_functions(modules: list[str]) -> Functions:
     found: Functions = defaultdict(list)
     for each in gc.get_objects():
         if isinstance(each, FunctionType) and each.__code__.co_filename in files:
-            found[each.__code__.co_filename, each.__code__.co_qualname].append(each)
+            outermost = each.__code__.co_qualname.partition(".<locals>")[0]
+            found[each.__code__.co_filename, outermost].append(each)
     return found
 
 
@@ -107,14 +109,9 @@ def _file(module: str) -> str:
     return str(Path(module).resolve())
 
 
-def _code_of(mutant: Mutant) -> CodeType:
-    """Compile the faulty module and return its code of the function."""
-    module = compile(mutant.module, "faulty", "exec")
-    return next(code for code in _codes(module) if code.co_qualname == mutant.function)
-
-
-def _codes(code: CodeType) -> Iterator[CodeType]:
-    yield code
-    for constant in code.co_consts:
-        if isinstance(constant, CodeType):
-            yield from _codes(constant)
+def _codes_by_name(code: CodeType) -> dict[str, CodeType]:
+    inner = [each for each in code.co_consts if isinstance(each, CodeType)]
+    found = {code.co_qualname: code}
+    for each in inner:
+        found |= _codes_by_name(each)
+    return found

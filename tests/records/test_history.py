@@ -18,6 +18,7 @@ from service.records.roles import CONSOLE
 from service.records.tables import collection
 from service.records.tables.columns import Base, Kept
 from service.records.tables.history import HistoryEvent
+from service.records.tables.submissions import GainsComingIntoForce
 from service.records.views import LoopView
 from tests.databases import Databases, is_sqlite, opened, run
 from tests.records.store import Store, gains, registration
@@ -269,3 +270,23 @@ def test_the_same_entry_cannot_follow_twice(store: Store) -> None:
         with pytest.raises(IntegrityError):
             session.flush()
         session.rollback()
+
+
+def test_a_history_begins_once(store: Store) -> None:
+    before = store.events()
+    with store.database.writing() as session:
+        history.begin(session, demonstration=False, now=store.clock())
+    assert store.events() == before
+
+
+def test_a_value_that_can_be_written_in_more_than_one_way_is_not_kept(store: Store) -> None:
+    """A float in a column would be vouched for by digits that another program writes differently."""
+    row = GainsComingIntoForce(loop_id="0" * 32, ordinal=1.5, submission_id="0" * 32, since=store.clock())
+    before = store.events()
+    with store.database.writing() as session:
+        with pytest.raises(TypeError, match="a float has no place"):
+            history.append(
+                session, kind="gains_installed", actor=CONSOLE, content={}, now=store.clock(), rows=[row]
+            )
+        session.rollback()
+    assert store.events() == before

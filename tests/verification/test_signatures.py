@@ -9,6 +9,7 @@ from typing import Any
 
 import pytest
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
+from sqlalchemy.orm import Session
 
 from service.documents import writing
 from service.documents.canonical import canonical_bytes
@@ -160,6 +161,36 @@ def test_a_key_is_taken_up_once_and_another_is_not(signed: Store) -> None:
     assert signed.events() == before
     with pytest.raises(StoreNotUsable, match="key change"):
         signing_keys.take_up(signed.database, STRANGE)
+
+
+def _taken_up_meanwhile(store: Store, key: Ed25519PrivateKey, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Let another process take up a key just after this one has found none."""
+    present = signing_keys.present
+
+    def found_none(session: Session) -> str | None:
+        found = present(session)
+        monkeypatch.undo()
+        signing_keys.take_up(store.database, key)
+        return found
+
+    monkeypatch.setattr(signing_keys, "present", found_none)
+
+
+def test_two_processes_that_start_at_once_take_up_one_key(
+    store: Store, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    _taken_up_meanwhile(store, FIRST, monkeypatch)
+    signing_keys.take_up(store.database, FIRST)
+    assert store.events().count(signing_keys.TAKEN_UP) == 1
+
+
+def test_of_two_processes_with_two_keys_that_start_at_once_one_does_not_start(
+    store: Store, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    _taken_up_meanwhile(store, SECOND, monkeypatch)
+    with pytest.raises(StoreNotUsable, match="key change"):
+        signing_keys.take_up(store.database, FIRST)
+    assert store.events().count(signing_keys.TAKEN_UP) == 1
 
 
 Forge = Callable[[dict[str, Any]], None]
