@@ -68,10 +68,6 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
             "scan": {"interval_s": 1.883195810847447, "method": "trapezoidal"},
         },
     ),
-    "a dead time of billions of scans": (
-        {"kind": "state_space", "a": [[-200.0]], "b": [1e-3], "c": [4000.0], "dead_time_s": 6.4},
-        PI | {"proportional": {"value": 0.76, "unit": "gain"}, "integral": None} | scanned(1e-9),
-    ),
     "a scan very long against an oscillation that hardly dies": (RESONANCE, scanned(1e12)),
     "a gain at the end of float64, scanned": (LAG | {"gain": 1.7e308}, scanned(1.0)),
     "a gain near nothing, scanned": (LAG | {"gain": 5e-324}, scanned(1.0)),

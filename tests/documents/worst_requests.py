@@ -170,19 +170,20 @@ WORST: tuple[WorstRequest, ...] = (
     ),
     WorstRequest(
         # asked for 200 GiB
-        "a dead time of billions of scans",
-        {"kind": "state_space", "a": [[-200.0]], "b": [1e-3], "c": [4000.0], "dead_time_s": 6.4},
+        "a dead time of billions of scans behind a filter that lets nothing through",
+        {"kind": "state_space", "a": [[-199.5]], "b": [0.001026], "c": [4079.9], "dead_time_s": 6.449},
         {
             "form": "ideal",
             "action": "direct",
-            "proportional": _gain(0.76),
-            "scan": {"interval_s": 1e-9},
+            "proportional": _gain(0.7626),
+            "derivative": _seconds(1e9),
+            "derivative_filter": _seconds(0.002464),
+            "measurement_filter_s": 1e20,
+            "scan": {"interval_s": 1e-9, "method": "trapezoidal", "output_delay_s": 0.3595},
         },
-        "undecided",
-        notes=(TOO_SLOW,),
-        notes_at_scans=(),
-        reason="the dead time is too many scans long against the loop's crossovers for the roots to be "
-        "computed",
+        "stable",
+        notes=(TOO_SLOW, codes.NUMBERS),
+        notes_at_scans=(TOO_SLOW,),
     ),
     WorstRequest(
         "order 20 at the bound on nodes",
