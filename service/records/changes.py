@@ -24,20 +24,20 @@ from service.records import (
     history,
     loops,
     protection,
+    signing,
     throttles,
 )
 from service.records.basis import Basis, present_basis
 from service.records.change_consequences import Again, Consequences
 from service.records.change_lifecycle import ChangeAction
 from service.records.change_queries import find
-from service.records.content import ChangeDecisionContent, LoopChangeContent, Person, SignedModel
+from service.records.content import ChangeDecisionContent, LoopChangeContent, SignedModel
 from service.records.errors import (
     Conflict,
     FieldErrors,
     NotIndependent,
     SigningRefused,
     StaleContent,
-    WrongPassword,
 )
 from service.records.roles import Actor
 from service.records.tables.changes import LoopChange, LoopChangeDecision
@@ -98,7 +98,7 @@ def propose(
             else (protection.retirement(request.retire_operating_point or ""),)
         ),
         reason=request.reason,
-        proposed_by=Person(name=actor.name, full_name=actor.full_name),
+        proposed_by=signing.person(actor),
         proposed_at=now,
     )
     kept = canonical_bytes(plain(content))
@@ -197,21 +197,9 @@ def record_refused_signing(
     refusal: SigningRefused | NotIndependent,
     now: datetime,
 ) -> None:
-    """Leave the trace of a signing that was refused, and count a wrong password.
-
-    In a transaction of its own, after what was begun has been rolled back.
-    """
-    view = find(session, actor, change_id)
-    if isinstance(refusal, WrongPassword):
-        throttles.count(session, throttles.of_account(actor.name), now)
-    history.append(
-        session,
-        kind="signing_refused",
-        actor=actor,
-        about=loops.about(*loops.present(session, view.content.loop_id)),
-        content={"change_id": change_id, "reason": refusal.detail},
-        now=now,
-    )
+    """Leave the trace of a decision on a change whose signature was refused: see `signing.record_refused`."""
+    loop_id = find(session, actor, change_id).content.loop_id
+    signing.record_refused(session, actor, loop_id, {"change_id": change_id}, refusal, now)
 
 
 def _retired(session: Session, loop_id: str, request: LoopChangeRequest) -> SignedModel | None:
@@ -243,7 +231,7 @@ def _decision(
         meaning=MEANINGS[request.decision],
         reason=request.reason,
         content_digest=view.content_digest,
-        signed_by=Person(name=actor.name, full_name=actor.full_name),
+        signed_by=signing.person(actor),
         signed_at=now,
     )
     kept = canonical_bytes(plain(content))

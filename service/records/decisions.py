@@ -21,11 +21,12 @@ from service.records import (
     lifecycle,
     loops,
     present_content,
+    signing,
     states,
     throttles,
     visibility,
 )
-from service.records.content import DecisionContent, Person, SignedContent
+from service.records.content import DecisionContent, SignedContent
 from service.records.errors import (
     BasisChanged,
     FieldErrors,
@@ -34,7 +35,6 @@ from service.records.errors import (
     NotIndependent,
     SigningRefused,
     StaleContent,
-    WrongPassword,
 )
 from service.records.lifecycle import Action
 from service.records.roles import Actor, require_role
@@ -104,21 +104,9 @@ def record_refused_signing(
     refusal: SigningRefused | NotIndependent,
     now: datetime,
 ) -> None:
-    """Leave the trace of a signing that was refused, and count a wrong password.
-
-    In a transaction of its own, after what was begun has been rolled back.
-    """
-    submission = visibility.submission(session, actor, submission_id)
-    if isinstance(refusal, WrongPassword):
-        throttles.count(session, throttles.of_account(actor.name), now)
-    history.append(
-        session,
-        kind="signing_refused",
-        actor=actor,
-        about=loops.about(*loops.present(session, submission.loop_id)),
-        content={"submission_id": submission_id, "reason": refusal.detail},
-        now=now,
-    )
+    """Leave the trace of a decision whose signature was refused: see `signing.record_refused`."""
+    loop_id = visibility.submission(session, actor, submission_id).loop_id
+    signing.record_refused(session, actor, loop_id, {"submission_id": submission_id}, refusal, now)
 
 
 def _decisions(session: Session, submission_id: str) -> tuple[Decision, ...]:
@@ -189,7 +177,7 @@ def _sign(
         reason=request.reason,
         deviation=request.deviation,
         content_digest=request.content_digest,
-        signed_by=Person(name=actor.name, full_name=actor.full_name),
+        signed_by=signing.person(actor),
         signed_at=now,
     )
     kept = canonical_bytes(plain(content))

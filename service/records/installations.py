@@ -15,11 +15,19 @@ from service.documents.canonical import canonical_bytes
 from service.documents.errors import FieldProblem
 from service.documents.installations import InstallationRequest
 from service.documents.writing import plain
-from service.records import comparison, history, lifecycle, loops, present_content, states, visibility
+from service.records import (
+    comparison,
+    history,
+    lifecycle,
+    loops,
+    present_content,
+    signing,
+    states,
+    visibility,
+)
 from service.records.content import (
     Difference,
     InstallationContent,
-    Person,
     SetLeft,
     SignedContent,
     SignedGains,
@@ -181,7 +189,7 @@ def _content(
         submission_id=submission.id,
         gain_set=held[0].gain_set,
         gain_sets=tuple(each.left for each in held),
-        recorded_by=Person(name=actor.name, full_name=actor.full_name),
+        recorded_by=signing.person(actor),
         recorded_at=now,
         installation=request,
         as_approved=all(each.left.as_approved for each in held),

@@ -25,6 +25,7 @@ from service.records import (
     present_content,
     queries,
     recomputing,
+    signing,
     states,
 )
 from service.records.basis import Basis, present_basis, read_basis
@@ -259,7 +260,7 @@ def _content(actor: Actor, prepared: PreparedSubmission, now: datetime) -> Signe
         reason=request.reason,
         safety_effect=request.safety_effect,
         gain_sets=prepared.gain_sets,
-        submitted_by=Person(name=actor.name, full_name=actor.full_name),
+        submitted_by=signing.person(actor),
         submitted_at=now,
         prepared_by=tuple(author.person for author in prepared.authors),
         tool=request.tool,
