@@ -74,7 +74,10 @@ def evaluation(count: int, at: Reals) -> Reals:
 
 def evaluate_rows(rows: Reals, at: Reals) -> Reals:
     """The polynomial of each row, values shape (m, count), at its own point, shape (m,)."""
-    return np.asarray((evaluation(rows.shape[1], at) * rows).sum(axis=1))
+    blocks = (slice(first, first + ROWS_AT_ONCE) for first in range(0, max(len(at), 1), ROWS_AT_ONCE))
+    return np.concatenate(
+        [(evaluation(rows.shape[1], at[block]) * rows[block]).sum(axis=1) for block in blocks]
+    )
 
 
 def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[npt.NDArray[np.intp], Reals]:

@@ -177,27 +177,33 @@ def integrals(of: list[Signal]) -> list[Integrals]:
     An integral of abs x is the total variation of the integral of x, whose turning points are the zeros of x.
     """
     start, length = of[0].start, of[0].length
-    values = np.array([signal.values for signal in of])
+    sums = np.zeros((len(of), 4))
+    for first in range(0, len(start), chebyshev.ROWS_AT_ONCE):
+        block = slice(first, first + chebyshev.ROWS_AT_ONCE)
+        values = np.array([signal.values[block] for signal in of])
+        sums += _in_pieces(start[block], length[block], values, [signal.scale for signal in of])
+    return [
+        Integrals(*(float(total) + more for total, more in zip(in_pieces, _of_tail(signal), strict=True)))
+        for signal, in_pieces in zip(of, sums, strict=True)
+    ]
+
+
+def _in_pieces(start: Reals, length: Reals, values: Reals, scales: list[float]) -> Reals:
+    """The four integrals of each signal over some pieces, (s, 4); `values` (s, p, nodes)."""
     count, pieces, nodes = values.shape
     rows = values.reshape(count * pieces, nodes)
-    scale = np.repeat([signal.scale for signal in of], pieces)[:, None]
-    row, place = chebyshev.zeros_of_rows(rows, ROUNDING * scale)
+    row, place = chebyshev.zeros_of_rows(rows, ROUNDING * np.repeat(scales, pieces)[:, None])
     times = np.tile(start[:, None] + length[:, None] * chebyshev.points(nodes), (count, 1))
     lengths = np.tile(length, count)
     signed = rows @ chebyshev.integration(nodes)[-1] * lengths
+    timed = rows * times
     columns = (
         _absolute(rows, lengths, signed, row, place),
         ((rows @ _of_squares(nodes)) * rows).sum(axis=1) * lengths,
-        _absolute(
-            rows * times, lengths, (rows * times) @ chebyshev.integration(nodes)[-1] * lengths, row, place
-        ),
+        _absolute(timed, lengths, timed @ chebyshev.integration(nodes)[-1] * lengths, row, place),
         signed,
     )
-    sums = [column.reshape(count, pieces).sum(axis=1) for column in columns]
-    return [
-        Integrals(*(float(total) + more for total, more in zip(in_pieces, _of_tail(signal), strict=True)))
-        for signal, in_pieces in zip(of, zip(*sums, strict=True), strict=True)
-    ]
+    return np.array([column.reshape(count, pieces).sum(axis=1) for column in columns]).T
 
 
 def _absolute(rows: Reals, lengths: Reals, signed: Reals, row: Indices, place: Reals) -> Reals:
