@@ -181,7 +181,7 @@ def world(service: Service, loop_id: str) -> World:
     )
 
 
-def _path(world: World, template: str) -> str:
+def path_of(world: World, template: str) -> str:
     return template.format(
         loop_id=world.loop,
         model_id=world.model,
@@ -210,8 +210,8 @@ def _expected(role: str, call: tuple[str, str], cell: Cell) -> int:
 
 
 def _try(world: World, role: str, method: str, template: str, cell: Cell) -> int:
-    service, path = world.service, _path(world, template)
-    headers = world.etag(_path(world, cell.seen)) if cell.seen else {}
+    service, path = world.service, path_of(world, template)
+    headers = world.etag(path_of(world, cell.seen)) if cell.seen else {}
     body = cell.body(world) if cell.body else None
     before = service.rows()
     answer = service.call(method.upper(), path + cell.query, role, body, headers=headers)
