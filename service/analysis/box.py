@@ -1,4 +1,4 @@
-"""The box of models: every loop that the stated uncertainty allows, and enclosures of L over pieces of it.
+"""The box of models: every loop that the stated uncertainty allows.
 
 A member of the box has its gain multiplied by k, its plant's rational part turned from P(s) into fⁿ·P(f·s)
 and some dead time θ. On the axis, with w = ln(ωf) and v = ln f,
@@ -7,9 +7,7 @@ where p is ln P(je^w) and c is what does not depend on the plant: controller, fi
 for one (w, v) gain and dead time sweep a polar sector exactly, and two dimensions are left to search. A
 member's factors are the plant's own: nothing is cancelled against the controller.
 
-Over a cell of (w, v) each factor ln(jω − r) is its value and slope at the centre and a remainder by Taylor:
-d²/d(ln ω)² ln(jω − r) = −r·jω/(jω − r)², whose magnitude over the cell follows from the least distance to r.
-All enclosures are widened by what rounding may do.
+`box_cells` encloses L over pieces of the (w, v) plane.
 """
 
 from __future__ import annotations
@@ -22,16 +20,10 @@ from typing import NamedTuple
 import numpy as np
 import numpy.typing as npt
 
-from service.analysis.loop import EPSILON, ClosedLoopParts, Complexes, Reals
+from service.analysis.loop import ClosedLoopParts, Complexes, Reals
 from service.analysis.plant import FrequencyResponse, PlantModel, Uncertainty, ZerosPolesGain
 from service.analysis.rational import rational
 from service.analysis.results import BoxMember
-
-ROUNDING_FACTOR = 64.0
-"""How many times the rounding of one term an enclosure is widened by."""
-
-CRUDE = 0.3
-"""Above this remainder (nepers) the magnitude is enclosed factor by factor as well."""
 
 TURN = 2.0 * math.pi
 
@@ -97,12 +89,33 @@ class Bounds:
     dead_time: tuple[float, float]
 
 
+class Response(NamedTuple):
+    """ln(−L) = x + jy for k = 1 and no dead time, and its slopes by w and v; (q,) each."""
+
+    x: Reals
+    y: Reals
+    x_w: Reals
+    y_w: Reals
+    x_v: Reals
+    y_v: Reals
+
+
+class Factors(NamedTuple):
+    """Factors jω − r, ω being e^w for the plant's and e^(w−v) for the others: ω, ω − Im r, abs(jω − r)²; (q,
+    m).
+    """
+
+    omega: Reals
+    above: Reals
+    square: Reals
+
+
 @dataclass(frozen=True, eq=False)
 class UncertainLoop:
     """A loop whose plant is uncertain, in the loop's own unit of time.
 
     `roots` complex, shape (m,), the plant's first; `weights` +1 for zeros, −1 for poles; `of_plant` says
-    which move with the time constants. `order` is n: the plant's poles minus zeros at the origin.
+    which move with the time constants: those away from the origin.
     """
 
     roots: Complexes
@@ -110,7 +123,6 @@ class UncertainLoop:
     of_plant: npt.NDArray[np.bool_]
     log_gain: float
     sign: float
-    order: int
     dead_times: DeadTimes
     log_gain_factor: tuple[float, float]
     log_time_factor: tuple[float, float]
@@ -141,7 +153,7 @@ class UncertainLoop:
     @cached_property
     def growth_at_infinity(self) -> int:
         """e in: the leading coefficient of a member's L is that of the nominal one times f^e."""
-        return self.order - self.excess_of_plant
+        return -self.excess_of_plant
 
     @cached_property
     def order_at_origin(self) -> int:
@@ -161,191 +173,56 @@ class UncertainLoop:
         return -self.sign if turned % 2 else self.sign
 
     @cached_property
-    def _turned(self) -> tuple[Reals, float]:
-        """−1 for factors right of the axis, which are turned about, and the angle of −L that this adds."""
-        right = self.roots.real > 0
-        angle = math.pi * float(self.weights[right].sum()) + (math.pi if self.sign < 0 else 0.0)
-        return np.where(right, -1.0, 1.0), angle + math.pi
-
-    @cached_property
-    def _split_weights(self) -> Reals:
+    def split_weights(self) -> Reals:
         """Weights of the plant's factors and of the others, shape (m, 2)."""
-        return np.stack([self.weights * self.of_plant, self.weights * ~self.of_plant], axis=1)
+        return np.array([self.weights * self.of_plant, self.weights * ~self.of_plant]).T
 
     @cached_property
-    def _sizes(self) -> Reals:
+    def sizes(self) -> Reals:
+        """abs r."""
         return np.abs(self.roots)
 
-    def at(self, w: Reals, v: Reals) -> tuple[Complexes, Complexes, Complexes]:
-        """(ln(−L), its slope by w, its slope by v) for k = 1 and no dead time, shapes of `w`, (q,)."""
-        logs, towards, _ = self._factors(w, v)
-        return self._combined(logs, towards, v)
+    @cached_property
+    def real_squared(self) -> Reals:
+        """(Re r)²."""
+        return self.roots.real**2
 
-    def _factors(self, w: Reals, v: Reals) -> tuple[Complexes, Complexes, Complexes]:
-        """(Σ weighted ln(jω − r), jω/(jω − r), jω − r); the last two of shape (q, m)."""
+    @cached_property
+    def _turned(self) -> tuple[Reals, Reals, float]:
+        """−1 for factors right of the axis, which are turned about, their distance to it, and the angle of −L
+        that the turns add.
+        """
+        right = self.roots.real > 0
+        angle = math.pi * float(self.weights[right].sum()) + (math.pi if self.sign < 0 else 0.0)
+        return np.where(right, -1.0, 1.0), np.abs(self.roots.real), angle + math.pi
+
+    def at(self, w: Reals, v: Reals) -> Response:
+        """The response at points, shapes of `w`, (q,)."""
+        return self.combined(self.factors(w, v))
+
+    def factors(self, w: Reals, v: Reals) -> Factors:
+        """The factors at points, shape (q, m)."""
         omega = np.exp(np.where(self.of_plant, w[:, None], (w - v)[:, None]))
-        difference = 1j * omega - self.roots
-        logs = np.asarray(np.log(difference * self._turned[0]) @ self.weights, complex)
-        return logs, 1j * omega / difference, difference
+        above = omega - self.roots.imag
+        return Factors(omega, above, above * above + self.real_squared)
 
-    def _combined(
-        self, logs: Complexes, towards: Complexes, v: Reals
-    ) -> tuple[Complexes, Complexes, Complexes]:
-        slopes = towards @ self._split_weights
-        value = logs + (self.log_gain + 1j * self._turned[1]) + self.order * v
-        return value, slopes[:, 0] + slopes[:, 1], self.order - slopes[:, 1]
-
-    def cells(self, w: Reals, v: Reals, half_w: Reals, half_v: Reals) -> Cells:
-        """Enclosures over the cells w ± half_w, v ± half_v, all shape (q,)."""
-        logs, towards, difference = self._factors(w, v)
-        value, slope_w, slope_v = self._combined(logs, towards, v)
-        half_u = half_w + half_v
-        # how fast the slopes of the plant's factors and of the others may change in the cell
-        half = np.where(self.of_plant, half_w[:, None], half_u[:, None])
-        centre = difference.imag + self.roots.imag
-        low, high = centre * np.exp(-half), centre * np.exp(half)
-        gap = np.maximum(np.maximum(low - self.roots.imag, self.roots.imag - high), 0.0)
-        nearest = gap * gap + self.roots.real**2
-        bend = self._sizes * high / np.where(nearest > 0, nearest, 1e-300)
-        bend = np.where(self._sizes > 0, bend, 0.0)
-        bends = bend @ np.abs(self._split_weights)
-        bends = 0.5 * bends
-        terms = 8.0 + len(self.roots) + abs(self.log_gain) + np.abs(self.order * v)
-        terms = terms + np.abs(towards).sum(1) * (1.0 + np.abs(w) + np.abs(v))
-        remainder = bends[:, 0] * half_w * half_w + bends[:, 1] * half_u * half_u
-        remainder = remainder + ROUNDING_FACTOR * EPSILON * terms
-        crude = self._crude(remainder, low, high, gap, nearest, v, half_v)
-        return Cells(self, w, v, half_w, half_v, value, slope_w, slope_v, bends, remainder, *crude)
-
-    def _crude(
-        self, remainder: Reals, low: Reals, high: Reals, gap: Reals, nearest: Reals, v: Reals, half_v: Reals
-    ) -> tuple[Reals, Reals]:
-        """Bounds of ln abs L factor by factor where the remainder is large, else −inf and inf; (q,) each."""
-        lowest, highest = np.full(len(remainder), -np.inf), np.full(len(remainder), np.inf)
-        chosen = np.flatnonzero(~(remainder <= CRUDE))
-        if chosen.size:
-            b = self.roots.imag
-            farthest = np.maximum(np.abs(low[chosen] - b), np.abs(high[chosen] - b))
-            near = 0.5 * np.log(nearest[chosen])
-            far = 0.5 * np.log(farthest * farthest + self.roots.real**2)
-            above, below = np.where(self.weights > 0, far, -near), np.where(self.weights > 0, near, -far)
-            middle = self.log_gain + self.order * v[chosen]
-            spread = abs(self.order) * half_v[chosen] + 1e-9
-            lowest[chosen] = below.sum(1) + middle - spread
-            highest[chosen] = above.sum(1) + middle + spread
-        # a pole and a zero on the axis in one cell make nan: nothing is known
-        return np.where(lowest == lowest, lowest, -np.inf), np.where(highest == highest, highest, np.inf)
-
-
-class Corners(NamedTuple):
-    """Where cells lie: centres and half widths, all shape (q,)."""
-
-    w: Reals
-    v: Reals
-    half_w: Reals
-    half_v: Reals
-
-
-@dataclass(frozen=True, eq=False)
-class Cells:
-    """Cells of (w, v) and Taylor enclosures of ln(−L), k = 1 and no dead time, over each; all shape (q,).
-
-    `bends` (q, 2): half the largest second derivatives of what moves with w and of what moves with w − v.
-    """
-
-    loop: UncertainLoop
-    w: Reals
-    v: Reals
-    half_w: Reals
-    half_v: Reals
-    value: Complexes
-    slope_w: Complexes
-    slope_v: Complexes
-    bends: Reals
-    remainder: Reals
-    crude_low: Reals
-    crude_high: Reals
-
-    def __len__(self) -> int:
-        return len(self.w)
-
-    @cached_property
-    def omega(self) -> Reals:
-        """ω at the centres."""
-        return np.exp(self.w - self.v)
-
-    @cached_property
-    def omega_remainder(self) -> Reals:
-        """How far ω may be from its own tangent in the cell."""
-        half = self.half_w + self.half_v
-        rounding = ROUNDING_FACTOR * EPSILON * (1.0 + np.abs(self.w) + np.abs(self.v))
-        return self.omega * (0.5 * half * half * np.exp(half) + rounding)
-
-    @cached_property
-    def omega_lowest(self) -> Reals:
-        """A bound below ω in the cell."""
-        return self.omega * np.exp(-(self.half_w + self.half_v)) * (1.0 - 1e-12)
-
-    @cached_property
-    def omega_highest(self) -> Reals:
-        """A bound above ω in the cell."""
-        return self.omega * np.exp(self.half_w + self.half_v) * (1.0 + 1e-12)
-
-    @cached_property
-    def log_magnitude(self) -> tuple[Reals, Reals]:
-        """Bounds of ln abs L for k = 1."""
-        spread = np.abs(self.slope_w.real) * self.half_w + np.abs(self.slope_v.real) * self.half_v
-        spread = spread + self.remainder
-        low = np.maximum(self.value.real - spread, self.crude_low)
-        high = np.minimum(self.value.real + spread, self.crude_high)
-        return low, high
-
-    def phase(self, dead_time: float) -> tuple[Reals, Reals]:
-        """Bounds of the argument of −L with this dead time."""
-        spread = np.abs(self.slope_w.imag - self.omega * dead_time) * self.half_w
-        spread = spread + np.abs(self.slope_v.imag + self.omega * dead_time) * self.half_v
-        spread = spread + self.remainder + dead_time * self.omega_remainder
-        middle = self.value.imag - self.omega * dead_time
-        return middle - spread, middle + spread
-
-    def curvature(self, dead_time: float) -> tuple[Reals, Reals]:
-        """What of the remainder the width in w and that in v are to blame for, with this dead time."""
-        of_u = self.bends[:, 1] + 0.5 * self.omega * dead_time
-        return (self.bends[:, 0] + of_u) * self.half_w**2, of_u * self.half_v**2
-
-    def combination(
-        self, of_log: Reals, of_phase: Reals, of_omega: Reals, constant: Reals | float = 0.0
-    ) -> Combination:
-        """of_log·ln abs L + of_phase·arg(−L) + of_omega·ω + constant for k = 1, no dead time; (…, q)."""
-        value = of_log * self.value.real + of_phase * self.value.imag + of_omega * self.omega + constant
-        slope_w = of_log * self.slope_w.real + of_phase * self.slope_w.imag + of_omega * self.omega
-        slope_v = of_log * self.slope_v.real + of_phase * self.slope_v.imag - of_omega * self.omega
-        size = np.sqrt(of_log * of_log + of_phase * of_phase)
-        remainder = size * self.remainder + np.abs(of_omega) * self.omega_remainder
-        reach = np.abs(slope_w) * self.half_w + np.abs(slope_v) * self.half_v
-        return Combination(value, reach + remainder)
-
-    def only(self, chosen: npt.NDArray[np.intp]) -> Corners:
-        """Place and size of some cells."""
-        return Corners(self.w[chosen], self.v[chosen], self.half_w[chosen], self.half_v[chosen])
-
-
-@dataclass(frozen=True, eq=False)
-class Combination:
-    """A real function over cells: its value at the centres, and how far from it it may be in each."""
-
-    value: Reals
-    spread: Reals
-
-    @cached_property
-    def lowest(self) -> Reals:
-        """A bound below it in each cell."""
-        return self.value - self.spread
-
-    @cached_property
-    def highest(self) -> Reals:
-        """A bound above it in each cell."""
-        return self.value + self.spread
+    def combined(self, factors: Factors) -> Response:
+        """What the factors make together."""
+        omega, above, square = factors
+        turned, to_axis, angle = self._turned
+        logs, angles = np.log(square), np.arctan2(turned * above, to_axis)
+        # jω/(jω − r) is the slope of ln(jω − r) by ln ω
+        by_omega = omega / square
+        x_slopes = (by_omega * above) @ self.split_weights
+        y_slopes = -(by_omega * self.roots.real) @ self.split_weights
+        return Response(
+            x=0.5 * (logs @ self.weights) + self.log_gain,
+            y=angles @ self.weights + angle,
+            x_w=x_slopes[:, 0] + x_slopes[:, 1],
+            y_w=y_slopes[:, 0] + y_slopes[:, 1],
+            x_v=-x_slopes[:, 1],
+            y_v=-y_slopes[:, 1],
+        )
 
 
 def uncertain_loop(
@@ -354,10 +231,10 @@ def uncertain_loop(
     """The uncertain loop; None for measured points, of which a fit is no proof."""
     if isinstance(plant_model, FrequencyResponse):
         return None
-    own = rational(plant_model)
     unit = parts.unit_rad_s
     # a filter that was divided out is known: its zero stands behind the plant's own and does not move
-    moving_zeros, fixed_zeros = np.split(np.array(parts.plant.zeros_rad_s, complex), [len(own.zeros_rad_s)])
+    own = len(parts.plant.zeros_rad_s) - (plant_model.identified_through_filter_s > 0)
+    moving_zeros, fixed_zeros = np.split(np.array(parts.plant.zeros_rad_s, complex), [own])
     moving_poles = np.array(parts.plant.poles_rad_s, complex)
     of_controller = parts.controller
     filter_poles = [-1.0 / parts.measurement_filter] if parts.measurement_filter > 0 else []
@@ -367,13 +244,14 @@ def uncertain_loop(
     )
     groups = [(moving_zeros, 1.0), (moving_poles, -1.0), (fixed_zeros, 1.0), (fixed_poles, -1.0)]
     entered, half_s = plant_model.dead_time_s, 0.5 * plant_model.identified_at_scan_s
+    roots = np.concatenate([roots for roots, _ in groups])
+    moves = (np.arange(len(roots)) < len(moving_zeros) + len(moving_poles)) & (roots != 0)
     return UncertainLoop(
-        roots=np.concatenate([roots for roots, _ in groups]),
+        roots=roots,
         weights=np.concatenate([np.full(len(roots), weight) for roots, weight in groups]),
-        of_plant=np.arange(sum(len(roots) for roots, _ in groups)) < len(moving_zeros) + len(moving_poles),
+        of_plant=moves,
         log_gain=parts.loop.log_gain,
         sign=parts.loop.sign,
-        order=int(np.count_nonzero(moving_poles == 0)) - int(np.count_nonzero(moving_zeros == 0)),
         dead_times=DeadTimes(
             entered=entered * unit,
             reduction=half_s * unit,
@@ -381,7 +259,7 @@ def uncertain_loop(
             extra=uncertainty.dead_time_extra_s[1] * unit,
         ),
         log_gain_factor=_logs(uncertainty.gain),
-        log_time_factor=_logs(uncertainty.time_constants),
+        log_time_factor=_logs(uncertainty.time_constants) if moves.any() else (0.0, 0.0),
     )
 
 

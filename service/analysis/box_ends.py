@@ -16,7 +16,7 @@ import numpy.typing as npt
 from service.analysis.box import TURN, Bounds, UncertainLoop
 from service.analysis.loop import Reals
 
-REACH = 90
+POWERS = np.concatenate([np.arange(0.0, 12.0, 0.5), np.arange(12.0, 91.0, 2.0)])
 """So many powers of e beyond the outermost root are tried as the end of the axis; past that it has none."""
 
 LARGEST_RATIO = 0.3
@@ -69,7 +69,7 @@ class End:
 
 def lower_end(loop: UncertainLoop, bounds: Bounds, wanted: Wanted) -> End:
     """The lower end, as near as what is wanted allows. Raises EndsError."""
-    sizes = np.abs(loop.roots)
+    sizes = loop.sizes
     # a root r of the plant lies at r/f: the nearest to the origin counts
     nearest = np.where(loop.of_plant, sizes * math.exp(-bounds.log_time[1]), sizes)[sizes > 0]
     order = loop.order_at_origin
@@ -109,7 +109,7 @@ def lower_end(loop: UncertainLoop, bounds: Bounds, wanted: Wanted) -> End:
 
 def upper_end(loop: UncertainLoop, bounds: Bounds, wanted: Wanted) -> End:
     """The upper end, as near as what is wanted allows. Raises EndsError."""
-    sizes = np.abs(loop.roots)
+    sizes = loop.sizes
     farthest = np.where(loop.of_plant, sizes * math.exp(-bounds.log_time[0]), sizes)[sizes > 0]
     order = loop.excess
     candidates = _outwards(farthest.max() if farthest.size else 1.0, 1.0)
@@ -150,7 +150,7 @@ def upper_end(loop: UncertainLoop, bounds: Bounds, wanted: Wanted) -> End:
 
 
 def _outwards(start: float, direction: float) -> Reals:
-    return start * np.exp(direction * np.arange(0.0, REACH, 0.5))
+    return start * np.exp(direction * POWERS)
 
 
 def _errors(ratio: Reals) -> tuple[Reals, Reals]:

@@ -1,20 +1,22 @@
-"""Branch and bound over the cells of a box: the least value of a function, proven from below.
+"""Branch and bound over the cells of a box: the least values of several quantities, proven from below at
+once.
 
-Works in waves: all cells of a wave are bounded at once. A cell whose bound is not below what has been
-attained, less the tolerance, is dropped; the others are divided. What comes out is a proof whether or not the
-attained value is the least one.
+Each quantity has a level, a little below the least value met so far, and a cell is done with when no member
+in it has a lower one. Works in waves: all cells of a wave are tested at once, for all quantities; what is
+left is divided. What comes out is a proof whether or not the value met is the least one.
 """
 
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import NamedTuple, Protocol
 
 import numpy as np
-import numpy.typing as npt
 
-from service.analysis.box import Bounds, Cells, Corners, UncertainLoop
+from service.analysis.box import Bounds, UncertainLoop
+from service.analysis.box_cells import Cells, Indices, Rectangles, enclose
+from service.analysis.box_sectors import Sector, Sectors, excluded, excluded_at_sight
 from service.analysis.loop import Reals
 
 STEP = 0.2
@@ -27,13 +29,13 @@ STEP_OF_TIME_FACTOR = 0.25
 """Width of a first cell in ln f."""
 
 MAX_FACTORS = 1_500_000
-"""Work bound of one search: cells times factors of the loop."""
+"""Work bound of one quantity: cells times factors of the loop."""
 
-CHILDREN = 200
-"""Few cells are divided into about so many at once, many into halves."""
+CHILDREN = 300
+"""Few cells are divided into about so many at once, many into four each."""
 
-WAVE_THAT_TRIES = 3
-"""From this wave on a lower value is looked for again: until then the first one mostly suffices."""
+WAVE_THAT_TRIES = 2
+"""From this wave on a lower value is looked for wherever a cell is left; before, where one is known to be."""
 
 TRIED = 4
 """The most promising cells of a wave in which a lower value is looked for."""
@@ -49,63 +51,89 @@ class Found(NamedTuple):
 class Quantity(Protocol):
     """What is minimised over a box."""
 
-    def bound(self, cells: Cells, attained: float) -> tuple[Reals, Reals, Reals, Reals | None]:
-        """(A bound below the value in each cell, what its widths in w and v cost, the value at its centre);
-        (q,) each, the last None where it takes more to know it.
+    def sector(self, level: float, omega: tuple[float, float]) -> Sector:
+        """What −1 stays out of where no member has a value below the level, between two frequencies."""
 
-        A bound is inf where the value does not exist in the cell, and may be anything that is not above the
-        value; nan counts as unknown.
+    def values(self, x: Reals, y: Reals, omega: Reals, v: Reals, near: float = ...) -> Reals:
+        """The least value of members at points (w, v), inf where there is none; ln(−L) = x + jy for k = 1
+        and no dead time. A condition for there to be one counts as met where it is missed by no more than
+        `near`.
         """
 
-    def attain(self, loop: UncertainLoop, corners: Corners) -> Found:
+    def attain(self, loop: UncertainLoop, places: Rectangles) -> Found:
         """The least value met in or beside some cells."""
 
     def slack(self, attained: float) -> float:
         """How far below a finite attained value the least one may stay unknown."""
 
 
-class WorkBoundError(Exception):
-    """The search has reached its bound on work; what was known by then."""
+@dataclass
+class Search:
+    """One quantity on its way: between which frequencies it is searched for, the least value met, what it is
+    bounded by elsewhere, work done.
 
-    def __init__(self, known: Minimum) -> None:
-        super().__init__("more cells than the work bound allows")
-        self.known = known
-
-
-@dataclass(frozen=True, slots=True)
-class Minimum:
-    """The least value lies from `proven` to `attained`; both inf: the quantity exists nowhere.
-
-    `place`: (w, v) where it is attained, None where the search began with it.
+    `given_up`: the bound on work was met, nothing is proven.
     """
 
-    proven: float
-    attained: float
-    place: tuple[float, float] | None = None
+    quantity: Quantity
+    omega: tuple[float, float]
+    best: Found
+    elsewhere: float = math.inf
+    work: int = field(default=0, init=False)
+    given_up: bool = field(default=False, init=False)
+
+    @property
+    def level(self) -> float:
+        """What is proven once no cell is left."""
+        best = self.best.value
+        return best - self.quantity.slack(best) if math.isfinite(best) else math.inf
+
+    @property
+    def proven(self) -> float:
+        """What the quantity is not below, over all of its box; 0 where that is not known."""
+        return 0.0 if self.given_up else min(self.level, self.elsewhere)
+
+    @property
+    def sector(self) -> Sector:
+        """What −1 stays out of."""
+        return self.quantity.sector(self.level, self.omega)
+
+    def improve(self, loop: UncertainLoop, cells: Cells) -> None:
+        """Look for a lower value in the most promising of some cells."""
+        promise = self.quantity.values(*cells.at_middle, math.inf)
+        places = cells.places.only(np.argsort(promise)[:TRIED])
+        self.best = min(self.best, self.quantity.attain(loop, places), key=lambda found: found.value)
 
 
 def first_cells(
-    loop: UncertainLoop, bounds: Bounds, lowest_omega: float, highest_omega: float, step: float = STEP
-) -> Cells:
-    """Cells that cover the frequencies from `lowest_omega` to `highest_omega` for every time factor."""
+    loop: UncertainLoop, bounds: Bounds, omega: tuple[float, float], beyond: Bounds | None = None
+) -> Cells | None:
+    """Cells that cover the frequencies for every time factor of the box, and of a wider one `beyond`; None:
+    past the bound on work.
+    """
     low_v, high_v = bounds.log_time
-    edges = _edges(loop, bounds, math.log(lowest_omega) + low_v, math.log(highest_omega) + high_v, step)
-    middle, half = 0.5 * (edges[:-1] + edges[1:]), 0.5 * np.diff(edges)
-    parts = max(1, math.ceil((high_v - low_v) / STEP_OF_TIME_FACTOR))
-    if parts * len(middle) * len(loop.roots) > MAX_FACTORS:
-        raise WorkBoundError(Minimum(-math.inf, math.inf))
-    half_v = 0.5 * (high_v - low_v) / parts
-    v = low_v + half_v * (2.0 * np.arange(parts) + 1.0)
-    shape = (parts, len(middle))
-    return loop.cells(
-        np.broadcast_to(middle, shape).ravel(),
-        np.broadcast_to(v[:, None], shape).ravel(),
-        np.broadcast_to(half * (1.0 + 1e-12), shape).ravel(),
-        np.full(parts * len(middle), half_v),
-    )
+    edges_v = [_even_edges(low_v, high_v, STEP_OF_TIME_FACTOR)]
+    if beyond is not None:
+        # an edge of the box is one of the cells
+        edges_v.insert(0, _even_edges(min(beyond.log_time[0], low_v), low_v, STEP_OF_TIME_FACTOR)[:-1])
+        edges_v.append(_even_edges(high_v, max(beyond.log_time[1], high_v), STEP_OF_TIME_FACTOR)[1:])
+    v = np.concatenate(edges_v)
+    v = np.array([low_v, high_v]) if len(v) == 1 else v
+    w = _edges(loop, bounds, math.log(omega[0]) + v[0], math.log(omega[1]) + v[-1])
+    shape = (len(v) - 1, len(w) - 1)
+    if shape[0] * shape[1] * len(loop.roots) > MAX_FACTORS:
+        return None
+    edges = w[:-1], w[1:], v[:-1, None], v[1:, None]
+    places = Rectangles(*(np.broadcast_to(part, shape).ravel() for part in edges))
+    return enclose(loop, places, *places.centre)
 
 
-def _edges(loop: UncertainLoop, bounds: Bounds, low: float, high: float, step: float) -> Reals:
+def _even_edges(low: float, high: float, step: float) -> Reals:
+    """Edges from low to high, one where they are the same."""
+    return np.linspace(low, high, math.ceil((high - low) / step) + 1)
+
+
+def _edges(loop: UncertainLoop, bounds: Bounds, low: float, high: float) -> Reals:
     """Edges in w from low to high: narrow about the loop's own frequencies, wide elsewhere."""
     sizes = np.abs(loop.roots[loop.roots != 0])
     marks = [math.log(size) for size in sizes.tolist()]
@@ -117,10 +145,10 @@ def _edges(loop: UncertainLoop, bounds: Bounds, low: float, high: float, step: f
     inner_low = min(max(min(marks) - spread, low), high)
     inner_high = max(min(max(marks) + spread, high), inner_low)
     parts = [
-        np.linspace(start, end, max(1, math.ceil((end - start) / width)) + 1)[:-1]
+        _even_edges(start, end, width)[:-1]
         for start, end, width in (
             (low, inner_low, COARSE_STEP),
-            (inner_low, inner_high, step),
+            (inner_low, inner_high, STEP),
             (inner_high, high, COARSE_STEP),
         )
         if end > start
@@ -128,71 +156,80 @@ def _edges(loop: UncertainLoop, bounds: Bounds, low: float, high: float, step: f
     return np.concatenate([*parts, [high]])
 
 
-def minimum(quantity: Quantity, cells: Cells, attained: float, proven_elsewhere: float = math.inf) -> Minimum:
-    """The least value over the cells, `attained` being known; `proven_elsewhere` bounds it outside of them.
+def sweep(loop: UncertainLoop, cells: Cells, searches: list[Search]) -> None:
+    """Prove the level of every search over the cells, lowering it where members are met that have less."""
+    sectors = Sectors.of([each.sector for each in searches])
+    pending, chosen = np.nonzero(~excluded_at_sight(cells, sectors.columns))
+    cells, wave = cells.only(chosen), 0
+    while pending.size:
+        of_cells = sectors.only(pending)
+        out, inside = excluded(cells, of_cells, about_corners=wave > 0)
+        if wave > 0 and not out.all():
+            out |= excluded_at_sight(cells, of_cells)
+        left = np.flatnonzero(~out)
+        pending = pending[left]
+        levels = [each.level for each in searches]
+        for index, search in enumerate(searches):
+            mine = left[pending == index]
+            if mine.size and (wave >= WAVE_THAT_TRIES or inside[mine].any()):
+                search.improve(loop, cells.only(mine))
+        if levels != [each.level for each in searches]:
+            sectors = Sectors.of([each.sector for each in searches])
+        cells, pending = _next_wave(loop, cells, searches, left, pending)
+        wave += 1
 
-    Raises WorkBoundError with what was known by then.
+
+def _next_wave(
+    loop: UncertainLoop, cells: Cells, searches: list[Search], left: Indices, pending: Indices
+) -> tuple[Cells, Indices]:
+    """(The parts of the cells that are left, whose they are); searches past their bound on work end here.
+
+    A cell that holds the best place known is cut there, and the parts about it are enclosed about it.
     """
-    loop, best, work, wave = cells.loop, Found(attained), 0, 0
-    while True:
-        lowest, cost_w, cost_v, centres = quantity.bound(cells, best.value)
-        if centres is not None and centres.size:
-            index = int(np.argmin(centres))
-            if centres[index] < best.value:
-                best = Found(float(centres[index]), (float(cells.w[index]), float(cells.v[index])))
-        # nan: nothing is known of the cell
-        kept = np.flatnonzero(~(lowest >= _threshold(quantity, best.value)))
-        if kept.size and (wave == 0 or wave >= WAVE_THAT_TRIES or math.isinf(best.value)):
-            promise = lowest if centres is None else centres
-            order = kept[np.argsort(promise[kept])][:TRIED]
-            found = quantity.attain(loop, cells.only(order))
-            if found.value < best.value:
-                best = found
-                kept = kept[~(lowest[kept] >= _threshold(quantity, best.value))]
-        if not kept.size:
-            proven = min(proven_elsewhere, _threshold(quantity, best.value))
-            return Minimum(proven, best.value, best.place)
-        known = np.where(lowest[kept] == lowest[kept], lowest[kept], -np.inf)
-        missing: Reals | float = np.inf
-        if math.isfinite(best.value):
-            missing = (_threshold(quantity, best.value) - known) / quantity.slack(best.value)
-        parts = _parts(missing, cost_w[kept], cost_v[kept])
-        work += int(parts[0] @ parts[1]) * len(loop.roots)
-        if work > MAX_FACTORS:
-            raise WorkBoundError(Minimum(min(proven_elsewhere, float(known.min())), best.value, best.place))
-        cells, wave = _divided(cells, kept, *parts), wave + 1
-
-
-def _threshold(quantity: Quantity, attained: float) -> float:
-    """What a cell's bound must reach for the cell to be dropped."""
-    return attained - quantity.slack(attained) if math.isfinite(attained) else math.inf
-
-
-def _parts(missing: Reals | float, cost_w: Reals, cost_v: Reals) -> tuple[Reals, Reals]:
-    """Into how many parts to divide each cell along w and v; `missing` in units of the slack."""
-    # errors fall with the square of the width; a wave is kept to a size at which its overhead is paid for
-    most = max(2, CHILDREN // len(cost_w))
-    wanted = np.clip(2.0 * np.sqrt(missing + 1.0), 2.0, most) * np.ones(len(cost_w))
-    along_w = cost_w >= cost_v
-    ratio = np.sqrt(np.where(along_w, cost_v / cost_w, cost_w / cost_v))
-    minor = np.fmax(wanted * np.where(ratio == ratio, ratio, 0.0), 1.0)
-    # where both cannot be had the narrower parts are those of the width that costs more
-    share = np.sqrt(np.minimum(most / (wanted * minor), 1.0))
-    minor = np.floor(np.fmax(minor * share, 1.0))
-    major = np.floor(np.clip(wanted, 2.0, np.fmax(most / minor, 2.0)))
-    return np.where(along_w, major, minor), np.where(along_w, minor, major)
-
-
-def _divided(cells: Cells, kept: npt.NDArray[np.intp], parts_w: Reals, parts_v: Reals) -> Cells:
+    parts_w, parts_v = _parts(cells, left)
     counts = (parts_w * parts_v).astype(np.intp)
-    source = np.repeat(np.arange(len(kept)), counts)
-    within = np.arange(len(source)) - np.repeat(np.cumsum(counts) - counts, counts)
-    of_w, of_v = within % parts_w[source], within // parts_w[source]
-    w, v, half_w, half_v = (part[source] for part in cells.only(kept))
-    new_w, new_v = half_w / parts_w[source], half_v / parts_v[source]
-    return cells.loop.cells(
-        w - half_w + new_w * (2.0 * of_w + 1.0),
-        v - half_v + new_v * (2.0 * of_v + 1.0),
-        new_w * (1.0 + 1e-12),
-        new_v,
-    )
+    work = np.bincount(pending, counts, len(searches)) * len(loop.roots)
+    for search, more in zip(searches, work.tolist(), strict=True):
+        search.work += int(more)
+        search.given_up = search.given_up or search.work > MAX_FACTORS or search.best.value <= 0
+    counts *= ~np.array([search.given_up for search in searches])[pending]
+    source = np.repeat(np.arange(len(left)), counts)
+    number = np.arange(len(source)) - np.repeat(np.cumsum(counts) - counts, counts)
+    best = np.array([each.best.place or (math.nan, math.nan) for each in searches])[pending[source]]
+    place = cells.places.only(left[source])
+    along_w, along_v = parts_w[source], parts_v[source]
+    low_w, high_w = _cut(place.low_w, place.high_w, along_w, number % along_w, best[:, 0])
+    low_v, high_v = _cut(place.low_v, place.high_v, along_v, number // along_w, best[:, 1])
+    places = Rectangles(low_w, high_w, low_v, high_v)
+    about = (low_w <= best[:, 0]) & (best[:, 0] <= high_w) & (low_v <= best[:, 1]) & (best[:, 1] <= high_v)
+    middle_w, middle_v = places.centre
+    w, v = np.where(about, best[:, 0], middle_w), np.where(about, best[:, 1], middle_v)
+    return enclose(loop, places, w, v), pending[source]
+
+
+def _parts(cells: Cells, left: Indices) -> tuple[Reals, Reals]:
+    """Into how many parts to divide some cells along w and v."""
+    place, slope = cells.places.only(left), cells.response
+    width_w, width_v = place.high_w - place.low_w, place.high_v - place.low_v
+    # errors fall with the square of the width; a wave is kept to a size at which its overhead is paid for
+    of_v = cells.bend_rest + slope.x_v**2 + slope.y_v**2
+    of_w = of_v + cells.bend_plant + slope.x_w**2 + slope.y_w**2
+    most = min(max(CHILDREN / max(len(left), 1), 4.0), 16.0)
+    # a width that costs nothing is not divided
+    ratio = np.sqrt(of_w / of_v)[left] * width_w / width_v
+    ratio = np.where(ratio == ratio, ratio, np.inf)
+    along_w = np.floor(np.minimum(np.maximum(np.sqrt(most * ratio), 2.0), most))
+    return along_w, np.where(width_v > 0, np.maximum(np.floor(most / along_w), 1.0), 1.0)
+
+
+def _cut(low: Reals, high: Reals, parts: Reals, number: Reals, place: Reals) -> Reals:
+    """(Lower, upper edge) of the part of that number; the inner edge nearest to a place inside is moved to
+    it.
+    """
+    width = (high - low) / parts
+    inside = (low < place) & (place < high) & (parts > 1)
+    nearest = np.where(inside, np.minimum(np.maximum(np.rint((place - low) / width), 1.0), parts - 1.0), -1.0)
+    index = np.array([number, number + 1.0])
+    # the last edge is the cell's own to the last digit
+    edges = np.where(index == parts, high, low + index * width)
+    return np.where(index == nearest, place, edges)
