@@ -73,12 +73,11 @@ class Chain:
 
     @property
     def signatures(self) -> tuple[str, ...]:
-        """In sentences: which signatures were checked, by which keys, and what none of them covers."""
-        checked = (*self.keys.sentences(), self.kept.sentence())
+        """Sentences: which signatures were checked, by which keys, what none covers; empty after a fault."""
         if not self._is_whole:
-            return checked
+            return ()
         given = (self._of_checkpoint(self._checkpoint),) if self._checkpoint is not None else ()
-        return (*checked, *given, self._of_held_key(), self._cover())
+        return (*self.keys.sentences(), self.kept.sentence(), *given, self._of_held_key(), self._cover())
 
     def _of_checkpoint(self, given: Checkpoint) -> str:
         if not given.is_signed:
@@ -97,9 +96,7 @@ class Chain:
         signed = max(self.kept.covered, given.size if given is not None and given.is_signed else 0)
         if signed == 0:
             return "No signed checkpoint covers any entry"
-        told = f"The last signed checkpoint covers entries 1 to {signed}"
-        later = self.entries - signed
-        return f"{told}, none the {later} after them" if later else f"{told}, which is all of them"
+        return f"The last signed checkpoint covers entries 1 to {signed} of {self.entries}"
 
     def _state(self) -> State:
         return State(

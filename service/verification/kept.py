@@ -72,11 +72,15 @@ class KeptCheckpoints:
         """Say what was found, in words."""
         if not self._decisions:
             return "There is no decision, and so no checkpoint that was kept with one"
-        kept = [f"{count} whose signatures by the key {key} hold" for key, count in self._signed.items()]
-        kept += [f"{self._unsigned} without a signature"] if self._unsigned else []
-        missing = self._decisions - self._unsigned - self._signed.total()
-        kept += [f"none with {missing} of the decisions"] if missing else []
-        return f"Checkpoints kept with the {self._decisions} decisions: {'; '.join(kept)}"
+        counts = [
+            *((f"signed by the key {key}, verified", count) for key, count in self._signed.items()),
+            ("without a signature", self._unsigned),
+            ("none kept", self._decisions - self._unsigned - self._signed.total()),
+        ]
+        told = "; ".join(f"{words}: {count}" for words, count in counts if count)
+        return (
+            f"Checkpoints kept with the decisions, which are {self._decisions}. {told[:1].upper()}{told[1:]}"
+        )
 
     def _check(self, row: Mapping[str, Any], before: State, known_key: str | None) -> None:
         fault = self._fault(row, before, known_key)

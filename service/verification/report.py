@@ -66,7 +66,10 @@ class Report:
     notes: tuple[str, ...]
     """What is no fault and worth knowing."""
     signatures: tuple[str, ...]
-    """Sentences: which signatures were checked, by which keys, and which entries none of them covers."""
+    """Sentences: which signatures were checked, by which keys, and which entries none of them covers.
+
+    Empty where a fault ended the reading.
+    """
 
     @property
     def holds(self) -> bool:

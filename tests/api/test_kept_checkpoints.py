@@ -55,5 +55,5 @@ def test_with_a_key_it_is_signed_and_verifies_as_it_came(
     report = verify(url, checkpoint=held, held_key=held.public_key)
     assert report.holds
     assert held.is_signed
-    assert f"1 whose signatures by the key {held.public_key} hold" in " ".join(report.signatures)
+    assert f"Signed by the key {held.public_key}, verified: 1" in " ".join(report.signatures)
     databases.drop(url)

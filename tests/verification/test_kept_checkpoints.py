@@ -86,14 +86,13 @@ def test_the_report_says_which_signatures_were_checked_and_what_they_leave_open(
     assert report.notes == ()
     first, second = public_text(FIRST), public_text(SECOND)
     covered = kept_in(owned)[-1] - 1
-    later = report.entries - covered
     assert report.signatures == (
         f"Entry {kept_in(owned)[0] + 1} takes up the key {first}, which signed it",
         f"Entry {kept_in(owned)[2] + 1} takes up the key {second}, which signed it, as did the key before it",
-        f"Checkpoints kept with the 6 decisions: 2 whose signatures by the key {first} hold;"
-        f" 2 whose signatures by the key {second} hold; 1 without a signature; none with 1 of the decisions",
+        f"Checkpoints kept with the decisions, which are 6. Signed by the key {first}, verified: 2;"
+        f" signed by the key {second}, verified: 2; without a signature: 1; none kept: 1",
         "No key was given: that the history's keys are the service's own was not checked",
-        f"The last signed checkpoint covers entries 1 to {covered}, none the {later} after them",
+        f"The last signed checkpoint covers entries 1 to {covered} of {report.entries}",
     )
 
 
@@ -106,7 +105,7 @@ def test_a_given_checkpoint_and_a_given_key_are_told(owned: Owned) -> None:
     assert report.signatures[-3:] == (
         f"The signature of the checkpoint that was given holds, by the key {public_text(SECOND)}",
         f"The key that was given, {public_text(FIRST)}, is the history's; all later ones follow on it",
-        f"The last signed checkpoint covers entries 1 to {report.entries}, which is all of them",
+        f"The last signed checkpoint covers entries 1 to {report.entries} of {report.entries}",
     )
 
 
@@ -206,6 +205,7 @@ def test_nor_can_they_be_made_anew_without_the_key(owned: Owned, remake: Remake)
     _rewrite(owned, remake)
     report = owned.verify()
     assert place(report) == (kept_in(owned)[3], "checkpoints")
+    assert report.signatures == ()
     assert report.fault is not None
     assert "key" in report.fault.what
 
@@ -217,8 +217,8 @@ def test_without_their_signatures_they_fit_and_the_report_says_what_is_covered(o
     _rewrite(owned, _take_the_signature_off)
     after = owned.verify()
     assert after.holds
-    assert "; 3 without a signature;" in after.signatures[2]
-    assert f"covers entries 1 to {kept_in(owned)[2] - 1}, none the" in after.signatures[-1]
+    assert "; without a signature: 3;" in after.signatures[2]
+    assert f"covers entries 1 to {kept_in(owned)[2] - 1} of" in after.signatures[-1]
     assert before.signatures != after.signatures
     assert after.notes[0].startswith("2 of the decisions made while the history had a key have no signed")
     assert not owned.verify(held).holds
