@@ -7,11 +7,15 @@ from collections.abc import Iterator
 import pytest
 from alembic.script import ScriptDirectory
 
-from service.records import migrating
+from service.issuing import sheets
+from service.records import migrating, queries
+from service.records.queries import SubmissionFilter
 from service.verification.verifier import Checkpoint, verify
 from tests.databases import Databases, opened, run
 from tests.records.store import START, Store, gains
 from tests.upgrades import keeping
+
+BEFORE_CHECKPOINTS = ("2026_12_01_first_tables", "2026_12_01_second_person")
 
 REVISIONS = [script.revision for script in ScriptDirectory.from_config(migrating._config()).walk_revisions()]
 
@@ -51,6 +55,23 @@ def test_a_store_that_was_brought_up_is_as_one_that_was_made_new(kept: str, data
     migrating.migrate(new, now=START)
     assert _guards(kept) == _guards(new)
     databases.drop(new)
+
+
+def test_a_signature_from_before_checkpoints_were_kept_says_so_on_its_sheet(kept: str) -> None:
+    is_older = keeping.revision_of(kept) in BEFORE_CHECKPOINTS
+    migrating.migrate(kept, now=START)
+    store = Store(kept)
+    auditor, told, decisions = store.actor("auditor"), [], 0
+    with store.database.reading() as session:
+        for line in queries.submissions(session, auditor, SubmissionFilter(), START).items:
+            view = queries.submission(session, auditor, line.id, START)
+            told += sheets.content(session, auditor, view).checkpoint
+            decisions += len(view.decisions)
+    store.database.close()
+    none_kept = "No checkpoint of the history was kept with the signature of entry"
+    kept_with_one = 0 if is_older else 1
+    assert sum(sentence.startswith("Checkpoint made with") for sentence in told) == kept_with_one
+    assert sum(sentence.startswith(none_kept) for sentence in told) == decisions - kept_with_one > 0
 
 
 def _guards(url: str) -> list[tuple[str, ...]]:
