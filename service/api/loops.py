@@ -11,7 +11,7 @@ from service.api.answers import Answer
 from service.api.operations import Call, Reader, changes, reads
 from service.api.preconditions import check_match, revision_etag
 from service.api.queries import NoQuery, PageQuery, Text
-from service.documents.loops import LoopRegistration, ModelVersion
+from service.documents.loops import LoopRegistration, ModelVersion, RevisedLoop
 from service.records import left_otherwise, loops, queries
 from service.records.queries import LoopFilter
 from service.records.views import GainsInForce, LoopView
@@ -64,14 +64,15 @@ def show_loop(call: Call, _query: NoQuery, loop_id: str) -> Answer:
 
 
 @blueprint.put("/<loop_id>")
-@changes(LoopRegistration, representations.Loop, status=200)
-def change_loop(call: Call, read: Reader[LoopRegistration], loop_id: str) -> Answer:
-    """Change a loop: a new revision, while the earlier ones stay."""
+@changes(RevisedLoop, representations.Loop, status=200)
+def change_loop(call: Call, read: Reader[RevisedLoop], loop_id: str) -> Answer:
+    """Change a loop, with a reason: a new revision, while the earlier ones stay."""
     present = loops.find(call.session, call.actor, loop_id)
     loops.check_may_change(call.actor)
     document = read()
     check_match(request, revision_etag(present.revision))
-    return _answer(loops.change(call.session, call.actor, loop_id, document, present.revision, call.now))
+    reason, revision = document.reason, present.revision
+    return _answer(loops.change(call.session, call.actor, loop_id, document.loop, reason, revision, call.now))
 
 
 @blueprint.get("/<loop_id>/revisions")

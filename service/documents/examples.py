@@ -10,7 +10,7 @@ from typing import Any
 from service.documents.changes import ChangeDecisionRequest, LoopChangeRequest
 from service.documents.decisions import DecisionRequest
 from service.documents.installations import InstallationRequest
-from service.documents.loops import LoopRegistration, ModelVersion
+from service.documents.loops import LoopRegistration, ModelVersion, RevisedLoop
 from service.documents.people import (
     AccessRequest,
     AccountRequest,
@@ -65,6 +65,7 @@ EXAMPLES: dict[type, dict[str, Any]] = {
         "claims": {"gain_margin": 4.3, "phase_margin_deg": 66},
     },
     LoopRegistration: _LOOP,
+    RevisedLoop: _LOOP | {"reason": "The description named the line that was taken down in spring."},
     ModelVersion: {
         "plant_model": _PLANT_MODEL,
         "operating_point": "normal feed",

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 from service.analysis.errors import FieldError
 from service.analysis.plant import Range
@@ -49,6 +49,20 @@ class LoopRegistration:
     def own_criteria(self) -> Criteria | None:
         """The loop's own limits; an empty set of limits is none."""
         return None if self.criteria == Criteria() else self.criteria
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class RevisedLoop(LoopRegistration):
+    """A loop as it is from now on, and why it was changed."""
+
+    reason: Prose
+
+    @property
+    def loop(self) -> LoopRegistration:
+        """The loop itself."""
+        return LoopRegistration(
+            **{field.name: getattr(self, field.name) for field in fields(LoopRegistration)}
+        )
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)

@@ -85,7 +85,13 @@ def register(session: Session, actor: Actor, document: LoopRegistration, now: da
 
 
 def change(
-    session: Session, actor: Actor, loop_id: str, document: LoopRegistration, revision: int, now: datetime
+    session: Session,
+    actor: Actor,
+    loop_id: str,
+    document: LoopRegistration,
+    reason: str,
+    revision: int,
+    now: datetime,
 ) -> LoopView:
     """Make a new revision of a loop. `revision` is the one that the change was made from.
 
@@ -105,7 +111,12 @@ def change(
         kind="loop_changed",
         actor=actor,
         about=about(loop, latest),
-        content={"revision": latest.revision, "before": json.loads(present.content), "loop": document},
+        content={
+            "revision": latest.revision,
+            "reason": reason,
+            "before": json.loads(present.content),
+            "loop": document,
+        },
         now=now,
         rows=(latest,),
     )

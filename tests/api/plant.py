@@ -16,6 +16,7 @@ LOOP: Body = {
     "pv": {"low": 0.0, "high": 150.0, "unit": "°C"},
     "output": {"low": 0.0, "high": 100.0, "unit": "%"},
 }
+WHY: Body = {"reason": "The data sheet says otherwise."}
 MODEL: Body = {
     "plant_model": {"kind": "first_order", "gain": 1.2, "time_constant_s": 30.0, "dead_time_s": 5.0},
     "operating_point": "normal load",

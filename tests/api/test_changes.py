@@ -42,7 +42,7 @@ def test_a_change_by_one_person_is_refused_with_each_place(service: Service, loo
     changed = WIDER | {"fail_position": "open"}
     headers = {"If-Match": '"revision-1"'}
     rows = service.rows()
-    answer = service.call("PUT", f"/v1/loops/{loop_id}", json=changed, headers=headers)
+    answer = service.call("PUT", f"/v1/loops/{loop_id}", json=changed | plant.WHY, headers=headers)
     assert (answer.status_code, answer.json["type"]) == (409, "/problems/second-person-needed")
     assert [error["pointer"] for error in answer.json["errors"]] == ["/pv", "/fail_position"]
     assert service.rows() == rows
@@ -51,7 +51,7 @@ def test_a_change_by_one_person_is_refused_with_each_place(service: Service, loo
 
 def test_412_comes_before_the_second_person(service: Service, loop_id: str) -> None:
     headers = {"If-Match": '"revision-9"'}
-    answer = service.call("PUT", f"/v1/loops/{loop_id}", json=WIDER, headers=headers)
+    answer = service.call("PUT", f"/v1/loops/{loop_id}", json=WIDER | plant.WHY, headers=headers)
     assert answer.status_code == 412
 
 
@@ -130,7 +130,10 @@ def test_another_digest_is_412_and_a_loop_that_moved_is_409(
     assert decide(service, change, content_digest="0" * 64).status_code == 412
     headers = {"If-Match": '"revision-1"'}
     other = plant.LOOP | {"description": "Wash water"}
-    assert service.call("PUT", f"/v1/loops/{loop_id}", json=other, headers=headers).status_code == 200
+    assert (
+        service.call("PUT", f"/v1/loops/{loop_id}", json=other | plant.WHY, headers=headers).status_code
+        == 200
+    )
     assert decide(service, change).status_code == 409
     assert service.get(f"/v1/changes/{change['id']}").json["state"] == "overtaken"
 

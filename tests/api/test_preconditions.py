@@ -20,7 +20,7 @@ def test_a_loop_is_changed_by_who_names_the_revision_they_saw(service: Service, 
     path = f"/v1/loops/{loop_id}"
     seen = service.get(path)
     other = plant.LOOP | {"description": "Wash water temperature, second line"}
-    changed = service.call("PUT", path, json=other, headers={"If-Match": seen.headers["ETag"]})
+    changed = service.call("PUT", path, json=other | plant.WHY, headers={"If-Match": seen.headers["ETag"]})
     assert changed.status_code == 200, changed.text
     assert changed.json["revision"] == seen.json["revision"] + 1
     assert changed.headers["ETag"] != seen.headers["ETag"]
@@ -36,7 +36,7 @@ def test_a_change_without_the_present_tag_is_refused(
 ) -> None:
     before = service.rows()
     headers = {"If-Match": match} if match else {}
-    answer = service.call("PUT", f"/v1/loops/{loop_id}", json=plant.LOOP, headers=headers)
+    answer = service.call("PUT", f"/v1/loops/{loop_id}", json=plant.LOOP | plant.WHY, headers=headers)
     assert answer.status_code == status
     assert service.rows() == before
 

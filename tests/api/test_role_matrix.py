@@ -79,7 +79,9 @@ MATRIX: dict[tuple[str, str], Cell] = {
     ("post", "/v1/loops"): Cell(CHANGE_LOOPS, 201, body=lambda _: plant.LOOP | {"tag": "TIC-999"}),
     ("get", "/v1/loops"): Cell(EVERYBODY),
     ("get", LOOP): Cell(EVERYBODY),
-    ("put", LOOP): Cell(CHANGE_LOOPS, body=lambda _: plant.LOOP | {"service_class": "heat"}, seen=LOOP),
+    ("put", LOOP): Cell(
+        CHANGE_LOOPS, body=lambda _: plant.LOOP | {"service_class": "heat"} | REASON, seen=LOOP
+    ),
     ("get", f"{LOOP}/revisions"): Cell(EVERYBODY),
     ("get", f"{LOOP}/gains-in-force"): Cell(EVERYBODY),
     ("get", MODEL): Cell(EVERYBODY),

@@ -46,6 +46,7 @@ CALLS = [call for call, cell in MATRIX.items() if cell.body]
 WITH_REASON = {
     ("post", "/v1/submissions"),
     ("post", "/v1/submissions/{submission_id}/decisions"),
+    ("put", "/v1/loops/{loop_id}"),
     ("post", "/v1/loops/{loop_id}/changes"),
     ("post", "/v1/changes/{change_id}/decisions"),
     ("put", "/v1/accounts/{name}/access"),

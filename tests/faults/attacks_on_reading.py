@@ -258,7 +258,7 @@ def _headers(world: World, chance: random.Random) -> Iterator[Attack]:
         yield Attack(name, path, "GET", headers=headers, statuses=ANSWERED, absent=b"evil.example")
     stale = chance.choice(("", "*", '"revision-99"', 'W/"x"', "\u00e9", '"a", "b"'))
     path, headers = f"/v1/loops/{world.loop}", {"If-Match": stale}
-    yield sent("a change of what was not seen", path, plant.LOOP, method="PUT", headers=headers)
+    yield sent("a change of what was not seen", path, plant.LOOP | plant.WHY, method="PUT", headers=headers)
     key = {"Idempotency-Key": chance.choice(("x" * 201, " ", "a b", "\u00e9"))}
     yield sent(
         "a key that is none", "/v1/recomputations", plant.RECOMPUTATION, headers=key, statuses=ANSWERED

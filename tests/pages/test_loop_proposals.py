@@ -133,7 +133,8 @@ def test_a_loop_that_moved_meanwhile_is_said_and_the_next_try_holds(
     with app.app_context(), services().database.writing() as session:
         view = loops.find(session, CONSOLE, kept.loops["stable"])
         moved = replace(view.loop, description="Rinse water")
-        loops.change(session, CONSOLE, view.id, moved, view.revision, services().database.now())
+        now = services().database.now()
+        loops.change(session, CONSOLE, view.id, moved, "renamed", view.revision, now)
     author.send(address(kept), **{"pv-high": "200", "reason": REASON})
     assert author.status == 412
     assert "The loop has changed since you opened this page." in author.page.text

@@ -36,7 +36,13 @@ LIMITS = {"gain_margin_min": 2.5, "max_sensitivity_max": 1.8}
 def change_loop(store: Store, loop: LoopView, revision: int = 1, **changed: Any) -> LoopView:
     with store.database.writing() as session:
         return loops.change(
-            session, store.actor("submitter"), loop.id, registration(**changed), revision, store.clock()
+            session,
+            store.actor("submitter"),
+            loop.id,
+            registration(**changed),
+            "as it is in the plant",
+            revision,
+            store.clock(),
         )
 
 

@@ -241,7 +241,7 @@ LIMITS = {"gain_margin_min": 1.5}
 
 def _change(store: Store, loop: LoopView, changed: LoopRegistration) -> None:
     with store.database.writing() as session:
-        loops.change(session, store.actor("submitter"), loop.id, changed, 1, store.clock())
+        loops.change(session, store.actor("submitter"), loop.id, changed, "why", 1, store.clock())
 
 
 def _change_loop(store: Store, loop: LoopView) -> None:

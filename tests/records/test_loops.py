@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import pytest
 
-from service.records import loops
+from service.records import loops, queries
 from service.records.errors import AlreadyExists, FieldErrors, NotAllowed, NotFound, StaleContent
+from service.records.queries import HistoryFilter
 from service.records.views import LoopView
 from tests.records.store import Store, registration
 
@@ -49,6 +50,7 @@ def test_a_change_is_a_new_revision_and_the_earlier_one_stays(store: Store, loop
             store.actor("submitter"),
             loop.id,
             registration(description="feed, renamed"),
+            "the dryer was renamed",
             1,
             store.clock(),
         )
@@ -57,20 +59,24 @@ def test_a_change_is_a_new_revision_and_the_earlier_one_stays(store: Store, loop
         first = loops.find(session, store.actor("auditor"), loop.id, revision=1)
     assert [view.revision for view in kept] == [2, 1]
     assert (changed.loop.description, first.loop.description) == ("feed, renamed", "feed to the dryer")
+    with store.database.reading() as session:
+        wanted = HistoryFilter(kind="loop_changed")
+        (told,) = queries.history(session, store.actor("auditor"), wanted).items
+    assert told.content["reason"] == "the dryer was renamed"
 
 
 def test_a_change_of_a_revision_that_is_no_longer_the_present_one_is_stale(
     store: Store, loop: LoopView
 ) -> None:
     with store.database.writing() as session, pytest.raises(StaleContent):
-        loops.change(session, store.actor("submitter"), loop.id, registration(), 2, store.clock())
+        loops.change(session, store.actor("submitter"), loop.id, registration(), "why", 2, store.clock())
 
 
 @pytest.mark.parametrize(("field", "value"), [("site", "South"), ("tag", "FIC-102")])
 def test_site_and_tag_stay(store: Store, loop: LoopView, field: str, value: str) -> None:
     changed = registration(**{field: value})
     with store.database.writing() as session, pytest.raises(FieldErrors) as refused:
-        loops.change(session, store.actor("submitter"), loop.id, changed, 1, store.clock())
+        loops.change(session, store.actor("submitter"), loop.id, changed, "why", 1, store.clock())
     assert refused.value.errors[0].pointer == f"/{field}"
 
 

@@ -54,7 +54,7 @@ def _register(store: Store) -> Change:
 def _change_loop(store: Store) -> Change:
     loop, actor = store.register(), store.actor("submitter")
     changed = registration(description="other")
-    return lambda session: loops.change(session, actor, loop.id, changed, 1, store.clock())
+    return lambda session: loops.change(session, actor, loop.id, changed, "renamed", 1, store.clock())
 
 
 def _propose(store: Store) -> Change:

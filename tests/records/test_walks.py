@@ -253,7 +253,8 @@ class Walks(RuleBasedStateMachine):
     def describe_the_loop_anew(self) -> None:
         changed = self._registration(description=f"revision {self.revision + 1}")
         with self.store.database.writing() as session:
-            loops.change(session, CONSOLE, self.loop.id, changed, self.revision, self.store.clock())
+            now = self.store.clock()
+            loops.change(session, CONSOLE, self.loop.id, changed, "renamed", self.revision, now)
         self.revision += 1
         self.entries += 1
 
