@@ -128,7 +128,7 @@ def test_a_signed_checkpoint_holds_texts_whole_numbers_and_null_alone(owned: Own
 
 
 def test_what_stands_in_a_store_cannot_write_over_what_is_said_of_it() -> None:
-    hidden = "\x1b[2K\rThe history holds\n\u202e\ud800"
+    hidden = "Größe\x1b[2K\rThe history holds\n\u202e\ud800"
     said = Fault(entry=5, table="loops", row=f"id {hidden}", what="the row is missing").sentence()
-    told = r"id \x1b[2K\rThe history holds\n\u202e\ud800"
+    told = r"id Größe\x1b[2K\rThe history holds\n\u202e\ud800"
     assert said == f"entry 5; table loops, row {told}: the row is missing"

@@ -8,15 +8,17 @@ from collections.abc import Callable, Iterator
 from typing import Any
 
 import pytest
+import rfc8785
 from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
 from sqlalchemy.orm import Session
 
 from service.documents import writing
 from service.documents.canonical import canonical_bytes
 from service.issuing import checkpoints, signing_keys
-from service.issuing.base64_text import public_text
+from service.issuing.base64_text import base64_text, public_text
 from service.records.errors import Conflict, NotAllowed, StoreNotUsable
 from service.records.roles import CONSOLE
+from service.verification import signatures
 from service.verification.checkpoints import Checkpoint
 from service.verification.verifier import verify
 from tests.records.store import Store
@@ -241,3 +243,19 @@ def test_a_checkpoint_of_another_store_does_not_hold(signed: Store) -> None:
     document = json.loads(checkpoint_of(signed, FIRST))
     other = {name: document[name] for name in ("size", "digest", "head")} | {"origin": "0" * 64}
     assert "another store" in (what_breaks(signed, json.dumps(other).encode()) or "")
+
+
+def test_a_signature_is_of_the_canonical_bytes_in_whatever_script() -> None:
+    """RFC 8785 keeps letters as they are, in UTF-8, and puts names in order."""
+    document = {"size": 3, "origin": "Größe 流", "head": None}
+    signature = base64_text(FIRST.sign(rfc8785.dumps(document)))
+    assert signatures.holds(public_text(FIRST), signature, document)
+    assert not signatures.holds(public_text(STRANGE), signature, document)
+
+
+def test_a_signature_or_key_with_anything_more_in_it_is_another_text_and_none() -> None:
+    signature, key = base64_text(FIRST.sign(b"{}")), public_text(FIRST)
+    assert signatures.holds(key, signature, {})
+    for more in ("\n", " ", "!", "AAAA"):
+        assert not signatures.holds(key, signature + more, {})
+        assert not signatures.holds(key + more, signature, {})
