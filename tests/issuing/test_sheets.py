@@ -24,6 +24,9 @@ from tests.records.store import START, Store, gains, password_of
 
 KEY = Ed25519PrivateKey.generate()
 
+on_sqlite = pytest.mark.parametrize("databases", ["sqlite"], indirect=True)
+"""What paper says does not depend on where the record is kept; that its bytes come back does, above."""
+
 
 @dataclass
 class Office:
@@ -112,6 +115,7 @@ def test_a_sheet_is_the_same_until_something_of_its_record_happens(office: Offic
     assert codes_in(later)[1:] == codes_in(office.kept(submission))[1:]
 
 
+@on_sqlite
 def test_each_signature_has_a_checkpoint_and_the_code_is_of_the_latest(office: Office) -> None:
     submission = office.store.submit()
     first = office.sign(submission)
@@ -127,6 +131,7 @@ def test_each_signature_has_a_checkpoint_and_the_code_is_of_the_latest(office: O
     assert json.loads(codes_in(office.kept(submission))[1])["size"] == second.checkpoint.size
 
 
+@on_sqlite
 def test_without_a_key_a_sheet_says_that_its_checkpoint_is_unsigned(office: Office) -> None:
     office.key = None
     submission = office.store.submit()
@@ -138,12 +143,14 @@ def test_without_a_key_a_sheet_says_that_its_checkpoint_is_unsigned(office: Offi
     assert verify(office.store.url, checkpoint=held).holds
 
 
+@on_sqlite
 def test_a_sheet_of_gains_that_nobody_has_signed_says_that_there_is_none(office: Office) -> None:
     pdf = office.printed(office.store.submit())
     assert "Nocheckpointofthehistory:oneismadewitheachsignature" in text_in(pdf)
     assert len(codes_in(pdf)) == 1
 
 
+@on_sqlite
 def test_a_decision_from_before_checkpoints_were_kept_says_so(office: Office) -> None:
     submission = office.store.submit()
     office.store.approve(submission)
@@ -153,6 +160,7 @@ def test_a_decision_from_before_checkpoints_were_kept_says_so(office: Office) ->
     assert len(codes_in(pdf)) == 1
 
 
+@on_sqlite
 def test_a_usual_signed_sheet_has_two_pages(office: Office) -> None:
     submission = office.store.submit()
     office.sign(submission)

@@ -74,6 +74,7 @@ def test_an_approval_is_signed_with_the_password_and_kept_with_its_sheet(
     assert page.one("h1").text == "Signed and recorded"
     assert "Bo Lindgren approved these gains" in page.text
     assert "approved and not yet installed" in page.text
+    assert "unsigned: the service has no signing key" in page.text
     sheet = reviewer.client.get(f"/submissions/{submission}/sheet.pdf?as_signed=true")
     assert sheet.data.startswith(b"%PDF-")
 
