@@ -7,9 +7,13 @@ from dataclasses import dataclass, field
 from typing import Any
 
 from service.pages.visits import COOKIE
+from tests.pages import markup
 
 JSON = {"Content-Type": "application/json"}
 FORM = {"Content-Type": "application/x-www-form-urlencoded"}
+SIGN_OUT = "/sign-out"
+"""The one form that is left alone: it would end the session that all others need."""
+
 REFUSED = frozenset(range(400, 500))
 ANSWERED = frozenset(range(200, 500))
 
@@ -24,6 +28,8 @@ class World:
     submission: str
     digest: str
     session_cookie: str
+    forms: dict[str, list[tuple[str, str]]] = field(default_factory=dict)
+    """Address of each form that this session is shown → its fields, each with what stands in it."""
 
 
 @dataclass(frozen=True)
@@ -53,3 +59,17 @@ def page(name: str, world: World, path: str, method: str = "GET", **more: Any) -
     headers = {"Cookie": f"{COOKIE}={world.session_cookie}"} | more.pop("headers", {})
     more = {"statuses": ANSWERED, "person": None} | more
     return Attack(name, path, method, headers=headers, **more)
+
+
+def forms_on(html: str) -> dict[str, list[tuple[str, str]]]:
+    """The forms of a page by the address that they are sent to: their fields, and what stands in each."""
+    return {
+        form.get("action"): [
+            (one.get("name"), one.get("value"))
+            for tag in ("input", "textarea", "select")
+            for one in form.all(tag)
+            if "name" in one.attributes
+        ]
+        for form in markup.read(html).all("form", method="post")
+        if form.get("action") != SIGN_OUT
+    }

@@ -5,8 +5,9 @@ from __future__ import annotations
 import base64
 import random
 from collections.abc import Iterator
-from urllib.parse import quote
+from urllib.parse import quote, urlencode
 
+from service.pages.forgery import TOKEN_FIELD
 from tests.api import plant
 from tests.api.plant import Body
 from tests.faults.attack import ANSWERED, FORM, JSON, Attack, World, page, sent
@@ -95,6 +96,26 @@ def _sign_in(chance: random.Random) -> Iterator[Attack]:
         )
 
 
+NONSENSE = (
+    "",
+    " ",
+    "NaN",
+    "1e999",
+    "-1",
+    "1,5",
+    "approve",
+    "x" * 5000,
+    "\u202eTIC",
+    "\u200b",
+    "\x00",
+    "a\r\nb",
+    "<script>alert(1)</script>",
+    "\u0661\u0662",
+    "0" * 64,
+    "a password that is wrong",
+)
+
+
 def _pages(world: World, chance: random.Random) -> Iterator[Attack]:
     forms = ("sign", "confirm", "installation")
     path = f"/submissions/{world.submission}/{chance.choice(forms)}"
@@ -115,6 +136,13 @@ def _pages(world: World, chance: random.Random) -> Iterator[Attack]:
     yield page(
         "a form of very many parts", world, path, "POST", body=parts, headers=headers, statuses=refused
     )
+    for path, fields in world.forms.items():
+        typed = [
+            (name, held if name == TOKEN_FIELD or chance.random() < 0.3 else chance.choice(NONSENSE))
+            for name, held in fields
+        ]
+        body = urlencode(typed).encode()
+        yield page("a form filled in with nonsense", world, path, "POST", body=body, headers=FORM)
     for name in ("loops", "submissions", "history"):
         query = chance.choice(
             ("q=%00", "cursor=AAAA", "state=none", "limit=0", "x=" + "y" * 3000, "area=%E2%80%AE")

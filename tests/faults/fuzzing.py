@@ -45,7 +45,7 @@ from tests.api.plant import Body, changed
 from tests.clusters import Cluster
 from tests.databases import PostgresqlDatabases, SqliteFiles
 from tests.faults import described
-from tests.faults.attack import ANSWERED, FORM, Attack, World, page, sent
+from tests.faults.attack import ANSWERED, FORM, Attack, World, forms_on, page, sent
 from tests.faults.attacks_on_access import attacks_on_access
 from tests.faults.attacks_on_reading import attacks_on_reading
 from tests.faults.conformance import Answer, Description
@@ -90,7 +90,8 @@ class Figures:
     def __str__(self) -> str:
         families = Counter[str]()
         for status, count in self.statuses.items():
-            families["no answer" if status == 0 else f"{status // 100}xx"] += count
+            family = {0: "no answer", 501: "501"}.get(status, f"{status // 100}xx")
+            families[family] += count
         told = ", ".join(f"{family} {count}" for family, count in sorted(families.items()))
         return (
             f"requests {self.requests} ({told}), most CPU {self.cpu_s:.2f} s, most memory "
@@ -157,6 +158,10 @@ class Run:
             digest=submission["content_digest"],
             session_cookie=self._signed_in("reviewer"),
         )
+        for path in (f"/submissions/{self.world.submission}", "/password"):
+            shown = self._answer(page("once before", self.world, path))
+            self.world.forms.update(forms_on(shown.body.decode()))
+        assert len(self.world.forms) > 1, "the forms are not found"
         measured = [[1.0 / (1.0 + w * w), -w / (1.0 + w * w)] for w in (0.1, 0.3, 1.0, 3.0, 10.0, 30.0)]
         points = {"kind": "frequency_response", "response": measured, "unstable_poles": 0}
         points["frequencies_rad_s"] = [0.1, 0.3, 1.0, 3.0, 10.0, 30.0]
