@@ -12,7 +12,7 @@ from service.documents.canonical import canonical_bytes
 from service.documents.writing import plain
 from service.records.views import DecisionView
 
-UNSIGNED = "UNSIGNED: the service had no signing key"
+UNSIGNED = "UNSIGNED: the service had no signing key in force"
 
 
 def about(decisions: Sequence[DecisionView]) -> Iterator[str]:

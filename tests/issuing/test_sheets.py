@@ -138,7 +138,7 @@ def test_without_a_key_a_sheet_says_that_its_checkpoint_is_unsigned(office: Offi
     made = office.sign(submission)
     assert made.checkpoint is not None
     assert (made.checkpoint.public_key, made.checkpoint.signature) == (None, None)
-    assert "UNSIGNED:theservicehadnosigningkey" in text_in(office.kept(submission))
+    assert "UNSIGNED:theservicehadnosigningkeyinforce" in text_in(office.kept(submission))
     held = Checkpoint.read(codes_in(office.kept(submission))[1].encode())
     assert verify(office.store.url, checkpoint=held).holds
 
