@@ -11,7 +11,7 @@ from service.analysis.loop import Reals
 
 MAX_STEPS = 200
 
-NEWTON_DONE = 1e-12
+NEWTON_DONE = 1e-9
 """A Newton step this small, relatively, leaves an error of its square, which is below float64."""
 
 
@@ -25,14 +25,13 @@ def newton_zero(
     high: Reals,
     value_low: Reals,
     resolution: float = 0.0,
-    noise: Reals | float = 0.0,
     start: Reals | None = None,
 ) -> Reals:
     """A zero in each bracket to float64: Newton where it contracts, halving where it does not.
 
     `function` gives value and slope, arrays of the brackets' shape; `value_low` is its value at `low`. The
-    function changes sign once in each bracket. Places below `resolution` and values below `noise` are as good
-    as 0. `start`: places to begin at, the middle where there are none.
+    function changes sign once in each bracket. Places below `resolution` are as good as 0.
+    `start`: places to begin at, the middle where there are none.
     """
     above = value_low > 0
     at, previous = 0.5 * (low + high) if start is None else start, high - low
@@ -41,17 +40,21 @@ def newton_zero(
         before = (value > 0) == above
         low, high = np.where(before, at, low), np.where(before, high, at)
         step = np.divide(value, slope, out=np.zeros_like(value), where=value != 0)
-        newton = at - step
-        size = np.abs(step)
-        taken = (size <= 0.5 * previous) & (newton >= low) & (newton <= high)
+        newton, size = at - step, np.abs(step)
+        contracts = (size <= 0.5 * previous) & (newton >= low) & (newton <= high)
         about = np.maximum(np.abs(at), resolution)
-        arrived = (size <= NEWTON_DONE * about) | (np.abs(value) <= noise)
+        arrived = size <= NEWTON_DONE * about
+        if contracts.all():
+            at, previous = newton, size
+            if arrived.all():
+                break
+            continue
         settled = arrived | (high - low <= FULL * about)
         stay = np.where(arrived, np.clip(newton, low, high), at)
-        at = np.where(taken, newton, np.where(settled, stay, 0.5 * (low + high)))
+        at = np.where(contracts, newton, np.where(settled, stay, 0.5 * (low + high)))
         if settled.all():
             break
-        previous = np.where(taken, size, 0.5 * (high - low))
+        previous = np.where(contracts, size, 0.5 * (high - low))
     return at
 
 

@@ -7,6 +7,7 @@ Trefethen, Barycentric Lagrange interpolation, SIAM Review 46 (2004) 501-517.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from functools import lru_cache
 
 import numpy as np
@@ -14,9 +15,6 @@ import numpy.typing as npt
 
 from service.analysis.brackets import newton_zero
 from service.analysis.loop import Reals
-
-ROUNDED = 1e-4
-"""Against what is taken for noise, a value that is as good as 0."""
 
 NODES = 16
 """Nodes of a piece of a response; e^(λt) over a piece with abs λ·length ≤ 6 is met to some 1e-11."""
@@ -65,18 +63,33 @@ def evaluation(count: int, at: Reals) -> Reals:
     """Matrix from values at the nodes to values at `at`, shape (len(at), count)."""
     difference = at[:, None] - points(count)
     exact = difference == 0
-    terms = barycentric_weights(count) / np.where(exact, 1.0, difference)
+    upon_node = exact.any()
+    terms = barycentric_weights(count) / (np.where(exact, 1.0, difference) if upon_node else difference)
     matrix = terms / terms.sum(axis=1, keepdims=True)
-    hit = exact.any(axis=1)
-    matrix[hit] = exact[hit]
+    if upon_node:
+        hit = exact.any(axis=1)
+        matrix[hit] = exact[hit]
     return np.asarray(matrix)
+
+
+def value_and_slope(rows: Reals) -> Callable[[Reals], tuple[Reals, Reals]]:
+    """Of the polynomials with these values at the nodes, shape (m, count), a function from a place for each,
+    shape (m,), to value and slope there.
+    """
+    slopes = rows @ differentiation(rows.shape[1]).T
+
+    def at_places(at: Reals) -> tuple[Reals, Reals]:
+        matrix = evaluation(rows.shape[1], at)
+        return np.einsum("ij,ij->i", matrix, rows), np.einsum("ij,ij->i", matrix, slopes)
+
+    return at_places
 
 
 def evaluate_rows(rows: Reals, at: Reals) -> Reals:
     """The polynomial of each row, values shape (m, count), at its own point, shape (m,)."""
     blocks = (slice(first, first + ROWS_AT_ONCE) for first in range(0, max(len(at), 1), ROWS_AT_ONCE))
     return np.concatenate(
-        [(evaluation(rows.shape[1], at[block]) * rows[block]).sum(axis=1) for block in blocks]
+        [np.einsum("ij,ij->i", evaluation(rows.shape[1], at[block]), rows[block]) for block in blocks]
     )
 
 
@@ -89,7 +102,7 @@ def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[npt.NDArray[np.int
     noise = np.broadcast_to(noise, (len(rows), 1))
     starts = range(0, len(rows), ROWS_AT_ONCE)
     blocks = [slice(start, start + ROWS_AT_ONCE) for start in starts]
-    found = [_zeros_of_block(rows[block], noise[block]) for block in blocks]
+    found = [_zeros_of_block(rows[block], noise[block, 0]) for block in blocks]
     if not found:
         return np.empty(0, np.intp), np.empty(0)
     row = [start + of_block for start, (of_block, _) in zip(starts, found, strict=True)]
@@ -97,24 +110,28 @@ def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[npt.NDArray[np.int
 
 
 def _zeros_of_block(rows: Reals, noise: Reals) -> tuple[npt.NDArray[np.intp], Reals]:
-    before, after = rows[:, :-1], rows[:, 1:]
-    changes = ((before > 0) != (after > 0)) & (np.maximum(np.abs(before), np.abs(after)) > noise)
-    row, node = np.nonzero(changes)
-    return row, _zeros(rows[row], node, noise[row, 0]) if row.size else np.empty(0)
+    count = rows.shape[1]
+    # along the whole array, which is many times faster than along its short rows
+    positive = (rows > 0).ravel()
+    changes = np.flatnonzero(positive[:-1] != positive[1:])
+    row, node = np.divmod(changes[changes % count != count - 1], count)
+    before, after, noise = np.abs(rows[row, node]), np.abs(rows[row, node + 1]), noise[row]
+    told = np.maximum(before, after) > noise
+    row, node, before, after, noise = (each[told] for each in (row, node, before, after, noise))
+    # where one of the two values is rounding, the change is at that node
+    place = points(count)[np.where(before <= after, node, node + 1)]
+    between = np.flatnonzero(np.minimum(before, after) > noise)
+    if between.size:
+        place[between] = _zeros(rows[row[between]], node[between])
+    return row, place
 
 
-def _zeros(rows: Reals, node: npt.NDArray[np.intp], noise: Reals) -> Reals:
-    """Of each row, shape (m, count), the zero between two of its nodes, shape (m,); `noise` (m,)."""
-    nodes, slopes = points(rows.shape[1]), rows @ differentiation(rows.shape[1]).T
-
-    def value_and_slope(at: Reals) -> tuple[Reals, Reals]:
-        matrix = evaluation(rows.shape[1], at)
-        return (matrix * rows).sum(axis=1), (matrix * slopes).sum(axis=1)
-
-    every = np.arange(len(rows))
+def _zeros(rows: Reals, node: npt.NDArray[np.intp]) -> Reals:
+    """Of each row, shape (m, count), the zero between two of its nodes, shape (m,)."""
+    nodes, every = points(rows.shape[1]), np.arange(len(rows))
     low, high, at_low, at_high = nodes[node], nodes[node + 1], rows[every, node], rows[every, node + 1]
     secant = low + (high - low) * (at_low / (at_low - at_high))
-    return newton_zero(value_and_slope, low, high, at_low, 1.0, ROUNDED * noise, secant)
+    return newton_zero(value_and_slope(rows), low, high, at_low, 1.0, secant)
 
 
 def _frozen(array: Reals) -> Reals:

@@ -64,6 +64,8 @@ Numbers = Reals | float
 
 Responses = Complexes | complex
 
+TINY = 1e-300
+
 InRadS = Callable[[Reals], Reals]
 """From a frequency on the axis, inf included, to rad/s: by a loop's unit or a sampled loop's scale."""
 
@@ -102,10 +104,9 @@ def margins(axis: AxisResponse, listed: Crossovers, in_rad_s: InRadS, delay_marg
     """Every margin of a stable loop. Raises WorkBoundError where the bound on the work is passed."""
     loop = axis.loop
     upper, lower = _gain_margins(axis, in_rad_s)
-    search = PeakSearch(axis)
-    sensitivity = search.peak(Sensitivity(loop))
-    complementary = search.peak(ComplementarySensitivity(loop))
-    disk = search.peak(DiskSensitivity(loop))
+    sensitivity, complementary, disk = PeakSearch(axis).peaks(
+        [Sensitivity(loop), ComplementarySensitivity(loop), DiskSensitivity(loop)]
+    )
     return Margins(
         gain_margin=upper.factor,
         gain_reduction_margin=lower.factor,
@@ -347,35 +348,44 @@ class PeakSearch:
         magnitude = np.abs(self._response)
         self._steps = _Steps(axis.omega[:-1], axis.omega[1:], magnitude[:-1], magnitude[1:])
 
-    def peak(self, quantity: Sensitivity) -> Peak:
-        """The supremum. Raises WorkBoundError past the bound on points."""
-        best = _ends_first(quantity)
-        values = _values(quantity, self._axis.omega, self._response)
-        met = max(best.value, float(values[np.isfinite(values)].max(initial=0.0)))
-        steps, bounds, work = self._steps, self._steps.bounds(quantity), 0
-        while (promising := bounds > met * (1 + PEAK_TIE)).any():
-            steps, bounds = steps.only(promising), bounds[promising]
+    def peaks(self, quantities: list[Sensitivity]) -> list[Peak]:
+        """The supremum of each. Raises WorkBoundError past the bound on points."""
+        best = [_ends_first(quantity) for quantity in quantities]
+        met = np.array([self._met_on_grid(*pair) for pair in zip(quantities, best, strict=True)])
+        steps, work = self._steps, 0
+        bounds = np.array([steps.bounds(quantity) for quantity in quantities])
+        while (promising := bounds > (met * (1 + PEAK_TIE))[:, None]).any():
+            some = np.flatnonzero(promising.any(axis=0))
+            steps, bounds = steps.only(some), bounds[:, some]
             parts = self._parts(steps)
             narrow = np.flatnonzero(parts <= PARTS_AT_MOST)
             if not narrow.size:
                 if work + STEPS_OF_A_DIVIDED * len(parts) > MAX_PEAK_POINTS:
                     raise WorkBoundError("too many points to look for a peak")
                 steps = self._divided(steps)
-                bounds, work = steps.bounds(quantity), work + len(bounds)
+                bounds = np.array([steps.bounds(quantity) for quantity in quantities])
+                work += bounds.shape[1]
             else:
                 # the highest bounds first: what is met there mostly spares the rest
-                chosen = narrow[np.argsort(-bounds[narrow])][:STEPS_AT_ONCE]
-                for candidate in self._stationary(quantity, steps.only(chosen), parts[chosen]):
-                    met = max(met, candidate.value)
-                    # an end that only ties is a supremum that is approached; a peak must stand above it
-                    if candidate.value > best.value * (1 + 1e-14):
-                        best = candidate
+                height = (bounds[:, narrow] / np.maximum(met, TINY)[:, None]).max(axis=0)
+                chosen = narrow[np.argsort(-height)][:STEPS_AT_ONCE]
+                turns = self._stationary(quantities, steps.only(chosen), parts[chosen])
+                for index, candidates in enumerate(turns):
+                    for candidate in candidates:
+                        met[index] = max(met[index], candidate.value)
+                        # an end that only ties is a supremum that is approached; a peak must stand above it
+                        if candidate.value > best[index].value * (1 + 1e-14):
+                            best[index] = candidate
                 work += int(parts[chosen].sum())
                 rest = np.delete(np.arange(len(parts)), chosen)
-                steps, bounds = steps.only(rest), bounds[rest]
+                steps, bounds = steps.only(rest), bounds[:, rest]
             if work > MAX_PEAK_POINTS:
                 raise WorkBoundError("too many points to look for a peak")
         return best
+
+    def _met_on_grid(self, quantity: Sensitivity, end: Peak) -> float:
+        values = _values(quantity, self._axis.omega, self._response)
+        return max(end.value, float(values[np.isfinite(values)].max(initial=0.0)))
 
     def _parts(self, steps: _Steps) -> Reals:
         """Into how many parts each step is divided so that L turns little in one."""
@@ -394,24 +404,33 @@ class PeakSearch:
             omega[:, :-1].ravel(), omega[:, 1:].ravel(), magnitude[:, :-1].ravel(), magnitude[:, 1:].ravel()
         )
 
-    def _stationary(self, quantity: Sensitivity, steps: _Steps, parts: Reals) -> list[Peak]:
+    def _stationary(self, quantities: list[Sensitivity], steps: _Steps, parts: Reals) -> list[list[Peak]]:
+        """The local maxima of each quantity inside the steps."""
         omega, joined = _points(steps, parts.astype(int))
+        logs, slope = self._axis.loop.on_axis(omega)
+        response = np.exp(_capped(logs))
+        places = []
+        for quantity in quantities:
+            growth = np.asarray(quantity.growth(omega, response, slope))
+            rising = growth > 0
+            falls = np.flatnonzero(rising[:-1] & ~rising[1:] & joined)
+            places.append(zeros_in_steps(self._growth_of(quantity), omega, growth, falls, PEAK_PLACE))
+        responses = np.exp(self._axis.loop.log_response(np.concatenate(places)))
+        each = np.split(responses, np.cumsum([len(at) for at in places])[:-1])
+        return [
+            [Peak(*pair) for pair in zip(_values(quantity, at, there).tolist(), at.tolist(), strict=True)]
+            for quantity, at, there in zip(quantities, places, each, strict=True)
+        ]
+
+    def _growth_of(self, quantity: Sensitivity) -> Callable[[float], float]:
         loop = self._axis.loop
-        logs, slope = loop.on_axis(omega)
-        growth = np.asarray(quantity.growth(omega, np.exp(_capped(logs)), slope))
-        rising = growth > 0
-        brackets = np.flatnonzero(rising[:-1] & ~rising[1:] & joined)
-        if not brackets.size:
-            return []
 
         def growth_at(omega: float) -> float:
             log, slope = loop.at_frequency(omega)
             response = cmath.exp(complex(min(log.real, OUT_OF_SIGHT), log.imag))
             return float(quantity.growth(omega, response, slope))
 
-        at = zeros_in_steps(growth_at, omega, growth, brackets, PEAK_PLACE)
-        values = _values(quantity, at, np.exp(loop.log_response(at)))
-        return [Peak(value, where) for value, where in zip(values.tolist(), at.tolist(), strict=True)]
+        return growth_at
 
 
 def _points(steps: _Steps, parts: Indices) -> tuple[Reals, npt.NDArray[np.bool_]]:

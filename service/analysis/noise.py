@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 import math
+from functools import cached_property
 
 import numpy as np
 
-from service.analysis.frequency import AxisResponse, log_factors
+from service.analysis.frequency import AxisResponse
 from service.analysis.loop import Complexes, Factors, OpenLoop, Reals
 from service.analysis.margins import Numbers, PeakSearch, Responses, Sensitivity, WorkBoundError
 from service.analysis.results import Noise, Quantity
@@ -21,6 +22,9 @@ class ControlSensitivity(Sensitivity):
     def __init__(self, loop: OpenLoop, controller: Factors) -> None:
         super().__init__(loop)
         self._zeros, self._poles, self._log_gain = controller.zeros, controller.poles, controller.log_gain
+        self._roots = np.concatenate([controller.zeros, controller.poles])
+        self._weights = np.repeat([1.0, -1.0], [len(controller.zeros), len(controller.poles)])
+        self._one_by_one = list(zip(self._roots.tolist(), self._weights.tolist(), strict=True))
 
     def numerator(self, omega: Reals, response: Complexes) -> Complexes | float:
         """abs C·F; its angle plays no part."""
@@ -34,12 +38,18 @@ class ControlSensitivity(Sensitivity):
 
     def bound(self, magnitude: Reals, left: Reals, right: Reals) -> Reals:
         """Largest abs C·F/abs(1 − abs L) of the step; with an allowance where abs C·F has a maximum in it."""
-        largest = np.exp(np.maximum(self._log_magnitude(left), self._log_magnitude(right)))
-        turns = (self._log_slope(left) > 0) & (self._log_slope(right) < 0)
+        ends = np.array([left, right])
+        largest: Reals = np.exp(self._log_magnitude(ends).max(axis=0))
+        slopes = np.asarray(self._log_slope(ends))
+        turns = (slopes[0] > 0) & (slopes[1] < 0)
         return np.where(turns, NUMERATOR_ALLOWANCE, 1.0) * largest / np.abs(1.0 - magnitude)
 
     def ends(self) -> list[float]:
         """abs C·F/(1+L) at ω = 0 and the values it tends to as ω grows; inf where it has no bound."""
+        return self._ends
+
+    @cached_property
+    def _ends(self) -> list[float]:
         return [self._at_origin(), *self._at_infinity()]
 
     def high_frequency(self) -> float:
@@ -48,18 +58,17 @@ class ControlSensitivity(Sensitivity):
         return 0.0 if excess > 0 else (math.exp(self._log_gain) if excess == 0 else math.inf)
 
     def _log_slope(self, omega: Numbers) -> Numbers:
-        """d ln abs C·F/dω."""
-        factors = [(root, 1.0) for root in self._zeros.tolist()] + [
-            (root, -1.0) for root in self._poles.tolist()
-        ]
-        slope: Numbers = 0.0 * omega
-        for root, weight in factors:
-            slope = slope - weight * (1.0 / (1j * omega - root)).imag
-        return slope
+        """d ln abs C·F/dω, shape of `omega`."""
+        if isinstance(omega, float):
+            s = 1j * omega
+            return math.fsum(-weight * (1.0 / (s - root)).imag for root, weight in self._one_by_one)
+        return np.asarray(-(1.0 / (1j * omega[..., None] - self._roots)).imag @ self._weights)
 
     def _log_magnitude(self, omega: Reals) -> Reals:
-        logs = log_factors(omega, self._zeros) - log_factors(omega, self._poles)
-        return np.asarray(logs.real + self._log_gain)
+        """ln abs C·F, shape of `omega`."""
+        return np.asarray(
+            np.log(np.abs(1j * omega[..., None] - self._roots)) @ self._weights + self._log_gain
+        )
 
     def _at_origin(self) -> float:
         """With integral action 1/abs P(0); without it abs C(0)/abs(1 + L(0))."""
@@ -101,7 +110,7 @@ def noise(axis: AxisResponse, controller: Factors) -> Noise:
         worst = "unbounded"
     else:
         try:
-            worst = PeakSearch(axis).peak(quantity).value
+            worst = PeakSearch(axis).peaks([quantity])[0].value
         except WorkBoundError:
             worst = None
     return Noise(

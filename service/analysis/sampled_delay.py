@@ -73,12 +73,13 @@ DIVIDED, ANGLE_SHARE, ANGLE_STEP = 32, 0.06, 0.03
 
 def sampled_delay_margin_s(sampled: SampledLoop, axis: AxisResponse) -> Quantity:
     """The delay margin of a stable loop in seconds; None where counting does not confirm what was found."""
-    starts = _starts(sampled, axis)
+    divided = _Divided.of(sampled, axis)
+    starts = divided.starts(axis)
     if not starts:
         # abs L stays below 1 however the dead time divides a scan
         return "unbounded"
     touching = sorted(touch for angle in starts if (touch := _solved(sampled, angle)) is not None)
-    reach = _reach(sampled, axis)
+    reach = divided.reach()
     if max(starts) <= FAR_BELOW and sampled.plant.d == 0 and _fastest(sampled) <= SLOW_PLANT:
         found = _confirmed(sampled, reach, touching)
     else:
@@ -149,22 +150,6 @@ def _outer_roots(sampled: SampledLoop, plant: SampledPlant, reach: float) -> Com
         return None
     roots = np.linalg.eigvals(compressed(states, points)).astype(complex)
     return np.asarray(roots[resolved(np.angle(roots), line, points)])
-
-
-def _reach(sampled: SampledLoop, axis: AxisResponse) -> float:
-    """The largest angle ωh at which abs L is not clearly below 1 at some division of a scan; 0 where there is
-    none.
-    """
-    angles = np.append(2.0 * np.arctan(axis.omega), math.pi)
-    above = angles[(np.abs(_divided(sampled, angles)) >= CLEARLY_BELOW).any(axis=0)]
-    return float(above.max(initial=0.0))
-
-
-def _divided(sampled: SampledLoop, angles: Reals) -> Complexes:
-    """L at `angles` for dead times that divide a scan in several ways, (divisions, angles)."""
-    scan, here = sampled.scanned, _OnCircle(sampled, angles)
-    delays = [(share - sampled.plant.fraction) % 1.0 * scan.interval for share in DIVISIONS]
-    return np.array([here.value(plant) for plant in scan.samples(delays)])
 
 
 def _least_on_grid(sampled: SampledLoop, reach: float, lowest: float, touching: list[_Touch]) -> float | None:
@@ -244,30 +229,46 @@ def _loop_with(sampled: SampledLoop, delay: float) -> OpenLoop | None:
         return None
 
 
-def _starts(sampled: SampledLoop, axis: AxisResponse) -> list[float]:
-    """Angles ωh near every gain crossover at any division of a scan."""
-    own: list[float] = (2.0 * np.arctan(axis.gain_crossovers)).tolist()
-    angles = 2.0 * np.arctan(axis.omega)
-    # far below the scan's frequency the division of a scan moves abs L by no more than about the angle's
-    # square
-    logs = axis.log_response.real
-    near = np.abs(logs) < 0.2 + 2.0 * angles**2
-    near[:-1] |= near[1:]
-    near[1:] |= near[:-1]
-    chosen = np.append(angles[near], math.pi)
-    magnitude = np.abs(_divided(sampled, chosen))
-    crossed = ((magnitude[:, :-1] > 1) != (magnitude[:, 1:] > 1)).any(axis=0)
-    middles = 0.5 * (chosen[:-1] + chosen[1:])[crossed]
-    lows, highs = chosen[:-1][crossed], chosen[1:][crossed]
-    more = [
-        float(middle)
-        for low, middle, high in zip(lows, middles, highs, strict=True)
-        if not any(low <= angle <= high for angle in own)
-    ]
-    at_nyquist = magnitude[:, -1] > 1
-    if at_nyquist.any() and not at_nyquist.all():
-        more.append(math.pi)
-    return own + more
+@dataclass(frozen=True, eq=False)
+class _Divided:
+    """abs L at angles ωh of the axis and at the Nyquist frequency, (m,), for dead times that divide a scan in
+    several ways, (divisions, m).
+    """
+
+    angles: Reals
+    magnitude: Reals
+
+    @staticmethod
+    def of(sampled: SampledLoop, axis: AxisResponse) -> _Divided:
+        angles = np.append(2.0 * np.arctan(axis.omega), math.pi)
+        scan, here = sampled.scanned, _OnCircle(sampled, angles)
+        delays = [(share - sampled.plant.fraction) % 1.0 * scan.interval for share in DIVISIONS]
+        return _Divided(angles, np.abs([here.value(plant) for plant in scan.samples(delays)]))
+
+    def reach(self) -> float:
+        """The largest angle at which abs L is not clearly below 1 at some division; 0 where there is none."""
+        return float(self.angles[(self.magnitude >= CLEARLY_BELOW).any(axis=0)].max(initial=0.0))
+
+    def starts(self, axis: AxisResponse) -> list[float]:
+        """Angles near every gain crossover at any division."""
+        own: list[float] = (2.0 * np.arctan(axis.gain_crossovers)).tolist()
+        # far below the scan's frequency the division of a scan moves abs L by no more than about the angle's
+        # square
+        near = np.abs(axis.log_response.real) < 0.2 + 2.0 * self.angles[:-1] ** 2
+        near[:-1] |= near[1:]
+        near[1:] |= near[:-1]
+        near = np.append(near, True)
+        chosen, above = self.angles[near], self.magnitude[:, near] > 1
+        crossed = (above[:, :-1] != above[:, 1:]).any(axis=0)
+        more = [
+            0.5 * (low + high)
+            for low, high in zip(chosen[:-1][crossed].tolist(), chosen[1:][crossed].tolist(), strict=True)
+            if not any(low <= angle <= high for angle in own)
+        ]
+        at_nyquist = above[:, -1]
+        if at_nyquist.any() and not at_nyquist.all():
+            more.append(math.pi)
+        return own + more
 
 
 def _cells(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator[tuple[float, float]]:

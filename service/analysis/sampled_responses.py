@@ -99,7 +99,7 @@ def between_scans(scanned: Scanned, plant: SampledPlant, found: Scans) -> Respon
     rows = _rows(scanned, plant, lengths, len(before), nodes)
     acting = found.old[:count, None, :2], found.new[:count, None, :2]
     known = np.concatenate([found.states[:count], *acting], axis=1)
-    pv = np.moveaxis(rows @ known, 2, 0).reshape(2, count * len(lengths), nodes)
+    pv = (np.ascontiguousarray(np.moveaxis(known, 2, 0)) @ rows.T).reshape(2, count * len(lengths), nodes)
     starts = np.arange(count)[:, None] * h + np.concatenate([[0.0], np.cumsum(lengths)[:-1]])
     final_pv, final_output = _final_values(scanned)
     return Responses(

@@ -141,7 +141,7 @@ def signals(start: Reals, length: Reals, values: Reals, tails: list[Tail | None]
     """Signals with their turning points; `values` (s, p, nodes)."""
     count, pieces, nodes = values.shape
     rows = values.reshape(count * pieces, nodes)
-    scale = np.repeat(np.abs(values).max(axis=(1, 2)), pieces)[:, None]
+    scale = np.repeat(np.abs(values).reshape(count, -1).max(axis=1), pieces)[:, None]
     row, place = chebyshev.zeros_of_rows(rows @ chebyshev.differentiation(nodes).T, ROUNDING * nodes * scale)
     rows_in_order, places, found = _with_ends(rows, row, place)
     result = []
@@ -192,28 +192,21 @@ def _in_pieces(start: Reals, length: Reals, values: Reals, scales: list[float]) 
     """The four integrals of each signal over some pieces, (s, 4); `values` (s, p, nodes)."""
     count, pieces, nodes = values.shape
     rows = values.reshape(count * pieces, nodes)
+    start, length = np.tile(start, count), np.tile(length, count)
     row, place = chebyshev.zeros_of_rows(rows, ROUNDING * np.repeat(scales, pieces)[:, None])
-    times = np.tile(start[:, None] + length[:, None] * chebyshev.points(nodes), (count, 1))
-    lengths = np.tile(length, count)
-    signed = rows @ chebyshev.integration(nodes)[-1] * lengths
-    timed = rows * times
-    columns = (
-        _absolute(rows, lengths, signed, row, place),
-        ((rows @ _of_squares(nodes)) * rows).sum(axis=1) * lengths,
-        _absolute(timed, lengths, timed @ chebyshev.integration(nodes)[-1] * lengths, row, place),
-        signed,
-    )
-    return np.array([column.reshape(count, pieces).sum(axis=1) for column in columns]).T
-
-
-def _absolute(rows: Reals, lengths: Reals, signed: Reals, row: Indices, place: Reals) -> Reals:
-    """∫ abs x over each row, (rows,), from ∫ x and the places where x changes its sign."""
-    absolute = np.abs(signed)
+    over_piece, points = chebyshev.integration(nodes)[-1], chebyshev.points(nodes)
+    signed = rows @ over_piece * length
+    moment = start * signed + rows @ (over_piece * points) * length**2
+    absolute, weighted = np.abs(signed), np.abs(moment)
     if row.size:
         changing = row[np.flatnonzero(np.diff(row, prepend=-1))]
-        summed = rows[changing] @ chebyshev.integration(rows.shape[1]).T * lengths[changing, None]
-        absolute[changing] = _variation(summed, np.searchsorted(changing, row), place)
-    return absolute
+        among, lengths = np.searchsorted(changing, row), length[changing, None]
+        times = start[changing, None] + lengths * points
+        for told, integrand in ((absolute, rows[changing]), (weighted, rows[changing] * times)):
+            told[changing] = _variation(integrand @ chebyshev.integration(nodes).T * lengths, among, place)
+    squares = np.einsum("ij,ij->i", rows @ _of_squares(nodes), rows) * length
+    columns = (absolute, squares, weighted, signed)
+    return np.array([column.reshape(count, pieces).sum(axis=1) for column in columns]).T
 
 
 def _of_tail(signal: Signal) -> tuple[float, float, float, float]:
@@ -225,14 +218,8 @@ def _places(passages: list[Passage]) -> list[float]:
         return []
     rows = np.array([passage.row for passage in passages])
     low, high = (np.array([getattr(passage, end) for passage in passages]) for end in ("low", "high"))
-    nodes = rows.shape[1]
-    slopes = rows @ chebyshev.differentiation(nodes).T
-
-    def value_and_slope(at: Reals) -> tuple[Reals, Reals]:
-        matrix = chebyshev.evaluation(nodes, at)
-        return (matrix * rows).sum(axis=1), (matrix * slopes).sum(axis=1)
-
-    places: list[float] = newton_zero(value_and_slope, low, high, value_and_slope(low)[0], 1.0).tolist()
+    told = chebyshev.value_and_slope(rows)
+    places: list[float] = newton_zero(told, low, high, told(low)[0], 1.0).tolist()
     return places
 
 

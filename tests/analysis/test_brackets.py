@@ -64,9 +64,10 @@ def test_newton_that_begins_on_a_zero_where_all_is_flat_stays_there() -> None:
         return at**3, 3.0 * at**2
 
     low, high = np.array([0.0, -1.0]), np.array([1.0, 2.0])
-    met = newton_zero(cubes, low, high, low**3 - 1e-300, 1.0, 1e-14, start=np.array([0.0, 0.5]))
+    met = newton_zero(cubes, low, high, low**3 - 1e-300, 1.0, start=np.array([0.0, 0.5]))
     assert met[0] == 0.0
-    assert abs(met[1]) <= 1e-4  # the cube of it is below the noise
+    # towards a triple zero Newton's steps shrink by a third each, so the last of them is about the error
+    assert abs(met[1]) <= 1e-8
 
 
 @given(
