@@ -35,6 +35,9 @@ STEP_RAD = 0.3
 MAX_PARTS = 2000
 """Work bound: a step between two points that would need more parts than this leaves the count open."""
 
+MAX_PARTS_IN_ALL = 40_000
+"""Work bound: the same for all steps together."""
+
 
 def count_by_points(plant: FrequencyResponse, parts: ClosedLoopParts) -> Count:
     """Roots of 1 + L right of the axis as far as the points tell."""
@@ -44,7 +47,7 @@ def count_by_points(plant: FrequencyResponse, parts: ClosedLoopParts) -> Count:
         return Count(None, reason="the response turns by more than 90° from one point to the next")
     walked = _refined(omega, phase, parts)
     if walked is None:
-        return Count(None, reason="the dead time turns L too often between two points")
+        return Count(None, reason="the dead time turns L too often between the points")
     at, logs = np.log(walked), np.log(omega)
     straight = np.interp(at, logs, np.log(np.abs(response))) + 1j * np.interp(at, logs, phase)
     # controller, filters, ranges and dead time are what the loop has beside the plant as it was fitted
@@ -93,11 +96,11 @@ def _open_ends(along: Complexes, omega: Reals, parts: ClosedLoopParts) -> str | 
 
 def _refined(omega: Reals, phase: Reals, parts: ClosedLoopParts) -> Reals | None:
     """The points and more between them, so that neither dead time nor controller turns far in one step."""
-    pieces = [omega[:1]]
-    for low, high, turn in zip(omega[:-1], omega[1:], np.abs(np.diff(phase)), strict=True):
-        delayed = (high - low) * parts.dead_time_s
-        count = PARTS_OF_A_STEP + math.ceil((turn + delayed) / STEP_RAD)
-        if count > MAX_PARTS:
-            return None
-        pieces.append(np.geomspace(low, high, count + 1)[1:])
-    return np.concatenate(pieces)
+    delayed = np.diff(omega) * parts.dead_time_s
+    counts = PARTS_OF_A_STEP + np.ceil((np.abs(np.diff(phase)) + delayed) / STEP_RAD)
+    if counts.max() > MAX_PARTS or counts.sum() > MAX_PARTS_IN_ALL:
+        return None
+    steps = zip(omega[:-1], omega[1:], counts.astype(int).tolist(), strict=True)
+    return np.concatenate(
+        [omega[:1], *(np.geomspace(low, high, count + 1)[1:] for low, high, count in steps)]
+    )

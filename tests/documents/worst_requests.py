@@ -60,6 +60,19 @@ def _order_20(dead_time_s: float) -> Json:
     }
 
 
+def _points(dead_time_s: float) -> Json:
+    """2000 points of a lag, evenly spaced, so that dead time turns L as often between any two of them."""
+    omega = [0.01 * (n + 1) for n in range(2000)]
+    lag = [1.0 / complex(1.0, 3.0 * w) for w in omega]
+    return {
+        "kind": "frequency_response",
+        "frequencies_rad_s": omega,
+        "response": [[value.real, value.imag] for value in lag],
+        "unstable_poles": 0,
+        "dead_time_s": dead_time_s,
+    }
+
+
 TOO_SLOW = codes.TOO_SLOW
 NO_DELAY_MARGIN = codes.DELAY_MARGIN
 
@@ -211,5 +224,18 @@ WORST: tuple[WorstRequest, ...] = (
         },
         "stable",
         notes_at_scans=(),
+    ),
+    WorstRequest(
+        # 1.2 s and 440 MiB
+        "2000 points under a dead time that turns L nearly a hundred times between two of them",
+        _points(5.8e4),
+        {
+            "form": "ideal",
+            "action": "reverse",
+            "proportional": _gain(1.0),
+            "integral": _seconds(3.0),
+        },
+        "undecided",
+        reason="the dead time turns L too often between the points",
     ),
 )

@@ -158,6 +158,8 @@ class HostileLoops:
         """Points of some lags, oscillations and a delay, with noise; now and then of nothing."""
         drawn = {self._between(-3, 3) for _ in range(self._random.choice(POINTS))}
         omega = np.array(sorted(drawn | {1.0, 2.0}))[:2000]
+        if self._random.random() < 0.3:
+            omega = np.linspace(omega[0], omega[-1], len(omega))
         s, response = 1j * omega, np.full(len(omega), complex(self._between(-2, 2)))
         for _ in range(self._random.choice((1, 2, 4, 8, 12))):
             if self._random.random() < 0.6:
