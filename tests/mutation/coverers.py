@@ -55,7 +55,7 @@ class Coverers:
         lines = self.lines[module]
         of_line = {test for line in mutant.statement for test in lines.get(str(line), ())}
         tests = of_line or {test for tests in lines.values() for test in tests}
-        name = f"test_{Path(module).stem}."
+        name = f"/test_{Path(module).stem}"
         quickest = sorted(tests, key=self.durations_s.__getitem__)
         own = [test for test in quickest if name in test]
         return own + [test for test in quickest if name not in test][:others_max]
