@@ -29,7 +29,10 @@ STEP_OF_TIME_FACTOR = 0.25
 """Width of a first cell in ln f."""
 
 MAX_FACTORS = 1_500_000
-"""Work bound of one quantity: cells times factors of the loop."""
+"""Work bound of one quantity: cells times factors of the loop, some 0.25 s of processor time."""
+
+FACTORS_OF_A_CELL = 20
+"""A cell itself costs as much as so many factors."""
 
 CHILDREN = 300
 """Few cells are divided into about so many at once, many into four each."""
@@ -72,15 +75,24 @@ class Search:
     """One quantity on its way: between which frequencies it is searched for, the least value met, what it is
     bounded by elsewhere, work done.
 
-    `given_up`: the bound on work was met, nothing is proven.
+    `unstable_at`: a member with so low a value is not stable, and only the search that says so goes on where
+    it is `of_any_box`: the others ask what holds for a box of stable members. `given_up`: nothing is proven,
+    for that reason or past the bound on work.
     """
 
     quantity: Quantity
     omega: tuple[float, float]
     best: Found
     elsewhere: float = math.inf
+    unstable_at: float = 0.0
+    of_any_box: bool = False
     work: int = field(default=0, init=False)
     given_up: bool = field(default=False, init=False)
+
+    @property
+    def meets_unstable(self) -> bool:
+        """An unstable member of the box as stated was met."""
+        return self.best.value <= self.unstable_at
 
     @property
     def level(self) -> float:
@@ -121,11 +133,15 @@ def first_cells(
     v = np.array([low_v, high_v]) if len(v) == 1 else v
     w = _edges(loop, bounds, math.log(omega[0]) + v[0], math.log(omega[1]) + v[-1])
     shape = (len(v) - 1, len(w) - 1)
-    if shape[0] * shape[1] * len(loop.roots) > MAX_FACTORS:
+    if shape[0] * shape[1] * _work_of_a_cell(loop) > MAX_FACTORS:
         return None
     edges = w[:-1], w[1:], v[:-1, None], v[1:, None]
     places = Rectangles(*(np.broadcast_to(part, shape).ravel() for part in edges))
     return enclose(loop, places, *places.centre)
+
+
+def _work_of_a_cell(loop: UncertainLoop) -> int:
+    return FACTORS_OF_A_CELL + len(loop.roots)
 
 
 def _even_edges(low: float, high: float, step: float) -> Reals:
@@ -188,10 +204,11 @@ def _next_wave(
     """
     parts_w, parts_v = _parts(cells, left)
     counts = (parts_w * parts_v).astype(np.intp)
-    work = np.bincount(pending, counts, len(searches)) * len(loop.roots)
+    work = np.bincount(pending, counts, len(searches)) * _work_of_a_cell(loop)
+    refuted = any(search.meets_unstable for search in searches)
     for search, more in zip(searches, work.tolist(), strict=True):
         search.work += int(more)
-        search.given_up = search.given_up or search.work > MAX_FACTORS or search.best.value <= 0
+        search.given_up |= search.work > MAX_FACTORS or (refuted and not search.of_any_box)
     counts *= ~np.array([search.given_up for search in searches])[pending]
     source = np.repeat(np.arange(len(left)), counts)
     number = np.arange(len(source)) - np.repeat(np.cumsum(counts) - counts, counts)

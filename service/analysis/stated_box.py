@@ -81,11 +81,13 @@ def prove(loop: UncertainLoop, nominal: Margins | None, unit_rad_s: float, scale
     margins = box.margins()
     distance = box.distance(cells, [*margins, scale.search])
     sweep(loop, cells, [distance, *margins, *([] if scale.search.given_up else [scale.search])])
-    if distance.given_up:
+    if distance.meets_unstable and distance.best.place is not None:
+        scale.meet(*distance.best.place)
+    elif distance.given_up and not scale.search.meets_unstable:
         # past the bound on work a wide bracket is better than none
         distance = box.distance(cells, [distance], WIDEST_SLACK)
         sweep(loop, cells, [distance])
-    if distance.given_up:
+    if distance.given_up or distance.meets_unstable:
         return NOTHING
     told = [None if each.given_up else _told(each.proven) for each in margins]
     if box.delay_margin_vanishes:

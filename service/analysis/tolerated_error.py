@@ -118,6 +118,12 @@ class Start:
     bounds: Bounds
     touching: Touching | None
 
+    def meet(self, w: float, v: float) -> None:
+        """Take note of a point that another search has come upon."""
+        at_w, at_v = np.array([w]), np.array([v])
+        values = self.search.quantity.values(*self.loop.at(at_w, at_v)[:2], np.exp(at_w - at_v), at_v)
+        self.search.best = min(self.search.best, least(values, at_w, at_v), key=lambda found: found.value)
+
     @property
     def tolerated(self) -> Tolerated:
         """The bracket after the search."""
@@ -216,7 +222,8 @@ def start(loop: UncertainLoop, margins: Margins | None, unit_rad_s: float) -> St
     (low_proven, low_attained), (high_proven, high_attained) = _at_lower(loop, low), _at_upper(loop, high)
     if min(low_attained, high_attained) < best.value:
         best, touching = Found(min(low_attained, high_attained)), None
-    search = Search(ErrorScale(loop), (low.omega, high.omega), best, min(low_proven, high_proven))
+    elsewhere = min(low_proven, high_proven)
+    search = Search(ErrorScale(loop), (low.omega, high.omega), best, elsewhere, 1.0, of_any_box=True)
     return Start(loop, search, bounds, touching)
 
 
