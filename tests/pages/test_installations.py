@@ -115,6 +115,7 @@ def test_a_wrong_number_is_told_on_the_loop_and_on_the_first_page(
     install(author, approved, **{"left-proportional-value": "20.0"})
     loop = author.open(f"/loops/{kept.loops['stable']}")
     assert "✗ left otherwise Other gains than approved were left in the controller" in loop.text
+    assert "By the record these should run since" in loop.text
     (differs,) = (link for link in loop.all("a") if link.text == "what differs")
     assert "✗ As left is not as approved." in author.open(differs.get("href")).text
     home = reviewer.open("/")
