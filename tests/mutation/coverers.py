@@ -47,18 +47,27 @@ class Coverers:
         """Keep it for another process."""
         file.write_text(json.dumps(asdict(self)))
 
+    def is_inside(self, module: str, mutant: Mutant) -> bool:
+        """Say whether the fault is in a function that a test runs, not only an import or what is set up once."""
+        return mutant.function is not None and bool(self._of_statement(module, mutant))
+
     def tests_of(self, module: str, mutant: Mutant, others_max: int) -> list[str]:
-        """Return the tests that run the statement; of a line that only an import runs, the module's tests.
+        """Return the tests that run the statement; of one that only an import runs, all that have to do with it.
 
         Those of the module's own file come first, then the quickest `others_max` others.
         """
-        lines = self.lines[module]
-        of_line = {test for line in mutant.statement for test in lines.get(str(line), ())}
-        tests = of_line or {test for tests in lines.values() for test in tests}
         name = f"/test_{Path(module).stem}"
+        own = {test for test in self.durations_s if name in test}
+        of_module = {test for tests in self.lines[module].values() for test in tests}
+        tests = self._of_statement(module, mutant) or own | of_module
         quickest = sorted(tests, key=self.durations_s.__getitem__)
-        own = [test for test in quickest if name in test]
-        return own + [test for test in quickest if name not in test][:others_max]
+        return [test for test in quickest if test in own] + [test for test in quickest if test not in own][
+            :others_max
+        ]
+
+    def _of_statement(self, module: str, mutant: Mutant) -> set[str]:
+        lines = self.lines[module]
+        return {test for line in mutant.statement for test in lines.get(str(line), ())}
 
     def limit_s(self, tests: list[str]) -> float:
         """Return the time past which these tests hang."""

@@ -69,7 +69,7 @@ class TryingInside:
     ) -> None:
         tally = Tally(f"{module} (functions)")
         for mutant in mutants(Path(module).read_text()):
-            if mutant.function is None:
+            if not coverers.is_inside(module, mutant):
                 continue
             tests = coverers.tests_of(module, mutant, self._others_max)
             chosen = [items[test] for test in tests]

@@ -82,7 +82,7 @@ def _try_at_import(module: str, kept: Path, wanted: argparse.Namespace) -> None:
     source, tally = file.read_text(), Tally(f"{module} (at import)")
     try:
         for mutant in mutants(source):
-            if mutant.function is not None and not wanted.all_at_import:
+            if coverers.is_inside(module, mutant) and not wanted.all_at_import:
                 continue
             tests = coverers.tests_of(module, mutant, wanted.others_max)
             file.write_text(mutant.module)
