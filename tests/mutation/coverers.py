@@ -48,11 +48,11 @@ class Coverers:
         file.write_text(json.dumps(asdict(self)))
 
     def is_inside(self, module: str, mutant: Mutant) -> bool:
-        """Say whether the fault is in a function that a test runs, not only an import or what is set up once."""
+        """Say whether the fault is in a function that a test runs, and not an import alone."""
         return mutant.function is not None and bool(self._of_statement(module, mutant))
 
     def tests_of(self, module: str, mutant: Mutant, others_max: int) -> list[str]:
-        """Return the tests that run the statement; of one that only an import runs, all that have to do with it.
+        """Return the tests that run the statement; of one that only an import runs, the module's.
 
         Those of the module's own file come first, then the quickest `others_max` others.
         """
