@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from service.analysis.results import WorstCase
+from service.analysis.results import Recomputation, WorstCase
 from service.analysis.worst_case import NOTE_NOT_CONFIRMED, NOTE_NUMBERS, NOTE_TOO_MUCH_WORK
 from service.judgement.finding import Case, Finding
 from service.judgement.wording import box_member
@@ -34,6 +34,7 @@ def unstable_in_the_box(case: Case) -> Finding | None:
     if worst is None or worst.stable_for_all is not False:
         return None
     found = f": with {box_member(worst.counterexample)}" if worst.counterexample else ""
+    found += _without_scan(case)
     return Finding(
         finding="unstable_within_uncertainty",
         weight="stop",
@@ -52,7 +53,7 @@ def box_undecided(case: Case) -> Finding | None:
         finding="uncertainty_undecided",
         weight="caution",
         sentence="It could not be decided whether the loop stays stable over the whole stated uncertainty of "
-        f"the model{reason}. Treat it as not shown.",
+        f"the model{_without_scan(case)}{reason}. Treat it as not shown.",
         needs_deviation=True,
     )
 
@@ -65,15 +66,16 @@ def worst_margins_lacking(case: Case) -> Finding | None:
     return Finding(
         finding="worst_margins_not_computed",
         weight="caution",
-        sentence="The loop is stable over the whole stated uncertainty of the model, but not every figure of "
-        "the worst model was computed in full: that takes more work than the service's bound allows.",
+        sentence="The loop is stable over the whole stated uncertainty of the model"
+        f"{_without_scan(case)}, but not every figure of the worst model was computed in full: that takes more "
+        "work than the service's bound allows.",
     )
 
 
 def worst_case_without_scan(case: Case) -> Finding | None:
     """The loop is scanned, and the worst case is that of a controller that acts all the time."""
     worst = _of_stable(case)
-    if worst is None or case.recomputation.judged_on != "sampled" or worst.analysis != "continuous":
+    if worst is None or not leaves_scan_out(case.recomputation):
         return None
     return Finding(
         finding="worst_case_without_scan",
@@ -81,6 +83,16 @@ def worst_case_without_scan(case: Case) -> Finding | None:
         sentence="The worst case over the model's uncertainty was computed for a controller that acts all "
         "the time. The scan mostly takes some of that margin away.",
     )
+
+
+def _without_scan(case: Case) -> str:
+    return " (as computed without the scan)" if leaves_scan_out(case.recomputation) else ""
+
+
+def leaves_scan_out(recomputation: Recomputation) -> bool:
+    """The loop is judged at its scans, and its worst case is that of a controller that acts all the time."""
+    worst = recomputation.worst_case
+    return recomputation.judged_on == "sampled" and worst is not None and worst.analysis == "continuous"
 
 
 def _of_stable(case: Case) -> WorstCase | None:

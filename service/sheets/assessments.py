@@ -21,6 +21,7 @@ from service.judgement import digits, wording
 from service.judgement.claims import ClaimFinding
 from service.judgement.criteria import CriterionFinding, quantity_name
 from service.judgement.findings import Finding
+from service.judgement.on_uncertainty import leaves_scan_out
 from service.judgement.quantities import QUANTITIES, judged
 from service.sheets.controllers import Told
 
@@ -223,7 +224,7 @@ def _over_the_box(recomputation: Recomputation, criteria: tuple[CriterionFinding
         return
     yield LimitRow(
         name="Stable for every model within the uncertainty",
-        value=BOX[worst.stable_for_all],
+        value=BOX[worst.stable_for_all] + _without_scan(recomputation),
         limit="",
         outcome="",
         met=worst.stable_for_all is True,
@@ -232,7 +233,12 @@ def _over_the_box(recomputation: Recomputation, criteria: tuple[CriterionFinding
     if worst.max_sensitivity and name not in {quantity_name(finding.criterion) for finding in criteria}:
         at_most = digits.three_digits(worst.max_sensitivity.at_most)
         label = _capital(wording.quantity_label(name))
-        yield LimitRow(name=label, value=f"at most {at_most}", limit="", outcome="", met=True)
+        value = f"at most {at_most}{_without_scan(recomputation)}"
+        yield LimitRow(name=label, value=value, limit="", outcome="", met=True)
+
+
+def _without_scan(recomputation: Recomputation) -> str:
+    return ", without the scan" if leaves_scan_out(recomputation) else ""
 
 
 def _beside(name: str, finding: CriterionFinding) -> str:

@@ -14,6 +14,7 @@ from service.analysis.results import Curves
 from service.documents.loops import LoopRegistration
 from service.figures.responses import Response, stored_responses
 from service.judgement.digits import as_entered
+from service.judgement.on_uncertainty import leaves_scan_out
 from service.judgement.wording import criterion_sentence
 from service.records.content import DecisionContent, SignedContent, SignedModel, SignedRecomputation
 from service.records.lifecycle import REVIEW_OWED
@@ -207,13 +208,17 @@ class _Uncertainty(NamedTuple):
 def _uncertainty(signed: SignedContent) -> _Uncertainty:
     told = [each.answer.recomputation for each in signed.recomputations]
     boxes = [each.worst_case.stable_for_all for each in told if each.worst_case is not None]
+    scan = " (computed without the scan)" if any(leaves_scan_out(each) for each in told) else ""
     if False in boxes:
-        return _Uncertainty(False, " as modelled, but NOT for every model within the stated uncertainty")
+        words = f" as modelled, but NOT for every model within the stated uncertainty{scan}"
+        return _Uncertainty(False, words)
     if None in boxes or any("worst_case" in each.not_computed for each in told):
         return _Uncertainty(False, " as modelled; for its stated uncertainty that is NOT SHOWN")
     # where one operating point states none, nothing is said of all of them
     proven = len(boxes) == len(told) > 0
-    return _Uncertainty(True, ", and so is every model within the stated uncertainty" if proven else "")
+    return _Uncertainty(
+        True, f", and so is every model within the stated uncertainty{scan}" if proven else ""
+    )
 
 
 def _conditions(view: SubmissionView) -> Iterator[str]:

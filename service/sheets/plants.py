@@ -88,8 +88,12 @@ def _uncertainty(box: Uncertainty | None) -> Iterator[Told]:
         ("time constants", box.time_constants),
         ("dead time", box.dead_time),
     ):
-        yield Told(name=f"Uncertainty of {name}", value=f"factor {_range(factors)}")
-    yield Told(name="Extra dead time", value=_range(box.dead_time_extra_s), unit="s")
+        known = factors[0] == factors[1] == 1.0
+        yield Told(name=f"Uncertainty of {name}", value="certain" if known else f"factor {_range(factors)}")
+    if box.dead_time_extra_s[1] > 0:
+        yield Told(name="Extra dead time", value=_range(box.dead_time_extra_s), unit="s")
+    else:
+        yield Told(name="Extra dead time", value="none")
 
 
 def _range(ends: Sequence[float]) -> str:

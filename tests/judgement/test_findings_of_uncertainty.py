@@ -90,6 +90,26 @@ def test_a_scanned_loop_is_told_that_its_worst_case_leaves_the_scan_out() -> Non
     assert "worst_case_without_scan" not in found(boxed(0.6))
 
 
+@pytest.mark.parametrize(
+    ("kc", "stable", "finding"),
+    [
+        (1.6, False, "unstable_within_uncertainty"),
+        (0.6, None, "uncertainty_undecided"),
+        (0.6, True, "worst_margins_not_computed"),
+    ],
+)
+def test_what_is_said_of_the_box_of_a_scanned_loop_says_that_the_scan_is_left_out(
+    kc: float, stable: bool | None, finding: str
+) -> None:
+    plant = replace(first_order(2.0, 10.0, 3.0), uncertainty=USUAL)
+    scanned = recompute(plant, replace(ideal(kc, 10.0), scan=Scan(interval_s=0.1, method="trapezoidal")))
+    for recomputation, words in ((scanned, True), (boxed(kc), False)):
+        assert recomputation.worst_case is not None
+        worst = replace(recomputation.worst_case, stable_for_all=stable, notes=(NOTE_TOO_MUCH_WORK,))
+        sentence = found(replace(recomputation, worst_case=worst))[finding].sentence
+        assert ("(as computed without the scan)" in sentence) is words
+
+
 @pytest.mark.parametrize(("limit", "outcome"), [(2.2, "met"), (2.0, "not_met")])
 def test_a_limit_on_the_worst_sensitivity_is_held_against_the_proven_bracket(
     limit: float, outcome: str

@@ -11,9 +11,11 @@ from service.analysis.plant import (
     SecondOrder,
     StateSpace,
     TransferFunction,
+    Uncertainty,
     ZerosPolesGain,
 )
 from service.sheets import plants
+from tests.sheets.records_to_print import LAG
 
 TOLD_IN_WORDS = {"kind", "uncertainty", "frequencies_rad_s", "response"}
 
@@ -51,6 +53,15 @@ def test_roots_are_told_with_both_parts() -> None:
     )
     assert values(plant)["Poles"] == "−1 + 2j, −1 − 2j, −0.5"
     assert values(plant)["Zeros"] == "none"
+
+
+def test_what_is_certain_is_told_as_that() -> None:
+    told = values(replace(LAG, uncertainty=Uncertainty(gain=(0.8, 1.25))))
+    assert told["Uncertainty of gain"] == "factor 0.8 to 1.25"
+    assert told["Uncertainty of time constants"] == told["Uncertainty of dead time"] == "certain"
+    assert told["Extra dead time"] == "none"
+    longer = values(replace(LAG, uncertainty=Uncertainty(dead_time_extra_s=(0.0, 2.5))))
+    assert longer["Extra dead time"] == "0 to 2.5"
 
 
 def test_matrices_are_told_row_by_row() -> None:

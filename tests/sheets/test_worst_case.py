@@ -6,20 +6,25 @@ from dataclasses import replace
 
 import pytest
 
+from service.analysis.controller import Scan
 from service.analysis.plant import Uncertainty
 from service.documents.recomputations import RecomputationRequest, answer
 from service.judgement.criteria import Criteria
 from service.sheets.assessments import Assessment, assessment
 from service.sheets.content import content_of
 from tests.analysis.entered import first_order, ideal
-from tests.sheets.records_to_print import LAG, submission
+from tests.sheets.records_to_print import LAG, TUNED, submission
 
 BOX = Uncertainty(gain=(0.8, 1.25), time_constants=(0.8, 1.25), dead_time=(0.7, 1.4))
 
 
-def told(kc: float, box: Uncertainty | None = BOX, criteria: Criteria | None = None) -> Assessment:
-    plant = replace(first_order(2.0, 10.0, 3.0), uncertainty=box)
-    request = RecomputationRequest(plant_model=plant, controller=ideal(kc, 10.0), criteria=criteria)
+def told(
+    kc: float, box: Uncertainty | None = BOX, criteria: Criteria | None = None, scan: Scan | None = None
+) -> Assessment:
+    plant, controller = replace(first_order(2.0, 10.0, 3.0), uncertainty=box), ideal(kc, 10.0)
+    request = RecomputationRequest(
+        plant_model=plant, controller=replace(controller, scan=scan), criteria=criteria
+    )
     return assessment("Normal load", answer(request), ())
 
 
@@ -31,6 +36,14 @@ def test_a_proven_box_stands_among_the_margins() -> None:
     found = rows(told(0.6))
     assert found["Stable for every model within the uncertainty"] == "yes, proven"
     assert found["Maximum sensitivity of the worst model within the uncertainty"] == "at most 2.09"
+
+
+def test_a_scanned_loop_is_not_told_more_of_its_box_than_was_computed() -> None:
+    scan = Scan(interval_s=0.5, method="backward_difference")
+    found = rows(told(0.6, scan=scan))
+    assert found["Stable for every model within the uncertainty"] == "yes, proven, without the scan"
+    sensitivity = found["Maximum sensitivity of the worst model within the uncertainty"]
+    assert sensitivity == "at most 2.09, without the scan"
 
 
 def test_an_unstable_member_stands_among_the_margins() -> None:
@@ -85,3 +98,10 @@ def test_the_line_beside_the_gains_says_what_holds_within_the_uncertainty(
     content = content_of(view)
     assert content.summary.startswith(words)
     assert content.summary_good is ("NOT" not in words)
+
+
+def test_the_line_beside_the_gains_of_a_scanned_loop_says_that_the_scan_is_left_out() -> None:
+    scanned = replace(TUNED, scan=Scan(interval_s=1.0, method="backward_difference"))
+    view, *_ = submission(plants=(replace(LAG, uncertainty=BOX),), controller=scanned)
+    words = "every model within the stated uncertainty (computed without the scan)."
+    assert words in content_of(view).summary
