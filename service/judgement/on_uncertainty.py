@@ -67,8 +67,8 @@ def worst_margins_lacking(case: Case) -> Finding | None:
         finding="worst_margins_not_computed",
         weight="caution",
         sentence="The loop is stable over the whole stated uncertainty of the model"
-        f"{_without_scan(case)}, but not every figure of the worst model was computed in full: that takes more "
-        "work than the service's bound allows.",
+        f"{_without_scan(case)}, but not every figure of the worst model was computed in full: that takes "
+        "more work than the service's bound allows.",
     )
 
 
