@@ -169,3 +169,10 @@ def test_a_settling_band_past_its_limits_is_refused(band: object) -> None:
 
 def test_a_part_that_is_not_there_cannot_be_asked_for() -> None:
     assert refused_at(changed("/include", ["curves", "poem"])) == ["/include/1"]
+
+
+def test_a_limit_may_be_nothing_and_not_less() -> None:
+    for limit in (0.0, 0.5):
+        assert accepted(REQUEST | {"criteria": {"overshoot_percent_max": limit}})
+    refused = refused_at(REQUEST | {"criteria": {"overshoot_percent_max": -0.5}})
+    assert "/criteria/overshoot_percent_max" in refused
