@@ -47,7 +47,7 @@ def posted() -> Form:
 
 def queried() -> Form:
     """The search that stands in the address."""
-    return Form({name: text.strip() for name, text in request.args.items()})
+    return Form({name: _lines(text) for name, text in request.args.items()})
 
 
 def secret(name: str) -> str:
@@ -56,8 +56,10 @@ def secret(name: str) -> str:
 
 
 def _lines(text: str) -> str:
-    """A browser sends each line break as two characters; one is kept."""
-    return text.replace("\r\n", "\n").replace("\r", "\n").strip()
+    """A browser sends each line break as two characters; one is kept. U+0000 no person types, and PostgreSQL
+    takes it in no text.
+    """
+    return text.replace("\0", "").replace("\r\n", "\n").replace("\r", "\n").strip()
 
 
 def sentence(detail: str) -> str:

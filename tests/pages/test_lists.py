@@ -35,6 +35,14 @@ def test_loops_are_found_by_tag_area_and_word(reviewer: Person) -> None:
     assert "No loop matches." in reviewer.page.text
 
 
+@pytest.mark.parametrize(
+    "path", ["/loops?q=%00", "/loops?tag=TIC-%00204", "/submissions?site=%00", "/history?actor=%00"]
+)
+def test_a_null_character_is_no_part_of_a_search(reviewer: Person, path: str) -> None:
+    reviewer.open(path)
+    assert reviewer.status == 200
+
+
 def test_a_loop_shows_ranges_models_gains_in_force_and_its_submissions(kept: Kept, reviewer: Person) -> None:
     page = reviewer.open(f"/loops/{kept.loops['stable']}")
     told = page.one("main").text
