@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, fields
 
 from flask import Blueprint, redirect, request, url_for
@@ -26,7 +26,7 @@ from service.pages.visits import Visit
 from service.records import changes as records
 from service.records import loops
 from service.records.errors import FieldErrors, StaleContent
-from service.records.views import ChangeView, LoopView
+from service.records.views import LoopView
 
 RANGES = {"pv": "PV range", "output": "Output range"}
 SAFETY = (
@@ -66,15 +66,7 @@ def propose_change(loop_id: str) -> AnyResponse:
     shown = _read(loop_id)
     if request.method == "GET":
         return _change_page(shown, Form(_texts(shown.view.loop)))
-    form = forms.posted()
-    try:
-        asked = _request(form, {"loop": _loop(shown.view.loop, form)})
-        made = _propose(loop_id, asked)
-    except (InvalidDocument, FieldErrors) as refusal:
-        return _change_page(shown, form.with_problems(_problems(refusal.errors)), 422)
-    except StaleContent:
-        return _change_page(_read(loop_id), form.with_problems([HAS_CHANGED]), 412)
-    return redirect(url_for("pages.change", change_id=made.id), 303)
+    return _propose(shown, lambda form: {"loop": _loop(shown.view.loop, form)}, _change_page)
 
 
 def propose_retirement(loop_id: str) -> AnyResponse:
@@ -82,18 +74,7 @@ def propose_retirement(loop_id: str) -> AnyResponse:
     shown = _read(loop_id)
     if request.method == "GET":
         return _retirement_page(shown, Form())
-    form = forms.posted()
-    point = form.typed("retire_operating_point")
-    if not point:
-        problem = Problem(NO_POINT, "retire_operating_point")
-        return _retirement_page(shown, form.with_problems([problem]), 422)
-    try:
-        made = _propose(loop_id, _request(form, {"retire_operating_point": point}))
-    except (InvalidDocument, FieldErrors) as refusal:
-        return _retirement_page(shown, form.with_problems(_problems(refusal.errors)), 422)
-    except StaleContent:
-        return _retirement_page(_read(loop_id), form.with_problems([HAS_CHANGED]), 412)
-    return redirect(url_for("pages.change", change_id=made.id), 303)
+    return _propose(shown, _point, _retirement_page)
 
 
 def _read(loop_id: str) -> ProposalPage:
@@ -113,9 +94,29 @@ def _operating_points(visit: Visit, loop_id: str) -> tuple[Option, ...]:
     )
 
 
-def _propose(loop_id: str, asked: LoopChangeRequest) -> ChangeView:
-    with visits.writing() as visit:
-        return records.propose(visit.session, visit.actor, loop_id, asked, visit.now)
+def _propose(
+    shown: ProposalPage,
+    what: Callable[[Form], dict[str, Plain]],
+    again: Callable[[ProposalPage, Form, int], AnyResponse],
+) -> AnyResponse:
+    """Propose what stands in the form that came; `again` shows it with what is wrong with it."""
+    form, loop_id = forms.posted(), shown.view.id
+    try:
+        asked = _request(form, what(form))
+        with visits.writing() as visit:
+            made = records.propose(visit.session, visit.actor, loop_id, asked, visit.now)
+    except (InvalidDocument, FieldErrors) as refusal:
+        return again(shown, form.with_problems(map(_problem, refusal.errors)), 422)
+    except StaleContent:
+        return again(_read(loop_id), form.with_problems([HAS_CHANGED]), 412)
+    return redirect(url_for("pages.change", change_id=made.id), 303)
+
+
+def _point(form: Form) -> dict[str, Plain]:
+    point = form.typed("retire_operating_point")
+    if not point:
+        raise InvalidDocument((FieldProblem("/retire_operating_point", NO_POINT),))
+    return {"retire_operating_point": point}
 
 
 def _change_page(shown: ProposalPage, form: Form, status: int = 200) -> AnyResponse:
@@ -226,10 +227,6 @@ class _Reader:
 
     def _refuse(self, name: str) -> None:
         self.problems.append(FieldProblem(f"/loop/{name.replace('-', '/')}", NOT_A_NUMBER))
-
-
-def _problems(errors: tuple[FieldProblem, ...]) -> tuple[Problem, ...]:
-    return tuple(_problem(error) for error in errors)
 
 
 def _problem(error: FieldProblem) -> Problem:
