@@ -111,7 +111,9 @@ class Search:
         return self.quantity.sector(self.level, self.omega)
 
     def improve(self, loop: UncertainLoop, cells: Cells) -> None:
-        """Look for a lower value in the most promising of some cells."""
+        """Look for a lower value in the most promising of some cells, which may be none."""
+        if not len(cells):
+            return
         promise = self.quantity.values(*cells.at_middle, math.inf)
         places = cells.places.only(np.argsort(promise)[:TRIED])
         self.best = min(self.best, self.quantity.attain(loop, places), key=lambda found: found.value)
