@@ -38,6 +38,22 @@ def test_an_earlier_checkpoint_is_proven_to_begin_a_later_one(service: Service, 
     assert consistency_holds(first["size"], second["size"], old, new, path)
 
 
+def test_without_a_size_a_proof_reaches_to_the_present_end(service: Service, loop_id: str) -> None:
+    checkpoint = service.get("/v1/history/checkpoint").json
+    size, root = checkpoint["size"], checkpoint["digest"]
+    for number in (1, 2, size):
+        proof = service.get(f"/v1/history/{number}/inclusion", "auditor").json
+        leaf, whole, *path = _raw(proof, "leaf", "root") + [bytes.fromhex(each) for each in proof["path"]]
+        assert (proof["number"], proof["size"], proof["root"]) == (number, size, root)
+        assert inclusion_holds(leaf, number - 1, size, path, whole)
+        assert len(path) == 1 or not inclusion_holds(leaf, number % size, size, path, whole)
+    for first in (1, 3, size):
+        proof = service.get(f"/v1/history/consistency?first={first}").json
+        assert (proof["first"], proof["second"], proof["second_root"]) == (first, size, root)
+        old, new = _raw(proof, "first_root", "second_root")
+        assert consistency_holds(first, size, old, new, [bytes.fromhex(each) for each in proof["path"]])
+
+
 def test_a_size_that_the_history_does_not_have_is_refused_by_name(service: Service, loop_id: str) -> None:
     size = service.get("/v1/history/checkpoint").json["size"]
     number = service.get("/v1/history?kind=loop_registered").json["items"][0]["number"]

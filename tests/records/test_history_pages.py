@@ -44,6 +44,18 @@ def test_a_tag_alone_finds_it_at_every_site(store: Store) -> None:
         assert {entry.actor for entry in of_actor} == {"console"}
 
 
+def test_a_site_or_an_area_alone_finds_all_that_is_of_it(store: Store) -> None:
+    for site, tag, area in (("North", "FIC-101", "Drying"), ("South", "TIC-3", "Tank farm")):
+        store.register(site=site, tag=tag, area=area)
+    with store.database.reading() as session:
+        for wanted in (HistoryFilter(site="SOUTH"), HistoryFilter(area="Tank farm")):
+            found = history_queries.history(session, CONSOLE, wanted).items
+            assert [(entry.site, entry.tag) for entry in found] == [("South", "TIC-3")]
+        seen = history_queries.history(session, store.actor("outsider"), HistoryFilter()).items
+        assert [(entry.site, entry.tag) for entry in seen] == [("South", "TIC-3")]
+        assert history_queries.entry(session, store.actor("outsider"), seen[0].number) == seen[0]
+
+
 def test_an_entry_is_shown_as_its_bytes_say(store: Store) -> None:
     loop = store.register(area="Drying")
     with store.database.reading() as session:
