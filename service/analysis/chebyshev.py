@@ -19,7 +19,7 @@ from service.analysis.loop import Reals
 NODES = 16
 """Nodes of a piece of a response; e^(λt) over a piece with abs λ·length ≤ 6 is met to some 1e-11."""
 
-ROWS_AT_ONCE = 4096
+ROWS_AT_ONCE = 2048
 """More would leave the processor's cache, and take memory in proportion."""
 
 

@@ -136,17 +136,17 @@ def _chosen_crossings(omega: Reals, magnitude: Reals, counts: Reals, marks: Real
     )
     pairs: set[tuple[int, float]] = set()
     listed = 0
-    for piece in crossed[near]:
-        wanted = int(min(counts[piece], MAX_LISTED + 1 - listed))
-        pairs.update((int(piece), float(number)) for number in range(wanted))
+    for piece, count in zip(crossed[near].tolist(), counts[crossed[near]].tolist(), strict=True):
+        wanted = int(min(count, MAX_LISTED + 1 - listed))
+        pairs.update((piece, float(number)) for number in range(wanted))
         listed += wanted
         if listed > MAX_LISTED:
             break
     stretch = np.searchsorted(marks, 0.5 * (omega[crossed] + omega[crossed + 1]))
     first = np.flatnonzero(np.diff(stretch, prepend=-1))
     last = np.append(first[1:] - 1, len(crossed) - 1) if crossed.size else first
-    pairs.update((int(crossed[index]), 0.0) for index in first)
-    pairs.update((int(crossed[index]), float(counts[crossed[index]] - 1)) for index in last)
+    pairs.update((piece, 0.0) for piece in crossed[first].tolist())
+    pairs.update(zip(crossed[last].tolist(), (counts[crossed[last]] - 1.0).tolist(), strict=True))
     ordered = sorted(pairs)
     pieces = np.array([piece for piece, _ in ordered], dtype=np.intp)
     return _ChosenCrossings(pieces, np.array([number for _, number in ordered]), listed > MAX_LISTED)

@@ -416,11 +416,12 @@ class PeakSearch:
             falls = np.flatnonzero(rising[:-1] & ~rising[1:] & joined)
             places.append(zeros_in_steps(self._growth_of(quantity), omega, growth, falls, PEAK_PLACE))
         responses = np.exp(self._axis.loop.log_response(np.concatenate(places)))
-        each = np.split(responses, np.cumsum([len(at) for at in places])[:-1])
-        return [
-            [Peak(*pair) for pair in zip(_values(quantity, at, there).tolist(), at.tolist(), strict=True)]
-            for quantity, at, there in zip(quantities, places, each, strict=True)
-        ]
+        found, first = [], 0
+        for quantity, at in zip(quantities, places, strict=True):
+            values = _values(quantity, at, responses[first : first + len(at)])
+            found.append([Peak(*pair) for pair in zip(values.tolist(), at.tolist(), strict=True)])
+            first += len(at)
+        return found
 
     def _growth_of(self, quantity: Sensitivity) -> Callable[[float], float]:
         loop = self._axis.loop

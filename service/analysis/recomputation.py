@@ -210,12 +210,16 @@ def _steps(
 
 Part = TypeVar("Part", Margins, SetpointStep, LoadStep, Noise)
 
+_NAMES: dict[type, tuple[str, ...]] = {
+    part: tuple(field.name for field in fields(part)) for part in (Margins, SetpointStep, LoadStep, Noise)
+}
+
 
 def _finite(part: Part | None, notes: list[str]) -> Part | None:
     """The part with None in place of every number that has left float64, and a note where there was one."""
     if part is None:
         return None
-    values = {field.name: getattr(part, field.name) for field in fields(part)}
+    values = {name: getattr(part, name) for name in _NAMES[type(part)]}
     lost = [name for name, value in values.items() if isinstance(value, float) and not isfinite(value)]
     if not lost:
         return part

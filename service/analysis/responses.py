@@ -309,7 +309,10 @@ class _March:
         self._maps = [maps[length] for length in self._lengths]
         self.pieces_each = len(self._lengths)
         self._state = np.zeros((space.order, 2))
-        self._delayed: list[Reals] | None = None
+        # what each piece of the next interval starts from: state, delayed input at the nodes, set point
+        self._known = [np.zeros((space.order + NODES + 1, 2)) for _ in self._lengths]
+        for known in self._known:
+            known[-1, SETPOINT] = 1.0
         self._impulse = space.setpoint_impulse
         self._outputs: list[Reals] = []
         self._pvs: list[Reals] = []
@@ -331,23 +334,19 @@ class _March:
             self._one_interval()
 
     def _one_interval(self) -> None:
-        order, load = self._space.order, np.array([0.0, 1.0])
+        order = self._space.order
         if self.intervals > 0 and self._impulse != 0:
             self._state[:, SETPOINT] += self._space.b_w * self._impulse
             self._impulse *= self._space.d_u
-        outputs = []
-        for index, mapping in enumerate(self._maps):
-            known = np.zeros((order + NODES + 1, 2))
+        for mapping, known in zip(self._maps, self._known, strict=True):
             known[:order] = self._state
-            if self._delayed is not None:
-                known[order:-1] = self._delayed[index] + load
-            known[-1, SETPOINT] = 1.0
             result = mapping @ known
             self._state = result[:order]
-            outputs.append(result[order : order + NODES])
+            output = result[order : order + NODES]
+            self._outputs.append(output)
             self._pvs.append(result[order + NODES :])
-        self._delayed = outputs
-        self._outputs += outputs
+            known[order:-1] = output
+            known[order:-1, LOAD] += 1.0
         self.intervals += 1
 
     def meets(self, known: _Known) -> bool:

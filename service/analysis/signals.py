@@ -27,17 +27,19 @@ Indices = npt.NDArray[np.intp]
 
 @dataclass(frozen=True, eq=False)
 class Passage:
-    """A time at which a signal passes a level: known, or to be solved for in one piece between `low` and
-    `high`.
+    """A time at which a signal passes a level: known (`length` 0), or to be solved for in one piece.
 
-    `row`: (nodes,), the signal less the level; it changes sign once between the two places.
+    `row`: (nodes,), the signal less the level; it changes sign once between the places `low` and `high`, and
+    is `at_low` and `at_high` there.
     """
 
     start: float
-    length: float
-    row: Reals | None
-    low: float
-    high: float
+    length: float = 0.0
+    row: Reals | None = None
+    low: float = 0.0
+    high: float = 0.0
+    at_low: float = 0.0
+    at_high: float = 0.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -93,24 +95,22 @@ class Signal:
             return None
         piece, place = int(self.turning_pieces[index]), float(self.turning_places[index])
         if place == 0.0:
-            return Passage(float(self.start[piece]), 0.0, None, 0.0, 0.0)
+            return Passage(float(self.start[piece]))
         # it rises all the way from the turning point before
-        return self._passage(piece, self.values[piece] - level, float(self.turning_places[index - 1]), place)
+        return self._passage(index - 1, 1.0, level)
 
     def last_exit(self, band: float) -> Passage:
         """The last time at which abs of the signal is above `band`; 0 where it never is."""
         if self.tail and (late := self.tail.last_exit(band)) is not None:
-            return Passage(late, 0.0, None, 0.0, 0.0)
+            return Passage(late)
         outside = np.flatnonzero(np.abs(self.turning_values) > band)
         if not outside.size:
-            return Passage(0.0, 0.0, None, 0.0, 0.0)
+            return Passage(0.0)
         index = int(outside[-1])
         piece, place = int(self.turning_pieces[index]), float(self.turning_places[index])
         if place == 1.0:
-            return Passage(float(self.start[piece] + self.length[piece]), 0.0, None, 0.0, 0.0)
-        side = float(np.sign(self.turning_values[index]))
-        row = side * self.values[piece] - band
-        return self._passage(piece, row, place, float(self.turning_places[index + 1]))
+            return Passage(float(self.start[piece] + self.length[piece]))
+        return self._passage(index, float(np.sign(self.turning_values[index])), band)
 
     def turns_near_edge(self, band: float) -> bool:
         """Whether an extremum that could move the last exit lies within 1 % of the band's edge."""
@@ -123,8 +123,13 @@ class Signal:
         inner = (self.turning_places[late] > 0) & (self.turning_places[late] < 1)
         return bool(np.any(inner & (np.abs(size[late] - band) <= SENSITIVE_SHARE * band)))
 
-    def _passage(self, piece: int, row: Reals, low: float, high: float) -> Passage:
-        return Passage(float(self.start[piece]), float(self.length[piece]), row, low, high)
+    def _passage(self, index: int, side: float, level: float) -> Passage:
+        """Where `side` times the signal passes the level between a turning point and the next."""
+        piece = int(self.turning_pieces[index])
+        low, high = self.turning_places[index : index + 2].tolist()
+        ends = side * self.turning_values[index : index + 2] - level
+        row = side * self.values[piece] - level
+        return Passage(float(self.start[piece]), float(self.length[piece]), row, low, high, *ends.tolist())
 
 
 @dataclass(frozen=True, slots=True)
@@ -217,9 +222,12 @@ def _places(passages: list[Passage]) -> list[float]:
     if not passages:
         return []
     rows = np.array([passage.row for passage in passages])
-    low, high = (np.array([getattr(passage, end) for passage in passages]) for end in ("low", "high"))
+    low, high, at_low, at_high = np.array(
+        [(passage.low, passage.high, passage.at_low, passage.at_high) for passage in passages]
+    ).T
+    secant = low + (high - low) * np.clip(at_low / (at_low - at_high), 0.0, 1.0)
     told = chebyshev.value_and_slope(rows)
-    places: list[float] = newton_zero(told, low, high, told(low)[0], 1.0).tolist()
+    places: list[float] = newton_zero(told, low, high, at_low, 1.0, secant).tolist()
     return places
 
 

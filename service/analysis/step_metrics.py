@@ -35,22 +35,23 @@ def step_metrics(
     # divided by the final value the response ends at 1, whatever its sign
     scaled = pv.times(1.0 / final) if meaningful else None
     band, peak = band_percent / 100.0, load_pv.turning_values[_largest(load_pv)]
+    about_final = scaled.less(1.0) if scaled and ended else None
     passages = [
         scaled.first_passage(0.1) if scaled else None,
         scaled.first_passage(0.9) if scaled else None,
-        scaled.less(1.0).last_exit(band) if scaled and ended else None,
+        about_final.last_exit(band) if about_final else None,
         load_pv.less(load_final).last_exit(RECOVERY_BAND * max(abs(peak), abs(load_final)))
         if ended
         else None,
     ]
     tenth, nine_tenths, settled, recovered = (_seconds(time, unit_rad_s) for time in solved(passages))
-    error = pv.less(1.0).times(-1.0)
-    of_error, of_load = integrals([error, load_pv]) if ended else (None, None)
+    # PV − SP: of the error only its magnitude is told
+    of_error, of_load = integrals([pv.less(1.0), load_pv]) if ended else (None, None)
     setpoint = SetpointStep(
         final_value=final,
         rise_time_s=None if tenth is None or nine_tenths is None else nine_tenths - tenth,
         settling_time_s=settled,
-        settling_time_sensitive=bool(scaled and ended and scaled.less(1.0).turns_near_edge(band)),
+        settling_time_sensitive=about_final is not None and about_final.turns_near_edge(band),
         **_overshoot(scaled, unit_rad_s),
         **_error_integrals(of_error, abs(1.0 - final) > ROUNDING, unit_rad_s),
         output_peak="unbounded" if impulse else output.scale,
