@@ -16,7 +16,7 @@ import numpy as np
 
 from service.analysis.box import Bounds, UncertainLoop
 from service.analysis.box_cells import Cells, Indices, Rectangles, enclose
-from service.analysis.box_sectors import Sector, Sectors, excluded, excluded_at_sight
+from service.analysis.box_sectors import Flags, Sector, Sectors, excluded, excluded_at_sight
 from service.analysis.loop import Reals
 
 STEP = 0.2
@@ -30,6 +30,9 @@ STEP_OF_TIME_FACTOR = 0.25
 
 MAX_FACTORS = 1_500_000
 """Work bound of one quantity: cells times factors of the loop, some 0.25 s of processor time."""
+
+MAX_CELLS = 50_000
+"""Bound of a wave, which keeps its memory to some tens of MB; the search that has most of them ends."""
 
 FACTORS_OF_A_CELL = 20
 """A cell itself costs as much as so many factors."""
@@ -135,7 +138,7 @@ def first_cells(
     v = np.array([low_v, high_v]) if len(v) == 1 else v
     w = _edges(loop, bounds, math.log(omega[0]) + v[0], math.log(omega[1]) + v[-1])
     shape = (len(v) - 1, len(w) - 1)
-    if shape[0] * shape[1] * _work_of_a_cell(loop) > MAX_FACTORS:
+    if shape[0] * shape[1] > min(MAX_CELLS, MAX_FACTORS / _work_of_a_cell(loop)):
         return None
     edges = w[:-1], w[1:], v[:-1, None], v[1:, None]
     places = Rectangles(*(np.broadcast_to(part, shape).ravel() for part in edges))
@@ -178,7 +181,9 @@ def sweep(loop: UncertainLoop, cells: Cells, searches: list[Search]) -> None:
     """Prove the level of every search over the cells, lowering it where members are met that have less."""
     sectors = Sectors.of([each.sector for each in searches])
     pending, chosen = np.nonzero(~excluded_at_sight(cells, sectors.columns))
-    cells, wave = cells.only(chosen), 0
+    _keep_to_a_wave(searches, np.bincount(pending, minlength=len(searches)))
+    going_on = _going_on(searches)[pending]
+    pending, cells, wave = pending[going_on], cells.only(chosen[going_on]), 0
     while pending.size:
         of_cells = sectors.only(pending)
         out, inside = excluded(cells, of_cells, about_corners=wave > 0)
@@ -206,12 +211,13 @@ def _next_wave(
     """
     parts_w, parts_v = _parts(cells, left)
     counts = (parts_w * parts_v).astype(np.intp)
-    work = np.bincount(pending, counts, len(searches)) * _work_of_a_cell(loop)
+    cells_of_each = np.bincount(pending, counts, len(searches)).astype(np.intp)
     refuted = any(search.meets_unstable for search in searches)
-    for search, more in zip(searches, work.tolist(), strict=True):
-        search.work += int(more)
+    for search, more in zip(searches, cells_of_each.tolist(), strict=True):
+        search.work += int(more) * _work_of_a_cell(loop)
         search.given_up |= search.work > MAX_FACTORS or (refuted and not search.of_any_box)
-    counts *= ~np.array([search.given_up for search in searches])[pending]
+    _keep_to_a_wave(searches, cells_of_each)
+    counts *= _going_on(searches)[pending]
     source = np.repeat(np.arange(len(left)), counts)
     number = np.arange(len(source)) - np.repeat(np.cumsum(counts) - counts, counts)
     best = np.array([each.best.place or (math.nan, math.nan) for each in searches])[pending[source]]
@@ -224,6 +230,18 @@ def _next_wave(
     middle_w, middle_v = places.centre
     w, v = np.where(about, best[:, 0], middle_w), np.where(about, best[:, 1], middle_v)
     return enclose(loop, places, w, v), pending[source]
+
+
+def _going_on(searches: list[Search]) -> Flags:
+    return ~np.array([search.given_up for search in searches])
+
+
+def _keep_to_a_wave(searches: list[Search], cells_of_each: Indices) -> None:
+    """Give up the searches that have most cells until the rest make a wave."""
+    for index in np.argsort(-cells_of_each):
+        if (cells_of_each * _going_on(searches)).sum() <= MAX_CELLS:
+            return
+        searches[index].given_up = True
 
 
 def _parts(cells: Cells, left: Indices) -> tuple[Reals, Reals]:

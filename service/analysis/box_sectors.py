@@ -31,6 +31,9 @@ UPWARDS = np.array([[1.0], [-1.0]])
 NEARLY_ONE = 0.997
 """Discs up to this distance are taken for convex ones; farther from −1 a cell is known by its width alone."""
 
+BLOCK = 4096
+"""So many cells are tested at once: their memory is several hundred numbers each."""
+
 Flags = npt.NDArray[np.bool_]
 
 
@@ -78,7 +81,7 @@ class Sectors(NamedTuple):
         ]
         return cls(*np.array(rows).T)
 
-    def only(self, chosen: Indices) -> Sectors:
+    def only(self, chosen: Indices | slice) -> Sectors:
         """The sectors that are meant by an index each, shape of `chosen`."""
         return Sectors(*(part[chosen] for part in self))
 
@@ -108,6 +111,12 @@ def excluded(cells: Cells, sectors: Sectors, *, about_corners: bool) -> tuple[Fl
     A sector for each cell. Where the first is false nothing is known of the cell. `about_corners`: some of
     the cells are enclosed about a corner of theirs.
     """
+    if len(cells) > BLOCK:
+        blocks = [slice(start, start + BLOCK) for start in range(0, len(cells), BLOCK)]
+        told = [
+            excluded(cells.only(each), sectors.only(each), about_corners=about_corners) for each in blocks
+        ]
+        return np.concatenate([out for out, _ in told]), np.concatenate([inside for _, inside in told])
     facing = _Facing(cells, sectors)
     found = [facing.nearest(), facing.along_w()]
     found += [facing.rising()] if about_corners else []

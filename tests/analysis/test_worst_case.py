@@ -13,7 +13,7 @@ from typing import Any
 
 import pytest
 
-from service.analysis import box_search
+from service.analysis import box_cells, box_search, box_sectors
 from service.analysis.box import member_of, uncertain_loop
 from service.analysis.controller import Controller, Scan
 from service.analysis.loop import form_loop
@@ -265,15 +265,27 @@ def test_engineering_units_change_nothing() -> None:
     assert other.counterexample.gain == pytest.approx(worst.counterexample.gain)
 
 
+@pytest.mark.parametrize("bound", ["MAX_FACTORS", "MAX_CELLS"])
 @pytest.mark.parametrize("seed", [0, 2, 4])
-def test_past_the_bound_on_work_nothing_is_claimed(seed: int, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_past_the_bound_on_work_nothing_is_claimed(
+    seed: int, bound: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
     plant, controller = invented_box(seed)
     assert worst_case(plant, controller).stable_for_all is True
-    monkeypatch.setattr(box_search, "MAX_FACTORS", 1)
+    monkeypatch.setattr(box_search, bound, 1)
     worst = worst_case(plant, controller)
     assert worst.stable_for_all is None
     assert worst.notes == (NOTE_TOO_MUCH_WORK,)
     assert (worst.max_sensitivity, worst.gain_margin, worst.phase_margin_deg) == (None, None, None)
+
+
+@pytest.mark.parametrize("seed", [0, 4, 24])
+def test_in_blocks_the_same_is_found(seed: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    plant, controller = invented_box(seed)
+    whole = worst_case(plant, controller)
+    monkeypatch.setattr(box_cells, "BLOCK", 7)
+    monkeypatch.setattr(box_sectors, "BLOCK", 7)
+    assert worst_case(plant, controller) == whole
 
 
 def test_factors_beyond_float64_are_answered_without_a_claim() -> None:

@@ -1,4 +1,10 @@
-"""The time of a worst case against what makes it long: size of the box, dead time, order, resonance."""
+"""The time of a worst case against what makes it long: size of the box, dead time, order, resonance.
+
+How it grows, as measured: a box whose factors are raised to the power 8 takes some two times as long as the
+usual one, 100 lags of dead time three times as long as none, 20 lags half as long again as one, a damping a
+thousand times lighter twice as long. An ordinary box takes two or three waves of a hundred cells: the time
+goes into calls, not into cells.
+"""
 
 from __future__ import annotations
 
