@@ -52,6 +52,9 @@ BESIDE = 1e-7
 
 STEPS = 30
 
+NEWTON_DONE = 1e-8
+"""A step of Newton this small, relatively, leaves an error of its square."""
+
 MAX_PROBES = 500
 """Work bound: a loop that is as near to instability as that at more delays has no delay margin computed."""
 
@@ -387,7 +390,7 @@ def _newton(sampled: SampledLoop, angle: float, scans: float) -> tuple[float, fl
         more = (by_angle.real * residual.imag - by_angle.imag * residual.real) / determinant
         angle = min(max(angle - turn, 0.5 * angle), math.pi)
         scans -= max(-1.0, min(1.0, more))
-        if abs(turn) <= 1e-13 and abs(more) <= 1e-12 * max(1.0, scans):
+        if abs(turn) <= NEWTON_DONE * angle and abs(more) <= NEWTON_DONE * max(1.0, scans):
             return angle, scans
     return None
 

@@ -24,7 +24,7 @@ from service.analysis.realisation import plant_state_space
 WHOLE = 1e-12
 """A dead time that is as near as this, relatively, to a whole number of scans is that number."""
 
-TAYLOR_TERMS = 18
+TAYLOR_TERMS = 16
 
 
 @dataclass(frozen=True, slots=True)
