@@ -78,11 +78,9 @@ class SheetContent:
     version: tuple[Told, ...]
     digests: tuple[Told, ...]
     code: str
-    """What the QR code says: the digests of the record."""
+    """What the QR code says: the digests of the record, and in a last line the checkpoint as a file."""
     checkpoint: tuple[str, ...]
-    """What the checkpoint of the latest signature covers, or why there is none; in sentences."""
-    checkpoint_code: str
-    """That checkpoint as the file that the verification takes, for a QR code of its own; empty: none."""
+    """The checkpoint of the latest signature and what it covers, or why there is none; in sentences."""
 
 
 def content_of(
@@ -139,7 +137,6 @@ def content_of(
         digests=tuple(_digests(view)),
         code=_code(view),
         checkpoint=tuple(checkpoints.about(view.decisions)),
-        checkpoint_code=checkpoints.code(view.decisions),
     )
 
 
@@ -321,7 +318,8 @@ def _digests(view: SubmissionView) -> Iterator[Told]:
 
 def _code(view: SubmissionView) -> str:
     latest = _latest(view)
-    return f"record {view.id}\ncontent {view.content_digest}\nentry {latest.number} {latest.digest}"
+    digests = f"record {view.id}\ncontent {view.content_digest}\nentry {latest.number} {latest.digest}"
+    return "\n".join(filter(None, (digests, checkpoints.code(view.decisions))))
 
 
 def _latest(view: SubmissionView) -> EntryReference:

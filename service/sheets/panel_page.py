@@ -18,6 +18,10 @@ PALE = HexColor(0xECECEC)
 EMPHASISED = ("Form", "Action")
 _NAME_PT, _VALUE_PT, _BEFORE_PT = 0.26 * WIDTH_PT, 0.42 * WIDTH_PT, 0.32 * WIDTH_PT
 _CODE_PT = 66.0
+_LONG_CODE_PT = 88.0
+_LONG_CODE = 300
+"""Characters from which on a code needs the larger side, to have modules of three tenths of a millimetre."""
+
 LARGE_LINES = 5
 NOT_ANALYSED = "recorded, not analysed"
 RECORDED_AT_ONCE = 500
@@ -33,7 +37,7 @@ _CELL = [
 def panel_page(content: SheetContent) -> list[Flowable]:
     """Tag, state, gains, what must agree with them, cautions, the box to fill in."""
     common = len({(each.settings, each.recorded) for each in content.tables}) == 1
-    flowables = [_title(content), _banner(content), *_conditions(content)]
+    flowables = [_head(content), *_conditions(content)]
     for gain_set in content.tables:
         flowables += _gains(content, gain_set, with_settings=not common)
     if common:
@@ -47,21 +51,24 @@ def panel_page(content: SheetContent) -> list[Flowable]:
     return flowables
 
 
-def _title(content: SheetContent) -> Flowable:
-    """Whose gains these are; at the right the code by which a telephone reads the digests."""
-    width = WIDTH_PT - _CODE_PT - 10
+def _head(content: SheetContent) -> Flowable:
+    """Whose gains these are and in which state; at the right the code that a telephone reads."""
+    side = _LONG_CODE_PT if len(content.code) > _LONG_CODE else _CODE_PT
+    width = WIDTH_PT - side - 10
     words = [
         said(f"Controller gains · {content.site} · record {content.record}", styles.SETTING),
         said(content.tag, fitting(content.tag, width, 25, 13, bold=True)),
         Spacer(0, 3),
         said(content.description, fitting(content.description, width, 11, 8.5, bold=False)),
+        Spacer(0, 5),
+        _banner(content, width),
     ]
-    code = code_drawing(content.code, _CODE_PT)
+    code = code_drawing(content.code, side)
     look = [*styles.BARE, ("VALIGN", (0, 0), (-1, -1), "TOP"), ("BOTTOMPADDING", (0, 0), (-1, -1), 3)]
-    return table([[words, code]], [WIDTH_PT - _CODE_PT, _CODE_PT], look)
+    return table([[words, code]], [WIDTH_PT - side, side], look)
 
 
-def _banner(content: SheetContent) -> Flowable:
+def _banner(content: SheetContent, width: float) -> Flowable:
     """Black where the gains may not be typed in, framed where they may."""
     entry = content.state.entry
     heading, sentence = (
@@ -71,7 +78,7 @@ def _banner(content: SheetContent) -> Flowable:
     look = [("BOX", (0, 0), (-1, -1), 2.5, black), ("BOTTOMPADDING", (0, 0), (-1, -1), 6)]
     if not entry:
         look.append(("BACKGROUND", (0, 0), (-1, -1), black))
-    return table([[words]], [WIDTH_PT], look)
+    return table([[words]], [width], look, hAlign="LEFT")
 
 
 def _conditions(content: SheetContent) -> Iterator[Flowable]:

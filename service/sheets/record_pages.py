@@ -14,7 +14,6 @@ from service.sheets.assessments import Assessment, ClaimRow, LimitRow
 from service.sheets.content import Model, SheetContent
 from service.sheets.controllers import Told
 from service.sheets.panel_page import PALE
-from service.sheets.qr import code_drawing
 from service.sheets.signatures import Signature
 from service.sheets.styles import WIDTH_PT, joined, named, said, table
 
@@ -30,9 +29,6 @@ _LOOK = [
 ]
 _SHARES = (0.19, 0.115, 0.16, 0.13, 0.08, 0.225, 0.1)
 """Widths of the columns of the results: a margin, its value and its limit; then twice a name and a value."""
-_CODE_PT = 90.0
-"""Side of the code of a checkpoint: its some 460 characters at a third of a millimetre a module."""
-
 _SHARES_ALONE = (0.25, 0.15, 0.25)
 """The same where there are limits only, because the loop was not shown to be stable."""
 
@@ -134,7 +130,7 @@ def _responses(told: Assessment) -> Iterator[Flowable]:
     yield Spacer(0, 5)
     width = int(WIDTH_PT / 2) - 6
     drawings = [
-        response_drawing(response, width_pt=width, height_pt=116, text_pt=6.5) for response in told.responses
+        response_drawing(response, width_pt=width, height_pt=112, text_pt=6.5) for response in told.responses
     ]
     yield table([drawings], [WIDTH_PT / 2] * len(drawings), styles.BARE, hAlign="LEFT")
 
@@ -180,31 +176,17 @@ def _signature(signature: Signature) -> Iterator[Flowable]:
 
 
 def _identity(content: SheetContent) -> Iterator[Flowable]:
-    words = [
-        said("Version and digests", styles.HEADING),
-        _joined(content.version),
-        *(named(told.name, told.value, styles.SMALL) for told in content.digests),
-        said(_ABOUT_DIGESTS, styles.SMALL),
-        *(said(sentence, styles.SMALL) for sentence in content.checkpoint),
-    ]
-    if content.checkpoint_code:
-        yield _beside_code(words, content.checkpoint_code)
-    else:
-        yield from words
+    yield said("Version and digests", styles.HEADING)
+    yield _joined([*content.version, _ABOUT_CODE])
+    for told in content.digests:
+        yield named(told.name, told.value, styles.SMALL)
+    for sentence in content.checkpoint:
+        yield said(sentence, styles.SMALL)
     if any(texts.is_told_in_part(text) for text in texts.strings_in(content)):
         yield said(texts.CODE_POINTS, styles.SMALL)
 
 
-_ABOUT_DIGESTS = (
-    "The code on the first page holds the digests. "
-    "What happened after the record was read is in the history only."
-)
-
-
-def _beside_code(words: list[Flowable], code: str) -> Flowable:
-    widths = [WIDTH_PT - _CODE_PT, _CODE_PT]
-    look = [*styles.BARE, ("VALIGN", (0, 0), (-1, -1), "TOP"), ("RIGHTPADDING", (0, 0), (0, -1), 6)]
-    return table([[words, code_drawing(code, _CODE_PT)]], widths, look)
+_ABOUT_CODE = Told(name="Code on the first page", value="digests; last line: checkpoint, for history verify")
 
 
 def _joined(items: Sequence[Told]) -> Flowable:

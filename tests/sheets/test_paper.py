@@ -22,12 +22,13 @@ from service.sheets import texts
 from service.sheets.content import SheetContent
 from service.sheets.layout import DEMONSTRATION, sheet_pdf
 from service.sheets.texts import strings_in, visible
+from tests.codes import codes_in
 from tests.sheets.cases import HOSTILE
 from tests.sheets.conftest import Printed
 
 PrintCase = Callable[[str], Printed]
 ROOT = Path(__file__).parents[2]
-CODE_CORNER_PT = (488, 32, 562, 104)
+CODE_CORNER_PT = (468, 32, 562, 122)
 """Left, top, right and bottom of a corner of the first page in which nothing else is printed."""
 
 IN_OTHER_PROCESS = """
@@ -63,12 +64,11 @@ def running_text(printed: Printed) -> str:
 
 
 def said(content: SheetContent) -> Iterator[str]:
-    """Every text of the content but those that stand in the codes, and those that are drawn in charts."""
+    """Every text of the content but the one that stands in the code, and those that are drawn in charts."""
     drawn = {
         text for each in content.assessments for response in each.responses for text in strings_in(response)
     }
-    in_codes = (content.code, content.checkpoint_code)
-    yield from (text for text in strings_in(content) if text not in in_codes and text not in drawn)
+    yield from (text for text in strings_in(content) if text != content.code and text not in drawn)
 
 
 def test_every_field_of_the_content_is_on_the_paper(printed: Printed) -> None:
@@ -163,14 +163,19 @@ def test_letters_without_a_glyph_are_told_by_their_code_points(print_case: Print
     assert bare(texts.CODE_POINTS) not in bare(print_case("ordinary").text)
 
 
-def test_the_code_holds_the_digests(print_case: PrintCase) -> None:
-    printed = print_case("ordinary")
-    assert printed.content.code.split() == [
+@pytest.mark.parametrize("name", ["ordinary", "two_zeros"])
+def test_the_code_holds_the_digests_and_the_checkpoint(print_case: PrintCase, name: str) -> None:
+    printed = print_case(name)
+    digests, *checkpoint = printed.content.code.split("\n{")
+    assert digests.split() == [
         *("record", "01JQ7Z4M8W"),
         *("content", "3f" * 32),
         *("entry", "421", "b7" * 32),
     ]
-    assert dark_modules(printed.pdf) == [list(row) for row in code_matrix(printed.content.code)]
+    # no checkpoint was kept with the signature of the second case
+    assert len(checkpoint) == (name == "ordinary")
+    assert codes_in(printed.pdf) == [printed.content.code]
+    assert dark_modules(printed) == code_matrix(printed.content.code)
 
 
 def test_the_bytes_are_the_same_in_every_process(print_case: PrintCase) -> None:
@@ -197,13 +202,15 @@ def code_matrix(text: str) -> list[list[int]]:
     return [list(row) for row in segno.make(text, error="m", micro=False, boost_error=False).matrix]
 
 
-def dark_modules(pdf: bytes) -> list[list[int]]:
+def dark_modules(printed: Printed) -> list[list[int]]:
     """The code as a camera sees it: one sample in the middle of each module of the drawn page."""
     scale = 6
-    page = pypdfium2.PdfDocument(pdf)[0].render(scale=scale, grayscale=True).to_pil().convert("L")
-    corner = page.crop(tuple(scale * point for point in CODE_CORNER_PT))
+    page = pypdfium2.PdfDocument(printed.pdf)[0].render(scale=scale, grayscale=True).to_pil().convert("L")
+    left, top, right, bottom = CODE_CORNER_PT
+    side = right - left if len(printed.content.code) > 300 else 74
+    corner = page.crop(tuple(scale * point for point in (right - side, top, right, min(bottom, top + side))))
     code = corner.crop(corner.point(lambda grey: 255 * (grey < 128)).getbbox())
-    size = len(code_matrix("record 01JQ7Z4M8W\ncontent " + "3f" * 32 + "\nentry 421 " + "b7" * 32))
+    size = len(code_matrix(printed.content.code))
     at = [int((index + 0.5) * code.width / size) for index in range(size)]
     return [[int(code.getpixel((x, y)) < 128) for x in at] for y in at]
 
