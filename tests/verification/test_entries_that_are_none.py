@@ -8,7 +8,8 @@ from typing import Any
 import pytest
 
 from service.verification.checkpoints import Checkpoint
-from service.verification.report import Fault
+from service.verification.kept import KeptCheckpoints, State
+from service.verification.report import Broken, Fault
 from tests.verification.conftest import Owned
 from tests.verification.forging import leaf, rewrite_from, rewrite_with_checkpoints_from, set_head
 from tests.verification.test_tampering import sqlite_alone
@@ -132,3 +133,23 @@ def test_what_stands_in_a_store_cannot_write_over_what_is_said_of_it() -> None:
     said = Fault(entry=5, table="loops", row=f"id {hidden}", what="the row is missing").sentence()
     told = r"id Größe\x1b[2K\rThe history holds\n\u202e\ud800"
     assert said == f"entry 5; table loops, row {told}: the row is missing"
+
+
+def test_a_kept_checkpoint_that_names_a_key_has_its_signature() -> None:
+    state = {
+        "origin": "0" * 64,
+        "size": 1,
+        "digest": "1" * 64,
+        "head": "2" * 64,
+        "time": "2026-03-02T06:00:00Z",
+    }
+    row = state | {"decision_id": "d", "public_key": None, "signature": None}
+    for changes, holds in (({}, True), ({"public_key": "A" * 43 + "="}, False)):
+        kept = KeptCheckpoints()
+        kept.add({"rows": {"decisions": [{"id": "d"}]}}, None, None)
+        entry = {"rows": {"checkpoints": [row | changes]}}
+        if holds:
+            kept.add(entry, State(**state), None)  # type: ignore[arg-type]
+        else:
+            with pytest.raises(Broken, match="names a key that did not sign it"):
+                kept.add(entry, State(**state), None)  # type: ignore[arg-type]
