@@ -6,6 +6,7 @@ from dataclasses import replace
 
 import pytest
 
+from service.analysis.results import Verdict
 from service.judgement.criteria import CriterionFinding, Outcome
 from service.records import approvability
 from service.records.content import SignedContent
@@ -86,3 +87,16 @@ def test_limits_that_differ_between_operating_points_are_held_each_against_its_o
     )
     (shown,) = approvability.worst_criteria(_at(store.submit().content, *findings).recomputations)
     assert shown.operating_point == "point 1"
+
+
+def test_the_worst_verdict_of_all_operating_points_counts(store: Store, loop: LoopView) -> None:
+    first = store.submit().content.recomputations[0]
+    verdicts: dict[tuple[Verdict, ...], Verdict | None] = {
+        (): None,
+        ("stable", "stable"): "stable",
+        ("stable", "undecided"): "undecided",
+        ("undecided", "unstable", "stable"): "unstable",
+    }
+    for given, worst in verdicts.items():
+        points = tuple(replace(first, answer=replace(first.answer, verdict=each)) for each in given)
+        assert approvability.worst_verdict(points) == worst
