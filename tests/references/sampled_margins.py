@@ -233,17 +233,23 @@ def _peak(circle: Circle, of: Callable[[Any, Any], Any], low: float, high: float
         return middle - (right - left) ** 2 / (8 * (left - 2 * middle + right))
 
 
+NEAR_THE_CIRCLE = 1e-3
+"""A root that comes as near as this between two steps may have been outside for a moment."""
+
+
 def reference_delay_margin(loop: ExactSampledLoop, most: float, steps_a_scan: int = 20) -> Any:
     """The least extra dead time, up to `most` seconds, with a root on the unit circle; None without one.
 
     By every root of the loop, its plant sampled anew, in steps of a part of a scan, and of 2 % of what is
-    already added where that is more; the interval is then halved by counting, at last at ninety digits.
+    already added where that is more; the interval is then halved by counting, at last at ninety digits. Where
+    the outermost root comes near the circle and goes back between two steps, the nearest place is looked at.
     """
     interval = float(loop.interval)
     fast = FloatRoots(loop)
     low, high = 0.0, None
     extra = whole = 0.0
     first = float(mp.ceil(loop.delay / loop.interval) * loop.interval - loop.delay)
+    before, here = 0.0, fast.radius(0.0)
     while extra < most:
         step = max(interval / steps_a_scan, 0.02 * extra)
         following = extra + step
@@ -251,9 +257,16 @@ def reference_delay_margin(loop: ExactSampledLoop, most: float, steps_a_scan: in
         whole = first + np.ceil((extra - first) / interval + 1e-9) * interval
         if extra < whole * (1 - 1e-12) < following:
             following = whole
-        if fast.radius(following) >= 1.0:
+        there = fast.radius(following)
+        if before <= here >= there and here > 1.0 - NEAR_THE_CIRCLE:
+            nearest = _largest_radius(fast, max(2.0 * extra - following, 0.0), following)
+            if fast.radius(nearest) >= 1.0:
+                low, high = max(2.0 * extra - following, 0.0), nearest
+                break
+        if there >= 1.0:
             high = following
             break
+        before, here = here, there
         extra = low = following
     if high is None:
         return None
@@ -267,6 +280,15 @@ def reference_delay_margin(loop: ExactSampledLoop, most: float, steps_a_scan: in
         else:
             low = middle
     return _sharpened(loop, low, high)
+
+
+def _largest_radius(fast: FloatRoots, low: float, high: float) -> float:
+    """Where between two delays the outermost root lies farthest out, by golden sections."""
+    share = 0.5 * (5.0**0.5 - 1.0)
+    for _ in range(40):
+        one, other = high - share * (high - low), low + share * (high - low)
+        low, high = (low, other) if fast.radius(one) >= fast.radius(other) else (one, high)
+    return 0.5 * (low + high)
 
 
 def _sharpened(loop: ExactSampledLoop, low: float, high: float) -> Any:
