@@ -266,6 +266,10 @@ def reference_delay_margin(loop: ExactSampledLoop, most: float, steps_a_scan: in
         if there >= 1.0:
             high = following
             break
+        if following == whole and fast.radius(whole * (1 - 1e-11)) >= 1.0:
+            # outside until the jump, and back inside behind it
+            high = whole * (1 - 1e-11)
+            break
         before, here = here, there
         extra = low = following
     if high is None:
