@@ -20,7 +20,7 @@ from service.records.tables.columns import Base, Kept
 from service.records.tables.history import HistoryEvent
 from service.records.tables.submissions import GainsComingIntoForce
 from service.records.views import LoopView
-from tests.databases import Databases, is_sqlite, opened, run
+from tests.databases import Databases, is_sqlite, opened, run, without_guards
 from tests.records.store import Store, gains, registration
 from tests.records.year import live
 
@@ -290,3 +290,43 @@ def test_a_value_that_can_be_written_in_more_than_one_way_is_not_kept(store: Sto
             )
         session.rollback()
     assert store.events() == before
+
+
+def test_an_append_returns_the_number_the_digest_and_the_time_of_its_entry(store: Store) -> None:
+    with store.database.writing() as session:
+        told = history.append(session, kind="inspected", actor=CONSOLE, content={}, now=store.clock())
+        head = history.head(session)
+    assert (told.number, told.digest, told.time) == (head.size, head.digest, store.clock())
+
+
+def test_of_several_entries_of_a_kind_the_last_one_counts(store: Store) -> None:
+    with store.database.writing() as session:
+        for count in (1, 2, 3):
+            content = {"count": count}
+            history.append(session, kind="inspected", actor=CONSOLE, content=content, now=store.clock())
+        assert history.last_content(session, "inspected", "repaired") == {"count": 3}
+        assert history.last_content(session, "repaired") is None
+
+
+@pytest.mark.parametrize(
+    "change",
+    [
+        "UPDATE history_events SET kind = 'account_added' WHERE number = 1",
+        "DELETE FROM history_events WHERE number = 1",
+    ],
+)
+def test_a_store_whose_beginning_is_gone_is_no_demonstrations(store: Store, change: str) -> None:
+    """A demonstration's store takes any clock: nothing but its own first entry may say that it is one."""
+    with store.database.reading() as session:
+        assert history.is_demonstration(session)
+    without_guards(store.url, change)
+    with store.database.reading() as session:
+        assert not history.is_demonstration(session)
+
+
+def test_without_a_first_entry_a_history_has_no_origin(store: Store) -> None:
+    with store.database.reading() as session:
+        assert history.origin(session) == session.get_one(HistoryEvent, 1).digest
+    without_guards(store.url, "DELETE FROM history_events WHERE number = 1")
+    with store.database.reading() as session:
+        assert history.origin(session) == ""
