@@ -10,7 +10,7 @@ from typing import Any
 
 import pytest
 import rfc8785
-from sqlalchemy import text
+from sqlalchemy import select, text
 from sqlalchemy.exc import DBAPIError, IntegrityError
 
 from service.records import accounts, history, loops, merkle, queries
@@ -297,6 +297,13 @@ def test_an_append_returns_the_number_the_digest_and_the_time_of_its_entry(store
         told = history.append(session, kind="inspected", actor=CONSOLE, content={}, now=store.clock())
         head = history.head(session)
     assert (told.number, told.digest, told.time) == (head.size, head.digest, store.clock())
+
+
+def test_an_entry_about_a_loop_says_which_in_columns_to_search_by(store: Store, loop: LoopView) -> None:
+    with store.database.reading() as session:
+        about = select(HistoryEvent.loop_id, HistoryEvent.site, HistoryEvent.tag, HistoryEvent.area)
+        found = session.execute(about.where(HistoryEvent.kind == "loop_registered")).one()
+    assert tuple(found) == (loop.id, "North", "FIC-101", "Drying")
 
 
 def test_of_several_entries_of_a_kind_the_last_one_counts(store: Store) -> None:
