@@ -5,6 +5,7 @@ A fault costs a fork and its tests, with nothing imported, collected or set up a
 
 from __future__ import annotations
 
+import functools
 import gc
 from collections import defaultdict
 from pathlib import Path
@@ -43,6 +44,7 @@ class TryingInside:
             raise pytest.UsageError("the tests do not pass without a fault")
         coverers = Coverers.read(self._kept)
         live = _live_functions(self._tried)
+        self._cached = [each for each in gc.get_objects() if isinstance(each, functools._lru_cache_wrapper)]
         # what is here now is not looked through, and so not copied, in each fork
         gc.freeze()
         for module in self._tried:
@@ -88,6 +90,10 @@ class TryingInside:
             return CANNOT_BE_PUT_IN
         for function, code in zip(functions, codes, strict=True):
             function.__code__ = code
+        for cached in self._cached:
+            # what the right function has returned before would be returned again
+            if cached.__wrapped__ in functions:
+                cached.cache_clear()
         for item in items:
             self._run(item)
             if self._failed:

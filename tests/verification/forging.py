@@ -39,7 +39,7 @@ def set_head(owned: Owned) -> None:
     """Make the head fit the entries, as a forger who knows the design would."""
     entries = owned.rows("SELECT canonical, digest, time FROM history_events ORDER BY number")
     edge = _edge([leaf(raw) for raw, _, _ in entries])
-    _, digest, time = entries[-1]
+    _, digest, time = entries[-1] if entries else (b"", "0" * 64, None)
     change = "UPDATE history_head SET size = ?, digest = ?, time = ?, right_edge = ?"
     owned.execute((change, (len(entries), digest, time, edge)))
 

@@ -9,9 +9,12 @@ from datetime import timedelta
 from pathlib import Path
 
 import pytest
+from sqlalchemy import text
+from sqlalchemy.exc import DBAPIError
 
 from service.records import accounts, history
 from service.records.roles import CONSOLE
+from service.verification.store import EVENTS, count, opened
 from service.verification.verifier import Checkpoint
 from tests.clusters import program
 from tests.databases import Databases, file_of, is_sqlite
@@ -123,6 +126,25 @@ def test_progress_is_told_now_and_then(owned: Owned, monkeypatch: pytest.MonkeyP
     verifier.verify(owned.url, progress=lambda done, total: told.append((done, total)))
     total = owned.value("SELECT count(*) FROM history_events")
     assert told == [(done, total) for done in range(5, total + 1, 5)]
+    assert verifier.verify(owned.url).holds, "nobody has to ask for it"
+
+
+def test_a_store_is_opened_for_reading_alone(owned: Owned) -> None:
+    change = text("UPDATE accounts SET full_name = 'x'")
+    with opened(owned.url) as connection, pytest.raises(DBAPIError, match=r"read-?only"):
+        connection.execute(change)
+
+
+def test_all_that_is_read_of_a_store_is_of_one_moment(owned: Owned) -> None:
+    store = Store(owned.url)
+    with opened(owned.url) as connection:
+        before = count(connection, EVENTS)
+        with store.database.writing() as session:
+            accounts.rename(session, CONSOLE, "reviewer", "Another Name", "married", store.clock())
+        assert count(connection, EVENTS) == before
+    with opened(owned.url) as connection:
+        assert count(connection, EVENTS) == before + 1
+    store.database.close()
 
 
 def test_the_verifier_shares_no_code_with_what_it_verifies() -> None:

@@ -44,8 +44,18 @@ def test_an_export_says_what_the_store_says(owned: Owned, lines: Lines) -> None:
         store.head,
         store.root,
     )
-    assert set(export.covered) <= set(store.covered)
-    assert export.notes == ()
+    assert set(export.covered) == set(store.covered) - {"history_head"}
+    assert (export.notes, export.checkpoint_size) == ((), None)
+
+
+def test_an_export_of_nothing_has_no_head() -> None:
+    report = verify_export([])
+    assert (report.fault, report.entries, report.head) == (None, 0, None)
+
+
+def test_the_report_says_how_much_the_checkpoint_covers(owned: Owned, lines: Lines) -> None:
+    given = owned.checkpoint()
+    assert verified(lines, given).checkpoint_size == owned.verify(given).checkpoint_size == given.size
 
 
 def _line_of(lines: Lines, table: str) -> dict[str, Any]:
@@ -65,6 +75,10 @@ def _no_base64(row: dict[str, Any]) -> None:
     row["content"] = {"base64": "no base64 at all"}
 
 
+def _other_letters_in_base64(row: dict[str, Any]) -> None:
+    row["content"]["base64"] = "\n" + row["content"]["base64"]
+
+
 def _column_added(row: dict[str, Any]) -> None:
     row["remark"] = "added"
 
@@ -82,6 +96,27 @@ def test_a_row_that_is_not_what_was_recorded_is_named(
     report = verified(lines)
     assert report.fault is not None
     assert (report.fault.entry, report.fault.table) == (line["number"], "loop_revisions")
+
+
+@pytest.mark.parametrize("tamper", [_no_base64, _other_letters_in_base64])
+def test_bytes_can_be_written_in_one_way_only(lines: Lines, tamper: Callable[[dict[str, Any]], None]) -> None:
+    tamper(_line_of(lines, "loop_revisions")["rows"]["loop_revisions"][0])
+    fault = verified(lines).fault
+    assert fault is not None
+    assert fault.what == "a row has a value that is none"
+
+
+@pytest.mark.parametrize(("characters", "shown"), [(120, 120), (121, 121), (500, 121)])
+def test_a_strange_row_is_shown_as_it_is_and_a_long_one_in_part(characters: int, shown: int) -> None:
+    frame = len('{"tag": ""}')
+    raw = json.dumps({"number": 1, "previous": "0" * 64, "kind": "store_made", "rows": {"loops": []}})
+    row = {"tag": "ä" * (characters - frame)}
+    line = {"canonical": raw, "digest": leaf(raw.encode()).hex(), "rows": {"loops": [row]}}
+    fault = verified([line]).fault
+    assert fault is not None
+    assert fault.row is not None
+    assert (len(fault.row), fault.row.endswith("…")) == (shown, characters > 120)
+    assert 'row {"tag": "ää' in fault.sentence()
 
 
 def test_a_row_taken_out_put_in_or_doubled_is_named(lines: Lines) -> None:
@@ -109,12 +144,28 @@ def test_entries_without_their_rows_are_verified_alone_and_that_is_said(lines: L
 
 @pytest.mark.parametrize(
     "line",
-    [b"", b"[]", b"7", b'{"digest": "x"}', b'{"canonical": 1, "digest": "x"}', b"\xff", b'{"rows": 1}'],
+    [
+        b"",
+        b"[]",
+        b"7",
+        b'{"digest": "x"}',
+        b'{"canonical": 1, "digest": "x"}',
+        b'{"canonical": "x", "digest": 1}',
+        b"\xff",
+        b'{"rows": 1}',
+    ],
 )
 def test_a_line_that_is_no_entry_is_a_fault(line: bytes) -> None:
     report = verify_export([line])
     assert report.fault is not None
-    assert report.fault.entry == 1
+    assert (report.fault.entry, report.fault.what) == (1, "the line is no entry of an export")
+
+
+@pytest.mark.parametrize("rows", [7, [], "rows"])
+def test_a_line_whose_rows_are_in_no_tables_is_no_entry(lines: Lines, rows: object) -> None:
+    fault = verified([lines[0] | {"rows": rows}]).fault
+    assert fault is not None
+    assert (fault.entry, fault.what) == (1, "the line is no entry of an export")
 
 
 @pytest.mark.parametrize("rows", [7, None, {"id": 1}, "rows", [7]])

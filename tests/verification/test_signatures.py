@@ -138,6 +138,10 @@ def test_a_key_that_was_lost_is_replaced_and_every_verification_says_so(signed: 
     report = verify(signed.url, checkpoint=Checkpoint.read(after))
     assert report.holds
     assert "did not confirm" in report.notes[0]
+    assert report.signatures[1].endswith(
+        f"takes up the key {public_text(SECOND)}, which signed it; the key before it did not"
+    )
+    assert what_breaks(signed, after, public_text(SECOND)) is None, "whoever holds the new one may follow it"
     assert "does not follow" in (what_breaks(signed, after, public_text(FIRST)) or "")
 
 

@@ -168,6 +168,14 @@ def test_the_last_entries_cut_off_with_everything_that_belongs_to_them(owned: Ow
     assert f"covers {checkpoint.size} entries" in report.fault.what
 
 
+def test_everything_taken_out(owned: Owned) -> None:
+    checkpoint = owned.checkpoint()
+    _cut(owned, 0)
+    report = owned.verify()
+    assert (report.fault, report.entries, report.rows, report.head) == (None, 0, 0, None)
+    assert not owned.verify(checkpoint).holds
+
+
 @pytest.fixture
 def earlier(owned: Owned, databases: Databases) -> Iterator[Owned]:
     """The store as it was after ten entries."""
@@ -380,13 +388,13 @@ def test_any_kept_row_deleted(owned: Owned, table: str) -> None:
     assert "missing" in report.fault.what  # type: ignore[union-attr]
 
 
-@pytest.mark.parametrize("tie", [9, 10_000, 0])
-def test_a_row_added_that_no_entry_knows(owned: Owned, tie: int) -> None:
+@pytest.mark.parametrize(("tie", "entry"), [(9, 9), (10_000, None), (0, None)])
+def test_a_row_added_that_no_entry_knows(owned: Owned, tie: int, entry: int | None) -> None:
     insert = "INSERT INTO submission_authors (submission_id, account_id, event_number) VALUES (?, ?, ?)"
     owned.execute((insert, ("a" * 32, "b" * 32, tie)))
     report = owned.verify()
+    assert _named(report) == (entry, "submission_authors")
     assert report.fault is not None
-    assert report.fault.table == "submission_authors"
     assert report.fault.row == f"submission_id {'a' * 32}, account_id {'b' * 32}"
 
 
@@ -441,6 +449,13 @@ def test_a_text_in_a_numbers_place(owned: Owned) -> None:
     assert _named(owned.verify())[0] == number
 
 
+@sqlite_alone
+def test_a_number_that_is_neither_false_nor_true(owned: Owned) -> None:
+    number = owned.value("SELECT min(event_number) FROM installations WHERE as_approved")
+    owned.execute("UPDATE installations SET as_approved = 2 WHERE as_approved = 1")
+    assert _named(owned.verify()) == (number, "installations")
+
+
 # --- the file
 
 
@@ -467,4 +482,10 @@ def test_a_file_that_is_no_store(tmp_path: Path) -> None:
     file.write_bytes(b"not a database at all" * 100)
     report = Owned(f"sqlite:///{file}").verify()
     assert report.fault is not None
-    assert "cannot be read" in report.fault.what
+    assert report.fault.sentence() == "the store: the store cannot be read: file is not a database"
+
+
+def test_an_address_of_no_database() -> None:
+    report = Owned("nonsense:///store.db").verify()
+    assert report.fault is not None
+    assert report.fault.what.startswith("the store cannot be read: ")
