@@ -68,6 +68,10 @@ def _finding(criterion: str, value: object, outcome: Outcome, limit: float = 2.0
         # what came of it weighs more than the value
         ([("gain_margin_min", None, "not_assessed"), ("gain_margin_min", 9.0, "met")], 0),
         ([("gain_margin_min", None, "not_assessed"), ("gain_margin_min", 1.9, "not_met")], 1),
+        # not met and without a value, as where a loop of the box is unstable
+        ([("disk_margin_min", 0.3, "not_met"), ("disk_margin_min", None, "not_met")], 1),
+        # of two that are the same, the first
+        ([("gain_margin_min", 2.5, "met"), ("gain_margin_min", 2.5, "met")], 0),
     ],
 )
 def test_the_worst_operating_point_is_the_one_that_is_shown(
@@ -87,6 +91,22 @@ def test_limits_that_differ_between_operating_points_are_held_each_against_its_o
     )
     (shown,) = approvability.worst_criteria(_at(store.submit().content, *findings).recomputations)
     assert shown.operating_point == "point 1"
+
+
+def test_a_share_of_a_small_limit_and_of_none_at_all(store: Store, loop: LoopView) -> None:
+    content = store.submit().content
+    for limits, values, worst in (((0.5, 1.0), (0.9, 1.0), 0), ((0.0, 0.0), (1.0, 2.0), 1)):
+        findings = [
+            _finding("overshoot_percent_max", value, "not_met", limit=limit)
+            for limit, value in zip(limits, values, strict=True)
+        ]
+        (shown,) = approvability.worst_criteria(_at(content, *findings).recomputations)
+        assert shown.operating_point == f"point {worst}"
+
+
+def test_two_people_approve_what_is_safety_related(store: Store) -> None:
+    store.add_model(store.register(safety_related=True))
+    assert approvability.approvals_needed(store.submit().content) == 2
 
 
 def test_the_worst_verdict_of_all_operating_points_counts(store: Store, loop: LoopView) -> None:
