@@ -18,6 +18,7 @@ from service.records.roles import CONSOLE
 from service.records.tables import collection
 from service.records.tables.columns import Base, Kept
 from service.records.tables.history import HistoryEvent
+from service.records.tables.loops import LoopRevision
 from service.records.tables.submissions import GainsComingIntoForce
 from service.records.views import LoopView
 from tests.databases import Databases, is_sqlite, opened, run, without_guards
@@ -102,6 +103,16 @@ def test_an_entry_tells_every_row_that_was_inserted_with_it(store: Store) -> Non
     counts = store.counts()
     assert told == {table: counts[table] for table in kept if counts[table]}
     assert set(told) == kept
+
+
+def test_bytes_of_a_row_stand_in_its_entry_by_their_sha256(store: Store, loop: LoopView) -> None:
+    with store.database.reading() as session:
+        found = select(HistoryEvent.canonical, LoopRevision.content).join(
+            LoopRevision, LoopRevision.event_number == HistoryEvent.number
+        )
+        canonical, content = session.execute(found).one()
+    (row,) = json.loads(canonical)["rows"]["loop_revisions"]
+    assert row["content"] == hashlib.sha256(content).hexdigest()
 
 
 def _is_kept(mapper: Any) -> bool:
