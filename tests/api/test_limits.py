@@ -96,6 +96,35 @@ ELSEWHERE = {"page_items_default", "password_characters_max", *LARGE, *SMALL}
 """Tried one by one below, in the tests of accounts, or no limit at all."""
 
 
+PUBLISHED = {
+    "body_bytes_max": 1_000_000,
+    "depth_max": 16,
+    "object_keys_max": 100,
+    "array_items_max": 10_000,
+    "values_max": 50_000,
+    "number_characters_max": 400,
+    "reason_characters_max": 4000,
+    "line_characters_max": 200,
+    "tag_characters_max": 60,
+    "password_characters_min": 15,
+    "password_characters_max": 128,
+    "gain_sets_max": 20,
+    "operating_points_max": 20,
+    "prepared_by_max": 20,
+    "deviations_max": 60,
+    "areas_max": 100,
+    "recorded_settings_max": 40,
+    "plant_order_max": 20,
+    "frequency_points_max": 2000,
+    "settling_band_percent_min": 0.1,
+    "settling_band_percent_max": 20.0,
+    "page_items_default": 50,
+    "page_items_max": 200,
+    "idempotency_key_characters_max": 200,
+}
+"""The interface: with another number, somebody's document that was taken until now is refused."""
+
+
 @pytest.fixture
 def limits(service: Service) -> dict[str, int]:
     answer = service.get("/v1/limits")
@@ -106,6 +135,10 @@ def limits(service: Service) -> dict[str, int]:
 
 def test_every_limit_is_tried(limits: dict[str, int]) -> None:
     assert set(limits) == set(SIZED) | ELSEWHERE
+
+
+def test_the_limits_are_those_that_people_rely_on(limits: dict[str, int]) -> None:
+    assert limits == PUBLISHED
 
 
 def test_limits_are_as_described(service: Service, limits: dict[str, int]) -> None:

@@ -21,6 +21,7 @@ from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import LoopRevision
 from service.records.tables.submissions import GainsComingIntoForce
 from service.records.views import LoopView
+from service.verification.verifier import verify
 from tests.databases import Databases, is_sqlite, opened, run, without_guards
 from tests.records.store import Store, gains, registration
 from tests.records.year import live
@@ -113,6 +114,18 @@ def test_bytes_of_a_row_stand_in_its_entry_by_their_sha256(store: Store, loop: L
         canonical, content = session.execute(found).one()
     (row,) = json.loads(canonical)["rows"]["loop_revisions"]
     assert row["content"] == hashlib.sha256(content).hexdigest()
+
+
+def test_the_verification_finds_every_row_as_it_was_recorded(store: Store, loop: LoopView) -> None:
+    _a_year(store, loop)
+    report = verify(store.url)
+    assert (report.fault, report.entries) == (None, len(store.events()))
+
+
+def test_leaves_are_the_digests_of_the_first_entries(store: Store) -> None:
+    with store.database.reading() as session:
+        found = history.leaves(session, 3)
+    assert found == [hashlib.sha256(b"\0" + raw).digest() for raw in _canonical(store)[:3]]
 
 
 def _is_kept(mapper: Any) -> bool:
