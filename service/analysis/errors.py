@@ -1,4 +1,4 @@
-"""What is wrong with a controller or a plant, and in which field."""
+"""What is wrong with a controller or a plant, and in which field; and what would be too much work."""
 
 from __future__ import annotations
 
@@ -14,3 +14,7 @@ class FieldError(ValueError):
         self.path = path
         self.detail = detail
         super().__init__(detail)
+
+
+class WorkBoundError(Exception):
+    """More work than the stated bound; what was asked for is not computed."""

@@ -7,9 +7,8 @@ from functools import cached_property
 
 import numpy as np
 
-from service.analysis.frequency import AxisResponse
 from service.analysis.loop import Complexes, Factors, OpenLoop, Reals
-from service.analysis.margins import Numbers, PeakSearch, Responses, Sensitivity, WorkBoundError
+from service.analysis.peaks import Numbers, Peak, Responses, Sensitivity
 from service.analysis.results import Noise, Quantity
 
 NUMERATOR_ALLOWANCE = 1.2
@@ -99,20 +98,15 @@ class ControlSensitivity(Sensitivity):
         return [high / abs(1.0 + value) for value in turned]
 
 
-def noise(axis: AxisResponse, controller: Factors) -> Noise:
-    """The figures of noise that follow from the axis alone; the loop is stable. `controller`: with its
-    filter.
+def noise(control: ControlSensitivity, peak: Peak | None) -> Noise:
+    """The figures of noise that follow from the axis alone; the loop is stable.
+
+    `peak`: the supremum of `control`, None where it was not found.
     """
-    quantity = ControlSensitivity(axis.loop, controller)
-    high = quantity.high_frequency()
-    worst: Quantity
-    if any(math.isinf(value) for value in quantity.ends()):
+    high = control.high_frequency()
+    worst: Quantity = None if peak is None else peak.value
+    if any(math.isinf(value) for value in control.ends()):
         worst = "unbounded"
-    else:
-        try:
-            worst = PeakSearch(axis).peaks([quantity])[0].value
-        except WorkBoundError:
-            worst = None
     return Noise(
         output_gain_high_frequency="unbounded" if math.isinf(high) else high,
         max_control_sensitivity=worst,

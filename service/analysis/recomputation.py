@@ -12,13 +12,14 @@ from service.analysis import codes
 from service.analysis.controller import Controller, Scan
 from service.analysis.curves import curves
 from service.analysis.equivalents import equivalent_gains
-from service.analysis.errors import FieldError
+from service.analysis.errors import FieldError, WorkBoundError
 from service.analysis.facts import facts
 from service.analysis.frequency import AxisResponse
 from service.analysis.loop import EPSILON, ClosedLoopParts, OpenLoop, form_loop
-from service.analysis.margins import WorkBoundError, crossovers, delay_margin, margins, told
+from service.analysis.margins import crossovers, delay_margin, margins, told
 from service.analysis.measured_response import count_by_points
-from service.analysis.noise import noise
+from service.analysis.noise import ControlSensitivity, noise
+from service.analysis.peaks import Peak, Peaks
 from service.analysis.plant import FrequencyResponse, PlantModel, Ranges
 from service.analysis.realisation import StateSpace, realise
 from service.analysis.responses import Responses, respond
@@ -164,10 +165,14 @@ def _continuous(
         )
         return analysis, curves(None, axis, parts.in_rad_s, unit) if with_curves else None
     notes: list[str] = []
+    control = ControlSensitivity(parts.loop, parts.filtered_controller)
     found_margins: Margins | None = None
+    worst_control: Peak | None = None
     try:
+        peaks = Peaks.of(axis, control)
         delay_margin_s = told(lambda delay: delay / unit, delay_margin(axis))
-        found_margins = margins(axis, listed, parts.in_rad_s, delay_margin_s)
+        found_margins = margins(axis, listed, peaks, parts.in_rad_s, delay_margin_s)
+        worst_control = peaks.control
     except WorkBoundError:
         notes.append(codes.MARGINS_TOO_MUCH_WORK)
     responses = None
@@ -187,7 +192,7 @@ def _continuous(
         margins=_finite(found_margins, notes),
         setpoint_step=_finite(setpoint, notes),
         load_step=_finite(load, notes),
-        noise=_finite(noise(axis, parts.filtered_controller), notes),
+        noise=_finite(noise(control, worst_control), notes),
         notes=tuple(notes),
     )
     return analysis, curves(responses, axis, parts.in_rad_s, unit) if with_curves else None

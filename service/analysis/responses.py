@@ -24,8 +24,8 @@ import numpy as np
 
 from service.analysis import chebyshev
 from service.analysis.chebyshev import NODES
+from service.analysis.errors import WorkBoundError
 from service.analysis.loop import ClosedLoopParts, Complexes, Reals
-from service.analysis.margins import WorkBoundError
 from service.analysis.realisation import StateSpace
 from service.analysis.roots import CharacteristicRoots
 from service.analysis.tails import Tail

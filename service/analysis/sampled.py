@@ -10,11 +10,13 @@ import numpy as np
 from service.analysis import codes
 from service.analysis.controller import Scan
 from service.analysis.curves import curves
+from service.analysis.errors import WorkBoundError
 from service.analysis.frequency import AxisResponse
 from service.analysis.loop import ClosedLoopParts, Complexes
-from service.analysis.margins import WorkBoundError, crossovers, margins
-from service.analysis.noise import noise
+from service.analysis.margins import crossovers, margins
+from service.analysis.noise import ControlSensitivity, noise
 from service.analysis.nyquist import count_right_of_axis
+from service.analysis.peaks import Peak, Peaks
 from service.analysis.results import Analysis, Curves, DominantRoot, Noise, Quantity, Stability
 from service.analysis.roots import CharacteristicRoots
 from service.analysis.sampled_delay import sampled_delay_margin_s
@@ -59,11 +61,15 @@ def analyse_at_scans(
     if stability.verdict != "stable":
         return analysis, curves(None, axis, sampled.rad_s, parts.unit_rad_s) if with_curves else None
     notes: list[str] = []
+    control = ControlSensitivity(sampled.loop, sampled.controller)
+    worst_control: Peak | None = None
     try:
         delay_margin_s = sampled_delay_margin_s(sampled, axis)
         if delay_margin_s is None:
             notes.append(codes.DELAY_MARGIN)
-        analysis = replace(analysis, margins=margins(axis, listed, sampled.rad_s, delay_margin_s))
+        peaks = Peaks.of(axis, control)
+        analysis = replace(analysis, margins=margins(axis, listed, peaks, sampled.rad_s, delay_margin_s))
+        worst_control = peaks.control
     except WorkBoundError:
         notes.append(codes.MARGINS_TOO_MUCH_WORK)
     states = sampled_states(scanned, sampled.plant, with_spared_noise=True)
@@ -80,7 +86,7 @@ def analyse_at_scans(
         analysis,
         setpoint_step=setpoint,
         load_step=load,
-        noise=_noise(sampled, axis, found),
+        noise=_noise(sampled, noise(control, worst_control), found),
         notes=tuple(notes),
     )
     return analysis, curves(responses, axis, sampled.rad_s, parts.unit_rad_s) if with_curves else None
@@ -137,8 +143,7 @@ def _dominant_roots(sampled: SampledLoop, roots: CharacteristicRoots) -> tuple[D
     return tuple(dominant_root(complex(root)) for root in s)
 
 
-def _noise(sampled: SampledLoop, axis: AxisResponse, found: Scans) -> Noise:
-    figures = noise(axis, sampled.controller)
+def _noise(sampled: SampledLoop, figures: Noise, found: Scans) -> Noise:
     if not found.complete:
         return figures
     pulse, spared = found.output[:, NOISE_PULSE], found.output[:, SPARED_PULSE]

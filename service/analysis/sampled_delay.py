@@ -14,7 +14,6 @@ import cmath
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
-from functools import cached_property
 
 import numpy as np
 import numpy.typing as npt
@@ -27,15 +26,10 @@ from service.analysis.sampled_loop import NotFactoredError, SampledLoop, form_sa
 from service.analysis.sampled_roots import compressed, points_for, resolved
 from service.analysis.sampled_states import sampled_states
 from service.analysis.scan import SampledPlant
-
-DIVISIONS = (0.0, 0.2, 0.4, 0.6, 0.8)
-"""Fractions of a scan at which gain crossovers are looked for, beside the loop's own."""
+from service.analysis.unit_circle import Divided, OnCircle
 
 FEW_HELD = 24
 """So many past outputs are carried each for itself, more by points."""
-
-CLEARLY_BELOW = 0.5
-"""Where abs L is below this on the circle there is no root upon or outside it."""
 
 MOST_POINTS = 60
 
@@ -76,7 +70,7 @@ DIVIDED, ANGLE_SHARE, ANGLE_STEP = 32, 0.06, 0.03
 
 def sampled_delay_margin_s(sampled: SampledLoop, axis: AxisResponse) -> Quantity:
     """The delay margin of a stable loop in seconds; None where counting does not confirm what was found."""
-    divided = _Divided.of(sampled, axis)
+    divided = Divided.of(sampled, axis)
     starts = divided.starts(axis)
     if not starts:
         # abs L stays below 1 however the dead time divides a scan
@@ -126,7 +120,7 @@ def _first_to_leave(sampled: SampledLoop, reach: float, touch: _Touch) -> bool:
     if roots is None:
         return False
     by_angle, by_scans = (
-        complex(slope[0]) for slope in _OnCircle(sampled, np.array([touch.angle])).slopes(plant)
+        complex(slope[0]) for slope in OnCircle(sampled, np.array([touch.angle])).slopes(plant)
     )
     # how ωh moves with the delay; abs z = e^(−Im ωh)
     moves = -by_scans / by_angle
@@ -232,48 +226,6 @@ def _loop_with(sampled: SampledLoop, delay: float) -> OpenLoop | None:
         return None
 
 
-@dataclass(frozen=True, eq=False)
-class _Divided:
-    """abs L at angles ωh of the axis and at the Nyquist frequency, (m,), for dead times that divide a scan in
-    several ways, (divisions, m).
-    """
-
-    angles: Reals
-    magnitude: Reals
-
-    @staticmethod
-    def of(sampled: SampledLoop, axis: AxisResponse) -> _Divided:
-        angles = np.append(2.0 * np.arctan(axis.omega), math.pi)
-        scan, here = sampled.scanned, _OnCircle(sampled, angles)
-        delays = [(share - sampled.plant.fraction) % 1.0 * scan.interval for share in DIVISIONS]
-        return _Divided(angles, np.abs([here.value(plant) for plant in scan.samples(delays)]))
-
-    def reach(self) -> float:
-        """The largest angle at which abs L is not clearly below 1 at some division; 0 where there is none."""
-        return float(self.angles[(self.magnitude >= CLEARLY_BELOW).any(axis=0)].max(initial=0.0))
-
-    def starts(self, axis: AxisResponse) -> list[float]:
-        """Angles near every gain crossover at any division."""
-        own: list[float] = (2.0 * np.arctan(axis.gain_crossovers)).tolist()
-        # far below the scan's frequency the division of a scan moves abs L by no more than about the angle's
-        # square
-        near = np.abs(axis.log_response.real) < 0.2 + 2.0 * self.angles[:-1] ** 2
-        near[:-1] |= near[1:]
-        near[1:] |= near[:-1]
-        near = np.append(near, True)
-        chosen, above = self.angles[near], self.magnitude[:, near] > 1
-        crossed = (above[:, :-1] != above[:, 1:]).any(axis=0)
-        more = [
-            0.5 * (low + high)
-            for low, high in zip(chosen[:-1][crossed].tolist(), chosen[1:][crossed].tolist(), strict=True)
-            if not any(low <= angle <= high for angle in own)
-        ]
-        at_nyquist = above[:, -1]
-        if at_nyquist.any() and not at_nyquist.all():
-            more.append(math.pi)
-        return own + more
-
-
 def _cells(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator[tuple[float, float]]:
     """Least and largest extra delay of every step of the grid in which 1 + L turns about a cell, the least
     first; up to a little beyond `limit`, or through a whole turn of the lowest crossover.
@@ -284,7 +236,7 @@ def _cells(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator
     interval, plant = sampled.scanned.interval, sampled.plant
     angles, shares = _angles(lowest), np.array(_shares(sampled))
     delays = (shares - plant.fraction) % 1.0 * interval
-    here = _OnCircle(sampled, angles)
+    here = OnCircle(sampled, angles)
     divided = [replace(each, whole_scans=0) for each in sampled.scanned.samples(delays.tolist())]
     values = np.array([here.value(each) for each in divided])
     left = _cells_near_one(np.abs(values))
@@ -365,7 +317,7 @@ def _wrapped(angle: Reals) -> Reals:
 def _solved(sampled: SampledLoop, angle: float) -> _Touch | None:
     """The solution with the least extra delay > 0 near the angle; None where none is found."""
     scanned = sampled.scanned
-    here = _OnCircle(sampled, np.array([angle])).value(sampled.plant)
+    here = OnCircle(sampled, np.array([angle])).value(sampled.plant)
     phase = (cmath.phase(complex(here[0])) + math.pi) % (2.0 * math.pi)
     for turns in (0, 1):
         start = (phase + 2.0 * math.pi * turns) / angle
@@ -380,7 +332,7 @@ def _newton(sampled: SampledLoop, angle: float, scans: float) -> tuple[float, fl
     interval = sampled.scanned.interval
     for _ in range(STEPS):
         plant = sampled.scanned.sample(max(scans, 0.0) * interval)
-        at = _OnCircle(sampled, np.array([angle]))
+        at = OnCircle(sampled, np.array([angle]))
         residual = complex(np.log(-at.value(plant)[0]))
         by_angle, by_scans = (complex(slope[0]) for slope in at.slopes(plant))
         determinant = by_angle.real * by_scans.imag - by_angle.imag * by_scans.real
@@ -433,72 +385,10 @@ def _phase_at_crossover(sampled: SampledLoop, angle: float, scans: float) -> tup
     """(ωh, phase beyond −180°) where abs L = 1 with so much extra dead time; None where it is not found."""
     plant = sampled.scanned.sample(scans * sampled.scanned.interval)
     for _ in range(STEPS):
-        at = _OnCircle(sampled, np.array([angle]))
+        at = OnCircle(sampled, np.array([angle]))
         residual = complex(np.log(-at.value(plant)[0]))
         step = residual.real / float(at.slopes(plant)[0][0].real)
         if abs(step) <= 1e-14:
             return angle, residual.imag
         angle = min(max(angle - step, 0.7 * angle), 1.3 * angle, math.pi)
     return None
-
-
-@dataclass(frozen=True, eq=False)
-class _OnCircle:
-    """L on the unit circle at angles ωh of shape (m,), straight from the states of a plant over one scan.
-
-    What plants with other delays have in common is computed once.
-    """
-
-    sampled: SampledLoop
-    angle: Reals
-
-    def value(self, plant: SampledPlant) -> Complexes:
-        """L with this plant, (m,)."""
-        return np.asarray(self._controller * np.exp(-1j * plant.whole_scans * self.angle) * self._of(plant))
-
-    def slopes(self, plant: SampledPlant) -> tuple[Complexes, Complexes]:
-        """(d ln L/d(ωh), d ln L/d(δ/h)), (m,) each."""
-        controller, w, z = self.sampled.controller, self._w, self._z
-        of_controller = (1.0 / (w[:, None] - controller.zeros)).sum(1)
-        of_controller = of_controller - (1.0 / (w[:, None] - controller.poles)).sum(1)
-        of_controller = of_controller * (0.5j * (1.0 - w * w))
-        own = self._of(plant)
-        forced = plant.gamma0 + plant.gamma1 / z[:, None]
-        of_plant = -(self._row[:, None, :] @ self._resolvent @ forced[..., None])[:, 0, 0]
-        of_plant = of_plant - (self._row @ plant.gamma1 + plant.d) / z**2
-        by_angle = of_controller + of_plant * 1j * z / own - 1j * plant.whole_scans
-        by_scans = self._row @ plant.gamma0_slope * (1.0 / z - 1.0) / own
-        return np.asarray(by_angle), np.asarray(by_scans)
-
-    def _of(self, plant: SampledPlant) -> Complexes:
-        """The plant but for its whole scans of dead time, (m,)."""
-        row, z = self._row, self._z
-        return np.asarray(row @ plant.gamma0 + (row @ plant.gamma1 + plant.d) / z)
-
-    @cached_property
-    def _controller(self) -> Complexes:
-        """Controller, filter and direction, (m,)."""
-        controller, w = self.sampled.controller, self._w
-        logs = np.log(w[:, None] - controller.zeros).sum(1) - np.log(w[:, None] - controller.poles).sum(1)
-        sign = controller.sign * self.sampled.scanned.parts.direction
-        return np.asarray(sign * np.exp(logs + controller.log_gain))
-
-    @cached_property
-    def _w(self) -> Complexes:
-        return np.asarray(1j * np.tan(0.5 * self.angle))
-
-    @cached_property
-    def _z(self) -> Complexes:
-        return np.asarray(np.exp(1j * self.angle))
-
-    @cached_property
-    def _resolvent(self) -> Complexes:
-        """(z − Φ)⁻¹, (m, n, n)."""
-        # z − 1 without the digits that z loses near 1
-        less_one = np.expm1(1j * self.angle)[:, None, None] * np.eye(len(self.sampled.plant.c))
-        return np.asarray(np.linalg.inv(less_one - self.sampled.plant.phi_less_one))
-
-    @cached_property
-    def _row(self) -> Complexes:
-        """c·(z − Φ)⁻¹, (m, n)."""
-        return np.asarray(self.sampled.plant.c @ self._resolvent)

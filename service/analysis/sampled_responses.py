@@ -12,8 +12,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from service.analysis import chebyshev
+from service.analysis.errors import WorkBoundError
 from service.analysis.loop import Reals
-from service.analysis.margins import WorkBoundError
 from service.analysis.realisation import realise
 from service.analysis.responses import Responses, divided, final_values
 from service.analysis.sampled_states import (
