@@ -78,12 +78,13 @@ class Peaks:
         """
         loop, search = axis.loop, PeakSearch(axis)
         own = [Sensitivity(loop), ComplementarySensitivity(loop), DiskSensitivity(loop)]
-        if any(math.isinf(value) for value in control.ends()):
-            return Peaks(*search.peaks(own), None)
+        unbounded = any(math.isinf(value) for value in control.ends())
         try:
-            return Peaks(*search.peaks([*own, control]))
+            found = search.peaks(own if unbounded else [*own, control])
         except WorkBoundError:
-            return Peaks(*search.peaks(own), None)
+            found = search.peaks(own)
+        sensitivity, complementary, disk, *more = found
+        return Peaks(sensitivity, complementary, disk, more[0] if more else None)
 
 
 class Sensitivity:
