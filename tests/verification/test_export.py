@@ -48,6 +48,13 @@ def test_an_export_says_what_the_store_says(owned: Owned, lines: Lines) -> None:
     assert (export.notes, export.checkpoint_size) == ((), None)
 
 
+def test_an_entry_that_is_missing_is_named(lines: Lines) -> None:
+    del lines[4]
+    fault = verified(lines).fault
+    assert fault is not None
+    assert fault.sentence() == "entry 5: it is missing; entry 6 stands in its place"
+
+
 def test_an_export_of_nothing_has_no_head() -> None:
     report = verify_export([])
     assert (report.fault, report.entries, report.head) == (None, 0, None)

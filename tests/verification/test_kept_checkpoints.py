@@ -109,6 +109,13 @@ def test_a_given_checkpoint_and_a_given_key_are_told(owned: Owned) -> None:
     )
 
 
+def test_a_given_checkpoint_without_a_signature_covers_nothing_by_one(owned: Owned) -> None:
+    before = owned.verify().signatures
+    *told, given, of_key, cover = owned.verify(owned.checkpoint()).signatures
+    assert given == "The checkpoint that was given has no signature"
+    assert (*told, of_key, cover) == before
+
+
 def test_an_export_is_held_to_the_same(owned: Owned) -> None:
     store = Store(owned.url)
     with store.database.reading() as session:

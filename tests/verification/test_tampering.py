@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Iterator
+from dataclasses import replace
 from datetime import datetime
 from pathlib import Path
 from typing import Any
@@ -196,6 +197,12 @@ def test_everything_rewritten_from_an_entry_on(owned: Owned) -> None:
     rewrite_with_checkpoints_from(owned, 2, _by_somebody_else)
     assert owned.verify().holds
     report = owned.verify(checkpoint)
+    assert report.fault is not None
+    assert "rewritten" in report.fault.what
+
+
+def test_a_checkpoint_with_another_last_entry(owned: Owned) -> None:
+    report = owned.verify(replace(owned.checkpoint(), head="0" * 64))
     assert report.fault is not None
     assert "rewritten" in report.fault.what
 
