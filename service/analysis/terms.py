@@ -232,7 +232,10 @@ def _with_zeros(feedback: ParallelTerms, setpoint: ParallelTerms) -> ControllerT
         if integrates
         else quadratic_roots(0.0, square, feedback.kp)
     )
-    leading = next(value for value in (square, linear, feedback.ki_per_s) if value != 0)
+    leading = next((value for value in (square, linear, feedback.ki_per_s) if value != 0), 0.0)
+    if leading == 0:
+        # a controller without terms is refused where it is entered: here one has fallen below float64
+        raise OverflowError("the controller's terms are too small for float64")
     without = ParallelTerms(feedback.kp, feedback.ki_per_s, 0.0, feedback.tf_s)
     return ControllerTerms(
         feedback,

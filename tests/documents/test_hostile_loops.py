@@ -42,6 +42,14 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
     "a scan for ever": (LAG, scanned(1.7e308)),
     "a scan for ever, trapezoidal": (LAG, scanned(1.7e308, method="trapezoidal")),
     "a scan in no time": (LAG, scanned(1e-20)),
+    "an integral time of which float64 has no reciprocal": (
+        LAG,
+        {
+            "form": "parallel",
+            "action": "reverse",
+            "integral": {"value": 1.4248440330120615e308, "unit": "minutes"},
+        },
+    ),
     "a delay of very many scans": (LAG, scanned(1.0, 1e300)),
     "a scan for longer than its plant can be told": (
         {"kind": "integrating", "gain_per_s": 0.4, "lag_s": 0.0, "dead_time_s": 0.043},
