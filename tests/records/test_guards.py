@@ -7,7 +7,7 @@ from sqlalchemy.exc import DBAPIError
 
 from service.records.views import LoopView
 from tests.databases import is_sqlite, opened, run
-from tests.records.store import Store
+from tests.records.store import WIDER, Store, gains
 
 OTHER = "f" * 32
 
@@ -67,3 +67,19 @@ def test_a_kept_row_is_not_replaced_by_one_that_has_any_of_its_keys(
         with opened(store.url) as connection:
             run(connection, statement)
         assert store.counts()["loops"] == 2
+
+
+def test_an_author_decides_on_what_others_have_made(store: Store, loop: LoopView) -> None:
+    store.submit("colleague")
+    theirs = store.submit("submitter", controller=gains(1.1))
+    store.approve(theirs, "colleague")
+    assert store.read(theirs).state == "approved"
+
+
+def test_whoever_proposed_a_change_confirms_one_that_another_proposed(store: Store, loop: LoopView) -> None:
+    store.propose(loop, "colleague")
+    other = store.register(tag="LIC-7")
+    assert (
+        store.decide_change(store.propose(other, tag="LIC-7", pv=WIDER), person="colleague").state
+        == "confirmed"
+    )

@@ -200,6 +200,7 @@ def test_the_database_refuses_to_change_delete_or_replace_what_is_kept(lived_in:
     "statement",
     [
         "UPDATE history_head SET size = size - 1",
+        "UPDATE history_head SET size = size + 1, id = 2",
         "UPDATE history_head SET digest = '0'",
         "DELETE FROM history_head",
     ],
@@ -213,6 +214,9 @@ def test_the_head_is_not_replaced(store: Store) -> None:
     statement = _replacing(store.url, "history_head")
     with opened(store.url) as connection, pytest.raises(DBAPIError, match="the head"):
         run(connection, statement)
+    if not is_sqlite(store.url):
+        with opened(store.url) as connection, pytest.raises(DBAPIError, match="append-only"):
+            run(connection, "TRUNCATE history_head")
 
 
 def test_every_kept_table_has_its_guards(store: Store) -> None:

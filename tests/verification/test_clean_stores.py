@@ -5,7 +5,8 @@ from __future__ import annotations
 import ast
 import sqlite3
 import subprocess
-from datetime import timedelta
+import time
+from datetime import datetime, timedelta, timezone
 from pathlib import Path
 
 import pytest
@@ -14,11 +15,11 @@ from sqlalchemy.exc import DBAPIError
 
 from service.records import accounts, history
 from service.records.roles import CONSOLE
-from service.verification.store import EVENTS, count, opened
+from service.verification.store import EVENTS, as_time, count, opened
 from service.verification.verifier import Checkpoint
 from tests.clusters import program
 from tests.databases import Databases, file_of, is_sqlite
-from tests.records.store import Store
+from tests.records.store import Store, gains
 from tests.verification.conftest import Owned
 
 
@@ -100,6 +101,35 @@ def test_a_clock_that_was_set_back_is_a_note_and_no_fault(owned: Owned) -> None:
     assert report.holds
     assert len(report.notes) == 1
     assert "set back" in report.notes[0]
+
+
+def test_a_text_that_looks_like_a_time_is_a_text(owned: Owned) -> None:
+    store = Store(owned.url)
+    store.submit(reason="2026-03-02", controller=gains(1.3))
+    store.database.close()
+    assert owned.verify().holds
+
+
+@pytest.mark.parametrize(
+    ("stored", "told"),
+    [
+        (datetime(2026, 3, 2, 6, 0), "2026-03-02T06:00:00Z"),
+        (datetime(2026, 3, 2, 11, 30, tzinfo=timezone(timedelta(hours=5.5))), "2026-03-02T06:00:00Z"),
+        ("2026-03-02 06:00:00.000001", "2026-03-02T06:00:00.000001Z"),
+        ("yesterday", "yesterday"),
+        (7, 7),
+        (None, None),
+    ],
+)
+def test_a_stored_time_is_told_in_utc_wherever_the_verification_runs(
+    monkeypatch: pytest.MonkeyPatch, stored: object, told: object
+) -> None:
+    monkeypatch.setenv("TZ", "Asia/Kolkata")
+    time.tzset()
+    found = as_time(stored)
+    monkeypatch.undo()
+    time.tzset()
+    assert found == told
 
 
 def test_a_checkpoint_is_read_as_the_service_gives_it_out() -> None:
