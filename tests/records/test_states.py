@@ -18,11 +18,11 @@ def test_states_and_gains_in_force_are_numbered_without_gaps(store: Store, loop:
         store.submit(kind="emergency", controller=gains(proportional))
     with store.database.reading() as session:
         rows = session.query(SubmissionState).filter_by(submission_id=first.id)
-        assert {row.ordinal: row.state for row in rows} == {
-            1: "awaiting_review",
-            2: "approved",
-            3: "in_force",
-            4: "superseded",
+        assert {row.ordinal: (row.action, row.state) for row in rows} == {
+            1: ("submit", "awaiting_review"),
+            2: ("approve", "approved"),
+            3: ("install", "in_force"),
+            4: ("supersede", "superseded"),
         }
         in_force = session.query(GainsComingIntoForce).filter_by(loop_id=loop.id)
         numbers = {row.submission_id: row.ordinal for row in in_force}
@@ -48,6 +48,26 @@ def test_what_runs_is_what_came_into_force_last_and_what_ran_before_has_run(
     assert [row.id for row in runs] == [present.id]
 
 
+def test_the_submissions_of_a_loop_are_told_each_in_its_last_state_the_earliest_first(
+    store: Store, loop: LoopView
+) -> None:
+    store.add_model(store.register(tag="LIC-7"))
+    first = store.submit()
+    store.approve(first)
+    store.install(first)
+    store.submit(loop={"site": "North", "tag": "LIC-7"})
+    second = store.submit(kind="emergency", controller=gains(1.1))
+    third = store.submit(controller=gains(1.2))
+    with store.database.reading() as session:
+        found = states.of_loop(session, loop.id, store.clock())
+        assert list(found.items()) == [
+            (first.id, "superseded"),
+            (second.id, "installed_awaiting_review"),
+            (third.id, "awaiting_review"),
+        ]
+        assert {each: states.stored(session, each).state for each in found} == found
+
+
 def test_of_two_loops_each_has_gains_of_its_own_that_run(store: Store, loop: LoopView) -> None:
     other = store.register(tag="LIC-7")
     store.add_model(other)
@@ -58,6 +78,10 @@ def test_of_two_loops_each_has_gains_of_its_own_that_run(store: Store, loop: Loo
     ]
     with store.database.reading() as session:
         assert {row.id for row in session.query(Submission).filter(states.runs())} == {mine.id, theirs[-1].id}
+        for each, submission in ((loop, mine), (other, theirs[-1])):
+            running = states.running(session, each.id)
+            assert running is not None
+            assert running.submission_id == submission.id
         assert not states.has_run(session, other.id, mine.id)
 
 
