@@ -104,9 +104,10 @@ def test_a_share_of_a_small_limit_and_of_none_at_all(store: Store, loop: LoopVie
         assert shown.operating_point == f"point {worst}"
 
 
-def test_two_people_approve_what_is_safety_related(store: Store) -> None:
-    store.add_model(store.register(safety_related=True))
-    assert approvability.approvals_needed(store.submit().content) == 2
+@pytest.mark.parametrize(("safety_related", "people"), [(False, 1), (True, 2)])
+def test_two_people_approve_what_is_safety_related(store: Store, safety_related: bool, people: int) -> None:
+    store.add_model(store.register(safety_related=safety_related))
+    assert approvability.approvals_needed(store.submit().content) == people
 
 
 def test_the_worst_verdict_of_all_operating_points_counts(store: Store, loop: LoopView) -> None:
