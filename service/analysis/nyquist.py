@@ -24,6 +24,10 @@ ROUNDING_FACTOR = 64.0
 """How many times the rounding of one term the distance to -1 must exceed to be told from 0."""
 
 
+MOST_ROOTS = 10**10
+"""The angles of so many roots still add up to a whole number of turns within float64's rounding."""
+
+
 @dataclass(frozen=True, slots=True)
 class Count:
     """Roots right of the axis; None with the reason where float64 cannot tell."""
@@ -50,6 +54,8 @@ def count_right_of_axis(axis: AxisResponse) -> Count:
         return Count(None, reason="a root lies on the axis within the precision of the numbers")
     degree = len(loop.poles) if loop.dead_time > 0 else max(len(loop.poles), len(loop.zeros))
     degree += loop.all_pass
+    if degree > MOST_ROOTS:
+        return Count(None, reason="there are more roots than float64 can count by their angles")
     turned = _argument_change(axis, crossovers)
     roots = 0.5 * degree - turned / math.pi
     if not math.isfinite(roots):

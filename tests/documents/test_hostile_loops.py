@@ -8,10 +8,11 @@ from typing import Any
 import numpy as np
 import pytest
 
+from service.documents.canonical import canonical_bytes
 from service.documents.errors import InvalidDocument
 from service.documents.reading import read
 from service.documents.recomputations import RecomputationRequest, answer
-from service.documents.writing import to_bytes
+from service.documents.writing import plain, to_bytes
 from tests.documents.worst_requests import WORST, WorstRequest
 
 PI = {
@@ -48,6 +49,17 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
             "form": "parallel",
             "action": "reverse",
             "integral": {"value": 1.4248440330120615e308, "unit": "minutes"},
+        },
+    ),
+    "a delay of more scans than there are whole numbers in float64": (
+        {"kind": "integrating", "gain_per_s": 0.5, "dead_time_s": 3.0},
+        {
+            "form": "two_zeros",
+            "action": "direct",
+            "gain": 0.2,
+            "zeros_rad_s": [[-75.0, 0.06], [-75.0, -0.06]],
+            "derivative_filter": {"value": 0.003, "unit": "seconds"},
+            "scan": {"interval_s": 158.0, "output_delay_s": 1e300},
         },
     ),
     "a delay of very many scans": (LAG, scanned(1.0, 1e300)),
@@ -161,6 +173,8 @@ def test_it_is_answered_or_refused_by_name(name: str) -> None:
         assert places
     else:
         assert json.loads(to_bytes(found))["verdict"] == found.verdict
+        # what is answered can be kept too: the canonical form has no whole number above 2^53
+        assert canonical_bytes(plain(found))
 
 
 @pytest.mark.parametrize("worst", WORST, ids=lambda worst: worst.name)
