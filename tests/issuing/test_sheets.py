@@ -129,8 +129,25 @@ def test_each_signature_has_a_checkpoint_and_the_sheet_shows_the_latest(office: 
     decisions = office.store.read(submission).decisions
     assert [each.checkpoint for each in decisions] == [first.checkpoint, second.checkpoint]
     assert second.checkpoint is not None
+    for told in ("ApprovedbyReviewer", "ApprovalrevokedbySecond"):
+        assert told in text_in(office.kept(submission))
     assert second.checkpoint.digest in text_in(office.kept(submission))
     assert json.loads(checkpoint_in(office.kept(submission)))["size"] == second.checkpoint.size
+
+
+@on_sqlite
+def test_the_responses_of_the_gains_in_force_stand_beside_those_that_are_asked_for(office: Office) -> None:
+    first = office.store.submit()
+    office.sign(first)
+    office.store.install(first)
+    later = office.store.submit(controller=gains(1.2))
+    with office.store.database.reading() as session:
+        before, after = (
+            sheets.content(session, office.store.actor("auditor"), office.store.read(each)).assessments[0]
+            for each in (first, later)
+        )
+    assert [each.earlier is None for each in before.responses] == [True, True]
+    assert [each.earlier is None for each in after.responses] == [False, False]
 
 
 @on_sqlite

@@ -121,6 +121,8 @@ def test_a_change_of_the_key_is_followed_from_the_old_one_to_the_new(signed: Sto
     before = checkpoint_of(signed, FIRST)
     change(signed, FIRST, SECOND)
     change(signed, SECOND, THIRD)
+    kind, actor, content = signed.last_entry()
+    assert (kind, actor, content["reason"]) == ("signing_key_changed", "console", "yearly")
     after = checkpoint_of(signed, THIRD)
     for raw in (before, after):
         assert what_breaks(signed, raw, public_text(FIRST)) is None
