@@ -12,10 +12,11 @@ from argon2.exceptions import InvalidHashError, VerificationError
 from argon2.profiles import RFC_9106_LOW_MEMORY
 from sqlalchemy.orm import Session
 
+from service.documents import limits
 from service.documents.errors import FieldProblem
 
 CHARACTERS_MIN = 15
-CHARACTERS_MAX = 128
+CHARACTERS_MAX = limits.PASSWORD_CHARACTERS_MAX
 """OWASP ASVS 5.0, 6.2.1 and 6.2.9: length alone, no rules on composition."""
 
 

@@ -418,3 +418,7 @@ def test_a_key_is_used_once(store: Store) -> None:
         idempotency.keep(session, store.actor("submitter"), "key", ANSWER, store.clock())
         with pytest.raises(IdempotencyKeyReused):
             idempotency.keep(session, store.actor("submitter"), "key", ANSWER, store.clock())
+
+
+def test_a_new_account_shows_its_password_to_nobody() -> None:
+    assert "a horse of the battery" not in repr(_new(password="a horse of the battery"))

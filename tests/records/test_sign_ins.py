@@ -107,6 +107,13 @@ def test_a_session_holds_to_the_last_moment_of_its_limits(store: Store) -> None:
             sign_ins.resume(session, started.secret, started.ends_at + timedelta(seconds=1))
 
 
+def test_a_session_that_nobody_uses_is_over_after_half_an_hour(store: Store) -> None:
+    started = sign_ins.sign_in(store.database, "reviewer", password_of("reviewer"), HERE)
+    store.clock.forward(minutes=30, seconds=1)
+    with store.database.reading() as session, pytest.raises(NotAuthenticated, match="is over"):
+        sign_ins.resume(session, started.secret, store.clock())
+
+
 def test_a_password_longer_than_any_is_wrong(store: Store) -> None:
     """Four code points may compose to one character; more than four times as many make no password."""
     long = "x" * (4 * passwords.CHARACTERS_MAX + 1)
