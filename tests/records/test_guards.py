@@ -76,6 +76,13 @@ def test_an_author_decides_on_what_others_have_made(store: Store, loop: LoopView
     assert store.read(theirs).state == "approved"
 
 
+def test_authors_withdraw_what_is_their_own(store: Store, loop: LoopView) -> None:
+    submission, change = store.submit("colleague"), store.propose(loop, "colleague")
+    store.decide(submission, "withdraw", "colleague")
+    assert store.read(submission).state == "withdrawn"
+    assert store.decide_change(change, "withdraw", "colleague").state == "withdrawn"
+
+
 def test_whoever_proposed_a_change_confirms_one_that_another_proposed(store: Store, loop: LoopView) -> None:
     store.propose(loop, "colleague")
     other = store.register(tag="LIC-7")
