@@ -14,7 +14,6 @@ MAX_STEPS = 200
 NEWTON_DONE = 1e-9
 """A Newton step this small, relatively, leaves an error of its square, which is below float64."""
 
-
 FULL = 4e-16
 """A place to float64, relatively."""
 

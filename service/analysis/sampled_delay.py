@@ -2,10 +2,10 @@
 
 More dead time is not just more phase here: where it divides a scan the sampled plant itself changes. So the
 condition 1 + L(e^(jωh), δ) = 0 is one on frequency and extra dead time together. Where plant and gain
-crossovers are slow against the scan it is solved by Newton from each crossover, and the least solution is
-confirmed by counting roots on both sides. Elsewhere a crossover may meet −1 several times within a scan, and
-a direct path comes a scan later at once: there the steps in which a root may leave are found by the turns of
-1 + L about the cells of a grid over both, and the first that does by counting about them.
+crossovers are slow against the scan it is solved by Newton from each crossover. Elsewhere a crossover may
+meet −1 several times within a scan, and a direct path comes a scan later at once: there the steps in which a
+root may leave are found by the turns of 1 + L about the cells of a grid over both. The least solution is
+confirmed by the eigenvalues at it, and where they do not tell by counting roots on both sides.
 """
 
 from __future__ import annotations
@@ -32,6 +32,7 @@ FEW_HELD = 24
 """So many past outputs are carried each for itself, more by points."""
 
 MOST_POINTS = 60
+"""Work bound: with more points than this roots are counted instead."""
 
 CLEARLY = 1e-6
 """A root is clearly inside the circle, and clearly leaves it, by this share of 1."""
