@@ -155,15 +155,14 @@ def _least_on_grid(sampled: SampledLoop, reach: float, lowest: float, touching: 
     them.
     """
     interval = sampled.scanned.interval
-    limit = touching[0].delay if touching else None
+    first = touching[0] if touching else None
+    limit = None if first is None else first.delay
     if (2.0 * math.pi / lowest * interval if limit is None else limit) > MAX_SCANS * interval:
         return None
     last_stable, tried = 0.0, 0
     for low, high in _cells(sampled, lowest, limit):
-        if any(
-            low <= touch.delay <= high and _first_to_leave(sampled, reach, touch) for touch in touching[:1]
-        ):
-            return limit
+        if first is not None and low <= first.delay <= high and _first_to_leave(sampled, reach, first):
+            return first.delay
         for delay in (max(low - interval / DIVIDED, 0.0), low, 0.5 * (low + high), high):
             if delay <= last_stable:
                 continue

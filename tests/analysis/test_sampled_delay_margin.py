@@ -7,17 +7,22 @@ back and leave again. The loops are made up; roots are counted delay by delay.
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 from typing import Any
 
 import numpy as np
 import pytest
 
+from service.analysis import sampled_delay
 from service.analysis.controller import Scan
+from service.analysis.frequency import AxisResponse
 from service.analysis.loop import form_loop
 from service.analysis.recomputation import recompute
+from service.analysis.sampled_loop import form_sampled_loop
 from service.analysis.sampled_states import sampled_states
 from service.analysis.scan import Scanned
+from service.analysis.unit_circle import Divided
 from tests.analysis.entered import first_order, ideal, integrating
 from tests.analysis.sampled_truth import made_up
 
@@ -74,3 +79,34 @@ def test_a_loop_whose_gain_never_reaches_one_bears_any_delay() -> None:
     assert sampled is not None
     assert sampled.margins is not None
     assert sampled.margins.delay_margin_s == "unbounded"
+
+
+def leaves_first(plant: Any, controller: Any, angle: float, extra_s: float) -> bool:
+    """Whether the root that lies upon the circle nearest to these places is the first to leave it."""
+    sampled = form_sampled_loop(Scanned.of(form_loop(plant, controller, None), controller.scan))
+    found = sampled_delay._newton(sampled, angle, extra_s / controller.scan.interval_s)
+    assert found is not None
+    assert found[1] * controller.scan.interval_s == pytest.approx(extra_s, rel=0.02)
+    touch = sampled_delay._Touch(found[1] * sampled.scanned.interval, found[0])
+    reach = Divided.of(sampled, AxisResponse.of(sampled.loop)).reach()
+    # its eigenvalues are looked at, however many scans there are
+    assert sampled_delay._outer_roots(sampled, sampled.scanned.sample(touch.delay), reach) is not None
+    return sampled_delay._first_to_leave(sampled, reach, touch)
+
+
+@pytest.mark.parametrize(("turns", "first"), [(0, True), (1, False)])
+def test_a_root_that_leaves_while_another_is_outside_is_not_the_first(turns: int, first: bool) -> None:
+    plant, controller = first_order(1.0, 10.0, 4.0), ideal(1.5, 10.0, scan=Scan(interval_s=1.0))
+    sampled = recompute(plant, controller).sampled
+    assert sampled is not None
+    rad_s = sampled.crossovers.gain_crossovers[0].rad_s
+    extra_s = delay_margin_s(plant, controller) + turns * 2.0 * math.pi / rad_s
+    assert unstable_roots(plant, controller, extra_s * 0.99) == (0 if first else 2)
+    assert leaves_first(plant, controller, rad_s, extra_s) is first
+
+
+@pytest.mark.parametrize(("extra_s", "leaves"), [(2.756, True), (2.78, False)])
+def test_a_root_that_comes_back_is_not_one_that_leaves(extra_s: float, leaves: bool) -> None:
+    # outside for 0.02 s of more dead time, less than a twentieth of a scan
+    plant, controller = made_up(100_743)
+    assert leaves_first(plant, controller, 0.3285, extra_s) is leaves

@@ -29,7 +29,7 @@ class World:
     digest: str
     session_cookie: str
     forms: dict[str, list[tuple[str, str]]] = field(default_factory=dict)
-    """Address of each form that this session is shown → its fields, each with what stands in it."""
+    """Address of each form that this person is shown → its fields, each with what stands in it."""
 
 
 @dataclass(frozen=True)
