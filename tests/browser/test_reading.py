@@ -27,6 +27,7 @@ def addresses(site: Site, cases: tuple[str, ...] = SHOWN) -> list[str]:
 
 
 def violations(page: Page) -> list[str]:
+    page.wait_for_load_state()  # without its style sheet a page has other faults
     options = {"runOnly": {"type": "tag", "values": WCAG}}
     found = Axe().run(page, options=options).response["violations"]
     return [f"{each['id']}: {[node['html'][:200] for node in each['nodes']]}" for each in found]
@@ -34,6 +35,7 @@ def violations(page: Page) -> list[str]:
 
 def sideways(page: Page) -> int:
     """How far the page can be scrolled sideways, in px. Needs scripts, which only the test has."""
+    page.wait_for_load_state()
     width: int = page.evaluate("document.documentElement.scrollWidth - document.documentElement.clientWidth")
     return width
 
@@ -68,6 +70,7 @@ def test_axe_finds_nothing_against_a_form_with_problems_or_the_steps_of_a_decisi
     page = opened("reviewer", scripts=True)
     page.goto(site.submission("not_met"))
     page.get_by_role("button", name="Read back before signing").click()
+    expect(page.get_by_role("alert")).to_be_visible()
     assert violations(page) == []
     read_back(page, site)
     page.locator("summary").click()
@@ -90,6 +93,7 @@ def test_axe_finds_nothing_against_withdrawing_or_recording_an_installation(
             summary.click()
         assert violations(page) == []
         page.get_by_role("button", name="Record this installation").click()
+        expect(page.get_by_role("alert")).to_be_visible()
         assert violations(page) == []
 
 
