@@ -18,6 +18,7 @@ from service.context import services
 from service.issuing import checkpoints
 from service.records import history_queries as queries
 from service.records import proofs
+from service.records.event_kinds import EventKind
 from service.records.history_queries import HistoryFilter
 from service.records.proofs import ConsistencyProof, InclusionProof
 from service.records.views import Checkpoint
@@ -37,7 +38,7 @@ class HistoryQuery(PageQuery):
     since: Instant | None = None
     until: Instant | None = None
     actor: Text | None = None
-    kind: Text | None = None
+    kind: EventKind | None = None
 
     @property
     def wanted(self) -> HistoryFilter:

@@ -61,7 +61,7 @@ SAID_OF_QUERIES = {
     "since": "From this time on.",
     "until": "Before this time.",
     "actor": "Account name of whoever did it.",
-    "kind": "Kind of entry, as the entries of the history name it: gains_submitted, gains_approved, …",
+    "kind": "Kind of entry, as the entries of the history name it.",
     "q": "Stands anywhere in tag or description.",
     "recheck_due": "What these gains were approved on has been changed since.",
     "left_otherwise": "Other gains than approved were left in the controller and not put right since.",

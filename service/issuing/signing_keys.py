@@ -20,10 +20,11 @@ from service.issuing.base64_text import base64_text, public_text
 from service.records import history
 from service.records.database import Database
 from service.records.errors import Conflict, StoreNotUsable
+from service.records.event_kinds import EventKind
 from service.records.roles import CONSOLE, Actor, require_role
 
-TAKEN_UP = "signing_key_taken_up"
-CHANGED = "signing_key_changed"
+TAKEN_UP: EventKind = "signing_key_taken_up"
+CHANGED: EventKind = "signing_key_changed"
 PURPOSE = "signing key"
 
 

@@ -26,6 +26,7 @@ from service.records.errors import (
     SigningSuspended,
     WrongPassword,
 )
+from service.records.event_kinds import EventKind
 from service.records.roles import CONSOLE_NAME, ROLES, Actor, Role, require_role
 from service.records.tables.accounts import Account, AccountArea, AccountRole, SignInSession, Token
 from service.records.views import AccountView, Page
@@ -292,7 +293,12 @@ def _access(account: Account) -> dict[str, list[str]]:
 
 
 def _tell(
-    session: Session, actor: Actor, kind: str, account: Account, now: datetime, told: Mapping[str, object]
+    session: Session,
+    actor: Actor,
+    kind: EventKind,
+    account: Account,
+    now: datetime,
+    told: Mapping[str, object],
 ) -> None:
     content = {"account": account.name} | dict(told)
     history.append(session, kind=kind, actor=actor, content=content, now=now)

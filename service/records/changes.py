@@ -39,6 +39,7 @@ from service.records.errors import (
     SigningRefused,
     StaleContent,
 )
+from service.records.event_kinds import EventKind
 from service.records.roles import Actor
 from service.records.tables.changes import LoopChange, LoopChangeDecision
 from service.records.views import ChangeView
@@ -50,7 +51,7 @@ MEANINGS: dict[ChangeAction, str] = {
 }
 """What a signature means (21 CFR 11.50), by decision."""
 
-KINDS: dict[ChangeAction, str] = {
+KINDS: dict[ChangeAction, EventKind] = {
     "confirm": "loop_change_confirmed",
     "reject": "loop_change_rejected",
     "withdraw": "loop_change_withdrawn",

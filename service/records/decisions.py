@@ -36,6 +36,7 @@ from service.records.errors import (
     SigningRefused,
     StaleContent,
 )
+from service.records.event_kinds import EventKind
 from service.records.lifecycle import Action
 from service.records.roles import Actor, require_role
 from service.records.tables.submissions import Decision, Submission, SubmissionState
@@ -49,7 +50,7 @@ MEANINGS = {
 }
 """What a signature means (21 CFR 11.50), by decision."""
 
-KINDS = {
+KINDS: dict[Action, EventKind] = {
     "approve": "gains_approved",
     "reject": "gains_rejected",
     "withdraw": "gains_withdrawn",

@@ -23,6 +23,7 @@ from service.documents.canonical import canonical_bytes
 from service.documents.strict_json import Plain
 from service.documents.writing import plain
 from service.records import merkle
+from service.records.event_kinds import EventKind
 from service.records.roles import CONSOLE, Actor
 from service.records.tables.columns import Base
 from service.records.tables.history import HistoryEvent, HistoryHead
@@ -31,7 +32,7 @@ from service.records.views import EntryReference, HeadView
 TIE = "event_number"
 """The column that ties a kept row to the entry that vouches for it."""
 
-STORE_MADE = "store_made"
+STORE_MADE: EventKind = "store_made"
 """The kind of the first entry of every history."""
 
 # statements are made once: making one costs more than running it
@@ -56,7 +57,7 @@ class About:
 class _Told:
     """What an entry tells, the rows aside."""
 
-    kind: str
+    kind: EventKind
     actor: str
     content: Mapping[str, object]
     time: datetime
@@ -71,7 +72,7 @@ def take_turn(session: Session) -> None:
 def append(
     session: Session,
     *,
-    kind: str,
+    kind: EventKind,
     actor: Actor,
     content: Mapping[str, object],
     now: datetime,
@@ -111,7 +112,7 @@ def is_demonstration(session: Session) -> bool:
     return first is not None and first.kind == STORE_MADE and b'"demonstration":true' in first.canonical
 
 
-def last_content(session: Session, *kinds: str) -> dict[str, Any] | None:
+def last_content(session: Session, *kinds: EventKind) -> dict[str, Any] | None:
     """Return what the last entry of these kinds tells; None where there is none."""
     query = select(HistoryEvent.canonical).where(HistoryEvent.kind.in_(kinds))
     found = session.execute(query.order_by(HistoryEvent.number.desc()).limit(1)).scalar_one_or_none()

@@ -11,6 +11,7 @@ from sqlalchemy.orm import Session
 
 from service.records import loops, visibility
 from service.records.errors import NotFound
+from service.records.event_kinds import EventKind
 from service.records.roles import Actor
 from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop
@@ -27,7 +28,7 @@ class HistoryFilter:
     since: datetime | None = None
     until: datetime | None = None
     actor: str | None = None
-    kind: str | None = None
+    kind: EventKind | None = None
 
 
 def history(

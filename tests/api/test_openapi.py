@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from typing import Any
+from typing import Any, get_args
 
 import jsonschema_rs
 import pytest
 
 from service.api.openapi import SAID_OF_QUERIES, routes_of
+from service.records.event_kinds import EventKind
 from tests.api import plant
 from tests.api.conftest import Decide, Service, password_of
 from tests.api.plant import Body, changed, without
@@ -176,6 +177,13 @@ def test_what_is_said_of_a_query_parameter_stands_at_one_that_there_is(descripti
         if parameter["in"] == "query"
     }
     assert {name: told[name] for name in SAID_OF_QUERIES} == SAID_OF_QUERIES
+
+
+def test_a_kind_of_entry_to_search_for_is_one_of_a_list(description: Body) -> None:
+    parameters = description["paths"]["/v1/history"]["get"]["parameters"]
+    (kind,) = (each["schema"] for each in parameters if each["name"] == "kind")
+    assert [each for each in get_args(EventKind) if problems(description, kind, each)] == []
+    assert problems(description, kind, "gains_repealed")
 
 
 def test_the_page_of_the_api_shows_every_call_and_asks_nothing_off_the_machine(

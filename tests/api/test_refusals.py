@@ -193,6 +193,13 @@ def test_a_time_in_a_query_has_its_offset(service: Service, since: str) -> None:
     assert (answer.status_code, pointers(answer)) == (400, ["/since"])
 
 
+@pytest.mark.parametrize("kind", ["gains_approve", "Gains_approved", "gains approved", "planned"])
+def test_a_kind_that_no_entry_has_is_no_search_without_a_result(service: Service, kind: str) -> None:
+    answer = service.get(f"/v1/history?kind={kind}", person="auditor")
+    assert (answer.status_code, pointers(answer)) == (400, ["/kind"])
+    assert "gains_approved" in answer.json["errors"][0]["detail"]
+
+
 def test_an_unknown_address_and_an_unknown_method_are_problems_too(service: Service) -> None:
     unknown = service.get("/v1/nowhere")
     assert (unknown.status_code, unknown.json["type"]) == (404, "/problems/not-found")

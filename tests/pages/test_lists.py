@@ -68,6 +68,15 @@ def test_the_history_is_filtered_by_tag_kind_account_and_day(reviewer: Person) -
     assert "No entry matches." in reviewer.open("/history?tag=TIC-204&until=2020-01-01").text
 
 
+def test_a_kind_is_chosen_among_those_there_are(reviewer: Person) -> None:
+    page = reviewer.open("/history?kind=approval_revoked")
+    chosen = [option.text for option in page.all("option") if "selected" in option.attributes]
+    assert chosen == ["approval revoked"]
+    page = reviewer.open("/history?kind=gains_repealed")
+    assert page.one(id="problems").one("a").get("href") == "#kind"
+    assert page.one(id="kind-problem").text == "✗ There is no such kind of entry."
+
+
 def test_a_day_that_is_none_is_named(reviewer: Person) -> None:
     page = reviewer.open("/history?since=yesterday")
     assert page.one(id="problems").one("a").get("href") == "#since"

@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from typing import get_args
 
 import pytest
 from alembic.script import ScriptDirectory
 
 from service.issuing import sheets
 from service.records import migrating, queries
+from service.records.event_kinds import EventKind
 from service.records.queries import SubmissionFilter
 from service.verification.verifier import Checkpoint, verify
 from tests.databases import Databases, opened, run
@@ -47,6 +49,13 @@ def test_a_store_of_an_earlier_revision_is_brought_up_and_still_verifies(kept: s
     after = verify(kept, checkpoint=Checkpoint(size=before.entries, root=before.root))
     assert after.holds, after.fault
     assert (after.entries, after.root) == (before.entries, before.root)
+
+
+def test_every_kind_of_entry_that_was_ever_written_can_be_asked_for(kept: str) -> None:
+    with opened(kept) as connection:
+        kinds = {kind for (kind,) in run(connection, "SELECT kind FROM history_events")}
+    assert len(kinds) > 8
+    assert kinds <= set(get_args(EventKind))
 
 
 def test_a_store_that_was_brought_up_is_as_one_that_was_made_new(kept: str, databases: Databases) -> None:
