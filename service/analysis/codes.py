@@ -5,6 +5,9 @@ sentences.
 MARGINS_TOO_MUCH_WORK = "margins_too_much_work"
 """The dead time makes more crossings than the stated bound; margins are not computed."""
 
+CONTROL_TOO_MUCH_WORK = "control_sensitivity_too_much_work"
+"""The supremum of the control sensitivity needs more points than the stated bound; it is not computed."""
+
 NOT_REALISABLE = "responses_not_realisable"
 """An unfiltered derivative acts on a plant that passes a step at once; no response exists."""
 

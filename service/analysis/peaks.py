@@ -63,7 +63,9 @@ class Peak:
 
 @dataclass(frozen=True, slots=True)
 class Peaks:
-    """The suprema of one stable loop; `control`, of the control sensitivity, is None where there is none."""
+    """The suprema of one stable loop; `control`, of the control sensitivity, is None where it has no limit
+    or was not found.
+    """
 
     sensitivity: Peak
     complementary: Peak

@@ -186,13 +186,16 @@ def _continuous(
         except WorkBoundError:
             notes.append(codes.TOO_SLOW)
     setpoint, load = _steps(space, responses, settling_band_percent, unit, notes)
+    amplified = noise(control, worst_control)
+    if amplified.max_control_sensitivity is None:
+        notes.append(codes.CONTROL_TOO_MUCH_WORK)
     analysis = Analysis(
         stability=stability,
         crossovers=listed,
         margins=_finite(found_margins, notes),
         setpoint_step=_finite(setpoint, notes),
         load_step=_finite(load, notes),
-        noise=_finite(noise(control, worst_control), notes),
+        noise=_finite(amplified, notes),
         notes=tuple(notes),
     )
     return analysis, curves(responses, axis, parts.in_rad_s, unit) if with_curves else None

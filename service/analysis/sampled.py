@@ -82,11 +82,14 @@ def analyse_at_scans(
         notes.append(codes.TOO_SLOW)
     if responses is not None and not responses.complete:
         notes.append(codes.TOO_SLOW)
+    amplified = noise(control, worst_control)
+    if amplified.max_control_sensitivity is None:
+        notes.append(codes.CONTROL_TOO_MUCH_WORK)
     analysis = replace(
         analysis,
         setpoint_step=setpoint,
         load_step=load,
-        noise=_noise(sampled, noise(control, worst_control), found),
+        noise=_noise(sampled, amplified, found),
         notes=tuple(notes),
     )
     return analysis, curves(responses, axis, sampled.rad_s, parts.unit_rad_s) if with_curves else None

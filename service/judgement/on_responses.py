@@ -26,6 +26,11 @@ _NOTES: dict[str, tuple[Weight, str]] = {
         "The loop gain passes 1 too often for the margins to be computed: the dead time is very long beside "
         "the other times of the loop. There are no margins.",
     ),
+    "control_sensitivity_too_much_work": (
+        "caution",
+        "By how much the loop can amplify noise of PV at its worst frequency was not computed: the dead time "
+        "is very long beside the other times of the loop. There is no maximum control sensitivity.",
+    ),
     "delay_margin_not_confirmed": (
         "caution",
         "How much more dead time the scanned loop bears was not computed: two ways to find it do not agree. "

@@ -2,12 +2,17 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import pytest
 
+from service.analysis import peaks
 from service.analysis.controller import Scan
+from service.analysis.plant import FirstOrder
+from service.analysis.recomputation import recompute
 from service.analysis.results import Recomputation
+from service.judgement.criteria import Criteria, judge
 from service.judgement.finding import Finding
 from service.judgement.findings import find
 from tests.judgement.loops import LAG, ideal, recomputed
@@ -79,3 +84,37 @@ def test_gains_that_wear_a_valve_are_told_with_the_derivative_s_part_in_it() -> 
 def test_without_a_scan_the_gain_at_high_frequency_tells_of_wear() -> None:
     told = found(recomputed(LAG, ideal(derivative_s=8.0, filter_s=0.4)))["noise_moves_output"]
     assert "42.0 times" in told.sentence
+
+
+FAR = FirstOrder(kind="first_order", gain=1.0, time_constant_s=1.0, dead_time_s=500.0)
+SHARP = ideal(gain=0.02, integral_s=60.0, derivative_s=2.0, filter_s=0.01)
+
+
+def test_amplified_noise_whose_worst_frequency_was_not_found_is_told_and_not_assessed() -> None:
+    far = recomputed(FAR, SHARP)
+    assert far.continuous.margins is not None
+    assert far.continuous.noise is not None
+    assert far.continuous.noise.max_control_sensitivity is None
+    assert "no maximum control sensitivity" in found(far)["control_sensitivity_too_much_work"].sentence
+    (limit,) = judge(far, Criteria(max_control_sensitivity_max=10.0))
+    assert limit.outcome == "not_assessed"
+
+
+def test_amplified_noise_of_a_scanned_loop_whose_worst_frequency_was_not_found_is_told(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    # no scanned loop is known whose search is that long, since its frequencies end; the bound is lowered
+    monkeypatch.setattr(peaks, "MAX_PEAK_POINTS", 150)
+    far = recompute(FAR, replace(SHARP, scan=Scan(interval_s=0.001, method="backward_difference")))
+    assert far.sampled is not None
+    assert far.sampled.margins is not None
+    assert far.sampled.noise is not None
+    assert far.sampled.noise.max_control_sensitivity is None
+    assert "control_sensitivity_too_much_work" in far.sampled.notes
+
+
+def test_noise_amplified_without_limit_was_not_left_out() -> None:
+    unfiltered = recomputed(LAG, ideal(derivative_s=2.0))
+    assert unfiltered.continuous.noise is not None
+    assert unfiltered.continuous.noise.max_control_sensitivity == "unbounded"
+    assert "control_sensitivity_too_much_work" not in found(unfiltered)
