@@ -9,7 +9,7 @@ from typing import Annotated, Literal
 from annotated_types import Ge
 
 from service.analysis.results import Quantity, Recomputation, WorstCase
-from service.judgement.quantities import QUANTITIES, judged
+from service.judgement.quantities import QUANTITIES, judged, not_stable_at_scan
 
 Limit = Annotated[float, Ge(0)] | None
 Outcome = Literal["met", "not_met", "not_assessed"]
@@ -94,7 +94,8 @@ def judge(recomputation: Recomputation, criteria: Criteria) -> tuple[CriterionFi
 
     A value that has no meaning, or was not computed, is `not_assessed`. "unbounded" meets every `_min` and
     the gain reduction margin's `_max`, and fails every other `_max`. What holds over the box of models meets
-    a limit only where it is proven, and fails it where the box has an unstable member.
+    a limit only where it is proven, and fails it where the box has an unstable member, or where the loop is
+    unstable at its scan, which the box leaves out.
     """
     limits = ((field.name, getattr(criteria, field.name)) for field in fields(criteria))
     return tuple(_judge_one(recomputation, name, limit) for name, limit in limits if limit is not None)
@@ -146,8 +147,12 @@ def _judge_one(recomputation: Recomputation, criterion: str, limit: float) -> Cr
 def _judge_over_the_box(recomputation: Recomputation, criterion: str, limit: float) -> CriterionFinding:
     worst = recomputation.worst_case
     bracket = _Bracket(None, None) if worst is None else _OVER_THE_BOX[quantity_name(criterion)](worst)
+    at_scan = not_stable_at_scan(recomputation)
+    if at_scan:
+        bracket = _Bracket(None, None)
     outcome = _outcome(criterion, limit, bracket)
-    if worst is not None and worst.stable_for_all is False and criterion != "tolerated_error_scale_min":
+    unstable_member = worst is not None and (worst.stable_for_all is False or at_scan == "unstable")
+    if unstable_member and criterion != "tolerated_error_scale_min":
         outcome = "not_met"
     cautious_end = criterion.endswith("_min") == (outcome != "not_met")
     return CriterionFinding(

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from service.analysis.results import Recomputation, WorstCase
+from service.analysis.results import WorstCase
 from service.analysis.worst_case import NOTE_NOT_CONFIRMED, NOTE_NUMBERS, NOTE_TOO_MUCH_WORK
 from service.judgement.finding import Case, Finding
+from service.judgement.quantities import leaves_scan_out, not_stable_at_scan
 from service.judgement.wording import box_member
 
 _REASONS = {
@@ -13,6 +14,14 @@ _REASONS = {
     NOTE_NOT_CONFIRMED: "some model in it lies on the very edge of stability",
 }
 """Codes of `WorstCase.notes` → why the box is undecided."""
+
+_COMPUTED = (
+    "The worst case over the model's uncertainty was computed for a controller that acts all the time."
+)
+_AT_SCAN = {
+    "unstable": "At its scan interval the loop is unstable, even with the model as entered.",
+    "undecided": "At its scan interval the loop was not shown to be stable, even with the model as entered.",
+}
 
 
 def worst_case_not_computed(case: Case) -> Finding | None:
@@ -63,6 +72,8 @@ def worst_margins_lacking(case: Case) -> Finding | None:
     worst = _of_stable(case)
     if worst is None or not worst.stable_for_all or NOTE_TOO_MUCH_WORK not in worst.notes:
         return None
+    if not_stable_at_scan(case.recomputation):
+        return None
     return Finding(
         finding="worst_margins_not_computed",
         weight="caution",
@@ -77,22 +88,22 @@ def worst_case_without_scan(case: Case) -> Finding | None:
     worst = _of_stable(case)
     if worst is None or not leaves_scan_out(case.recomputation):
         return None
+    at_scan = not_stable_at_scan(case.recomputation)
+    if at_scan:
+        return Finding(
+            finding="worst_case_without_scan",
+            weight="stop",
+            sentence=f"{_AT_SCAN[at_scan]} {_COMPUTED} It does not hold for this one.",
+        )
     return Finding(
         finding="worst_case_without_scan",
         weight="caution",
-        sentence="The worst case over the model's uncertainty was computed for a controller that acts all "
-        "the time. The scan mostly takes some of that margin away.",
+        sentence=f"{_COMPUTED} The scan mostly takes some of that margin away.",
     )
 
 
 def _without_scan(case: Case) -> str:
     return " (as computed without the scan)" if leaves_scan_out(case.recomputation) else ""
-
-
-def leaves_scan_out(recomputation: Recomputation) -> bool:
-    """The loop is judged at its scans, and its worst case is that of a controller that acts all the time."""
-    worst = recomputation.worst_case
-    return recomputation.judged_on == "sampled" and worst is not None and worst.analysis == "continuous"
 
 
 def _of_stable(case: Case) -> WorstCase | None:

@@ -30,6 +30,20 @@ def judged(recomputation: Recomputation) -> Analysis | None:
     return recomputation.sampled if recomputation.judged_on == "sampled" else recomputation.continuous
 
 
+def leaves_scan_out(recomputation: Recomputation) -> bool:
+    """The loop is judged at its scans, and its worst case is that of a controller that acts all the time."""
+    worst = recomputation.worst_case
+    return recomputation.judged_on == "sampled" and worst is not None and worst.analysis == "continuous"
+
+
+def not_stable_at_scan(recomputation: Recomputation) -> Literal["unstable", "undecided"] | None:
+    """The verdict at the scan where it takes away what a worst case without the scan would say; else None."""
+    if recomputation.sampled is None or not leaves_scan_out(recomputation):
+        return None
+    verdict = recomputation.sampled.stability.verdict
+    return None if verdict == "stable" else verdict
+
+
 def _stability(field: str) -> Callable[[Analysis], Quantity]:
     return lambda analysis: _quantity(analysis.stability, field)
 

@@ -13,7 +13,6 @@ from service.analysis.results import (
     Recomputation,
     SecondOpinion,
     TermValue,
-    WorstCase,
 )
 from service.documents.recomputations import RecomputationAnswer
 from service.figures.responses import Response
@@ -21,8 +20,8 @@ from service.judgement import digits, wording
 from service.judgement.claims import ClaimFinding
 from service.judgement.criteria import CriterionFinding, quantity_name
 from service.judgement.findings import Finding
-from service.judgement.on_uncertainty import leaves_scan_out
-from service.judgement.quantities import QUANTITIES, judged
+from service.judgement.quantities import QUANTITIES, judged, not_stable_at_scan
+from service.sheets import worst_cases
 from service.sheets.controllers import Told
 
 MARGINS = (
@@ -81,7 +80,6 @@ SHORT = {
 
 SYMBOLS = {"met": "✓ met", "not_met": "✗ NOT MET", "not_assessed": "? not assessed"}
 CLAIM_SYMBOLS = {"agrees": "= agrees", "differs": "≠ DIFFERS", "not_comparable": "? cannot be compared"}
-BOX = {True: "yes, proven", False: "NO", None: "not decided"}
 CROSSOVERS_MAX = 4
 """The sheet lists so many of each; the record has them all."""
 ON_THE_AXIS = 1e-12
@@ -156,7 +154,10 @@ def assessment(
         verdict=wording.VERDICTS[recomputation.verdict],
         stable=stable,
         routes=tuple(_routes(recomputation)),
-        limits=(*_limits(analysis, answer.criteria), *_over_the_box(recomputation, answer.criteria)),
+        limits=(
+            *_limits(recomputation, analysis, answer.criteria),
+            *_over_the_box(recomputation, answer.criteria),
+        ),
         no_margins="" if analysis and analysis.margins else _NO_MARGINS,
         setpoint=_quantities(analysis, SETPOINT) if analysis and analysis.setpoint_step else (),
         load=_quantities(analysis, LOAD) if analysis and analysis.load_step else (),
@@ -193,16 +194,19 @@ def _routes(recomputation: Recomputation) -> Iterator[str]:
         yield f"{part.replace('_', ' ')}: asked for and not computed"
 
 
-def _limits(analysis: Analysis | None, criteria: tuple[CriterionFinding, ...]) -> Iterator[LimitRow]:
+def _limits(
+    recomputation: Recomputation, analysis: Analysis | None, criteria: tuple[CriterionFinding, ...]
+) -> Iterator[LimitRow]:
     """Every limit with its value; then the margins that nothing limits."""
-    limited = set()
+    limited, behind = set(), worst_cases.without_scan(recomputation)
     for finding in criteria:
         name = quantity_name(finding.criterion)
         limited.add(name)
+        over_the_box = name in wording.WORST_CASE_LABELS and finding.value is not None
         bound = "≥" if finding.criterion.endswith("_min") else "≤"
         yield LimitRow(
             name=_capital(wording.quantity_label(name)),
-            value=_minus(_beside(name, finding)),
+            value=_minus(_beside(name, finding)) + (behind if over_the_box else ""),
             limit=f"{bound} {wording.with_unit(name, finding.limit, _limit(finding.limit))}",
             outcome=SYMBOLS[finding.outcome],
             met=finding.outcome == "met",
@@ -224,21 +228,18 @@ def _over_the_box(recomputation: Recomputation, criteria: tuple[CriterionFinding
         return
     yield LimitRow(
         name="Stable for every model within the uncertainty",
-        value=BOX[worst.stable_for_all] + _without_scan(recomputation),
+        value=worst_cases.stable_throughout(recomputation, worst),
         limit="",
         outcome="",
-        met=worst.stable_for_all is True,
+        met=worst.stable_for_all is True and not not_stable_at_scan(recomputation),
     )
     name = "worst_case_max_sensitivity"
-    if worst.max_sensitivity and name not in {quantity_name(finding.criterion) for finding in criteria}:
+    limited = {quantity_name(finding.criterion) for finding in criteria}
+    if worst.max_sensitivity and name not in limited and not not_stable_at_scan(recomputation):
         at_most = digits.three_digits(worst.max_sensitivity.at_most)
         label = _capital(wording.quantity_label(name))
-        value = f"at most {at_most}{_without_scan(recomputation)}"
+        value = f"at most {at_most}{worst_cases.without_scan(recomputation)}"
         yield LimitRow(name=label, value=value, limit="", outcome="", met=True)
-
-
-def _without_scan(recomputation: Recomputation) -> str:
-    return ", without the scan" if leaves_scan_out(recomputation) else ""
 
 
 def _beside(name: str, finding: CriterionFinding) -> str:
@@ -271,7 +272,7 @@ def _further(recomputation: Recomputation, analysis: Analysis | None) -> Iterato
     if analysis and analysis.margins:
         yield from _crossovers(analysis.margins)
     if recomputation.worst_case:
-        yield from _worst_case(recomputation.worst_case)
+        yield from worst_cases.figures(recomputation, recomputation.worst_case)
     if recomputation.second_opinion:
         yield _second_opinion(recomputation.second_opinion)
 
@@ -305,23 +306,6 @@ def _crossovers(margins: Margins) -> Iterator[Told]:
     for name, found in (("Gain crossovers", gain), ("Phase crossovers", phase)):
         more = f"; {len(found) - CROSSOVERS_MAX} more in the record" if len(found) > CROSSOVERS_MAX else ""
         yield Told(name=name, value=("; ".join(found[:CROSSOVERS_MAX]) or "none") + more)
-
-
-def _worst_case(worst: WorstCase) -> Iterator[Told]:
-    yield Told(name="Worst case computed for the analysis", value=worst.analysis)
-    if worst.counterexample:
-        yield Told(name="Not stable at", value=wording.box_member(worst.counterexample))
-    for name in ("gain_margin", "phase_margin_deg", "delay_margin_s"):
-        if getattr(worst, name) is not None:
-            told = wording.told(name, getattr(worst, name))
-            yield Told(name=f"Worst {wording.quantity_label(name)}", value=told)
-    for name, interval in (
-        ("Worst maximum sensitivity", worst.max_sensitivity),
-        ("Scale of model error that is tolerated", worst.tolerated_error_scale),
-    ):
-        if interval:
-            ends = f"{digits.three_digits(interval.at_least)} to {digits.three_digits(interval.at_most)}"
-            yield Told(name=name, value=ends)
 
 
 def _second_opinion(opinion: SecondOpinion) -> Told:

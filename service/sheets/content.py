@@ -14,7 +14,7 @@ from service.analysis.results import Curves
 from service.documents.loops import LoopRegistration
 from service.figures.responses import Response, stored_responses
 from service.judgement.digits import as_entered
-from service.judgement.on_uncertainty import leaves_scan_out
+from service.judgement.quantities import leaves_scan_out
 from service.judgement.wording import criterion_sentence
 from service.records.content import DecisionContent, SignedContent, SignedModel, SignedRecomputation
 from service.records.lifecycle import REVIEW_OWED

@@ -9,13 +9,14 @@ import pytest
 from service.analysis.controller import Scan
 from service.analysis.plant import Uncertainty
 from service.analysis.recomputation import recompute
-from service.analysis.results import Recomputation
+from service.analysis.results import Recomputation, Verdict
 from service.analysis.worst_case import NOTE_NOT_CONFIRMED, NOTE_NUMBERS, NOTE_TOO_MUCH_WORK
 from service.judgement.criteria import Criteria, judge
 from service.judgement.findings import Finding, find
 from tests.analysis.entered import first_order, ideal
 
 USUAL = Uncertainty(gain=(0.8, 1.25), time_constants=(0.8, 1.25), dead_time=(0.7, 1.4))
+NEAR = Uncertainty(gain=(0.9, 1.1), time_constants=(0.9, 1.1), dead_time=(0.9, 1.1))
 LONGER = Uncertainty(dead_time_extra_s=(0.0, 6.0))
 
 
@@ -121,3 +122,53 @@ def test_a_limit_on_the_worst_sensitivity_is_held_against_the_proven_bracket(
     bracket = recomputation.worst_case.max_sensitivity
     assert bracket is not None
     assert criterion.value == (bracket.at_most if outcome == "met" else bracket.at_least)
+
+
+SLOW = Scan(interval_s=12.0, method="backward_difference")
+
+
+def slowly_scanned(verdict: Verdict) -> Recomputation:
+    """A loop whose box is proven without its scan, and which is unstable at it, or not decided there."""
+    found = recompute(
+        replace(first_order(2.0, 10.0, 3.0), uncertainty=NEAR), replace(ideal(1.0, 10.0), scan=SLOW)
+    )
+    assert found.worst_case is not None
+    assert found.worst_case.stable_for_all is True
+    assert found.sampled is not None
+    assert found.sampled.stability.verdict == "unstable"
+    if verdict == "unstable":
+        return found
+    stability = replace(found.sampled.stability, verdict=verdict)
+    return replace(found, verdict=verdict, sampled=replace(found.sampled, stability=stability))
+
+
+@pytest.mark.parametrize(
+    ("verdict", "first"),
+    [("unstable", "the loop is unstable"), ("undecided", "the loop was not shown to be stable")],
+)
+def test_a_box_that_is_stable_without_the_scan_never_speaks_for_a_loop_that_is_not_stable_at_it(
+    verdict: Verdict, first: str
+) -> None:
+    told = found(slowly_scanned(verdict))["worst_case_without_scan"]
+    assert told.weight == "stop"
+    assert told.sentence.startswith(f"At its scan interval {first}, even with the model as entered.")
+    assert told.sentence.endswith("It does not hold for this one.")
+
+
+def test_figures_lacking_of_a_box_are_not_told_of_a_loop_that_is_unstable_at_its_scan() -> None:
+    unstable = slowly_scanned("unstable")
+    assert unstable.worst_case is not None
+    worst = replace(unstable.worst_case, notes=(NOTE_TOO_MUCH_WORK,))
+    sentences = [finding.sentence for finding in find(replace(unstable, worst_case=worst))]
+    assert not [sentence for sentence in sentences if "is stable over the whole" in sentence]
+
+
+@pytest.mark.parametrize(("verdict", "outcome"), [("unstable", "not_met"), ("undecided", "not_assessed")])
+def test_no_limit_on_the_worst_case_is_met_by_a_loop_that_is_not_stable_at_its_scan(
+    verdict: Verdict, outcome: str
+) -> None:
+    limits = Criteria(worst_case_gain_margin_min=1.1, worst_case_max_sensitivity_max=9.0)
+    held = judge(slowly_scanned(verdict), limits)
+    assert [(criterion.outcome, criterion.value) for criterion in held] == [(outcome, None)] * 2
+    (scale,) = judge(slowly_scanned(verdict), Criteria(tolerated_error_scale_min=1.0))
+    assert (scale.outcome, scale.value) == ("not_assessed", None)

@@ -105,3 +105,25 @@ def test_the_line_beside_the_gains_of_a_scanned_loop_says_that_the_scan_is_left_
     view, *_ = submission(plants=(replace(LAG, uncertainty=BOX),), controller=scanned)
     words = "every model within the stated uncertainty (computed without the scan)."
     assert words in content_of(view).summary
+
+
+def test_a_loop_that_is_unstable_at_its_scan_is_nowhere_told_as_stable_for_every_model() -> None:
+    near = Uncertainty(gain=(0.9, 1.1), time_constants=(0.9, 1.1), dead_time=(0.9, 1.1))
+    scan = Scan(interval_s=12.0, method="backward_difference")
+    found = told(1.0, near, Criteria(worst_case_gain_margin_min=1.1), scan)
+    (row,) = (row for row in found.limits if row.name == "Stable for every model within the uncertainty")
+    assert row.value == "NO: at its scan it is unstable as entered"
+    assert not row.met
+    assert rows(found)["Gain margin of the worst model within the uncertainty"] == "not defined"
+    assert "Maximum sensitivity of the worst model within the uncertainty" not in rows(found)
+    assert not [row for row in found.limits if row.met]
+    further = {entry.name: entry.value for entry in found.further}
+    assert further["Worst case computed for the analysis"] == "continuous; at its scan the loop is unstable"
+    assert further["Worst gain margin"] == "1.98, without the scan"
+
+
+def test_a_limited_figure_of_the_box_of_a_scanned_loop_says_that_the_scan_is_left_out() -> None:
+    scan = Scan(interval_s=0.5, method="backward_difference")
+    found = told(0.6, criteria=Criteria(worst_case_max_sensitivity_max=2.5), scan=scan)
+    sensitivity = rows(found)["Maximum sensitivity of the worst model within the uncertainty"]
+    assert sensitivity == "2.09, without the scan"
