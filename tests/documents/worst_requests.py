@@ -75,6 +75,7 @@ def _points(dead_time_s: float) -> Json:
 
 TOO_SLOW = codes.TOO_SLOW
 NO_DELAY_MARGIN = codes.DELAY_MARGIN
+NO_CONTROL_SENSITIVITY = codes.CONTROL_TOO_MUCH_WORK
 
 WORST: tuple[WorstRequest, ...] = (
     WorstRequest(
@@ -160,7 +161,7 @@ WORST: tuple[WorstRequest, ...] = (
             "derivative_filter": _seconds(1e-9),
         },
         "stable",
-        notes=(TOO_SLOW,),
+        notes=(TOO_SLOW, NO_CONTROL_SENSITIVITY),
         include=("curves", "second_opinion"),
     ),
     WorstRequest(
@@ -180,6 +181,7 @@ WORST: tuple[WorstRequest, ...] = (
             "derivative_filter": _seconds(1.6e-4),
         },
         "stable",
+        notes=(NO_CONTROL_SENSITIVITY,),
     ),
     WorstRequest(
         # asked for 200 GiB
