@@ -17,6 +17,7 @@ from service.documents.reading import read
 from service.documents.submissions import SubmissionRequest
 from service.records import (
     accounts,
+    change_queries,
     changes,
     decisions,
     history,
@@ -24,11 +25,13 @@ from service.records import (
     installations,
     loops,
     queries,
+    sign_ins,
     submissions,
 )
 from service.records.accounts import NewAccount
 from service.records.database import Database
 from service.records.roles import CONSOLE, Actor, Role
+from service.records.sign_ins import StartedSession
 from service.records.tables import collection
 from service.records.views import (
     ChangeView,
@@ -41,6 +44,9 @@ from service.records.views import (
 
 CHEAP = PasswordHasher(time_cost=1, memory_cost=8, parallelism=1)
 """The real Argon2id, with a cost at which a test does not wait."""
+
+HERE = "192.0.2.1"
+"""An address that stands for none (RFC 5737)."""
 
 START = datetime(2026, 3, 2, 6, 0, tzinfo=UTC)
 
@@ -235,6 +241,15 @@ class Store:
         prepared = self.prepare_decision(change, decision, person, **changed)
         with self.database.writing() as session:
             return changes.decide(session, self.actor(person), change.id, prepared, self.clock())
+
+    def read_change(self, change: ChangeView, person: str = "reviewer") -> ChangeView:
+        with self.database.reading() as session:
+            return change_queries.find(session, self.actor(person), change.id)
+
+    def sign_in(
+        self, name: str = "reviewer", password: str | None = None, source: str = HERE
+    ) -> StartedSession:
+        return sign_ins.sign_in(self.database, name, password or password_of(name), source)
 
     def events(self) -> list[str]:
         """The kinds of all entries, in order."""

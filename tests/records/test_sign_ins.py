@@ -11,13 +11,10 @@ import pytest
 from sqlalchemy import Engine, event
 
 from service.records import accounts, history_queries, passwords, sign_ins
-from service.records.errors import NotAuthenticated
+from service.records.errors import NotAuthenticated, TooManyAttempts
 from service.records.history_queries import HistoryFilter
 from service.records.roles import CONSOLE
-from tests.records.store import CHEAP, Store, password_of
-
-HERE = "192.0.2.1"
-"""An address that stands for none (RFC 5737)."""
+from tests.records.store import CHEAP, HERE, Store, password_of
 
 
 @contextmanager
@@ -162,3 +159,94 @@ def test_a_session_that_never_was_is_neither_used_nor_ended(store: Store) -> Non
         sign_ins.note_use(session, "0" * 64, store.clock())
         sign_ins.sign_out(session, "0" * 64, store.clock())
     assert store.counts()["sign_in_sessions"] == 0
+
+
+def test_a_session_goes_on_while_it_is_used_and_ends_when_it_is_not(store: Store) -> None:
+    started = store.sign_in()
+    for _ in range(3):
+        store.clock.forward(minutes=20)
+        with store.database.writing() as session:
+            present = sign_ins.resume(session, started.secret, store.clock())
+            sign_ins.note_use(session, present.id, store.clock())
+    store.clock.now += sign_ins.IDLE_LIMIT + timedelta(seconds=1)
+    with store.database.reading() as session, pytest.raises(NotAuthenticated):
+        sign_ins.resume(session, started.secret, store.clock())
+
+
+def test_a_session_ends_after_its_absolute_limit_however_much_it_is_used(store: Store) -> None:
+    started = store.sign_in()
+    while store.clock() <= started.ends_at:
+        with store.database.writing() as session:
+            present = sign_ins.resume(session, started.secret, store.clock())
+            sign_ins.note_use(session, present.id, store.clock())
+        store.clock.forward(minutes=29)
+    with store.database.reading() as session, pytest.raises(NotAuthenticated):
+        sign_ins.resume(session, started.secret, store.clock())
+
+
+def test_after_signing_out_the_cookie_is_worth_nothing(store: Store) -> None:
+    started = store.sign_in()
+    with store.database.writing() as session:
+        sign_ins.sign_out(session, sign_ins.resume(session, started.secret, store.clock()).id, store.clock())
+    with store.database.reading() as session, pytest.raises(NotAuthenticated):
+        sign_ins.resume(session, started.secret, store.clock())
+
+
+def test_each_session_has_secrets_of_its_own(store: Store) -> None:
+    secrets = [store.sign_in().secret for _ in range(2)]
+    with store.database.reading() as session:
+        first, second = (sign_ins.resume(session, secret, store.clock()) for secret in secrets)
+    assert first.id != second.id
+    assert first.csrf_secret != second.csrf_secret
+    assert len(first.csrf_secret) == 32
+
+
+@pytest.mark.parametrize("name", ["reviewer", "no-such-name"])
+def test_a_failed_sign_in_says_the_same_for_known_and_unknown_names_and_leaves_its_trace(
+    store: Store, name: str
+) -> None:
+    with pytest.raises(NotAuthenticated, match="name or password is wrong"):
+        store.sign_in(name, "something else entirely")
+    assert store.events()[-1] == "sign_in_refused"
+
+
+@pytest.mark.parametrize("name", ["reviewer", "no-such-name"])
+def test_a_name_that_fails_too_often_has_to_wait_from_wherever_it_comes(store: Store, name: str) -> None:
+    for _ in range(5):
+        with pytest.raises(NotAuthenticated):
+            store.sign_in(name, "something else entirely")
+    with pytest.raises(TooManyAttempts):
+        store.sign_in(name, password_of(name), source="192.0.2.2")
+
+
+def test_each_further_failure_doubles_the_wait_up_to_a_limit(store: Store) -> None:
+    waits = []
+    for _ in range(14):
+        try:
+            store.sign_in("reviewer", "something else entirely")
+        except TooManyAttempts as refused:
+            waits.append(refused.retry_after_s)
+            store.clock.forward(seconds=refused.retry_after_s)
+            with pytest.raises(NotAuthenticated):
+                store.sign_in("reviewer", "something else entirely")
+        except NotAuthenticated:
+            continue
+    assert waits[:6] == [30, 60, 120, 240, 480, 900]
+    assert set(waits[6:]) == {900}
+
+
+def test_an_address_that_tries_many_names_has_to_wait(store: Store) -> None:
+    for index in range(30):
+        with pytest.raises(NotAuthenticated):
+            store.sign_in(f"name-{index}", "something else entirely")
+    with pytest.raises(TooManyAttempts):
+        store.sign_in()
+    assert store.sign_in(source="192.0.2.2").actor.name == "reviewer"
+
+
+def test_a_success_forgets_the_failures_of_the_name(store: Store) -> None:
+    for _ in range(2):
+        for _ in range(4):
+            with pytest.raises(NotAuthenticated):
+                store.sign_in("reviewer", "something else entirely")
+        store.sign_in()

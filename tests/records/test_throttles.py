@@ -8,10 +8,7 @@ import pytest
 
 from service.records import sign_ins, throttles
 from service.records.errors import NotAuthenticated, TooManyAttempts
-from tests.records.store import Store, password_of
-
-HERE = "192.0.2.1"
-"""An address that stands for none (RFC 5737)."""
+from tests.records.store import HERE, Store, password_of
 
 ADDRESS, NAME = throttles.of_source(HERE), throttles.of_account("reviewer")
 FREE_OF_ADDRESS, FREE_OF_NAME = 30, 5

@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 from datetime import timedelta
+from typing import Any
 
 import pytest
+from sqlalchemy import text as sql
 
 from service.records import accounts, tokens
-from service.records.errors import Conflict, FieldErrors, NotAllowed, NotFound
+from service.records.errors import Conflict, FieldErrors, NotAllowed, NotAuthenticated, NotFound
 from service.records.roles import CONSOLE
 from tests.records.store import Store
 
@@ -113,3 +115,64 @@ def test_the_use_of_an_account_is_noted_with_that_of_its_token_after_an_hour(sto
         store.clock.now += passed
         with store.database.reading() as session:
             assert tokens.authenticate(session, text, store.clock()).use_is_due is due
+
+
+def _token(store: Store) -> str:
+    with store.database.writing() as session:
+        return tokens.issue(session, CONSOLE, "submitter", "tuning tool", store.clock())[1]
+
+
+def test_a_token_is_its_accounts_and_only_its_digest_is_kept(store: Store) -> None:
+    token = _token(store)
+    with store.database.reading() as session:
+        assert tokens.authenticate(session, token, store.clock()).actor.name == "submitter"
+        kept = session.execute(sql("SELECT secret_sha256 FROM tokens")).scalar_one()
+    assert bytes.fromhex(token.partition(".")[2]) != kept
+
+
+@pytest.mark.parametrize(
+    "spoil",
+    [
+        lambda token: "",
+        lambda token: token.partition(".")[0],
+        lambda token: token[:-1] + ("0" if token[-1] != "0" else "1"),
+        lambda token: token + "00",
+        lambda token: "0" * 32 + token[32:],
+        lambda token: token[:33] + "not hexadecimal",
+    ],
+)
+def test_anything_but_the_token_is_not_the_token(store: Store, spoil: Any) -> None:
+    token = _token(store)
+    with store.database.reading() as session, pytest.raises(NotAuthenticated):
+        tokens.authenticate(session, spoil(token), store.clock())
+
+
+def test_a_revoked_token_is_none(store: Store) -> None:
+    token = _token(store)
+    with store.database.writing() as session:
+        tokens.revoke(session, store.actor("submitter"), token.partition(".")[0], "lost", store.clock())
+    with store.database.reading() as session, pytest.raises(NotAuthenticated):
+        tokens.authenticate(session, token, store.clock())
+
+
+def test_anothers_token_is_not_there_to_be_revoked(store: Store) -> None:
+    token_id = _token(store).partition(".")[0]
+    with store.database.writing() as session, pytest.raises(NotFound):
+        tokens.revoke(session, store.actor("reviewer"), token_id, "spite", store.clock())
+
+
+def test_the_use_of_a_token_is_noted_at_most_once_an_hour(store: Store) -> None:
+    token = _token(store)
+
+    def is_due() -> bool:
+        with store.database.reading() as session:
+            return tokens.authenticate(session, token, store.clock()).use_is_due
+
+    assert is_due()
+    before = store.counts()
+    with store.database.writing() as session:
+        tokens.note_use(session, token.partition(".")[0], store.clock())
+    assert store.counts() == before
+    assert not is_due()
+    store.clock.forward(hours=1)
+    assert is_due()
