@@ -19,6 +19,22 @@ TIE = "event_number"
 
 ROWS_AT_A_TIME = 500
 
+_STANDS_BETWEEN = text("""
+    SELECT relation.relname, CASE
+        WHEN place.nspname <> current_schema()
+            THEN 'another relation of this name stands in the schema ' || place.nspname
+        WHEN relation.relrowsecurity THEN 'row security decides who sees which of its rows'
+        ELSE 'a rule changes what is done to it' END
+    FROM pg_catalog.pg_class AS relation
+    JOIN pg_catalog.pg_namespace AS place ON place.oid = relation.relnamespace
+    WHERE relation.relname = ANY(:names)
+        AND relation.relkind IN ('r', 'p', 'v', 'm', 'f')
+        AND place.nspname NOT LIKE 'pg@_%' ESCAPE '@'
+        AND (place.nspname <> current_schema() OR relation.relrowsecurity
+            OR EXISTS (SELECT FROM pg_catalog.pg_rewrite AS rule WHERE rule.ev_class = relation.oid))
+    ORDER BY 1, 2 LIMIT 1
+""")
+
 
 @dataclass(frozen=True, kw_only=True, slots=True)
 class Table:
@@ -83,6 +99,18 @@ def rows(connection: Connection, table: str, order: str) -> Generator[Mapping[st
 def count(connection: Connection, table: str) -> int:
     """Count the rows of a table."""
     return int(connection.execute(text(f'SELECT count(*) FROM "{table}"')).scalar_one())  # noqa: S608
+
+
+def stands_between(connection: Connection, names: list[str]) -> tuple[str, str] | None:
+    """Return the first of these tables that others may read otherwise than it was read here, and by what;
+    None where there is none.
+
+    In PostgreSQL a search path, a policy or a rule can give the service other rows than the verification.
+    """
+    if connection.dialect.name == "sqlite":
+        return None
+    found = connection.execute(_STANDS_BETWEEN, {"names": names}).one_or_none()
+    return None if found is None else (str(found[0]), str(found[1]))
 
 
 def damage(connection: Connection) -> str | None:

@@ -97,6 +97,10 @@ class _Reading:
             rows.check_end()
         self.chain.end()
         _check_head(connection, self.chain)
+        between = store.stands_between(connection, [store.EVENTS, store.HEAD, *kept])
+        if between is not None:
+            table, what = between
+            raise Broken(what, table=table)
         # last, since it names no row: an index that hides one, a row that breaks a constraint
         damage = store.damage(connection)
         if damage is not None:
