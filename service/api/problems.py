@@ -132,7 +132,7 @@ CONFLICT = ProblemType(
     "The present state does not allow this",
     "The step is not one that the life cycle allows from the present state, what the submission was "
     "computed from has changed since, or somebody else was quicker. The detail says which.",
-    "Read the resource again. Where the basis changed, submit again, so that it is recomputed.",
+    "Read the resource again. Where the basis changed, send it again, so that it is recomputed.",
 )
 SECOND_PERSON_NEEDED = ProblemType(
     "second-person-needed",

@@ -12,23 +12,21 @@ from typing import Any, Literal
 from service.analysis.controller import Controller
 from service.analysis.results import Verdict
 from service.documents.loops import LoopRegistration, ModelVersion
-from service.documents.recomputations import RecomputationAnswer
 from service.documents.submissions import Tool
 from service.judgement.claims import Claims
-from service.judgement.criteria import Criteria, CriterionFinding
 from service.records.change_lifecycle import ChangeAction, ChangeState
 from service.records.content import (
     ChangeDecisionContent,
     DecisionContent,
     InstallationContent,
     Person,
+    RecomputationOfSubmission,
     RecomputedAgain,
     SecondPersonReason,
     SignedContent,
     SignedGains,
     SignedGainsInForce,
     SignedModel,
-    SignedRecomputation,
     WorstCriterion,
 )
 from service.records.lifecycle import Action, Kind, State
@@ -163,41 +161,6 @@ class LoopChange:
             decision=None if view.decision is None else LoopChangeDecision.of(view.decision),
             open_decisions=view.open_decisions,
             entry=view.entry,
-        )
-
-
-@dataclass(frozen=True, kw_only=True)
-class ModelReference:
-    """The model version that a recomputation was made with."""
-
-    id: str
-    version: int
-    operating_point: str
-
-
-@dataclass(frozen=True, kw_only=True)
-class RecomputationOfSubmission:
-    """What was recomputed with one model, and the limits it was held against."""
-
-    model: ModelReference
-    gain_set: int
-    """Index into the submission's gain sets; 0 where it has one controller."""
-    criteria: Criteria
-    hard_floors: tuple[CriterionFinding, ...]
-    """Limits that no deviation makes good."""
-    result: RecomputationAnswer
-    """As `POST /v1/recomputations` answers, without curves."""
-
-    @classmethod
-    def of(cls, signed: SignedRecomputation, content: SignedContent) -> RecomputationOfSubmission:
-        """Represent one recomputation of what was signed."""
-        version = next(model.version for model in content.models if model.id == signed.model_id)
-        return cls(
-            model=ModelReference(id=signed.model_id, version=version, operating_point=signed.operating_point),
-            gain_set=signed.gain_set,
-            criteria=signed.criteria,
-            hard_floors=signed.hard_floors,
-            result=signed.answer,
         )
 
 
@@ -347,7 +310,7 @@ def _of_content(content: SignedContent) -> dict[str, Any]:
         "controller": alone,
         "gain_sets": content.gain_sets if alone is None else None,
         "recomputations": tuple(
-            RecomputationOfSubmission.of(signed, content) for signed in content.recomputations
+            RecomputationOfSubmission.of(signed, content.models) for signed in content.recomputations
         ),
     }
 

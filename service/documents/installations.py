@@ -8,6 +8,7 @@ from typing import Annotated
 
 from annotated_types import Len
 
+from service.analysis.controller import Controller
 from service.analysis.errors import FieldError
 from service.documents import complete, limits
 from service.documents.discriminated import ControllerField
@@ -45,6 +46,12 @@ class InstallationRequest:
         for name in ("as_found", "as_left"):
             if (getattr(self, name) is None) == (self.gain_sets is None):
                 raise FieldError((name,), "give as_found and as_left, or gain_sets in their place")
+
+    def lefts(self) -> tuple[Controller, ...]:
+        """Return every controller as left, in the order in which they were named."""
+        if self.gain_sets is not None:
+            return tuple(each.as_left for each in self.gain_sets)
+        return () if self.as_left is None else (self.as_left,)
 
     @staticmethod
     def missing(plain: Plain) -> Iterator[FieldProblem]:

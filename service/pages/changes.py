@@ -71,12 +71,9 @@ def installed_otherwise(content: SignedContent, done: InstallationContent) -> tu
 
 
 def _left_otherwise(content: SignedContent, done: InstallationContent) -> Iterator[ChangeLine]:
-    typed = done.installation
-    lefts = [each.as_left for each in typed.gain_sets or ()]
-    if typed.as_left is not None:
-        lefts.append(typed.as_left)
+    lefts = tuple(done.sets_as_left())
     ranges = Ranges(pv=content.loop.pv, output=content.loop.output)
-    for held, left in zip(done.sets_left(), lefts, strict=True):
+    for held, left in lefts:
         approved = content.gain_sets[held.gain_set]
         compared = compare(approved.controller, left, ranges)
         told = words.told_value if compared.common_form is None else words.computed_value

@@ -22,8 +22,9 @@ from service.pages.frame import page
 from service.pages.options import Option
 from service.records import installations as records
 from service.records import queries
-from service.records.errors import FieldErrors
+from service.records.errors import BasisChanged, FieldErrors
 from service.records.views import SubmissionView
+from service.sheets import as_left
 
 PREFIXES = {"as_found": "found", "as_left": "left"}
 SIDES = {"found": "As found", "left": "As left"}
@@ -50,10 +51,14 @@ def installation(submission_id: str) -> AnyResponse:
     form = forms.posted()
     try:
         document = _document(view, form)
+        with visits.reading() as visit:
+            prepared = records.prepare(visit.session, visit.actor, submission_id, document, visit.now)
         with visits.writing() as visit:
-            made = records.install(visit.session, visit.actor, submission_id, document, visit.now)
+            made = records.install(visit.session, visit.actor, prepared, visit.now)
     except (InvalidDocument, FieldErrors) as refusal:
         return _form_page(view, form.with_problems(_problems(form, refusal.errors)), 422)
+    except BasisChanged as refusal:
+        return _form_page(view, form.with_problems((Problem(forms.sentence(refusal.detail)),)), 409)
     address = url_for(
         "pages.installed",
         submission_id=submission_id,
@@ -71,7 +76,16 @@ def installed(submission_id: str, installation_id: str) -> Response:
         raise NoSuchPage
     done = made[0].installation
     differences = installed_otherwise(view.content, done)
-    return page("installed.html", view=view, made=done, differences=differences, entry=made[0].entry)
+    left = done.as_left_recomputed
+    return page(
+        "installed.html",
+        view=view,
+        made=done,
+        differences=differences,
+        told=None if done.as_approved else as_left.told_as_left(left),
+        assessments=as_left.assessments(left) if left else (),
+        entry=made[0].entry,
+    )
 
 
 def _form_page(view: SubmissionView, form: Form, status: int = 200) -> Response:

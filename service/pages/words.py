@@ -13,6 +13,7 @@ from service.judgement.digits import as_entered, three_digits
 from service.pages import forms
 from service.records import change_lifecycle, lifecycle
 from service.sheets import controllers
+from service.sheets.as_left import ToldAsLeft
 
 KINDS: dict[str, str] = {
     "planned": "planned change",
@@ -36,6 +37,7 @@ VERDICTS: dict[str | None, str] = {
     "stable": "✓ stable",
     "unstable": "✗ unstable",
     "undecided": "? undecided",
+    "not_assessed": "? not recomputed",
     None: "? not recomputed",
 }
 NOT_RECOMPUTED = (
@@ -70,6 +72,11 @@ def verdict_sentence(verdict: str | None) -> str:
     """The verdict as a sentence with its symbol."""
     sentence = NOT_RECOMPUTED if verdict is None else wording.VERDICTS[verdict]  # type: ignore[index]
     return f"{VERDICTS[verdict][0]} {sentence}"
+
+
+def as_left_sentence(told: ToldAsLeft) -> str:
+    """The verdict on gains as left as a sentence with its symbol."""
+    return f"{VERDICTS[told.verdict][0]} {told.sentence}"
 
 
 def verdict_class(verdict: str | None) -> str:
@@ -118,6 +125,7 @@ FILTERS: dict[str, Callable[..., Any]] = {
     "mark": mark,
     "verdict_mark": verdict_mark,
     "verdict_sentence": verdict_sentence,
+    "as_left_sentence": as_left_sentence,
     "verdict_class": verdict_class,
     "percent": percent,
     "capital": capital,

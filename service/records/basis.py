@@ -38,6 +38,14 @@ class Basis:
             yield "the gains in force"
 
 
+def models_in_force(session: Session, loop_id: str) -> tuple[SignedModel, ...]:
+    """Return the models that a recomputation of this loop is made from now."""
+    return tuple(
+        SignedModel(id=row.id, version=row.version, model=loops.read_model(row))
+        for row in loops.models_in_force(session, loop_id)
+    )
+
+
 def present_basis(session: Session, loop_id: str) -> Basis:
     """Return what a recomputation of this loop rests on now."""
     _, revision = loops.present(session, loop_id)

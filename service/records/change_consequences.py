@@ -15,6 +15,7 @@ from service.documents.canonical import canonical_bytes
 from service.documents.writing import plain
 from service.records import (
     approvability,
+    basis,
     lifecycle,
     loops,
     present_content,
@@ -54,11 +55,7 @@ class Consequences:
 def recomputed(session: Session, change: LoopChangeContent, now: datetime) -> tuple[Again, ...]:
     """Recompute what awaits review, on the loop and the models that the change leaves. Reads only."""
     retired = change.retires.id if change.retires else None
-    models = tuple(
-        SignedModel(id=row.id, version=row.version, model=loops.read_model(row))
-        for row in loops.models_in_force(session, change.loop_id)
-        if row.id != retired
-    )
+    models = tuple(model for model in basis.models_in_force(session, change.loop_id) if model.id != retired)
     return tuple(
         _recomputed(session, change, models, submission_id, present.read(), now)
         for submission_id, present in awaiting(session, change, now)

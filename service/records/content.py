@@ -6,9 +6,12 @@ that earlier content still reads.
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Literal
 
+from service.analysis.controller import Controller
+from service.analysis.results import Verdict
 from service.documents.decisions import Deviation
 from service.documents.discriminated import ControllerField
 from service.documents.installations import InstallationRequest
@@ -20,6 +23,8 @@ from service.documents.texts import Moment
 from service.judgement.claims import Claims
 from service.judgement.criteria import Criteria, CriterionFinding
 from service.records.lifecycle import Kind
+
+VerdictAsLeft = Verdict | Literal["not_assessed"]
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -62,6 +67,41 @@ class SignedRecomputation:
     curves_digest: str | None
     hard_floors: tuple[CriterionFinding, ...]
     """The limits that no deviation makes good."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class ModelReference:
+    """The model version that a recomputation was made with."""
+
+    id: str
+    version: int
+    operating_point: str
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class RecomputationOfSubmission:
+    """What was recomputed with one model, and the limits it was held against."""
+
+    model: ModelReference
+    gain_set: int
+    """Index into the submission's gain sets; 0 where it has one controller."""
+    criteria: Criteria
+    hard_floors: tuple[CriterionFinding, ...]
+    """Limits that no deviation makes good."""
+    result: RecomputationAnswer
+    """As `POST /v1/recomputations` answers, without curves."""
+
+    @classmethod
+    def of(cls, signed: SignedRecomputation, models: tuple[SignedModel, ...]) -> RecomputationOfSubmission:
+        """Show one recomputation; `models` are those that it was made from."""
+        version = next(model.version for model in models if model.id == signed.model_id)
+        return cls(
+            model=ModelReference(id=signed.model_id, version=version, operating_point=signed.operating_point),
+            gain_set=signed.gain_set,
+            criteria=signed.criteria,
+            hard_floors=signed.hard_floors,
+            result=signed.answer,
+        )
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
@@ -156,6 +196,42 @@ class SetLeft:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
+class SetLeftOtherwise:
+    """Gains that run in the controller in the place of an approved set."""
+
+    gain_set: int
+    """Index into the submission's gain sets; 0 where it has one controller."""
+    condition: str | None
+    operating_points: tuple[str, ...]
+    controller: ControllerField
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class NotRecomputed:
+    """Gains as left that form no loop with a model, and why."""
+
+    model: ModelReference
+    gain_set: int
+    reason: str
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class RecomputedAsLeft:
+    """The loop with gains that were left otherwise than approved. It was computed; nobody has approved it."""
+
+    verdict: VerdictAsLeft
+    """The worst over all sets and operating points. `undecided` too where gains form no loop with a model;
+    `not_assessed` where there is no model to judge a set by."""
+    loop_revision: int
+    gain_sets: tuple[SetLeftOtherwise, ...]
+    """Every set that is otherwise by the last word on it, one that was looked at earlier too."""
+    criteria_source: Literal["loop", "service_floors"]
+    criteria: tuple[WorstCriterion, ...]
+    recomputations: tuple[RecomputationOfSubmission, ...]
+    not_recomputed: tuple[NotRecomputed, ...]
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
 class InstallationContent:
     """Gains typed into a controller, as found and as left, with what differs from those approved."""
 
@@ -176,10 +252,16 @@ class InstallationContent:
     """The gains that were in force as far as was recorded → as found; None where none were."""
     gain_sets: tuple[SetLeft, ...] = ()
     """Every set that was looked at; empty: `gain_set` alone, as it was recorded before there were several."""
+    as_left_recomputed: RecomputedAsLeft | None = None
+    """None: as left are the approved gains, or it was recorded before such gains were recomputed."""
 
     def sets_left(self) -> tuple[SetLeft, ...]:
         """Return every set that was looked at."""
         return self.gain_sets or (SetLeft(gain_set=self.gain_set, as_approved=self.as_approved),)
+
+    def sets_as_left(self) -> Iterator[tuple[SetLeft, Controller]]:
+        """Yield every set that was looked at with its controller as left."""
+        yield from zip(self.sets_left(), self.installation.lefts(), strict=True)
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)

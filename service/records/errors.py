@@ -81,12 +81,15 @@ class WrongStep(Conflict):
 
 
 class BasisChanged(Conflict):
-    """What the recomputation rests on has changed since; `changed` names it in words."""
+    """What the recomputation rests on has changed since; `changed` names it in words.
 
-    def __init__(self, changed: tuple[str, ...]) -> None:
+    `remedy` is what makes the service recompute.
+    """
+
+    def __init__(self, changed: tuple[str, ...], remedy: str = "submit again") -> None:
         self.changed = changed
         super().__init__(
-            f"since the recomputation {_and(changed)} changed; submit again, so that the gains are recomputed"
+            f"since the recomputation {_and(changed)} changed; {remedy}, so that the gains are recomputed"
         )
 
 

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 from datetime import datetime, timedelta
 from hashlib import sha256
+from itertools import chain
 from uuid import uuid4
 
 from sqlalchemy import bindparam, select
@@ -16,6 +17,7 @@ from service.documents.errors import FieldProblem
 from service.documents.installations import InstallationRequest
 from service.documents.writing import plain
 from service.records import (
+    as_left,
     comparison,
     history,
     lifecycle,
@@ -25,19 +27,21 @@ from service.records import (
     states,
     visibility,
 )
+from service.records.basis import Basis, models_in_force, present_basis, read_basis
 from service.records.content import (
     Difference,
     InstallationContent,
+    RecomputedAsLeft,
     SetLeft,
+    SetLeftOtherwise,
     SignedContent,
     SignedGains,
     read_installation,
 )
-from service.records.errors import FieldErrors
+from service.records.errors import BasisChanged, FieldErrors
 from service.records.roles import Actor, require_role
 from service.records.states import Outcome
-from service.records.tables.columns import Base
-from service.records.tables.submissions import Decision, Installation, Submission
+from service.records.tables.submissions import Decision, Installation, Submission, SubmissionState
 from service.records.views import InstallationView
 
 CLOCKS_APART = timedelta(minutes=5)
@@ -56,6 +60,7 @@ class _Held:
 
     gain_set: int
     as_found: Controller
+    as_left: Controller
     differences: tuple[Difference, ...]
 
     @property
@@ -64,39 +69,133 @@ class _Held:
         return SetLeft(gain_set=self.gain_set, as_approved=not hindered)
 
 
+@dataclass(frozen=True, slots=True)
+class _LookedAt:
+    """An installation held against what is on record: what it comes to as things stand."""
+
+    submission: Submission
+    content: SignedContent
+    earlier: int
+    """How many installations there are already."""
+    held: tuple[_Held, ...]
+    whole: bool
+    """Every set was left as approved when it was looked at last."""
+    state: SubmissionState
+    otherwise: tuple[SetLeftOtherwise, ...]
+    """The sets that run otherwise than approved, where this installation left any so."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class PreparedInstallation:
+    """An installation with what was recomputed of gains left otherwise. Its inside is the records' own."""
+
+    submission_id: str
+    request: InstallationRequest
+    as_left: RecomputedAsLeft | None
+    basis: Basis
+
+    def still_holds(self, otherwise: tuple[SetLeftOtherwise, ...], present: Basis) -> bool:
+        """Say whether what was recomputed is still what runs, on what is still on record."""
+        sets = self.as_left.gain_sets if self.as_left else ()
+        return sets == otherwise and self.basis == present
+
+
 def check_may_install(session: Session, actor: Actor, submission_id: str) -> None:
     """Raise NotFound or NotAllowed before the document is read."""
     visibility.submission(session, actor, submission_id)
     require_role(actor, "submitter")
 
 
-def install(
+def prepare(
     session: Session, actor: Actor, submission_id: str, request: InstallationRequest, now: datetime
+) -> PreparedInstallation:
+    """Recompute the loop where gains were left otherwise than approved. Reads only.
+
+    It is apart from `install` as a submission's recomputation is, so that it holds up no other writer. Raises
+    as `install` does.
+    """
+    looked_at = _look(session, actor, submission_id, request, now)
+    loop = loops.find(session, actor, looked_at.submission.loop_id)
+    models = models_in_force(session, loop.id)
+    return PreparedInstallation(
+        submission_id=submission_id,
+        request=request,
+        as_left=as_left.recomputed(loop, models, looked_at.otherwise) if looked_at.otherwise else None,
+        basis=read_basis(loop, models, None),
+    )
+
+
+def install(
+    session: Session, actor: Actor, prepared: PreparedInstallation, now: datetime
 ) -> InstallationView:
-    """Record an installation.
+    """Record a prepared installation.
 
     As left equal to the approved gains, in any form, to 1e-9: they are in force.
 
-    Else it is recorded with its differences and the state stays. Gain sets may be typed in one by one: they
-    are in force when each of them is left as approved. Raises NotFound, NotAllowed, FieldErrors (installed in
-    the future, or before the submission was made; a set that is none of those approved), WrongStep.
+    Else it is recorded with its differences and what was recomputed, and the state stays. Gain sets may be
+    typed in one by one: they are in force when each of them is left as approved. Raises NotFound, NotAllowed,
+    FieldErrors (installed in the future, or before the submission was made; a set that is none of those
+    approved), WrongStep, BasisChanged (what was recomputed is not what holds now: prepare again).
     """
+    request = prepared.request
+    looked_at = _look(session, actor, prepared.submission_id, request, now)
+    submission = looked_at.submission
+    if looked_at.otherwise:
+        _check_basis(session, prepared, looked_at)
+    outcome = Outcome((), None)
+    if looked_at.whole:
+        since = request.installed_at
+        outcome = states.coming_into_force(session, submission.loop_id, submission.id, since, now)
+    recomputed = prepared.as_left if looked_at.otherwise else None
+    kept = _content(session, actor, looked_at, request, recomputed, now)
+    return _keep(session, actor, looked_at, kept, outcome)
+
+
+def _look(
+    session: Session, actor: Actor, submission_id: str, request: InstallationRequest, now: datetime
+) -> _LookedAt:
     submission = visibility.submission(session, actor, submission_id)
     lifecycle.check_who("install", actor, visibility.authors(session, submission_id))
     content = present_content.present(session, submission).read()
     _check_time(request, content, now)
     held = _held(content, request)
-    earlier = _installations(session, submission_id)
-    whole = all(each.left.as_approved for each in held) and _all_sets_left(content, earlier, held)
+    earlier = _earlier(session, submission_id)
+    as_approved = all(each.left.as_approved for each in held)
+    whole = as_approved and _all_sets_left(content, earlier, held)
     # by the clock at the controller: what was installed in time is often recorded on the next working day
     at = min(request.installed_at, now)
-    state = states.next_row(session, submission, "install" if whole else "install_otherwise", at)
-    outcome = Outcome((), None)
-    if whole:
-        since = request.installed_at
-        outcome = states.coming_into_force(session, submission.loop_id, submission.id, since, now)
-    kept = _content(session, actor, submission, content, request, held, now)
-    return _keep(session, actor, submission, kept, len(earlier), (state, *outcome.rows), outcome)
+    return _LookedAt(
+        submission=submission,
+        content=content,
+        earlier=len(earlier),
+        held=held,
+        whole=whole,
+        state=states.next_row(session, submission, "install" if whole else "install_otherwise", at),
+        otherwise=() if as_approved else _otherwise(session, submission, content, earlier, held),
+    )
+
+
+def _otherwise(
+    session: Session,
+    submission: Submission,
+    content: SignedContent,
+    earlier: dict[int, InstallationContent],
+    held: tuple[_Held, ...],
+) -> tuple[SetLeftOtherwise, ...]:
+    """What runs otherwise: these sets, and those of earlier looks that no gains have taken the place of."""
+    running = states.running(session, submission.loop_id)
+    since = running.event_number if running else 0
+    before = (each for number, done in earlier.items() if number > since for each in done.sets_as_left())
+    now = ((each.left, each.as_left) for each in held)
+    return as_left.sets_otherwise(content, chain(before, now))
+
+
+def _check_basis(session: Session, prepared: PreparedInstallation, looked_at: _LookedAt) -> None:
+    # gains that came into force meanwhile are no part of what was recomputed
+    present = replace(present_basis(session, looked_at.submission.loop_id), gains_in_force=None)
+    if not prepared.still_holds(looked_at.otherwise, present):
+        changed = prepared.basis.changed(present) or ("what was left in the controller",)
+        raise BasisChanged(changed, "record the installation again")
 
 
 def _check_time(request: InstallationRequest, content: SignedContent, now: datetime) -> None:
@@ -151,7 +250,7 @@ def _only_set(content: SignedContent, as_left: Controller) -> int:
 def _against(content: SignedContent, index: int, as_found: Controller, as_left: Controller) -> _Held:
     approved = content.gain_sets[index]
     differences = comparison.differences(approved.controller, as_left, loops.ranges(content.loop))
-    return _Held(index, as_found, _of_set(approved, differences))
+    return _Held(index, as_found, as_left, _of_set(approved, differences))
 
 
 def _of_set(approved: SignedGains, differences: tuple[Difference, ...]) -> tuple[Difference, ...]:
@@ -159,31 +258,29 @@ def _of_set(approved: SignedGains, differences: tuple[Difference, ...]) -> tuple
 
 
 def _all_sets_left(
-    content: SignedContent, earlier: tuple[Installation, ...], held: tuple[_Held, ...]
+    content: SignedContent, earlier: dict[int, InstallationContent], held: tuple[_Held, ...]
 ) -> bool:
     """Say whether each set was left as approved when it was looked at last."""
-    left = {
-        each.gain_set: each.as_approved
-        for row in earlier
-        for each in read_installation(row.content).sets_left()
-    }
+    left = {each.gain_set: each.as_approved for done in earlier.values() for each in done.sets_left()}
     left |= {each.gain_set: each.left.as_approved for each in held}
     return len(left) == len(content.gain_sets) and all(left.values())
 
 
-def _installations(session: Session, submission_id: str) -> tuple[Installation, ...]:
-    return tuple(session.execute(_OF_SUBMISSION, {"submission_id": submission_id}).scalars())
+def _earlier(session: Session, submission_id: str) -> dict[int, InstallationContent]:
+    """Return a submission's installations in order, each by the number of its entry."""
+    rows = session.execute(_OF_SUBMISSION, {"submission_id": submission_id}).scalars()
+    return {row.event_number: read_installation(row.content) for row in rows}
 
 
 def _content(
     session: Session,
     actor: Actor,
-    submission: Submission,
-    content: SignedContent,
+    looked_at: _LookedAt,
     request: InstallationRequest,
-    held: tuple[_Held, ...],
+    recomputed: RecomputedAsLeft | None,
     now: datetime,
 ) -> InstallationContent:
+    submission, held = looked_at.submission, looked_at.held
     return InstallationContent(
         installation_id=uuid4().hex,
         submission_id=submission.id,
@@ -195,7 +292,8 @@ def _content(
         as_approved=all(each.left.as_approved for each in held),
         before_approval=_before_approval(session, submission, request),
         differences=tuple(difference for each in held for difference in each.differences),
-        as_found_differences=_as_found(session, submission, content, held),
+        as_found_differences=_as_found(session, submission, looked_at.content, held),
+        as_left_recomputed=recomputed,
     )
 
 
@@ -242,32 +340,28 @@ def _read(session: Session, submission_id: str) -> SignedContent:
 
 
 def _keep(
-    session: Session,
-    actor: Actor,
-    submission: Submission,
-    content: InstallationContent,
-    ordinal: int,
-    rows: tuple[Base, ...],
-    outcome: Outcome,
+    session: Session, actor: Actor, looked_at: _LookedAt, content: InstallationContent, outcome: Outcome
 ) -> InstallationView:
     kept = canonical_bytes(plain(content))
     row = Installation(
         id=content.installation_id,
-        submission_id=submission.id,
-        ordinal=ordinal,
+        submission_id=content.submission_id,
+        ordinal=looked_at.earlier,
         recorded_by=actor.account_id,
         recorded_at=content.recorded_at,
         as_approved=content.as_approved,
         content=kept,
         content_digest=sha256(kept).hexdigest(),
     )
+    told = {field.name: getattr(content, field.name) for field in fields(content)}
+    told["as_left_recomputed"] = as_left.told(content.as_left_recomputed)
     entry = history.append(
         session,
         kind="gains_installed" if content.as_approved else "gains_installed_otherwise",
         actor=actor,
-        about=loops.about(*loops.present(session, submission.loop_id)),
-        content={"installation": content, "supersedes": outcome.superseded},
+        about=loops.about(*loops.present(session, looked_at.submission.loop_id)),
+        content={"installation": told, "supersedes": outcome.superseded},
         now=content.recorded_at,
-        rows=(row, *rows),
+        rows=(row, looked_at.state, *outcome.rows),
     )
     return InstallationView(installation=content, entry=entry)

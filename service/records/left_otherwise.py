@@ -6,13 +6,14 @@ the other. It is put right by gains that are left as approved, whole, or that co
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from functools import cache
 
 from sqlalchemy import ColumnElement, Select, bindparam, or_, select
 from sqlalchemy.orm import Session, aliased
 
 from service.records import loops
-from service.records.content import read_installation
+from service.records.content import RecomputedAsLeft, read_installation
 from service.records.roles import Actor
 from service.records.tables.submissions import (
     GainsComingIntoForce,
@@ -38,6 +39,16 @@ def of_loop(session: Session, actor: Actor, loop_id: str) -> InstallationView | 
     return InstallationView(installation=read_installation(row.content), entry=entry)
 
 
+def recomputed(session: Session, submission_ids: Iterable[str]) -> dict[str, RecomputedAsLeft | None]:
+    """Return what was last recomputed of each submission whose gains were left otherwise, and are so still.
+
+    None: it was recorded before such gains were recomputed.
+    """
+    found = session.execute(_of_submissions(), {"submission_ids": tuple(submission_ids)}).scalars()
+    last = {row.submission_id: row.content for row in found}
+    return {each: read_installation(content).as_left_recomputed for each, content in last.items()}
+
+
 @cache
 def is_left_otherwise() -> ColumnElement[bool]:
     """Return the condition that a selected submission's gains were left otherwise and not put right since."""
@@ -53,6 +64,16 @@ def _last() -> Select[Installation]:
         .where(Submission.loop_id == bindparam("loop_id"), _not_put_right())
         .order_by(Installation.event_number.desc())
         .limit(1)
+    )
+
+
+@cache
+def _of_submissions() -> Select[Installation]:
+    return (
+        select(Installation)
+        .join(Submission, Submission.id == Installation.submission_id)
+        .where(Submission.id.in_(bindparam("submission_ids", expanding=True)), _not_put_right())
+        .order_by(Installation.event_number)
     )
 
 

@@ -31,7 +31,13 @@ class Recomputed:
 
 
 def recomputed(
-    loop: LoopRegistration, model: SignedModel, index: int, gain_set: SignedGains, claims: Claims | None
+    loop: LoopRegistration,
+    model: SignedModel,
+    index: int,
+    gain_set: SignedGains,
+    claims: Claims | None,
+    *,
+    with_curves: bool = True,
 ) -> Recomputed:
     """Recompute the gain set at `index` with one model.
 
@@ -43,7 +49,7 @@ def recomputed(
             model.model.plant_model,
             gain_set.controller,
             ranges=loops.ranges(loop),
-            with_curves=True,
+            with_curves=with_curves,
             with_second_opinion=True,
         )
     scan = gain_set.controller.scan

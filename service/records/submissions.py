@@ -28,7 +28,7 @@ from service.records import (
     signing,
     states,
 )
-from service.records.basis import Basis, present_basis, read_basis
+from service.records.basis import Basis, models_in_force, present_basis, read_basis
 from service.records.content import (
     Person,
     SignedContent,
@@ -95,10 +95,7 @@ def prepare(session: Session, actor: Actor, request: SubmissionRequest, now: dat
     loop = loops.find_by_tag(session, actor, request.loop.site, request.loop.tag)
     check_may_submit(actor)
     sets = gain_sets.of_request(request)
-    models = tuple(
-        SignedModel(id=row.id, version=row.version, model=loops.read_model(row))
-        for row in loops.models_in_force(session, loop.id)
-    )
+    models = models_in_force(session, loop.id)
     authors = _authors(session, actor, request)
     _check_fields(session, request, loop, sets, models, now)
     in_force = present_content.gains_in_force(session, loop.id)

@@ -7,15 +7,14 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from typing import NamedTuple
 
 from service.analysis.plant import Range
 from service.analysis.results import Curves
 from service.documents.loops import LoopRegistration
 from service.figures.responses import Response, stored_responses
 from service.judgement.digits import as_entered
-from service.judgement.quantities import leaves_scan_out
 from service.judgement.wording import criterion_sentence
+from service.records.approvability import worst_verdict
 from service.records.content import DecisionContent, SignedContent, SignedModel, SignedRecomputation
 from service.records.lifecycle import REVIEW_OWED
 from service.records.views import CurvesView, EntryReference, SubmissionView
@@ -26,6 +25,7 @@ from service.sheets.controllers import Told
 from service.sheets.gain_tables import GainTable, gain_tables, set_before
 from service.sheets.signatures import Signature, installation, named, signature, utc
 from service.sheets.states import STATES, StateWords
+from service.sheets.summaries import recomputation_title, summary
 
 RENDERER_VERSION = "2"
 """Of all that decides how a sheet looks: raised with each change by which the bytes of a sheet change."""
@@ -96,7 +96,8 @@ def content_of(
     are drawn beside where they were computed with the same model.
     """
     signed = view.content
-    good, summary = _summary(signed)
+    answers = [each.answer for each in signed.recomputations]
+    told = summary(worst_verdict(signed.recomputations), answers, signed.criteria)
     drawn = {(each.model_id, each.gain_set): each.curves for each in curves}
     beside = {(each.model_id, each.gain_set): each.curves for each in curves_in_force}
     effects = {(each.model_id, each.gain_set): each.sentences for each in view.effects}
@@ -108,8 +109,8 @@ def content_of(
         description=signed.loop.description,
         state=STATES[view.state],
         conditions=tuple(_conditions(view)),
-        summary=summary,
-        summary_good=good,
+        summary=told.sentence,
+        summary_good=told.good,
         tables=tuple(gain_tables(view)),
         cautions=cautions(
             [each.answer.recomputation.facts for each in signed.recomputations], signed.loop.inner_loop
@@ -170,51 +171,6 @@ def _responses(
         earlier=beside.get((recomputed.model_id, index_before)),
         name="these gains",
         earlier_name="gains before",
-    )
-
-
-def _summary(signed: SignedContent) -> tuple[bool, str]:
-    """Whether all is well, and the one line that says so or not. Never more than was computed."""
-    if not signed.recomputations:
-        return False, "Nothing was recomputed: there is no model of this process on record."
-    verdicts = {each.answer.recomputation.verdict for each in signed.recomputations}
-    verdict = next(worst for worst in ("unstable", "undecided", "stable") if worst in verdicts)
-    uncertainty = _uncertainty(signed)
-    told = {
-        "unstable": "The recomputed loop is UNSTABLE.",
-        "undecided": "It could NOT BE SHOWN that the loop is stable.",
-        "stable": f"The recomputed loop is stable{uncertainty.words}.",
-    }[verdict]
-    outcomes = [worst.finding.outcome for worst in signed.criteria]
-    counts = ((outcomes.count("not_met"), "NOT MET"), (outcomes.count("not_assessed"), "NOT ASSESSED"))
-    failed = [f"{count} {words}" for count, words in counts if count]
-    if failed:
-        told += f" Limits: {' and '.join(failed)}, of {len(outcomes)}."
-    else:
-        told += f" Limits: all {len(outcomes)} met." if outcomes else " It was held against NO LIMIT."
-    return verdict == "stable" and uncertainty.well and bool(outcomes) and not failed, told
-
-
-class _Uncertainty(NamedTuple):
-    """Whether what is known of the models' uncertainty speaks for the loop, and the words behind "stable"."""
-
-    well: bool
-    words: str
-
-
-def _uncertainty(signed: SignedContent) -> _Uncertainty:
-    told = [each.answer.recomputation for each in signed.recomputations]
-    boxes = [each.worst_case.stable_for_all for each in told if each.worst_case is not None]
-    scan = " (computed without the scan)" if any(leaves_scan_out(each) for each in told) else ""
-    if False in boxes:
-        words = f" as modelled, but NOT for every model within the stated uncertainty{scan}"
-        return _Uncertainty(False, words)
-    if None in boxes or any("worst_case" in each.not_computed for each in told):
-        return _Uncertainty(False, " as modelled; for its stated uncertainty that is NOT SHOWN")
-    # where one operating point states none, nothing is said of all of them
-    proven = len(boxes) == len(told) > 0
-    return _Uncertainty(
-        True, f", and so is every model within the stated uncertainty{scan}" if proven else ""
     )
 
 
@@ -288,8 +244,7 @@ def _worst(signed: SignedContent) -> Iterator[str]:
 
 def _title(signed: SignedContent, recomputed: SignedRecomputation) -> str:
     condition = signed.gain_sets[recomputed.gain_set].condition
-    set_of = f", gains for: {condition}" if condition is not None else ""
-    return f"Operating point: {recomputed.operating_point}{set_of}"
+    return recomputation_title(recomputed.operating_point, condition)
 
 
 def _model(signed: SignedModel) -> Model:

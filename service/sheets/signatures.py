@@ -12,6 +12,7 @@ from service.judgement.wording import UNITS, WORST_CASE_LABELS, quantity_label, 
 from service.records.content import Difference, Person
 from service.records.views import DecisionView, InstallationView
 from service.sheets import controllers
+from service.sheets.as_left import in_one_line
 from service.sheets.controllers import Told
 
 DECISIONS = {
@@ -73,6 +74,8 @@ def installation(view: InstallationView) -> Told:
     )
     told = [f"recorded by {named(done.recorded_by)}", *(f"{role} {name}" for role, name in people if name)]
     told.append("as left is as approved" if done.as_approved else "AS LEFT IS NOT AS APPROVED")
+    if done.as_left_recomputed:
+        told.append(in_one_line(done.as_left_recomputed))
     told += [f"left: {_difference(each)}" for each in done.differences]
     told += [f"found: {_difference(each)}" for each in done.as_found_differences or ()]
     told.append(_SAVED[request.saved_to_engineering_database])

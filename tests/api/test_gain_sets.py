@@ -44,6 +44,8 @@ def test_scheduled_gains_are_installed_in_one_record_or_set_by_set(service: Serv
         {"gain_set": 1, "as_approved": False},
     ]
     assert {each["condition"] for each in mistyped.json["differences"]} == {"two pumps"}
+    recomputed = mistyped.json["as_left_recomputed"]["recomputations"]
+    assert [(each["gain_set"], each["model"]["operating_point"]) for each in recomputed] == [(1, "high load")]
     assert service.get(path).json["state"] == "approved"
     mended = two | {"as_found": with_gain(15.0), "as_left": with_gain(1.5)}
     answer = service.post(f"{path}/installations", done | {"gain_sets": [mended]})

@@ -88,11 +88,16 @@ def test_what_is_answered_on_the_walk_is_what_is_described(
     own = f"/v1/submissions/{submission['id']}"
     one = "/v1/submissions/{submission_id}"
     signed = decide()
+    mistyped = changed(plant.installed_now(), "/as_left/proportional/value", 20.0)
+    otherwise = service.post(f"{own}/installations", mistyped)
+    left = service.get(f"/v1/loops/{loop_id}/gains-in-force")
     installed = service.post(f"{own}/installations", plant.installed_now())
     computed = service.post("/v1/recomputations", plant.RECOMPUTATION | {"include": ["curves"]})
     made = [
         (submission, answer_schema(description, "/v1/submissions", "post", "201")),
         (signed.json, answer_schema(description, f"{one}/decisions", "post", "201")),
+        (otherwise.json, answer_schema(description, f"{one}/installations", "post", "201")),
+        (left.json, answer_schema(description, "/v1/loops/{loop_id}/gains-in-force")),
         (installed.json, answer_schema(description, f"{one}/installations", "post", "201")),
         (computed.json, answer_schema(description, "/v1/recomputations", "post")),
     ]

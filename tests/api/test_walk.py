@@ -80,6 +80,35 @@ def test_what_was_typed_in_last_is_told_beside_what_is_in_force(
     assert service.get("/v1/submissions?left_otherwise=perhaps").status_code == 400
 
 
+def test_gains_left_otherwise_are_recomputed_and_told_wherever_the_installation_is(
+    service: Service, submission: Body, decide: Decide
+) -> None:
+    decide()
+    path = f"/v1/submissions/{submission['id']}"
+    mistyped = changed(plant.installed_now(), "/as_left/proportional/value", 20.0)
+    key = {"Idempotency-Key": "typed-once"}
+    answer = service.post(f"{path}/installations", mistyped, headers=key)
+    told = answer.json["as_left_recomputed"]
+    assert told["verdict"] == "unstable"
+    (recomputed,) = told["recomputations"]
+    assert recomputed["model"] == submission["recomputations"][0]["model"]
+    request = {"plant_model": plant.MODEL["plant_model"], "controller": mistyped["as_left"]}
+    alone = service.post("/v1/recomputations", request | {"include": ["second_opinion"]}).json
+    own = [each for each in recomputed["result"]["findings"] if "finding" in each]
+    assert recomputed["result"] | {"findings": own} == alone
+    # the same request again is the same record, and nothing is computed or written
+    rows = service.rows()
+    assert service.post(f"{path}/installations", mistyped, headers=key).json == answer.json
+    assert service.rows() == rows
+    assert service.get(path).json["installations"] == [answer.json]
+    (event,) = service.get("/v1/history?kind=gains_installed_otherwise", person="auditor").json["items"]
+    in_history = event["content"]["installation"]["as_left_recomputed"]
+    assert in_history["verdict"] == "unstable"
+    assert in_history["recomputations"][0]["model"] == recomputed["model"]
+    mended = service.post(f"{path}/installations", plant.installed_now()).json
+    assert mended["as_left_recomputed"] is None
+
+
 def test_the_sheet_comes_out_as_a_pdf_with_the_gains_as_they_were_typed(
     service: Service, submission: Body, decide: Decide
 ) -> None:

@@ -189,17 +189,24 @@ class Store:
         given = tuple(Deviation(criterion=name, reason="accepted") for name in submission.deviations_needed)
         return self.decide(submission, "approve", person, **({"deviation": given} | changes))
 
-    def install(
+    def prepare_installation(
         self, submission: SubmissionView, person: str = "submitter", **changes: Any
-    ) -> InstallationView:
+    ) -> installations.PreparedInstallation:
         document = {
             "as_found": gains(1.0),
             "as_left": gains(),
             "installed_at": self.clock().isoformat(),
         }
         request = read(InstallationRequest, document | changes)
+        with self.database.reading() as session:
+            return installations.prepare(session, self.actor(person), submission.id, request, self.clock())
+
+    def install(
+        self, submission: SubmissionView, person: str = "submitter", **changes: Any
+    ) -> InstallationView:
+        prepared = self.prepare_installation(submission, person, **changes)
         with self.database.writing() as session:
-            return installations.install(session, self.actor(person), submission.id, request, self.clock())
+            return installations.install(session, self.actor(person), prepared, self.clock())
 
     def read(self, submission: SubmissionView, person: str = "reviewer") -> SubmissionView:
         with self.database.reading() as session:
