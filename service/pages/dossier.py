@@ -14,11 +14,15 @@ from service.figures.frequency import frequency_drawing
 from service.figures.responses import Response, response_drawing
 from service.figures.svg import to_svg
 from service.issuing import sheets
+from service.pages import left_otherwise
 from service.pages.changes import ChangeLine, ChangeTable, change_table, installed_otherwise
+from service.pages.left_otherwise import LeftOtherwise
 from service.pages.standing import Standing, standing
 from service.pages.visits import Visit
 from service.records import queries
+from service.records.content import InstallationContent
 from service.records.views import Comparison, CurvesView, SubmissionView
+from service.sheets.as_left import told_as_left
 from service.sheets.assessments import Assessment
 from service.sheets.content import SheetContent
 from service.sheets.signatures import DECISIONS, EARLIER
@@ -71,6 +75,8 @@ class Dossier:
     told: tuple[Told, ...]
     history: tuple[Happening, ...]
     standing: Standing
+    left_otherwise: LeftOtherwise | None
+    """Gains of this loop, of whichever submission, that were left otherwise and not put right since."""
 
 
 def dossier(visit: Visit, submission_id: str, *, with_figures: bool) -> Dossier:
@@ -85,6 +91,7 @@ def dossier(visit: Visit, submission_id: str, *, with_figures: bool) -> Dossier:
         told=tuple(_told(sheet, curves if with_figures else None)),
         history=tuple(sorted(_happenings(view), key=lambda happening: happening.entry)),
         standing=standing(view, visit.actor),
+        left_otherwise=left_otherwise.of_loop(visit, view.content.loop_id),
     )
 
 
@@ -160,9 +167,16 @@ def _happenings(view: SubmissionView) -> Iterator[Happening]:
             time=made_known.installation.installed_at,
             what="Installed as approved" if made_known.as_approved else "Installed otherwise than approved",
             who=made_known.recorded_by.full_name,
-            lines=tuple(map(_difference, installed_otherwise(view.content, made_known))),
+            lines=tuple(_of_installation(view, made_known)),
             entry=done.entry.number,
         )
+
+
+def _of_installation(view: SubmissionView, done: InstallationContent) -> Iterator[str]:
+    yield from map(_difference, installed_otherwise(view.content, done))
+    if not done.as_approved:
+        told = told_as_left(done.as_left_recomputed)
+        yield f"{told.sentence} {told.summary}".strip()
 
 
 def _difference(line: ChangeLine) -> str:

@@ -6,9 +6,10 @@ from flask import Blueprint, Response
 
 from service.pages import visits
 from service.pages.frame import page
-from service.records import change_queries, queries, resets
+from service.records import change_queries, left_otherwise, queries, resets
 from service.records.change_queries import ChangeFilter
 from service.records.queries import SubmissionFilter
+from service.sheets.as_left import told_as_left
 
 SHOWN = 50
 TO_INSTALL = SubmissionFilter(states=frozenset({"approved"}))
@@ -31,6 +32,7 @@ def home() -> Response:
         to_install = queries.submissions(session, actor, TO_INSTALL, now, limit=SHOWN)
         past = queries.submissions(session, actor, PAST_THEIR_TIME, now, limit=SHOWN)
         otherwise = queries.submissions(session, actor, LEFT_OTHERWISE, now, limit=SHOWN)
+        left = left_otherwise.recomputed(session, (each.id for each in otherwise.items))
         due = queries.submissions(session, actor, DUE_FOR_RECHECK, now, limit=SHOWN)
         proposed = change_queries.changes(session, actor, TO_CONFIRM, limit=SHOWN)
         reset = resets.awaiting(session, actor) if "administrator" in actor.roles else ()
@@ -41,6 +43,7 @@ def home() -> Response:
         to_install=to_install,
         past=past,
         otherwise=otherwise,
+        as_left={submission_id: told_as_left(each) for submission_id, each in left.items()},
         due=due,
         proposed=proposed,
         reset=reset,

@@ -7,18 +7,18 @@ from dataclasses import dataclass
 from flask import Blueprint, Response
 
 from service.judgement.wording import criterion_words
-from service.pages import forms, lists, visits
+from service.pages import forms, left_otherwise, lists, visits
 from service.pages.forms import Form
 from service.pages.frame import page
+from service.pages.left_otherwise import LeftOtherwise
 from service.pages.visits import Visit
-from service.records import change_queries, left_otherwise, queries
+from service.records import change_queries, queries
 from service.records import loops as records
 from service.records.change_queries import ChangeFilter
 from service.records.queries import LoopFilter, SubmissionFilter
 from service.records.views import (
     ChangeView,
     GainsInForce,
-    InstallationView,
     LoopView,
     ModelView,
     Page,
@@ -55,7 +55,7 @@ class LoopPage:
     revisions: tuple[LoopView, ...]
     models: tuple[ToldModel, ...]
     in_force: GainsInForce | None
-    left_otherwise: InstallationView | None
+    left_otherwise: LeftOtherwise | None
     gain_sets: tuple[ToldGains, ...]
     limits: tuple[str, ...]
     """Empty: the service's own floors hold."""
@@ -101,7 +101,7 @@ def _loop_page(visit: Visit, loop_id: str) -> LoopPage:
         revisions=records.revisions(session, actor, loop_id),
         models=tuple(ToldModel(each, plants.told(each.model.plant_model)) for each in models),
         in_force=in_force,
-        left_otherwise=left_otherwise.of_loop(session, actor, loop_id),
+        left_otherwise=left_otherwise.of_loop(visit, loop_id),
         gain_sets=_gain_sets(in_force),
         limits=_limits(view),
         changes=change_queries.changes(session, actor, ChangeFilter(loop_id=loop_id)),

@@ -97,6 +97,39 @@ def test_axe_finds_nothing_against_withdrawing_or_recording_an_installation(
         assert violations(page) == []
 
 
+def leave_otherwise(page: Page, site: Site, gain: str) -> None:
+    """Leave an emergency change's gains otherwise; the page then says what came of it."""
+    page.goto(site.submission("emergency") + "/installation")
+    for side, value in (("found", "1.60"), ("left", gain)):
+        page.locator(f"input[name={side}-action][value=reverse]").check()
+        page.locator(f"input[name={side}-proportional-value]").fill(value)
+        page.locator(f"input[name={side}-integral-value]").fill("30")
+    page.get_by_role("button", name="Record this installation").click()
+    expect(page.get_by_role("heading", level=1)).to_have_text("Installation recorded")
+
+
+def otherwise_told(page: Page, site: Site) -> list[str]:
+    """Every page that tells of gains that were left otherwise."""
+    paths = [f"/loops/{site.kept.loops['emergency']}", "/"]
+    return [page.url, site.submission("emergency"), *(site.address + path for path in paths)]
+
+
+@pytest.mark.parametrize("gain", ["20.0", "6.0"])
+def test_gains_left_otherwise_are_told_without_a_fault_on_a_wide_and_a_narrow_screen(
+    opened: Opened, site: Site, gain: str
+) -> None:
+    page = opened("author", scripts=True)
+    leave_otherwise(page, site, gain)
+    told = otherwise_told(page, site)
+    narrow = opened("author", width=320, scripts=True)
+    for address in told:
+        page.goto(address)
+        expect(page.get_by_text("unstable" if gain == "20.0" else "limits").first).to_be_visible()
+        assert violations(page) == [], address
+        narrow.goto(address)
+        assert sideways(narrow) == 0, address
+
+
 def test_no_page_scrolls_sideways_at_320_px(opened: Opened, site: Site) -> None:
     page = opened("reviewer", width=320, scripts=True)
     for address in addresses(site):

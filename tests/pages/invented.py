@@ -91,6 +91,7 @@ CASES = {
         {"reason": "reason without a single space ".replace(" ", "_") * 60},
     ),
     "without_model": Case("TIC-211", CONTROLLER, {}, {}, {}),
+    "emergency": Case("TIC-214", CONTROLLER, LAG, {}, {"kind": "emergency"}),
     "own_of_both": Case("TIC-212", CONTROLLER, LAG, {}, {}),
     "two_zeros": Case(
         "TIC-213",

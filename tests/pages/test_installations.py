@@ -1,7 +1,17 @@
 from __future__ import annotations
 
-import pytest
+from datetime import datetime
 
+import pytest
+from sqlalchemy.orm import Session
+
+from service.analysis.plant import FirstOrder
+from service.context import services
+from service.documents.installations import InstallationRequest
+from service.documents.loops import ModelVersion
+from service.records import installations, loops, queries
+from service.records.installations import PreparedInstallation
+from service.records.roles import Actor
 from tests.pages.conftest import Person, SignedIn
 from tests.pages.invented import Kept
 from tests.pages.test_decisions import decide
@@ -123,3 +133,90 @@ def test_a_wrong_number_is_told_on_the_loop_and_on_the_first_page(
     install(author, approved)
     assert "left otherwise" not in author.open(f"/loops/{kept.loops['stable']}").text
     assert "Left otherwise than approved" not in reviewer.open("/").text
+
+
+UNSTABLE = "✗ Unstable with the gains as left: the loop does not come to rest, it swings up or runs away."
+
+
+def test_an_unstable_loop_is_told_in_words_on_every_page_that_tells_of_it(
+    approved: str, kept: Kept, reviewer: Person, author: Person
+) -> None:
+    install(author, approved, **{"left-proportional-value": "20.0"})
+    made = author.page
+    assert [each.text for each in made.all("p") if "verdict" in each.get("class")] == [
+        "✗ As left is not as approved.",
+        UNSTABLE,
+    ]
+    assert "Tell the operator of this loop now. These gains were computed, not approved." in made.text
+    assert "Do not enter these gains" not in made.text
+    assert "The submitted gains are now approved and not yet installed." in made.text
+    for address in (f"/loops/{kept.loops['stable']}", f"/submissions/{approved}"):
+        told = author.open(address)
+        assert next(each.text for each in told.all("p") if each.get("class") == "verdict against") == UNSTABLE
+        assert "computed, not approved" in told.text
+    happened = author.page.one("section", aria_labelledby="so-far").text
+    assert UNSTABLE[2:] in happened
+    (row,) = (
+        row for row in reviewer.open("/").all("tr") if "✗ unstable" in row.text and "TIC-204" in row.text
+    )
+    assert "Approved and not yet installed" in row.text
+
+
+def test_what_is_stable_and_misses_limits_says_so(approved: str, reviewer: Person, author: Person) -> None:
+    install(author, approved, **{"left-proportional-value": "6.0"})
+    assert "✓ Stable with the gains as left" in author.page.text
+    assert "Computed, not approved." in author.page.text
+    (limit,) = (
+        each.text for each in author.page.all("li") if each.text.startswith("Gain margin at least 2: 1.")
+    )
+    assert limit.endswith("not met.")
+    (row,) = (row for row in reviewer.open("/").all("tr") if "✗ not all limits met" in row.text)
+    assert "✓ stable" in row.text
+
+
+def test_what_stays_within_every_limit_is_calm_and_not_approved(approved: str, author: Person) -> None:
+    install(author, approved, **{"left-proportional-value": "1.90"})
+    assert "✓ Stable with the gains as left" in author.page.text
+    assert "Computed, not approved." in author.page.text
+    assert "Tell the operator" not in author.page.text
+
+
+def test_later_gains_for_the_loop_are_read_with_what_runs_now(
+    approved: str, kept: Kept, reviewer: Person, author: Person
+) -> None:
+    install(author, approved, **{"left-proportional-value": "20.0"})
+    found = reviewer.open(f"/loops/{kept.loops['stable']}")
+    addresses = {link.get("href") for link in found.all("a") if link.get("href").startswith("/submissions/")}
+    (baseline,) = (each for each in addresses if each.count("/") == 2 and approved not in each)
+    assert UNSTABLE in reviewer.open(baseline).text
+    install(author, approved)
+    assert UNSTABLE not in reviewer.open(baseline).text
+
+
+def test_what_moved_while_the_form_was_read_gives_it_back_with_what_was_typed(
+    approved: str, author: Person, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    prepare = installations.prepare
+
+    def and_then_a_model_is_added(
+        session: Session, actor: Actor, submission_id: str, request: InstallationRequest, now: datetime
+    ) -> PreparedInstallation:
+        prepared = prepare(session, actor, submission_id, request, now)
+        loop_id = queries.submission(session, actor, submission_id, now).content.loop_id
+        plant = FirstOrder(kind="first_order", gain=2.4, time_constant_s=30.0, dead_time_s=5.0)
+        model = ModelVersion(plant_model=plant, operating_point="normal load", evidence="Once more.")
+        with services().database.writing() as writing:
+            loops.add_model(writing, actor, loop_id, model, now)
+        return prepared
+
+    monkeypatch.setattr(installations, "prepare", and_then_a_model_is_added)
+    install(author, approved, **{"left-proportional-value": "6.0", "typed_by": "Uma Reyes"})
+    assert author.status == 409
+    assert "the plant models changed; record the installation again" in author.page.one(id="problems").text
+    assert author.page.one("input", id="left-proportional-value").get("value") == "6.0"
+    assert author.page.one("input", id="typed_by").get("value") == "Uma Reyes"
+    monkeypatch.undo()
+    author.send(
+        f"/submissions/{approved}/installation?set=0", **{"left-action": "reverse", "found-action": "reverse"}
+    )
+    assert UNSTABLE in author.page.text
