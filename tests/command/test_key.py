@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import shlex
 import stat
 from collections.abc import Callable, Iterator
 from pathlib import Path
@@ -20,6 +21,7 @@ from service.records.database import system_clock
 from service.settings import Settings
 from tests.databases import Databases
 
+README = (Path(__file__).parents[2] / "README.md").read_text("utf-8")
 SECRET_KEY = "a secret of the tests, of 32 bytes or more"
 Run = Callable[..., Result]
 
@@ -87,6 +89,23 @@ def test_after_a_change_both_checkpoints_hold_and_an_export_says_the_same(
         for more in ((), ("--export", export)):
             result = run("history", "verify", "--checkpoint", held, "--public-key", public, *more)
             assert result.exit_code == 0, result.stderr
+
+
+def test_the_commands_of_the_readme_run_in_their_order(
+    run: Run, url: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    block = README.partition("tests/command/test_key.py runs this block. -->\n```\n")[2].partition("```")[0]
+    public, commands = "", [line for line in block.splitlines() if line.startswith(("gain-signoff", "curl"))]
+    assert len(commands) == 7
+    for line in commands:
+        if line.startswith("curl"):
+            checkpoint_of_the_service(url, Path("signing.pem"), Path("checkpoint.json"))
+            continue
+        _, *arguments = shlex.split(line.replace("PUBLIC_KEY", public), comments=True)
+        result = run(*arguments)
+        assert result.exit_code == 0, (line, result.stderr)
+        public = public or result.stdout.strip()
 
 
 def test_mistakes_are_said_in_one_sentence(run: Run, tmp_path: Path) -> None:
