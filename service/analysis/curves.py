@@ -43,7 +43,8 @@ def _response(responses: Responses, which: int, unit_rad_s: float) -> ResponseCu
     shown = _pieces_shown(responses, which)
     places = _places(shown)
     start, length = responses.start[:shown], responses.length[:shown]
-    times = (start[:, None] + length[:, None] * places).ravel()
+    # the end of a piece and the start of the next are one time, and may differ by their rounding
+    times = np.maximum.accumulate((start[:, None] + length[:, None] * places).ravel())
     pv, output = (_at_places(signal[which, :shown], places) for signal in (responses.pv, responses.output))
     keep = np.flatnonzero(_without_repeats(times, pv, output))
     keep = keep[_turns_of_many(pv[keep], output[keep])]

@@ -10,10 +10,15 @@ Point = tuple[float, float]
 
 
 def until(points: Sequence[Point], end: float) -> list[Point]:
-    """The points up to abscissa `end`, the last one interpolated there."""
-    kept = [point for point in points if point[0] <= end]
-    if len(kept) < len(points) and kept and kept[-1][0] < end:
-        kept.append((end, _ordinate(kept[-1], points[len(kept)], end)))
+    """The points up to abscissa `end`, the last one interpolated there.
+
+    In stored responses an abscissa may lie a rounding before the one ahead of it: what is past the first that
+    is beyond `end` is left out.
+    """
+    past = next((index for index, point in enumerate(points) if point[0] > end), len(points))
+    kept = list(points[:past])
+    if past < len(points) and kept and kept[-1][0] < end:
+        kept.append((end, _ordinate(kept[-1], points[past], end)))
     return kept
 
 

@@ -51,3 +51,10 @@ def test_nothing_is_drawn_outside_the_window(values: list[float]) -> None:
 def test_a_line_is_cut_at_an_abscissa_between_its_points() -> None:
     assert polyline.until([(0.0, 0.0), (1.0, 1.0), (2.0, 2.0)], 1.5) == [(0.0, 0.0), (1.0, 1.0), (1.5, 1.5)]
     assert polyline.until([(0.0, 0.0), (1.0, 1.0)], 5.0) == [(0.0, 0.0), (1.0, 1.0)]
+
+
+def test_a_line_is_cut_between_two_points_that_stand_a_rounding_apart_in_the_wrong_order() -> None:
+    points = [(0.0, 0.0), (7.500000000000001, 1.0), (7.499999999999999, 1.0), (9.0, 2.0)]
+    start, (at, height) = polyline.until(points, 7.5)
+    assert (start, at) == ((0.0, 0.0), 7.5)
+    assert math.isclose(height, 1.0)
