@@ -25,6 +25,7 @@ import numpy as np
 from service.analysis import chebyshev
 from service.analysis.chebyshev import NODES
 from service.analysis.errors import WorkBoundError
+from service.analysis.exponentials import exponentials_less_one
 from service.analysis.loop import ClosedLoopParts, Complexes, Reals
 from service.analysis.realisation import StateSpace
 from service.analysis.roots import CharacteristicRoots
@@ -251,7 +252,9 @@ class _Doubling:
     def __init__(self, matrix: Reals, rows: Reals, length: float) -> None:
         self._rows = rows
         self._length = length
-        self._exponentials = [_exponential_at_nodes(matrix, length)]
+        self._exponentials = [
+            exponentials_less_one(matrix, length * chebyshev.points(NODES)) + np.eye(len(matrix))
+        ]
         self._steps: dict[int, tuple[Reals, Reals, float]] = {}
 
     def level(self, longest: float) -> int:
@@ -268,21 +271,6 @@ class _Doubling:
             to_nodes = np.moveaxis(self._rows @ at_nodes, 1, 0).reshape(2 * NODES, -1)
             self._steps[level] = (at_nodes[-1], to_nodes, self._length * 2.0**level)
         return self._steps[level]
-
-
-def _exponential_at_nodes(matrix: Reals, length: float) -> Reals:
-    """e^(matrix·length·τ) at the nodes τ, shape (NODES, n, n): Taylor's series on a small length, squared."""
-    norm = float(np.abs(matrix).sum(axis=0).max()) * length
-    squarings = max(0, math.ceil(math.log2(norm / 0.5))) if norm > 0 else 0
-    scaled = matrix * (length / 2.0**squarings) * chebyshev.points(NODES)[:, None, None]
-    result = np.broadcast_to(np.eye(len(matrix)), scaled.shape).copy()
-    term = result
-    for order in range(1, 15):
-        term = term @ scaled / order
-        result = result + term
-    for _ in range(squarings):
-        result = result @ result
-    return result
 
 
 def _with_dead_time(known: _Known, plan: _Plan) -> Pieces:

@@ -13,6 +13,7 @@ import numpy as np
 
 from service.analysis import chebyshev
 from service.analysis.errors import WorkBoundError
+from service.analysis.exponentials import exponentials_less_one
 from service.analysis.loop import Reals
 from service.analysis.realisation import realise
 from service.analysis.responses import Responses, divided, final_values
@@ -25,7 +26,7 @@ from service.analysis.sampled_states import (
     SPARED_NOISE_INPUT,
     SampledStates,
 )
-from service.analysis.scan import SampledPlant, Scanned, augmented, exponentials_less_one
+from service.analysis.scan import SampledPlant, Scanned, augmented
 
 AT_REST = 23.0
 """A loop is at rest when its slowest root has died away by so many nepers (1e-10)."""

@@ -18,13 +18,12 @@ from dataclasses import dataclass
 import numpy as np
 
 from service.analysis.controller import Scan
+from service.analysis.exponentials import exponentials_less_one
 from service.analysis.loop import ClosedLoopParts, Reals
 from service.analysis.realisation import plant_state_space
 
 WHOLE = 1e-12
 """A dead time that is as near as this, relatively, to a whole number of scans is that number."""
-
-TAYLOR_TERMS = 16
 
 
 @dataclass(frozen=True, slots=True)
@@ -152,22 +151,3 @@ def augmented(a: Reals, b: Reals) -> Reals:
     matrix = np.zeros((n + 1, n + 1))
     matrix[:n, :n], matrix[:n, n] = a, b
     return matrix
-
-
-def exponentials_less_one(matrix: Reals, times: Reals) -> Reals:
-    """e^(matrix·t) − 1 for each t, shape (m, n, n): Taylor's series on a small part of each, squared.
-
-    The one is left out, since what changes over a short scan would lose its digits beside it.
-    C. Moler, C. Van Loan, Nineteen dubious ways to compute the exponential of a matrix, SIAM Review 45
-    (2003).
-    """
-    norm = float(np.abs(matrix).sum(axis=0).max(initial=0.0)) * float(np.abs(times).max(initial=0.0))
-    squarings = max(0, math.ceil(math.log2(norm / 0.5))) if norm > 0.5 else 0
-    scaled = matrix * (times / 2.0**squarings)[:, None, None]
-    identity = np.eye(len(matrix))
-    less_one = np.zeros_like(scaled)
-    for order in range(TAYLOR_TERMS, 0, -1):
-        less_one = scaled @ (identity + less_one) / order
-    for _ in range(squarings):
-        less_one = 2.0 * less_one + less_one @ less_one
-    return np.asarray(less_one)

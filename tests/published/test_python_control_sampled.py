@@ -7,7 +7,8 @@ from __future__ import annotations
 import numpy as np
 
 from service.analysis.controller import Scan
-from service.analysis.scan import augmented, exponentials_less_one
+from service.analysis.exponentials import exponentials_less_one
+from service.analysis.scan import augmented
 from tests.analysis.entered import ideal, ratio
 from tests.published.held import at_scans
 from tests.published.reading import decimals, exact

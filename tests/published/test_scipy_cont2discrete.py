@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 
-from service.analysis.scan import augmented, exponentials_less_one
+from service.analysis.exponentials import exponentials_less_one
+from service.analysis.scan import augmented
 from tests.analysis.entered import ratio
 from tests.published.held import ratio_in_z
 from tests.published.reading import decimals, printed
