@@ -16,7 +16,7 @@ from functools import cached_property
 import numpy as np
 import numpy.typing as npt
 
-from service.analysis.brackets import newton_zero, zeros_in_steps
+from service.analysis.brackets import newton_zero, newton_zero_of_one, zeros_in_steps
 from service.analysis.loop import Complexes, OpenLoop, Reals
 
 FINE_STEP = 0.25
@@ -54,7 +54,7 @@ class AxisResponse:
     @cached_property
     def _magnitude_turns(self) -> Reals:
         """Where abs L turns, shape (t,)."""
-        return self._turns(self.log_slope.real, lambda omega: self.loop.at_frequency(omega)[1].real)
+        return self._turns(self.log_slope.real, lambda omega: self.loop.log_magnitude_at(omega)[1])
 
     @cached_property
     def gain_crossovers(self) -> Reals:
@@ -62,12 +62,17 @@ class AxisResponse:
         omega, logs = self._with_points(self._magnitude_turns)
         values = logs.real
         crossed = np.flatnonzero((values[:-1] > 0) != (values[1:] > 0))
-        return zeros_in_steps(lambda at: self.loop.at_frequency(at)[0].real, omega, values, crossed)
+        low, high, at_low, at_high = omega[crossed], omega[crossed + 1], values[crossed], values[crossed + 1]
+        # abs L is nearly a power of ω
+        start = low * (high / low) ** (at_low / (at_low - at_high))
+        brackets = zip(low.tolist(), high.tolist(), (at_low > 0).tolist(), start.tolist(), strict=True)
+        told = self.loop.log_magnitude_at
+        return np.array([newton_zero_of_one(told, *bracket) for bracket in brackets], np.float64)
 
     @cached_property
     def phase_crossovers(self) -> PhaseCrossings:
         """Where L is real and negative: the lowest of them, and those that bound the margins."""
-        turns = self._turns(self.log_slope.imag, lambda omega: self.loop.at_frequency(omega)[1].imag)
+        turns = self._turns(self.log_slope.imag, self.loop.phase_slope_at)
         # abs L is monotone between these: the first and last crossing between two of them bound the rest
         marks = np.sort(np.concatenate([self._magnitude_turns, self.gain_crossovers]))
         inserted = np.sort(np.concatenate([turns, marks]))

@@ -150,6 +150,31 @@ class OpenLoop:
             slope -= 2.0 * self.all_pass / (1.0 + omega * omega)
         return log, 1j * slope
 
+    def log_magnitude_at(self, omega: float) -> tuple[float, float]:
+        """(ln abs L(jω), its derivative by ω) at one frequency: the real parts of `at_frequency`, which dead
+        time does not touch.
+        """
+        log, slope = 0.0, 0.0
+        for root, weight, _ in self._factors_one_by_one:
+            above = omega - root.imag
+            square = above * above + root.real * root.real
+            if square == 0.0:
+                return -weight * math.inf, math.nan
+            log += weight * math.log(square)
+            slope += weight * above / square
+        return self.log_gain + 0.5 * log, slope
+
+    def phase_slope_at(self, omega: float) -> float:
+        """The derivative of the phase by ω at one frequency: the imaginary part that `at_frequency` has."""
+        slope = -self.dead_time - 2.0 * self.all_pass / (1.0 + omega * omega)
+        for root, weight, _ in self._factors_one_by_one:
+            above = omega - root.imag
+            square = above * above + root.real * root.real
+            if square == 0.0:
+                return math.nan
+            slope -= weight * root.real / square
+        return slope
+
     def log_response(self, omega: Reals) -> Complexes:
         """ln L(jω) alone."""
         roots, weights, turned, constant = self._factors
