@@ -10,7 +10,6 @@ confirmed by the eigenvalues at it, and where they do not tell by counting roots
 
 from __future__ import annotations
 
-import cmath
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
@@ -238,7 +237,7 @@ def _cells(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator
     delays = (shares - plant.fraction) % 1.0 * interval
     here = OnCircle(sampled, angles)
     divided = [replace(each, whole_scans=0) for each in sampled.scanned.samples(delays.tolist())]
-    values = np.array([here.value(each) for each in divided])
+    values = here.values(divided)
     left = _cells_near_one(np.abs(values))
     if not left.size:
         return
@@ -317,8 +316,7 @@ def _wrapped(angle: Reals) -> Reals:
 def _solved(sampled: SampledLoop, angle: float) -> _Touch | None:
     """The solution with the least extra delay > 0 near the angle; None where none is found."""
     scanned = sampled.scanned
-    here = OnCircle(sampled, np.array([angle])).value(sampled.plant)
-    phase = (cmath.phase(complex(here[0])) + math.pi) % (2.0 * math.pi)
+    phase = (sampled.loop.at_frequency(math.tan(0.5 * angle))[0].imag + math.pi) % (2.0 * math.pi)
     for turns in (0, 1):
         start = (phase + 2.0 * math.pi * turns) / angle
         solution = _newton(sampled, angle, start) or _bracketed(sampled, angle, start)

@@ -136,13 +136,14 @@ class Scanned:
         split = [self.split_delay(extra) for extra in extra_delays]
         shares = [share for _, fraction in split for share in (fraction, 1.0 - fraction)]
         over = exponentials_less_one(augmented(a, b), self.interval * np.array([*shares, 1.0]))
-        scan = over[-1, :n, :n]
-        plants = []
-        for (whole, fraction), first, second in zip(split, over[:-1:2], over[1::2], strict=True):
-            gamma1 = first[:n, n] + second[:n, :n] @ first[:n, n]
-            slope = self.interval * (b + second[:n, :n] @ b)
-            plants.append(SampledPlant(scan, second[:n, n], gamma1, slope, c, d, whole, fraction))
-        return plants
+        first, second = over[:-1:2, :n, n], over[1::2]
+        to_end = second[:, :n, :n]
+        gamma1 = first + (to_end @ first[..., None])[..., 0]
+        slope = self.interval * (b + to_end @ b)
+        return [
+            SampledPlant(over[-1, :n, :n], *of_each, c, d, *of_delay)
+            for of_delay, *of_each in zip(split, second[:, :n, n], gamma1, slope, strict=True)
+        ]
 
 
 def augmented(a: Reals, b: Reals) -> Reals:

@@ -19,6 +19,9 @@ DIVISIONS = (0.0, 0.2, 0.4, 0.6, 0.8)
 CLEARLY_BELOW = 0.5
 """A root leaves the circle where abs L is 1: none is looked for where abs L is below this."""
 
+NEAR_ONE = -math.log(CLEARLY_BELOW)
+"""Nepers about 1 within which abs L is looked at, beside what the division of a scan may move it by."""
+
 
 @dataclass(frozen=True, eq=False)
 class OnCircle:
@@ -32,7 +35,18 @@ class OnCircle:
 
     def value(self, plant: SampledPlant) -> Complexes:
         """L with this plant, (m,)."""
-        return np.asarray(self._controller * np.exp(-1j * plant.whole_scans * self.angle) * self._of(plant))
+        return self.values([plant])[0]
+
+    def values(self, plants: list[SampledPlant]) -> Complexes:
+        """L with each of several plants, (plants, m)."""
+        row, z = self._row, self._z[:, None]
+        gamma0, gamma1 = (
+            np.array(gammas).T for gammas in zip(*((p.gamma0, p.gamma1) for p in plants), strict=True)
+        )
+        whole_scans = np.array([plant.whole_scans for plant in plants], np.float64)
+        own = row @ gamma0 + (row @ gamma1 + self.sampled.plant.d) / z
+        turned = np.exp(-1j * self.angle[:, None] * whole_scans)
+        return np.asarray((self._controller[:, None] * turned * own).T)
 
     def slopes(self, plant: SampledPlant) -> tuple[Complexes, Complexes]:
         """(d ln L/d(ωh), d ln L/d(δ/h)), (m,) each."""
@@ -84,8 +98,8 @@ class OnCircle:
 
 @dataclass(frozen=True, eq=False)
 class Divided:
-    """abs L at angles ωh of the axis and at the Nyquist frequency, (m,), for dead times that divide a scan in
-    several ways, (divisions, m).
+    """abs L for dead times that divide a scan in several ways, (divisions, m), at angles ωh of the axis, (m,):
+    wherever it may come near 1, and at the Nyquist frequency.
     """
 
     angles: Reals
@@ -94,10 +108,16 @@ class Divided:
     @staticmethod
     def of(sampled: SampledLoop, axis: AxisResponse) -> Divided:
         """Those of a loop at the frequencies of its axis."""
-        angles = np.append(2.0 * np.arctan(axis.omega), math.pi)
+        angles = 2.0 * np.arctan(axis.omega)
+        # far below the scan's frequency the division of a scan moves abs L by no more than about the angle's
+        # square
+        near = np.abs(axis.log_response.real) < NEAR_ONE + 2.0 * angles**2
+        near[:-1] |= near[1:]
+        near[1:] |= near[:-1]
+        angles = np.append(angles[near], math.pi)
         scan, here = sampled.scanned, OnCircle(sampled, angles)
         delays = [(share - sampled.plant.fraction) % 1.0 * scan.interval for share in DIVISIONS]
-        return Divided(angles, np.abs([here.value(plant) for plant in scan.samples(delays)]))
+        return Divided(angles, np.abs(here.values(scan.samples(delays))))
 
     def reach(self) -> float:
         """The largest angle at which abs L is not clearly below 1 at some division; 0 where there is none."""
@@ -106,17 +126,13 @@ class Divided:
     def starts(self, axis: AxisResponse) -> list[float]:
         """Angles near every gain crossover at any division."""
         own: list[float] = (2.0 * np.arctan(axis.gain_crossovers)).tolist()
-        # far below the scan's frequency the division of a scan moves abs L by no more than about the angle's
-        # square
-        near = np.abs(axis.log_response.real) < 0.2 + 2.0 * self.angles[:-1] ** 2
-        near[:-1] |= near[1:]
-        near[1:] |= near[:-1]
-        near = np.append(near, True)
-        chosen, above = self.angles[near], self.magnitude[:, near] > 1
-        crossed = (above[:, :-1] != above[:, 1:]).any(axis=0)
+        above = self.magnitude > 1
+        crossed = np.flatnonzero((above[:, :-1] != above[:, 1:]).any(axis=0))
         more = [
             0.5 * (low + high)
-            for low, high in zip(chosen[:-1][crossed].tolist(), chosen[1:][crossed].tolist(), strict=True)
+            for low, high in zip(
+                self.angles[crossed].tolist(), self.angles[crossed + 1].tolist(), strict=True
+            )
             if not any(low <= angle <= high for angle in own)
         ]
         at_nyquist = above[:, -1]
