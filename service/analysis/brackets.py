@@ -63,9 +63,10 @@ def newton_zero_of_one(
 ) -> float:
     """`newton_zero` for one bracket, in plain numbers: a handful of zeros is found sooner so.
 
-    `function` gives value and slope; `above` says whether it is above 0 at `low`; `start` lies inside.
+    `function` gives value and slope; `above` says whether it is above 0 at `low`. Begins at `start` if that
+    lies inside.
     """
-    at, previous = start, high - low
+    at, previous = start if low <= start <= high else 0.5 * (low + high), high - low
     for _ in range(MAX_STEPS):
         value, slope = function(at)
         if value == 0:

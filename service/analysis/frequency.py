@@ -9,14 +9,16 @@ on a monotone piece and the list is complete.
 from __future__ import annotations
 
 import math
+from bisect import bisect_left
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
+from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
 
-from service.analysis.brackets import newton_zero, newton_zero_of_one, zeros_in_steps
+from service.analysis.brackets import newton_zero_of_one, zeros_in_steps
 from service.analysis.loop import Complexes, OpenLoop, Reals
 
 FINE_STEP = 0.25
@@ -61,7 +63,7 @@ class AxisResponse:
         """Every ω > 0 where abs L = 1, increasing, shape (m,)."""
         omega, logs = self._with_points(self._magnitude_turns)
         values = logs.real
-        crossed = np.flatnonzero((values[:-1] > 0) != (values[1:] > 0))
+        crossed = changes(values > 0)
         low, high, at_low, at_high = omega[crossed], omega[crossed + 1], values[crossed], values[crossed + 1]
         # abs L is nearly a power of ω
         start = low * (high / low) ** (at_low / (at_low - at_high))
@@ -72,45 +74,48 @@ class AxisResponse:
     @cached_property
     def phase_crossovers(self) -> PhaseCrossings:
         """Where L is real and negative: the lowest of them, and those that bound the margins."""
-        turns = self._turns(self.log_slope.imag, self.loop.phase_slope_at)
+        turns = self._turns(self.log_slope.imag, lambda omega: self.loop.phase_at(omega)[1])
         # abs L is monotone between these: the first and last crossing between two of them bound the rest
         marks = np.sort(np.concatenate([self._magnitude_turns, self.gain_crossovers]))
         inserted = np.sort(np.concatenate([turns, marks]))
         omega, logs = self._with_points(inserted)
-        phase, magnitude = logs.imag, logs.real
+        phase = logs.imag
         rounds = np.floor((phase + math.pi) / (2 * math.pi))
-        counts = np.abs(np.diff(rounds))
         # a phase that stands still at -180° is not crossed; only rounding moves it
-        counts[(np.abs(np.diff(phase)) <= 1e-12) & (np.diff(omega) > 1e-9 * omega[:-1])] = 0
-        chosen = _chosen_crossings(omega, magnitude, counts, marks)
-        pieces, within = chosen.pieces, chosen.within
-        falling = rounds[pieces + 1] < rounds[pieces]
-        turn = np.where(falling, rounds[pieces] - within, rounds[pieces] + 1 + within)
+        still = (np.abs(phase[1:] - phase[:-1]) <= 1e-12) & (omega[1:] - omega[:-1] > 1e-9 * omega[:-1])
+        crossed = ((rounds[1:] != rounds[:-1]) & ~still).nonzero()[0]
+        ends = [each[at] for each in (omega, logs, rounds) for at in (crossed, crossed + 1)]
+        steps = [_Step(*each) for each in zip(*(end.tolist() for end in ends), strict=True)]
+        chosen, truncated = _chosen_crossings(steps, marks.tolist())
+        solved = np.array([self._phase_crossover(*each) for each in chosen], np.float64)
+        return PhaseCrossings(solved, self.loop.log_response(solved).real, truncated)
+
+    def _phase_crossover(self, step: _Step, within: int) -> float:
+        """Where L is real and negative for the time `within` in the step."""
+        falling = step.round_right < step.round_left
+        turn = step.round_left - within if falling else step.round_left + 1 + within
         target = turn * (2 * math.pi) - math.pi
-        if not pieces.size:
-            return PhaseCrossings(np.empty(0), np.empty(0), chosen.truncated)
 
-        def from_target(at: Reals) -> tuple[Reals, Reals]:
-            values, slopes = self.loop.on_axis(at)
-            return values.imag - target, slopes.imag
+        def from_target(omega: float) -> tuple[float, float]:
+            phase, slope = self.loop.phase_at(omega)
+            return phase - target, slope
 
+        share = (target - step.log_left.imag) / (step.log_right.imag - step.log_left.imag)
+        start = step.left + min(max(share, 0.0), 1.0) * (step.right - step.left)
         # by the rounds, not by the phase at the low end: that is 0 where the crossing lies on it
-        at_low = np.where(falling, 1.0, -1.0)
-        solved = newton_zero(from_target, omega[pieces], omega[pieces + 1], at_low)
-        return PhaseCrossings(solved, self.loop.log_response(solved).real, chosen.truncated)
+        return newton_zero_of_one(from_target, step.left, step.right, falling, start)
 
     def _turns(self, slopes: Reals, slope_at: Callable[[float], float]) -> Reals:
         """Where a function of ω with these slopes on the grid turns, shape (t,)."""
-        turning = np.flatnonzero((slopes[:-1] > 0) != (slopes[1:] > 0))
-        return zeros_in_steps(slope_at, self.omega, slopes, turning, TURN_PLACE)
+        return zeros_in_steps(slope_at, self.omega, slopes, changes(slopes > 0), TURN_PLACE)
 
     def _with_points(self, more: Reals) -> tuple[Reals, Complexes]:
         """The grid and ln L on it with further frequencies put in."""
         if not more.size:
             return self.omega, self.log_response
-        at = np.searchsorted(self.omega, more)
-        logs = np.insert(self.log_response, at, self.loop.log_response(more))
-        return np.insert(self.omega, at, more), logs
+        omega = np.concatenate([self.omega, more])
+        order = omega.argsort(kind="stable")
+        return omega[order], np.concatenate([self.log_response, self.loop.log_response(more)])[order]
 
 
 @dataclass(frozen=True, eq=False)
@@ -122,39 +127,58 @@ class PhaseCrossings:
     truncated: bool
 
 
-@dataclass(frozen=True, eq=False)
-class _ChosenCrossings:
-    pieces: Indices
-    within: Reals
-    truncated: bool
-
-
-def _chosen_crossings(omega: Reals, magnitude: Reals, counts: Reals, marks: Reals) -> _ChosenCrossings:
-    """Which crossings to solve for, each as its piece of the grid and its number in it.
-
-    The lowest ones that can be listed, and the first and last of each stretch on which abs L is monotone.
+class _Step(NamedTuple):
+    """A step of the grid in which L is real and negative: ω and ln L at both ends, and how many whole turns
+    the phase there lies above −180°.
     """
-    crossed = np.flatnonzero(counts)
+
+    left: float
+    right: float
+    log_left: complex
+    log_right: complex
+    round_left: float
+    round_right: float
+
+    @property
+    def times(self) -> int:
+        """How often L is real and negative in it."""
+        return int(abs(self.round_right - self.round_left))
+
+
+def _chosen_crossings(steps: list[_Step], marks: list[float]) -> tuple[list[tuple[_Step, int]], bool]:
+    """Which crossings to solve for, each as its step and its number in it, and whether there are more to
+    list.
+
+    The lowest ones that can be listed, and the first and last of each stretch on which abs L is monotone,
+    which `marks` part.
+    """
     low, high = (math.log(1.0 / factor) for factor in reversed(LISTED_FACTORS))
-    near = (np.maximum(magnitude[crossed], magnitude[crossed + 1]) >= low) & (
-        np.minimum(magnitude[crossed], magnitude[crossed + 1]) <= high
-    )
-    pairs: set[tuple[int, float]] = set()
+    chosen: set[tuple[int, int]] = set()
     listed = 0
-    for piece, count in zip(crossed[near].tolist(), counts[crossed[near]].tolist(), strict=True):
-        wanted = int(min(count, MAX_LISTED + 1 - listed))
-        pairs.update((piece, float(number)) for number in range(wanted))
-        listed += wanted
+    for index, step in enumerate(steps):
+        larger, smaller = (
+            max(step.log_left.real, step.log_right.real),
+            min(step.log_left.real, step.log_right.real),
+        )
+        if larger >= low and smaller <= high:
+            wanted = min(step.times, MAX_LISTED + 1 - listed)
+            chosen.update((index, number) for number in range(wanted))
+            listed += wanted
         if listed > MAX_LISTED:
             break
-    stretch = np.searchsorted(marks, 0.5 * (omega[crossed] + omega[crossed + 1]))
-    first = np.flatnonzero(np.diff(stretch, prepend=-1))
-    last = np.append(first[1:] - 1, len(crossed) - 1) if crossed.size else first
-    pairs.update((piece, 0.0) for piece in crossed[first].tolist())
-    pairs.update(zip(crossed[last].tolist(), (counts[crossed[last]] - 1.0).tolist(), strict=True))
-    ordered = sorted(pairs)
-    pieces = np.array([piece for piece, _ in ordered], dtype=np.intp)
-    return _ChosenCrossings(pieces, np.array([number for _, number in ordered]), listed > MAX_LISTED)
+    stretches = [bisect_left(marks, 0.5 * (step.left + step.right)) for step in steps]
+    for index, stretch in enumerate(stretches):
+        if index == 0 or stretch != stretches[index - 1]:
+            chosen.add((index, 0))
+        if index == len(steps) - 1 or stretch != stretches[index + 1]:
+            chosen.add((index, steps[index].times - 1))
+    return [(steps[index], number) for index, number in sorted(chosen)], listed > MAX_LISTED
+
+
+def changes(told: npt.NDArray[np.bool_]) -> Indices:
+    """The steps, by their left ends, in which what is told of each point of a grid changes."""
+    steps: Indices = (told[1:] != told[:-1]).nonzero()[0]
+    return steps
 
 
 def log_factors(omega: Reals, roots: Complexes) -> Complexes:
@@ -189,7 +213,9 @@ def distinct(values: Reals) -> Reals:
     rest.
     """
     values = np.sort(values)
-    return np.asarray(values[np.append(True, np.diff(values) > 0)])
+    first = np.ones(len(values), bool)
+    np.greater(values[1:], values[:-1], out=first[1:])
+    return np.asarray(values[first])
 
 
 def _asymptote_marks(loop: OpenLoop) -> list[float]:

@@ -13,6 +13,7 @@ import cmath
 import math
 from dataclasses import dataclass, replace
 from functools import cached_property
+from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
@@ -30,6 +31,14 @@ EPSILON = float(np.finfo(np.float64).eps)
 
 CANCELLED = 8 * EPSILON
 """A zero and a pole nearer to each other than this, relatively, are one number in float64."""
+
+
+class LoopAt(NamedTuple):
+    """L(s), d ln L/ds and d ln D/ds at points s, (m,) each; D is the product of all poles' factors."""
+
+    value: Complexes
+    log_slope: Complexes
+    log_slope_of_denominator: Complexes
 
 
 @dataclass(frozen=True, eq=False)
@@ -71,13 +80,13 @@ class OpenLoop:
     @cached_property
     def order_at_origin(self) -> int:
         """Poles minus zeros at s = 0; negative where zeros prevail."""
-        return int(np.count_nonzero(self.poles == 0)) - int(np.count_nonzero(self.zeros == 0))
+        return int(self.poles.tolist().count(0) - self.zeros.tolist().count(0))
 
     @cached_property
     def log_origin_coefficient(self) -> float:
         """ln abs c in L(s) → c·s^(−order_at_origin) as s → 0."""
-        zeros, poles = self.zeros[self.zeros != 0], self.poles[self.poles != 0]
-        return self.log_gain + float(np.log(np.abs(zeros)).sum() - np.log(np.abs(poles)).sum())
+        weighted = ((abs(root), weight) for root, weight, _ in self._factors_one_by_one)
+        return self.log_gain + sum(weight * math.log(size) for size, weight in weighted if size > 0.0)
 
     @cached_property
     def origin_coefficient(self) -> float:
@@ -164,16 +173,21 @@ class OpenLoop:
             slope += weight * above / square
         return self.log_gain + 0.5 * log, slope
 
-    def phase_slope_at(self, omega: float) -> float:
-        """The derivative of the phase by ω at one frequency: the imaginary part that `at_frequency` has."""
-        slope = -self.dead_time - 2.0 * self.all_pass / (1.0 + omega * omega)
-        for root, weight, _ in self._factors_one_by_one:
+    def phase_at(self, omega: float) -> tuple[float, float]:
+        """arg L(jω) and its derivative by ω at one frequency: the imaginary parts of `at_frequency`."""
+        constant = self._factors[3].imag
+        phase, slope = constant - self.dead_time * omega, -self.dead_time
+        for root, weight, turned in self._factors_one_by_one:
             above = omega - root.imag
             square = above * above + root.real * root.real
             if square == 0.0:
-                return math.nan
+                return math.nan, math.nan
+            phase += weight * math.atan2(turned * above, -turned * root.real)
             slope -= weight * root.real / square
-        return slope
+        if self.all_pass:
+            phase -= 2.0 * self.all_pass * math.atan(omega)
+            slope -= 2.0 * self.all_pass / (1.0 + omega * omega)
+        return phase, slope
 
     def log_response(self, omega: Reals) -> Complexes:
         """ln L(jω) alone."""
@@ -182,24 +196,24 @@ class OpenLoop:
         logs = logs + (constant - 1j * self.dead_time * omega)
         return np.asarray(logs - 2j * self.all_pass * np.arctan(omega) if self.all_pass else logs)
 
-    def log_derivative(self, s: Complexes) -> Complexes:
-        """d ln L/ds at `s`, shape of `s`."""
-        roots, weights, _, _ = self._factors
-        slope = (1.0 / (s[..., None] - roots)) @ weights - self.dead_time
-        return np.asarray(slope - 2.0 * self.all_pass / (1.0 - s * s) if self.all_pass else slope)
+    @cached_property
+    def _weights_of_slopes(self) -> Reals:
+        """Weights of 1/(s − r) in d ln L/ds and in d ln D/ds, (m, 2)."""
+        _, weights, _, _ = self._factors
+        return np.array([weights, np.where(weights < 0, 1.0, 0.0)]).T
 
-    def at(self, s: Complexes) -> Complexes:
-        """L(s), shape of `s`; huge values overflow to inf."""
+    def at(self, s: Complexes) -> LoopAt:
+        """L and the slopes of its parts at `s`, (m,) each; huge values overflow to inf."""
         roots, weights, _, _ = self._factors
-        logs = np.log(s[..., None] - roots) @ weights + (self.log_gain - s * self.dead_time)
+        difference = s[:, None] - roots
+        logs = np.log(difference) @ weights + (self.log_gain - s * self.dead_time)
+        slopes = (1.0 / difference) @ self._weights_of_slopes
+        slope, of_denominator = slopes[:, 0] - self.dead_time, slopes[:, 1]
         if self.all_pass:
             logs = logs + self.all_pass * (np.log(1.0 - s) - np.log(1.0 + s))
-        return np.asarray(self.sign * np.exp(logs))
-
-    def log_derivative_of_denominator(self, s: Complexes) -> Complexes:
-        """d ln D/ds at `s`, D the product of all poles' factors; shape of `s`."""
-        slope = reciprocal_sum(s, self.poles)
-        return np.asarray(slope + self.all_pass / (1.0 + s) if self.all_pass else slope)
+            slope = slope - 2.0 * self.all_pass / (1.0 - s * s)
+            of_denominator = of_denominator + self.all_pass / (1.0 + s)
+        return LoopAt(np.asarray(self.sign * np.exp(logs)), slope, of_denominator)
 
 
 @dataclass(frozen=True, eq=False)
@@ -305,11 +319,6 @@ def _form_loop(plant_model: PlantModel, controller: Controller, ranges: Ranges |
         dead_time_reduced_by_s=reduced_s,
         dead_time_negative_by_s=negative_s,
     )
-
-
-def reciprocal_sum(s: Complexes, roots: Complexes) -> Complexes:
-    """Σ 1/(s − root), shape of `s`."""
-    return np.asarray((1.0 / (s[..., None] - roots)).sum(-1))
 
 
 def _negative_real_factors(roots: Complexes) -> int:

@@ -14,6 +14,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
@@ -56,7 +57,7 @@ def count_right_of_axis(axis: AxisResponse) -> Count:
     degree += loop.all_pass
     if degree > MOST_ROOTS:
         return Count(None, reason="there are more roots than float64 can count by their angles")
-    turned = _argument_change(axis, crossovers)
+    turned = _argument_change(axis, crossovers, logs.imag)
     roots = 0.5 * degree - turned / math.pi
     if not math.isfinite(roots):
         return Count(None, reason="the loop's numbers leave the range of float64")
@@ -101,46 +102,41 @@ def _touches_at_the_ends(loop: OpenLoop) -> bool:
     return loop.order_at_origin < 0 and bool(np.any(loop.poles == 0))
 
 
-def _argument_change(axis: AxisResponse, crossovers: Reals) -> float:
-    """Change of the characteristic function's argument from ω = 0 to ∞."""
+def _argument_change(axis: AxisResponse, crossovers: Reals, phase: Reals) -> float:
+    """Change of the characteristic function's argument from ω = 0 to ∞; `phase` of L at the crossovers."""
     loop = axis.loop
-    # one frequency inside each stretch between crossovers tells whether abs L is above 1 there
-    edges = np.concatenate([[0.0], crossovers, [np.inf]])
-    above = _above_one(axis, edges)
-    form = _forms(loop, crossovers)
-    start, end = _forms_at_origin(loop), _forms_at_infinity(loop)
+    forms = [_forms_at_origin(loop), *_forms(loop, crossovers, phase), _forms_at_infinity(loop)]
     total = 0.0
-    for index, is_above in enumerate(above):
+    for left, right, is_above in zip(forms[:-1], forms[1:], _above_one(axis, crossovers), strict=True):
         which = 1 if is_above else 0
-        right = end[which] if index == len(crossovers) else form[which][index]
-        left = start[which] if index == 0 else form[which][index - 1]
-        total += right - left
+        total += right[which] - left[which]
     return total
 
 
-def _above_one(axis: AxisResponse, edges: Reals) -> list[bool]:
+def _above_one(axis: AxisResponse, crossovers: Reals) -> list[bool]:
+    """Whether abs L is above 1 in each stretch between crossovers, told by one frequency inside."""
     magnitude = axis.log_response.real
-    inside = np.searchsorted(edges, axis.omega)
+    first = [0, *np.searchsorted(axis.omega, crossovers, "right").tolist(), len(magnitude)]
+    edges = [0.0, *crossovers.tolist(), math.inf]
     result = []
-    for index in range(1, len(edges)):
-        samples = magnitude[inside == index]
-        if samples.size:
-            result.append(bool(samples[np.argmax(np.abs(samples))] > 0))
+    for index, (begin, end) in enumerate(pairwise(first)):
+        if begin < end:
+            samples = magnitude[begin:end]
+            result.append(bool(samples[np.abs(samples).argmax()] > 0))
         else:
-            middle = np.array([0.5 * (edges[index - 1] + edges[index])])
-            result.append(bool(axis.loop.log_response(middle).real[0] > 0))
+            result.append(axis.loop.log_magnitude_at(0.5 * (edges[index] + edges[index + 1]))[0] > 0)
     return result
 
 
-def _forms(loop: OpenLoop, omega: Reals) -> tuple[Reals, Reals]:
+def _forms(loop: OpenLoop, omega: Reals, phase: Reals) -> list[tuple[float, float]]:
     """The argument in the form for abs L < 1 and in the form for abs L > 1, at crossovers, where both
     hold.
     """
     denominator = log_factors(omega, loop.poles).imag + loop.all_pass * np.arctan(omega)
-    response = loop.log_response(omega).imag
-    half = 0.5 * _wrapped(response)
+    half = 0.5 * _wrapped(phase)
     # at a crossover Arg(1 + L) is half the principal phase, and Arg(1 + 1/L) its negative
-    return denominator + half, denominator + response - half
+    below, above = denominator + half, denominator + phase - half
+    return list(zip(below.tolist(), above.tolist(), strict=True))
 
 
 def _forms_at_origin(loop: OpenLoop) -> tuple[float, float]:
@@ -158,11 +154,14 @@ def _forms_at_infinity(loop: OpenLoop) -> tuple[float, float]:
 
 def _argument_at_origin(roots: Complexes) -> float:
     """Argument of ∏(jω − r) as ω falls to 0, in the convention of `log_factors`."""
-    real = roots[roots.imag == 0].real
-    right_pairs = np.count_nonzero((roots.imag > 0) & (roots.real > 0))
-    argument = math.pi * np.count_nonzero(real > 0) + 0.5 * math.pi * np.count_nonzero(real == 0)
-    # conjugate factors cancel, but for the whole turn that the convention gives a pair right of the axis
-    return float(argument + 2 * math.pi * right_pairs)
+    turns = 0.0
+    for root in roots.tolist():
+        if root.imag == 0:
+            turns += 0.5 if root.real > 0 else 0.25 if root.real == 0 else 0.0
+        elif root.imag > 0 and root.real > 0:
+            # conjugate factors cancel, but for the whole turn that the convention gives a pair on the right
+            turns += 1.0
+    return 2.0 * math.pi * turns
 
 
 def _wrapped(angle: Reals) -> Reals:

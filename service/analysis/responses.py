@@ -451,7 +451,7 @@ class _ResidueSeries:
         feedback = _controller_at(parts.feedback, s)
         setpoint = _controller_at(parts.setpoint, s)
         filtered = 1.0 / (1.0 + s * parts.measurement_filter)
-        weight = np.where(s.imag > 0, 2.0, 1.0) / (s * parts.loop.log_derivative(s))
+        weight = np.where(s.imag > 0, 2.0, 1.0) / (s * parts.loop.at(s).log_slope)
         sign = parts.direction
         through = feedback * filtered
         pv = np.array([weight * setpoint / through, weight * sign / through])
@@ -496,7 +496,7 @@ def _cancelled_modes(parts: ClosedLoopParts) -> tuple[Complexes, Complexes, Comp
             # none: a pole of the controller or the filter; several: no simple residue
             return None
         at = np.array([root])
-        closed = 1.0 + complex(parts.loop.at(at)[0])
+        closed = 1.0 + complex(parts.loop.at(at).value[0])
         residue = parts.plant.gain * np.prod(root - zeros) / np.prod(root - poles[~own])
         weight = (2.0 if root.imag > 0 else 1.0) * residue * np.exp(-root * parts.dead_time) / (root * closed)
         pv[SETPOINT, index] = weight * parts.direction * complex(_controller_at(parts.setpoint, at)[0])

@@ -20,7 +20,7 @@ import numpy as np
 import numpy.typing as npt
 
 from service.analysis.frequency import AxisResponse
-from service.analysis.loop import EPSILON, Complexes, OpenLoop, Reals
+from service.analysis.loop import EPSILON, Complexes, LoopAt, OpenLoop, Reals
 from service.analysis.nyquist import Count, count_right_of_axis, rounding
 from service.analysis.realisation import StateSpace
 
@@ -133,13 +133,13 @@ def without_nearest(starts: Complexes, hidden_roots: Complexes) -> Complexes:
     return starts
 
 
-def root_error(loop: OpenLoop, roots: Complexes) -> Reals:
-    """How far rounding may move each root, shape of `roots`.
+def root_error(loop: OpenLoop, roots: Complexes, there: LoopAt) -> Reals:
+    """How far rounding may move each root, shape of `roots`; `there` is the loop at them.
 
     A root of multiplicity m moves by the m-th root of what a simple one moves by, relatively.
     """
-    value = loop.at(roots)
-    derivative = (1 + value) * loop.log_derivative_of_denominator(roots) + value * loop.log_derivative(roots)
+    value, slope, of_denominator = there
+    derivative = (1 + value) * of_denominator + value * slope
     relative = rounding(loop, np.abs(roots))
     error = relative * (1 + np.abs(value)) / np.abs(derivative)
     every = np.concatenate([roots, np.conj(roots[roots.imag > 0])])
@@ -246,7 +246,7 @@ def polished_roots(loop: OpenLoop, starts: Complexes) -> Complexes:
     at, step = starts.copy(), np.zeros_like(starts)
     real = starts.imag == 0
     for count in range(MOST_STEPS):
-        step = _newton_step(loop, at)
+        step = _newton_step(at, loop.at(at))
         at = at + np.where(real, step.real, step)
         under_way = np.abs(step) > NEWTON_DONE * np.abs(at)
         if count >= STEPS_FAR_LEFT:
@@ -267,21 +267,20 @@ def polished_roots(loop: OpenLoop, starts: Complexes) -> Complexes:
     return np.concatenate([found, found[on_axis & pair]])
 
 
-def _newton_step(loop: OpenLoop, at: Complexes) -> Complexes:
+def _newton_step(at: Complexes, there: LoopAt) -> Complexes:
     """On ln(−L) where L is near 1 in magnitude, along the chain; on D·(1 + L) elsewhere, beside a pole of
     L.
     """
-    value = loop.at(at)
-    slope = loop.log_derivative(at)
+    value, slope, of_denominator = there
+    closed = 1 + value
     # near a root 1 + L keeps the digits that the logarithm of nearly 1 would lose
-    residual = np.where(np.abs(1 + value) < 1e-3, -(1 + value), np.log(-value))
-    on_logarithm = -residual / slope
-    on_product = -(1 + value) / ((1 + value) * loop.log_derivative_of_denominator(at) + value * slope)
-    step = np.where(np.abs(residual) < NEPERS_OF_CHAIN, on_logarithm, on_product)
+    residual = np.where(np.abs(closed) < 1e-3, closed, -np.log(-value))
+    on_product = closed / (closed * of_denominator + value * slope)
+    step = np.where(np.abs(residual) < NEPERS_OF_CHAIN, residual / slope, -on_product)
     # a start on a pole of L, or far left where e^(−sθ) overflows, stays where it is
     step = np.where(np.isfinite(step), step, 0.0)
-    size, largest = np.abs(step), 0.5 * (np.abs(at) + 1.0)
-    return np.asarray(np.where(size > largest, step * (largest / np.where(size > 0, size, 1.0)), step))
+    largest = 0.5 * (np.abs(at) + 1.0)
+    return np.asarray(step * (largest / np.maximum(np.abs(step), largest)))
 
 
 def _first_found(starts: Complexes, roots: Complexes, settled: npt.NDArray[np.bool_]) -> list[int]:
@@ -290,13 +289,14 @@ def _first_found(starts: Complexes, roots: Complexes, settled: npt.NDArray[np.bo
     True multiple roots have starts that lie together.
     """
     kept: list[int] = []
-    moved = np.abs(roots - starts)
-    for index in np.argsort(moved, kind="stable").tolist():
-        root = roots[index]
+    order = np.argsort(np.abs(roots - starts), kind="stable").tolist()
+    began, ended = starts.tolist(), roots.tolist()
+    for index in order:
+        root = ended[index]
         if not settled[index]:
             continue
-        again = [k for k in kept if abs(roots[k] - root) <= 1e-7 * abs(root)]
-        if all(abs(starts[k] - starts[index]) <= 1e-3 * abs(root) for k in again):
+        again = [k for k in kept if abs(ended[k] - root) <= 1e-7 * abs(root)]
+        if all(abs(began[k] - began[index]) <= 1e-3 * abs(root) for k in again):
             kept.append(index)
     return kept
 
@@ -304,7 +304,8 @@ def _first_found(starts: Complexes, roots: Complexes, settled: npt.NDArray[np.bo
 def root_count(loop: OpenLoop, roots: Complexes) -> Count:
     """How many roots lie right of the axis, conjugates included; `roots` on and above the real axis."""
     # where Newton has not settled its next step tells how far off the root may be
-    error = np.maximum(root_error(loop, roots), 2.0 * np.abs(_newton_step(loop, roots)))
+    there = loop.at(roots)
+    error = np.maximum(root_error(loop, roots, there), 2.0 * np.abs(_newton_step(roots, there)))
     if np.any(np.abs(roots.real) <= error):
         return Count(None, reason="a root lies on the axis within the precision of the numbers")
     right = roots[roots.real > 0]

@@ -140,9 +140,10 @@ class Scanned:
         to_end = second[:, :n, :n]
         gamma1 = first + (to_end @ first[..., None])[..., 0]
         slope = self.interval * (b + to_end @ b)
+        delayed = zip(split, second[:, :n, n], gamma1, slope, strict=True)
         return [
-            SampledPlant(over[-1, :n, :n], *of_each, c, d, *of_delay)
-            for of_delay, *of_each in zip(split, second[:, :n, n], gamma1, slope, strict=True)
+            SampledPlant(over[-1, :n, :n], gamma0, late, by_fraction, c, d, whole, fraction)
+            for (whole, fraction), gamma0, late, by_fraction in delayed
         ]
 
 

@@ -35,7 +35,7 @@ class OnCircle:
 
     def value(self, plant: SampledPlant) -> Complexes:
         """L with this plant, (m,)."""
-        return self.values([plant])[0]
+        return np.asarray(self.values([plant])[0])
 
     def values(self, plants: list[SampledPlant]) -> Complexes:
         """L with each of several plants, (plants, m)."""
@@ -98,8 +98,9 @@ class OnCircle:
 
 @dataclass(frozen=True, eq=False)
 class Divided:
-    """abs L for dead times that divide a scan in several ways, (divisions, m), at angles ωh of the axis, (m,):
-    wherever it may come near 1, and at the Nyquist frequency.
+    """abs L for dead times that divide a scan in several ways, (divisions, m), at angles ωh, (m,).
+
+    Those of the axis wherever abs L may come near 1, and the Nyquist frequency's.
     """
 
     angles: Reals
