@@ -19,6 +19,7 @@ FULL = 4e-16
 """A place to float64, relatively."""
 
 
+@np.errstate(divide="ignore", invalid="ignore", over="ignore")
 def newton_zero(
     function: Callable[[Reals], tuple[Reals, Reals]],
     low: Reals,
@@ -39,7 +40,7 @@ def newton_zero(
         value, slope = function(at)
         before = (value > 0) == above
         low, high = np.where(before, at, low), np.where(before, high, at)
-        step = np.divide(value, slope, out=np.zeros_like(value), where=value != 0)
+        step = np.where(value == 0, 0.0, value / slope)
         newton, size = at - step, np.abs(step)
         contracts = (size <= 0.5 * previous) & (newton >= low) & (newton <= high)
         about = np.maximum(np.abs(at), resolution)

@@ -87,24 +87,22 @@ def value_and_slope(rows: Reals) -> Callable[[Reals], tuple[Reals, Reals]]:
 
 def evaluate_rows(rows: Reals, at: Reals) -> Reals:
     """The polynomial of each row, values shape (m, count), at its own point, shape (m,)."""
-    blocks = (slice(first, first + ROWS_AT_ONCE) for first in range(0, max(len(at), 1), ROWS_AT_ONCE))
-    return np.concatenate(
-        [np.einsum("ij,ij->i", evaluation(rows.shape[1], at[block]), rows[block]) for block in blocks]
-    )
+    if len(at) <= ROWS_AT_ONCE:
+        return np.asarray(np.einsum("ij,ij->i", evaluation(rows.shape[1], at), rows))
+    blocks = (slice(first, first + ROWS_AT_ONCE) for first in range(0, len(at), ROWS_AT_ONCE))
+    return np.concatenate([evaluate_rows(rows[block], at[block]) for block in blocks])
 
 
-def zeros_of_rows(rows: Reals, noise: Reals | float) -> tuple[npt.NDArray[np.intp], Reals]:
+def zeros_of_rows(rows: Reals, noise: Reals) -> tuple[npt.NDArray[np.intp], Reals]:
     """Every sign change inside the rows, values shape (r, count): which row, and where on [0, 1]; ordered.
 
-    Changes between two values that are both below `noise` (scalar, or shape (r, 1)) are rounding and left
-    out.
+    Changes between two values that are both below `noise`, shape (r,), are rounding and left out.
     """
-    noise = np.broadcast_to(noise, (len(rows), 1))
+    if len(rows) <= ROWS_AT_ONCE:
+        return _zeros_of_block(rows, noise)
     starts = range(0, len(rows), ROWS_AT_ONCE)
     blocks = [slice(start, start + ROWS_AT_ONCE) for start in starts]
-    found = [_zeros_of_block(rows[block], noise[block, 0]) for block in blocks]
-    if not found:
-        return np.empty(0, np.intp), np.empty(0)
+    found = [_zeros_of_block(rows[block], noise[block]) for block in blocks]
     row = [start + of_block for start, (of_block, _) in zip(starts, found, strict=True)]
     return np.concatenate(row), np.concatenate([place for _, place in found])
 
@@ -113,14 +111,14 @@ def _zeros_of_block(rows: Reals, noise: Reals) -> tuple[npt.NDArray[np.intp], Re
     count = rows.shape[1]
     # along the whole array, which is many times faster than along its short rows
     positive = (rows > 0).ravel()
-    changes = np.flatnonzero(positive[:-1] != positive[1:])
+    changes = (positive[:-1] != positive[1:]).nonzero()[0]
     row, node = np.divmod(changes[changes % count != count - 1], count)
     before, after, noise = np.abs(rows[row, node]), np.abs(rows[row, node + 1]), noise[row]
     told = np.maximum(before, after) > noise
     row, node, before, after, noise = (each[told] for each in (row, node, before, after, noise))
     # where one of the two values is rounding, the change is at that node
     place = points(count)[np.where(before <= after, node, node + 1)]
-    between = np.flatnonzero(np.minimum(before, after) > noise)
+    between = (np.minimum(before, after) > noise).nonzero()[0]
     if between.size:
         place[between] = _zeros(rows[row[between]], node[between])
     return row, place

@@ -44,12 +44,12 @@ class Passage:
 
 @dataclass(frozen=True, eq=False)
 class Signal:
-    """One signal: `values` (p, nodes), its turning points in order of time, and the oscillation that follows.
+    """One signal, factor·values − level, `values` (p, nodes), its turning points in order of time, and the
+    oscillation that follows.
 
     `turning_pieces`, `turning_places` (0 to 1), `turning_values`: (m,); both ends of every piece are among
     them.
-    `tail` is about the value at which the signal ends, which `values` must have at its end as 0 where it is
-    used.
+    `tail` is about the value at which the signal ends, which must be 0 where it is used.
     """
 
     start: Reals
@@ -59,6 +59,12 @@ class Signal:
     turning_places: Reals
     turning_values: Reals
     tail: Tail | None
+    factor: float = 1.0
+    level: float = 0.0
+
+    def rows(self, pieces: int | slice) -> Reals:
+        """The signal at the nodes of some pieces."""
+        return np.asarray(self.factor * self.values[pieces] - self.level)
 
     @property
     def scale(self) -> float:
@@ -78,13 +84,17 @@ class Signal:
 
     def less(self, level: float) -> Signal:
         """The signal minus a constant."""
-        return replace(self, values=self.values - level, turning_values=self.turning_values - level)
+        return replace(self, level=self.level + level, turning_values=self.turning_values - level)
 
     def times(self, factor: float) -> Signal:
         """The signal multiplied."""
         tail = None if self.tail is None else replace(self.tail, amplitude=self.tail.amplitude * factor)
         return replace(
-            self, values=self.values * factor, turning_values=self.turning_values * factor, tail=tail
+            self,
+            factor=self.factor * factor,
+            level=self.level * factor,
+            turning_values=self.turning_values * factor,
+            tail=tail,
         )
 
     def first_passage(self, level: float) -> Passage | None:
@@ -128,7 +138,7 @@ class Signal:
         piece = int(self.turning_pieces[index])
         low, high = self.turning_places[index : index + 2].tolist()
         ends = side * self.turning_values[index : index + 2] - level
-        row = side * self.values[piece] - level
+        row = side * self.rows(piece) - level
         return Passage(float(self.start[piece]), float(self.length[piece]), row, low, high, *ends.tolist())
 
 
@@ -146,8 +156,9 @@ def signals(start: Reals, length: Reals, values: Reals, tails: list[Tail | None]
     """Signals with their turning points; `values` (s, p, nodes)."""
     count, pieces, nodes = values.shape
     rows = values.reshape(count * pieces, nodes)
-    scale = np.repeat(np.abs(values).reshape(count, -1).max(axis=1), pieces)[:, None]
-    row, place = chebyshev.zeros_of_rows(rows @ chebyshev.differentiation(nodes).T, ROUNDING * nodes * scale)
+    largest = np.maximum(values.max(axis=(1, 2)), -values.min(axis=(1, 2)))
+    noise = np.repeat(ROUNDING * nodes * largest, pieces)
+    row, place = chebyshev.zeros_of_rows(rows @ chebyshev.differentiation(nodes).T, noise)
     rows_in_order, places, found = _with_ends(rows, row, place)
     result = []
     for index, tail in enumerate(tails):
@@ -185,7 +196,7 @@ def integrals(of: list[Signal]) -> list[Integrals]:
     sums = np.zeros((len(of), 4))
     for first in range(0, len(start), chebyshev.ROWS_AT_ONCE):
         block = slice(first, first + chebyshev.ROWS_AT_ONCE)
-        values = np.array([signal.values[block] for signal in of])
+        values = np.array([signal.rows(block) for signal in of])
         sums += _in_pieces(start[block], length[block], values, [signal.scale for signal in of])
     return [
         Integrals(*(float(total) + more for total, more in zip(in_pieces, _of_tail(signal), strict=True)))
@@ -197,21 +208,23 @@ def _in_pieces(start: Reals, length: Reals, values: Reals, scales: list[float]) 
     """The four integrals of each signal over some pieces, (s, 4); `values` (s, p, nodes)."""
     count, pieces, nodes = values.shape
     rows = values.reshape(count * pieces, nodes)
-    start, length = np.tile(start, count), np.tile(length, count)
-    row, place = chebyshev.zeros_of_rows(rows, ROUNDING * np.repeat(scales, pieces)[:, None])
+    start, length = np.concatenate([start] * count), np.concatenate([length] * count)
+    row, place = chebyshev.zeros_of_rows(rows, np.repeat(ROUNDING * np.array(scales), pieces))
     over_piece, points = chebyshev.integration(nodes)[-1], chebyshev.points(nodes)
     signed = rows @ over_piece * length
     moment = start * signed + rows @ (over_piece * points) * length**2
     absolute, weighted = np.abs(signed), np.abs(moment)
     if row.size:
-        changing = row[np.flatnonzero(np.diff(row, prepend=-1))]
-        among, lengths = np.searchsorted(changing, row), length[changing, None]
-        times = start[changing, None] + lengths * points
-        for told, integrand in ((absolute, rows[changing]), (weighted, rows[changing] * times)):
-            told[changing] = _variation(integrand @ chebyshev.integration(nodes).T * lengths, among, place)
+        new = np.append(True, row[1:] != row[:-1])
+        changing, among = row[new], np.cumsum(new) - 1
+        x, lengths = rows[changing], length[changing, None]
+        both = np.concatenate([x, x * (start[changing, None] + lengths * points)])
+        integrated = both @ chebyshev.integration(nodes).T * np.concatenate([lengths, lengths])
+        varied = _variation(integrated, np.append(among, among + len(x)), np.append(place, place))
+        absolute[changing], weighted[changing] = varied[: len(x)], varied[len(x) :]
     squares = np.einsum("ij,ij->i", rows @ _of_squares(nodes), rows) * length
-    columns = (absolute, squares, weighted, signed)
-    return np.array([column.reshape(count, pieces).sum(axis=1) for column in columns]).T
+    columns = np.array([absolute, squares, weighted, signed])
+    return np.asarray(columns.reshape(4, count, pieces).sum(axis=2).T)
 
 
 def _of_tail(signal: Signal) -> tuple[float, float, float, float]:
@@ -253,7 +266,7 @@ def _with_ends(rows: Reals, row: Indices, place: Reals) -> tuple[Indices, Reals,
 def _variation(integrals_in_rows: Reals, row: Indices, place: Reals) -> Reals:
     """Σ abs of the changes between the given places, row by row, shape (rows,)."""
     rows_of, _, values = _with_ends(integrals_in_rows, row, place)
-    changes = np.where(rows_of[1:] == rows_of[:-1], np.abs(np.diff(values)), 0.0)
+    changes = np.where(rows_of[1:] == rows_of[:-1], np.abs(values[1:] - values[:-1]), 0.0)
     return np.asarray(np.bincount(rows_of[1:], changes, len(integrals_in_rows)), float)
 
 
