@@ -25,7 +25,7 @@ from service.analysis.sampled_loop import NotFactoredError, SampledLoop, form_sa
 from service.analysis.sampled_roots import compressed, points_for, resolved
 from service.analysis.sampled_states import sampled_states
 from service.analysis.scan import SampledPlant
-from service.analysis.unit_circle import Divided, OnCircle
+from service.analysis.unit_circle import Divided, OnCircle, at_angle
 
 FEW_HELD = 24
 """So many past outputs are carried each for itself, more by points."""
@@ -119,9 +119,7 @@ def _first_to_leave(sampled: SampledLoop, reach: float, touch: _Touch) -> bool:
     roots = _outer_roots(sampled, plant, reach)
     if roots is None:
         return False
-    by_angle, by_scans = (
-        complex(slope[0]) for slope in OnCircle(sampled, np.array([touch.angle])).slopes(plant)
-    )
+    _, by_angle, by_scans = at_angle(sampled, plant, touch.angle)
     # how ωh moves with the delay; abs z = e^(−Im ωh)
     moves = -by_scans / by_angle
     if not moves.imag < -CLEARLY * abs(moves):
@@ -330,9 +328,7 @@ def _newton(sampled: SampledLoop, angle: float, scans: float) -> tuple[float, fl
     interval = sampled.scanned.interval
     for _ in range(STEPS):
         plant = sampled.scanned.sample(max(scans, 0.0) * interval)
-        at = OnCircle(sampled, np.array([angle]))
-        residual = complex(np.log(-at.value(plant)[0]))
-        by_angle, by_scans = (complex(slope[0]) for slope in at.slopes(plant))
+        residual, by_angle, by_scans = at_angle(sampled, plant, angle)
         determinant = by_angle.real * by_scans.imag - by_angle.imag * by_scans.real
         if not math.isfinite(determinant) or determinant == 0:
             return None
@@ -383,9 +379,8 @@ def _phase_at_crossover(sampled: SampledLoop, angle: float, scans: float) -> tup
     """(ωh, phase beyond −180°) where abs L = 1 with so much extra dead time; None where it is not found."""
     plant = sampled.scanned.sample(scans * sampled.scanned.interval)
     for _ in range(STEPS):
-        at = OnCircle(sampled, np.array([angle]))
-        residual = complex(np.log(-at.value(plant)[0]))
-        step = residual.real / float(at.slopes(plant)[0][0].real)
+        residual, by_angle, _ = at_angle(sampled, plant, angle)
+        step = residual.real / by_angle.real if by_angle.real else math.nan
         if abs(step) <= 1e-14:
             return angle, residual.imag
         angle = min(max(angle - step, 0.7 * angle), 1.3 * angle, math.pi)

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import cmath
 import math
 from dataclasses import dataclass
 from functools import cached_property
+from typing import NamedTuple
 
 import numpy as np
 
@@ -23,9 +25,48 @@ NEAR_ONE = -math.log(CLEARLY_BELOW)
 """Nepers about 1 within which abs L is looked at, beside what the division of a scan may move it by."""
 
 
+class AtAngle(NamedTuple):
+    """ln(−L), its angle in (−π, π], and d ln L/d(ωh) and d ln L/d(δ/h), at one angle ωh; not numbers upon a
+    zero or pole.
+    """
+
+    log_of_negative: complex
+    by_angle: complex
+    by_scans: complex
+
+
+NOWHERE = AtAngle(complex(math.nan, math.nan), complex(math.nan, math.nan), complex(math.nan, math.nan))
+
+
+def at_angle(sampled: SampledLoop, plant: SampledPlant, angle: float) -> AtAngle:
+    """The loop with this plant over one scan at one angle, in plain numbers wherever it is not the plant."""
+    controller = sampled.controller
+    z, w = cmath.exp(1j * angle), 1j * math.tan(0.5 * angle)
+    log, by_w = complex(controller.log_gain, -plant.whole_scans * angle), 0j
+    for roots, weight in ((controller.zeros.tolist(), 1.0), (controller.poles.tolist(), -1.0)):
+        for root in roots:
+            if w == root:
+                return NOWHERE
+            log += weight * cmath.log(w - root)
+            by_w += weight / (w - root)
+    # z − 1 without the digits that z loses near 1
+    less_one = np.expm1(1j * angle) * np.eye(len(plant.c)) - plant.phi_less_one
+    resolvent = np.linalg.inv(less_one)
+    row = plant.c @ resolvent
+    late = complex(row @ plant.gamma1) + plant.d
+    own = complex(row @ plant.gamma0) + late / z
+    if own == 0 or not math.isfinite(log.imag):
+        return NOWHERE
+    log += cmath.log(-controller.sign * sampled.scanned.parts.direction * own)
+    of_plant = -complex(row @ resolvent @ (plant.gamma0 + plant.gamma1 / z)) - late / z**2
+    by_angle = by_w * 0.5j * (1.0 - w * w) + of_plant * 1j * z / own - 1j * plant.whole_scans
+    by_scans = complex(row @ plant.gamma0_slope) * (1.0 / z - 1.0) / own
+    return AtAngle(complex(log.real, math.remainder(log.imag, 2.0 * math.pi)), by_angle, by_scans)
+
+
 @dataclass(frozen=True, eq=False)
 class OnCircle:
-    """L on the unit circle at angles ωh of shape (m,), straight from the states of a plant over one scan.
+    """L on the unit circle at angles ωh of shape (m,), straight from the states of plants over one scan.
 
     What plants with other delays have in common is computed once.
     """
@@ -33,39 +74,17 @@ class OnCircle:
     sampled: SampledLoop
     angle: Reals
 
-    def value(self, plant: SampledPlant) -> Complexes:
-        """L with this plant, (m,)."""
-        return np.asarray(self.values([plant])[0])
-
     def values(self, plants: list[SampledPlant]) -> Complexes:
         """L with each of several plants, (plants, m)."""
         row, z = self._row, self._z[:, None]
         gamma0, gamma1 = (
-            np.array(gammas).T for gammas in zip(*((p.gamma0, p.gamma1) for p in plants), strict=True)
+            np.array([each.gamma0 for each in plants]),
+            np.array([each.gamma1 for each in plants]),
         )
         whole_scans = np.array([plant.whole_scans for plant in plants], np.float64)
-        own = row @ gamma0 + (row @ gamma1 + self.sampled.plant.d) / z
+        own = row @ gamma0.T + (row @ gamma1.T + self.sampled.plant.d) / z
         turned = np.exp(-1j * self.angle[:, None] * whole_scans)
         return np.asarray((self._controller[:, None] * turned * own).T)
-
-    def slopes(self, plant: SampledPlant) -> tuple[Complexes, Complexes]:
-        """(d ln L/d(ωh), d ln L/d(δ/h)), (m,) each."""
-        controller, w, z = self.sampled.controller, self._w, self._z
-        of_controller = (1.0 / (w[:, None] - controller.zeros)).sum(1)
-        of_controller = of_controller - (1.0 / (w[:, None] - controller.poles)).sum(1)
-        of_controller = of_controller * (0.5j * (1.0 - w * w))
-        own = self._of(plant)
-        forced = plant.gamma0 + plant.gamma1 / z[:, None]
-        of_plant = -(self._row[:, None, :] @ self._resolvent @ forced[..., None])[:, 0, 0]
-        of_plant = of_plant - (self._row @ plant.gamma1 + plant.d) / z**2
-        by_angle = of_controller + of_plant * 1j * z / own - 1j * plant.whole_scans
-        by_scans = self._row @ plant.gamma0_slope * (1.0 / z - 1.0) / own
-        return np.asarray(by_angle), np.asarray(by_scans)
-
-    def _of(self, plant: SampledPlant) -> Complexes:
-        """The plant but for its whole scans of dead time, (m,)."""
-        row, z = self._row, self._z
-        return np.asarray(row @ plant.gamma0 + (row @ plant.gamma1 + plant.d) / z)
 
     @cached_property
     def _controller(self) -> Complexes:
@@ -84,16 +103,10 @@ class OnCircle:
         return np.asarray(np.exp(1j * self.angle))
 
     @cached_property
-    def _resolvent(self) -> Complexes:
-        """(z − Φ)⁻¹, (m, n, n)."""
-        # z − 1 without the digits that z loses near 1
-        less_one = np.expm1(1j * self.angle)[:, None, None] * np.eye(len(self.sampled.plant.c))
-        return np.asarray(np.linalg.inv(less_one - self.sampled.plant.phi_less_one))
-
-    @cached_property
     def _row(self) -> Complexes:
         """c·(z − Φ)⁻¹, (m, n)."""
-        return np.asarray(self.sampled.plant.c @ self._resolvent)
+        less_one = np.expm1(1j * self.angle)[:, None, None] * np.eye(len(self.sampled.plant.c))
+        return np.asarray(self.sampled.plant.c @ np.linalg.inv(less_one - self.sampled.plant.phi_less_one))
 
 
 @dataclass(frozen=True, eq=False)
