@@ -141,7 +141,7 @@ def first_cells(
     if shape[0] * shape[1] > min(MAX_CELLS, MAX_FACTORS / _work_of_a_cell(loop)):
         return None
     edges = w[:-1], w[1:], v[:-1, None], v[1:, None]
-    places = Rectangles(*(np.broadcast_to(part, shape).ravel() for part in edges))
+    places = Rectangles(*((part + np.zeros(shape)).ravel() for part in edges))
     return enclose(loop, places, *places.centre)
 
 
@@ -151,7 +151,9 @@ def _work_of_a_cell(loop: UncertainLoop) -> int:
 
 def _even_edges(low: float, high: float, step: float) -> Reals:
     """Edges from low to high, one where they are the same."""
-    return np.linspace(low, high, math.ceil((high - low) / step) + 1)
+    count = math.ceil((high - low) / step)
+    # the last edge is the end itself to the last digit
+    return np.append(low + (high - low) * (np.arange(count) / max(count, 1)), high)
 
 
 def _edges(loop: UncertainLoop, bounds: Bounds, low: float, high: float) -> Reals:
@@ -190,6 +192,8 @@ def sweep(loop: UncertainLoop, cells: Cells, searches: list[Search]) -> None:
         if wave > 0 and not out.all():
             out |= excluded_at_sight(cells, of_cells)
         left = np.flatnonzero(~out)
+        if not left.size:
+            return
         pending = pending[left]
         levels = [each.level for each in searches]
         for index, search in enumerate(searches):
@@ -238,6 +242,8 @@ def _going_on(searches: list[Search]) -> Flags:
 
 def _keep_to_a_wave(searches: list[Search], cells_of_each: Indices) -> None:
     """Give up the searches that have most cells until the rest make a wave."""
+    if cells_of_each.sum() <= MAX_CELLS:
+        return
     for index in np.argsort(-cells_of_each):
         if (cells_of_each * _going_on(searches)).sum() <= MAX_CELLS:
             return

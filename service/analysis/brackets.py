@@ -119,7 +119,8 @@ def zero_between(
     function without using derivatives, Advances in Engineering Software 28 (1997) 145-149.
     """
     a, b, at_a, at_b = high, low, value_high, value_low
-    share = 0.5
+    secant = value_high / (value_high - value_low)
+    share = secant if 0.0 < secant < 1.0 else 0.5
     for _ in range(MAX_STEPS):
         x = a + share * (b - a)
         value = function(x)

@@ -380,12 +380,12 @@ def _log_of_product(factors: tuple[float, ...]) -> tuple[float, float]:
 
 def without_hidden(zeros: Complexes, poles: Complexes) -> tuple[Complexes, Complexes, Complexes]:
     """(zeros, poles, hidden): a zero and a pole that are one number stand in the last alone."""
-    free_zeros, free_poles, hidden = [], list(poles), []
-    for zero in zeros:
-        distances = [abs(zero - pole) - CANCELLED * abs(zero) for pole in free_poles]
-        nearest = int(np.argmin(distances)) if distances else -1
-        if distances and distances[nearest] <= 0:
-            hidden.append(free_poles.pop(nearest))
+    free_zeros, free_poles, hidden = [], poles.tolist(), []
+    for zero in zeros.tolist():
+        distances = [abs(zero - pole) for pole in free_poles]
+        nearest = min(distances, default=math.inf)
+        if nearest <= CANCELLED * abs(zero):
+            hidden.append(free_poles.pop(distances.index(nearest)))
         else:
             free_zeros.append(zero)
     return np.array(free_zeros, complex), np.array(free_poles, complex), np.array(hidden, complex)

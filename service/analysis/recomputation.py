@@ -95,7 +95,7 @@ def _recompute(
         if isinstance(plant_model, FrequencyResponse):
             sampled = _undecided((NYQUIST_AT_SCANS, ROOTS_AT_SCANS), POINTS_AT_SCANS)
         else:
-            sampled, drawn = _sampled(parts, controller.scan, settling_band_percent, with_curves)
+            sampled, drawn = _sampled(parts, space, controller.scan, settling_band_percent, with_curves)
     if drawn is not None:
         drawn = replace(drawn, root_loci=root_loci(parts, space))
     worst = worst_case(parts, plant_model, controller, ranges, continuous)
@@ -122,10 +122,14 @@ def _of_all(continuous: Analysis, sampled: Analysis | None) -> Verdict:
 
 
 def _sampled(
-    parts: ClosedLoopParts, scan: Scan, settling_band_percent: float, with_curves: bool
+    parts: ClosedLoopParts,
+    space: StateSpace | None,
+    scan: Scan,
+    settling_band_percent: float,
+    with_curves: bool,
 ) -> tuple[Analysis, Curves | None]:
     try:
-        analysis, drawn = analyse_at_scans(parts, scan, settling_band_percent, with_curves)
+        analysis, drawn = analyse_at_scans(parts, space, scan, settling_band_percent, with_curves)
     except NotFactoredError as error:
         return _undecided((NYQUIST_AT_SCANS, ROOTS_AT_SCANS), str(error)), None
     except (ArithmeticError, np.linalg.LinAlgError):

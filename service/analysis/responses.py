@@ -204,10 +204,11 @@ def final_values(space: StateSpace) -> tuple[Reals, Reals]:
 
 
 def _without_dead_time(known: _Known, plan: _Plan) -> Pieces:
-    space, modes = known.space, known.modes
+    space = known.space
     n = space.order
     matrix, rows = _augmented(space)
-    ladder = _Doubling(matrix, rows, TURN / _fastest(modes, 0.0))
+    modes = by_size(known.modes)
+    ladder = _Doubling(matrix, rows, TURN / fastest(modes, 0.0))
     state = np.zeros((n + 2, 2))
     state[n, SETPOINT] = state[n + 1, LOAD] = 1.0
     _, k = space.closed_without_dead_time()
@@ -217,7 +218,7 @@ def _without_dead_time(known: _Known, plan: _Plan) -> Pieces:
     lengths: list[float] = []
     values: list[Reals] = []
     while (time < plan.end or not starts) and len(starts) < MAX_PIECES:
-        level = ladder.level(TURN / _fastest(modes, time))
+        level = ladder.level(TURN / fastest(modes, time))
         to_end, to_nodes, length = ladder.step(level)
         starts.append(time)
         lengths.append(length)
@@ -358,12 +359,11 @@ class _March:
 
     def pieces(self, complete: bool) -> Pieces:
         """All pieces so far."""
-        lengths = np.tile(np.array(self._lengths), self.intervals)
-        begins = np.repeat(np.arange(self.intervals) * self.dead_time, self.pieces_each)
-        within = np.concatenate([[0.0], np.cumsum(self._lengths)[:-1]])
+        lengths, intervals = np.array(self._lengths), np.arange(self.intervals)[:, None]
+        within = np.concatenate([[0.0], np.cumsum(lengths)[:-1]])
         return (
-            begins + np.tile(within, self.intervals),
-            lengths,
+            (intervals * self.dead_time + within).ravel(),
+            (0.0 * intervals + lengths).ravel(),
             _stacked(self._pvs),
             _stacked(self._outputs),
             complete,
@@ -378,10 +378,10 @@ def _stacked(pieces: list[Reals]) -> Reals:
 def _divided_dead_time(parts: ClosedLoopParts) -> list[float]:
     """Lengths that divide one dead time as the open loop's modes ask."""
     plant_poles = np.array(parts.plant.poles_rad_s, complex)
-    return divided(parts.dead_time, np.concatenate([plant_poles, parts.filtered_controller.poles]))
+    return divided(parts.dead_time, by_size(np.concatenate([plant_poles, parts.filtered_controller.poles])))
 
 
-def divided(length: float, modes: Complexes) -> list[float]:
+def divided(length: float, modes: Fading) -> list[float]:
     """Lengths that divide `length`, halves of halves, each short against every mode not yet died away.
 
     Raises WorkBoundError where they would be more than `MAX_PIECES`.
@@ -391,7 +391,7 @@ def divided(length: float, modes: Complexes) -> list[float]:
     while position < 1.0 - 1e-12:
         if len(lengths) >= MAX_PIECES:
             raise WorkBoundError("too many pieces")
-        longest = TURN / _fastest(modes, position * length) / length
+        longest = TURN / fastest(modes, position * length) / length
         part = 1.0
         while part > longest or (position / part) % 1.0 != 0.0:
             part *= 0.5
@@ -400,10 +400,18 @@ def divided(length: float, modes: Complexes) -> list[float]:
     return lengths
 
 
-def _fastest(modes: Complexes, time: float) -> float:
+Fading = list[tuple[float, float]]
+"""(abs λ, how fast it dies away) of some modes, the fastest first."""
+
+
+def by_size(modes: Complexes) -> Fading:
+    """The modes by their magnitude."""
+    return sorted(((abs(mode), -mode.real) for mode in modes.tolist()), reverse=True)
+
+
+def fastest(modes: Fading, time: float) -> float:
     """The largest magnitude among the modes that have not died away at `time`."""
-    alive = modes[-modes.real * time < DIED_AWAY]
-    return max(float(np.abs(alive).max()) if alive.size else 0.0, 1e-12)
+    return max(next((size for size, rate in modes if rate * time < DIED_AWAY), 0.0), 1e-12)
 
 
 def _collocation_map(space: StateSpace, length: float) -> Reals:
@@ -416,12 +424,17 @@ def _collocation_map(space: StateSpace, length: float) -> Reals:
     states[0, :, :n] = np.eye(n)
     if n:
         inner = NODES - 1
-        system = np.kron(differentiate[1:, 1:], np.eye(n)) - np.kron(np.eye(inner), length * space.a)
+        every, each = np.arange(n), np.arange(inner)
+        system = np.zeros((inner, n, inner, n))
+        system[:, every, :, every] = differentiate[1:, 1:]
+        system[each, :, each] -= length * space.a
         forced = np.zeros((inner, n, known))
         forced[:, :, :n] = -differentiate[1:, 0, None, None] * np.eye(n)
-        forced[np.arange(inner), :, n + 1 + np.arange(inner)] = length * space.b_w
+        forced[each, :, n + 1 + each] = length * space.b_w
         forced[:, :, -1] = length * space.b_r
-        states[1:] = np.linalg.solve(system, forced.reshape(inner * n, known)).reshape(inner, n, known)
+        states[1:] = np.linalg.solve(
+            system.reshape(inner * n, inner * n), forced.reshape(inner * n, known)
+        ).reshape(inner, n, known)
     delayed, setpoint = np.zeros((NODES, known)), np.zeros(known)
     delayed[np.arange(NODES), n + np.arange(NODES)] = 1.0
     setpoint[-1] = 1.0
@@ -510,9 +523,10 @@ def _continued(march: _March, known: _Known, end: float) -> Pieces:
     time = march.time
     starts: list[float] = []
     lengths: list[float] = []
+    modes = by_size(known.modes)
     while time < end and len(starts) + len(start) < MAX_PIECES:
         starts.append(time)
-        lengths.append(TURN / _fastest(known.modes, time))
+        lengths.append(TURN / fastest(modes, time))
         time += lengths[-1]
     if known.series is None:
         raise AssertionError("the series has met the march")

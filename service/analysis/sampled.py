@@ -17,6 +17,7 @@ from service.analysis.margins import crossovers, margins
 from service.analysis.noise import ControlSensitivity, noise
 from service.analysis.nyquist import count_right_of_axis
 from service.analysis.peaks import Peak, Peaks
+from service.analysis.realisation import StateSpace
 from service.analysis.results import Analysis, Curves, DominantRoot, Noise, Quantity, Stability
 from service.analysis.roots import CharacteristicRoots
 from service.analysis.sampled_delay import sampled_delay_margin_s
@@ -36,9 +37,15 @@ ABSOLUTE_OF_NORMAL = math.sqrt(2.0 / math.pi)
 
 
 def analyse_at_scans(
-    parts: ClosedLoopParts, scan: Scan, settling_band_percent: float, with_curves: bool
+    parts: ClosedLoopParts,
+    space: StateSpace | None,
+    scan: Scan,
+    settling_band_percent: float,
+    with_curves: bool,
 ) -> tuple[Analysis, Curves | None]:
     """The sampled analysis, and its curves where they are asked for.
+
+    `space`, if there is one, is that of the continuous loop.
 
     Raises ArithmeticError or LinAlgError where float64 does not carry the numbers.
     """
@@ -76,7 +83,7 @@ def analyse_at_scans(
     found = scans(states, _log_radius(sampled, roots))
     responses, setpoint, load = None, None, None
     try:
-        responses = between_scans(scanned, sampled.plant, found)
+        responses = between_scans(scanned, sampled.plant, found, space)
         setpoint, load = step_metrics(responses, settling_band_percent, parts.unit_rad_s, impulse=False)
     except WorkBoundError:
         notes.append(codes.TOO_SLOW)

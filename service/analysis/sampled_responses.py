@@ -14,9 +14,9 @@ import numpy as np
 from service.analysis import chebyshev
 from service.analysis.errors import WorkBoundError
 from service.analysis.exponentials import exponentials_less_one
-from service.analysis.loop import Reals
-from service.analysis.realisation import realise
-from service.analysis.responses import Responses, divided, final_values
+from service.analysis.loop import ClosedLoopParts, Reals
+from service.analysis.realisation import StateSpace, realise
+from service.analysis.responses import Fading, Responses, by_size, divided, fastest, final_values
 from service.analysis.sampled_states import (
     INPUTS,
     NEW,
@@ -89,10 +89,12 @@ def scans(states: SampledStates, log_radius: float) -> Scans:
     )
 
 
-def between_scans(scanned: Scanned, plant: SampledPlant, found: Scans) -> Responses:
-    """Set-point and load response in pieces, in the loop's own unit of time."""
+def between_scans(scanned: Scanned, plant: SampledPlant, found: Scans, space: StateSpace | None) -> Responses:
+    """Set-point and load response in pieces, in the loop's own unit of time; `space`, if there is one, is the
+    continuous loop's.
+    """
     h = scanned.interval
-    modes = np.array(scanned.parts.plant.poles_rad_s, complex)
+    modes = by_size(np.array(scanned.parts.plant.poles_rad_s, complex))
     before = divided(plant.fraction * h, modes) if plant.fraction > 0 else []
     lengths = np.array(before + divided((1.0 - plant.fraction) * h, modes))
     nodes = _nodes(modes, float(lengths.max()))
@@ -102,7 +104,7 @@ def between_scans(scanned: Scanned, plant: SampledPlant, found: Scans) -> Respon
     known = np.concatenate([found.states[:count], *acting], axis=1)
     pv = (np.ascontiguousarray(np.moveaxis(known, 2, 0)) @ rows.T).reshape(2, count * len(lengths), nodes)
     starts = np.arange(count)[:, None] * h + np.concatenate([[0.0], np.cumsum(lengths)[:-1]])
-    final_pv, final_output = _final_values(scanned)
+    final_pv, final_output = final_values(_without_derivative(scanned.parts) if space is None else space)
     return Responses(
         start=starts.ravel(),
         length=np.tile(lengths, count),
@@ -114,16 +116,13 @@ def between_scans(scanned: Scanned, plant: SampledPlant, found: Scans) -> Respon
     )
 
 
-def _final_values(scanned: Scanned) -> tuple[Reals, Reals]:
-    """Where both responses come to rest, which is where the continuous loop does; its derivative plays no
-    part.
-    """
-    parts = scanned.parts
+def _without_derivative(parts: ClosedLoopParts) -> StateSpace:
+    """The continuous loop without the derivative, which plays no part in where it comes to rest."""
     feedback, setpoint = (replace(terms, kd_s=0.0, tf_s=0.0) for terms in (parts.feedback, parts.setpoint))
     space = realise(replace(parts, feedback=feedback, setpoint=setpoint))
     if space is None:
         raise AssertionError("a loop without derivative is realisable")
-    return final_values(space)
+    return space
 
 
 def _load() -> Reals:
@@ -218,8 +217,8 @@ def _rows_of_known_inputs(states: SampledStates, block: int) -> Reals:
     return rows.reshape(-1, known)
 
 
-def _nodes(modes: np.ndarray[tuple[int], np.dtype[np.complex128]], longest: float) -> int:
-    reach = float(np.abs(modes).max(initial=0.0)) * longest
+def _nodes(modes: Fading, longest: float) -> int:
+    reach = fastest(modes, 0.0) * longest
     return next(nodes for limit, nodes in NODES_FOR if reach < limit)
 
 

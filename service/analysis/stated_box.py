@@ -243,7 +243,9 @@ class _StatedBox:
         v = np.array(bounds.log_time)[:, None]
         # the plant's own frequencies move with the time factor, the controller's do not
         w = np.log(np.array(rad_s) / self.unit_rad_s) + 0.5 * v
-        v, w, of_gain, known = (np.broadcast_to(part, shape).ravel() for part in (v, w, of_gain, known))
+        every = np.zeros(shape)
+        v, w, known = (v + every).ravel(), (w + every).ravel(), (known + every).ravel()
+        of_gain = (of_gain | (every > 0)).ravel()
         w, x, y = crossings(self.loop, w, v, of_gain, known, np.full(w.shape, REACH))
         return [least(quantity.values(x, y, np.exp(w - v), v), w, v) for quantity in quantities]
 

@@ -238,7 +238,7 @@ def _of_corners(loop: UncertainLoop, margins: Margins | None, unit_rad_s: float)
         return Found(math.inf)
     times = loop.dead_times
     corners = np.array(list(itertools.product(loop.log_gain_factor, loop.log_time_factor, (0, 1)))).T
-    log_k, log_f, late = (np.tile(part, len(rad_s)) for part in corners)
+    log_k, log_f, late = np.concatenate([corners] * len(rad_s), axis=1)
     log_theta, extra = np.where(late > 0, times.log_factor[1], times.log_factor[0]), late * times.extra
     u, scale = np.repeat(np.log(np.array(rad_s) / unit_rad_s), corners.shape[1]), np.zeros(len(log_k))
     multiple: Reals | None = None

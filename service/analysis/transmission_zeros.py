@@ -51,8 +51,7 @@ def transmission_zeros(a: Reals, b: Reals, c: Reals, d: float) -> Iterator[Compl
 
 def response(a: Reals, b: Reals, c: Reals, d: float, s: Complexes) -> Complexes:
     """c·(s − a)⁻¹·b + d, shape of `s`."""
-    forced = np.broadcast_to(b, (len(s), len(a)))[..., None]
-    states = np.linalg.solve(s[:, None, None] * np.eye(len(a)) - a, forced)
+    states = np.linalg.solve(s[:, None, None] * np.eye(len(a)) - a, b[:, None])
     return np.asarray(states[..., 0] @ c + d)
 
 
