@@ -83,7 +83,8 @@ def spread_out(places: Rectangles, shares_w: Reals, shares_v: Reals) -> tuple[Re
     w = middle_w + shares_w[:, None, None] * (places.high_w - middle_w)
     # an edge of the box to the last digit
     v = np.clip(middle_v + shares_v[:, None] * (places.high_v - middle_v), places.low_v, places.high_v)
-    return np.broadcast_to(w, shape).ravel(), np.broadcast_to(v, shape).ravel()
+    every = np.zeros(shape)
+    return (w + every).ravel(), (v + every).ravel()
 
 
 def least(values: Reals, w: Reals, v: Reals) -> Found:
@@ -140,9 +141,10 @@ class Margin(ABC):
         """The least value at the cells' centres and at crossings near them, for v at the cells' edges."""
         shape = (2, 2, len(places.low_w))
         middle, reach = places.centre[0], 1.5 * (places.high_w - places.low_w)
-        w, reach = (np.broadcast_to(part, shape).ravel() for part in (middle, reach))
-        v = np.broadcast_to(np.stack([places.low_v, places.high_v]), shape).ravel()
-        known = np.broadcast_to(np.array(self.known)[:, None, None], shape).ravel()
+        every = np.zeros(shape)
+        w, reach = (middle + every).ravel(), (reach + every).ravel()
+        v = (np.array([places.low_v, places.high_v]) + every).ravel()
+        known = (np.array(self.known)[:, None, None] + every).ravel()
         best = least(self.values(*loop.at(w, v)[:2], np.exp(w - v), v), w, v)
         w, x, y = crossings(loop, w, v, np.full(w.shape, self.of_gain), known, reach)
         return min(best, least(self.values(x, y, np.exp(w - v), v), w, v), key=lambda found: found.value)

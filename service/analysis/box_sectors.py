@@ -186,7 +186,7 @@ class _Facing:
             lowest = np.maximum(lowest, moves - 0.5 * math.pi)
             highest = np.minimum(highest, moves + 0.5 * math.pi)
         middle = 0.5 * (lowest + highest)
-        return np.stack([right * np.cos(middle), np.abs(np.sin(middle))], axis=1)
+        return np.array([right * np.cos(middle), np.abs(np.sin(middle))]).swapaxes(0, 1)
 
     def parted(self, n_x: Reals, n_y: Reals) -> tuple[Flags, Flags]:
         """(Whether half-planes in some of these directions part −1 from all of the cell, whether none in the
@@ -209,7 +209,7 @@ class _Facing:
     def _reach(self, n_x: Reals, n_y: Reals) -> Reals:
         """How far the disc {z: abs(1 − e^z) ≤ d} reaches in a direction, shape of it."""
         if not self.distance.any():
-            return np.zeros_like(n_x)
+            return 0.0 * n_x
         # the point of the circle whose image has its normal there, by the law of sines
         sine = self.distance * n_y
         cosine = np.sqrt(1.0 - sine * sine)

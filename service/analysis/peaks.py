@@ -242,7 +242,8 @@ class PeakSearch:
                         if candidate.value > best[index].value * (1 + 1e-14):
                             best[index] = candidate
                 work += int(parts[chosen].sum())
-                rest = np.delete(np.arange(len(parts)), chosen)
+                rest = np.ones(len(parts), bool)
+                rest[chosen] = False
                 steps, bounds = steps.only(rest), bounds[:, rest]
             if work > MAX_PEAK_POINTS:
                 raise WorkBoundError("too many points to look for a peak")
@@ -278,7 +279,7 @@ class PeakSearch:
         for quantity in quantities:
             growth = np.asarray(quantity.growth(omega, response, slope))
             rising = growth > 0
-            falls = np.flatnonzero(rising[:-1] & ~rising[1:] & joined)
+            falls = (rising[:-1] & ~rising[1:] & joined).nonzero()[0]
             places.append(zeros_in_steps(self._growth_of(quantity), omega, growth, falls, PEAK_PLACE))
         responses = np.exp(self._axis.loop.log_response(np.concatenate(places)))
         found, first = [], 0

@@ -79,7 +79,7 @@ class Signal:
     @property
     def total_variation(self) -> float:
         """Σ abs of every rise and fall, jumps between pieces included."""
-        pieces = float(np.abs(np.diff(self.turning_values)).sum())
+        pieces = float(np.abs(self.turning_values[1:] - self.turning_values[:-1]).sum())
         return pieces + (self.tail.total_variation() if self.tail else 0.0)
 
     def less(self, level: float) -> Signal:
@@ -113,7 +113,7 @@ class Signal:
         """The last time at which abs of the signal is above `band`; 0 where it never is."""
         if self.tail and (late := self.tail.last_exit(band)) is not None:
             return Passage(late)
-        outside = np.flatnonzero(np.abs(self.turning_values) > band)
+        outside = (np.abs(self.turning_values) > band).nonzero()[0]
         if not outside.size:
             return Passage(0.0)
         index = int(outside[-1])
@@ -127,7 +127,7 @@ class Signal:
         if self.tail and self.tail.turns_near(band, SENSITIVE_SHARE):
             return True
         size = np.abs(self.turning_values)
-        clearly_outside = np.flatnonzero(size > band * (1 + SENSITIVE_SHARE))
+        clearly_outside = (size > band * (1 + SENSITIVE_SHARE)).nonzero()[0]
         late = slice(int(clearly_outside[-1]) + 1 if clearly_outside.size else 0, None)
         # the ends of pieces are no extrema; where the signal passes the edge there it is merely crossing
         inner = (self.turning_places[late] > 0) & (self.turning_places[late] < 1)
@@ -169,10 +169,9 @@ def signals(start: Reals, length: Reals, values: Reals, tails: list[Tail | None]
 
 
 def held_signal(start: Reals, length: Reals, values: Reals) -> Signal:
-    """A signal that stays at one value in each piece; `values` (p,)."""
-    pieces = np.repeat(np.arange(len(values)), 2)
-    places = np.tile([0.0, 1.0], len(values))
-    return Signal(start, length, values[:, None], pieces, places, np.repeat(values, 2), None)
+    """A signal that stays at one value in each piece, `values` (p,), and turns where one begins."""
+    every = np.arange(len(values))
+    return Signal(start, length, values[:, None], every, np.zeros(len(values)), values, None)
 
 
 def solved(passages: list[Passage | None]) -> list[float | None]:
