@@ -40,17 +40,22 @@ NOWHERE = AtAngle(complex(math.nan, math.nan), complex(math.nan, math.nan), comp
 
 def at_angle(sampled: SampledLoop, plant: SampledPlant, angle: float) -> AtAngle:
     """The loop with this plant over one scan at one angle, in plain numbers wherever it is not the plant."""
-    controller = sampled.controller
-    z, w = cmath.exp(1j * angle), 1j * math.tan(0.5 * angle)
-    log, by_w = complex(controller.log_gain, -plant.whole_scans * angle), 0j
+    controller, z = sampled.controller, cmath.exp(1j * angle)
+    # z − 1 without the digits that z loses near 1
+    z_less_one = complex(np.expm1(1j * angle))
+    log, by_z = complex(controller.log_gain, -plant.whole_scans * angle), 0j
     for roots, weight in ((controller.zeros.tolist(), 1.0), (controller.poles.tolist(), -1.0)):
         for root in roots:
-            if w == root:
+            # w − r is this by (z + 1)
+            factor = (1.0 - root) * z_less_one - 2.0 * root
+            if factor == 0:
                 return NOWHERE
-            log += weight * cmath.log(w - root)
-            by_w += weight / (w - root)
-    # z − 1 without the digits that z loses near 1
-    less_one = np.expm1(1j * angle) * np.eye(len(plant.c)) - plant.phi_less_one
+            log += weight * cmath.log(factor)
+            by_z += weight * (1.0 - root) / factor
+    if excess := len(controller.zeros) - len(controller.poles):
+        log -= excess * cmath.log(z + 1.0)
+        by_z -= excess / (z + 1.0)
+    less_one = z_less_one * np.eye(len(plant.c)) - plant.phi_less_one
     resolvent = np.linalg.inv(less_one)
     row = plant.c @ resolvent
     late = complex(row @ plant.gamma1) + plant.d
@@ -59,7 +64,7 @@ def at_angle(sampled: SampledLoop, plant: SampledPlant, angle: float) -> AtAngle
         return NOWHERE
     log += cmath.log(-controller.sign * sampled.scanned.parts.direction * own)
     of_plant = -complex(row @ resolvent @ (plant.gamma0 + plant.gamma1 / z)) - late / z**2
-    by_angle = by_w * 0.5j * (1.0 - w * w) + of_plant * 1j * z / own - 1j * plant.whole_scans
+    by_angle = 1j * z * (by_z + of_plant / own) - 1j * plant.whole_scans
     by_scans = complex(row @ plant.gamma0_slope) * (1.0 / z - 1.0) / own
     return AtAngle(complex(log.real, math.remainder(log.imag, 2.0 * math.pi)), by_angle, by_scans)
 

@@ -9,7 +9,7 @@ import pytest
 from hypothesis import assume, given
 from hypothesis import strategies as st
 
-from service.analysis.brackets import newton_zero, zero_between, zeros_in_steps
+from service.analysis.brackets import newton_zero, newton_zero_of_one, zero_between, zeros_in_steps
 from service.analysis.loop import OpenLoop
 
 FUNCTIONS = {
@@ -42,6 +42,23 @@ def test_a_loose_tolerance_is_kept_and_costs_less() -> None:
     loose = len(calls)
     zero_between(function, 0.0, 4.0, 0.5, math.exp(-4.0) - 0.5)
     assert loose < len(calls) - loose
+
+
+@pytest.mark.parametrize("name", [name for name in FUNCTIONS if "step" not in name])
+@pytest.mark.parametrize("start", [0.05, 0.95, math.nan])
+def test_newton_for_one_meets_the_zero_from_anywhere(name: str, start: float) -> None:
+    function, zero = FUNCTIONS[name]
+
+    def with_slope(x: float) -> tuple[float, float]:
+        return function(x), (function(x + 1e-7) - function(x - 1e-7)) / 2e-7
+
+    met = newton_zero_of_one(with_slope, 0.0, 1.0, function(0.0) > 0, start)
+    assert met == pytest.approx(zero, rel=1e-12 if "flat" not in name else 1e-5)
+
+
+def test_newton_for_one_halves_where_there_is_no_slope() -> None:
+    met = newton_zero_of_one(lambda x: (math.copysign(1.0, x - 1 / 3), 0.0), 0.0, 1.0, False, 0.5)
+    assert met == pytest.approx(1 / 3, rel=1e-15)
 
 
 def test_each_step_of_a_grid_has_its_own_zero() -> None:
@@ -94,3 +111,15 @@ def test_one_frequency_and_many_are_the_same_loop(
     log, slope = loop.at_frequency(omega)
     assert log == pytest.approx(complex(logs), rel=1e-12, abs=1e-12)
     assert slope == pytest.approx(complex(slopes), rel=1e-12, abs=1e-12)
+    # the two parts one by one, in real numbers
+    assert loop.log_magnitude_at(omega) == pytest.approx((log.real, slope.real), rel=1e-11, abs=1e-11)
+    assert loop.phase_at(omega) == pytest.approx((log.imag, slope.imag), rel=1e-11, abs=1e-11)
+
+
+def test_upon_a_pole_the_magnitude_is_infinite_and_the_rest_is_not_a_number() -> None:
+    loop = OpenLoop(np.array([2j, -2j]), np.array([0j, 1j, -1j]), 0.0, 1.0, dead_time=1.0)
+    for omega, magnitude in ((1.0, math.inf), (2.0, -math.inf)):
+        log, slope = loop.log_magnitude_at(omega)
+        assert log == magnitude == loop.at_frequency(omega)[0].real
+        assert math.isnan(slope)
+        assert all(math.isnan(value) for value in loop.phase_at(omega))

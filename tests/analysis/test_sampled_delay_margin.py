@@ -7,6 +7,7 @@ back and leave again. The loops are made up; roots are counted delay by delay.
 
 from __future__ import annotations
 
+import cmath
 import math
 from dataclasses import replace
 from typing import Any
@@ -22,7 +23,7 @@ from service.analysis.recomputation import recompute
 from service.analysis.sampled_loop import form_sampled_loop
 from service.analysis.sampled_states import sampled_states
 from service.analysis.scan import Scanned
-from service.analysis.unit_circle import Divided
+from service.analysis.unit_circle import Divided, OnCircle, at_angle
 from tests.analysis.entered import first_order, ideal, integrating
 from tests.analysis.sampled_truth import made_up
 
@@ -35,6 +36,32 @@ def unstable_roots(plant: Any, controller: Any, extra_s: float) -> int:
     scanned = Scanned.of(parts, controller.scan)
     matrix, _, _ = sampled_states(scanned, scanned.sample(), with_spared_noise=False).closed()
     return int(np.count_nonzero(np.abs(np.linalg.eigvals(matrix)) > 1.0))
+
+
+@pytest.mark.parametrize("seed", range(12))
+@pytest.mark.parametrize(("extra", "angle"), [(0.0, 0.3), (0.37, 1.1), (2.62, math.pi)])
+def test_at_one_angle_the_loop_is_the_same_and_its_slopes_are_its_own(
+    seed: int, extra: float, angle: float
+) -> None:
+    plant, controller = made_up(seed)
+    sampled = form_sampled_loop(Scanned.of(form_loop(plant, controller, None), controller.scan))
+    interval = sampled.scanned.interval
+
+    def value(at: float, scans: float) -> complex:
+        plants = [sampled.scanned.sample(scans * interval)]
+        return complex(OnCircle(sampled, np.array([at])).values(plants)[0, 0])
+
+    told = at_angle(sampled, sampled.scanned.sample(extra * interval), angle)
+    assert -cmath.exp(told.log_of_negative) == pytest.approx(value(angle, extra), rel=1e-9)
+    if abs(value(angle, extra)) < 1e-9:
+        # the trapezoidal rule has a zero at z = -1
+        assert (controller.scan.method, angle) == ("trapezoidal", math.pi)
+        return
+    step = 1e-5
+    by_angle = cmath.log(value(angle + step, extra) / value(angle - step, extra)) / (2 * step)
+    by_scans = cmath.log(value(angle, extra + step) / value(angle, extra)) / step
+    assert told.by_angle == pytest.approx(by_angle, rel=1e-4, abs=1e-4)
+    assert told.by_scans == pytest.approx(by_scans, rel=1e-3, abs=1e-3)
 
 
 def delay_margin_s(plant: Any, controller: Any) -> float:
