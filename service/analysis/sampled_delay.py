@@ -11,21 +11,26 @@ confirmed by the eigenvalues at it, and where they do not tell by counting roots
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
-import numpy.typing as npt
 
+from service.analysis.delay_cells import (
+    DIVIDED,
+    angles_of_grid,
+    cells,
+    fastest_mode,
+    swings_between_divisions,
+)
 from service.analysis.frequency import AxisResponse
-from service.analysis.loop import EPSILON, Complexes, OpenLoop, Reals
+from service.analysis.loop import EPSILON, Complexes, OpenLoop
 from service.analysis.nyquist import count_right_of_axis
 from service.analysis.results import Quantity
 from service.analysis.sampled_loop import NotFactoredError, SampledLoop, form_sampled_loop
 from service.analysis.sampled_roots import compressed, points_for, resolved
 from service.analysis.sampled_states import sampled_states
 from service.analysis.scan import SampledPlant
-from service.analysis.unit_circle import Divided, OnCircle, at_angle
+from service.analysis.unit_circle import Divided, at_angle
 
 FEW_HELD = 24
 """So many past outputs are carried each for itself, more by points."""
@@ -52,9 +57,6 @@ NEWTON_DONE = 1e-8
 MAX_PROBES = 500
 """Work bound: a loop that is as near to instability as that at more delays has no delay margin computed."""
 
-NEAR_ONE = 0.1
-"""Within this of 1 abs L at the points of a step may pass 1 between them."""
-
 FAR_BELOW = 0.25
 SLOW_PLANT = 0.5
 """A crossover at this angle ωh and below, with abs λ·h of the plant no larger than this, hardly moves in a
@@ -64,29 +66,22 @@ scan.
 MAX_SCANS = 3000
 """Work bound: the grid is not laid over more scans than this."""
 
-DIVIDED, ANGLE_SHARE, ANGLE_STEP = 32, 0.06, 0.03
-"""The grid: cells of a scan, and the longest steps of ωh, against itself and in itself."""
-
 
 def sampled_delay_margin_s(sampled: SampledLoop, axis: AxisResponse) -> Quantity:
     """The delay margin of a stable loop in seconds; None where counting does not confirm what was found."""
+    if swings_between_divisions(sampled):
+        return None
     divided = Divided.of(sampled, axis)
     starts = divided.starts(axis)
     if not starts:
         # abs L stays below 1 however the dead time divides a scan
         return "unbounded"
     touching = sorted(touch for angle in starts if (touch := _solved(sampled, angle)) is not None)
-    reach = divided.reach()
-    if max(starts) <= FAR_BELOW and sampled.plant.d == 0 and _fastest(sampled) <= SLOW_PLANT:
-        found = _confirmed(sampled, reach, touching)
+    if max(starts) <= FAR_BELOW and sampled.plant.d == 0 and fastest_mode(sampled) <= SLOW_PLANT:
+        found = _confirmed(sampled, divided.reach(), touching)
     else:
-        found = _least_on_grid(sampled, reach, min(starts), touching)
+        found = _least_on_grid(sampled, divided, min(starts), touching)
     return None if found is None else found / sampled.scanned.parts.unit_rad_s
-
-
-def _fastest(sampled: SampledLoop) -> float:
-    """Largest abs λ·h of the plant."""
-    return float(np.abs(sampled.scanned.parts.plant.poles_rad_s).max(initial=0.0)) * sampled.scanned.interval
 
 
 @dataclass(frozen=True, order=True, slots=True)
@@ -147,17 +142,20 @@ def _outer_roots(sampled: SampledLoop, plant: SampledPlant, reach: float) -> Com
     return np.asarray(roots[resolved(np.angle(roots), line, points)])
 
 
-def _least_on_grid(sampled: SampledLoop, reach: float, lowest: float, touching: list[_Touch]) -> float | None:
+def _least_on_grid(
+    sampled: SampledLoop, divided: Divided, lowest: float, touching: list[_Touch]
+) -> float | None:
     """The least delay at which a root leaves the circle, from the cells of the grid and counts between
     them.
     """
-    interval = sampled.scanned.interval
+    interval, reach = sampled.scanned.interval, divided.reach()
     first = touching[0] if touching else None
-    limit = None if first is None else first.delay
-    if (2.0 * math.pi / lowest * interval if limit is None else limit) > MAX_SCANS * interval:
+    # within a whole turn of the lowest crossover every root that leaves has left
+    limit = (2.0 * math.pi / lowest + 2.0) * interval if first is None else first.delay
+    if limit > MAX_SCANS * interval:
         return None
     last_stable, tried = 0.0, 0
-    for low, high in _cells(sampled, lowest, limit):
+    for low, high in cells(sampled, angles_of_grid(lowest, divided.angles), limit):
         if first is not None and low <= first.delay <= high and _first_to_leave(sampled, reach, first):
             return first.delay
         for delay in (max(low - interval / DIVIDED, 0.0), low, 0.5 * (low + high), high):
@@ -221,94 +219,6 @@ def _loop_with(sampled: SampledLoop, delay: float) -> OpenLoop | None:
         return form_sampled_loop(sampled.scanned, delay).loop
     except NotFactoredError:
         return None
-
-
-def _cells(sampled: SampledLoop, lowest: float, limit: float | None) -> Iterator[tuple[float, float]]:
-    """Least and largest extra delay of every step of the grid in which 1 + L turns about a cell, the least
-    first; up to a little beyond `limit`, or through a whole turn of the lowest crossover.
-
-    A step from the last division of a scan to the next whole one is among them: there a direct path comes a
-    scan later at once.
-    """
-    interval, plant = sampled.scanned.interval, sampled.plant
-    angles, shares = _angles(lowest), np.array(_shares(sampled))
-    delays = (shares - plant.fraction) % 1.0 * interval
-    here = OnCircle(sampled, angles)
-    divided = [replace(each, whole_scans=0) for each in sampled.scanned.samples(delays.tolist())]
-    values = here.values(divided)
-    left = _cells_near_one(np.abs(values))
-    if not left.size:
-        return
-    last = 2.0 * math.pi / lowest + 2.0 if limit is None else limit / interval
-    before: tuple[Complexes, Complexes, float] | None = None
-    for whole in range(plant.whole_scans, plant.whole_scans + math.ceil(last) + 2):
-        at_left, at_right = (
-            1.0 + values[:, columns] * np.exp(-1j * whole * angles[columns]) for columns in (left, left + 1)
-        )
-        extra = (whole + shares - plant.whole_scans - plant.fraction) * interval
-        if before is not None:
-            at_left, at_right = np.vstack([before[0], at_left]), np.vstack([before[1], at_right])
-            extra = np.append(before[2], extra)
-        for row in _rows_about_zero(at_left, at_right):
-            if extra[row + 1] > 0:
-                yield max(float(extra[row]), 0.0), float(extra[row + 1])
-        before = at_left[-1:], at_right[-1:], float(extra[-1])
-
-
-def _cells_near_one(magnitude: Reals) -> npt.NDArray[np.intp]:
-    """The steps of ωh, by their left ends, in which abs L comes near 1 at some division; elsewhere 1 + L is
-    not 0.
-    """
-    low, high = magnitude.min(axis=0), magnitude.max(axis=0)
-    passes = (np.minimum(low[:-1], low[1:]) <= 1.0 + NEAR_ONE) & (
-        np.maximum(high[:-1], high[1:]) >= 1.0 - NEAR_ONE
-    )
-    return np.flatnonzero(passes)
-
-
-def _angles(lowest: float) -> Reals:
-    """ωh from below the lowest crossover to the Nyquist frequency, where real roots reach the circle, and
-    beyond it, in steps that are short in themselves and against ωh.
-    """
-    angles = [0.7 * lowest]
-    while angles[-1] < math.pi:
-        angles.append(angles[-1] + min(ANGLE_SHARE * angles[-1], ANGLE_STEP))
-    # the Nyquist frequency lies in the middle of the last step
-    scale = (math.pi - angles[0]) / (0.5 * (angles[-2] + angles[-1]) - angles[0])
-    return np.asarray(angles[0] + scale * (np.array(angles) - angles[0]))
-
-
-def _shares(sampled: SampledLoop) -> list[float]:
-    """Divisions of a scan, closer where a fast plant answers to the last part of it."""
-    even = np.linspace(0.0, 1.0, DIVIDED + 1)
-    fastest = _fastest(sampled)
-    if fastest > DIVIDED / 8:
-        # e^(−λh(1−ε)) moves within some 1/(λh) before the whole scan
-        even = np.concatenate([even, 1.0 - np.geomspace(0.1 / fastest, 1.0, DIVIDED)])
-    shares = np.sort(even[(even >= 0) & (even < 1.0)])
-    return [*shares[np.append(True, np.diff(shares) > 1e-9)].tolist(), 1.0 - 1e-9]
-
-
-def _rows_about_zero(at_left: Complexes, at_right: Complexes) -> list[int]:
-    """The rows with a cell about whose boundary a function turns, and those where it comes nearest to 0 and
-    so near, against how it changes in the cell, that two zeros may lie inside; values (rows, cells).
-    """
-    left, right = np.angle(at_left), np.angle(at_right)
-    along = _wrapped(right - left)
-    turn = along[:-1] + _wrapped(np.diff(right, axis=0)) - along[1:] - _wrapped(np.diff(left, axis=0))
-    centre = np.abs(0.25 * (at_left[:-1] + at_left[1:] + at_right[:-1] + at_right[1:]))
-    across = np.abs(at_right - at_left)
-    along_delay = np.maximum(np.abs(np.diff(at_left, axis=0)), np.abs(np.diff(at_right, axis=0)))
-    near = (centre < 0.5 * (np.maximum(across[:-1], across[1:]) + along_delay)).any(axis=1)
-    nearest = centre.min(axis=1)
-    walled = np.concatenate([[np.inf], nearest, [np.inf]])
-    least = (nearest <= walled[:-2]) & (nearest <= walled[2:])
-    rows: list[int] = np.flatnonzero((np.abs(turn) > math.pi).any(axis=1) | (near & least)).tolist()
-    return rows
-
-
-def _wrapped(angle: Reals) -> Reals:
-    return np.asarray((angle + math.pi) % (2.0 * math.pi) - math.pi)
 
 
 def _solved(sampled: SampledLoop, angle: float) -> _Touch | None:

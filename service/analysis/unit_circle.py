@@ -15,8 +15,13 @@ from service.analysis.loop import Complexes, Reals
 from service.analysis.sampled_loop import SampledLoop
 from service.analysis.scan import SampledPlant
 
-DIVISIONS = (0.0, 0.2, 0.4, 0.6, 0.8)
-"""Fractions of a scan at which gain crossovers are looked for, beside the loop's own."""
+FEWEST_DIVISIONS = 5
+"""Into so many parts of a scan and more, as its plant swings, dead time is divided to look for gain
+crossovers.
+"""
+
+DIVISION_RAD = 0.5
+"""A mode of the plant swings no farther between two divisions."""
 
 CLEARLY_BELOW = 0.5
 """A root leaves the circle where abs L is 1: none is looked for where abs L is below this."""
@@ -114,6 +119,12 @@ class OnCircle:
         return np.asarray(self.sampled.plant.c @ np.linalg.inv(less_one - self.sampled.plant.phi_less_one))
 
 
+def swinging_modes(sampled: SampledLoop) -> Reals:
+    """Im λ·h > 0 of the plant's modes that are not well damped."""
+    modes = np.array(sampled.scanned.parts.plant.poles_rad_s, complex) * sampled.scanned.interval
+    return np.asarray(modes.imag[modes.imag > np.abs(modes.real)])
+
+
 @dataclass(frozen=True, eq=False)
 class Divided:
     """abs L for dead times that divide a scan in several ways, (divisions, m), at angles ωh, (m,).
@@ -127,16 +138,20 @@ class Divided:
     @staticmethod
     def of(sampled: SampledLoop, axis: AxisResponse) -> Divided:
         """Those of a loop at the frequencies of its axis."""
-        angles = 2.0 * np.arctan(axis.omega)
+        scan, angles = sampled.scanned, 2.0 * np.arctan(axis.omega)
         # far below the scan's frequency the division of a scan moves abs L by no more than about the angle's
         # square
         near = np.abs(axis.log_response.real) < NEAR_ONE + 2.0 * angles**2
+        swings = swinging_modes(sampled)
+        for alias in np.abs(np.mod(swings + math.pi, 2.0 * math.pi) - math.pi).tolist():
+            # but for a mode that swings beyond the Nyquist frequency, and looks like a slow one
+            near |= np.abs(angles - alias) < 0.5 * alias
         near[:-1] |= near[1:]
         near[1:] |= near[:-1]
-        angles = np.append(angles[near], math.pi)
-        scan, here = sampled.scanned, OnCircle(sampled, angles)
-        delays = [(share - sampled.plant.fraction) % 1.0 * scan.interval for share in DIVISIONS]
-        return Divided(angles, np.abs(here.values(scan.samples(delays))))
+        here = OnCircle(sampled, np.append(angles[near], math.pi))
+        count = max(FEWEST_DIVISIONS, math.ceil(float(swings.max(initial=0.0)) / DIVISION_RAD))
+        delays = (np.arange(count) / count - sampled.plant.fraction) % 1.0 * scan.interval
+        return Divided(here.angle, np.abs(here.values(scan.samples(delays.tolist()))))
 
     def reach(self) -> float:
         """The largest angle at which abs L is not clearly below 1 at some division; 0 where there is none."""

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import cmath
 import math
+import os
 from dataclasses import replace
 from typing import Any
 
@@ -16,6 +17,7 @@ import numpy as np
 import pytest
 
 from service.analysis import sampled_delay
+from service.analysis.codes import DELAY_MARGIN
 from service.analysis.controller import Scan
 from service.analysis.frequency import AxisResponse
 from service.analysis.loop import form_loop
@@ -24,10 +26,16 @@ from service.analysis.sampled_loop import form_sampled_loop
 from service.analysis.sampled_states import sampled_states
 from service.analysis.scan import Scanned
 from service.analysis.unit_circle import Divided, OnCircle, at_angle
-from tests.analysis.entered import first_order, ideal, integrating
+from tests.analysis.entered import factors, first_order, ideal, integrating
 from tests.analysis.sampled_truth import made_up
 
 STEPS_A_SCAN = 43
+
+RESONANT_LOOPS = int(os.environ.get("RESONANT_LOOPS", "0"))
+"""So many resonant loops that nobody has chosen are tried in place of the few."""
+
+NARROW = (11, 14, 283, 422, 437, 463, 521)
+"""Loops whose resonance passes between the points of a grid that does not know of it."""
 
 
 def unstable_roots(plant: Any, controller: Any, extra_s: float) -> int:
@@ -83,6 +91,61 @@ def test_no_root_is_outside_before_the_margin_and_one_is_behind_it(seed: int) ->
     for extra_s in np.arange(start + interval / STEPS_A_SCAN, margin * (1.0 - 1e-6), interval / STEPS_A_SCAN):
         assert unstable_roots(plant, controller, float(extra_s)) == 0
     assert unstable_roots(plant, controller, margin * (1.0 + 1e-6)) > 0
+
+
+def resonant(seed: int) -> tuple[Any, Any]:
+    """A lag with a light resonance beside zeros nearly as light, scanned every second."""
+    rng = np.random.default_rng(seed)
+    swing_rad_s, damping = 10 ** rng.uniform(-0.5, 0.9), 10 ** rng.uniform(-5.0, -2.0)
+    lag_s, apart = 10 ** rng.uniform(-1.0, 1.0), rng.choice([-1.0, 1.0]) * 10 ** rng.uniform(-5.0, -1.0)
+    pole, zero = swing_rad_s * complex(-damping, 1.0), swing_rad_s * complex(-2.0 * damping, 1.0 + apart)
+    plant = factors(
+        10 ** rng.uniform(-0.5, 0.5) / lag_s,
+        [(zero.real, zero.imag), (zero.real, -zero.imag)],
+        [-1.0 / lag_s, (pole.real, pole.imag), (pole.real, -pole.imag)],
+        rng.uniform(0.0, 2.0),
+    )
+    return plant, ideal(rng.uniform(0.2, 1.2), lag_s * rng.uniform(0.7, 3.0), scan=Scan(interval_s=1.0))
+
+
+def no_root_is_outside_before(plant: Any, controller: Any, margin: float) -> None:
+    before = [
+        *np.linspace(0.0, margin * (1.0 - 1e-6), min(400, 100 + int(80 * margin))),
+        *margin * (1.0 - np.geomspace(1e-5, 0.1, 30)),
+    ]
+    assert [extra_s for extra_s in before if unstable_roots(plant, controller, float(extra_s))] == []
+    assert unstable_roots(plant, controller, margin * (1.0 + 1e-4)) > 0
+
+
+@pytest.mark.parametrize("seed", range(1000, 1000 + RESONANT_LOOPS) if RESONANT_LOOPS else NARROW)
+def test_a_resonance_narrower_than_any_even_grid_is_seen(seed: int) -> None:
+    plant, controller = resonant(seed)
+    sampled = recompute(plant, controller).sampled
+    assert sampled is not None
+    if RESONANT_LOOPS and (sampled.margins is None or sampled.margins.delay_margin_s is None):
+        pytest.skip("no delay margin is told")
+    no_root_is_outside_before(plant, controller, delay_margin_s(plant, controller))
+
+
+def test_a_resonance_beyond_the_nyquist_frequency_that_looks_like_a_slow_one_is_seen() -> None:
+    # 6.32 rad/s scanned every second is 6.32 - 2π
+    plant = factors(
+        0.887, [(-4.3e-4, 5.947), (-4.3e-4, -5.947)], [-1 / 1.65, (-2.15e-4, 6.32), (-2.15e-4, -6.32)], 0.267
+    )
+    controller = ideal(0.698, 3.03, scan=Scan(interval_s=1.0))
+    margin = delay_margin_s(plant, controller)
+    assert margin < controller.scan.interval_s / 4
+    no_root_is_outside_before(plant, controller, margin)
+
+
+def test_a_mode_that_swings_many_times_within_a_scan_leaves_the_delay_margin_untold() -> None:
+    plant = factors(0.01 * 40.0**2, [], [-0.1, (-0.01, 40.0), (-0.01, -40.0)], 1.5)
+    sampled = recompute(plant, ideal(1.0, 20.0, scan=Scan(interval_s=1.0))).sampled
+    assert sampled is not None
+    assert sampled.stability.verdict == "stable"
+    assert sampled.margins is not None
+    assert sampled.margins.delay_margin_s is None
+    assert DELAY_MARGIN in sampled.notes
 
 
 @pytest.mark.parametrize("seed", [100181])
