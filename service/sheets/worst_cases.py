@@ -11,8 +11,8 @@ from service.sheets.controllers import Told
 
 _THROUGHOUT = {True: "yes, proven", False: "NO", None: "not decided"}
 _AT_SCAN = {
-    "unstable": "NO: at its scan it is unstable as entered",
-    "undecided": "NOT SHOWN: at its scan it is undecided as entered",
+    "unstable": "NO, unstable at its scan",
+    "undecided": "NOT SHOWN, undecided at its scan",
 }
 
 

@@ -112,7 +112,7 @@ def test_a_loop_that_is_unstable_at_its_scan_is_nowhere_told_as_stable_for_every
     scan = Scan(interval_s=12.0, method="backward_difference")
     found = told(1.0, near, Criteria(worst_case_gain_margin_min=1.1), scan)
     (row,) = (row for row in found.limits if row.name == "Stable for every model within the uncertainty")
-    assert row.value == "NO: at its scan it is unstable as entered"
+    assert row.value == "NO, unstable at its scan"
     assert not row.met
     assert rows(found)["Gain margin of the worst model within the uncertainty"] == "not defined"
     assert "Maximum sensitivity of the worst model within the uncertainty" not in rows(found)
