@@ -79,7 +79,6 @@ EXAMPLES: dict[type, dict[str, Any]] = {
         "safety_effect": "None: the high temperature trip acts on a sensor of its own.",
         "claims": {"gain_margin": 4.3, "phase_margin_deg": 66},
         "tool": {"name": "loop helper", "version": "2.4"},
-        "install_by": "2027-01-31T18:00:00Z",
     },
     LoopChangeRequest: {
         "revision": 1,
