@@ -275,6 +275,10 @@ def test_it_is_read_back_as_it_was_computed_and_the_history_vouches_for_it(
         (1, "unstable")
     ]
     assert {each["finding"]["outcome"] for each in told["criteria"]} == {"not_assessed"}
+    assert told["loop_revision"] == found.loop_revision == 1
+    assert told["gain_sets"][0]["controller"]["proportional"]["value"] == 15.0
+    assert (told["criteria_source"], told["not_recomputed"]) == ("service_floors", [])
+    assert told["recomputations"][0]["gain_set"] == 0
     assert verify(store.url).holds
 
 

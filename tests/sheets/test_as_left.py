@@ -50,6 +50,7 @@ def test_an_unstable_loop_is_told_first_and_the_operator_is_to_be_told() -> None
     assert told.sentence.startswith("Unstable with the gains as left: the loop does not come to rest")
     assert told.summary == "The recomputed loop is UNSTABLE. Limits: 6 NOT ASSESSED, of 6."
     assert told.missed == ()
+    assert "approved" not in told.sentence
     assert told.caution.startswith(
         "Tell the operator of this loop now. These gains were computed, not approved."
     )
@@ -68,6 +69,8 @@ def test_limits_that_a_stable_loop_misses_are_named_those_of_no_deviation_too() 
     told = told_as_left(left(alone(NEAR_THE_LIMIT), at=models(LAG)))
     assert (told.verdict, told.calm) == ("stable", False)
     assert any(sentence.startswith("Gain margin at least 2.5: 1.") for sentence in told.missed)
+    assert not any("Worst at" in sentence for sentence in told.missed)
+    assert "NOT MET" in told.summary
     assert any(sentence.startswith("Nobody could approve this: gain margin") for sentence in told.missed)
     assert told.caution.startswith("Tell the operator")
 
@@ -84,10 +87,23 @@ def test_at_several_points_the_worst_one_is_named() -> None:
     assert any(sentence.endswith("Worst at: normal throughput.") for sentence in told.missed)
 
 
-@pytest.mark.parametrize("what", [None, left(alone(TUNED), at=())], ids=["recorded before", "no model"])
-def test_where_nothing_was_computed_nothing_is_said_to_have_been(what: RecomputedAsLeft | None) -> None:
+def test_where_one_point_is_unstable_no_limit_of_another_is_told() -> None:
+    told = told_as_left(left(alone(RUNS_AWAY), at=models(LAG, EASIER)))
+    assert (told.verdict, told.calm) == ("unstable", False)
+    assert not any(sentence.startswith("Gain margin at least 2.5") for sentence in told.missed)
+
+
+@pytest.mark.parametrize(
+    ("what", "why"),
+    [(None, "this was recorded before"), (left(alone(TUNED), at=()), "no model in force")],
+    ids=["recorded before", "no model"],
+)
+def test_where_nothing_was_computed_nothing_is_said_to_have_been(
+    what: RecomputedAsLeft | None, why: str
+) -> None:
     told = told_as_left(what)
-    assert told.sentence.startswith("Not recomputed with the gains as left: ")
+    assert told.sentence.startswith(f"Not recomputed with the gains as left: {why}")
+    assert told.missed == ()
     assert told.summary == ""
     assert "nothing was computed of them" in told.caution
     assert "were computed" not in told.caution
@@ -117,6 +133,9 @@ def test_a_set_without_a_model_is_named_beside_what_was_recomputed() -> None:
     assert told.missed == ("Gains for: two pumps: NOT recomputed, no model is in force at at night.",)
     (shown,) = assessments(found)
     assert shown.title == "Operating point: normal throughput, gains for: one pump"
+    formless = told_as_left(left(replace(sets[0], controller=CLOSES_NO_LOOP), sets[1], at=models(DIRECT)))
+    assert formless.verdict == "undecided"
+    assert [sentence.partition(":")[0] for sentence in formless.missed] == ["Operating point", "Gains for"]
 
 
 def test_nobody_is_told_not_to_enter_what_has_been_entered() -> None:
