@@ -37,8 +37,8 @@ MAX_CELLS = 50_000
 FACTORS_OF_A_CELL = 20
 """A cell itself costs as much as so many factors."""
 
-CHILDREN = 300
-"""Few cells are divided into about so many at once, many into four each."""
+CHILDREN, FEWEST_PARTS, MOST_PARTS = 300, 4, 36
+"""Cells are divided into about so many at once, each into no fewer and no more parts than these."""
 
 WAVE_THAT_TRIES = 2
 """From this wave on a lower value is looked for wherever a cell is left; before, where one is known to be."""
@@ -257,7 +257,7 @@ def _parts(cells: Cells, left: Indices) -> tuple[Reals, Reals]:
     # errors fall with the square of the width; a wave is kept to a size at which its overhead is paid for
     of_v = cells.bend_rest + slope.x_v**2 + slope.y_v**2
     of_w = of_v + cells.bend_plant + slope.x_w**2 + slope.y_w**2
-    most = min(max(CHILDREN / max(len(left), 1), 4.0), 16.0)
+    most = min(max(CHILDREN / len(left), FEWEST_PARTS), MOST_PARTS)
     # a width that costs nothing is not divided
     ratio = np.sqrt(of_w / of_v)[left] * width_w / width_v
     ratio = np.where(ratio == ratio, ratio, np.inf)
