@@ -22,6 +22,14 @@ from service.analysis.unit_circle import DIVISION_RAD, OnCircle, swinging_modes
 NEAR_ONE = 0.1
 """Within this of 1 abs L at the points of a step may pass 1 between them."""
 
+GRAZING = 0.25
+"""Of the change of slope between two cells, twice what a straight line misses a curve by; and of the change
+between two delays, by how much more a value may have moved between them.
+"""
+
+ALIVE = 3.0
+"""A mode that dies away by fewer nepers within a scan swings through all of it."""
+
 DIVIDED, ANGLE_SHARE, ANGLE_STEP = 32, 0.06, 0.03
 """The grid: cells of a scan, and the longest steps of ωh, against itself and in itself."""
 
@@ -33,7 +41,7 @@ def fastest_mode(sampled: SampledLoop) -> float:
 
 def swings_between_divisions(sampled: SampledLoop) -> bool:
     """Whether a mode of the plant swings so far within a scan that the grid does not follow it."""
-    return bool(np.any(swinging_modes(sampled) > DIVISION_RAD * DIVIDED))
+    return bool(np.any(swinging_modes(sampled, ALIVE) > DIVISION_RAD * DIVIDED))
 
 
 def cells(sampled: SampledLoop, angles: Reals, limit: float) -> Iterator[tuple[float, float]]:
@@ -78,10 +86,10 @@ def _steps_near_one(magnitude: Reals) -> npt.NDArray[np.intp]:
     return np.flatnonzero(passes)
 
 
-def angles_of_grid(lowest: float, known: Reals) -> Reals:
+def angles_of_grid(lowest: float, resonant: Reals) -> Reals:
     """ωh from below the lowest crossover to the Nyquist frequency, where real roots reach the circle, and
-    beyond it, in steps that are short in themselves and against ωh; and those known angles that a resonance
-    lies close together at.
+    beyond it, in steps that are short in themselves and against ωh; and those angles about resonances that
+    lie closer together.
     """
     even = [0.7 * lowest]
     while even[-1] < math.pi:
@@ -89,10 +97,10 @@ def angles_of_grid(lowest: float, known: Reals) -> Reals:
     # the Nyquist frequency lies in the middle of the last step
     scale = (math.pi - even[0]) / (0.5 * (even[-2] + even[-1]) - even[0])
     angles = even[0] + scale * (np.array(even) - even[0])
-    close = np.flatnonzero(known[1:] - known[:-1] < 0.5 * np.minimum(ANGLE_SHARE * known[1:], ANGLE_STEP))
-    resonant = known[np.union1d(close, close + 1)]
-    between = (angles[0] < resonant) & (resonant < angles[-2])
-    return distinct(np.concatenate([angles, resonant[between]]))
+    steps = resonant[1:] - resonant[:-1]
+    close = np.flatnonzero(steps < 0.5 * np.minimum(ANGLE_SHARE * resonant[1:], ANGLE_STEP))
+    more = resonant[np.union1d(close, close + 1)]
+    return distinct(np.concatenate([angles, more[(angles[0] < more) & (more < angles[-2])]]))
 
 
 def _shares(sampled: SampledLoop) -> list[float]:
@@ -120,8 +128,30 @@ def _rows_about_zero(at_left: Complexes, at_right: Complexes) -> list[int]:
     nearest = centre.min(axis=1)
     walled = np.concatenate([[np.inf], nearest, [np.inf]])
     least = (nearest <= walled[:-2]) & (nearest <= walled[2:])
-    rows: list[int] = np.flatnonzero((np.abs(turn) > math.pi).any(axis=1) | (near & least)).tolist()
+    about = (np.abs(turn) > math.pi).any(axis=1) | (near & least) | _grazed(at_left - 1.0, at_right - 1.0)
+    rows: list[int] = np.flatnonzero(about).tolist()
     return rows
+
+
+def _grazed(left: Complexes, right: Complexes) -> npt.NDArray[np.bool_]:
+    """The rows of cells in which abs L may be 1 where L is real and negative, between two delays at which it
+    is nearly so; L at the cells' edges, (rows + 1, cells).
+
+    A chord passes −1 by more than an arc about the origin does: ln abs L is followed along the angle instead.
+    """
+    log_left, log_right = np.log(np.abs(left)), np.log(np.abs(right))
+    angle_left, angle_right = np.angle(-left), np.angle(-right)
+    crossed = (angle_left * angle_right <= 0) & (np.abs(angle_left - angle_right) < math.pi)
+    share = angle_left / np.where(crossed, angle_left - angle_right, 1.0)
+    rise = log_right - log_left
+    there = np.where(crossed, log_left + share * rise, np.nan)
+    # what a straight line in a cell may miss by, and how the value moves from one delay to the next
+    bend = np.abs(np.diff(rise, axis=1, prepend=rise[:, :1], append=rise[:, -1:]))
+    missed = GRAZING * np.maximum(bend[:, :-1], bend[:, 1:])
+    before, behind = there[:-1], there[1:]
+    moves = GRAZING * np.nan_to_num(np.abs(behind - before))
+    grazed = (np.abs(before) <= missed[:-1] + moves) | (np.abs(behind) <= missed[1:] + moves)
+    return np.asarray((grazed | (before * behind <= 0)).any(axis=1))
 
 
 def _wrapped(angle: Reals) -> Reals:

@@ -155,7 +155,7 @@ def _least_on_grid(
     if limit > MAX_SCANS * interval:
         return None
     last_stable, tried = 0.0, 0
-    for low, high in cells(sampled, angles_of_grid(lowest, divided.angles), limit):
+    for low, high in cells(sampled, angles_of_grid(lowest, divided.resonant), limit):
         if first is not None and low <= first.delay <= high and _first_to_leave(sampled, reach, first):
             return first.delay
         for delay in (max(low - interval / DIVIDED, 0.0), low, 0.5 * (low + high), high):

@@ -26,6 +26,9 @@ DIVISION_RAD = 0.5
 CLEARLY_BELOW = 0.5
 """A root leaves the circle where abs L is 1: none is looked for where abs L is below this."""
 
+LIGHT = 0.5
+"""A mode of the plant that dies away by fewer nepers than this within a scan makes a narrow resonance."""
+
 NEAR_ONE = -math.log(CLEARLY_BELOW)
 """Nepers about 1 within which abs L is looked at, beside what the division of a scan may move it by."""
 
@@ -119,21 +122,24 @@ class OnCircle:
         return np.asarray(self.sampled.plant.c @ np.linalg.inv(less_one - self.sampled.plant.phi_less_one))
 
 
-def swinging_modes(sampled: SampledLoop) -> Reals:
-    """Im λ·h > 0 of the plant's modes that are not well damped."""
+def swinging_modes(sampled: SampledLoop, alive: float = LIGHT) -> Reals:
+    """Im λ·h > 0 of the plant's modes that swing and die away by fewer nepers than this within a scan."""
     modes = np.array(sampled.scanned.parts.plant.poles_rad_s, complex) * sampled.scanned.interval
-    return np.asarray(modes.imag[modes.imag > np.abs(modes.real)])
+    fading = np.abs(modes.real)
+    return np.asarray(modes.imag[(modes.imag > fading) & (fading < alive)])
 
 
 @dataclass(frozen=True, eq=False)
 class Divided:
     """abs L for dead times that divide a scan in several ways, (divisions, m), at angles ωh, (m,).
 
-    Those of the axis wherever abs L may come near 1, and the Nyquist frequency's.
+    Those of the axis wherever abs L may come near 1, and the Nyquist frequency's. `resonant`: those about the
+    plant's light resonances, as they look at the scans.
     """
 
     angles: Reals
     magnitude: Reals
+    resonant: Reals
 
     @staticmethod
     def of(sampled: SampledLoop, axis: AxisResponse) -> Divided:
@@ -142,16 +148,17 @@ class Divided:
         # far below the scan's frequency the division of a scan moves abs L by no more than about the angle's
         # square
         near = np.abs(axis.log_response.real) < NEAR_ONE + 2.0 * angles**2
-        swings = swinging_modes(sampled)
+        swings, resonant = swinging_modes(sampled), np.zeros(len(angles), bool)
         for alias in np.abs(np.mod(swings + math.pi, 2.0 * math.pi) - math.pi).tolist():
-            # but for a mode that swings beyond the Nyquist frequency, and looks like a slow one
-            near |= np.abs(angles - alias) < 0.5 * alias
+            # one beyond the Nyquist frequency looks like a slow one
+            resonant |= np.abs(angles - alias) < 0.5 * alias
+        near |= resonant
         near[:-1] |= near[1:]
         near[1:] |= near[:-1]
         here = OnCircle(sampled, np.append(angles[near], math.pi))
         count = max(FEWEST_DIVISIONS, math.ceil(float(swings.max(initial=0.0)) / DIVISION_RAD))
         delays = (np.arange(count) / count - sampled.plant.fraction) % 1.0 * scan.interval
-        return Divided(here.angle, np.abs(here.values(scan.samples(delays.tolist()))))
+        return Divided(here.angle, np.abs(here.values(scan.samples(delays.tolist()))), angles[resonant])
 
     def reach(self) -> float:
         """The largest angle at which abs L is not clearly below 1 at some division; 0 where there is none."""
