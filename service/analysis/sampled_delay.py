@@ -49,6 +49,9 @@ the circle count as they are.
 BESIDE = 1e-7
 """Roots are counted this much before and behind the margin, relatively."""
 
+FIRST_STEP_BACK = 1e-7
+"""Scans; each step on the way back is half as long again as the one before."""
+
 STEPS = 30
 
 NEWTON_DONE = 1e-8
@@ -81,6 +84,9 @@ def sampled_delay_margin_s(sampled: SampledLoop, axis: AxisResponse) -> Quantity
         found = _confirmed(sampled, divided.reach(), touching)
     else:
         found = _least_on_grid(sampled, divided, min(starts), touching)
+        if found is not None and touching and found > touching[0].delay * (1.0 + BESIDE):
+            # a root lies upon the circle there: where it does not leave it comes back
+            found = _left_before(sampled, divided.reach(), touching[0])
     return None if found is None else found / sampled.scanned.parts.unit_rad_s
 
 
@@ -170,6 +176,27 @@ def _least_on_grid(
                 )
             last_stable = last_stable if count is None else delay
     return _confirmed(sampled, reach, touching[:1])
+
+
+def _left_before(sampled: SampledLoop, reach: float, touch: _Touch) -> float | None:
+    """Where the root that comes back at a touch has left the circle, no more than a scan before; None where
+    it is not followed or not confirmed.
+    """
+    interval = sampled.scanned.interval
+    angle, scans, step = touch.angle, touch.delay / interval, FIRST_STEP_BACK
+    outside: float | None = None
+    while step < min(1.0, scans):
+        at = _phase_at_crossover(sampled, angle, scans - step)
+        if at is None:
+            return None
+        if at[1] < 0:
+            angle, outside = at[0], scans - step
+        elif outside is not None:
+            angle, scans = _halved(sampled, at, scans - step, outside) or (angle, math.nan)
+            left = _Touch(scans * interval, angle)
+            return left.delay if scans > 0 and _first_to_leave(sampled, reach, left) else None
+        step *= 1.5
+    return None
 
 
 def _crossing(sampled: SampledLoop, reach: float, low: float, high: float) -> float | None:
@@ -291,7 +318,7 @@ def _phase_at_crossover(sampled: SampledLoop, angle: float, scans: float) -> tup
     for _ in range(STEPS):
         residual, by_angle, _ = at_angle(sampled, plant, angle)
         step = residual.real / by_angle.real if by_angle.real else math.nan
-        if abs(step) <= 1e-14:
+        if abs(step) <= 1e-14 or abs(residual.real) <= 16 * EPSILON:
             return angle, residual.imag
         angle = min(max(angle - step, 0.7 * angle), 1.3 * angle, math.pi)
     return None

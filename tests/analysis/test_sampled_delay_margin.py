@@ -81,7 +81,7 @@ def delay_margin_s(plant: Any, controller: Any) -> float:
     return margin
 
 
-@pytest.mark.parametrize("seed", [22, 26, 75, 83, 100119, 100142, 100236, 100237])
+@pytest.mark.parametrize("seed", [22, 26, 75, 83, 100119, 100142, 100236, 100237, 100764, 101261])
 def test_no_root_is_outside_before_the_margin_and_one_is_behind_it(seed: int) -> None:
     plant, controller = made_up(seed)
     assert isinstance(controller.scan, Scan)
