@@ -10,7 +10,9 @@ from service.api import answers, problems, representations
 from service.api.answers import Answer
 from service.api.operations import Call, Reader, Variables, changes, changes_prepared, reads
 from service.api.queries import NoQuery, PageQuery, Text
+from service.context import services
 from service.documents.changes import ChangeDecisionRequest, LoopChangeRequest
+from service.issuing import changes as issuing
 from service.records import change_queries as queries
 from service.records import changes as records
 from service.records import loops
@@ -87,7 +89,8 @@ def show_change_content(call: Call, _query: NoQuery, change_id: str) -> Answer:
 @changes_prepared(ChangeDecisionRequest, representations.LoopChange, _prepare, trace=_leave_trace)
 def decide_change(call: Call, prepared: PreparedDecision, change_id: str) -> Answer:
     """Confirm, reject or withdraw a change with one's own password; a confirmed one takes effect at once."""
-    return _answer(records.decide(call.session, call.actor, change_id, prepared, call.now))
+    key = services().signing_key
+    return _answer(issuing.sign(call.session, call.actor, change_id, prepared, call.now, key))
 
 
 def _answer(view: ChangeView, status: int = 201) -> Answer:

@@ -117,11 +117,13 @@ class LoopChangeDecision(ChangeDecisionContent):
     """The signature that a change was decided with, and the entry of the history that it stands in."""
 
     entry: EntryReference
+    checkpoint: Checkpoint | None
+    """Of the history up to that entry, made with the decision; null where none was kept with it."""
 
     @classmethod
     def of(cls, view: ChangeDecisionView) -> LoopChangeDecision:
         """Represent a decision on a change."""
-        return cls(**_fields_of(view.decision), entry=view.entry)
+        return cls(**_fields_of(view.decision), entry=view.entry, checkpoint=view.checkpoint)
 
 
 @dataclass(frozen=True, kw_only=True)

@@ -10,11 +10,13 @@ from flask import Blueprint, Response, redirect, request, url_for
 from werkzeug.wrappers import Response as AnyResponse
 
 from service.analysis.plant import Range
+from service.context import services
 from service.documents import limits, reading, writing
 from service.documents.changes import ChangeDecisionRequest
 from service.documents.errors import FieldProblem, InvalidDocument
 from service.documents.loops import LoopReference, LoopRegistration
 from service.documents.strict_json import Plain
+from service.issuing import changes as issuing
 from service.judgement.criteria import Criteria
 from service.judgement.digits import as_entered
 from service.judgement.wording import criterion_words
@@ -103,7 +105,8 @@ def _sign(change_id: str, asked: ChangeDecisionRequest) -> None:
         with visits.reading() as visit:
             prepared = records.prepare(visit.session, visit.actor, change_id, asked, visit.now)
         with visits.writing() as visit:
-            records.decide(visit.session, visit.actor, change_id, prepared, visit.now)
+            key = services().signing_key
+            issuing.sign(visit.session, visit.actor, change_id, prepared, visit.now, key)
     except (SigningRefused, NotIndependent) as refusal:
         with visits.writing() as visit:
             records.record_refused_signing(visit.session, visit.actor, change_id, refusal, visit.now)

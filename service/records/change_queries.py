@@ -10,12 +10,13 @@ from typing import Any, cast, get_args
 from sqlalchemy import ColumnElement, Select, bindparam, case, or_, select
 from sqlalchemy.orm import Session, aliased
 
-from service.records import change_lifecycle, loops, visibility
+from service.records import change_lifecycle, kept_checkpoints, loops, visibility
 from service.records.change_lifecycle import ChangeAction, ChangeState
 from service.records.content import read_change, read_change_decision
 from service.records.errors import NotFound
 from service.records.roles import Actor
 from service.records.tables.changes import LoopChange, LoopChangeDecision
+from service.records.tables.checkpoints import ChangeCheckpoint
 from service.records.tables.loops import Loop, LoopModel, LoopRevision
 from service.records.views import ChangeDecisionView, ChangeView, Page
 
@@ -33,7 +34,7 @@ class ChangeFilter:
 def find(session: Session, actor: Actor, change_id: str) -> ChangeView:
     """Return a change whose loop lies in the actor's areas now. Raises NotFound."""
     found = session.execute(_one_change(), {"change_id": change_id}).one_or_none()
-    if found is None or not actor.sees(found[2].area):
+    if found is None or not actor.sees(found[3].area):
         raise NotFound("there is no such change")
     return _view(session, actor, *found)
 
@@ -58,19 +59,20 @@ def content_bytes(session: Session, actor: Actor, change_id: str) -> bytes:
 
 
 @cache
-def _changes() -> Select[LoopChange, LoopChangeDecision, LoopRevision, str]:
-    """Select changes, each with its decision, the loop's present revision and its state."""
+def _changes() -> Select[LoopChange, LoopChangeDecision, ChangeCheckpoint, LoopRevision, str]:
+    """Select changes, each with its decision and checkpoint, the loop's present revision and its state."""
     return (
-        select(LoopChange, LoopChangeDecision, LoopRevision, _state())
+        select(LoopChange, LoopChangeDecision, ChangeCheckpoint, LoopRevision, _state())
         .join(Loop, Loop.id == LoopChange.loop_id)
         .join(LoopRevision, LoopRevision.loop_id == Loop.id)
         .outerjoin(LoopChangeDecision, LoopChangeDecision.change_id == LoopChange.id)
+        .outerjoin(ChangeCheckpoint, ChangeCheckpoint.change_id == LoopChange.id)
         .where(loops.is_present())
     )
 
 
 @cache
-def _one_change() -> Select[LoopChange, LoopChangeDecision, LoopRevision, str]:
+def _one_change() -> Select[LoopChange, LoopChangeDecision, ChangeCheckpoint, LoopRevision, str]:
     return _changes().where(LoopChange.id == bindparam("change_id"))
 
 
@@ -112,6 +114,7 @@ def _view(
     actor: Actor,
     row: LoopChange,
     decided: LoopChangeDecision | None,
+    kept: ChangeCheckpoint | None,
     revision: LoopRevision,
     state: str,
 ) -> ChangeView:
@@ -121,6 +124,7 @@ def _view(
         decision = ChangeDecisionView(
             decision=read_change_decision(decided.content),
             entry=loops.written_by(session, decided.event_number)[1],
+            checkpoint=kept_checkpoints.read(kept),
         )
     return ChangeView(
         id=row.id,

@@ -35,5 +35,6 @@ EventKind = Literal[
     "gains_installed",
     "gains_installed_otherwise",
     "sheet_kept",
+    "checkpoint_kept",
 ]
 """The kinds in the order of a list to choose from. One that was written once stays."""

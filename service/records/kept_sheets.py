@@ -2,18 +2,17 @@
 
 from __future__ import annotations
 
-from dataclasses import fields
 from datetime import datetime
 from hashlib import sha256
-from typing import Any
 
 from sqlalchemy import select
 from sqlalchemy.orm import Session
 
-from service.records import history, loops, visibility
+from service.records import history, kept_checkpoints, loops, visibility
 from service.records.errors import NotFound
 from service.records.roles import Actor
-from service.records.tables.submissions import Decision, KeptCheckpoint, Sheet
+from service.records.tables.checkpoints import DecisionCheckpoint
+from service.records.tables.submissions import Decision, Sheet
 from service.records.views import Checkpoint, EntryReference
 
 
@@ -36,7 +35,7 @@ def keep(
         raise NotFound("there is no such decision")
     submission = visibility.submission(session, actor, decision.submission_id)
     digest = sha256(pdf).hexdigest()
-    kept = KeptCheckpoint(decision_id=decision_id, **_parts(checkpoint))
+    kept = DecisionCheckpoint(decision_id=decision_id, **kept_checkpoints.parts(checkpoint))
     sheet = Sheet(
         decision_id=decision_id,
         submission_id=submission.id,
@@ -59,15 +58,6 @@ def keep(
         now=now,
         rows=(kept, sheet),
     )
-
-
-def read_checkpoint(row: KeptCheckpoint | None) -> Checkpoint | None:
-    """Return a checkpoint as it was made; None where none was kept with the decision."""
-    return None if row is None else Checkpoint(**_parts(row))
-
-
-def _parts(told: Checkpoint | KeptCheckpoint) -> dict[str, Any]:
-    return {each.name: getattr(told, each.name) for each in fields(Checkpoint)}
 
 
 def latest(session: Session, actor: Actor, submission_id: str) -> bytes:

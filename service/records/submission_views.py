@@ -14,7 +14,7 @@ from service.records import (
     approvability,
     basis,
     comparison,
-    kept_sheets,
+    kept_checkpoints,
     lifecycle,
     loops,
     present_content,
@@ -32,12 +32,12 @@ from service.records.content import (
 from service.records.lifecycle import Action, Kind, State
 from service.records.roles import Actor
 from service.records.tables.changes import SubmissionContent
+from service.records.tables.checkpoints import DecisionCheckpoint
 from service.records.tables.history import HistoryEvent
 from service.records.tables.loops import Loop, LoopRevision
 from service.records.tables.submissions import (
     Decision,
     Installation,
-    KeptCheckpoint,
     Submission,
     SubmissionState,
 )
@@ -175,8 +175,8 @@ def _open_actions(
 
 def _decisions(session: Session, submission_id: str) -> tuple[DecisionView, ...]:
     query = (
-        select(Decision, KeptCheckpoint)
-        .outerjoin(KeptCheckpoint, KeptCheckpoint.decision_id == Decision.id)
+        select(Decision, DecisionCheckpoint)
+        .outerjoin(DecisionCheckpoint, DecisionCheckpoint.decision_id == Decision.id)
         .where(Decision.submission_id == submission_id)
         .order_by(Decision.ordinal)
     )
@@ -184,7 +184,7 @@ def _decisions(session: Session, submission_id: str) -> tuple[DecisionView, ...]
         DecisionView(
             decision=read_decision(row.content),
             entry=_entry(session, row.event_number),
-            checkpoint=kept_sheets.read_checkpoint(kept),
+            checkpoint=kept_checkpoints.read(kept),
         )
         for row, kept in session.execute(query)
     )

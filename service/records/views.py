@@ -101,30 +101,6 @@ class ModelView:
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)
-class ChangeDecisionView:
-    """The signature that a change of a loop was decided with."""
-
-    decision: ChangeDecisionContent
-    entry: EntryReference
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
-class ChangeView:
-    """A change of what approvals rest on, in its state at the time it was read."""
-
-    id: str
-    state: ChangeState
-    content: LoopChangeContent
-    content_digest: str
-    area: str
-    """The loop's present area."""
-    decision: ChangeDecisionView | None
-    open_decisions: tuple[ChangeAction, ...]
-    """What the actor who read it may decide."""
-    entry: EntryReference
-
-
-@dataclass(frozen=True, kw_only=True, slots=True)
 class Checkpoint:
     """The state of the whole history, as it was at one entry."""
 
@@ -142,6 +118,32 @@ class Checkpoint:
     """Raw Ed25519 key in base64, to be compared with one that is held elsewhere; null where none is set."""
     signature: str | None
     """Ed25519 in base64, over the other parts; null where no signing key is set."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class ChangeDecisionView:
+    """The signature that a change of a loop was decided with."""
+
+    decision: ChangeDecisionContent
+    entry: EntryReference
+    checkpoint: Checkpoint | None
+    """Made with the decision, `entry` the last that it covers; None where none was kept."""
+
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class ChangeView:
+    """A change of what approvals rest on, in its state at the time it was read."""
+
+    id: str
+    state: ChangeState
+    content: LoopChangeContent
+    content_digest: str
+    area: str
+    """The loop's present area."""
+    decision: ChangeDecisionView | None
+    open_decisions: tuple[ChangeAction, ...]
+    """What the actor who read it may decide."""
+    entry: EntryReference
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)

@@ -8,8 +8,8 @@ from __future__ import annotations
 import json
 from typing import Any
 
+from service.verification import kept
 from service.verification.checkpoints import Checkpoint
-from service.verification.kept import TABLE as KEPT
 from service.verification.kept import KeptCheckpoints, State
 from service.verification.keys import Keys
 from service.verification.report import Broken
@@ -51,7 +51,7 @@ class Chain:
             raise Broken(f"it is missing; entry {entry.get('number')} stands in its place", entry=number)
         if entry.get("previous") != self.head:
             raise Broken("it does not follow on the entry before it: the chain is broken", entry=number)
-        before = self._state() if KEPT in entry["rows"] else None
+        before = self._state() if kept.keeps_any(entry) else None
         self.kept.add(entry, before, self.keys.at(self.entries))
         self._note_time(number, str(entry.get("time")))
         self._origin = self._origin or hexadecimal

@@ -7,15 +7,29 @@ against the entries before it; that the row in the table says the same is held a
 from __future__ import annotations
 
 from collections import Counter
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any
 
 from service.verification import signatures
 from service.verification.report import Broken
 
-TABLE = "checkpoints"
-DECISIONS = "decisions"
+
+@dataclass(frozen=True, kw_only=True, slots=True)
+class Decisions:
+    """The table of what was decided, and the columns by which a checkpoint names its decision."""
+
+    table: str
+    key: str
+    named_by: str
+
+
+TABLES = {
+    "checkpoints": Decisions(table="decisions", key="id", named_by="decision_id"),
+    "change_checkpoints": Decisions(table="loop_change_decisions", key="change_id", named_by="change_id"),
+}
+"""Tables of checkpoints: on gains, and on changes of loops."""
+
 SIGNED = ("origin", "size", "digest", "head", "time", "public_key")
 
 
@@ -40,7 +54,8 @@ class KeptCheckpoints:
         self._unsigned = 0
         self._decisions = 0
         self._decisions_with_a_key = 0
-        self._decided: frozenset[str] = frozenset()
+        self._decided: frozenset[tuple[str, str]] = frozenset()
+        """Table and key of what the entry before decides."""
 
     def add(self, entry: Mapping[str, Any], before: State | None, known_key: str | None) -> None:
         """Take in one entry.
@@ -49,10 +64,10 @@ class KeptCheckpoints:
         that signs there, as the history tells.
         """
         if before is not None:
-            for row in entry["rows"].get(TABLE, []):
-                self._check(row, before, known_key)
-        decided = entry["rows"].get(DECISIONS, [])
-        self._decided = frozenset(str(row.get("id")) for row in decided)
+            for table, row in _of_tables(entry):
+                self._check(table, row, before, known_key)
+        decided = tuple(_decided(entry))
+        self._decided = frozenset(decided)
         self._decisions += len(decided)
         self._decisions_with_a_key += len(decided) if known_key is not None else 0
 
@@ -79,22 +94,25 @@ class KeptCheckpoints:
         ]
         told = "; ".join(f"{words}: {count}" for words, count in counts if count)
         return (
-            f"Checkpoints kept with the decisions, which are {self._decisions}. {told[:1].upper()}{told[1:]}"
+            "Checkpoints kept with the decisions on gains and on changes of loops, which are "
+            f"{self._decisions}. {told[:1].upper()}{told[1:]}"
         )
 
-    def _check(self, row: Mapping[str, Any], before: State, known_key: str | None) -> None:
-        fault = self._fault(row, before, known_key)
+    def _check(self, table: str, row: Mapping[str, Any], before: State, known_key: str | None) -> None:
+        fault = self._fault(table, row, before, known_key)
         if fault:
-            name = f"decision_id {row.get('decision_id')}"
-            raise Broken(fault, entry=before.size + 1, table=TABLE, row=name)
+            named_by = TABLES[table].named_by
+            name = f"{named_by} {row.get(named_by)}"
+            raise Broken(fault, entry=before.size + 1, table=table, row=name)
         if row.get("signature") is None:
             self._unsigned += 1
         else:
             self._signed[row["public_key"]] += 1
             self.covered = before.size
 
-    def _fault(self, row: Mapping[str, Any], before: State, known_key: str | None) -> str | None:
-        if str(row.get("decision_id")) not in self._decided:
+    def _fault(self, table: str, row: Mapping[str, Any], before: State, known_key: str | None) -> str | None:
+        decisions = TABLES[table]
+        if (decisions.table, str(row.get(decisions.named_by))) not in self._decided:
             return "the checkpoint was not made with the decision of the entry before it"
         for name in State.__slots__:
             if row.get(name) != getattr(before, name):
@@ -107,3 +125,20 @@ class KeptCheckpoints:
         if key != known_key:
             return "the checkpoint is signed with another key than the history tells of at that place"
         return None
+
+
+def keeps_any(entry: Mapping[str, Any]) -> bool:
+    """Say whether an entry keeps a checkpoint."""
+    return not TABLES.keys().isdisjoint(entry["rows"])
+
+
+def _of_tables(entry: Mapping[str, Any]) -> Iterator[tuple[str, Mapping[str, Any]]]:
+    for table in TABLES:
+        for row in entry["rows"].get(table, []):
+            yield table, row
+
+
+def _decided(entry: Mapping[str, Any]) -> Iterator[tuple[str, str]]:
+    for decisions in TABLES.values():
+        for row in entry["rows"].get(decisions.table, []):
+            yield decisions.table, str(row.get(decisions.key))

@@ -5,6 +5,8 @@ from __future__ import annotations
 import json
 from pathlib import Path
 
+import pytest
+
 from service.app import create_app
 from service.context import services
 from service.issuing import signing_keys
@@ -13,6 +15,8 @@ from service.verification.checkpoints import Checkpoint
 from service.verification.verifier import verify
 from tests.api.conftest import CHEAP, SECRET_KEY, Decide, Kept, Service, password_of
 from tests.api.plant import LOOP, MODEL, SUBMISSION, Body
+from tests.api.test_changes import PROPOSAL
+from tests.api.test_changes import decide as decide_change
 from tests.databases import Databases
 
 
@@ -27,6 +31,23 @@ def test_a_decision_has_the_checkpoint_that_was_made_with_it(
     assert [each["checkpoint"] for each in shown["decisions"]] == [checkpoint]
     told = service.get("/v1/history?kind=sheet_kept", "auditor").json["items"]
     assert [each["content"]["checkpoint"] for each in told] == [checkpoint]
+
+
+@pytest.mark.parametrize(
+    ("decision", "person"), [("confirm", "reviewer"), ("reject", "reviewer"), ("withdraw", "submitter")]
+)
+def test_so_has_a_decision_on_a_change_of_a_loop(
+    service: Service, loop_id: str, decision: str, person: str
+) -> None:
+    change = service.post(f"/v1/loops/{loop_id}/changes", PROPOSAL).json
+    assert change["decision"] is None
+    answer = decide_change(service, change, decision, person)
+    made = answer.json["decision"]
+    checkpoint = made["checkpoint"]
+    assert (checkpoint["size"], checkpoint["head"]) == (made["entry"]["number"], made["entry"]["digest"])
+    assert service.get(f"/v1/changes/{change['id']}").json["decision"] == made
+    (told,) = service.get("/v1/history?kind=checkpoint_kept", "auditor").json["items"]
+    assert told["content"] == {"change_id": change["id"], "checkpoint": checkpoint}
 
 
 def test_with_a_key_it_is_signed_and_verifies_as_it_came(
@@ -49,11 +70,15 @@ def test_with_a_key_it_is_signed_and_verifies_as_it_came(
         "deviation": [],
     }
     made = service.post(f"/v1/submissions/{submission['id']}/decisions", body, "reviewer").json
+    change = service.post(f"/v1/loops/{loop}/changes", PROPOSAL).json
+    confirmed = decide_change(service, change).json["decision"]
     held = Checkpoint.read(json.dumps(made["checkpoint"]).encode())
     with app.app_context():
         services().database.close()
-    report = verify(url, checkpoint=held, held_key=held.public_key)
-    assert report.holds
-    assert held.is_signed
-    assert f"Signed by the key {held.public_key}, verified: 1" in " ".join(report.signatures)
+    of_change = Checkpoint.read(json.dumps(confirmed["checkpoint"]).encode())
+    for each in (held, of_change):
+        report = verify(url, checkpoint=each, held_key=each.public_key)
+        assert report.holds
+        assert each.is_signed
+        assert f"Signed by the key {each.public_key}, verified: 2" in " ".join(report.signatures)
     databases.drop(url)

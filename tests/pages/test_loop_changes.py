@@ -10,7 +10,7 @@ from flask import Flask
 from service.context import services
 from service.documents.changes import LoopChangeRequest
 from service.documents.reading import read
-from service.records import accounts, changes, loops
+from service.records import accounts, change_queries, changes, loops
 from service.records.roles import CONSOLE
 from service.records.views import ChangeView
 from tests.pages import invented
@@ -78,6 +78,20 @@ def test_a_confirmed_change_says_who_signed_and_marks_the_gains(
     assert "Due for a recheck" in [heading.text for heading in home.all("h2")]
     submission = reviewer.open(f"/submissions/{kept.submissions['stable']}")
     assert "Recomputed again" in submission.text
+
+
+def test_a_decided_change_shows_the_checkpoint_that_was_made_with_it(
+    app: Flask, change: ChangeView, reviewer: Person
+) -> None:
+    assert "Checkpoint of the history" not in reviewer.open(f"/changes/{change.id}").text
+    sign(reviewer, change, decision="reject", reason=REASON, password=password_of("reviewer"))
+    with app.app_context(), services().database.reading() as session:
+        decision = change_queries.find(session, CONSOLE, change.id).decision
+    assert decision is not None
+    assert decision.checkpoint is not None
+    told = "unsigned: the service has no signing key"
+    expected = f"The first {decision.entry.number} entries, {told} {decision.checkpoint.digest}"
+    assert expected in reviewer.open(f"/changes/{change.id}").text
 
 
 def test_what_is_missing_is_named_and_what_was_typed_is_kept(change: ChangeView, reviewer: Person) -> None:

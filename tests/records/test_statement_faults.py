@@ -5,6 +5,7 @@ from __future__ import annotations
 import ast
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager, suppress
+from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -16,6 +17,7 @@ from sqlalchemy.orm import Session
 
 from service.documents.changes import LoopChangeRequest
 from service.documents.decisions import DecisionRequest
+from service.issuing import changes as issued_changes
 from service.issuing import checkpoints, sheets, signing_keys
 from service.records import (
     accounts,
@@ -23,6 +25,7 @@ from service.records import (
     decisions,
     history,
     idempotency,
+    kept_checkpoints,
     kept_sheets,
     loops,
     migrating,
@@ -35,7 +38,7 @@ from service.records.accounts import NewAccount
 from service.records.errors import NotAuthenticated, WrongPassword
 from service.records.idempotency import KeptAnswer
 from service.records.roles import CONSOLE
-from service.records.views import SubmissionView
+from service.records.views import LoopView, SubmissionView
 from service.verification.verifier import verify
 from tests.databases import Databases, opened, run
 from tests.records.store import START, WIDER, Store, gains, model_version, password_of, registration
@@ -63,14 +66,35 @@ def _propose(store: Store) -> Change:
     return lambda session: changes.propose(session, actor, loop.id, request, store.clock())
 
 
-def _confirm(store: Store) -> Change:
-    loop, actor = store.register(), store.actor("reviewer")
+def _relied_on(store: Store) -> LoopView:
+    """A loop of which gains are in force and others await review."""
+    loop = store.register()
     store.add_model(loop)
     store.submit(kind="baseline", controller=gains(1.0))
     store.submit()
-    change = store.propose(loop)
+    return loop
+
+
+def _confirm(store: Store) -> Change:
+    change, actor = store.propose(_relied_on(store)), store.actor("reviewer")
     prepared = store.prepare_decision(change)
     return lambda session: changes.decide(session, actor, change.id, prepared, store.clock())
+
+
+def _sign_change(store: Store, decision: str) -> Change:
+    change, actor = store.propose(_relied_on(store)), store.actor("reviewer")
+    prepared = store.prepare_decision(change, decision)
+    key = Ed25519PrivateKey.generate()
+    signing_keys.take_up(store.database, key)
+    return lambda session: issued_changes.sign(session, actor, change.id, prepared, store.clock(), key)
+
+
+def _keep_checkpoint(store: Store) -> Change:
+    change, actor = store.propose(store.register()), store.actor("reviewer")
+    store.decide_change(change)
+    return lambda session: kept_checkpoints.keep_with_change(
+        session, actor, change.id, checkpoints.checkpoint(session, None), store.clock()
+    )
 
 
 def _add_model(store: Store) -> Change:
@@ -275,6 +299,9 @@ USE_CASES: dict[str, UseCase] = {
     "loop_change_confirmed": _in_a_transaction(_confirm),
     "loop_change_rejected": _reject_change,
     "loop_change_withdrawn": _withdraw_change,
+    "loop_change_confirmed and checkpoint_kept": _in_a_transaction(partial(_sign_change, decision="confirm")),
+    "loop_change_rejected and checkpoint_kept": _in_a_transaction(partial(_sign_change, decision="reject")),
+    "checkpoint_kept": _in_a_transaction(_keep_checkpoint),
     "model_added": _in_a_transaction(_add_model),
     "gains_submitted": _in_a_transaction(_submit),
     "gains_approved": _sign,

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from service.issuing import checkpoints
+from service.issuing import changes, checkpoints
 from service.records import kept_sheets
 from tests.records.store import WIDER, Store, gains
 
@@ -31,5 +31,7 @@ def live(store: Store) -> None:
     store.approve(store.submit(loop={"site": "North", "tag": "LIC-7"}))
     store.submit(loop={"site": "North", "tag": "LIC-7"}, controller=gains(1.3))
     ranged = store.propose(other, tag="LIC-7", area="Tank farm", pv=WIDER)
-    store.decide_change(ranged)
+    prepared = store.prepare_decision(ranged)
+    with store.database.writing() as session:
+        changes.sign(session, store.actor("reviewer"), ranged.id, prepared, store.clock(), None)
     store.decide_change(store.propose(other, revision=2, retire="normal"), person="second")

@@ -9,7 +9,8 @@ import pytest
 from alembic.script import ScriptDirectory
 
 from service.issuing import sheets
-from service.records import migrating, queries
+from service.records import change_queries, migrating, queries
+from service.records.change_queries import ChangeFilter
 from service.records.event_kinds import EventKind
 from service.records.queries import SubmissionFilter
 from service.verification.verifier import Checkpoint, verify
@@ -18,6 +19,7 @@ from tests.records.store import START, Store, gains
 from tests.upgrades import keeping
 
 BEFORE_CHECKPOINTS = ("2026_12_01_first_tables", "2026_12_01_second_person")
+BEFORE_CHECKPOINTS_OF_CHANGES = (*BEFORE_CHECKPOINTS, "2026_12_01_checkpoints")
 
 REVISIONS = [script.revision for script in ScriptDirectory.from_config(migrating._config()).walk_revisions()]
 
@@ -81,6 +83,19 @@ def test_a_signature_from_before_checkpoints_were_kept_says_so_on_its_sheet(kept
     kept_with_one = 0 if is_older else 1
     assert sum(sentence.startswith("Checkpoint of entries") for sentence in told) == kept_with_one
     assert sum(sentence.startswith(none_kept) for sentence in told) == decisions - kept_with_one > 0
+
+
+def test_a_decision_on_a_change_from_before_they_were_kept_with_it_has_none(kept: str) -> None:
+    kept_with_one = 0 if keeping.revision_of(kept) in BEFORE_CHECKPOINTS_OF_CHANGES else 1
+    migrating.migrate(kept, now=START)
+    store = Store(kept)
+    with store.database.reading() as session:
+        found = change_queries.changes(session, store.actor("auditor"), ChangeFilter()).items
+    store.database.close()
+    checkpoints = [each.decision.checkpoint for each in found if each.decision is not None]
+    assert len([each for each in checkpoints if each is not None]) == kept_with_one
+    report = verify(kept)
+    assert (report.holds, report.notes) == (True, ())
 
 
 def _guards(url: str) -> list[tuple[str, ...]]:

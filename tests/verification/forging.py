@@ -12,6 +12,9 @@ from tests.verification.conftest import Owned
 Forge = Callable[[dict[str, Any], str, str], None]
 """Changes an entry in place; given the root of the entries before it, and the store's origin."""
 
+CHECKPOINTS = {"checkpoints": "decision_id", "change_checkpoints": "change_id"}
+"""Tables of checkpoints that were kept with decisions, and what names the decision in each."""
+
 
 def leaf(raw: bytes) -> bytes:
     return hashlib.sha256(b"\0" + raw).digest()
@@ -71,18 +74,20 @@ def rewrite_with_checkpoints_from(
 
     `remake` does what the forger can about a signature that does not fit any more.
     """
-    rewritten: dict[int, dict[str, Any]] = {}
+    rewritten: dict[int, tuple[str, dict[str, Any]]] = {}
 
     def forge_all(entry: dict[str, Any], root: str, origin: str) -> None:
         forge(entry, root, origin)
-        for row in entry["rows"].get("checkpoints", ()):
-            row |= {"origin": origin, "digest": root, "head": entry["previous"]}
-            if row["signature"] is not None:
-                remake(row)
-            rewritten[entry["number"]] = row
+        for table in CHECKPOINTS:
+            for row in entry["rows"].get(table, ()):
+                row |= {"origin": origin, "digest": root, "head": entry["previous"]}
+                if row["signature"] is not None:
+                    remake(row)
+                rewritten[entry["number"]] = table, row
 
     rewrite_from(owned, first, forge_all)
     names = ("origin", "digest", "head", "public_key", "signature")
-    change = f"UPDATE checkpoints SET {', '.join(f'{name} = ?' for name in names)} WHERE event_number = ?"  # noqa: S608
-    for number, row in rewritten.items():
+    columns = ", ".join(f"{name} = ?" for name in names)
+    for number, (table, row) in rewritten.items():
+        change = f"UPDATE {table} SET {columns} WHERE event_number = ?"  # noqa: S608
         owned.execute((change, (*(row[name] for name in names), number)))

@@ -136,21 +136,40 @@ def test_what_stands_in_a_store_cannot_write_over_what_is_said_of_it() -> None:
     assert said == f"entry 5; table loops, row {told}: the row is missing"
 
 
+STATE = {
+    "origin": "0" * 64,
+    "size": 1,
+    "digest": "1" * 64,
+    "head": "2" * 64,
+    "time": "2026-03-02T06:00:00Z",
+}
+
+
 def test_a_kept_checkpoint_that_names_a_key_has_its_signature() -> None:
-    state = {
-        "origin": "0" * 64,
-        "size": 1,
-        "digest": "1" * 64,
-        "head": "2" * 64,
-        "time": "2026-03-02T06:00:00Z",
-    }
-    row = state | {"decision_id": "d", "public_key": None, "signature": None}
+    row = STATE | {"decision_id": "d", "public_key": None, "signature": None}
     for changes, holds in (({}, True), ({"public_key": "A" * 43 + "="}, False)):
         kept = KeptCheckpoints()
         kept.add({"rows": {"decisions": [{"id": "d"}]}}, None, None)
         entry = {"rows": {"checkpoints": [row | changes]}}
         if holds:
-            kept.add(entry, State(**state), None)  # type: ignore[arg-type]
+            kept.add(entry, State(**STATE), None)  # type: ignore[arg-type]
         else:
             with pytest.raises(Broken, match="names a key that did not sign it"):
-                kept.add(entry, State(**state), None)  # type: ignore[arg-type]
+                kept.add(entry, State(**STATE), None)  # type: ignore[arg-type]
+
+
+@pytest.mark.parametrize(
+    ("decided", "kept_with"),
+    [
+        ({"decisions": [{"id": "d"}]}, {"change_checkpoints": [STATE | {"change_id": "d"}]}),
+        ({"loop_change_decisions": [{"change_id": "d"}]}, {"checkpoints": [STATE | {"decision_id": "d"}]}),
+    ],
+)
+def test_a_checkpoint_of_a_change_is_none_of_a_decision_on_gains(
+    decided: dict[str, object], kept_with: dict[str, object]
+) -> None:
+    """Though both bear the same name."""
+    kept = KeptCheckpoints()
+    kept.add({"rows": decided}, None, None)
+    with pytest.raises(Broken, match="not made with the decision of the entry before it"):
+        kept.add({"rows": kept_with}, State(**STATE), None)  # type: ignore[arg-type]

@@ -12,19 +12,19 @@ from cryptography.hazmat.primitives.asymmetric.ed25519 import Ed25519PrivateKey
 
 from service.documents import writing
 from service.documents.canonical import canonical_bytes
-from service.issuing import checkpoints, signing_keys
+from service.issuing import changes, checkpoints, signing_keys
 from service.issuing.base64_text import public_text
-from service.records import full_export, kept_sheets, migrating
+from service.records import full_export, kept_sheets, loops, migrating
 from service.records.roles import CONSOLE
-from service.records.views import SubmissionView
+from service.records.views import LoopView, SubmissionView
 from service.verification.checkpoints import Checkpoint
 from service.verification.export import verify_export
 from service.verification.report import Report
 from service.verification.verifier import verify
 from tests.databases import Databases
-from tests.records.store import START, Store, gains
+from tests.records.store import START, WIDER, Store, gains
 from tests.verification.conftest import Owned
-from tests.verification.forging import rewrite_from, rewrite_with_checkpoints_from
+from tests.verification.forging import CHECKPOINTS, rewrite_from, rewrite_with_checkpoints_from
 
 FIRST, SECOND, STRANGE = (Ed25519PrivateKey.generate() for _ in range(3))
 
@@ -40,15 +40,26 @@ def sign(store: Store, decision: str, submission: SubmissionView, key: Ed25519Pr
         kept_sheets.keep(session, reviewer, decision_id, b"%PDF", "1", checkpoint, store.clock())
 
 
+def confirm(store: Store, loop: LoopView, key: Ed25519PrivateKey | None, revision: int = 1) -> None:
+    """Confirm a change of a loop, and keep a checkpoint with the confirmation."""
+    change = store.propose(loop, revision=revision, pv=WIDER | {"high": 200.0 + revision})
+    prepared, reviewer = store.prepare_decision(change), store.actor("reviewer")
+    with store.database.writing() as session:
+        changes.sign(session, reviewer, change.id, prepared, store.clock(), key)
+
+
 @pytest.fixture(scope="module")
 def lived_in(databases: Databases) -> Iterator[str]:
-    """One decision from before checkpoints were kept, one before there was a key, two by each of two keys."""
+    """Decisions on gains and on a loop: one of each from before checkpoints were kept, one on gains before
+    there was a key, two on gains by each of two keys, one on the loop by the second.
+    """
     url = databases.new()
     migrating.migrate(url, now=START, demonstration=True)
     store = Store(url)
     store.add_people()
-    store.add_model(store.register())
+    store.add_model(loop := store.register())
     store.decide(store.submit(), "reject")
+    store.decide_change(store.propose(loop), "reject")
     sign(store, "reject", store.submit(), None)
     signing_keys.take_up(store.database, FIRST)
     sign(store, "approve", store.submit(), FIRST)
@@ -57,6 +68,7 @@ def lived_in(databases: Databases) -> Iterator[str]:
         signing_keys.change(session, CONSOLE, previous=FIRST, new=SECOND, reason="yearly", now=store.clock())
     sign(store, "reject", store.submit(controller=gains(1.3)), SECOND)
     sign(store, "reject", store.submit(controller=gains(1.1)), SECOND)
+    confirm(store, loop, SECOND)
     store.register(tag="LIC-7")
     store.database.close()
     yield url
@@ -72,7 +84,14 @@ def owned(lived_in: str, databases: Databases) -> Iterator[Owned]:
 
 def kept_in(owned: Owned) -> list[int]:
     """The entries that keep a checkpoint."""
-    return [number for (number,) in owned.rows("SELECT event_number FROM checkpoints ORDER BY event_number")]
+    each = (f"SELECT event_number FROM {table}" for table in CHECKPOINTS)  # noqa: S608
+    return [number for (number,) in owned.rows(f"{' UNION '.join(each)} ORDER BY event_number")]
+
+
+def one_kept_in(owned: Owned, table: str) -> int:
+    """An entry that keeps a signed checkpoint in this table."""
+    query = f"SELECT min(event_number) FROM {table} WHERE signature IS NOT NULL"  # noqa: S608
+    return int(owned.value(query))
 
 
 def place(report: Report) -> tuple[int | None, str | None]:
@@ -89,8 +108,9 @@ def test_the_report_says_which_signatures_were_checked_and_what_they_leave_open(
     assert report.signatures == (
         f"Entry {kept_in(owned)[0] + 1} takes up the key {first}, which signed it",
         f"Entry {kept_in(owned)[2] + 1} takes up the key {second}, which signed it, as did the key before it",
-        f"Checkpoints kept with the decisions, which are 6. Signed by the key {first}, verified: 2;"
-        f" signed by the key {second}, verified: 2; without a signature: 1; none kept: 1",
+        "Checkpoints kept with the decisions on gains and on changes of loops, which are 8."
+        f" Signed by the key {first}, verified: 2;"
+        f" signed by the key {second}, verified: 3; without a signature: 1; none kept: 2",
         "No key was given: that the history's keys are the service's own was not checked",
         f"The last signed checkpoint covers entries 1 to {covered} of {report.entries}",
     )
@@ -135,7 +155,6 @@ def test_every_kept_checkpoint_is_one_that_an_auditor_can_be_handed(owned: Owned
 
 
 OTHER: dict[str, object] = {
-    "decision_id": "0" * 32,
     "origin": "0" * 64,
     "size": 3,
     "digest": "0" * 64,
@@ -143,29 +162,39 @@ OTHER: dict[str, object] = {
     "time": "2026-03-02T06:00:01Z",
     "public_key": public_text(STRANGE),
     "signature": base64.b64encode(bytes(64)).decode(),
+    "decision_id": "0" * 32,
+    "change_id": "0" * 32,
 }
 
+PARTS = [
+    (table, name)
+    for table, named_by in CHECKPOINTS.items()
+    for name in OTHER
+    if name not in CHECKPOINTS.values() or name == named_by
+]
 
-@pytest.mark.parametrize("name", OTHER)
-def test_a_part_that_was_changed_in_the_row_alone_is_named(owned: Owned, name: str) -> None:
-    change = f"UPDATE checkpoints SET {name} = ? WHERE event_number = ?"  # noqa: S608
-    owned.execute((change, (OTHER[name], kept_in(owned)[1])))
-    assert place(owned.verify()) == (kept_in(owned)[1], "checkpoints")
+
+@pytest.mark.parametrize(("table", "name"), PARTS)
+def test_a_part_that_was_changed_in_the_row_alone_is_named(owned: Owned, table: str, name: str) -> None:
+    forged_at = one_kept_in(owned, table)
+    change = f"UPDATE {table} SET {name} = ? WHERE event_number = ?"  # noqa: S608
+    owned.execute((change, (OTHER[name], forged_at)))
+    assert place(owned.verify()) == (forged_at, table)
 
 
-@pytest.mark.parametrize("name", OTHER)
+@pytest.mark.parametrize(("table", "name"), PARTS)
 def test_a_part_that_was_changed_is_named_though_every_later_digest_was_made_to_fit(
-    owned: Owned, name: str
+    owned: Owned, table: str, name: str
 ) -> None:
-    forged_at = kept_in(owned)[1]
+    forged_at = one_kept_in(owned, table)
 
     def forge(entry: dict[str, Any], _root: str, _origin: str) -> None:
         if entry["number"] == forged_at:
-            entry["rows"]["checkpoints"][0][name] = OTHER[name]
+            entry["rows"][table][0][name] = OTHER[name]
 
     rewrite_from(owned, forged_at, forge)
-    owned.execute((f"UPDATE checkpoints SET {name} = ? WHERE event_number = ?", (OTHER[name], forged_at)))  # noqa: S608
-    assert place(owned.verify()) == (forged_at, "checkpoints")
+    owned.execute((f"UPDATE {table} SET {name} = ? WHERE event_number = ?", (OTHER[name], forged_at)))  # noqa: S608
+    assert place(owned.verify()) == (forged_at, table)
 
 
 def _last_years_reason(entry: dict[str, Any], _root: str, _origin: str) -> None:
@@ -187,7 +216,7 @@ def _leave_the_signature(_row: Row) -> None:
 
 
 def _sign_with_another_key(row: Row) -> None:
-    signed = {name: value for name, value in row.items() if name not in ("decision_id", "signature")}
+    signed = {name: value for name, value in row.items() if name not in (*CHECKPOINTS.values(), "signature")}
     signed["public_key"] = row["public_key"] = public_text(STRANGE)
     row["signature"] = base64.b64encode(STRANGE.sign(canonical_bytes(signed))).decode()
 
@@ -224,11 +253,61 @@ def test_without_their_signatures_they_fit_and_the_report_says_what_is_covered(o
     _rewrite(owned, _take_the_signature_off)
     after = owned.verify()
     assert after.holds
-    assert "; without a signature: 3;" in after.signatures[2]
+    assert "; without a signature: 4;" in after.signatures[2]
     assert f"covers entries 1 to {kept_in(owned)[2] - 1} of" in after.signatures[-1]
     assert before.signatures != after.signatures
-    assert after.notes[0].startswith("2 of the decisions made while the history had a key have no signed")
+    assert after.notes[0].startswith("3 of the decisions made while the history had a key have no signed")
     assert not owned.verify(held).holds
+
+
+def _a_word_of_the_confirmation(entry: dict[str, Any], _root: str, _origin: str) -> None:
+    if entry["kind"] == "loop_change_confirmed":
+        entry["content"]["decision"]["signed_by"]["full_name"] = "Somebody Else"
+
+
+@pytest.mark.parametrize("remake", [_leave_the_signature, _sign_with_another_key])
+def test_a_confirmation_that_was_altered_does_not_fit_its_own_checkpoint(
+    owned: Owned, remake: Remake
+) -> None:
+    """Nobody needs to hold a later checkpoint, nor does another decision have to follow."""
+    confirmed = owned.value("SELECT number FROM history_events WHERE kind = 'loop_change_confirmed'")
+    rewrite_with_checkpoints_from(owned, confirmed, _a_word_of_the_confirmation, remake)
+    assert place(owned.verify()) == (confirmed + 1, "change_checkpoints")
+
+
+def test_a_confirmation_with_a_checkpoint_by_the_forgers_own_key_is_found(owned: Owned) -> None:
+    """The owner of the database writes the whole confirmation, by the service's own code, without its key."""
+    _with_store(owned, lambda store, loop: confirm(store, loop, None, revision=2))
+    last = owned.verify().entries
+
+    def claim_a_signature(entry: dict[str, Any], _root: str, _origin: str) -> None:
+        entry["rows"]["change_checkpoints"][0]["signature"] = ""
+
+    rewrite_with_checkpoints_from(owned, last, claim_a_signature, _sign_with_another_key)
+    report = owned.verify()
+    assert place(report) == (last, "change_checkpoints")
+    assert report.fault is not None
+    assert "another key than the history tells of" in report.fault.what
+
+
+def test_a_confirmation_without_a_signed_checkpoint_is_told_and_is_no_fault(owned: Owned) -> None:
+    """An older version of the service kept none, so that it cannot be a fault; nor is it passed over."""
+    _with_store(owned, lambda store, loop: store.decide_change(store.propose(loop, revision=2)))
+    report = owned.verify()
+    assert report.holds
+    assert report.notes[0].startswith("1 of the decisions made while the history had a key have no signed")
+    covered = f"The last signed checkpoint covers entries 1 to {kept_in(owned)[-1] - 1} of {report.entries}"
+    assert report.signatures[-1] == covered
+
+
+def _with_store(owned: Owned, act: Callable[[Store, LoopView], object]) -> None:
+    store = Store(owned.url)
+    try:
+        with store.database.reading() as session:
+            loop = loops.find_by_tag(session, store.actor("reviewer"), "North", "FIC-101")
+        act(store, loop)
+    finally:
+        store.database.close()
 
 
 def test_with_a_key_that_nobody_took_up_the_report_says_that_there_is_none(

@@ -338,6 +338,16 @@ COVERED = {
         "content_digest",
     ],
     "rechecks_due": ["change_id", "submission_id"],
+    "change_checkpoints": [
+        "change_id",
+        "origin",
+        "size",
+        "digest",
+        "head",
+        "time",
+        "public_key",
+        "signature",
+    ],
 }
 """Every column of every kept table but the one that ties a row to its entry."""
 

@@ -7,15 +7,7 @@ from datetime import datetime
 from sqlalchemy import CheckConstraint, ForeignKey, String, UniqueConstraint
 from sqlalchemy.orm import Mapped, mapped_column
 
-from service.records.tables.columns import (
-    Base,
-    DigestText,
-    Identifier,
-    Kept,
-    KeyText,
-    Number,
-    SignatureText,
-)
+from service.records.tables.columns import Base, DigestText, Identifier, Kept
 
 
 class Submission(Kept, Base):
@@ -150,21 +142,3 @@ class Sheet(Kept, Base):
     renderer: Mapped[str] = mapped_column(String(80))
     content: Mapped[bytes]
     content_digest: Mapped[str] = mapped_column(DigestText)
-
-
-class KeptCheckpoint(Kept, Base):
-    """The checkpoint that was made with a decision; the decision's entry is the last that it covers."""
-
-    __tablename__ = "checkpoints"
-    __table_args__ = (
-        CheckConstraint("(public_key IS NULL) = (signature IS NULL)", name="signed_with_a_key"),
-    )
-
-    decision_id: Mapped[str] = mapped_column(Identifier, ForeignKey("decisions.id"), primary_key=True)
-    origin: Mapped[str] = mapped_column(DigestText)
-    size: Mapped[int] = mapped_column(Number)
-    digest: Mapped[str] = mapped_column(DigestText)
-    head: Mapped[str] = mapped_column(DigestText)
-    time: Mapped[datetime]
-    public_key: Mapped[str | None] = mapped_column(KeyText)
-    signature: Mapped[str | None] = mapped_column(SignatureText)
