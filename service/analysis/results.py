@@ -295,7 +295,7 @@ class LoopFacts:
     hidden_roots: tuple[float | Complex, ...]
     """Factors of the controller cancelled by the plant, or the other way round; they count where they lie."""
     stable_with_other_action: bool | None
-    """None where not tried (the loop is stable as entered)."""
+    """Null where not tried (the loop is stable as entered)."""
     fastest_plant_time_s: float | None
     slowest_plant_time_s: float | None
     integral_time_s: float | None

@@ -56,7 +56,7 @@ class Account:
     full_name: str
     roles: tuple[Role, ...]
     areas: tuple[str, ...]
-    """None stands for all."""
+    """Those whose loops it sees; an empty list stands for all."""
     created_at: datetime
     closed_at: datetime | None
     last_used_at: datetime | None

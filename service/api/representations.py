@@ -12,7 +12,7 @@ from typing import Any, Literal
 from service.analysis.controller import Controller
 from service.analysis.results import Verdict
 from service.documents.loops import LoopRegistration, ModelVersion
-from service.documents.submissions import Tool
+from service.documents.submissions import Kind, Tool
 from service.judgement.claims import Claims
 from service.records.change_lifecycle import ChangeAction, ChangeState
 from service.records.content import (
@@ -29,7 +29,7 @@ from service.records.content import (
     SignedModel,
     WorstCriterion,
 )
-from service.records.lifecycle import Action, Kind, State
+from service.records.lifecycle import Action, State
 from service.records.views import (
     ChangeDecisionView,
     ChangeView,

@@ -22,6 +22,7 @@ class LoopChangeRequest:
     """The loop's revision that the change was made from."""
     reason: Prose
     loop: LoopRegistration | None = None
+    """The whole loop as it is to be."""
     retire_operating_point: Line | None = None
     """The operating point whose model is taken out of force."""
 
@@ -39,4 +40,5 @@ class ChangeDecisionRequest:
     decision: Literal["confirm", "reject", "withdraw"]
     reason: Prose
     content_digest: Digest
+    """That of the change as it was read."""
     password: Annotated[str, Len(1, limits.PASSWORD_CHARACTERS_MAX)] = field(repr=False)

@@ -21,6 +21,7 @@ class Deviation:
     """Why one criterion that was not met or not assessed, or one finding that asks for it, is accepted."""
 
     criterion: Line
+    """Its name, one of `deviations_needed` of the submission."""
     reason: Prose
 
 
@@ -31,8 +32,10 @@ class DecisionRequest:
     decision: Literal["approve", "reject", "withdraw", "revoke"]
     reason: Prose
     content_digest: Digest
+    """That of the submission as it was read."""
     password: Annotated[str, Len(1, limits.PASSWORD_CHARACTERS_MAX)] = field(repr=False)
     deviation: Annotated[tuple[Deviation, ...], Len(0, limits.DEVIATIONS_MAX)] = ()
+    """With an approval: one for each of `deviations_needed`; with anything else none."""
 
     def __post_init__(self) -> None:
         named: set[str] = set()

@@ -22,6 +22,7 @@ class InstalledGainSet:
     """One set of scheduled gains as found and as left, named by its condition."""
 
     condition: Line
+    """That of an approved set."""
     as_found: ControllerField
     as_left: ControllerField
 
@@ -35,12 +36,15 @@ class InstallationRequest:
 
     installed_at: Moment
     as_found: ControllerField | None = None
+    """As it stood on the controller's own display before anything was typed."""
     as_left: ControllerField | None = None
+    """As it stands there now, whether or not it is what was approved."""
     gain_sets: Annotated[tuple[InstalledGainSet, ...], Len(1, limits.GAIN_SETS_MAX)] | None = None
     typed_by: Line | None = None
     read_back_by: Line | None = None
     operator: Line | None = None
     saved_to_engineering_database: bool | None = None
+    """True: there too, so that a later download to the controller does not undo them. Null: not known."""
 
     def __post_init__(self) -> None:
         for name in ("as_found", "as_left"):

@@ -31,15 +31,19 @@ class LoopRegistration:
     tag: Tag
     description: Line
     area: Line
+    """Whoever is kept to areas sees the loops of these alone."""
     pv: Range
     output: Range
     service_class: Line | None = None
+    """What the loop is for, as the site names it."""
     safety_related: bool = False
+    """Its gains take two approvals, by two people."""
     criteria: Criteria | None = None
-    """None: the service's own floors hold."""
+    """Its own limits; null: the service's floors hold."""
     inner_loop: LoopReference | None = None
     """The secondary loop of a cascade whose set point this loop's output is."""
     fail_position: Line | None = None
+    """Where the valve goes without air or signal, as the site writes it."""
 
     def __post_init__(self) -> None:
         if self.inner_loop and self.inner_loop.names(self.site, self.tag):
@@ -71,4 +75,6 @@ class ModelVersion:
 
     plant_model: PlantModelField
     operating_point: Line
+    """A later version at the same one takes this one's place."""
     evidence: Prose
+    """What the model rests on: the test that was made, when, and where its data is kept."""

@@ -1,8 +1,9 @@
 """JSON schemas (2020-12) of documents, made from the dataclasses that read and write them.
 
-What pydantic cannot see in the dataclasses is added: unknown fields are refused, a controller in a record is
-complete (`service.documents.complete`), and what is left out where it is empty is not required
-(`service.documents.writing`). Rules that join several fields stay with the dataclasses alone.
+The text under a field is its description. What pydantic cannot see in the dataclasses is added: unknown
+fields are refused, a controller in a record is complete (`service.documents.complete`), and what is left out
+where it is empty is not required (`service.documents.writing`). Rules that join several fields stay with the
+dataclasses alone.
 """
 
 from __future__ import annotations
@@ -12,7 +13,7 @@ from dataclasses import dataclass
 from functools import cache
 from typing import Any
 
-from pydantic import TypeAdapter
+from pydantic import ConfigDict, TypeAdapter
 from pydantic.json_schema import JsonSchemaMode
 
 from service.documents import complete
@@ -47,18 +48,24 @@ def json_schemas(
 ) -> Schemas:
     """Describe documents that are read and dataclasses that are written, with shared parts named once."""
     wanted: list[tuple[type, JsonSchemaMode, TypeAdapter[Any]]] = [
-        *((document, "validation", TypeAdapter(document)) for document in reads),
-        *((view, "serialization", TypeAdapter(view)) for view in writes),
+        *((document, "validation", _several(document)) for document in reads),
+        *((view, "serialization", _several(view)) for view in writes),
     ]
     by_type, shared = TypeAdapter.json_schemas(wanted, ref_template=ref_template)
     made = Schemas(
-        of_read={document: by_type[document, "validation"] for document in reads},
-        of_written={view: by_type[view, "serialization"] for view in writes},
+        of_read={document: by_type[document, "validation"]["items"] for document in reads},
+        of_written={view: by_type[view, "serialization"]["items"] for view in writes},
         definitions=shared.get("$defs", {}),
     )
     _describe_reading(made)
     _describe_writing(made.definitions)
     return made
+
+
+def _several(described: type) -> TypeAdapter[Any]:
+    # a standard dataclass has no settings of its own and takes those of what holds it
+    several = tuple[described, ...]  # type: ignore[valid-type]  # which one is known only here
+    return TypeAdapter(several, config=ConfigDict(use_attribute_docstrings=True))
 
 
 def _describe_reading(made: Schemas) -> None:

@@ -18,11 +18,10 @@ from service.documents.installations import InstallationRequest
 from service.documents.loops import LoopRegistration, ModelVersion
 from service.documents.reading import read_kept
 from service.documents.recomputations import RecomputationAnswer
-from service.documents.submissions import Tool
+from service.documents.submissions import Kind, Tool
 from service.documents.texts import Moment
 from service.judgement.claims import Claims
 from service.judgement.criteria import Criteria, CriterionFinding
-from service.records.lifecycle import Kind
 
 VerdictAsLeft = Verdict | Literal["not_assessed"]
 
@@ -184,7 +183,7 @@ class Difference:
     hinders: bool
     """True: the gains are other gains. False: a recorded setting differs, which is only said."""
     condition: str | None = None
-    """Of the set of scheduled gains; None where there is one set only."""
+    """Of the set of scheduled gains; null where there is one set only."""
 
 
 @dataclass(frozen=True, kw_only=True, slots=True)

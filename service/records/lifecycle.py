@@ -11,10 +11,10 @@ from dataclasses import dataclass
 from datetime import datetime, timedelta
 from typing import Literal
 
+from service.documents.submissions import Kind
 from service.records.errors import NotAllowed, NotIndependent, WrongStep
 from service.records.roles import Actor
 
-Kind = Literal["planned", "emergency", "baseline", "return"]
 State = Literal[
     "awaiting_review",
     "approved",

@@ -35,8 +35,9 @@ class ConsistencyProof:
     """Hashes are lower-case hex."""
 
     first: int
+    """Entries of the earlier tree."""
     second: int
-    """Entries of the two trees."""
+    """Entries of the later tree."""
     first_root: str
     second_root: str
     path: tuple[str, ...]

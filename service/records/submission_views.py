@@ -9,6 +9,7 @@ from sqlalchemy import select
 from sqlalchemy.orm import Session
 
 from service.analysis.results import Verdict
+from service.documents.submissions import Kind
 from service.judgement.on_change import what_changes
 from service.records import (
     approvability,
@@ -29,7 +30,7 @@ from service.records.content import (
     read_decision,
     read_installation,
 )
-from service.records.lifecycle import Action, Kind, State
+from service.records.lifecycle import Action, State
 from service.records.roles import Actor
 from service.records.tables.changes import SubmissionContent
 from service.records.tables.checkpoints import DecisionCheckpoint

@@ -9,6 +9,7 @@ from typing import Generic, Literal, TypeVar
 from service.analysis.results import Curves, Verdict
 from service.documents.loops import LoopRegistration, ModelVersion
 from service.documents.strict_json import Plain
+from service.documents.submissions import Kind
 from service.records.change_lifecycle import ChangeAction, ChangeState
 from service.records.content import (
     ChangeDecisionContent,
@@ -19,7 +20,7 @@ from service.records.content import (
     SignedContent,
     SignedGains,
 )
-from service.records.lifecycle import Action, Kind, State
+from service.records.lifecycle import Action, State
 from service.records.roles import Role
 
 Item = TypeVar("Item")
@@ -276,7 +277,7 @@ class SubmissionSummary:
     state: State
     reason: str
     verdict: Verdict | None
-    """The worst over all operating points; None where there is no model."""
+    """The worst over all operating points; null where there is no model."""
     submitted_by: Person
     submitted_at: datetime
     review_due_at: datetime | None

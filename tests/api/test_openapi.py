@@ -8,6 +8,7 @@ import jsonschema_rs
 import pytest
 
 from service.api.openapi import SAID_OF_QUERIES, routes_of
+from service.documents.submissions import KINDS, Kind
 from service.records.event_kinds import EventKind
 from tests.api import plant
 from tests.api.conftest import Decide, Service, password_of
@@ -182,6 +183,31 @@ def test_what_is_said_of_a_query_parameter_stands_at_one_that_there_is(descripti
         if parameter["in"] == "query"
     }
     assert {name: told[name] for name in SAID_OF_QUERIES} == SAID_OF_QUERIES
+
+
+def test_every_kind_of_submission_is_explained_wherever_it_stands(description: Body) -> None:
+    assert set(KINDS) == set(get_args(get_args(Kind)[0]))
+    kinds = [
+        schema["properties"]["kind"]
+        for schema in description["components"]["schemas"].values()
+        if "emergency" in schema.get("properties", {}).get("kind", {}).get("enum", ())
+    ]
+    assert len(kinds) > 3
+    for described in kinds:
+        for kind, sentence in KINDS.items():
+            assert f"`{kind}`: {sentence}" in described["description"]
+
+
+def test_a_text_under_a_field_is_its_description(service: Service, description: Body) -> None:
+    """Of what is read, of what is written, and of a field that another document refers to."""
+    schemas, page = description["components"]["schemas"], service.get("/reference", person=None).text
+    for document, name, words in (
+        ("SubmissionRequest", "safety_effect", "What the change means for the safety of the process"),
+        ("SubmissionRequest", "claims", "to be held against what is recomputed here"),
+        ("LoopChangeDecision", "checkpoint", "made with the decision"),
+    ):
+        assert words in schemas[document]["properties"][name]["description"]
+        assert words in page
 
 
 def test_a_kind_of_entry_to_search_for_is_one_of_a_list(description: Body) -> None:

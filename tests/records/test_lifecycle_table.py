@@ -7,9 +7,10 @@ from typing import get_args
 
 import pytest
 
+from service.documents.submissions import KINDS, Kind
 from service.records import lifecycle
 from service.records.errors import NotAllowed, NotIndependent, WrongStep
-from service.records.lifecycle import Action, Kind, Limits, State
+from service.records.lifecycle import Action, Limits, State
 from service.records.roles import ROLES, Actor, Role
 
 STATES: tuple[State, ...] = get_args(State)
@@ -155,7 +156,7 @@ def test_a_review_is_overdue_the_moment_after_it_was_due() -> None:
     assert lifecycle.is_overdue("installed_awaiting_review", NO_LIMITS, NOW, NOW + AN_INSTANT)
 
 
-@pytest.mark.parametrize("kind", get_args(Kind))
+@pytest.mark.parametrize("kind", KINDS)
 @pytest.mark.parametrize("state", STATES)
 def test_a_review_presses_within_three_days_where_the_gains_run_without_one(state: State, kind: Kind) -> None:
     owed = {"awaiting_review", "installed_awaiting_review", "superseded_awaiting_review"}
@@ -165,7 +166,7 @@ def test_a_review_presses_within_three_days_where_the_gains_run_without_one(stat
 
 def test_gains_that_run_without_approval_are_never_said_to_have_one() -> None:
     assert {"approved", "in_force"} == lifecycle.APPROVED_TO_RUN
-    assert {kind for kind in get_args(Kind) if kind in lifecycle.IN_FORCE_FROM_THE_START} == {
+    assert {kind for kind in KINDS if kind in lifecycle.IN_FORCE_FROM_THE_START} == {
         "emergency",
         "baseline",
     }
