@@ -19,7 +19,9 @@ Json = dict[str, Any]
 def show_reference() -> str:
     """Show every call, with what it takes and gives. Open to all, as the description itself is."""
     described = openapi.description(current_app)
-    return render_template("api_reference.html", description=described, shape=shape, pretty=pretty)
+    return render_template(
+        "api_reference.html", description=described, shape=shape, pretty=pretty, marked=marked
+    )
 
 
 def pretty(example: object) -> str:
@@ -27,11 +29,22 @@ def pretty(example: object) -> str:
     return json.dumps(example, indent=2, ensure_ascii=False)
 
 
+def marked(text: str) -> Markup:
+    """Return a description with the names that stand in backticks set as code."""
+    parts = enumerate(text.split("`"))
+    return Markup().join(
+        Markup("<code>{}</code>").format(part) if index % 2 else part for index, part in parts
+    )
+
+
 def shape(schema: Json) -> Markup:
     """Say in a few words what values a schema lets through, with links to the documents it names."""
     if "$ref" in schema:
         name = schema["$ref"].rsplit("/", 1)[-1]
         return Markup('<a href="#schema-{0}">{0}</a>').format(name)
+    if "allOf" in schema:
+        # a controller in a record: what it is, and that it is complete
+        return shape(schema["allOf"][0])
     alternatives = schema.get("anyOf") or schema.get("oneOf")
     if alternatives:
         return Markup(" or ").join(shape(part) for part in alternatives)

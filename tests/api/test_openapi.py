@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from typing import Any, get_args
 
 import jsonschema_rs
@@ -208,6 +209,14 @@ def test_a_text_under_a_field_is_its_description(service: Service, description: 
     ):
         assert words in schemas[document]["properties"][name]["description"]
         assert words in page
+
+
+def test_the_page_of_the_api_sets_names_apart_and_says_what_a_controller_may_be(service: Service) -> None:
+    page = service.get("/reference", person=None).text
+    assert "<code>planned</code>: Gains that may be installed once they are approved." in page
+    _, after = page.split('<h3 id="schema-SubmissionRequest">')
+    (of_controller,) = re.findall(r"<code>controller</code></td>.*?</tr>", after, re.DOTALL)[:1]
+    assert 'href="#schema-IdealController"' in of_controller
 
 
 def test_a_kind_of_entry_to_search_for_is_one_of_a_list(description: Body) -> None:
