@@ -39,13 +39,16 @@ def curves(
     )
 
 
-def _response(responses: Responses, which: int, unit_rad_s: float) -> ResponseCurve:
+def _response(responses: Responses, which: int, unit_rad_s: float) -> ResponseCurve | None:
+    """None where a response has left float64."""
     shown = _pieces_shown(responses, which)
     places = _places(shown)
     start, length = responses.start[:shown], responses.length[:shown]
     # the end of a piece and the start of the next are one time, and may differ by their rounding
     times = np.maximum.accumulate((start[:, None] + length[:, None] * places).ravel())
     pv, output = (_at_places(signal[which, :shown], places) for signal in (responses.pv, responses.output))
+    if not (np.isfinite(times / unit_rad_s).all() and np.isfinite(pv).all() and np.isfinite(output).all()):
+        return None
     keep = np.flatnonzero(_without_repeats(times, pv, output))
     keep = keep[_turns_of_many(pv[keep], output[keep])]
     return ResponseCurve(

@@ -88,6 +88,7 @@ def _recompute(
     try:
         space = realise(parts)
         continuous, drawn = _continuous(parts, space, plant_model, settling_band_percent, with_curves)
+        _refuse_overflown(continuous)
     except (ArithmeticError, np.linalg.LinAlgError):
         space, continuous, drawn = None, _undecided((NYQUIST, ROOTS), BEYOND_FLOAT64), None
     sampled = None
@@ -130,6 +131,7 @@ def _sampled(
 ) -> tuple[Analysis, Curves | None]:
     try:
         analysis, drawn = analyse_at_scans(parts, space, scan, settling_band_percent, with_curves)
+        _refuse_overflown(analysis)
     except NotFactoredError as error:
         return _undecided((NYQUIST_AT_SCANS, ROOTS_AT_SCANS), str(error)), None
     except (ArithmeticError, np.linalg.LinAlgError):
@@ -218,6 +220,20 @@ def _steps(
     setpoint, load = step_metrics(responses, band_percent, unit, impulse=impulse)
     # an impulse of the output that the plant passes at once leaves PV without a response in time
     return (None if impulse and space.d_y != 0 else setpoint), load
+
+
+def _refuse_overflown(analysis: Analysis) -> None:
+    """Raises OverflowError where a root or a crossover of the analysis lies beyond float64 in rad/s."""
+    stability, listed = analysis.stability, analysis.crossovers
+    numbers: list[object] = [stability.decay_rate_per_s]
+    for root in stability.dominant_roots:
+        numbers += [*(root.root if isinstance(root.root, tuple) else (root.root,)), root.damping_ratio]
+    for gain in listed.gain_crossovers:
+        numbers += [gain.rad_s, gain.phase_margin_deg]
+    for phase in listed.phase_crossovers:
+        numbers += [phase.rad_s, phase.gain_factor]
+    if any(isinstance(number, float) and not isfinite(number) for number in numbers):
+        raise OverflowError
 
 
 Part = TypeVar("Part", Margins, SetpointStep, LoadStep, Noise)

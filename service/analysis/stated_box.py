@@ -274,7 +274,8 @@ def _gain_margin_in(end: End, *, vanishes: bool) -> tuple[float, float]:
         return -end.log_magnitude[1], math.inf
     if not end.turns and _smallest(end) > 1.0:
         return math.inf, math.inf
-    exact = -math.log(_largest(end))
+    largest = _largest(end)
+    exact = -math.log(largest) if largest > 0 else math.inf
     return exact - end.log_error, exact
 
 

@@ -23,6 +23,7 @@ PI = {
 }
 LAG = {"kind": "first_order", "gain": 1.0, "time_constant_s": 10.0, "dead_time_s": 1.0}
 RESONANCE = {"kind": "second_order", "gain": 1.0, "natural_frequency_rad_s": 1.0, "damping_ratio": 1e-9}
+BOX = {"uncertainty": {"gain": [0.8, 1.2], "dead_time": [0.5, 2.0]}}
 POINTS = {"kind": "frequency_response", "frequencies_rad_s": [0.1, 1.0, 10.0], "unstable_poles": 0}
 
 
@@ -43,6 +44,28 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
     "a scan for ever": (LAG, scanned(1.7e308)),
     "a scan for ever, trapezoidal": (LAG, scanned(1.7e308, method="trapezoidal")),
     "a scan in no time": (LAG, scanned(1e-20)),
+    "a controller whose gain is the least number there is, and a box": (
+        {"kind": "first_order", "gain": -1e-3, "time_constant_s": 12.0, "dead_time_s": 0.03, **BOX},
+        {**PI, "proportional": {"value": 5e-324, "unit": "gain"}},
+    ),
+    "a plant of nearly no gain behind a controller of all there is": (
+        {"kind": "first_order", "gain": 5e-324, "time_constant_s": 0.1, "dead_time_s": 1.2, **BOX},
+        {**PI, "proportional": {"value": 1.7e308, "unit": "gain"}},
+    ),
+    "a gain of all there is alone": (
+        {"kind": "transfer_function", "numerator": [80.5], "denominator": [31.4]},
+        {"form": "ideal", "action": "reverse", "proportional": {"value": 1.7e308, "unit": "gain"}},
+    ),
+    "a root beyond float64": (
+        {"kind": "transfer_function", "numerator": [-1e300], "denominator": [71.5]},
+        {
+            "form": "ideal",
+            "action": "direct",
+            "proportional": {"value": 0.0075, "unit": "gain"},
+            "integral": {"value": 0.046, "unit": "seconds"},
+            "measurement_filter_s": 1e-20,
+        },
+    ),
     "an integral time of which float64 has no reciprocal": (
         LAG,
         {
