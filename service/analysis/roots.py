@@ -128,7 +128,7 @@ def _of_open_loop(loop: OpenLoop, eigenvalues: Complexes) -> CharacteristicRoots
 
 def without_nearest(starts: Complexes, hidden_roots: Complexes) -> Complexes:
     """The starts less, for each hidden root, the one that lies nearest to it: no root of 1 + L is there."""
-    for root in hidden_roots:
+    for root in hidden_roots[: len(starts)]:
         starts = np.delete(starts, int(np.argmin(np.abs(starts - root))))
     return starts
 

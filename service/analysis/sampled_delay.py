@@ -57,7 +57,7 @@ STEPS = 30
 NEWTON_DONE = 1e-8
 """A step of Newton this small, relatively, leaves an error of its square."""
 
-MAX_PROBES = 500
+MAX_PROBES = 300
 """Work bound: a loop that is as near to instability as that at more delays has no delay margin computed."""
 
 FAR_BELOW = 0.25
@@ -284,6 +284,8 @@ def _bracketed(sampled: SampledLoop, angle: float, scans: float) -> tuple[float,
     The phase beyond −180° at the gain crossover, followed over two scans on either side, is halved to its
     zero.
     """
+    if scans > MAX_SCANS:
+        return None
     step = 0.125
     low = max(0.0, scans - 2.0)
     at_low = _phase_at_crossover(sampled, angle, low)

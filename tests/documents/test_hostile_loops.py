@@ -52,6 +52,30 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
         {"kind": "first_order", "gain": 5e-324, "time_constant_s": 0.1, "dead_time_s": 1.2, **BOX},
         {**PI, "proportional": {"value": 1.7e308, "unit": "gain"}},
     ),
+    "a loop that only 1e22 scans of delay would lose": (
+        {"kind": "first_order", "gain": 267.2, "time_constant_s": 0.00438},
+        {
+            **scanned(1.3765),
+            "proportional": {"value": 1e-20, "unit": "gain"},
+            "integral": {"value": 0.0162, "unit": "seconds"},
+        },
+    ),
+    "more hidden roots than eigenvalues that are numbers": (
+        {
+            "kind": "state_space",
+            "a": [[798.0, 0.0, -545.0], [4.07, -1e300, 0.1], [1e-300, 0.0047, 1e-300]],
+            "b": [-109.0, -0.05, 0.0],
+            "c": [-551.0, 50.3, -186.0],
+            "d": 0.1157,
+            "dead_time_s": 0.7925,
+            **BOX,
+        },
+        {
+            **PI,
+            "integral": {"value": 1e300, "unit": "seconds"},
+            "scan": {"interval_s": 3.5855, "output_delay_s": 0.0029},
+        },
+    ),
     "a gain of all there is alone": (
         {"kind": "transfer_function", "numerator": [80.5], "denominator": [31.4]},
         {"form": "ideal", "action": "reverse", "proportional": {"value": 1.7e308, "unit": "gain"}},
