@@ -45,7 +45,9 @@ def zeros_poles_gain(
     for zeros in _candidates(scaled):
         zeros = _upon_poles(zeros, poles / unit)
         gain = _gain(scaled, zeros, poles / unit)
-        if gain is not None:
+        # of a pair as near together as rounding both may be taken for one of two poles
+        paired = np.count_nonzero(zeros.imag > 0) == np.count_nonzero(zeros.imag < 0)
+        if gain is not None and paired:
             leading = gain * unit ** (len(poles) - len(zeros))
             return tuple((zeros * unit).tolist()), tuple(poles.tolist()), leading
     raise FieldError(("a",), "the zeros of this state space cannot be computed to enough digits")

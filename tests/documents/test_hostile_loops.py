@@ -76,6 +76,16 @@ HOSTILE: dict[str, tuple[Any, Any]] = {
             "scan": {"interval_s": 3.5855, "output_delay_s": 0.0029},
         },
     ),
+    "a pair of zeros that rounding makes one": (
+        {
+            "kind": "state_space",
+            "a": [[1e20, -0.029528934435297357], [1.3597820229114452, 1e20]],
+            "b": [-6.577712356781084, 0.04249147270959437],
+            "c": [0.004469234085351975, 6.228455928834663],
+            "d": 114.55613965272322,
+        },
+        scanned(885.0),
+    ),
     "a gain of all there is alone": (
         {"kind": "transfer_function", "numerator": [80.5], "denominator": [31.4]},
         {"form": "ideal", "action": "reverse", "proportional": {"value": 1.7e308, "unit": "gain"}},
