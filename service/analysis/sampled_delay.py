@@ -84,9 +84,9 @@ def sampled_delay_margin_s(sampled: SampledLoop, axis: AxisResponse) -> Quantity
         found = _confirmed(sampled, divided.reach(), touching)
     else:
         found = _least_on_grid(sampled, divided, min(starts), touching)
-        if found is not None and touching and found > touching[0].delay * (1.0 + BESIDE):
-            # a root lies upon the circle there: where it does not leave it comes back
-            found = _left_before(sampled, divided.reach(), touching[0])
+    if found is not None and touching and found > touching[0].delay * (1.0 + BESIDE):
+        # a root lies upon the circle there: where it does not leave it comes back
+        found = _left_before(sampled, divided.reach(), touching[0])
     return None if found is None else found / sampled.scanned.parts.unit_rad_s
 
 

@@ -157,6 +157,15 @@ def test_a_loop_that_is_lost_for_a_moment_and_regained_has_the_margin_of_that_mo
     assert unstable_roots(plant, controller, margin + 0.3 * interval) == 0
 
 
+def test_no_margin_is_told_behind_a_delay_at_which_a_root_comes_back() -> None:
+    # outside for 0.003 s of more dead time, between two points of every grid
+    plant, controller = made_up(100_764)
+    margin = delay_margin_s(plant, controller)
+    assert margin < 17.6
+    counts = [unstable_roots(plant, controller, margin * (1.0 + more)) for more in (-1e-5, 5e-5, 1e-3)]
+    assert counts == [0, 2, 0]
+
+
 def test_a_plant_slow_against_its_scan_has_one_crossing() -> None:
     plant, controller = integrating(0.1, 2.0, 0.5), ideal(1.0, 20.0, scan=Scan(interval_s=0.1))
     margin = delay_margin_s(plant, controller)

@@ -41,6 +41,6 @@ def test_a_rule(owned: Owned) -> None:
 def test_what_is_no_table_of_the_stores_does_not_alarm(owned: Owned) -> None:
     owned.execute("CREATE SCHEMA reports", "CREATE VIEW reports.all_loops AS SELECT id FROM public.loops")
     with opened(owned.url) as connection:
-        # of this session alone
+        # of this connection alone
         run(connection, "CREATE TEMPORARY TABLE submissions (id text)")
         assert verify(owned.url).holds
